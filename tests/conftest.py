@@ -1,0 +1,87 @@
+"""What every test may count on: an engine, a browser that stays at home, and no waiting at the sign-in lock.
+
+The database is a throwaway SQLite file, or the PostgreSQL server that HALFNUT_DATABASE_URL names.
+"""
+
+from __future__ import annotations
+
+import os
+import shutil
+from collections.abc import Iterator
+from typing import Any
+from urllib.parse import urlsplit
+
+import pytest
+from django.conf import settings
+
+CHROMIUM = "/usr/bin/chromium"
+# Playwright's own event loop would make Django refuse every query in a browser test.
+os.environ.setdefault("DJANGO_ALLOW_ASYNC_UNSAFE", "1")
+
+
+def on_postgresql() -> bool:
+    return settings.DATABASES["default"]["ENGINE"].endswith("postgresql")
+
+
+def pytest_report_header() -> str:
+    return f"engine: {'PostgreSQL' if on_postgresql() else 'SQLite, a file'}"
+
+
+def pytest_collection_modifyitems(items: list[pytest.Item]) -> None:
+    only_postgresql = pytest.mark.skip(
+        reason="needs transactions that run side by side: SQLite lets one writer in at a time. `make test` runs it on PostgreSQL"
+    )
+    no_browser = pytest.mark.skip(reason=f"no {CHROMIUM}: apt-get install chromium")
+    for item in items:
+        if item.get_closest_marker("postgres") and not on_postgresql():
+            item.add_marker(only_postgresql)
+        if item.get_closest_marker("browser") and not os.path.exists(CHROMIUM):
+            item.add_marker(no_browser)
+
+
+def pytest_unconfigure() -> None:
+    if settings.configured and hasattr(settings, "TEST_FOLDER"):
+        shutil.rmtree(settings.TEST_FOLDER, ignore_errors=True)
+
+
+@pytest.fixture(scope="session")
+def browser_type_launch_args(browser_type_launch_args: dict[str, Any]) -> dict[str, Any]:
+    """Debian's Chromium, kept from calling home."""
+    quiet = [
+        "--disable-background-networking",
+        "--disable-component-update",
+        "--disable-default-apps",
+        "--disable-domain-reliability",
+        "--disable-sync",
+        "--no-first-run",
+        "--metrics-recording-only",
+    ]
+    if os.geteuid() == 0:
+        quiet.append("--no-sandbox")  # Chromium refuses its sandbox to root
+    return {**browser_type_launch_args, "executable_path": CHROMIUM, "args": quiet}
+
+
+@pytest.fixture(scope="session")
+def browser_context_args(browser_context_args: dict[str, Any]) -> dict[str, Any]:
+    return {**browser_context_args, "locale": "en-GB", "timezone_id": "Europe/London"}
+
+
+@pytest.fixture
+def context(context: Any) -> Iterator[Any]:
+    """A browser context that fails its test for any outside address, script error or breach of the content policy."""
+    complaints: list[str] = []
+
+    def watch_request(request: Any) -> None:
+        address = urlsplit(request.url)
+        if address.scheme in {"http", "https", "ws", "wss"} and address.hostname not in {"localhost", "127.0.0.1"}:
+            complaints.append(f"asked an outside address: {request.url}")
+
+    def watch_console(message: Any) -> None:
+        if "Content Security Policy" in message.text:
+            complaints.append(f"breached the content policy: {message.text}")
+
+    context.on("request", watch_request)
+    context.on("console", watch_console)
+    context.on("weberror", lambda error: complaints.append(f"script error: {error.error}"))
+    yield context
+    assert not complaints, "\n".join(complaints)
