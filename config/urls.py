@@ -1,0 +1,8 @@
+"""The site map. Every view names its right; the middleware refuses those that do not."""
+
+from django.urls import include, path
+
+urlpatterns = [
+    path("", include("fleet.urls")),
+    path("", include("reliability.urls")),
+]

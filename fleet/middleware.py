@@ -1,0 +1,48 @@
+"""Who is writing, and whether they may: set for every request before any view runs."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from typing import Any
+
+from django.contrib.auth.views import redirect_to_login
+from django.core.exceptions import PermissionDenied
+from django.http import HttpRequest, HttpResponse
+
+from fleet.history import writing
+from fleet.rights import PUBLIC, may, seen_by
+
+GetResponse = Callable[[HttpRequest], HttpResponse]
+
+
+class WriterMiddleware:
+    """Stamps everything a request writes with the person and “browser”."""
+
+    def __init__(self, get_response: GetResponse) -> None:
+        self.get_response = get_response
+
+    def __call__(self, request: HttpRequest) -> HttpResponse:
+        person = request.user if request.user.is_authenticated else None
+        with writing(person=person, source="browser"):
+            return self.get_response(request)
+
+
+class RightsMiddleware:
+    """Refuses every view that names no right, and every person who does not hold it."""
+
+    def __init__(self, get_response: GetResponse) -> None:
+        self.get_response = get_response
+
+    def __call__(self, request: HttpRequest) -> HttpResponse:
+        return self.get_response(request)
+
+    def process_view(self, request: Any, view: Callable[..., Any], args: Any, kwargs: Any) -> HttpResponse | None:
+        right = getattr(view, "right", None)
+        if right == PUBLIC:
+            return None
+        if not request.user.is_authenticated:
+            return redirect_to_login(request.get_full_path())
+        if right is None or not may(request.user, right):
+            raise PermissionDenied
+        request.seen = lambda model: seen_by(request.user, model)
+        return None

@@ -1,0 +1,55 @@
+from fleet.models.book import Book, DataVersion
+from fleet.models.clocks import ClockPoint, FittingClock
+from fleet.models.component import Clock, Component, FailureMode
+from fleet.models.entry_key import EntryKey
+from fleet.models.fitting import FAILURE_REASONS, Fitting, FoundBy, RemovalReason
+from fleet.models.life_set import LifeSet, SetLife
+from fleet.models.looks_wrong import LooksWrong, RecordKind
+from fleet.models.module import Module, Placement
+from fleet.models.module_type import ModuleType, Position
+from fleet.models.part import Part, PartState
+from fleet.models.person import Person, Role
+from fleet.models.reading import Reading, Restart
+from fleet.models.site import Site, SiteKind
+from fleet.models.stop import Stop
+from fleet.models.visit import Finding, FoundKind, Left, Visit
+from fleet.models.work import KeptFile, Work, WorkState
+
+__all__ = [
+    "FAILURE_REASONS",
+    "Book",
+    "Clock",
+    "ClockPoint",
+    "Component",
+    "DataVersion",
+    "EntryKey",
+    "FailureMode",
+    "Finding",
+    "Fitting",
+    "FittingClock",
+    "FoundBy",
+    "FoundKind",
+    "KeptFile",
+    "Left",
+    "LifeSet",
+    "LooksWrong",
+    "Module",
+    "ModuleType",
+    "Part",
+    "PartState",
+    "Person",
+    "Placement",
+    "Position",
+    "Reading",
+    "RecordKind",
+    "RemovalReason",
+    "Restart",
+    "Role",
+    "SetLife",
+    "Site",
+    "SiteKind",
+    "Stop",
+    "Visit",
+    "Work",
+    "WorkState",
+]

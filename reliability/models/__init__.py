@@ -1,0 +1,3 @@
+from reliability.models.kept_result import KeptResult
+
+__all__ = ["KeptResult"]
