@@ -66,7 +66,7 @@ def refuse_a_busy_port(host: str, port: int, *, demo: bool) -> None:
         except OSError as problem:
             other = "make run PORT=" if demo else "HALFNUT_BIND=" + host + ":"
             raise CannotStart(
-                f"Port {port} on {host} cannot be used ({problem.strerror.lower()}). "
+                f"Port {port} on {host} cannot be used ({(problem.strerror or 'not allowed').lower()}). "
                 f"Stop the program that has it, or choose another port: {other}{port + 1}"
             ) from None
 

@@ -123,7 +123,7 @@ def _start(programs: Path, folder: Path, port: int) -> subprocess.Popen[bytes]:
     for name, value in SETTINGS.items():
         command += ["-c", f"{name}={value}"]
     with (folder / "log").open("wb") as log:
-        return subprocess.Popen(  # type: ignore[call-overload, no-any-return]
+        return subprocess.Popen(  # type: ignore[call-overload]
             command,
             cwd=folder,
             stdin=subprocess.DEVNULL,
