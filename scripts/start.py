@@ -106,7 +106,7 @@ def answers(host: str, port: int) -> bool:
     """Whether the web server gives any answer at all."""
     connection = http.client.HTTPConnection("127.0.0.1" if host == "0.0.0.0" else host.strip("[]"), port, timeout=10)
     try:
-        connection.request("HEAD", "/")
+        connection.request("GET", "/health")
         connection.getresponse()
     except (OSError, http.client.HTTPException):
         return False

@@ -29,7 +29,7 @@ def pytest_report_header() -> str:
 
 def pytest_collection_modifyitems(items: list[pytest.Item]) -> None:
     only_postgresql = pytest.mark.skip(
-        reason="needs transactions that run side by side: SQLite lets one writer in at a time. `make test` runs it on PostgreSQL"
+        reason="needs writers side by side, and SQLite lets in one at a time: `make test` runs it on PostgreSQL"
     )
     no_browser = pytest.mark.skip(reason=f"no {CHROMIUM}: apt-get install chromium")
     for item in items:
