@@ -1,0 +1,203 @@
+"""Intervals for quantities of a two-parameter life distribution: likelihood ratio (profile) and Wald."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import Any, Protocol
+
+import numpy as np
+from scipy import special
+
+from reliability.stats.errors import InvalidArgument, NotConverged
+from reliability.stats.lifetimes import FloatArray
+from reliability.stats.newton import EvaluatePlane, maximise_line
+
+METHODS = ("likelihood-ratio", "wald", "wald-plain")
+# a quantity whose logarithm may move this far without the likelihood falling enough is called unbounded
+FARTHEST = 50.0
+
+
+@dataclass(frozen=True)
+class Interval:
+    """A confidence interval of one quantity, with the estimate.
+
+    lower_unbounded, upper_unbounded: the records do not bound the quantity on that side; the limit is then the end of
+    its range (0, inf, or 1 for a survival).
+    """
+
+    quantity: Any
+    estimate: float
+    lower: float
+    upper: float
+    confidence_level: float
+    method: str
+    lower_unbounded: bool = False
+    upper_unbounded: bool = False
+
+
+# on a curve: x, y; dx, dy and their second derivatives along the free parameter; dx, dy as psi moves
+CurvePoint = tuple[float, float, float, float, float, float, float, float]
+
+
+class Curve(Protocol):
+    """All parameter points (x, y) that give one value of a quantity, walked by a free parameter.
+
+    The value is psi, the quantity on a scale without ends (its log; log(-log S) for a survival).
+    """
+
+    free_limits: tuple[float, float]
+
+    def value_of(self, x: float, y: float) -> float: ...
+
+    def gradient_of(self, x: float, y: float) -> tuple[float, float]: ...
+
+    def free_of(self, x: float, y: float) -> float: ...
+
+    def at(self, psi: float, free: float) -> CurvePoint: ...
+
+
+@dataclass(frozen=True)
+class Scale:
+    """How psi is turned back into the quantity; falling where a larger psi is a smaller quantity."""
+
+    back: Callable[[float], float]
+    lowest: float
+    highest: float
+    falling: bool = False
+
+
+LOG = Scale(back=lambda psi: float(np.exp(min(psi, 709.0))), lowest=0.0, highest=np.inf)
+LOG_LOG_SURVIVAL = Scale(
+    back=lambda psi: float(np.exp(-np.exp(min(psi, 700.0)))), lowest=0.0, highest=1.0, falling=True
+)
+
+
+def normal_quantile(confidence_level: float) -> float:
+    """z of a two-sided level; its square is the chi-square quantile with one degree of freedom."""
+    if not 0.0 < confidence_level < 1.0:
+        raise InvalidArgument(f"The confidence level is {confidence_level:g}; it must lie between 0 and 1.")
+    return float(special.ndtri(0.5 + confidence_level / 2.0))
+
+
+def quantity_interval(
+    evaluate: EvaluatePlane,
+    best: tuple[float, float],
+    covariance: FloatArray,
+    curve: Curve,
+    scale: Scale,
+    quantity: Any,
+    confidence_level: float,
+    method: str,
+    range_of_psi: tuple[float, float] | None = None,
+) -> Interval:
+    """Interval of the quantity behind `curve` around the estimate `best` (x, y); covariance (2, 2)."""
+    z = normal_quantile(confidence_level)
+    if method not in METHODS:
+        raise InvalidArgument(f"The method {method!r} is not known. Choose one of {', '.join(METHODS)}.")
+    centre = curve.value_of(*best)
+    gradient = np.array(curve.gradient_of(*best))
+    error = float(np.sqrt(max(float(gradient @ covariance @ gradient), 0.0)))
+    estimate = scale.back(centre)
+    if method == "wald-plain":
+        half = z * error * _slope_back(scale, centre)
+        return Interval(quantity, estimate, estimate - half, estimate + half, confidence_level, method)
+    if method == "wald":
+        ends = [(centre - z * error, False), (centre + z * error, False)]
+    else:
+        lowest, highest = range_of_psi or (centre - FARTHEST, centre + FARTHEST)
+        peak = evaluate(*best)[0]
+        ends = [
+            profile_limit(evaluate, curve, best, peak, z, centre, max(error, 1e-6), direction, farthest)
+            for direction, farthest in ((-1.0, lowest), (1.0, highest))
+        ]
+    (low, low_open), (high, high_open) = reversed(ends) if scale.falling else ends
+    return Interval(
+        quantity,
+        estimate,
+        scale.lowest if low_open else scale.back(low),
+        scale.highest if high_open else scale.back(high),
+        confidence_level,
+        method,
+        low_open,
+        high_open,
+    )
+
+
+def _slope_back(scale: Scale, psi: float) -> float:
+    value = scale.back(psi)
+    return value if not scale.falling else value * float(np.exp(psi))
+
+
+def profile_limit(
+    evaluate: EvaluatePlane,
+    curve: Curve,
+    best: tuple[float, float],
+    peak: float,
+    z: float,
+    centre: float,
+    error: float,
+    direction: float,
+    farthest: float,
+) -> tuple[float, bool]:
+    """The psi beyond `centre` where twice the fall of the profile log-likelihood is z squared; True if there is none.
+
+    The signed root of that fall is nearly straight in psi, so Newton steps on it need few profile maxima; a bracket
+    guards them. Lawless, Statistical Models and Methods for Lifetime Data (2003), section 4.1 and appendix C.
+    """
+    inside, outside = centre, None
+    free = curve.free_of(*best)
+    psi = centre + direction * min(z * error, 3.0)
+    for _ in range(200):
+        if direction * (psi - farthest) > 0:
+            psi = farthest
+        height, slope, new_free = profile_maximum(evaluate, curve, psi, free)
+        fall = math.sqrt(max(2.0 * (peak - height), 0.0)) if math.isfinite(height) else math.inf
+        if abs(fall - z) < 1e-9 * z:
+            return psi, False
+        if fall < z:
+            inside, free = psi, new_free
+            if psi == farthest:
+                return psi, True
+        else:
+            outside = psi
+        if outside is not None and abs(outside - inside) <= 1e-12 * max(1.0, abs(inside)):
+            return inside, False
+        psi = _next_psi(psi, fall, z, slope, direction, centre, inside, outside)
+    raise NotConverged("The likelihood-ratio limit was not found in 200 steps. Use the Wald interval.", iterations=200)
+
+
+def _next_psi(
+    psi: float,
+    fall: float,
+    z: float,
+    slope: float,
+    direction: float,
+    centre: float,
+    inside: float,
+    outside: float | None,
+) -> float:
+    climb = -slope * direction  # how fast the fall's half square grows outward
+    guess = psi + direction * (z - fall) * fall / climb if math.isfinite(fall) and climb > 0 and fall > 0 else math.nan
+    if outside is None:
+        reach = inside + direction * 2.0 * max(abs(inside - centre), 1e-6)
+        return reach if not direction * (guess - inside) > 0 or direction * (guess - reach) > 0 else guess
+    low, high = min(inside, outside), max(inside, outside)
+    return guess if low < guess < high else 0.5 * (inside + outside)
+
+
+def profile_maximum(evaluate: EvaluatePlane, curve: Curve, psi: float, free: float) -> tuple[float, float, float]:
+    """Largest log-likelihood with the quantity held at psi: value, its slope in psi, the free parameter there."""
+    slopes: dict[float, float] = {}
+
+    def along(free: float) -> tuple[float, float, float]:
+        x, y, dx, dy, ddx, ddy, px, py = curve.at(psi, free)
+        value, by_x, by_y, xx, xy, yy = evaluate(x, y)
+        slopes[free] = by_x * px + by_y * py
+        bend = xx * dx * dx + 2.0 * xy * dx * dy + yy * dy * dy + by_x * ddx + by_y * ddy
+        return value, by_x * dx + by_y * dy, bend
+
+    low, high = curve.free_limits
+    where, height = maximise_line(along, free, low, high, 1.5)
+    return height, slopes[where], where
