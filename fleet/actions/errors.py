@@ -5,14 +5,15 @@ from __future__ import annotations
 import datetime as dt
 from typing import Any
 
+from fleet import formats
+
 
 def thousands(number: float) -> str:
-    """48210 as 48 210 (thin no-break spaces)."""
-    return f"{number:,.0f}".replace(",", "\u202f")
+    return formats.number(number, 0)
 
 
 def day_words(day: dt.date) -> str:
-    return f"{day.day} {day:%B %Y}"
+    return formats.long_day(day)
 
 
 class RecordError(Exception):
