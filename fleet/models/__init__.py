@@ -5,7 +5,7 @@ from fleet.models.entry_key import EntryKey
 from fleet.models.fitting import FAILURE_REASONS, Fitting, FoundBy, RemovalReason
 from fleet.models.life_set import LifeSet, SetLife
 from fleet.models.looks_wrong import LooksWrong, RecordKind
-from fleet.models.module import Module, Placement
+from fleet.models.module import Module, ModuleState, Placement
 from fleet.models.module_type import ModuleType, Position
 from fleet.models.part import Part, PartState
 from fleet.models.person import Person, Role
@@ -34,6 +34,7 @@ __all__ = [
     "LifeSet",
     "LooksWrong",
     "Module",
+    "ModuleState",
     "ModuleType",
     "Part",
     "PartState",

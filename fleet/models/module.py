@@ -3,9 +3,10 @@
 from __future__ import annotations
 
 import datetime as dt
+from typing import Any
 
 from django.db import models
-from django.db.models import Exists, F, OuterRef, Q
+from django.db.models import Exists, F, OuterRef, Q, Subquery
 
 from fleet.history import kept_history
 from fleet.models.codes import Coded
@@ -24,15 +25,43 @@ class ModuleQuerySet(models.QuerySet):
         here = Placement.objects.current().filter(module=OuterRef("pk"), site__in=Site.objects.for_person(person))
         return self.filter(Exists(here))
 
-    def with_place(self) -> ModuleQuerySet:
-        """Adds `site_id`, `site_code`, `site_name` and `bay` of the stay now."""
+    def with_state(self) -> ModuleQuerySet:
+        """Adds the stay now (`now_site_id`, `now_site_code` …) and what `Module.state` is read from."""
+        from fleet.models.stop import Stop
+
         stay = Placement.objects.current().filter(module=OuterRef("pk"))
         return self.annotate(
-            now_site_id=models.Subquery(stay.values("site_id")[:1]),
-            now_site_code=models.Subquery(stay.values("site__code")[:1]),
-            now_site_name=models.Subquery(stay.values("site__name")[:1]),
-            now_bay=models.Subquery(stay.values("bay")[:1]),
+            now_site_id=Subquery(stay.values("site_id")[:1]),
+            now_site_code=Subquery(stay.values("site__code")[:1]),
+            now_site_name=Subquery(stay.values("site__name")[:1]),
+            now_site_kind=Subquery(stay.values("site__kind")[:1]),
+            now_bay=Subquery(stay.values("bay")[:1]),
+            was_placed=Exists(Placement.objects.standing().filter(module=OuterRef("pk"))),
+            is_stopped=Exists(Stop.objects.now().filter(module=OuterRef("pk"))),
+            stopped_since=Subquery(Stop.objects.now().filter(module=OuterRef("pk")).values("stopped_at")[:1]),
         )
+
+    def in_state(self, state: str) -> ModuleQuerySet:
+        """Of rows `with_state`: running, stopped, at a depot, without a place, scrapped."""
+        if state == ModuleState.SCRAPPED:
+            return self.filter(scrapped_on__isnull=False)
+        kept = self.filter(scrapped_on=None)
+        if state == ModuleState.AT_DEPOT:
+            return kept.filter(now_site_kind="depot")
+        if state == ModuleState.NO_PLACE:
+            return kept.filter(now_site_id=None, was_placed=True)
+        in_service = kept.filter(Q(now_site_kind__in=["field", "rig"]) | Q(now_site_id=None, was_placed=False))
+        return in_service.filter(is_stopped=state == ModuleState.STOPPED)
+
+
+class ModuleState(models.TextChoices):
+    """A module without any stay on record counts as in service."""
+
+    RUNNING = "running"
+    STOPPED = "stopped"
+    AT_DEPOT = "at a depot"
+    NO_PLACE = "without a place"
+    SCRAPPED = "scrapped"
 
 
 class Module(Coded, Versioned):
@@ -45,6 +74,18 @@ class Module(Coded, Versioned):
     history = kept_history()
 
     objects = ModuleQuerySet.as_manager()
+
+    @property
+    def state(self) -> str:
+        """Of a row read `with_state`."""
+        row: Any = self
+        if self.scrapped_on is not None:
+            return ModuleState.SCRAPPED
+        if row.now_site_kind == "depot":
+            return ModuleState.AT_DEPOT
+        if row.now_site_id is None and row.was_placed:
+            return ModuleState.NO_PLACE
+        return ModuleState.STOPPED if row.is_stopped else ModuleState.RUNNING
 
 
 class PlacementQuerySet(StrikeableQuerySet):
