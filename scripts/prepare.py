@@ -29,6 +29,7 @@ def main(arguments: list[str]) -> int:
     from django.core.exceptions import ImproperlyConfigured
     from django.core.management.base import SystemCheckError
     from django.db import DatabaseError
+    from psycopg import OperationalError
 
     try:
         django.setup()
@@ -41,7 +42,7 @@ def main(arguments: list[str]) -> int:
     except (NotReady, ImproperlyConfigured, SystemCheckError) as reason:
         say(str(reason))
         return 1
-    except DatabaseError as problem:
+    except (DatabaseError, OperationalError) as problem:
         say(f"The database cannot be used: {str(problem).strip()}")
         return 1
     except OSError as problem:
@@ -53,6 +54,7 @@ def main(arguments: list[str]) -> int:
 def prepare(*, demo: bool) -> str:
     from django.core.management import call_command
 
+    find_the_database()
     call_command("check", databases=["default"], stdout=sys.stderr, no_color=True)
     migrate()
     collect_static_files()
@@ -60,6 +62,24 @@ def prepare(*, demo: bool) -> str:
         return demo_notes()
     refuse_demo_passwords()
     return real_notes()
+
+
+def find_the_database() -> None:
+    """Ask once, directly: the pool would wait half a minute before it admits that nobody answers."""
+    from django.db import connection
+
+    if connection.vendor == "postgresql":
+        import psycopg
+
+        wanted = connection.settings_dict
+        psycopg.connect(
+            host=wanted["HOST"] or None,
+            port=wanted["PORT"] or None,
+            user=wanted["USER"] or None,
+            password=wanted["PASSWORD"] or None,
+            dbname=wanted["NAME"] or None,
+            connect_timeout=10,
+        ).close()
 
 
 def migrate() -> None:

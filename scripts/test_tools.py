@@ -32,7 +32,7 @@ def install_what_is_missing() -> str:
         return f"{advice}\n(No apt-get here. What is looked for: PostgreSQL's initdb and postgres, and {CHROMIUM}.)"
     as_root = root_prefix()
     if as_root is None:
-        return f"{advice}\n(It was not done here: that takes root, or sudo without a password.)"
+        return f"{advice}\n(It was not done here: it takes root, or sudo without a password.)"
     print(f"Installing {' and '.join(missing)} for the tests.", flush=True)
     # At run level 1 no package starts a service: the tests start a server of their own.
     quietly = [*as_root, "env", "DEBIAN_FRONTEND=noninteractive", "RUNLEVEL=1", "apt-get", "-q", "-y"]
