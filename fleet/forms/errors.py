@@ -1,0 +1,13 @@
+"""A refusal of an action, shown where the hand is."""
+
+from __future__ import annotations
+
+from django import forms
+
+from fleet.actions.errors import RecordError
+
+
+def add_record_error(form: forms.Form, error: RecordError) -> None:
+    """On the field that the refusal names, where the form has it; else on the form as a whole."""
+    field = error.field if error.field in form.fields else None
+    form.add_error(field, error.message)
