@@ -7,7 +7,8 @@ import math
 from collections.abc import Callable
 from decimal import Decimal
 
-THIN = "\u202f"  # narrow no-break space between thousands: a number never breaks over two lines
+# A thinner space between thousands would be usual; the vendored face has none that also holds a line together,
+# and what browsers put in its place is too narrow to be seen in bold.
 FIXED = "\u00a0"
 NOT_KNOWN = "not known"
 MONTHS = (
@@ -41,14 +42,22 @@ def fitting_digits(value: Number) -> int:
     return 1 if size >= 10 else 2
 
 
+def estimate_digits(value: Number) -> int:
+    """Decimal places of an estimate and both its ends: an interval is seldom known to three figures."""
+    size = abs(float(value))
+    if size >= 10:
+        return 0
+    return 1 if size >= 1 else 2
+
+
 def number(value: Number | None, digits: int | None = None) -> str:
-    """61400 becomes 61 400 with thin spaces; a minus sign is a real one."""
+    """61400 becomes 61 400 with spaces that never break; a minus sign is a real one."""
     if not known(value):
         return NOT_KNOWN
     if math.isinf(value):
         return "no end" if value > 0 else "no beginning"
     places = fitting_digits(value) if digits is None else digits
-    text = f"{abs(value):,.{places}f}".replace(",", THIN)
+    text = f"{abs(value):,.{places}f}".replace(",", FIXED)
     negative = value < 0 and any(character in "123456789" for character in text)
     return f"−{text}" if negative else text
 

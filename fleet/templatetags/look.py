@@ -76,14 +76,15 @@ def part_of(result: Any, name: str) -> Any:
 
 @register.simple_tag
 def estimate(result: Any, unit: str = "", digits: int | None = None, dash: bool = False) -> SafeString:
-    """The value of anything with estimate, lower and upper, with its interval in the softer ink; unit `share` for percents."""
-    places = None if digits in (None, "") else int(digits)  # a template's missing name arrives as ""
+    """A value with its interval in the softer ink; the unit `share` writes percents."""
     value, lower, upper = (part_of(result, name) for name in ("estimate", "lower", "upper"))
+    places = None if digits in (None, "") else int(digits)  # a template's missing name arrives as ""
+    shared = formats.estimate_digits(value) if places is None and formats.known(value) else places
 
     def write(end: formats.Number) -> str:
         if unit == "share":
             return formats.percent(end, places or 0)
-        return formats.number(formats.rounded(end) if places is None else end, places)
+        return formats.number(formats.rounded(end) if places is None else end, shared)
 
     text = write(value) if formats.known(value) else formats.NOT_KNOWN
     between = formats.ends(lower, upper, write, dash=dash)
@@ -93,7 +94,7 @@ def estimate(result: Any, unit: str = "", digits: int | None = None, dash: bool 
     if not between:
         return format_html('<span class="est"><b>{}</b>{}</span>', text, written_unit)
     shape = '<span class="est"><b>{}</b>{} <span class="ci">{}</span></span>' if dash else None
-    return format_html(shape or '<b class="num">{}</b>{} <span class="ci">({})</span>', text, written_unit, between)
+    return format_html(shape or '<b class="num">{}</b>{} <span class="ci num">({})</span>', text, written_unit, between)
 
 
 @register.simple_tag(takes_context=True)

@@ -38,6 +38,12 @@
     return value;
   };
 
+  const titled = (title) => {
+    if (!title) return title;
+    const given = typeof title === "string" ? { text: title } : title;
+    return { standoff: 10, ...given, font: { size: 14, ...given.font } };
+  };
+
   const axis = (given) => ({
     gridcolor: "var(--hair)",
     linecolor: "var(--ink)",
@@ -46,7 +52,7 @@
     fixedrange: narrow.matches, // a thumb scrolls the page, not the axis
     automargin: true,
     ...given,
-    title: typeof given?.title === "object" ? { standoff: 12, ...given.title } : given?.title,
+    title: titled(given?.title),
   });
 
   const laid = (given) => {
@@ -55,7 +61,7 @@
       plot_bgcolor: "rgba(0,0,0,0)",
       hovermode: "closest",
       dragmode: narrow.matches ? false : "zoom",
-      separators: ".\u202f",
+      separators: ".\u00a0",
       margin: { l: 56, r: 16, t: 12, b: 48 },
       legend: { orientation: "h", x: 0, y: 1.02, yanchor: "bottom", xanchor: "left" },
       ...given,
@@ -70,9 +76,7 @@
       autosize: true,
       transition: calm.matches ? { duration: 0 } : given.transition,
     };
-    delete layout.template;
-    delete layout.width;
-    delete layout.height;
+    for (const fixed of ["template", "width", "height"]) delete layout[fixed]; // the style sheet decides
     for (const key of new Set(["xaxis", "yaxis", ...Object.keys(given)])) {
       if (/^[xy]axis\d*$/.test(key)) layout[key] = axis(given[key]);
     }
@@ -100,13 +104,14 @@
 
   const draw = (host) => {
     const figure = figureOf(host);
+    const config = { ...CONFIG, displayModeBar: narrow.matches ? false : "hover" };
     if (!window.Plotly || !figure) {
       fall(host);
       return;
     }
     host.classList.add("chart-host");
     Promise.resolve()
-      .then(() => window.Plotly.react(host, resolved(figure.data ?? []), laid(figure.layout ?? {}), CONFIG))
+      .then(() => window.Plotly.react(host, resolved(figure.data ?? []), laid(figure.layout ?? {}), config))
       .catch(() => fall(host));
   };
 
@@ -135,11 +140,13 @@
   window.addEventListener("beforeprint", () => {
     before = document.documentElement.dataset.theme ?? "";
     document.documentElement.dataset.theme = "light";
+    document.documentElement.classList.add("printing");
     drawAll();
   });
   window.addEventListener("afterprint", () => {
     if (before) document.documentElement.dataset.theme = before;
     else delete document.documentElement.dataset.theme;
+    document.documentElement.classList.remove("printing");
     drawAll();
   });
 })();

@@ -43,18 +43,4 @@
     for (const details of document.querySelectorAll("form.filters > details")) details.open = false;
   };
   document.addEventListener("DOMContentLoaded", fold);
-
-  // A menu in the head closes by Escape or by a press elsewhere.
-  document.addEventListener("click", (event) => {
-    for (const menu of document.querySelectorAll("details.person[open]")) {
-      if (!menu.contains(event.target)) menu.open = false;
-    }
-  });
-  document.addEventListener("keydown", (event) => {
-    if (event.key !== "Escape") return;
-    for (const menu of document.querySelectorAll("details.person[open]")) {
-      menu.open = false;
-      menu.querySelector("summary").focus();
-    }
-  });
 })();
