@@ -2,7 +2,8 @@
 
 Days are ordinal day numbers (`date.toordinal()`, with the fraction of the day where an instant is known), so that
 both engines do plain arithmetic on them. The three clocks do not run while a module is stopped, at a depot or
-without a place after it has had one.
+without a place where it has placements at all. The last knot lies on `fleet.clocks.FAR_DAY`, so that every later day
+lies between two knots: drawings leave it out.
 """
 
 from __future__ import annotations
@@ -24,6 +25,8 @@ class ClockPoint(models.Model):
     strokes = models.FloatField(null=True)
     measured = models.BooleanField(default=False)  # a counter or meter was read here
     seen_working = models.BooleanField(default=False)  # a visit, or a reading that advanced: the module was looked at
+    strokes_read = models.BooleanField(default=False)
+    hours_read = models.BooleanField(default=False)
 
     class Meta:
         constraints = [models.UniqueConstraint(fields=["module", "day"], name="one_knot_a_day_part")]
