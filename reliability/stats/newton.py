@@ -52,7 +52,9 @@ def maximise(
     for iteration in range(1, MAXIMUM_ITERATIONS + 1):
         step = climbing_step(gradient, hessian)
         decrement = 0.5 * float(gradient @ step)
-        step = step * min(1.0, float(np.min(largest_step / np.maximum(np.abs(step), 1e-300))))
+        # shortened as a whole, also at the edge of the box: bending it would leave a narrow ridge
+        room = np.where(step > 0.0, upper - point, point - lower)
+        step = step * min(1.0, float(np.min(np.minimum(largest_step, room) / np.maximum(np.abs(step), 1e-300))))
         target = np.clip(point + step, lower, upper)
         moved = _climb(evaluate, point, value, target)
         if moved is None:

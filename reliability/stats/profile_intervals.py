@@ -106,7 +106,9 @@ def quantity_interval(
     if method == "wald":
         ends = [(centre - z * error, False), (centre + z * error, False)]
     else:
-        lowest, highest = range_of_psi or (centre - FARTHEST, centre + FARTHEST)
+        # far from the records log(-log S) itself is large, and its limits lie as far again
+        reach = FARTHEST + (3.0 * abs(centre) if scale.falling else 0.0)
+        lowest, highest = range_of_psi or (centre - reach, centre + reach)
         peak = evaluate(*best)[0]
         ends = [
             profile_limit(evaluate, curve, best, peak, z, centre, max(error, 1e-6), direction, farthest)
@@ -146,20 +148,20 @@ def profile_limit(
     The signed root of that fall is nearly straight in psi, so Newton steps on it need few profile maxima; a bracket
     guards them. Lawless, Statistical Models and Methods for Lifetime Data (2003), section 4.1 and appendix C.
     """
-    inside, outside = centre, None
-    free = curve.free_of(*best)
+    inside, outside, free, drift = centre, None, curve.free_of(*best), 0.0
     psi = centre + direction * min(z * error, 3.0)
     for _ in range(200):
         if direction * (psi - farthest) > 0:
             psi = farthest
-        height, slope, new_free = profile_maximum(evaluate, curve, psi, free)
+        height, slope, new_free = profile_maximum(evaluate, curve, psi, free + drift * (psi - inside))
         fall = math.sqrt(max(2.0 * (peak - height), 0.0)) if math.isfinite(height) else math.inf
         if abs(fall - z) < 1e-9 * z:
             return psi, False
         if fall < z:
-            inside, free = psi, new_free
             if psi == farthest:
                 return psi, True
+            drift = (new_free - free) / (psi - inside) if psi != inside else 0.0
+            inside, free = psi, new_free
         else:
             outside = psi
         if outside is not None and abs(outside - inside) <= 1e-12 * max(1.0, abs(inside)):
@@ -178,8 +180,10 @@ def _next_psi(
     inside: float,
     outside: float | None,
 ) -> float:
-    climb = -slope * direction  # how fast the fall's half square grows outward
-    guess = psi + direction * (z - fall) * fall / climb if math.isfinite(fall) and climb > 0 and fall > 0 else math.nan
+    """A Newton step on the root of the fall; half way where that leaves the bracket or the fall is far too deep."""
+    climb = -slope * direction  # how fast half the square of the fall grows outward
+    usable = 0.0 < fall < 4.0 * z and climb > 0.0
+    guess = psi + direction * (z - fall) * fall / climb if usable else math.nan
     if outside is None:
         reach = inside + direction * 2.0 * max(abs(inside - centre), 1e-6)
         return reach if not direction * (guess - inside) > 0 or direction * (guess - reach) > 0 else guess

@@ -129,9 +129,10 @@ def refuse_unbounded_shape(lifetimes: Lifetimes) -> None:
     if interval.any():
         latest = min(latest, float(lifetimes.durations[interval].min()))
     if earliest <= latest:
-        where = f"at the one age {latest:g}" if exact.size else f"between the ages {earliest:g} and {latest:g}"
+        where = f"at the age {latest:g}" if earliest == latest else f"at one age between {earliest:g} and {latest:g}"
+        who = "The failure" if lifetimes.failures == 1 else f"All {lifetimes.failures:g} failures"
         raise NoSpreadInFailures(
-            f"All {lifetimes.failures:g} failures can lie {where} and no part is known to have outlasted it, "
+            f"{who} can lie {where} and no part is known to have outlasted it, "
             "so the shape has no upper limit. Assume a shape (fit_weibull_known_shape), or wait for more failures."
         )
 

@@ -73,7 +73,7 @@ class WeibullLikelihood:
     def best_level(self, shape: float) -> float:
         """The level that maximises the likelihood for this shape; exact without intervals, else their right ends."""
         y = shape * self.log_ages
-        top = float(y.max())
+        top = float(y.max(initial=-1e300))
         total = float(np.exp(y - top) @ self.signed_weights)
         failures = self.exact_failures
         if self.intervals is not None:
