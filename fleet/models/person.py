@@ -24,8 +24,8 @@ class Role(models.TextChoices):
 
 class PersonQuerySet(models.QuerySet):
     def for_person(self, person: Person) -> PersonQuerySet:
-        """Managers see everybody; anybody else only themselves."""
-        if person.may("people"):
+        """The office sees everybody (the page of people is the managers' own); anybody else only themselves."""
+        if person.may("correct"):
             return self
         return self.filter(pk=person.pk)
 

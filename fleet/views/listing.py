@@ -19,7 +19,7 @@ PAGE_SIZE = 50
 
 @dataclass(frozen=True)
 class Column:
-    """One column: `cell` for the screen (see parts/table.html), `plain` for files, `sort` names the fields to sort by."""
+    """`cell` for the screen (see parts/table.html), `plain` for files, `sort` names the fields to sort by."""
 
     key: str
     label: str

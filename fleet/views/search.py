@@ -1,0 +1,69 @@
+"""The search box in the head: modules, sites and parts by part of their code or name."""
+
+from __future__ import annotations
+
+from typing import Any
+
+from django.http import HttpResponse
+from django.shortcuts import redirect, render
+from django.urls import reverse
+
+from fleet.forms.filters import folded, module_words
+from fleet.models import Module, Part, Site
+from fleet.rights import CATALOGUE, SEE, may, needs
+
+MOST = 20
+
+
+@needs(SEE)
+def search(request: Any) -> HttpResponse:
+    words = request.GET.get("q", "").replace("\0", "").strip()[:100]
+    if not words:
+        return render(request, "search/page.html", {"query": "", "found": []})
+    exact = request.seen(Module).filter(code=words.upper()).first()
+    if exact is not None:
+        return redirect("module", tag=exact.code)
+    return render(request, "search/page.html", {"query": words, "found": found(request, words)})
+
+
+def found(request: Any, words: str) -> list[dict[str, Any]]:
+    modules = module_words(request.seen(Module).with_state().select_related("type"), "", words)
+    sites = folded(request.seen(Site), "folded", words)
+    groups = [
+        {
+            "name": "Modules",
+            "all_url": f"{reverse('modules')}?q={words}",
+            "rows": [
+                {
+                    "name": each.code,
+                    "url": reverse("module", args=[each.code]),
+                    "more": " · ".join(filter(None, [each.type.code, each.now_site_name, each.now_bay])),
+                }
+                for each in modules.order_by("code_order")[: MOST + 1]
+            ],
+        },
+        {
+            "name": "Sites",
+            "all_url": f"{reverse('sites')}?q={words}",
+            "rows": [
+                {"name": each.title, "url": reverse("site", args=[each.code]), "more": each.code}
+                for each in sites.order_by("code_order")[: MOST + 1]
+            ],
+        },
+    ]
+    if may(request.user, CATALOGUE):
+        parts = folded(request.seen(Part), "folded", words)
+        groups.append(
+            {
+                "name": "Parts",
+                "all_url": f"{reverse('parts')}?q={words}",
+                "rows": [
+                    {"name": each.code, "url": reverse("edit_part", args=[each.code]), "more": each.name}
+                    for each in parts.order_by("code_order")[: MOST + 1]
+                ],
+            }
+        )
+    for group in groups:
+        group["more_than_shown"] = len(group["rows"]) > MOST
+        group["rows"] = group["rows"][:MOST]
+    return [group for group in groups if group["rows"]]
