@@ -63,7 +63,7 @@ def number(value: Number | None, digits: int | None = None) -> str:
 
 
 def rounded(value: Number, figures: int = 3) -> Number:
-    """The value to so many significant figures: an estimate of 61 034 strokes is written 61 000."""
+    """A large value to so many significant figures: an estimate of 61 034 strokes is written 61 000."""
     if not known(value) or math.isinf(value) or value == 0:
         return value
     places = figures - 1 - math.floor(math.log10(abs(value)))

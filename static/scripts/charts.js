@@ -112,6 +112,8 @@
     host.classList.add("chart-host");
     Promise.resolve()
       .then(() => window.Plotly.react(host, resolved(figure.data ?? []), laid(figure.layout ?? {}), config))
+      // the sentence and the table are what a screen reader is given; the drawing's loose numbers would only disturb
+      .then(() => host.querySelectorAll(".main-svg").forEach((svg) => svg.setAttribute("aria-hidden", "true")))
       .catch(() => fall(host));
   };
 
