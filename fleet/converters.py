@@ -8,7 +8,7 @@ from fleet.models.codes import CODE_LENGTH
 
 
 class CodeConverter:
-    regex = r"[A-Za-z0-9][A-Za-z0-9._-]{0,%d}" % (CODE_LENGTH - 1)
+    regex = rf"[A-Za-z0-9][A-Za-z0-9._-]{{0,{CODE_LENGTH - 1}}}"
 
     def to_python(self, value: str) -> str:
         return value.upper()

@@ -10,6 +10,7 @@ from django.core.exceptions import PermissionDenied
 from django.http import HttpRequest, HttpResponse
 
 from fleet.history import writing
+from fleet.models.book import zone_read_once
 from fleet.rights import PUBLIC, may, seen_by
 
 GetResponse = Callable[[HttpRequest], HttpResponse]
@@ -23,7 +24,7 @@ class WriterMiddleware:
 
     def __call__(self, request: HttpRequest) -> HttpResponse:
         person = request.user if request.user.is_authenticated else None
-        with writing(person=person, source="browser"):
+        with writing(person=person, source="browser"), zone_read_once():
             return self.get_response(request)
 
 

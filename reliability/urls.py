@@ -1,5 +1,10 @@
 from __future__ import annotations
 
-from django.urls import URLPattern, URLResolver
+from django.urls import URLPattern, URLResolver, path
 
-urlpatterns: list[URLPattern | URLResolver] = []
+import fleet.converters  # noqa: F401  (the sort of code in the addresses below)
+from reliability.views import today
+
+urlpatterns: list[URLPattern | URLResolver] = [
+    path("", today.today, name="today"),
+]

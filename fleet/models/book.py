@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+from contextlib import contextmanager
+from contextvars import ContextVar
 from decimal import Decimal
 
 from django.core.validators import MaxValueValidator, MinValueValidator
@@ -10,6 +13,27 @@ from django.db import models
 from fleet.history import kept_history
 from fleet.models.mixins import Versioned
 from fleet.models.zones import validate_zone
+
+_kept: ContextVar[dict[str, str] | None] = ContextVar("kept", default=None)
+
+
+@contextmanager
+def zone_read_once() -> Iterator[None]:
+    """Inside (one request), the book's zone is read from the database once."""
+    token = _kept.set({})
+    try:
+        yield
+    finally:
+        _kept.reset(token)
+
+
+def book_zone() -> str:
+    kept = _kept.get()
+    if kept is None:
+        return Book.load().zone
+    if "zone" not in kept:
+        kept["zone"] = Book.load().zone
+    return kept["zone"]
 
 
 class Book(Versioned):

@@ -63,9 +63,9 @@ class Site(Coded, Versioned):
 
     @property
     def tz(self) -> ZoneInfo:
-        from fleet.models.book import Book
+        from fleet.models.book import book_zone
 
-        return zone(self.zone or Book.load().zone)
+        return zone(self.zone or book_zone())
 
     def day_of(self, instant: dt.datetime) -> dt.date:
         """The site's own calendar day of an instant."""

@@ -1,0 +1,96 @@
+"""What on the records needs a decision today; the estimates beside it come from reliability/."""
+
+from __future__ import annotations
+
+import datetime as dt
+from typing import Any
+
+from django.db.models import Exists, OuterRef
+from django.utils import timezone
+
+from fleet.formats import counted
+from fleet.models import Fitting, LooksWrong, Module, ModuleState, Site, SiteKind, Stop
+from fleet.rights import CATALOGUE, CORRECT, LOG, may
+
+MOST = 12  # lines shown before “all of them”
+VISITS_WITHIN_DAYS = 7
+
+
+def stopped_now(request: Any) -> dict[str, Any]:
+    """Modules standing still, the longest first."""
+    stops = (
+        request.seen(Stop)
+        .now()
+        .filter(module__in=request.seen(Module).with_state().in_state(ModuleState.STOPPED).values("pk"))
+        .select_related("module", "site", "reported_by", "visit")
+        .order_by("stopped_at")
+    )
+    rows = list(stops[: MOST + 1])
+    return {"stops": rows[:MOST], "more_stops": len(rows) > MOST, "stop_count": stops.count()}
+
+
+def empty_positions(request: Any) -> list[Any]:
+    """Positions of modules in service that hold no part, though one stood there before."""
+    standing = request.seen(Fitting).running().filter(module=OuterRef("pk"), position=OuterRef("type__positions"))
+    before = request.seen(Fitting).standing().filter(module=OuterRef("pk"), position=OuterRef("type__positions"))
+    rows = (
+        request.seen(Module)
+        .filter(scrapped_on=None)
+        .filter(~Exists(standing), Exists(before))
+        .values_list("code", "type__positions__code")
+        .order_by("code_order")
+    )
+    return [{"module": module, "position": position} for module, position in rows[: MOST + 1]]
+
+
+def visits_due(request: Any, today: dt.date) -> list[Site]:
+    """Sites whose planned visit is due within a week, or overdue."""
+    until = today + dt.timedelta(days=VISITS_WITHIN_DAYS)
+    return list(
+        request.seen(Site)
+        .filter(next_visit_on__lte=until)
+        .exclude(kind=SiteKind.DEPOT)
+        .order_by("next_visit_on", "code_order")[:MOST]
+    )
+
+
+def sites_without_answer(request: Any) -> list[Site]:
+    """Sites where nobody said whether failures are reported at once: life estimates need it."""
+    if not may(request.user, CATALOGUE):
+        return []
+    rows = request.seen(Site).filter(reports_at_once=None).exclude(kind=SiteKind.DEPOT)
+    return list(rows.order_by("code_order")[:MOST])
+
+
+def waiting_marks(request: Any) -> list[LooksWrong]:
+    rows = request.seen(LooksWrong).waiting().select_related("module", "said_by").order_by("said_at")
+    return list(rows[:MOST])
+
+
+def sentence(request: Any, stop_count: int, marks: int) -> str:
+    modules = request.seen(Module).filter(scrapped_on=None).count()
+    if modules == 0:
+        return "No module of yours is on record yet."
+    still = "none stands still" if stop_count == 0 else f"{stop_count} {'stands' if stop_count == 1 else 'stand'} still"
+    waits = ""
+    if marks:
+        waits = f" {counted(marks, 'record waits', 'records wait')} for a word."
+    return f"Of {counted(modules, 'module')}, {still}.{waits}"
+
+
+def records_today(request: Any) -> dict[str, Any]:
+    """Everything the Today screen shows from the records alone."""
+    today = timezone.localdate()
+    marks = waiting_marks(request)
+    stopped = stopped_now(request)
+    return {
+        "today": today,
+        **stopped,
+        "empty_positions": empty_positions(request),
+        "visits_due": visits_due(request, today),
+        "sites_without_answer": sites_without_answer(request),
+        "marks": marks,
+        "may_settle": may(request.user, CORRECT),
+        "lead": sentence(request, stopped["stop_count"], len(marks)),
+        "may_log": may(request.user, LOG),
+    }
