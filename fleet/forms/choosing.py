@@ -1,0 +1,26 @@
+"""A choice among records that are already in hand: no query, and the record itself as the cleaned value."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from typing import Any
+
+from django import forms
+
+
+class PickField(forms.ChoiceField):
+    """`options` are (record, words); the cleaned value is the record, or None where nothing was picked."""
+
+    default_error_messages = {"invalid_choice": "This is not among the choices here. Choose one of the list."}
+
+    def __init__(self, options: Iterable[tuple[Any, str]], *, nothing: str | None = None, **kwargs: Any) -> None:
+        pairs = list(options)
+        self.records = {str(record.pk): record for record, _ in pairs}
+        choices = [(str(record.pk), words) for record, words in pairs]
+        super().__init__(choices=[("", nothing), *choices] if nothing is not None else choices, **kwargs)
+
+    def prepare_value(self, value: Any) -> Any:
+        return str(value.pk) if hasattr(value, "pk") else value
+
+    def clean(self, value: Any) -> Any:
+        return self.records.get(super().clean(value))
