@@ -4,8 +4,8 @@ from __future__ import annotations
 
 from bisect import bisect_right
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
 from itertools import groupby
+from typing import NamedTuple
 
 RECENT_DAYS = 90.0  # the recent duty is taken over the last readings that span this many service days
 SHORTEST_SPAN = 7.0  # readings closer together than this many service days say nothing about duty
@@ -13,8 +13,7 @@ SHORTEST_SPAN = 7.0  # readings closer together than this many service days say 
 ServiceDays = Callable[[float], float]
 
 
-@dataclass(frozen=True, slots=True)
-class Face:
+class Face(NamedTuple):
     """What the face of one counter showed; `day` is an ordinal day with its fraction."""
 
     day: float
@@ -23,8 +22,7 @@ class Face:
     restarts: str = ""
 
 
-@dataclass(frozen=True, slots=True)
-class Anchor:
+class Anchor(NamedTuple):
     """An accumulated count that was measured; `advanced` where it is more than the measured count before it."""
 
     day: float
@@ -32,8 +30,7 @@ class Anchor:
     advanced: bool = False
 
 
-@dataclass(frozen=True, slots=True)
-class Stretch:
+class Stretch(NamedTuple):
     """A stay in service with the duty its site is said to have, or without."""
 
     from_day: float
@@ -46,8 +43,7 @@ def accumulate(faces: Sequence[Face]) -> list[Anchor]:
 
     The first counter starts with its face. A counter with another serial starts at its first face: what ran between
     the last face of the old and the first of the new is not counted. A reset counter counts from 0; one that rolled
-    over went on to the next power of ten above its last face. A counter named for the first time is the unnamed one
-    before it, unless its face is lower.
+    over went on to the next power of ten above its last face. A reading without a serial is the same counter still.
     """
     anchors: list[Anchor] = []
     total, last, counter = 0.0, 0.0, ""
@@ -59,7 +55,7 @@ def accumulate(faces: Sequence[Face]) -> list[Anchor]:
             total += _next_power_of_ten(last) - last + face.value
         elif face.restarts == "reset":
             total += face.value
-        elif not _changed(counter, last, face):
+        elif face.counter in {"", counter}:
             total += max(0.0, face.value - last)
         last, counter = face.value, face.counter or counter
         anchors.append(Anchor(face.day, total, bool(anchors) and total > before))
@@ -75,12 +71,6 @@ def _old_counter_first(faces: Sequence[Face]) -> list[Face]:
         ordered.extend(same)
         counter = ordered[-1].counter or counter
     return ordered
-
-
-def _changed(counter: str, last: float, face: Face) -> bool:
-    if not face.counter or face.counter == counter:
-        return False
-    return bool(counter) or face.value < last
 
 
 def _next_power_of_ten(value: float) -> float:
@@ -122,11 +112,13 @@ class CountClock:
         self.duty = self._recent_duty(anchors)
         self.anchors = self._from_start(anchors, start)
         self.days = [anchor.day for anchor in self.anchors]
+        self.served = [service(day) for day in self.days]
         self.known = self.measured or (
             bool(stretches) and all(part.duty is not None for part in stretches if self._served(part))
         )
 
-    def at(self, day: float) -> float | None:
+    def at(self, day: float, served: float | None = None) -> float | None:
+        """The count at a moment; `served` are the service days by then, where the caller knows them."""
         if not self.known:
             return None
         if not self.measured:
@@ -135,11 +127,11 @@ class CountClock:
         if place == 0:
             return self.anchors[0].total
         before = self.anchors[place - 1]
-        ran = self.service(day) - self.service(before.day)
+        ran = (self.service(day) if served is None else served) - self.served[place - 1]
         if place == len(self.anchors):
             return before.total + (self.duty or 0.0) * ran
         after = self.anchors[place]
-        whole = self.service(after.day) - self.service(before.day)
+        whole = self.served[place] - self.served[place - 1]
         # counts that rose while the module was out of service are spread over the calendar
         share = ran / whole if whole > 0 else (day - before.day) / (after.day - before.day)
         return before.total + (after.total - before.total) * share
@@ -157,9 +149,12 @@ class CountClock:
             return site
         last = anchors[-1]
         now = self.service(last.day)
-        spans = [(now - self.service(anchor.day), anchor) for anchor in anchors[:-1]]
-        long_enough = [pair for pair in spans if pair[0] >= RECENT_DAYS]
-        span, base = long_enough[-1] if long_enough else spans[0]
+        base = anchors[0]
+        for anchor in reversed(anchors[:-1]):
+            if now - self.service(anchor.day) >= RECENT_DAYS:
+                base = anchor
+                break
+        span = now - self.service(base.day)
         if span >= SHORTEST_SPAN:
             return (last.total - base.total) / span
         return site

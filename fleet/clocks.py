@@ -11,6 +11,7 @@ import datetime as dt
 from bisect import bisect_left, bisect_right
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, field
+from typing import NamedTuple
 
 from fleet.clock_counts import CountClock, Face, Stretch, accumulate, with_fitting_counts
 
@@ -18,8 +19,7 @@ FAR_DAY = float(dt.date(2199, 12, 31).toordinal())
 NOON = 0.5  # what is known only as a day is put in its middle on the counters
 
 
-@dataclass(frozen=True, slots=True)
-class Stay:
+class Stay(NamedTuple):
     from_day: int
     to_day: int | None  # that day no more
     site: int
@@ -37,8 +37,7 @@ class Stay:
         return FAR_DAY if self.to_day is None else float(self.to_day)
 
 
-@dataclass(frozen=True, slots=True)
-class Span:
+class Span(NamedTuple):
     """One fitting: its days, its instants where a visit tells them, and the counts measured at its ends."""
 
     fitting: int
@@ -71,8 +70,7 @@ class ModuleRecord:
     records_day: int | None = None
 
 
-@dataclass(frozen=True, slots=True)
-class Knot:
+class Knot(NamedTuple):
     day: float
     days: float
     hours: float | None
@@ -83,8 +81,7 @@ class Knot:
     hours_read: bool
 
 
-@dataclass(frozen=True, slots=True)
-class SpanClock:
+class SpanClock(NamedTuple):
     """The columns of FittingClock for one fitting."""
 
     fitting_id: int
@@ -238,19 +235,25 @@ def _knots(service: Service, strokes: CountClock, hours: CountClock, seen: set[f
     days = {start, FAR_DAY, *service.starts, *service.ends, *seen, *strokes_read, *hours_read}
     for stretches in (strokes.stretches, hours.stretches):
         days.update(end for stretch in stretches for end in (stretch.from_day, stretch.to_day))
-    return [
-        Knot(
-            day=day,
-            days=service.at(day),
-            hours=hours.at(day),
-            strokes=strokes.at(day),
-            measured=day in strokes_read or day in hours_read,
-            seen_working=day in seen,
-            strokes_read=day in strokes_read,
-            hours_read=day in hours_read,
+    made = []
+    for day in sorted(days):
+        if not start <= day <= FAR_DAY:
+            continue
+        served = service.at(day)
+        stroke, hour = day in strokes_read, day in hours_read
+        made.append(
+            Knot(
+                day=day,
+                days=served,
+                hours=hours.at(day, served),
+                strokes=strokes.at(day, served),
+                measured=stroke or hour,
+                seen_working=day in seen,
+                strokes_read=stroke,
+                hours_read=hour,
+            )
         )
-        for day in sorted(day for day in days if start <= day <= FAR_DAY)
-    ]
+    return made
 
 
 def _span_clock(
@@ -264,51 +267,50 @@ def _span_clock(
     records_day = records_start(record, span)
     good_day, entered = _last_good(span, seen)
     good_at = None if good_day is None else good_day + (NOON if entered else 0.0)
-    columns: dict[str, float | None] = {
-        "days_at_fit": None if span.fitted_day is None else service.at(span.fitted_day),
-        "days_at_records": None if records_day is None else service.at(records_day),
-        "days_at_good": None if good_day is None else service.at(good_day),
-        "days_at_end": None if span.end_day is None else service.at(span.end_day),
-    }
-    measured: dict[str, bool] = {}
-    for name, clock in (("strokes", strokes), ("hours", hours)):
-        counts, measured[name] = _counts(span, clock, name, records_day, good_at)
-        columns.update(counts)
     return SpanClock(
-        fitting_id=span.fitting,
-        module_id=record.module,
-        site_id=served_site(record.stays, span),
-        fitted_day=span.fitted_day,
-        end_day=span.end_day,
-        records_day=records_day,
-        last_good_day=good_day,
-        last_good_entered=entered,
-        strokes_measured=measured["strokes"],
-        hours_measured=measured["hours"],
-        **columns,  # type: ignore[arg-type]
+        span.fitting,
+        record.module,
+        served_site(record.stays, span),
+        span.fitted_day,
+        span.end_day,
+        records_day,
+        good_day,
+        entered,
+        None if span.fitted_day is None else service.at(span.fitted_day),
+        None if records_day is None else service.at(records_day),
+        None if good_day is None else service.at(good_day),
+        None if span.end_day is None else service.at(span.end_day),
+        *_counts(span, hours, span.hours_at_fit, span.hours_at_removal, records_day, good_at),
+        *_counts(span, strokes, span.strokes_at_fit, span.strokes_at_removal, records_day, good_at),
+        _measured(span, strokes, span.strokes_at_fit, span.strokes_at_removal),
+        _measured(span, hours, span.hours_at_fit, span.hours_at_removal),
     )
 
 
+Count = float | None
+
+
 def _counts(
-    span: Span, clock: CountClock, name: str, records_day: int | None, good_at: float | None
-) -> tuple[dict[str, float | None], bool]:
+    span: Span, clock: CountClock, at_fit: Count, at_removal: Count, records_day: int | None, good_at: float | None
+) -> tuple[Count, Count, Count, Count]:
     """One counter at the ends of a fitting; a count written down there beats the line between readings."""
-    at_fit: float | None = getattr(span, f"{name}_at_fit")
-    at_end: float | None = getattr(span, f"{name}_at_removal") if span.end_day == span.removed_day else None
-    fit_known = at_fit is not None or (span.fitted_day is not None and clock.measured_at(_fitted_at(span)))
-    end_known = span.end_day is None or at_end is not None or clock.measured_at(_ended_at(span))
     if at_fit is None and span.fitted_day is not None:
         at_fit = clock.at(_fitted_at(span))
+    at_end = at_removal if span.end_day == span.removed_day else None
     if at_end is None and span.end_day is not None:
         at_end = clock.at(_ended_at(span))
         if at_end is not None and at_fit is not None:
             at_end = max(at_end, at_fit)
-    return {
-        f"{name}_at_fit": at_fit,
-        f"{name}_at_records": None if records_day is None else clock.at(records_day),
-        f"{name}_at_good": None if good_at is None else clock.at(good_at),
-        f"{name}_at_end": at_end,
-    }, fit_known and end_known
+    at_records = None if records_day is None else clock.at(records_day)
+    at_good = None if good_at is None else clock.at(good_at)
+    return at_fit, at_records, at_good, at_end
+
+
+def _measured(span: Span, clock: CountClock, at_fit: Count, at_removal: Count) -> bool:
+    fit_known = at_fit is not None or (span.fitted_day is not None and clock.measured_at(_fitted_at(span)))
+    if not fit_known or span.end_day is None:
+        return fit_known
+    return (at_removal is not None and span.end_day == span.removed_day) or clock.measured_at(_ended_at(span))
 
 
 def _last_good(span: Span, seen: Sequence[float]) -> tuple[float | None, bool]:
@@ -370,12 +372,6 @@ def site_on(stays: Sequence[Stay], day: int) -> int | None:
 
 
 def _span_without_clock(record: ModuleRecord, span: Span) -> SpanClock:
-    nothing = dict.fromkeys(SpanClock.__dataclass_fields__)
-    known = {
-        "fitting_id": span.fitting,
-        "module_id": record.module,
-        "last_good_entered": False,
-        "strokes_measured": False,
-        "hours_measured": False,
-    }
-    return SpanClock(**{**nothing, **known})  # type: ignore[arg-type]
+    nothing: dict[str, None] = dict.fromkeys(SpanClock._fields)
+    flags = dict.fromkeys(("last_good_entered", "strokes_measured", "hours_measured"), False)
+    return SpanClock(**{**nothing, **flags, "fitting_id": span.fitting, "module_id": record.module})  # type: ignore[arg-type]
