@@ -66,6 +66,7 @@ class Listing:
             self.template,
             {
                 "filter": chosen,
+                "form": None,
                 "columns": [column.head() for column in self.columns],
                 "rows": [{"cells": [column.cell(row) for column in self.columns]} for row in page],
                 "page": page,
