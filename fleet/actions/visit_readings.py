@@ -1,0 +1,64 @@
+"""The counter and the plays read at a visit, or without one."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+from fleet.actions.checks_counters import check_counter
+from fleet.actions.checks_parts import check_position
+from fleet.actions.checks_places import Place
+from fleet.actions.checks_values import choose, clean_columns
+from fleet.actions.entries import CounterEntry
+from fleet.actions.errors import BadValue
+from fleet.actions.measured import MeasuredEnds
+from fleet.models import Person, Position, Reading, Restart, Visit
+
+
+def write_counter(visit: Visit, counter: CounterEntry, place: Place, by: Person | None) -> Reading:
+    reading = Reading(
+        module=visit.module,
+        site=place.site,
+        read_at=visit.happened_at,
+        visit=visit,
+        known_on=visit.known_on,
+        entered_by=by,
+    )
+    return write_face(reading, counter, place)
+
+
+def write_face(reading: Reading, counter: CounterEntry, place: Place) -> Reading:
+    """Checks what the counter says against its neighbours, then stores the reading."""
+    if counter.strokes is None and counter.hours is None:
+        raise BadValue("The counter is missing. Enter its number.", field="strokes")
+    choose(counter.restarts, Restart, field="restarts")
+    reading.strokes, reading.hours = counter.strokes, counter.hours
+    reading.counter, reading.restarts = counter.counter, counter.restarts
+    clean_columns(reading)
+    check_counter(reading, place.zone)
+    ends = MeasuredEnds(reading)
+    reading.save()
+    ends.follow()
+    return reading
+
+
+def write_play(visit: Visit, play: Mapping[Position, float], by: Person | None) -> None:
+    for position, play_mm in play.items():
+        reading = Reading(
+            module=visit.module,
+            site=visit.site,
+            read_at=visit.happened_at,
+            visit=visit,
+            known_on=visit.known_on,
+            entered_by=by,
+        )
+        write_play_of(reading, position, play_mm)
+
+
+def write_play_of(reading: Reading, position: Position | None, play_mm: float | None) -> Reading:
+    check_position(position, reading.module)
+    if play_mm is None:
+        raise BadValue("The measured play is missing. Enter it in millimetres.", field="play_mm")
+    reading.position, reading.play_mm = position, play_mm
+    clean_columns(reading)
+    reading.save()
+    return reading

@@ -1,0 +1,71 @@
+"""How a visit leaves its module: running ends a stop, stopped begins one."""
+
+from __future__ import annotations
+
+import datetime as dt
+
+from fleet.actions.checks_places import Place
+from fleet.actions.checks_stops import check_stop, next_change, standing_stops
+from fleet.actions.writes import add, save_again
+from fleet.models import Left, Person, Stop, Visit
+
+
+def leave_module(visit: Visit, stopped_at: dt.datetime | None, place: Place, by: Person | None) -> None:
+    if visit.left == Left.RUNNING:
+        end_open_stop(visit, stopped_at, place, by)
+    elif visit.left == Left.STOPPED:
+        open_stop(visit, stopped_at, place, by)
+
+
+def end_open_stop(visit: Visit, stopped_at: dt.datetime | None, place: Place, by: Person | None) -> None:
+    """A stop reported meanwhile ends; one that nobody reported is written down whole."""
+    open_now = Stop.objects.now().filter(module=visit.module, stopped_at__lte=visit.happened_at).first()
+    if open_now is not None:
+        open_now.running_at = visit.happened_at
+        save_again(open_now)
+        stop_again(visit, place, by)
+    elif stopped_at is not None:
+        stop = new_stop(visit, stopped_at, place, by)
+        stop.running_at = visit.happened_at
+        check_stop(stop, standing_stops(visit.module), place.zone)
+        add(stop)
+
+
+def stop_again(visit: Visit, place: Place, by: Person | None) -> None:
+    """A visit entered late ended the stop, but a later one had found or left the module standing still."""
+    later = (
+        Visit.objects.standing()
+        .filter(module=visit.module, happened_at__gt=visit.happened_at, left=Left.STOPPED)
+        .order_by("happened_at")
+        .first()
+    )
+    if later is not None:
+        add(new_stop(later, later.happened_at, place, by))
+
+
+def open_stop(visit: Visit, stopped_at: dt.datetime | None, place: Place, by: Person | None) -> None:
+    """None if it stands already; entered late, it lasts until the records show the module running or stopped again."""
+    stops = standing_stops(visit.module)
+    since = stopped_at or visit.happened_at
+    if any(stop.stopped_at <= visit.happened_at and covers_end(stop, visit.happened_at) for stop in stops):
+        return
+    stop = new_stop(visit, since, place, by)
+    stop.running_at = next_change(visit.module, visit.happened_at, stops)
+    check_stop(stop, stops, place.zone)
+    add(stop)
+
+
+def covers_end(stop: Stop, instant: dt.datetime) -> bool:
+    return stop.running_at is None or stop.running_at > instant
+
+
+def new_stop(visit: Visit, stopped_at: dt.datetime, place: Place, by: Person | None) -> Stop:
+    return Stop(
+        module=visit.module,
+        site=visit.site,
+        stopped_at=stopped_at,
+        reported_by=by,
+        known_on=visit.known_on,
+        visit=visit,
+        entered_by=by,
+    )
