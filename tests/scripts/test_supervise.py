@@ -109,8 +109,9 @@ def test_a_second_stop_does_not_wait(folder: Path) -> None:
 def test_nothing_outlives_a_supervisor_that_is_killed(folder: Path) -> None:
     watched = Watched(folder)
     watched.process.kill()
-    watched.process.communicate()
+    watched.process.wait(timeout=20)
     wait_until(watched.all_gone, "both stand-ins had stopped")
+    watched.process.communicate(timeout=20)
 
 
 def test_the_end_of_a_process_is_said_in_words() -> None:

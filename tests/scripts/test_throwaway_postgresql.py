@@ -59,8 +59,9 @@ def test_it_is_gone_after_a_stop_from_outside() -> None:
 def test_even_a_killed_run_leaves_no_server() -> None:
     process, folder, pid = begin("sys.stdin.close()")
     process.kill()
-    process.communicate()
+    process.wait(timeout=20)
     wait_until(lambda: not alive(pid), "the server had stopped")
+    process.communicate(timeout=20)
     subprocess.run(["rm", "-rf", str(folder.parent)], check=True)
 
 
