@@ -60,17 +60,26 @@ class Curve(Protocol):
 
 @dataclass(frozen=True)
 class Scale:
-    """How psi is turned back into the quantity; falling where a larger psi is a smaller quantity."""
+    """How psi is turned back into the quantity (and its slope); falling where a larger psi is a smaller quantity."""
 
     back: Callable[[float], float]
+    slope: Callable[[float], float]
     lowest: float
     highest: float
     falling: bool = False
 
 
-LOG = Scale(back=lambda psi: float(np.exp(min(psi, 709.0))), lowest=0.0, highest=np.inf)
+def _capped_exp(psi: float) -> float:
+    return math.exp(min(psi, 709.0))
+
+
+LOG = Scale(back=_capped_exp, slope=_capped_exp, lowest=0.0, highest=math.inf)
 LOG_LOG_SURVIVAL = Scale(
-    back=lambda psi: float(np.exp(-np.exp(min(psi, 700.0)))), lowest=0.0, highest=1.0, falling=True
+    back=lambda psi: math.exp(-_capped_exp(psi)),
+    slope=lambda psi: math.exp(psi - _capped_exp(psi)) if psi < 700.0 else 0.0,
+    lowest=0.0,
+    highest=1.0,
+    falling=True,
 )
 
 
@@ -101,8 +110,9 @@ def quantity_interval(
     error = float(np.sqrt(max(float(gradient @ covariance @ gradient), 0.0)))
     estimate = scale.back(centre)
     if method == "wald-plain":
-        half = z * error * _slope_back(scale, centre)
-        return Interval(quantity, estimate, estimate - half, estimate + half, confidence_level, method)
+        half = z * error * scale.slope(centre)
+        low, high = max(scale.lowest, estimate - half), min(scale.highest, estimate + half)
+        return Interval(quantity, estimate, low, high, confidence_level, method)
     if method == "wald":
         ends = [(centre - z * error, False), (centre + z * error, False)]
     else:
@@ -125,11 +135,6 @@ def quantity_interval(
         low_open,
         high_open,
     )
-
-
-def _slope_back(scale: Scale, psi: float) -> float:
-    value = scale.back(psi)
-    return value if not scale.falling else value * float(np.exp(psi))
 
 
 def profile_limit(

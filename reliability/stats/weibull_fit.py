@@ -122,7 +122,10 @@ def refuse_unbounded_shape(lifetimes: Lifetimes) -> None:
         )
     exact = lifetimes.durations[lifetimes.is_exact]
     interval = lifetimes.is_interval
-    outlasted = np.where(interval, lifetimes.last_good, np.where(lifetimes.observed, 0.0, lifetimes.durations)).max()
+    # good when observation began and at no later look: bounds nothing, however late that was
+    seen_good = interval & (lifetimes.last_good > lifetimes.entries)
+    ends = np.where(seen_good, lifetimes.last_good, np.where(lifetimes.observed, 0.0, lifetimes.durations))
+    outlasted = ends.max()
     earliest, latest = float(outlasted), np.inf
     if exact.size:
         earliest, latest = max(earliest, float(exact.max())), float(exact.min())

@@ -118,9 +118,14 @@ def weibull_likelihood(lifetimes: Lifetimes) -> WeibullLikelihood:
     """Prepare the rows once: logs from the reference age, signed weights, equal ages merged."""
     exact, interval = lifetimes.is_exact, lifetimes.is_interval
     durations, weights = lifetimes.durations, lifetimes.weights
-    log_reference = _reference(lifetimes)
+    log_reference = reference_log_age(lifetimes)
     ends = np.where(interval, lifetimes.last_good, durations) if lifetimes.has_intervals else durations
-    ages, signed = _merged(ends, weights, lifetimes.entries if lifetimes.has_entries else None)
+    signed = weights
+    if lifetimes.has_entries:
+        late = lifetimes.entries > 0
+        ends = np.concatenate([ends, lifetimes.entries[late]])
+        signed = np.concatenate([weights, -weights[late]])
+    ages, signed = merged_ages(ends, signed)
     log_exact = np.log(durations[exact])
     exact_weights = weights[exact]
     exact_failures = float(exact_weights.sum())
@@ -129,21 +134,21 @@ def weibull_likelihood(lifetimes: Lifetimes) -> WeibullLikelihood:
         log_reference=log_reference,
         log_ages=np.log(ages) - log_reference,
         signed_weights=signed,
-        intervals=_interval_rows(lifetimes, log_reference) if lifetimes.has_intervals else None,
+        intervals=interval_rows(lifetimes, log_reference) if lifetimes.has_intervals else None,
         exact_failures=exact_failures,
         sum_log_exact=float(exact_weights @ (log_exact - log_reference)),
         constant=-sum_log_exact,
     )
 
 
-def _reference(lifetimes: Lifetimes) -> float:
+def reference_log_age(lifetimes: Lifetimes) -> float:
     """Mean log age of the failures (or of all lives where none failed): the level is then near 0."""
     chosen = lifetimes.observed if lifetimes.observed.any() else np.ones(len(lifetimes), dtype=bool)
     weights = lifetimes.weights[chosen]
     return float(weights @ np.log(lifetimes.durations[chosen]) / weights.sum())
 
 
-def _interval_rows(lifetimes: Lifetimes, log_reference: float) -> IntervalRows:
+def interval_rows(lifetimes: Lifetimes, log_reference: float) -> IntervalRows:
     rows = lifetimes.is_interval
     left, right = lifetimes.last_good[rows], lifetimes.durations[rows]
     from_zero = left <= 0.0
@@ -152,15 +157,10 @@ def _interval_rows(lifetimes: Lifetimes, log_reference: float) -> IntervalRows:
     return IntervalRows(np.log(right) - log_reference, ratio, lifetimes.weights[rows])
 
 
-def _merged(ends: FloatArray, weights: FloatArray, entries: FloatArray | None) -> tuple[FloatArray, FloatArray]:
-    """Ages > 0 and signed weights; equal ages merged where that is cheap."""
-    ages, signed = ends, weights
-    if entries is not None:
-        late = entries > 0
-        ages = np.concatenate([ends, entries[late]])
-        signed = np.concatenate([weights, -weights[late]])
-    small_whole = ages.max() <= max(100_000, 4 * ages.size) and bool((ages == np.floor(ages)).all())
-    if small_whole:
+def merged_ages(ages: FloatArray, signed: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Ages > 0 and their signed weights; equal ages merged where that is cheap."""
+    largest = ages.max(initial=0.0)
+    if largest <= max(100_000, 4 * ages.size) and bool((ages == np.floor(ages)).all()):
         sums = np.bincount(ages.astype(np.int64), weights=signed)
         distinct = np.flatnonzero(sums).astype(float)
         sums = sums[sums != 0.0]

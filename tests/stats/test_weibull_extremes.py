@@ -38,6 +38,7 @@ def assert_answers(fit, lives):
         (Lifetimes([5, 9], [1, 1], last_good=[2, 4]), NoSpreadInFailures, "at one age between 4 and 5"),
         (Lifetimes([10, 20], [1, 1], last_good=0), NoSpreadInFailures, "between 0 and 10"),
         (Lifetimes([5, 8], [1, 1], last_good=[2, 5]), NoSpreadInFailures, "at the age 5"),
+        (Lifetimes([1, 3], [1, 1], entries=[0, 2], last_good=[None, 2]), NoSpreadInFailures, "at the age 1"),
         (Lifetimes([1000, 1000.0001], [1, 1]), NoSpreadInFailures, "record ages more finely"),
         (Lifetimes([1, 10, 1, 10], [1, 1, 0, 0], last_good=0, weights=[5, 2, 5, 8]), UndefinedEstimate, "goes to 0"),
         (Lifetimes([2, 100], [1, 1], entries=[1, 10]), UndefinedEstimate, "assume a shape"),
