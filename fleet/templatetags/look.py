@@ -125,6 +125,17 @@ def sort_state(context: template.Context, key: str) -> str:
     return {key: "ascending", f"-{key}": "descending"}.get(now, "")
 
 
+@register.simple_tag(takes_context=True)
+def first_on_page(context: template.Context, name: str) -> bool:
+    """True the first time on a page: what a chart brings along is brought once, however many charts there are."""
+    request = getattr(context, "request", None) or context.get("request")
+    seen = context.dicts[0] if request is None else request.__dict__
+    key = f"_seen_{name}"
+    first = key not in seen
+    seen[key] = True
+    return first
+
+
 def written(value: Any, digits: int | None) -> Any:
     """A cell's plain value as people read it; text, and what is marked as safe, stays as it is."""
     if value is None or value == "":

@@ -9,6 +9,14 @@
     row.scrollLeft = current.offsetLeft - (row.clientWidth - current.offsetWidth) / 2;
   });
 
+  // A sheet made for paper has a button that prints it; without scripts the browser's own menu does.
+  document.addEventListener("DOMContentLoaded", () => {
+    for (const button of document.querySelectorAll("button[data-print]")) {
+      button.hidden = false;
+      button.addEventListener("click", () => window.print());
+    }
+  });
+
   // A menu in the head closes by Escape or by a press elsewhere.
   document.addEventListener("click", (event) => {
     for (const menu of document.querySelectorAll("details.person[open]")) {

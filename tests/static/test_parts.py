@@ -138,6 +138,16 @@ def test_chart_has_a_sentence_above_and_a_table_below() -> None:
     assert 'id="plotly.js-style-global" class="no-inline-styles"' in text
 
 
+def test_two_charts_bring_the_library_once() -> None:
+    chart = {"sentence": "Nothing yet.", "figure": {"data": [], "layout": {}}}
+    request = RequestFactory().get("/life/")
+    texts = [
+        render_to_string("parts/chart.html", {"request": request, "chart": chart | {"id": name}}) for name in ("a", "b")
+    ]
+    assert [text.count("plotly-basic.min.js") for text in texts] == [1, 0]
+    assert part("chart", chart=chart | {"id": "c"}).count("plotly-basic.min.js") == 1  # another page
+
+
 def test_progress_can_be_cancelled_until_it_has_ended() -> None:
     work = {"title": "Import", "state": "running", "done": 48210, "total": 120000, "ended": False}
     running = part("progress", work=work, work_url="/work/1/", cancel_url="/work/1/cancel/")
