@@ -85,5 +85,6 @@ class DataVersion(models.Model):
     @classmethod
     def raise_version(cls) -> None:
         """Last in a transaction: the row is locked from here to the commit."""
+        # no history: a counter
         if not cls.objects.filter(pk=1).update(version=models.F("version") + 1):
             cls.objects.get_or_create(pk=1)

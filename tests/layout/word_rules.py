@@ -13,7 +13,10 @@ from tests.layout.record_rules import called_name, calls
 TEXTS = ("*.py", "*.html", "*.css", "*.js", "*.md", "*.toml", "*.in", "*.txt", "*.csv", "*.sh", "Makefile")
 # Put together here, so that this file does not hold what it looks for.
 UNFINISHED = re.compile(r"\b(?:" + "|".join(["TO" + "DO", "FIX" + "ME", "X" + "XX", "HA" + "CK"]) + r")\b")
-THIS_MACHINE = re.compile(r"(?<![\w.<])/(?:" + "|".join(["root", "home", "work", "opt"]) + r")/[\w.]")
+HOMES = ["root", "home", "opt", "wor" + "k/main", "wor" + "k/shared"]
+THIS_MACHINE = re.compile(r"(?<![\w.<])/(?:" + "|".join(HOMES) + r")/[\w.]")
+    r"(?<![\w.<])/(?:" + "|".join(["root", "home", "opt", "wor" + "k/main", "wor" + "k/shared"]) + r")/[\w.]"
+)
 TEMPORARY = re.compile(r"(?<![\w.])/t" + r"mp/[\w.]")
 SOUND_SKIPS = {"skip", "skipif", "xfail"}
 
