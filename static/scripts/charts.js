@@ -2,8 +2,9 @@
 // Colours in a figure are names of the style sheet, "var(--p1)", and follow the theme. Without Plotly the table stays.
 (() => {
   "use strict";
-  if (window.halfnutCharts) return; // each chart on a page brings this script along
+  if (window.halfnutCharts) return; // a list brought in anew brings this script along once more
   window.halfnutCharts = true;
+  const library = document.currentScript.dataset.plotly;
 
   const CONFIG = {
     displaylogo: false,
@@ -119,10 +120,15 @@
 
   const hosts = () => document.querySelectorAll("div.chart[data-chart]");
   const drawAll = () => hosts().forEach(draw);
+  const drawAgain = () => window.Plotly && drawAll();
 
   const start = () => {
     document.body.append(probe);
-    drawAll();
+    const script = document.createElement("script");
+    script.src = library;
+    script.addEventListener("load", drawAll);
+    script.addEventListener("error", drawAll);
+    document.head.append(script);
   };
   if (document.readyState === "loading") document.addEventListener("DOMContentLoaded", start);
   else start();
@@ -130,12 +136,12 @@
   // A list that htmx brought in anew may hold charts.
   document.addEventListener("htmx:afterSettle", (event) => {
     const place = event.detail.elt;
-    if (place instanceof Element) place.querySelectorAll("div.chart[data-chart]").forEach(draw);
+    if (window.Plotly && place instanceof Element) place.querySelectorAll("div.chart[data-chart]").forEach(draw);
   });
 
-  window.matchMedia("(prefers-color-scheme: dark)").addEventListener("change", drawAll);
-  document.addEventListener("halfnut:theme", drawAll);
-  document.fonts?.ready.then(drawAll);
+  window.matchMedia("(prefers-color-scheme: dark)").addEventListener("change", drawAgain);
+  document.addEventListener("halfnut:theme", drawAgain);
+  if (document.fonts?.status === "loading") document.fonts.ready.then(drawAgain); // widths were measured too early
 
   // Paper is light whatever the screen is.
   let before = null;
@@ -143,12 +149,12 @@
     before = document.documentElement.dataset.theme ?? "";
     document.documentElement.dataset.theme = "light";
     document.documentElement.classList.add("printing");
-    drawAll();
+    drawAgain();
   });
   window.addEventListener("afterprint", () => {
     if (before) document.documentElement.dataset.theme = before;
     else delete document.documentElement.dataset.theme;
     document.documentElement.classList.remove("printing");
-    drawAll();
+    drawAgain();
   });
 })();

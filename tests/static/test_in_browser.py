@@ -9,8 +9,10 @@ from typing import Any
 from urllib.parse import urlsplit
 
 import pytest
+from django import forms
 from django.conf import settings
 from django.template.loader import render_to_string
+from django.test import RequestFactory
 from playwright.sync_api import Page, Route, expect
 
 STATIC = Path(__file__).resolve().parents[2] / "static"
@@ -36,6 +38,11 @@ SCREENS = [
 ]
 
 
+class Filter(forms.Form):
+    site = forms.ChoiceField(choices=[("", "every site"), ("ALDER", "Alder Sluice")], required=False)
+    part = forms.CharField(required=False)
+
+
 class Owner:
     """Somebody signed in, as the head wants to know her."""
 
@@ -55,7 +62,9 @@ def serve(page: Page, *, without: str = "", **context: Any) -> None:
     body = render_to_string("parts/chart.html", {"chart": CHART})
     columns = [{"key": str(place), "label": f"Column number {place}", "numeric": True} for place in range(9)]
     wide = render_to_string("parts/table.html", {"columns": columns, "rows": [[10**6] * 9], "caption": "Wide"})
-    html = html.replace("</main>", f"<h1>Life</h1>{body}{wide}</main>")
+    request = RequestFactory().get("/")
+    filters = render_to_string("parts/filter_form.html", {"form": Filter(), "request": request})
+    html = html.replace("</main>", f'<h1>Life</h1>{filters}<div id="list">{body}{wide}</div></main>')
 
     def answer(route: Route) -> None:
         path = urlsplit(route.request.url).path
@@ -82,6 +91,20 @@ def test_chart_is_drawn_under_the_policy(page: Page) -> None:
     expect(page.locator(".chart .scatterlayer path.js-line")).to_have_count(1)
     # The rules that Plotly may not inject came by the style sheet: without them the drawings would stand in a row.
     assert page.locator(".chart .main-svg").first.evaluate("svg => getComputedStyle(svg).position") == "absolute"
+
+
+def test_filtering_keeps_the_address_and_draws_the_chart_again(page: Page) -> None:
+    serve(page)
+    curve = page.locator(".chart .scatterlayer path.js-line")
+    expect(curve).to_have_count(1)
+    page.locator("#list").evaluate("list => { list.dataset.old = 'yes' }")
+    page.get_by_label("Site", exact=True).select_option("ALDER")
+    expect(page.locator("#list:not([data-old])")).to_be_visible()
+    expect(page).to_have_url(f"{HERE}/?site=ALDER")  # without the empty ones
+    expect(curve).to_have_count(1)
+    page.go_back()
+    expect(page).to_have_url(f"{HERE}/")
+    expect(curve).to_have_count(1)
 
 
 def test_chart_offers_no_upload(page: Page) -> None:
