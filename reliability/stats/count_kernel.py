@@ -1,0 +1,167 @@
+"""Renewal counts of a part fitted new, on a grid of each class's own horizon.
+
+A life ends by failure, by removal for another reason, or by planned replacement; one kind (or all) is counted, the rest
+renew the part in silence. With c and s the masses of counted and silent ends and r the time that remains, the tails
+P_k(r) = P(N >= k) obey P_k = c * P_{k-1} + s * P_k, P_0 = 1 (Cox 1962, Renewal Theory). Convolutions are products of
+damped Fourier transforms: a sequence times damping^i wraps round with a factor of 1e-9.
+
+The grid has half-cells: masses of whole cells lie at cell midpoints (odd places), tails are known at every place,
+and the first failure's distribution is exact. On a visit lattice the places are visits.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+import scipy.fft
+from numpy.typing import NDArray
+
+FloatArray = NDArray[np.float64]
+IntArray = NDArray[np.int64]
+
+MOST_RENEWALS = 400
+_TAIL_LEFT = 1e-9
+
+
+class Transform:
+    """Products of damped Fourier transforms for sequences of a given length.
+
+    tie: the share of a mass on an edge that lies below it. One half where masses stand for cells spread about their
+    places; 0 on a lattice, where an event at the edge comes before what follows it.
+    """
+
+    def __init__(self, places: int, tie: float = 0.5) -> None:
+        self.places, self.tie = places, tie
+        self._size = scipy.fft.next_fast_len(2 * places, real=True)
+        self._damping = 10.0 ** (-9.0 / self._size * np.arange(places))
+
+    def forward(self, sequence: FloatArray) -> NDArray[np.complex128]:
+        """Transform along the last axis."""
+        return scipy.fft.rfft(sequence * self._damping, self._size, axis=-1)
+
+    def up_to(self, limit: int) -> FloatArray:
+        """1 below the limit, the tie's share on it, 0 beyond: (places,)."""
+        return up_to(np.arange(self.places), limit, self.tie)
+
+    def back(self, spectrum: NDArray[np.complex128]) -> FloatArray:
+        """The sequence again, first `places` entries."""
+        return scipy.fft.irfft(spectrum, self._size, axis=-1)[..., : self.places] / self._damping
+
+
+class FromNew:
+    """Tails of the counted number for a new part with remaining places 0 .. places - 1.
+
+    counted, silent: masses (draws, classes, places); counted_by: exact cumulative counted share (same shape).
+    """
+
+    def __init__(
+        self, transform: Transform, counted: FloatArray, silent: FloatArray | None, counted_by: FloatArray
+    ) -> None:
+        self._transform = transform
+        self._counted = transform.forward(counted)
+        self._silent = None if silent is None else transform.forward(silent)
+        self._first = transform.forward(counted_by)
+        self._counted_by = counted_by
+
+    def tails(self) -> FloatArray:
+        """P(N >= k) for k = 0, 1, ... up to where no draw has 1e-9 left: (draws, classes, K + 1, places)."""
+        spectrum = self._first
+        if self._silent is None:
+            current, step = self._counted_by, self._counted
+        else:
+            spectrum = spectrum / (1.0 - self._silent)
+            current, step = self._transform.back(spectrum), self._counted / (1.0 - self._silent)
+        found = [np.ones_like(current), np.clip(current, 0.0, 1.0)]
+        while found[-1][..., -1].max(initial=0.0) > _TAIL_LEFT and len(found) < MOST_RENEWALS:
+            spectrum = spectrum * step
+            found.append(np.clip(self._transform.back(spectrum), 0.0, 1.0))
+        return np.stack(found, axis=2)
+
+    def window_tails(self, whole: FloatArray, width: int) -> FloatArray:
+        """Tails of the number counted within the last `width` places, for every remaining time, shaped like `whole`.
+
+        Renewals before the window are silent: beyond the width U_k = c * (U_{k-1} inside) + s * (U_k inside)
+        + (c + s) * (U_k beyond).
+        """
+        return self.staged_tails(whole[:, :, : self._enough(whole, width)], width, None, -1)
+
+    def staged_tails(self, whole: FloatArray, width: int, next_tails: FloatArray | None, next_until: int) -> FloatArray:
+        """Window tails where a part fitted with at most `next_until` places left follows `next_tails` instead.
+
+        whole: this design's plain tails (or any array with enough orders); next_tails: the other design's window tails.
+        """
+        transform = self._transform
+        silent = np.zeros_like(self._counted) if self._silent is None else self._silent
+        every = 1.0 / (1.0 - self._counted - silent)
+        inside, known_mask = transform.up_to(width), transform.up_to(next_until)
+        beyond_mask = 1.0 - transform.up_to(max(width, next_until))
+        found = [np.ones_like(whole[:, :, 0])]
+        # a cell centred on the very end lies half beyond it
+        found[0][..., 0] = 1.0 - transform.tie
+        for order in range(1, whole.shape[2]):
+            counted_part = self._counted * transform.forward(found[-1] * inside)
+            if next_tails is None:
+                near = whole[:, :, order]
+            else:
+                following = next_tails[:, :, min(order, next_tails.shape[2] - 1)] * (order < next_tails.shape[2])
+                near = following * known_mask
+                if next_until < width:
+                    source = transform.back(counted_part + silent * transform.forward(near))
+                    fitted_before = transform.forward(source * (1.0 - known_mask))
+                    near = near + transform.back(fitted_before / (1.0 - silent))
+            near = near * (1.0 - beyond_mask)
+            source = counted_part + silent * transform.forward(near * inside)
+            if next_until > width:
+                source = source + (self._counted + silent) * transform.forward(near * (1.0 - inside))
+            far = transform.back(transform.forward(transform.back(source) * beyond_mask) * every)
+            found.append(np.clip(near + far, 0.0, 1.0))
+        return np.stack(found, axis=2)
+
+    def _enough(self, whole: FloatArray, width: int) -> int:
+        # one more than for a new part: the running one may be about to fail
+        return _orders(whole[:, :, :, min(width, whole.shape[3] - 1)]) + 1
+
+
+def _orders(tails: FloatArray) -> int:
+    """How many orders (0 included) carry weight in tails (draws, classes, orders)."""
+    alive = tails.max(axis=(0, 1), initial=0.0) > _TAIL_LEFT
+    return max(int(np.count_nonzero(alive)), 2)
+
+
+def up_to(place: IntArray, limit: int, tie: float) -> FloatArray:
+    """1 for places below the limit, `tie` on it, 0 beyond."""
+    return np.where(place < limit, 1.0, np.where(place == limit, tie, 0.0))
+
+
+def delayed_tails(
+    counted: FloatArray,
+    silent: FloatArray | None,
+    at: IntArray,
+    remaining: FloatArray,
+    end: int,
+    inside: FloatArray,
+) -> FloatArray:
+    """Tails P(N >= k), k = 1 .., of running parts, counting what lies in a window that ends at place `end`.
+
+    counted, silent: masses (draws, rows, cells) by which the running part ends at places `at` (cells,);
+    remaining: window tails of a new part (draws, orders, places); inside: the share of a mass with that many places
+    left that lies in the window (places,). Result (draws, rows, orders - 1).
+    """
+    left = end - at
+    used = left >= 0
+    left = left[used]
+    follow = remaining[:, :, left]
+    share = inside[left]
+    counted_follow = follow[:, :-1] * share + follow[:, 1:] * (1.0 - share)
+    tails = counted[:, :, used] @ counted_follow.swapaxes(1, 2)
+    if silent is not None:
+        tails += silent[:, :, used] @ follow[:, 1:].swapaxes(1, 2)
+    return tails
+
+
+def at_place(remaining: FloatArray, place: FloatArray) -> FloatArray:
+    """remaining (draws, orders, places) read at real places (rows,), 0 before the start: (draws, rows, orders)."""
+    inside = np.clip(place, 0.0, remaining.shape[2] - 1.0)
+    left = np.minimum(np.floor(inside).astype(np.int64), remaining.shape[2] - 2)
+    share = inside - left
+    value = remaining[:, :, left] * (1.0 - share) + remaining[:, :, left + 1] * share
+    return (value * (place >= 0)).swapaxes(1, 2)

@@ -1,0 +1,183 @@
+"""How the lives of new and of running parts end on the grid of a forecast: failed, removed otherwise, or planned."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from reliability.stats.count_positions import Classes, Rows
+
+FloatArray = NDArray[np.float64]
+IntArray = NDArray[np.int64]
+
+
+@dataclass(frozen=True, eq=False)
+class Hazards:
+    """Cumulative hazard rate * t^shape of the lives of some draws and classes, with an early share.
+
+    shape (draws,), rate (draws, classes); a share `early` (draws,) fails evenly before the age `early_until`, the
+    others live Weibull given survival to it.
+    """
+
+    shape: FloatArray
+    rate: FloatArray
+    early: FloatArray
+    early_until: float
+
+    def cumulative(self, ages: FloatArray, classes: IntArray | slice = slice(None)) -> FloatArray:
+        """-log S at ages (draws or 1, x, n), x matching the rates of `classes`: (draws, x, n)."""
+        shape, rate = self.shape[:, None, None], self.rate[:, classes][:, :, None]
+        if not self.early_until:
+            with np.errstate(divide="ignore"):
+                logs = np.log(ages)
+            return rate * np.exp(shape * logs)
+        until = self.early_until
+        first = -np.log1p(-self.early[:, None, None] * np.minimum(ages, until) / until)
+        return first + rate * (np.maximum(ages, until) ** shape - until**shape)
+
+
+@dataclass(frozen=True, eq=False)
+class Ends:
+    """Masses by which a life ends at the places of a grid, by kind, each (draws, x, places); None where none ends
+    so.
+    """
+
+    failed: FloatArray
+    removed: FloatArray | None
+    planned: FloatArray | None
+
+    def split(self, kind: str) -> tuple[FloatArray, FloatArray | None]:
+        """(counted, silent) masses for "failures", "parts" or "planned"."""
+        others = [mass for mass in (self.removed, self.planned) if mass is not None]
+        if kind == "failures":
+            return self.failed, sum(others[1:], others[0]) if others else None
+        if kind == "planned":
+            silent = self.failed if self.removed is None else self.failed + self.removed
+            return (np.zeros_like(self.failed) if self.planned is None else self.planned), silent
+        return sum(others, self.failed), None
+
+
+@dataclass(frozen=True, eq=False)
+class MidpointGrid:
+    """`cells` equal cells of each class's horizon: masses at odd places 1, 3, ..., tails at places 0 .. 2 cells."""
+
+    cells: int
+
+    @property
+    def places(self) -> int:
+        """Number of places tails are known at."""
+        return 2 * self.cells + 1
+
+    @property
+    def at(self) -> IntArray:
+        """Places of the masses of running parts: the very start, for parts long overdue, then midpoints."""
+        return np.concatenate([[0], np.arange(1, 2 * self.cells, 2)])
+
+    def place_of(self, time: FloatArray, classes: Classes) -> FloatArray:
+        """Real place of a time since the start, (len(classes),)."""
+        return time / np.maximum(classes.horizon, 1e-300) * (2 * self.cells)
+
+    def new(self, hazards: Hazards, classes: Classes, duty: FloatArray) -> tuple[Ends, Ends]:
+        """Masses of new parts, and the exact cumulative shares, (draws, classes, places)."""
+        fraction = np.arange(self.places) / (2.0 * self.cells)
+        time = fraction * classes.horizon[:, None]
+        limit = classes.replace_at[:, None] / duty[:, :, None]
+        clipped = np.minimum(time[None], limit)
+        cumulative = hazards.cumulative(clipped * duty[:, :, None])
+        failed, removed, alive = _competing(cumulative, classes.other_removals[:, None] * clipped)
+        shares = [_summed(half) for half in (failed, removed)]
+        planned = planned_by = None
+        if np.isfinite(classes.replace_at).any():
+            place = self.place_of(classes.replace_at / duty, classes)
+            planned = _atom(place, alive[..., -1], self.places)
+            planned_by = np.cumsum(planned, axis=2) - planned / 2.0
+        masses = Ends(*(_at_midpoints(half, hazards.shape) for half in (failed, removed)), planned)
+        return masses, Ends(*shares, planned_by)
+
+    def running(
+        self, hazards: Hazards, rows: Rows, index: IntArray, duty: FloatArray
+    ) -> tuple[Ends, FloatArray | None, FloatArray | None]:
+        """Ends of running parts at `at`, (draws, rows, cells), then weight and place of planned replacement if any."""
+        classes, which = rows.classes, rows.class_index[index]
+        fraction = np.arange(self.cells + 1) / self.cells
+        time = fraction * classes.horizon[which][:, None]
+        age = rows.age[index][:, None]
+        factor = duty[:, which][:, :, None]
+        limit = (classes.replace_at[which][:, None] - age) / factor
+        clipped = np.minimum(time[None], limit)
+        cumulative = hazards.cumulative(age + clipped * factor, which)
+        failed, removed, alive = _competing(
+            cumulative - cumulative[..., :1], classes.other_removals[which][:, None] * clipped
+        )
+        share = _start_share(np.log(np.maximum(alive[..., 0] / np.maximum(alive[..., 1], 1e-300), 1.0)))
+        ends = Ends(*(_with_start(mass, share) for mass in (failed, removed)), None)
+        if not np.isfinite(limit).any():
+            return ends, None, None
+        place = limit[..., 0] / np.maximum(classes.horizon[which], 1e-300) * (2 * self.cells)
+        return ends, alive[..., -1], place
+
+
+def _competing(cumulative: FloatArray, other: FloatArray) -> tuple[FloatArray, FloatArray | None, FloatArray]:
+    """Masses of cells by failure and by other removal, and survival of both, from cumulative hazards at cell edges.
+
+    A cell's mass is shared as its two hazards: exact where they are proportional within the cell.
+    """
+    if not other.any():
+        alive = np.exp(-cumulative)
+        return alive[..., :-1] - alive[..., 1:], None, alive
+    alive = np.exp(-cumulative - other)
+    ended = alive[..., :-1] - alive[..., 1:]
+    by_failure, by_other = np.diff(cumulative, axis=-1), np.diff(other, axis=-1)
+    failed = ended * (by_failure / np.maximum(by_failure + by_other, 1e-300))
+    return failed, ended - failed, alive
+
+
+def _summed(half: FloatArray | None) -> FloatArray | None:
+    if half is None:
+        return None
+    total = np.zeros((*half.shape[:2], half.shape[2] + 1))
+    np.cumsum(half, axis=2, out=total[..., 1:])
+    return total
+
+
+def _at_midpoints(half: FloatArray | None, shape: FloatArray) -> FloatArray | None:
+    """Masses of whole cells at their midpoints; the first cell's mean kept where the hazard falls from infinity."""
+    if half is None:
+        return None
+    masses = np.zeros((*half.shape[:2], half.shape[2] + 1))
+    masses[..., 1::2] = half[..., ::2] + half[..., 1::2]
+    # the mean age at failure within a short first cell is its length times shape / (shape + 1)
+    share = np.maximum(1.0 - 2.0 * shape / (shape + 1.0), 0.0)[:, None]
+    masses[..., 0] = share * masses[..., 1]
+    masses[..., 1] -= masses[..., 0]
+    return masses
+
+
+def _start_share(hazard: FloatArray) -> FloatArray:
+    """Share of a cell's mass to put at its start so that the mean is that of a constant hazard, `hazard` over the
+    cell.
+    """
+    h = np.clip(hazard, 1e-3, 500.0)
+    return 1.0 - 2.0 * (1.0 / h - 1.0 / np.expm1(h))
+
+
+def _with_start(mass: FloatArray | None, share: FloatArray) -> FloatArray | None:
+    if mass is None:
+        return None
+    moved = mass[..., :1] * share[..., None]
+    return np.concatenate([moved, mass[..., :1] - moved, mass[..., 1:]], axis=2)
+
+
+def _atom(place: FloatArray, weight: FloatArray, places: int) -> FloatArray:
+    """A mass at a real place, shared by the two whole places beside it; nothing beyond the grid."""
+    masses = np.zeros((*place.shape, places + 1))
+    inside = np.minimum(place, places)
+    left = np.minimum(np.floor(inside).astype(np.int64), places - 1)
+    share = inside - left
+    kept = np.where(place < places, weight, 0.0)
+    np.put_along_axis(masses, left[..., None], (kept * (1.0 - share))[..., None], axis=-1)
+    right = np.take_along_axis(masses, left[..., None] + 1, axis=-1) + (kept * share)[..., None]
+    np.put_along_axis(masses, left[..., None] + 1, right, axis=-1)
+    return masses[..., :places]

@@ -1,0 +1,243 @@
+"""Positions of a forecast: validated, coded and grouped, so that equal ones are counted once."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, fields, replace
+from typing import Any
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from reliability.stats.errors import InvalidArgument
+
+FloatArray = NDArray[np.float64]
+IntArray = NDArray[np.int64]
+
+MOST_EXACT_ROWS = 2500  # beyond this many distinct rows ages are moved to shared nodes
+MOST_HORIZONS = 24  # and horizons of a site to shared cells
+
+
+@dataclass(frozen=True, eq=False)
+class Classes:
+    """Positions alike in all but age and group share a class: one renewal kernel. Arrays of shape (classes,)."""
+
+    site: IntArray
+    horizon: FloatArray
+    leave_at: FloatArray
+    visit_every: FloatArray  # 0: failures are seen at once
+    visit_next: FloatArray
+    replace_at: FloatArray
+    other_removals: FloatArray
+    switch_at: FloatArray
+
+    def __len__(self) -> int:
+        return int(self.site.size)
+
+
+@dataclass(frozen=True, eq=False)
+class Rows:
+    """Distinct positions sorted by class; arrays of shape (rows,). `start` is the day a new part goes in, NaN where one
+    of age `age` runs now; `extra` the parts used by that fitting."""
+
+    age: FloatArray
+    start: FloatArray
+    extra: IntArray
+    weight: FloatArray
+    group: IntArray
+    class_index: IntArray
+    classes: Classes
+    site_labels: list[Any]
+    group_labels: list[Any]
+    by_site: bool
+
+    def __len__(self) -> int:
+        return int(self.age.size)
+
+    def of_classes(self, chosen: NDArray[np.bool_]) -> Rows:
+        """The rows of the chosen classes, which are numbered anew."""
+        number = np.cumsum(chosen) - 1
+        kept = chosen[self.class_index]
+        names = ("age", "start", "extra", "weight", "group")
+        columns = {name: getattr(self, name)[kept] for name in names}
+        classes = Classes(**{item.name: getattr(self.classes, item.name)[chosen] for item in fields(Classes)})
+        return replace(self, **columns, class_index=number[self.class_index[kept]], classes=classes)
+
+
+def group_positions(
+    ages: ArrayLike,
+    horizons: ArrayLike,
+    *,
+    sites: Sequence[Any] | None,
+    groups: Sequence[Any] | None,
+    weights: ArrayLike | None,
+    columns: dict[str, ArrayLike],
+) -> Rows:
+    """Rows of the positions; `columns` are the further per-position figures of Classes and down_until."""
+    age = _column("ages", ages, None, least=0.0)
+    count = age.size
+    weight = np.ones(count) if weights is None else _column("weights", weights, count, least=0.0)
+    horizon = _column("horizons", horizons, count, least=0.0)
+    down = _column("down_until", columns.pop("down_until"), count, least=0.0)
+    further = {name: _column(name, values, count, least=0.0) for name, values in columns.items()}
+    _require_steady_visits(further)
+    site, site_labels = _codes("sites", sites, count)
+    same = groups is not None and groups is sites
+    group, group_labels = (site, site_labels) if same else _codes("groups", groups, count)
+    age, start, extra = _fresh_parts(age, down, further)
+    horizon = _shared_horizons(horizon, site, weight)
+    class_columns: dict[str, Any] = {"site": site, "horizon": horizon, **further}
+    class_first, class_index = _distinct(list(class_columns.values()), count)
+    classes = Classes(**{name: column[class_first] for name, column in class_columns.items()})
+    first, inverse = _distinct([class_index, group, start, extra, age], count)
+    rows = Rows(
+        age=age[first],
+        start=start[first],
+        extra=extra[first],
+        weight=np.bincount(inverse, weight, minlength=first.size),
+        group=group[first],
+        class_index=class_index[first],
+        classes=classes,
+        site_labels=site_labels,
+        group_labels=group_labels,
+        by_site=sites is not None,
+    )
+    return rows if len(rows) <= MOST_EXACT_ROWS else _on_nodes(rows)
+
+
+def _column(name: str, values: ArrayLike, count: int | None, *, least: float) -> FloatArray:
+    array = np.asarray(values, dtype=np.float64)
+    if count is not None:
+        try:
+            array = np.broadcast_to(array, (count,))
+        except ValueError:
+            raise InvalidArgument(f"{name} has shape {array.shape}; there are {count} positions.") from None
+    elif array.ndim != 1:
+        raise InvalidArgument(f"{name} has shape {array.shape}; it must be a list, one entry a position.")
+    if array.size and not (array >= least).all():
+        wrong = array[~(array >= least)][0]
+        raise InvalidArgument(f"{name} holds {wrong:g}; every entry must be a number of at least {least:g}.")
+    if name in ("ages", "horizons", "weights", "other_removals") and not np.isfinite(array).all():
+        raise InvalidArgument(f"{name} must be finite.")
+    return array
+
+
+def _require_steady_visits(columns: dict[str, FloatArray]) -> None:
+    every, upcoming = columns["visit_every"], columns["visit_next"]
+    if (upcoming > every + 1e-9).any():
+        raise InvalidArgument("The next visit must come within one interval between visits.")
+
+
+def _codes(name: str, labels: Sequence[Any] | None, count: int) -> tuple[IntArray, list[Any]]:
+    """Codes in order of first appearance; a dictionary is ten times faster than sorting a million labels."""
+    if labels is None:
+        return np.zeros(count, dtype=np.int64), [None]
+    if len(labels) != count:
+        raise InvalidArgument(f"{name} holds {len(labels)} labels; there are {count} positions.")
+    if isinstance(labels, np.ndarray) and labels.dtype.kind in "iub":
+        distinct, codes = np.unique(labels, return_inverse=True)
+        return codes.astype(np.int64), distinct.tolist() or [None]
+    listed = labels.tolist() if isinstance(labels, np.ndarray) else list(labels)
+    known = {label: number for number, label in enumerate(dict.fromkeys(listed))}
+    codes = np.fromiter(map(known.__getitem__, listed), dtype=np.int64, count=count)
+    return codes, list(known) or [None]
+
+
+def _fresh_parts(
+    age: FloatArray, down: FloatArray, further: dict[str, FloatArray]
+) -> tuple[FloatArray, FloatArray, IntArray]:
+    """Start day and parts used at it, for stopped modules and for parts already overdue for planned replacement."""
+    # where crews come only at visits the overdue part runs on to the next one
+    overdue = (down == 0) & (age >= further["replace_at"]) & (further["visit_every"] == 0)
+    start = np.where(down > 0, down, np.where(overdue, 0.0, np.nan))
+    fresh = ~np.isnan(start)
+    # 2 marks a planned replacement
+    extra = np.where(overdue, 2, np.where(fresh, 1, 0)).astype(np.int64)
+    return np.where(fresh, 0.0, age), start, extra
+
+
+def _distinct(columns: list[NDArray[Any]], count: int) -> tuple[IntArray, IntArray]:
+    """Index of the first of each set of equal rows, and each row's set, ordered by the first column first."""
+    key = np.zeros(count, dtype=np.int64)
+    size = 1
+    for column in columns:
+        if not count or column.strides == (0,) or (column == column[0]).all() or (column != column).all():
+            continue
+        code = _dense_codes(column)
+        width = int(code.max()) + 1
+        if size * width >= 2**62:
+            key = np.unique(key, return_inverse=True)[1]
+            size = int(key.max()) + 1
+        key = key * width + code
+        size *= width
+    if 0 < size <= 4 * count + 1000:
+        # counting is faster than sorting
+        present = np.bincount(key, minlength=size) > 0
+        first = np.empty(size, dtype=np.int64)
+        first[key[::-1]] = np.arange(count - 1, -1, -1)
+        return first[present], (np.cumsum(present) - 1)[key]
+    _, first, inverse = np.unique(key, return_index=True, return_inverse=True)
+    return first, inverse
+
+
+def _dense_codes(column: NDArray[Any]) -> IntArray:
+    whole = column.astype(np.int64) if column.dtype.kind == "i" or np.isfinite(column).all() else None
+    if whole is not None and np.abs(column).max() < 4e6 and (whole == column).all():
+        return whole - whole.min()
+    return np.unique(column, return_inverse=True)[1]
+
+
+def _shared_horizons(horizon: FloatArray, site: IntArray, weight: FloatArray) -> FloatArray:
+    """Horizons of a site that lie within a cell (about 3 %) are replaced by their mean where there are very many."""
+    if not horizon.size or horizon.strides == (0,) or np.unique(horizon).size <= MOST_HORIZONS:
+        return horizon
+    logs = np.log(np.maximum(horizon, 1e-9 * max(float(horizon.max()), 1e-300)))
+    width = max(0.03, (logs.max() - logs.min()) / 200.0)
+    cell = np.rint((logs - logs.min()) / width).astype(np.int64)
+    _, key = np.unique(site * (int(cell.max()) + 1) + cell, return_inverse=True)
+    mass = np.bincount(key, weight)
+    means = np.bincount(key, weight * horizon) / np.where(mass > 0, mass, 1.0)
+    return means[key]
+
+
+def _on_nodes(rows: Rows) -> Rows:
+    """Ages moved to shared nodes by four-point interpolation of the log generating function.
+
+    Nodes are evenly spaced in log(age + horizon / 4), 0.12 apart; weights may come out fractional and slightly
+    negative, which a sum of logarithms does not mind. Rows that start with a new part stay as they are.
+    """
+    running = np.isnan(rows.start)
+    typical = float(np.median(rows.classes.horizon)) or 1.0
+    offset = typical / 4.0
+    place = np.log((rows.age + offset) / offset) / 0.12
+    last = max(int(np.ceil(place.max())), 3)
+    left = np.clip(np.floor(place).astype(np.int64), 1, last - 2)
+    shift = place - left
+    lagrange = [
+        -shift * (shift - 1) * (shift - 2) / 6.0,
+        (shift + 1) * (shift - 1) * (shift - 2) / 2.0,
+        -(shift + 1) * shift * (shift - 2) / 2.0,
+        (shift + 1) * shift * (shift - 1) / 6.0,
+    ]
+    groups = len(rows.group_labels)
+    node_key = (rows.class_index * groups + rows.group) * (last + 1) + left
+    size = len(rows.classes) * groups * (last + 1)
+    total = np.zeros(size + 2)
+    for step, share in zip((-1, 0, 1, 2), lagrange, strict=True):
+        total += np.bincount(node_key[running] + step, (share * rows.weight)[running], minlength=size + 2)
+    used = np.flatnonzero(total)
+    node = used % (last + 1)
+    outer = used // (last + 1)
+    fresh = np.flatnonzero(~running)
+    moved = replace(
+        rows,
+        age=np.concatenate([offset * np.expm1(0.12 * node), rows.age[fresh]]),
+        start=np.concatenate([np.full(used.size, np.nan), rows.start[fresh]]),
+        extra=np.concatenate([np.zeros(used.size, dtype=np.int64), rows.extra[fresh]]),
+        weight=np.concatenate([total[used], rows.weight[fresh]]),
+        group=np.concatenate([outer % groups, rows.group[fresh]]),
+        class_index=np.concatenate([outer // groups, rows.class_index[fresh]]),
+    )
+    order = np.lexsort((moved.age, moved.group, moved.class_index))
+    names = ("age", "start", "extra", "weight", "group", "class_index")
+    return replace(moved, **{name: getattr(moved, name)[order] for name in names})

@@ -1,0 +1,348 @@
+"""How many failures, and parts used, a horizon will bring: the delayed renewal count averaged over posterior draws.
+
+For given parameters the failures N of a position whose part has the age a obey P(N >= 1) = F(H | a) and
+P(N >= k) = int f(u | a) F^(k-1)*(H - u) du (Cox 1962, Renewal Theory, ch. 2 and 3), with removals for other reasons
+as a competing way to end. A sum over positions has the product of their generating functions, exact given the
+parameters; the forecast is its average over draws of the posterior.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from functools import cached_property
+from typing import Any, Protocol
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+from scipy.special import ndtri
+
+from reliability.stats.count_groups import Block, BlockTails
+from reliability.stats.count_lattice import VisitGrid
+from reliability.stats.count_masses import Hazards, MidpointGrid
+from reliability.stats.count_positions import Rows, group_positions
+from reliability.stats.count_sums import CountMixture
+from reliability.stats.errors import InvalidArgument
+from reliability.stats.posterior import PosteriorDraws
+
+FloatArray = NDArray[np.float64]
+IntArray = NDArray[np.int64]
+
+LEAST_CELLS = 24
+MOST_CELLS = 512
+
+
+class Posterior(Protocol):
+    """What a forecast asks of a posterior: `WeibullPosterior` or `KnownWeibull`."""
+
+    @property
+    def has_spread(self) -> bool: ...
+
+    def draws(self, count: int, rng: np.random.Generator | None) -> PosteriorDraws: ...
+
+
+@dataclass(frozen=True, eq=False)
+class CountDistribution:
+    """Probabilities `pmf` of the counts 0, 1, 2 ..., shape (n,)."""
+
+    pmf: FloatArray
+
+    @cached_property
+    def mean(self) -> float:
+        """Expected count."""
+        return float(self.pmf @ np.arange(self.pmf.size))
+
+    @cached_property
+    def standard_deviation(self) -> float:
+        """Standard deviation of the count."""
+        return float(np.sqrt(self.pmf @ (np.arange(self.pmf.size) - self.mean) ** 2))
+
+    @cached_property
+    def _cumulative(self) -> FloatArray:
+        return np.cumsum(self.pmf)
+
+    def quantile(self, p: float) -> int:
+        """Smallest count k with P(N <= k) >= p; the quantity that is enough in the share p of cases."""
+        if not 0 <= p <= 1:
+            raise InvalidArgument(f"p is {p:g}; it must lie between 0 and 1.")
+        return int(min(np.searchsorted(self._cumulative, p - 1e-12), self.pmf.size - 1))
+
+    def interval(self, level: float) -> tuple[int, int]:
+        """Equal-tailed band holding at least `level`."""
+        if not 0 < level < 1:
+            raise InvalidArgument(f"level is {level:g}; it must lie between 0 and 1.")
+        return self.quantile((1.0 - level) / 2.0), self.quantile((1.0 + level) / 2.0)
+
+    def chance_above(self, count: float) -> float:
+        """P(N > count)."""
+        return float(self.pmf[int(np.floor(count)) + 1 :].sum()) if count >= 0 else 1.0
+
+    def chance_at_least(self, count: float) -> float:
+        """P(N >= count)."""
+        return self.chance_above(np.ceil(count) - 1)
+
+
+@dataclass(frozen=True)
+class Counts:
+    """Failures, parts used (failures, other removals, planned ones, stopped modules put right) and planned ones
+    alone.
+    """
+
+    failures: CountDistribution
+    parts_used: CountDistribution
+    planned: CountDistribution
+
+
+@dataclass(frozen=True)
+class CountForecast(Counts):
+    """Totals, each group's, and each window's (edges as given) counts."""
+
+    by_group: dict[Any, Counts]
+    by_window: tuple[Counts, ...]
+    windows: tuple[tuple[float, float], ...]
+    draws: int
+
+
+def forecast_counts(
+    posterior: Posterior,
+    ages: ArrayLike,
+    horizons: ArrayLike,
+    *,
+    sites: Sequence[Any] | None = None,
+    groups: Sequence[Any] | None = None,
+    windows: Sequence[float] | None = None,
+    weights: ArrayLike | None = None,
+    draws: int = 400,
+    rng: np.random.Generator | None = None,
+    replace_at: ArrayLike | None = None,
+    visits: tuple[ArrayLike, ArrayLike] | None = None,
+    other_removals: ArrayLike = 0.0,
+    duty_spread: float | tuple[float, float] = 0.0,
+    down_until: ArrayLike = 0.0,
+    leave_at: ArrayLike | None = None,
+    next_posterior: Posterior | None = None,
+    switch_at: ArrayLike | None = None,
+    cells: int | None = None,
+) -> CountForecast:
+    """Distribution of failures and parts used by positions within their horizons.
+
+    Times are in the unit of the lives; figures are scalars or one a position (n,).
+    ages: of the parts running now. horizons: how long each position is counted. weights: equal positions a row.
+    sites, groups: labels; sites choose the site factors of a posterior with spread (labels without history draw from
+    it).
+    windows: increasing edges from 0, on any scale; the last one is the end of every horizon (0, 7, 14 ... 91 for
+    weeks).
+    replace_at: planned replacement at that age. visits: (interval, time to the next one); failures are found and parts
+    replaced only then, and a running part was good at the last visit. other_removals: rate of removals for other
+    reasons per unit of horizon. duty_spread: standard deviation of log duty over the horizon, common to all, or
+    (common, a site's).
+    down_until: above 0 the module is stopped and gets a new part then. leave_at: the position is counted until then.
+    next_posterior, switch_at: parts fitted after switch_at live by next_posterior.
+    draws: of the posterior. cells: steps of the grid (chosen from the lives if None).
+    Raises InvalidArgument. Source: Cox 1962; early renewals by mass at cell midpoints, see count_kernel.
+    """
+    rng = np.random.default_rng() if rng is None else rng
+    edges = _window_edges(windows)
+    leave: ArrayLike = np.inf if leave_at is None else leave_at
+    if windows is None and leave_at is not None:
+        # without windows leaving only shortens the horizon, exactly
+        horizons, leave = np.minimum(np.asarray(horizons, dtype=np.float64), leave), np.inf
+    rows = group_positions(
+        ages,
+        horizons,
+        sites=sites,
+        groups=groups,
+        weights=weights,
+        columns={
+            "down_until": down_until,
+            "leave_at": leave,
+            "visit_every": 0.0 if visits is None else visits[0],
+            "visit_next": 0.0 if visits is None else visits[1],
+            "replace_at": np.inf if replace_at is None else replace_at,
+            "other_removals": other_removals,
+            "switch_at": np.inf if switch_at is None else switch_at,
+        },
+    )
+    if (next_posterior is None) != (switch_at is None):
+        raise InvalidArgument("next_posterior and switch_at belong together: give both or neither.")
+    drawn = posterior.draws(draws, rng)
+    following = None if next_posterior is None else next_posterior.draws(draws, rng)
+    rates = _site_rates(posterior, drawn, rows)
+    next_rates = None if following is None else _site_rates(next_posterior, following, rows)
+    duty = _duty_factors(duty_spread, draws, len(rows.site_labels), rng)
+    sharpness = _sharpness(drawn, rates)
+    tallies = _Tallies(rows, len(edges) - 1)
+    for chunk in _chunks(rows, sharpness):
+        blocks = _blocks(rows, float(np.quantile(sharpness[chunk], 0.9)), edges, cells)
+        _add_draws(tallies, blocks, (drawn, rates), (following, next_rates), duty, chunk)
+    return tallies.forecast(rows, windows, draws)
+
+
+def _window_edges(windows: Sequence[float] | None) -> FloatArray:
+    if windows is None:
+        return np.array([1.0])
+    edges = np.asarray(windows, dtype=np.float64)
+    if edges.ndim != 1 or edges.size < 2 or edges[0] != 0 or not (np.diff(edges) > 0).all():
+        raise InvalidArgument(
+            "windows must be increasing edges that begin with 0; the last one is the end of the horizon."
+        )
+    return edges / edges[-1]
+
+
+def _site_rates(posterior: Posterior, drawn: PosteriorDraws, rows: Rows) -> FloatArray:
+    """Hazard level times site factor, (draws, sites)."""
+    level = np.exp(-drawn.shapes * np.log(drawn.scales))
+    if not posterior.has_spread:
+        return np.broadcast_to(level[:, None], (level.size, len(rows.site_labels)))
+    if not rows.by_site:
+        raise InvalidArgument("This posterior has a spread between sites: give the site of every position.")
+    return level[:, None] * drawn.for_sites(rows.site_labels)
+
+
+def _duty_factors(spread: float | tuple[float, float], draws: int, sites: int, rng: np.random.Generator) -> FloatArray:
+    """Lognormal factors of mean 1 on the horizon's use, (draws, sites); the common one is stratified."""
+    common, own = (spread, 0.0) if np.ndim(spread) == 0 else spread
+    if common < 0 or own < 0:
+        raise InvalidArgument("duty_spread must be at least 0.")
+    factors = np.ones((draws, sites))
+    if common:
+        steps = ndtri((rng.permutation(draws) + rng.random(draws)) / draws)
+        factors *= np.exp(common * steps - common**2 / 2.0)[:, None]
+    if own:
+        factors *= np.exp(own * rng.standard_normal((draws, sites)) - own**2 / 2.0)
+    return factors
+
+
+def _sharpness(drawn: PosteriorDraws, rates: FloatArray) -> FloatArray:
+    """Shape over scale at each draw's hardest site, (draws,): one over the spread of its lives, or their number."""
+    hardest = rates.max(axis=1, initial=0.0)
+    with np.errstate(over="ignore"):
+        return np.maximum(drawn.shapes, 2.5) * np.maximum(hardest, 1e-300) ** (1.0 / drawn.shapes)
+
+
+def _blocks(rows: Rows, sharpness: float, edges: FloatArray, cells: int | None) -> list[Block]:
+    classes = rows.classes
+    at_visits = classes.visit_every > 0
+    blocks = []
+    if (~at_visits).any():
+        number = cells or _cell_count(float(classes.horizon[~at_visits].max()), sharpness, edges)
+        blocks.append(Block(MidpointGrid(number), rows.of_classes(~at_visits), edges))
+    if at_visits.any():
+        some = rows.of_classes(at_visits)
+        seen = (some.classes.horizon - some.classes.visit_next) / some.classes.visit_every
+        most = max(int(np.floor(seen.max() + 1e-9)) + 1, 1)
+        blocks.append(Block(VisitGrid(most), some, edges))
+    return blocks
+
+
+def _cell_count(horizon: float, sharpness: float, edges: FloatArray) -> int:
+    """Cells fine against the spread of the lives (about scale / shape), with window edges between cells."""
+    least = int(np.clip(np.ceil(5.0 * horizon * sharpness), LEAST_CELLS, MOST_CELLS))
+    for number in range(least, MOST_CELLS + 1):
+        if np.abs(edges * number - np.rint(edges * number)).max() < 1e-6:
+            return number
+    return MOST_CELLS
+
+
+def _chunks(rows: Rows, sharpness: FloatArray) -> list[IntArray]:
+    """Draws of like lives together: most need few cells and orders; arrays stay within some tens of megabytes."""
+    draws = sharpness.size
+    order = np.argsort(sharpness, kind="stable")
+    work = max(len(rows), 12 * len(rows.classes), 1) * 2.0 * LEAST_CELLS
+    size = int(np.clip(4e6 / work, 1, max(draws / 6.0, 16)))
+    return [order[start : start + size] for start in range(0, draws, size)]
+
+
+def _hazards(drawn: PosteriorDraws, rates: FloatArray, block: Block, chunk: IntArray) -> Hazards:
+    return Hazards(
+        shape=drawn.shapes[chunk],
+        rate=rates[chunk][:, block.rows.classes.site],
+        early=drawn.early_shares[chunk],
+        early_until=drawn.early_until,
+    )
+
+
+def _add_draws(
+    tallies: _Tallies,
+    blocks: list[Block],
+    now: tuple[PosteriorDraws, FloatArray],
+    later: tuple[PosteriorDraws | None, FloatArray | None],
+    duty: FloatArray,
+    chunk: IntArray,
+) -> None:
+    worked = []
+    for block in blocks:
+        following = None if later[0] is None else _hazards(later[0], later[1], block, chunk)
+        factors = duty[chunk][:, block.rows.classes.site]
+        worked.append(BlockTails(block, _hazards(*now, block, chunk), following, factors))
+    for kind in tallies.kinds:
+        for number, parts in enumerate(zip(*(tails.targets(kind) for tails in worked), strict=True)):
+            tallies.add(kind, number, _joined(parts), blocks, chunk.size)
+    if not worked:
+        tallies.add_empty(chunk.size)
+
+
+def _joined(parts: Sequence[FloatArray]) -> FloatArray:
+    orders = max(part.shape[2] for part in parts)
+    padded = [np.pad(part, ((0, 0), (0, 0), (0, orders - part.shape[2]))) for part in parts]
+    return np.concatenate(padded, axis=1)
+
+
+class _Tallies:
+    """The mixtures being collected: for each kind the total, each window and each group."""
+
+    def __init__(self, rows: Rows, windows: int) -> None:
+        classes = rows.classes
+        planned = bool(np.isfinite(classes.replace_at).any())
+        differ = planned or bool(classes.other_removals.any()) or bool(rows.extra.any())
+        self.kinds = ["failures", *(["parts"] if differ else []), *(["planned"] if planned else [])]
+        self._totals = {kind: [CountMixture() for _ in range(1 + windows)] for kind in self.kinds}
+        self._groups = {kind: [CountMixture() for _ in rows.group_labels] for kind in self.kinds}
+
+    def add(self, kind: str, number: int, tails: FloatArray, blocks: list[Block], draws: int) -> None:
+        """Tails of target `number` (0 the whole horizon) for some draws."""
+        weights = np.concatenate([block.rows.weight for block in blocks])
+        self._totals[kind][number].add(tails, weights)
+        if number or len(self._groups[kind]) == 1:
+            return
+        group = np.concatenate([block.rows.group for block in blocks])
+        order = np.argsort(group, kind="stable")
+        starts = np.searchsorted(group[order], np.arange(len(self._groups[kind]) + 1))
+        for index, mixture in enumerate(self._groups[kind]):
+            mine = order[starts[index] : starts[index + 1]]
+            mixture.add(tails[:, mine], weights[mine])
+
+    def add_empty(self, draws: int) -> None:
+        """No positions at all: nothing will fail."""
+        for mixtures in [*self._totals.values(), *self._groups.values()]:
+            for mixture in mixtures:
+                mixture.add(np.zeros((draws, 0, 1)), np.zeros(0))
+
+    def forecast(self, rows: Rows, windows: Sequence[float] | None, draws: int) -> CountForecast:
+        """The finished distributions."""
+        total = self._counts({kind: mixtures[0] for kind, mixtures in self._totals.items()})
+        spans = () if windows is None else tuple(zip(map(float, windows[:-1]), map(float, windows[1:]), strict=True))
+        by_window = tuple(
+            self._counts({kind: mixtures[number + 1] for kind, mixtures in self._totals.items()})
+            for number in range(len(spans))
+        )
+        by_group = {}
+        if rows.group_labels != [None]:
+            for index, label in enumerate(rows.group_labels):
+                alone = len(rows.group_labels) == 1
+                mine = {kind: mixtures[index] for kind, mixtures in self._groups.items()}
+                by_group[label] = total if alone else self._counts(mine)
+        return CountForecast(
+            total.failures,
+            total.parts_used,
+            total.planned,
+            by_group=by_group,
+            by_window=by_window,
+            windows=spans,
+            draws=draws,
+        )
+
+    def _counts(self, mixtures: dict[str, CountMixture]) -> Counts:
+        found = {kind: CountDistribution(mixture.pmf()) for kind, mixture in mixtures.items()}
+        none = CountDistribution(np.array([1.0]))
+        return Counts(found["failures"], found.get("parts", found["failures"]), found.get("planned", none))
