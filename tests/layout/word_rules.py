@@ -15,8 +15,6 @@ TEXTS = ("*.py", "*.html", "*.css", "*.js", "*.md", "*.toml", "*.in", "*.txt", "
 UNFINISHED = re.compile(r"\b(?:" + "|".join(["TO" + "DO", "FIX" + "ME", "X" + "XX", "HA" + "CK"]) + r")\b")
 HOMES = ["root", "home", "opt", "wor" + "k/main", "wor" + "k/shared"]
 THIS_MACHINE = re.compile(r"(?<![\w.<])/(?:" + "|".join(HOMES) + r")/[\w.]")
-    r"(?<![\w.<])/(?:" + "|".join(["root", "home", "opt", "wor" + "k/main", "wor" + "k/shared"]) + r")/[\w.]"
-)
 TEMPORARY = re.compile(r"(?<![\w.])/t" + r"mp/[\w.]")
 SOUND_SKIPS = {"skip", "skipif", "xfail"}
 
