@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import fcntl
 import hashlib
+import io
 import os
 import sys
 import time
@@ -55,7 +56,7 @@ def prepare(*, demo: bool) -> str:
     from django.core.management import call_command
 
     find_the_database()
-    call_command("check", databases=["default"], stdout=sys.stderr, no_color=True)
+    call_command("check", databases=["default"], stdout=io.StringIO(), no_color=True)  # what is wrong goes to stderr
     migrate()
     collect_static_files()
     if demo:
@@ -108,7 +109,7 @@ def collect_static_files() -> None:
     if stamp.exists() and stamp.read_text() == seen.hexdigest():
         return
     say("Collecting the static files.")
-    call_command("collectstatic", interactive=False, clear=True, verbosity=0)
+    call_command("collectstatic", interactive=False, verbosity=0)
     stamp.write_text(seen.hexdigest())
 
 
