@@ -14,7 +14,7 @@ from reliability.stats.lifetimes import FloatArray, Lifetimes
 from reliability.stats.lognormal_likelihood import LognormalLikelihood, lognormal_likelihood
 from reliability.stats.newton import maximise_line, maximise_plane
 from reliability.stats.profile_intervals import LOG, Curve, CurvePoint, Scale
-from reliability.stats.weibull_curves import LEVEL_LIMITS, QuantileCurve, ShapeCurve, SurvivalCurve
+from reliability.stats.weibull_curves import QuantileCurve, ShapeCurve, SurvivalCurve
 from reliability.stats.weibull_fit import (
     WeibullKnownShapeFit,
     finite_scale,
@@ -26,6 +26,9 @@ from reliability.stats.weibull_fit import (
 __all__ = ["Comparison", "ExponentialFit", "LognormalFit", "compare_fits", "fit_exponential", "fit_lognormal"]
 
 LOG_STEEPNESS_LIMITS = (math.log(1e-3), math.log(1e7))
+# failures sixty standard deviations out mean that only the far tail is seen: with late entries alone the likelihood
+# may rise for ever that way, towards a power law
+LARGEST_LEVEL = 60.0
 START_STEEPNESS = (0.1, 0.3, 1.0, 3.0, 10.0, 30.0)
 INVERSE_ROOT_TWO_PI = 1.0 / math.sqrt(2.0 * math.pi)
 
@@ -137,7 +140,7 @@ def fit_lognormal(lifetimes: Lifetimes) -> LognormalFit:
     """
     refuse_unbounded_shape(lifetimes)
     likelihood = lognormal_likelihood(lifetimes)
-    lower, upper = zip(LOG_STEEPNESS_LIMITS, LEVEL_LIMITS, strict=True)
+    lower, upper = zip(LOG_STEEPNESS_LIMITS, (-LARGEST_LEVEL, LARGEST_LEVEL), strict=True)
     top = maximise_plane(likelihood, _start_point(likelihood), lower, upper, (1.0, 4.0))
     log_steepness, level = float(top.point[0]), float(top.point[1])
     if top.at_limit:
@@ -178,6 +181,6 @@ def _start_point(likelihood: LognormalLikelihood) -> tuple[float, float]:
             value, _, slope, _, _, bend = likelihood(log_steepness, level)
             return value, slope, bend
 
-        level, value = maximise_line(along, 0.0, -1e4, 1e4, 3.0)
+        level, value = maximise_line(along, 0.0, -LARGEST_LEVEL / 2.0, LARGEST_LEVEL / 2.0, 3.0)
         best = max(best, (value, log_steepness, level))
     return best[1], best[2]
