@@ -6,6 +6,7 @@ import datetime as dt
 import math
 from collections.abc import Callable
 from decimal import Decimal
+from typing import TypeGuard
 
 # A thinner space between thousands would be usual; the vendored face has none that also holds a line together,
 # and what browsers put in its place is too narrow to be seen in bold.
@@ -29,7 +30,7 @@ MONTHS = (
 Number = int | float | Decimal
 
 
-def known(value: Number | None) -> bool:
+def known(value: Number | None) -> TypeGuard[Number]:
     """False for a value that is missing or not a number."""
     return value is not None and not math.isnan(value)
 
@@ -66,7 +67,7 @@ def rounded(value: Number, figures: int = 3) -> Number:
     """A large value to so many significant figures: an estimate of 61 034 strokes is written 61 000."""
     if not known(value) or math.isinf(value) or value == 0:
         return value
-    places = figures - 1 - math.floor(math.log10(abs(value)))
+    places = figures - 1 - math.floor(math.log10(abs(float(value))))
     return round(float(value), places) if places < 0 else value
 
 
@@ -92,15 +93,13 @@ def ends(
     lower: Number | None, upper: Number | None, write: Callable[[Number], str] = number, *, dash: bool = False
 ) -> str:
     """An interval whose ends may be missing or endless: `14 to 33`, `over 14`, `under 33`, or nothing."""
-    has_lower = known(lower) and not math.isinf(lower)
-    has_upper = known(upper) and not math.isinf(upper)
-    if has_lower and has_upper:
-        return interval(write(lower), write(upper), dash=dash)
-    if has_lower:
-        return f"over {write(lower)}"
-    if has_upper:
-        return f"under {write(upper)}"
-    return ""
+    low = write(lower) if known(lower) and not math.isinf(lower) else ""
+    high = write(upper) if known(upper) and not math.isinf(upper) else ""
+    if low and high:
+        return interval(low, high, dash=dash)
+    if low:
+        return f"over {low}"
+    return f"under {high}" if high else ""
 
 
 def as_day(value: dt.date | dt.datetime) -> dt.date:
