@@ -57,15 +57,29 @@ def running_after(rows: Sequence[Shown]) -> str:
     return next((row.counter for row in reversed(rows) if row.counter), "")
 
 
-def check_counter(reading: Reading, zone: ZoneInfo) -> None:
+@dataclass(frozen=True, slots=True)
+class Checked:
+    """What a new reading adds up to, and whether it is the last of its counter."""
+
+    totals: dict[str, float]
+    last: bool
+
+
+def check_counter(reading: Reading, zone: ZoneInfo) -> Checked:
     """Names the counter where the entry did not, and refuses a face that does not fit its neighbours."""
     lines = {unit: shown_by(reading.module, unit) for unit in UNITS if getattr(reading, unit) is not None}
     if not reading.counter:
         names = {running_after([row for row in rows if row.read_at <= reading.read_at]) for rows in lines.values()}
         reading.counter = names.pop() if len(names) == 1 else ""
+    totals: dict[str, float] = {}
+    last = True
     for unit, rows in lines.items():
         own = Shown(None, reading.read_at, getattr(reading, unit), reading.counter, reading.restarts)
-        check_line(in_order([*rows, own]), own, unit, zone)
+        ordered = in_order([*rows, own])
+        check_line(ordered, own, unit, zone)
+        totals[unit] = totals_of(ordered)[None]
+        last = last and ordered[-1] is own
+    return Checked(totals, last)
 
 
 def check_line(rows: list[Shown], own: Shown, unit: str, zone: ZoneInfo) -> None:
@@ -133,6 +147,9 @@ def local_day(row: Shown, zone: ZoneInfo) -> dt.date:
 
 def accumulated(module: Module, unit: str) -> dict[int, float]:
     """The count accumulated since the module's first counter began, by reading."""
-    rows = shown_by(module, unit)
+    return {pk: total for pk, total in totals_of(shown_by(module, unit)).items() if pk is not None}
+
+
+def totals_of(rows: Sequence[Shown]) -> dict[int | None, float]:
     faces = [Face(row.read_at.timestamp(), float(row.value), row.counter, row.restarts) for row in rows]
-    return {row.pk: anchor.total for row, anchor in zip(rows, accumulate(faces), strict=True) if row.pk is not None}
+    return {row.pk: anchor.total for row, anchor in zip(rows, accumulate(faces), strict=True)}

@@ -5,18 +5,22 @@ from __future__ import annotations
 import datetime as dt
 from collections.abc import Iterable
 
+from django.db.models import Q
+
 from fleet.actions.checks_places import first_clash
 from fleet.actions.errors import AlreadyDone, BadValue, NothingFitted, PositionTaken, RecordError, day_words
 from fleet.models import Fitting, Module, Position
 
 
 class Stays:
-    """Standing fittings of some positions of one module."""
+    """Standing fittings of some positions of one module, those that touch a day or lie after it where one is given."""
 
-    def __init__(self, module: Module, positions: Iterable[Position | int]) -> None:
+    def __init__(self, module: Module, positions: Iterable[Position | int], since: dt.date | None = None) -> None:
         self.module = module
         keys = {position if isinstance(position, int) else position.pk for position in positions}
         rows = Fitting.objects.standing().filter(module=module, position__in=keys).select_related("part")
+        if since is not None:
+            rows = rows.filter(Q(removed_on=None) | Q(removed_on__gte=since))
         self.rows: list[Fitting] = list(rows) if keys else []
 
     def in_position(self, position_key: int) -> list[Fitting]:

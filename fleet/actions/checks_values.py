@@ -138,7 +138,7 @@ def longest(column: models.Field) -> int | None:
 
 
 def clean_column(column: models.Field, value: Any, record: models.Model) -> Any:
-    if column.blank and value in column.empty_values:
+    if (column.blank and value in column.empty_values) or (column.null and value is None):
         return value
     try:
         return column.clean(value, record)

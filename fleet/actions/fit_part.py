@@ -48,7 +48,7 @@ def fit_part(
         )
         write_fitting(
             fitting,
-            stays=Stays(module, [position]),
+            stays=Stays(module, [position], since=day),
             place=place,
             day=day,
             visit=visit,

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from typing import NamedTuple
 
 from django.db.models import Q
@@ -16,8 +17,9 @@ class Measured(NamedTuple):
     hours: float | None = None
 
 
-def measured_at(reading: Reading | None) -> Measured:
-    return Measured() if reading is None else Counts(reading.module).at(reading)
+def measured_of(totals: Mapping[str, float | None]) -> Measured:
+    strokes = totals.get("strokes")
+    return Measured(None if strokes is None else round(strokes), totals.get("hours"))
 
 
 def measured_in(visit: Visit | None, strokes: int | None, hours: float | None) -> Measured:
@@ -36,8 +38,7 @@ class Counts:
         self.by_unit: dict[str, dict[int, float]] = {}
 
     def at(self, reading: Reading) -> Measured:
-        strokes = self.of("strokes", reading)
-        return Measured(None if strokes is None else round(strokes), self.of("hours", reading))
+        return measured_of({unit: self.of(unit, reading) for unit in UNITS})
 
     def of(self, unit: str, reading: Reading) -> float | None:
         if getattr(reading, unit) is None:

@@ -57,7 +57,7 @@ def record_reading(
         if (position is None and play_mm is None) == (counter is None):
             raise BadValue("Enter a counter, or the play at a position: one of the two.", field="strokes")
         if counter is not None:
-            write_face(reading, counter, place)
+            write_face(reading, counter, place, follow=visit is not None)
         else:
             write_play_of(reading, position, play_mm)
         rebuild_clocks([module.pk])

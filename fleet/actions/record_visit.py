@@ -12,6 +12,7 @@ from fleet.actions.checks_stops import moment
 from fleet.actions.checks_values import choose, clean_instant
 from fleet.actions.entries import CounterEntry, FindingEntry, PartChange
 from fleet.actions.errors import BadValue
+from fleet.actions.measured import Measured
 from fleet.actions.rebuild_clocks import rebuild_clocks
 from fleet.actions.visit_parts import write_changes, write_findings
 from fleet.actions.visit_readings import write_counter, write_play
@@ -65,9 +66,9 @@ def record_visit(
             entered_by=by,
         )
         add(visit, code=code, prefix="V")
-        reading = write_counter(visit, counter, place, by) if counter is not None else None
+        measured = write_counter(visit, counter, place, by) if counter is not None else Measured()
         write_play(visit, play or {}, by)
-        write_changes(visit, changes, place, reading, by)
+        write_changes(visit, changes, place, measured, by)
         write_findings(visit, findings)
         leave_module(visit, stopped_at, place, by)
         rebuild_clocks([module.pk])

@@ -49,7 +49,7 @@ def remove_part(
         fitting.caused_by = caused_by and Fitting.objects.get(pk=caused_by.pk)
         write_removal(
             fitting,
-            stays=Stays(module, [fitting.position]),
+            stays=Stays(module, [fitting.position], since=fitting.fitted_on),
             place=place,
             day=day,
             visit=visit,

@@ -11,10 +11,10 @@ from fleet.actions.checks_values import choose, clean_day
 from fleet.actions.entries import FindingEntry, PartChange
 from fleet.actions.errors import BadValue, PositionTaken, RecordError
 from fleet.actions.fit_part import write_fitting
-from fleet.actions.measured import Measured, measured_at
+from fleet.actions.measured import Measured
 from fleet.actions.remove_part import write_removal
 from fleet.actions.writes import add
-from fleet.models import Finding, Fitting, FoundKind, Part, Person, Position, Reading, Visit
+from fleet.models import Finding, Fitting, FoundKind, Part, Person, Position, Visit
 
 
 class VisitParts:
@@ -81,13 +81,13 @@ class VisitParts:
 
 
 def write_changes(
-    visit: Visit, changes: Sequence[PartChange], place: Place, reading: Reading | None, by: Person | None
+    visit: Visit, changes: Sequence[PartChange], place: Place, measured: Measured, by: Person | None
 ) -> None:
     if not changes:
         return
     check_entries(visit, changes)
-    stays = Stays(visit.module, [entry.position for entry in changes])
-    parts = VisitParts(visit, stays, place, measured_at(reading), by)
+    stays = Stays(visit.module, [entry.position for entry in changes], since=visit.happened_on)
+    parts = VisitParts(visit, stays, place, measured, by)
     for row, entry in in_order_of_cause(changes):
         try:
             if entry.reason:

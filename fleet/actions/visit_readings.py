@@ -10,11 +10,12 @@ from fleet.actions.checks_places import Place
 from fleet.actions.checks_values import choose, clean_columns
 from fleet.actions.entries import CounterEntry
 from fleet.actions.errors import BadValue
-from fleet.actions.measured import MeasuredEnds
+from fleet.actions.measured import Measured, MeasuredEnds, measured_of
 from fleet.models import Person, Position, Reading, Restart, Visit
 
 
-def write_counter(visit: Visit, counter: CounterEntry, place: Place, by: Person | None) -> Reading:
+def write_counter(visit: Visit, counter: CounterEntry, place: Place, by: Person | None) -> Measured:
+    """What the module has accumulated by this visit, a new one."""
     reading = Reading(
         module=visit.module,
         site=place.site,
@@ -23,22 +24,26 @@ def write_counter(visit: Visit, counter: CounterEntry, place: Place, by: Person 
         known_on=visit.known_on,
         entered_by=by,
     )
-    return write_face(reading, counter, place)
+    return write_face(reading, counter, place, follow=False)
 
 
-def write_face(reading: Reading, counter: CounterEntry, place: Place) -> Reading:
-    """Checks what the counter says against its neighbours, then stores the reading."""
+def write_face(reading: Reading, counter: CounterEntry, place: Place, *, follow: bool) -> Measured:
+    """Checks what the counter says against its neighbours, then stores the reading.
+
+    The ends of fittings measured by this visit or by later readings follow where there may be any.
+    """
     if counter.strokes is None and counter.hours is None:
         raise BadValue("The counter is missing. Enter its number.", field="strokes")
     choose(counter.restarts, Restart, field="restarts")
     reading.strokes, reading.hours = counter.strokes, counter.hours
     reading.counter, reading.restarts = counter.counter, counter.restarts
     clean_columns(reading)
-    check_counter(reading, place.zone)
-    ends = MeasuredEnds(reading)
+    checked = check_counter(reading, place.zone)
+    ends = MeasuredEnds(reading) if follow or not checked.last else None
     reading.save()
-    ends.follow()
-    return reading
+    if ends is not None:
+        ends.follow()
+    return measured_of(checked.totals)
 
 
 def write_play(visit: Visit, play: Mapping[Position, float], by: Person | None) -> None:

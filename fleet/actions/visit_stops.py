@@ -6,6 +6,7 @@ import datetime as dt
 
 from fleet.actions.checks_places import Place
 from fleet.actions.checks_stops import check_stop, next_change, standing_stops
+from fleet.actions.strike import strike
 from fleet.actions.writes import add, save_again
 from fleet.models import Left, Person, Stop, Visit
 
@@ -69,3 +70,27 @@ def new_stop(visit: Visit, stopped_at: dt.datetime, place: Place, by: Person | N
         visit=visit,
         entered_by=by,
     )
+
+
+def ended_by(visit: Visit, instant: dt.datetime) -> list[Stop]:
+    """Stops that ended the moment a visit left the module running."""
+    return [stop for stop in standing_stops(visit.module) if stop.running_at == instant and stop.visit_id != visit.pk]
+
+
+def reopen_stops(visit: Visit) -> None:
+    """Without the visit its stops go on: until the next visit that left the module running, or until now."""
+    for stop in ended_by(visit, visit.happened_at):
+        others = [other for other in standing_stops(visit.module) if other.pk != stop.pk]
+        stop.module = visit.module
+        stop.running_at = next_change(visit.module, visit.happened_at, others)
+        save_again(stop)
+
+
+def leave_otherwise(visit: Visit, before: str, place: Place, by: Person | None, reason: str) -> None:
+    """The visit was said to have left its module otherwise than it did."""
+    if before == Left.STOPPED:
+        for stop in Stop.objects.standing().filter(visit=visit):
+            strike(stop, by, reason)
+    if before == Left.RUNNING:
+        reopen_stops(visit)
+    leave_module(visit, None, place, by)
