@@ -28,6 +28,7 @@ CASES: list[tuple[Rule, str, str, int]] = [
     (import_rules.stats_stand_alone, "reliability/stats/a.py", "from .b import fit\nimport numpy\n", 0),
     (import_rules.only_one_file_makes_life_data, "reliability/wording.py", "from fleet.models import Part\n", 1),
     (import_rules.only_one_file_makes_life_data, "reliability/lifetimes_from_fleet.py", "import fleet.models\n", 0),
+    (import_rules.only_one_file_makes_life_data, "reliability/a.py", "from fleet.models.codes import natural_key\n", 0),
     (import_rules.only_one_file_makes_life_data, "reliability/views/life.py", "from fleet.models import Part\n", 0),
     (import_rules.charts_only_draw, "reliability/charts/a.py", "import plotly\nimport scipy.stats\n", 2),
     (import_rules.charts_only_draw, "reliability/charts/a.py", "from fleet.models import Part\n", 1),
