@@ -3,7 +3,20 @@ from __future__ import annotations
 from django.urls import URLPattern, URLResolver, path
 
 import fleet.converters  # noqa: F401  (the sort of code in the addresses below)
-from fleet.views import catalogue, corrections, doubts, history, modules, people, search, sign_in, sites
+from fleet.views import (
+    catalogue,
+    corrections,
+    doubts,
+    history,
+    log,
+    modules,
+    people,
+    readings,
+    search,
+    sign_in,
+    sites,
+    stops,
+)
 
 urlpatterns: list[URLPattern | URLResolver] = [
     path("sign-in/", sign_in.sign_in, name="sign_in"),
@@ -46,4 +59,9 @@ urlpatterns: list[URLPattern | URLResolver] = [
     path("people/<code:code>/sign-out/", people.sign_out_everywhere, name="sign_out_everywhere"),
     path("settings/", people.book, name="book"),
     path("search/", search.search, name="search"),
+    path("log/", log.log, name="log"),
+    path("m/<code:tag>/log", log.log_visit, name="log_visit"),
+    path("m/<code:tag>/stop", stops.report_stop, name="report_stop"),
+    path("m/<code:tag>/running", stops.end_stop, name="end_stop"),
+    path("m/<code:tag>/reading", readings.read_counter, name="read_counter"),
 ]

@@ -9,15 +9,20 @@ from django import forms
 
 
 class PickField(forms.ChoiceField):
-    """`options` are (record, words); the cleaned value is the record, or None where nothing was picked."""
+    """`options` are (record, words); the cleaned value is the record, or None where nothing was picked.
+
+    `nothing` are the words for picking none; `nothing_value` tells that apart from not having chosen at all.
+    """
 
     default_error_messages = {"invalid_choice": "This is not among the choices here. Choose one of the list."}
 
-    def __init__(self, options: Iterable[tuple[Any, str]], *, nothing: str | None = None, **kwargs: Any) -> None:
+    def __init__(
+        self, options: Iterable[tuple[Any, str]], *, nothing: str | None = None, nothing_value: str = "", **kwargs: Any
+    ) -> None:
         pairs = list(options)
         self.records = {str(record.pk): record for record, _ in pairs}
         choices = [(str(record.pk), words) for record, words in pairs]
-        super().__init__(choices=[("", nothing), *choices] if nothing is not None else choices, **kwargs)
+        super().__init__(choices=[(nothing_value, nothing), *choices] if nothing is not None else choices, **kwargs)
 
     def prepare_value(self, value: Any) -> Any:
         return str(value.pk) if hasattr(value, "pk") else value

@@ -10,6 +10,7 @@ from django import forms
 from django.core.exceptions import ValidationError
 
 from fleet.actions.errors import CounterWentBack, RecordError
+from fleet.formats import long_day
 from fleet.forms.counter import CounterForm
 from fleet.forms.errors import add_record_error
 from fleet.forms.instants import DayField, SiteTimeForm, TimeOfDayField, instant_of
@@ -57,7 +58,9 @@ class VisitForm(SiteTimeForm, CounterForm):
 
     entry_key = EntryKeyField()
     all_well = forms.BooleanField(required=False, label="All well, nothing changed")
-    left = forms.ChoiceField(choices=LEFT, initial=Left.RUNNING.value, widget=forms.RadioSelect, label="Left it")
+    left = forms.ChoiceField(
+        choices=LEFT, initial=Left.RUNNING.value, widget=forms.RadioSelect, label="How you leave it"
+    )
     stood_day = DayField(zone=dt.UTC, required=False, label="Had stood still since, day")
     stood_time = TimeOfDayField(required=False, label="Time")
     note = forms.CharField(
@@ -182,6 +185,14 @@ class LogSheet:
         if len(in_hand) == 1 and error.field in in_hand[0].fields and (told or error.field not in self.visit.fields):
             return in_hand[0]
         return self.visit
+
+    @property
+    def visit_words(self) -> str:
+        """`1 December 2026, 06:44`, as far as day and time are readable."""
+        day, time = (self.visit[name].value() for name in ("day", "time"))
+        if isinstance(day, dt.date) and isinstance(time, dt.time):
+            return f"{long_day(day)}, {time:%H:%M}"
+        return f"{day or 'no day'}, {time or 'no time'}"
 
     @property
     def more_open(self) -> bool:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import datetime as dt
-from collections import defaultdict
+from collections import Counter, defaultdict
 from collections.abc import Iterable
 from dataclasses import dataclass, field
 
@@ -57,6 +57,9 @@ def log_choices(seen: Seen, module: Module) -> LogChoices:
     modes: dict[int, list[FailureMode]] = defaultdict(list)
     for mode in seen(FailureMode).filter(component__in=components).order_by("code_order"):
         modes[mode.component_id].append(mode)
+    seen_often = often_seen(seen, modes)
+    for some in modes.values():
+        some.sort(key=lambda mode: -seen_often[mode.pk])
     parts = parts_by_component(seen, module, components)
     likely = Likely(seen, module, parts)
     failed = days_found_failed(seen, module, fitted.values())
@@ -75,6 +78,14 @@ def log_choices(seen: Seen, module: Module) -> LogChoices:
             )
             for position in positions
         ],
+    )
+
+
+def often_seen(seen: Seen, modes: dict[int, list[FailureMode]]) -> Counter[int]:
+    """How often each mode was the answer lately, so that the usual one stands first under the thumb."""
+    keys = [mode.pk for some in modes.values() for mode in some]
+    return Counter(
+        seen(Fitting).standing().filter(mode__in=keys).order_by("-pk").values_list("mode_id", flat=True)[:400]
     )
 
 

@@ -38,6 +38,7 @@ WITH_MODE = {*FAILURE_REASONS, RemovalReason.TAKEN_WITH_ANOTHER, RemovalReason.N
 ASKS_MODE = {*FAILURE_REASONS, FAILED_IN_PLACE}
 DETAILS = {"failed_on", "last_good_on", "found_by", "serial", "lot", "age_at_fit", "play", "note"}
 BY_AGE, LOOKED_WORN = "age", "worn"
+UNSAID = "not known"
 MOST_AGE = 1e12
 
 
@@ -73,6 +74,7 @@ class PositionForm(forms.Form):
         fields["mode"] = PickField(
             [(mode, mode.title) for mode in choices.modes],
             nothing="Not known",
+            nothing_value=UNSAID,
             required=False,
             widget=forms.RadioSelect,
             label="How did it fail?",
@@ -80,6 +82,7 @@ class PositionForm(forms.Form):
         fields["cause"] = PickField(
             [(other.position, other.name) for other in others],
             nothing="Not known, or an earlier failure",
+            nothing_value=UNSAID,
             required=False,
             widget=forms.RadioSelect,
             label="Which part took it along?",

@@ -35,7 +35,7 @@
     const what = outcome(position);
     if (!what) return "";
     const mode = part(position, "mode");
-    const how = mode && fits(mode, what) && chosen(mode)?.value ? words(mode) : "";
+    const how = mode && fits(mode, what) && chosen(mode) && chosen(mode).value !== "not known" ? words(mode) : "";
     const why = what === "planned" ? words(part(position, "because")).toLowerCase() : "";
     return [words(part(position, "outcome")).toLowerCase(), how, why].filter(Boolean).join(", ");
   }
@@ -58,7 +58,7 @@
     heading.hidden = inPart || (atFinish && !positions.some(outcome));
     heading.textContent = atFinish ? "This visit" : "What did you work on?";
     well.hidden = inPart || (atFinish && !faulty(well));
-    finishHeading.textContent = wellBox.checked ? "All well: counter, and how you leave it" : "Counter, and how you leave it";
+    finishHeading.textContent = wellBox.checked ? "All well: the counter" : "Counter";
     finishStep.hidden = !atFinish;
     next.hidden = !inPart;
     onward.hidden = to.at !== "where" || !positions.some(outcome);
@@ -127,10 +127,10 @@
     const keys = out.map((other) => other.dataset.position.slice(1));
     cause.querySelectorAll(".tile").forEach((tile) => {
       const value = tile.querySelector("input").value;
-      tile.hidden = keys.length > 0 && value !== "" && !keys.includes(value);
+      tile.hidden = keys.length > 0 && value !== "not known" && !keys.includes(value);
     });
     const failed = out.filter((other) => ["failed", "worn to limit"].includes(outcome(other)));
-    if (failed.length === 1 && !chosen(cause)?.value) {
+    if (failed.length === 1 && !chosen(cause)) {
       cause.querySelector(`input[value="${failed[0].dataset.position.slice(1)}"]`).checked = true;
     }
   }

@@ -1,0 +1,106 @@
+"""Log: find a module, then one form for one visit."""
+
+from __future__ import annotations
+
+import datetime as dt
+from typing import Any
+
+from django.contrib import messages
+from django.db.models import Q, QuerySet
+from django.http import HttpResponse
+from django.shortcuts import redirect, render
+from django.urls import reverse
+from django.utils import timezone
+from django.views.decorators.cache import never_cache
+
+from fleet.actions.errors import RecordError
+from fleet.actions.record_visit import record_visit
+from fleet.formats import moment
+from fleet.forms.log import LogSheet
+from fleet.forms.log_choices import log_choices
+from fleet.forms.log_position import PositionForm
+from fleet.models import Left, Module, Site, Visit
+from fleet.rights import LOG, needs
+from fleet.views.seen import seen_module
+
+FOUND_AT_MOST = 20
+RECENT = 6
+JUST_NOW = dt.timedelta(seconds=20)
+LEFT_WORDS = {Left.RUNNING: "left running", Left.STOPPED: "left stopped", Left.TO_BENCH: "sent to the bench"}
+
+
+@needs(LOG)
+def log(request: Any) -> HttpResponse:
+    """Modules by a part of their tag, their site or their bay; before anything is typed, those last logged."""
+    words = request.GET.get("q", "").replace("\x00", "").strip()[:80]
+    modules = request.seen(Module).with_state().filter(scrapped_on=None).select_related("type")
+    found = list(matching(request, modules, words)[: FOUND_AT_MOST + 1]) if words else recent(request, modules)
+    context = {
+        "words": words,
+        "modules": found[:FOUND_AT_MOST],
+        "more": len(found) > FOUND_AT_MOST,
+    }
+    return render(request, "log/find.html", context)
+
+
+def matching(request: Any, modules: QuerySet[Any], words: str) -> QuerySet[Any]:
+    """Every word must occur in the tag, the site or the bay; tags that begin with it come first."""
+    for word in words.split()[:5]:
+        sites = request.seen(Site).filter(folded__contains=word.casefold())
+        at_site = Q(now_site_id__in=sites.values("pk"))
+        modules = modules.filter(Q(code__contains=word.upper()) | at_site | Q(now_bay__icontains=word))
+    first = words.split()[0].upper() if words else ""
+    begins = Q(code__startswith=first)
+    return modules.annotate(begins=begins).order_by("-begins", "code_order")
+
+
+def recent(request: Any, modules: QuerySet[Any]) -> list[Any]:
+    """The modules that this person attended last."""
+    mine = request.seen(Visit).standing().filter(entered_by=request.user)
+    last = mine.order_by("-entered_at").values_list("module_id", flat=True)[:60]
+    order = list(dict.fromkeys(last))[:RECENT]
+    return sorted(modules.filter(pk__in=order), key=lambda module: order.index(module.pk))
+
+
+@needs(LOG)
+@never_cache
+def log_visit(request: Any, tag: str) -> HttpResponse:
+    module = seen_module(request, tag)
+    sheet = LogSheet(log_choices(request.seen, module), request.POST if request.method == "POST" else None)
+    if request.method == "POST" and sheet.is_valid():
+        try:
+            visit = record_visit(by=request.user, module=module, **sheet.entry(request.user))
+        except RecordError as error:
+            sheet.add_error(error)
+        else:
+            tell(request, sheet, visit)
+            return redirect("module", tag=module.code)
+    context = {
+        "module": module,
+        "sheet": sheet,
+        "standing": sheet.choices.standing,
+        "module_url": reverse("module", args=[module.code]),
+    }
+    return render(request, "log/visit.html", context, status=422 if request.method == "POST" else 200)
+
+
+def tell(request: Any, sheet: LogSheet, visit: Visit) -> None:
+    """What stands in the book now; a second sending of the same entry is told as such."""
+    if timezone.now() - visit.entered_at > JUST_NOW:
+        entered = moment(visit.entered_at.astimezone(sheet.choices.standing.zone))
+        messages.info(request, f"This entry was recorded already, on {entered}. Nothing was added.")
+        return
+    done = [outcome_words(form, no_spare=sheet.no_spare) for form in sheet.positions if form.outcome_said]
+    what = "; ".join(done) or ("all well" if sheet.visit.cleaned_data["all_well"] else "a visit")
+    messages.success(request, f"Recorded: {what}; {LEFT_WORDS.get(visit.left, 'visited')}.")
+
+
+def outcome_words(form: PositionForm, *, no_spare: bool) -> str:
+    """`drive nut failed (thread worn out), N3 went in`"""
+    said = form.cleaned_data
+    mode = f" ({said['mode'].title})" if said["mode"] and form.has_mode else ""
+    words = f"{form.name} {form.reason or form.outcome_said}{mode}"
+    if not form.changes_part:
+        return words
+    part = form.change(no_spare=no_spare).part
+    return f"{words}, {part.code} went in" if part else f"{words}, left empty"
