@@ -1,0 +1,73 @@
+"""Whether somebody changed, since the files were checked, what the check stood on."""
+
+from __future__ import annotations
+
+from typing import Any
+
+from django.db import connection
+
+from fleet.models import (
+    Component,
+    FailureMode,
+    Fitting,
+    LifeSet,
+    Module,
+    ModuleType,
+    Part,
+    Person,
+    Placement,
+    Position,
+    Reading,
+    Site,
+    Stop,
+    Visit,
+)
+from fleet.transfer.columns import FileKind
+from fleet.transfer.staging import fetch, on_sqlite, run
+
+CATALOGUE = [Person, Site, Component, FailureMode, ModuleType, Position, Part, Module]
+OF_MODULES = [Placement, Visit, Fitting, Stop]
+OWN = {"placements", "visits", "fittings", "stops", "readings"}
+Ranges = dict[str, tuple[int, int]]
+
+
+def note_touched_modules(kinds: list[FileKind]) -> None:
+    """The modules of the book whose records the files add to or change."""
+    run("DROP TABLE IF EXISTS touched_modules")
+    run("CREATE TEMPORARY TABLE touched_modules (id bigint PRIMARY KEY)")
+    for kind in kinds:
+        if kind.name in OWN:
+            run(
+                f"INSERT INTO touched_modules SELECT DISTINCT module_id FROM {kind.stage} "
+                "WHERE module_id > 0 AND module_id NOT IN (SELECT id FROM touched_modules)"
+            )
+
+
+def signature(own: Ranges | None = None) -> list[Any]:
+    """Counts and versions of the catalogue and of the touched modules' records, without rows of this import."""
+    parts: list[Any] = []
+    for model in CATALOGUE:
+        parts += fetch(f"SELECT COUNT(*), COALESCE(SUM(version), 0) FROM {model._meta.db_table}")
+    parts += fetch(f"SELECT COUNT(*) FROM {LifeSet._meta.db_table}")
+    for model in OF_MODULES:
+        parts += of_modules(model._meta.db_table, "COALESCE(SUM(version), 0)", own or {})
+    parts += of_modules(Reading._meta.db_table, "COUNT(NULLIF(struck_out, ''))", own or {})
+    return [[int(each) for each in row] for row in parts]
+
+
+def of_modules(table: str, measure: str, own: Ranges) -> list[Any]:
+    low, high = own.get(table, (0, 0))
+    return fetch(
+        f"SELECT COUNT(*), {measure} FROM {table} WHERE module_id IN (SELECT id FROM touched_modules) "
+        "AND NOT (id > %s AND id <= %s)",
+        [low, high],
+    )
+
+
+def hold_still() -> None:
+    """On PostgreSQL nobody changes the catalogue or these modules until the commit; SQLite has one writer anyway."""
+    if on_sqlite():
+        return
+    tables = ", ".join(connection.ops.quote_name(model._meta.db_table) for model in CATALOGUE)
+    run(f"LOCK TABLE {tables} IN SHARE ROW EXCLUSIVE MODE")
+    run("SELECT id FROM fleet_module WHERE id IN (SELECT id FROM touched_modules) ORDER BY id FOR UPDATE")

@@ -1,0 +1,72 @@
+"""Imports, previews and exports as work in the background."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Callable, Sequence
+from pathlib import Path
+from typing import Any
+
+from fleet.formats import counted
+from fleet.history import writing
+from fleet.models import KeptFile, Work
+from fleet.transfer.import_records import Import, Outcome, make_clocks_again, sweep_before
+from fleet.transfer.problems import Unreadable
+from fleet.transfer.sources import Table, open_bytes, open_source
+from fleet.work import Progress, WorkFailed, work_kind
+
+GONE = "The command was ended before anything was stored. Run it again."
+NO_FILE = "The file is no longer kept. Choose it again."
+
+
+@work_kind("preview_records")
+def preview_records(work: Work, progress: Progress) -> dict[str, Any]:
+    """Arguments: file (of this work), update."""
+    started = time.monotonic()
+    outcome = importer(work, progress).preview()
+    return finished(outcome, started)
+
+
+@work_kind("import_records")
+def import_records(work: Work, progress: Progress) -> dict[str, Any]:
+    """Arguments: file (a kept one) or path (of a command), update, and the plan that a preview promised."""
+    started = time.monotonic()
+    if not work.result.get("stored"):
+        if work.attempt > 1 and "path" in work.arguments:
+            sweep_before(work)
+            raise WorkFailed(GONE)
+        with writing(source=work.arguments.get("source", "file"), reason=work.title):
+            outcome = importer(work, progress).store(work, work.arguments.get("plan"))
+        if not outcome.stored:
+            raise WorkFailed(refused(outcome), finished(outcome, started))
+        work.refresh_from_db(fields=["result"])
+    make_clocks_again(work.result["touched"], progress)
+    result = {key: value for key, value in work.result.items() if key != "touched"}
+    return result | {"seconds": round(time.monotonic() - started, 1)}
+
+
+def importer(work: Work, progress: Progress) -> Import:
+    return Import(tables_of(work), person=work.person, update=bool(work.arguments.get("update")), progress=progress)
+
+
+def tables_of(work: Work) -> Callable[[], Sequence[Table]]:
+    if "path" in work.arguments:
+        path = Path(work.arguments["path"])
+        return lambda: open_source(path)
+
+    def kept() -> Sequence[Table]:
+        file = KeptFile.objects.filter(pk=work.arguments["file"]).first() if "file" in work.arguments else None
+        file = file or work.files.filter(role="input").first()  # type: ignore[attr-defined]
+        if file is None:
+            raise Unreadable(NO_FILE)
+        return open_bytes(file.name, bytes(file.content))
+
+    return kept
+
+
+def finished(outcome: Outcome, started: float) -> dict[str, Any]:
+    return outcome.as_dict() | {"seconds": round(time.monotonic() - started, 1)}
+
+
+def refused(outcome: Outcome) -> str:
+    return f"{counted(outcome.problems.count, 'error')}. Nothing was stored."
