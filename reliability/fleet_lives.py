@@ -1,0 +1,139 @@
+"""What the records say about the lives of one component: rows, what was left out and what to be warned of."""
+
+from __future__ import annotations
+
+import datetime as dt
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass, field
+from typing import TYPE_CHECKING, Any, NamedTuple
+
+if TYPE_CHECKING:
+    from reliability.stats.lifetimes import Lifetimes
+
+NO_PLACE = "no place"
+NOT_NAMED = "not named"
+
+
+class LifeRow(NamedTuple):
+    """Equal lives, or equal fittings left out for one reason; site and group in the database's own numbers."""
+
+    left_out: str | None
+    state: str  # failed, other mode, worn, not known, withdrawn, running
+    entry: float | None
+    duration: float | None
+    last_good: float | None
+    site: Any
+    group: Any
+    count: int
+    not_measured: int = 0
+
+
+@dataclass(frozen=True)
+class LeftOut:
+    """Fittings that are in no estimate, and why; `query` lists them."""
+
+    reason: str
+    count: int
+    query: Any = None
+
+
+@dataclass(frozen=True, eq=False)
+class FleetLives:
+    """Life data of one component on one clock.
+
+    lifetimes: the rows, grouped, with `.groups` and `.sites` as codes; None where no life is left
+    states: for each row failed, other mode, worn, not known, withdrawn or running
+    if_not_known_failed: the same lives with every removal of unknown reason counted as a failure, where they are many
+    """
+
+    component: str
+    clock: str
+    as_of: dt.date
+    by: str | None
+    lifetimes: Lifetimes | None
+    states: Any
+    left_out: list[LeftOut] = field(default_factory=list)
+    warnings: list[str] = field(default_factory=list)
+    modes: tuple[str, ...] = ()
+    if_not_known_failed: Lifetimes | None = None
+
+    def count(self, *states: str, group: Any = None) -> int:
+        """Lives in these states, in one group or in all."""
+        import numpy as np
+
+        if self.lifetimes is None:
+            return 0
+        chosen = np.isin(self.states, states)
+        if group is not None:
+            chosen &= self.lifetimes.groups == group
+        return round(float(self.lifetimes.weights[chosen].sum()))
+
+    @property
+    def groups(self) -> list[str]:
+        """Labels of the groups in their natural order; one empty label where nothing was grouped."""
+        from fleet.models.codes import natural_key
+
+        if self.lifetimes is None:
+            return []
+        return sorted((str(label) for label in self.lifetimes.group_labels), key=natural_key)
+
+
+def arrays_of(rows: Iterable[LifeRow], sites: dict[Any, str], groups: dict[Any, str]) -> tuple[Any, Any]:
+    """Life data and states from rows, in an order that does not depend on the database's numbers."""
+    import numpy as np
+
+    from reliability.stats.lifetimes import Lifetimes
+
+    kept = sorted(
+        (
+            groups.get(row.group, NOT_NAMED),
+            row.duration,
+            row.entry,
+            row.state,
+            -1.0 if row.last_good is None else row.last_good,
+            sites.get(row.site, NO_PLACE),
+            row.count,
+        )
+        for row in rows
+        if row.left_out is None
+    )
+    if not kept:
+        return None, np.array([], dtype=object)
+    labels, durations, entries, states, last_good, places, counts = zip(*kept, strict=True)
+    good = np.array(last_good, dtype=float)
+    lifetimes = Lifetimes(
+        durations=np.array(durations, dtype=float),
+        observed=np.array(states) == "failed",
+        entries=np.array(entries, dtype=float),
+        last_good=np.where(good < 0, np.nan, good),
+        weights=np.array(counts, dtype=float),
+        sites=np.array(places),
+        groups=np.array(labels),
+    )
+    return lifetimes, np.array(states)
+
+
+def with_not_known_failed(lifetimes: Lifetimes, states: Any) -> Lifetimes:
+    """The same lives with removals of unknown reason as failures at their age."""
+    from reliability.stats.lifetimes import Lifetimes as Rows
+
+    return Rows(
+        durations=lifetimes.durations,
+        observed=lifetimes.observed | (states == "not known"),
+        entries=lifetimes.entries,
+        last_good=lifetimes.last_good,
+        weights=lifetimes.weights,
+        sites=lifetimes.sites,
+        groups=lifetimes.groups,
+    )
+
+
+def counted_reasons(rows: Sequence[LifeRow]) -> dict[str, int]:
+    """Fittings left out by reason, in the order in which the reasons are written down."""
+    from reliability.life_rules import Reason
+
+    totals: dict[str, int] = {}
+    for row in rows:
+        if row.left_out is not None:
+            totals[row.left_out] = totals.get(row.left_out, 0) + row.count
+    return {reason.value: totals[reason.value] for reason in Reason if reason.value in totals}
