@@ -6,10 +6,10 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import ArrayLike
-from scipy import special
 
 from reliability.stats.errors import InvalidArgument, UndefinedEstimate, UnsupportedRows
 from reliability.stats.lifetimes import FloatArray, Lifetimes
+from reliability.stats.profile_intervals import normal_quantile
 
 BANDS = ("log-log", "log", "plain")
 # a survival of 0.7 reached by products may be stored as 0.7000000000000001 and must still count as 0.7
@@ -140,9 +140,9 @@ class KaplanMeierCurve:
         edges = np.concatenate([[self.given_survival_to], self.times[inside], [horizon]])
         areas = np.append(1.0, self.survival[inside]) * np.diff(edges)
         to_the_right = np.cumsum(areas[::-1])[::-1][1:]
-        variance = float(to_the_right**2 @ _hazard_variance(self.failures[inside], self.at_risk[inside]))
+        variance = float(to_the_right**2 @ greenwood_terms(self.failures[inside], self.at_risk[inside]))
         estimate = self.given_survival_to + float(areas.sum())
-        half = _normal_quantile(self.confidence_level) * np.sqrt(variance)
+        half = normal_quantile(self.confidence_level) * np.sqrt(variance)
         return RestrictedMean(
             estimate=estimate,
             variance=variance,
@@ -177,19 +177,16 @@ def kaplan_meier(
         raise UnsupportedRows(
             f"{int(lifetimes.is_interval.sum())} rows failed somewhere between two ages. Use turnbull for these lives."
         )
-    z = _normal_quantile(confidence_level)
+    z = normal_quantile(confidence_level)
     if band not in BANDS:
         raise InvalidArgument(f"The band {band!r} is not known. Choose one of {', '.join(BANDS)}.")
-    start = _start_age(lifetimes, minimum_at_risk) if given_survival_to is None else float(given_survival_to)
-    last_age = float(lifetimes.durations.max())
-    if not 0.0 <= start < last_age:
-        raise InvalidArgument(f"The start at age {start:g} is not between 0 and the last age observed, {last_age:g}.")
+    start = delayed_start(lifetimes, minimum_at_risk, given_survival_to)
     times, failures = _tally(lifetimes.durations[lifetimes.observed], lifetimes.weights[lifetimes.observed])
     kept = times > start
     times, failures = times[kept], failures[kept]
     at_risk = number_at_risk(lifetimes, times)
     survival = np.cumprod(np.maximum(1.0 - failures / at_risk, 0.0))
-    spread = np.cumsum(_hazard_variance(failures, at_risk))  # Greenwood's sum: the variance of log S
+    spread = np.cumsum(greenwood_terms(failures, at_risk))  # Greenwood's sum: the variance of log S
     lower, upper = _band(survival, spread, z, band)
     return KaplanMeierCurve(
         times=times,
@@ -202,7 +199,7 @@ def kaplan_meier(
         confidence_level=confidence_level,
         band=band,
         given_survival_to=start,
-        last_age=last_age,
+        last_age=float(lifetimes.durations.max()),
     )
 
 
@@ -233,7 +230,16 @@ def _tally(values: FloatArray, weights: FloatArray) -> tuple[FloatArray, FloatAr
     return distinct, np.bincount(inverse, weights=weights, minlength=distinct.size)
 
 
-def _start_age(lifetimes: Lifetimes, minimum_at_risk: float) -> float:
+def delayed_start(lifetimes: Lifetimes, minimum_at_risk: float, given_survival_to: float | None) -> float:
+    """The age at which a curve with late entry begins: as given, else the first with enough at risk."""
+    start = _first_with_enough(lifetimes, minimum_at_risk) if given_survival_to is None else float(given_survival_to)
+    last_age = float(lifetimes.durations.max())
+    if not 0.0 <= start < last_age:
+        raise InvalidArgument(f"The start at age {start:g} is not between 0 and the last age observed, {last_age:g}.")
+    return start
+
+
+def _first_with_enough(lifetimes: Lifetimes, minimum_at_risk: float) -> float:
     if minimum_at_risk <= 0 or not lifetimes.has_entries:
         return 0.0
     entries, entered = _tally(lifetimes.entries, lifetimes.weights)
@@ -248,7 +254,7 @@ def _start_age(lifetimes: Lifetimes, minimum_at_risk: float) -> float:
     return float(entries[np.argmax(enough)])
 
 
-def _hazard_variance(failures: FloatArray, at_risk: FloatArray) -> FloatArray:
+def greenwood_terms(failures: FloatArray, at_risk: FloatArray) -> FloatArray:
     """Greenwood's terms d / (n (n - d)); 0 where all at risk fail, because nothing is left to vary."""
     left = at_risk - failures
     all_fail = left <= ROUNDING * at_risk
@@ -269,9 +275,3 @@ def _band(survival: FloatArray, spread: FloatArray, z: float, band: str) -> tupl
     if not inside.all():
         upper[~inside] = upper[inside][-1] if inside.any() else 1.0
     return lower, upper
-
-
-def _normal_quantile(confidence_level: float) -> float:
-    if not 0.0 < confidence_level < 1.0:
-        raise InvalidArgument(f"The confidence level is {confidence_level:g}; it must lie between 0 and 1.")
-    return float(special.ndtri(0.5 + confidence_level / 2.0))
