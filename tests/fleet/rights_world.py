@@ -17,6 +17,9 @@ from tests import factories as make
 NOT_OURS = {"static"}
 
 
+KINDS = ("visit", "fitting", "finding", "stop", "reading", "placement")
+
+
 @dataclass(frozen=True)
 class Route:
     """One address of the site map."""
@@ -68,8 +71,9 @@ class Place:
     def addresses(self, route: Route) -> Iterator[str]:
         """Every address of a route at this place; a new sort of address has to be added here."""
         if "kind" in route.names:
-            for kind in ("visit", "fitting", "finding", "stop", "reading", "placement"):
-                yield self.fill(route, kind=kind, pk=self.record(kind).pk)
+            for kind in KINDS:
+                if (route.name, kind) != ("correct_record", "reading"):  # readings are struck out and entered again
+                    yield self.fill(route, kind=kind, pk=self.record(kind).pk)
         else:
             yield self.fill(route)
 
