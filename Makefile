@@ -3,7 +3,7 @@
 PYTHON ?= $(shell command -v python3.11 || command -v python3)
 VENV := .venv
 BIN := $(VENV)/bin
-PIP := $(BIN)/python -m pip --disable-pip-version-check --quiet install --require-hashes --no-input
+PIP := $(BIN)/python -m pip --disable-pip-version-check --quiet --quiet install --require-hashes --no-input
 
 MAKEFLAGS += --no-print-directory
 .DEFAULT_GOAL := help
