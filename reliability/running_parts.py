@@ -1,0 +1,189 @@
+"""The parts that run on a day, with their age on the component's clock and the pace at which they age."""
+
+from __future__ import annotations
+
+import datetime as dt
+from collections import Counter, defaultdict
+from dataclasses import dataclass, field
+from typing import Any, NamedTuple
+
+from django.db.models import F, OuterRef, Q, Subquery
+
+from fleet.models import ClockPoint, Component, Fitting, Part, PartState, Placement, SiteKind
+
+NO_PLACE = "no place"
+MOST_STEPS = 20  # of a chain of superseding parts
+
+
+class RunningRow(NamedTuple):
+    """Equal running parts: age now and use a day in the clock's unit, where they stand, how many."""
+
+    age: float
+    a_day: float
+    part: str
+    site: str
+    type: str
+    count: int
+
+
+@dataclass(frozen=True)
+class RunningParts:
+    """Rows for the forecast, and in words what they leave out or assume."""
+
+    component: str
+    clock: str
+    as_of: dt.date
+    rows: list[RunningRow]
+    replaced_by: dict[str, str]  # for each part, the design that goes in when it fails
+    left_out: list[tuple[str, int]] = field(default_factory=list)
+    notes: list[str] = field(default_factory=list)
+
+    @property
+    def count(self) -> int:
+        return sum(row.count for row in self.rows)
+
+
+def running_parts(component: Component, *, as_of: dt.date, sites: list[str] | None = None) -> RunningParts:
+    """Parts in service at field sites (or in modules without any stay on record) on the as-of day."""
+    left_out: Counter[str] = Counter()
+    lower_bound = 0
+    found: list[tuple[float, float | None, str, str, str]] = []
+    for row in _fitted(component, as_of):
+        place = _left_out(row, as_of)
+        if place:
+            left_out[place] += 1
+            continue
+        if sites is not None and (row["site_code"] or NO_PLACE) not in sites:
+            continue
+        age, known = _age(row, as_of)
+        if age is None:
+            left_out["neither readings nor a duty known"] += 1
+            continue
+        lower_bound += not known
+        found.append((age, _pace(row), row["part_code"], row["site_code"] or NO_PLACE, row["type_code"]))
+    rows, guessed = _with_pace(found, component.clock)
+    notes = (
+        [f"{lower_bound} parts whose fitting day is not known count with the age they have at least."]
+        if lower_bound
+        else []
+    )
+    if guessed:
+        notes.append(
+            f"{guessed} parts without readings of their own count with the pace of their site or of the fleet."
+        )
+    return RunningParts(
+        component=component.code,
+        clock=component.clock,
+        as_of=as_of,
+        rows=rows,
+        replaced_by=replacements(component),
+        left_out=sorted(left_out.items()),
+        notes=notes,
+    )
+
+
+def _fitted(component: Component, as_of: dt.date) -> Any:
+    """Fittings running on the day, the module's clock on both sides of it, and where the module stands."""
+    clock = component.clock
+    knots = ClockPoint.objects.filter(module=OuterRef("module_id"))
+    before = knots.filter(day__lte=as_of.toordinal()).order_by("-day")
+    after = knots.filter(day__gt=as_of.toordinal()).order_by("day")
+    stay = Placement.objects.on(as_of).filter(module=OuterRef("module_id"))
+    return (
+        Fitting.objects.standing()
+        .filter(Q(removed_on=None) | Q(removed_on__gt=as_of), part__component=component)
+        .filter(Q(fitted_on=None) | Q(fitted_on__lte=as_of))
+        .values(
+            "age_at_fit",
+            "fitted_on",
+            part_code=F("part__code"),
+            type_code=F("module__type__code"),
+            scrapped=F("module__scrapped_on"),
+            at_fit=F(f"clock__{clock}_at_fit"),
+            at_records=F(f"clock__{clock}_at_records"),
+            before_day=Subquery(before.values("day")[:1]),
+            before=Subquery(before.values(clock)[:1]),
+            after_day=Subquery(after.values("day")[:1]),
+            after=Subquery(after.values(clock)[:1]),
+            site_code=Subquery(stay.values("site__code")[:1]),
+            site_kind=Subquery(stay.values("site__kind")[:1]),
+            placed=Subquery(Placement.objects.standing().filter(module=OuterRef("module_id")).values("pk")[:1]),
+        )
+        .order_by("module_id", "position_id")
+    )
+
+
+def _left_out(row: dict[str, Any], as_of: dt.date) -> str:
+    """Why a running part is not counted; empty for those that are."""
+    if row["scrapped"] and row["scrapped"] <= as_of:
+        return "in a scrapped module"
+    if row["site_kind"] == SiteKind.RIG:
+        return "on a test stand"
+    if row["site_kind"] == SiteKind.DEPOT:
+        return "at a depot"
+    return "in a module without a place" if row["placed"] and row["site_code"] is None else ""
+
+
+def _age(row: dict[str, Any], as_of: dt.date) -> tuple[float | None, bool]:
+    """The age on the day, and whether it is known (else it is the least it can be)."""
+    now = row["before"]
+    if now is None:
+        return None, False
+    if row["after"] is not None and row["after_day"] > row["before_day"]:
+        share = (as_of.toordinal() - row["before_day"]) / (row["after_day"] - row["before_day"])
+        now += (row["after"] - row["before"]) * share
+    known = row["fitted_on"] is not None
+    start = row["at_fit"] if known else row["at_records"]
+    if start is None:
+        start = 0.0 if not known else None
+    return (None, known) if start is None else (max(0.0, row["age_at_fit"] + now - start), known)
+
+
+def _pace(row: dict[str, Any]) -> float | None:
+    """Use a day just now; none where the clock stands (a stopped module) or is not known."""
+    if row["after"] is None or row["before"] is None or row["after_day"] <= row["before_day"]:
+        return None
+    return (row["after"] - row["before"]) / (row["after_day"] - row["before_day"]) or None
+
+
+def _with_pace(found: list[tuple[float, float | None, str, str, str]], clock: str) -> tuple[list[RunningRow], int]:
+    """Equal parts as one row; who has no pace takes the median of the site, else of all."""
+    if clock == "days":
+        found = [(age, 1.0, part, site, kind) for age, _, part, site, kind in found]
+    by_site: dict[str, list[float]] = defaultdict(list)
+    for _, pace, _, site, _ in found:
+        if pace is not None:
+            by_site[site].append(pace)
+    everywhere = _median([pace for paces in by_site.values() for pace in paces])
+    counts: Counter[tuple[float, float, str, str, str]] = Counter()
+    guessed = 0
+    for age, pace, part, site, kind in found:
+        guessed += pace is None
+        use = pace if pace is not None else _median(by_site[site]) or everywhere
+        counts[(round(age, 1), float(f"{use:.4g}"), part, site, kind)] += 1
+    rows = [RunningRow(*key, count) for key, count in sorted(counts.items())]
+    return rows, guessed
+
+
+def _median(values: list[float]) -> float:
+    ordered = sorted(values)
+    return ordered[len(ordered) // 2] if ordered else 0.0
+
+
+def replacements(component: Component) -> dict[str, str]:
+    """For each part the current design at the end of its chain of superseding parts; itself where there is none."""
+    parts = {part.pk: part for part in Part.objects.filter(component=component)}
+    newer = {
+        part.supersedes_id: part
+        for part in sorted(parts.values(), key=lambda part: part.code_order)
+        if part.state == PartState.CURRENT and part.supersedes_id
+    }
+    chosen = {}
+    for part in parts.values():
+        last = part
+        for _ in range(MOST_STEPS):
+            if last.pk not in newer:
+                break
+            last = newer[last.pk]
+        chosen[part.code] = last.code
+    return chosen
