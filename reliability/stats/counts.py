@@ -21,7 +21,7 @@ from reliability.stats.count_groups import Block, BlockTails
 from reliability.stats.count_lattice import VisitGrid
 from reliability.stats.count_masses import Hazards, MidpointGrid
 from reliability.stats.count_positions import Rows, group_positions
-from reliability.stats.count_sums import CountMixture
+from reliability.stats.count_sums import CountMixtures
 from reliability.stats.errors import InvalidArgument
 from reliability.stats.posterior import PosteriorDraws
 
@@ -123,6 +123,7 @@ def forecast_counts(
     next_posterior: Posterior | None = None,
     switch_at: ArrayLike | None = None,
     cells: int | None = None,
+    group_window: int | None = None,
 ) -> CountForecast:
     """Distribution of failures and parts used by positions within their horizons.
 
@@ -139,6 +140,7 @@ def forecast_counts(
     down_until: above 0 the module is stopped and gets a new part then. leave_at: the position is counted until then.
     next_posterior, switch_at: parts fitted after switch_at live by next_posterior.
     draws: of the posterior. cells: steps of the grid (chosen from the lives if None).
+    group_window: by_group speaks of this window (0 the first) instead of the whole horizon.
     Raises InvalidArgument. Source: Cox 1962; early renewals by mass at cell midpoints, see count_kernel.
     """
     rng = np.random.default_rng() if rng is None else rng
@@ -147,10 +149,11 @@ def forecast_counts(
     if windows is None and leave_at is not None:
         # without windows leaving only shortens the horizon, exactly
         horizons, leave = np.minimum(np.asarray(horizons, dtype=np.float64), leave), np.inf
+    needs_sites = _needs_sites(posterior, next_posterior, duty_spread, sites, ages)
     rows = group_positions(
         ages,
         horizons,
-        sites=sites,
+        sites=sites if needs_sites else None,
         groups=groups,
         weights=weights,
         columns={
@@ -171,7 +174,9 @@ def forecast_counts(
     next_rates = None if following is None else _site_rates(next_posterior, following, rows)
     duty = _duty_factors(duty_spread, draws, len(rows.site_labels), rng)
     sharpness = _sharpness(drawn, rates)
-    tallies = _Tallies(rows, len(edges) - 1)
+    if group_window is not None and not 0 <= group_window < len(edges) - 1:
+        raise InvalidArgument(f"group_window is {group_window}; there are {len(edges) - 1} windows, counted from 0.")
+    tallies = _Tallies(rows, len(edges) - 1, 0 if group_window is None else group_window + 1)
     for chunk in _chunks(rows, sharpness):
         blocks = _blocks(rows, float(np.quantile(sharpness[chunk], 0.9)), edges, cells)
         _add_draws(tallies, blocks, (drawn, rates), (following, next_rates), duty, chunk)
@@ -189,13 +194,27 @@ def _window_edges(windows: Sequence[float] | None) -> FloatArray:
     return edges / edges[-1]
 
 
+def _needs_sites(
+    posterior: Posterior,
+    next_posterior: Posterior | None,
+    duty_spread: float | tuple[float, float],
+    sites: Sequence[Any] | None,
+    ages: ArrayLike,
+) -> bool:
+    """Whether positions of different sites differ; sites that change nothing would only multiply the work."""
+    if sites is not None and len(sites) != np.size(ages):
+        raise InvalidArgument(f"sites holds {len(sites)} labels; there are {np.size(ages)} positions.")
+    spread = posterior.has_spread or (next_posterior is not None and next_posterior.has_spread)
+    if spread and sites is None:
+        raise InvalidArgument("This posterior has a spread between sites: give the site of every position.")
+    return spread or np.ndim(duty_spread) > 0
+
+
 def _site_rates(posterior: Posterior, drawn: PosteriorDraws, rows: Rows) -> FloatArray:
     """Hazard level times site factor, (draws, sites)."""
     level = np.exp(-drawn.shapes * np.log(drawn.scales))
     if not posterior.has_spread:
         return np.broadcast_to(level[:, None], (level.size, len(rows.site_labels)))
-    if not rows.by_site:
-        raise InvalidArgument("This posterior has a spread between sites: give the site of every position.")
     return level[:, None] * drawn.for_sites(rows.site_labels)
 
 
@@ -246,11 +265,21 @@ def _cell_count(horizon: float, sharpness: float, edges: FloatArray) -> int:
 
 def _chunks(rows: Rows, sharpness: FloatArray) -> list[IntArray]:
     """Draws of like lives together: most need few cells and orders; arrays stay within some tens of megabytes."""
-    draws = sharpness.size
     order = np.argsort(sharpness, kind="stable")
-    work = max(len(rows), 12 * len(rows.classes), 1) * 2.0 * LEAST_CELLS
-    size = int(np.clip(4e6 / work, 1, max(draws / 6.0, 16)))
-    return [order[start : start + size] for start in range(0, draws, size)]
+    cells = np.clip(5.0 * rows.classes.horizon.max(initial=0.0) * sharpness[order], LEAST_CELLS, MOST_CELLS)
+    level = np.floor(1.5 * np.log2(cells / LEAST_CELLS)).astype(np.int64)
+    chunks = []
+    for start, stop in _runs(level):
+        work = max(len(rows), 12 * len(rows.classes), 1) * 2.0 * cells[stop - 1]
+        size = int(np.clip(4e6 / work, 1, stop - start))
+        chunks += [order[first : min(first + size, stop)] for first in range(start, stop, size)]
+    return chunks
+
+
+def _runs(level: IntArray) -> list[tuple[int, int]]:
+    """(start, stop) of each run of equal values."""
+    edges = [0, *(np.flatnonzero(np.diff(level)) + 1).tolist(), level.size]
+    return list(zip(edges[:-1], edges[1:], strict=True))
 
 
 def _hazards(drawn: PosteriorDraws, rates: FloatArray, block: Block, chunk: IntArray) -> Hazards:
@@ -275,74 +304,70 @@ def _add_draws(
         following = None if later[0] is None else _hazards(later[0], later[1], block, chunk)
         factors = duty[chunk][:, block.rows.classes.site]
         worked.append(BlockTails(block, _hazards(*now, block, chunk), following, factors))
+    weights = [block.rows.weights for block in blocks]
     for kind in tallies.kinds:
         for number, parts in enumerate(zip(*(tails.targets(kind) for tails in worked), strict=True)):
-            tallies.add(kind, number, _joined(parts), blocks, chunk.size)
+            tallies.add(kind, number, _joined(parts), np.concatenate(weights, axis=1))
     if not worked:
-        tallies.add_empty(chunk.size)
+        tallies.add_nothing(chunk.size)
 
 
 def _joined(parts: Sequence[FloatArray]) -> FloatArray:
+    if len(parts) == 1:
+        return parts[0]
     orders = max(part.shape[2] for part in parts)
     padded = [np.pad(part, ((0, 0), (0, 0), (0, orders - part.shape[2]))) for part in parts]
     return np.concatenate(padded, axis=1)
 
 
 class _Tallies:
-    """The mixtures being collected: for each kind the total, each window and each group."""
+    """The mixtures being collected: for each kind the groups and the total, then the total of each window."""
 
     def __init__(self, rows: Rows, windows: int) -> None:
         classes = rows.classes
         planned = bool(np.isfinite(classes.replace_at).any())
         differ = planned or bool(classes.other_removals.any()) or bool(rows.extra.any())
         self.kinds = ["failures", *(["parts"] if differ else []), *(["planned"] if planned else [])]
-        self._totals = {kind: [CountMixture() for _ in range(1 + windows)] for kind in self.kinds}
-        self._groups = {kind: [CountMixture() for _ in rows.group_labels] for kind in self.kinds}
+        # one group alone is the total
+        self._first = 0 if len(rows.group_labels) > 1 else 1
+        sums = len(rows.group_labels) + 1 - self._first
+        self._mixtures = {
+            kind: [CountMixtures(sums), *(CountMixtures(1) for _ in range(windows))] for kind in self.kinds
+        }
 
-    def add(self, kind: str, number: int, tails: FloatArray, blocks: list[Block], draws: int) -> None:
+    def add(self, kind: str, number: int, tails: FloatArray, weights: FloatArray) -> None:
         """Tails of target `number` (0 the whole horizon) for some draws."""
-        weights = np.concatenate([block.rows.weight for block in blocks])
-        self._totals[kind][number].add(tails, weights)
-        if number or len(self._groups[kind]) == 1:
-            return
-        group = np.concatenate([block.rows.group for block in blocks])
-        order = np.argsort(group, kind="stable")
-        starts = np.searchsorted(group[order], np.arange(len(self._groups[kind]) + 1))
-        for index, mixture in enumerate(self._groups[kind]):
-            mine = order[starts[index] : starts[index + 1]]
-            mixture.add(tails[:, mine], weights[mine])
+        self._mixtures[kind][number].add(tails, weights[-1:] if number else weights[self._first :])
 
-    def add_empty(self, draws: int) -> None:
+    def add_nothing(self, draws: int) -> None:
         """No positions at all: nothing will fail."""
-        for mixtures in [*self._totals.values(), *self._groups.values()]:
+        for mixtures in self._mixtures.values():
             for mixture in mixtures:
-                mixture.add(np.zeros((draws, 0, 1)), np.zeros(0))
+                mixture.add(np.zeros((draws, 0, 1)), np.zeros((1, 0)))
 
     def forecast(self, rows: Rows, windows: Sequence[float] | None, draws: int) -> CountForecast:
         """The finished distributions."""
-        total = self._counts({kind: mixtures[0] for kind, mixtures in self._totals.items()})
+        found = {kind: [mixture.pmfs() for mixture in mixtures] for kind, mixtures in self._mixtures.items()}
+        total = _counts({kind: pmfs[0][-1] for kind, pmfs in found.items()})
         spans = () if windows is None else tuple(zip(map(float, windows[:-1]), map(float, windows[1:]), strict=True))
-        by_window = tuple(
-            self._counts({kind: mixtures[number + 1] for kind, mixtures in self._totals.items()})
-            for number in range(len(spans))
-        )
-        by_group = {}
+        by_window = [_counts({kind: pmfs[1 + n][0] for kind, pmfs in found.items()}) for n in range(len(spans))]
+        by_group: dict[Any, Counts] = {}
         if rows.group_labels != [None]:
             for index, label in enumerate(rows.group_labels):
-                alone = len(rows.group_labels) == 1
-                mine = {kind: mixtures[index] for kind, mixtures in self._groups.items()}
-                by_group[label] = total if alone else self._counts(mine)
+                alone = self._first == 1
+                by_group[label] = total if alone else _counts({kind: pmfs[0][index] for kind, pmfs in found.items()})
         return CountForecast(
             total.failures,
             total.parts_used,
             total.planned,
             by_group=by_group,
-            by_window=by_window,
+            by_window=tuple(by_window),
             windows=spans,
             draws=draws,
         )
 
-    def _counts(self, mixtures: dict[str, CountMixture]) -> Counts:
-        found = {kind: CountDistribution(mixture.pmf()) for kind, mixture in mixtures.items()}
-        none = CountDistribution(np.array([1.0]))
-        return Counts(found["failures"], found.get("parts", found["failures"]), found.get("planned", none))
+
+def _counts(found: dict[str, FloatArray]) -> Counts:
+    counts = {kind: CountDistribution(pmf) for kind, pmf in found.items()}
+    none = CountDistribution(np.array([1.0]))
+    return Counts(counts["failures"], counts.get("parts", counts["failures"]), counts.get("planned", none))
