@@ -321,9 +321,10 @@ def _joined(parts: Sequence[FloatArray]) -> FloatArray:
 
 
 class _Tallies:
-    """The mixtures being collected: for each kind the groups and the total, then the total of each window."""
+    """The mixtures being collected: for each kind the total and each window's, one of them by group as well."""
 
-    def __init__(self, rows: Rows, windows: int) -> None:
+    def __init__(self, rows: Rows, windows: int, grouped: int = 0) -> None:
+        self._grouped = grouped  # the target that the groups speak of: 0 the whole horizon
         classes = rows.classes
         planned = bool(np.isfinite(classes.replace_at).any())
         differ = planned or bool(classes.other_removals.any()) or bool(rows.extra.any())
@@ -332,12 +333,13 @@ class _Tallies:
         self._first = 0 if len(rows.group_labels) > 1 else 1
         sums = len(rows.group_labels) + 1 - self._first
         self._mixtures = {
-            kind: [CountMixtures(sums), *(CountMixtures(1) for _ in range(windows))] for kind in self.kinds
+            kind: [CountMixtures(sums if number == grouped else 1) for number in range(1 + windows)]
+            for kind in self.kinds
         }
 
     def add(self, kind: str, number: int, tails: FloatArray, weights: FloatArray) -> None:
         """Tails of target `number` (0 the whole horizon) for some draws."""
-        self._mixtures[kind][number].add(tails, weights[-1:] if number else weights[self._first :])
+        self._mixtures[kind][number].add(tails, weights[self._first if number == self._grouped else -1 :])
 
     def add_nothing(self, draws: int) -> None:
         """No positions at all: nothing will fail."""
@@ -350,12 +352,13 @@ class _Tallies:
         found = {kind: [mixture.pmfs() for mixture in mixtures] for kind, mixtures in self._mixtures.items()}
         total = _counts({kind: pmfs[0][-1] for kind, pmfs in found.items()})
         spans = () if windows is None else tuple(zip(map(float, windows[:-1]), map(float, windows[1:]), strict=True))
-        by_window = [_counts({kind: pmfs[1 + n][0] for kind, pmfs in found.items()}) for n in range(len(spans))]
+        by_window = [_counts({kind: pmfs[1 + n][-1] for kind, pmfs in found.items()}) for n in range(len(spans))]
         by_group: dict[Any, Counts] = {}
         if rows.group_labels != [None]:
             for index, label in enumerate(rows.group_labels):
-                alone = self._first == 1
-                by_group[label] = total if alone else _counts({kind: pmfs[0][index] for kind, pmfs in found.items()})
+                # one group alone is the total, which stands last
+                place = -1 if self._first else index
+                by_group[label] = _counts({kind: pmfs[self._grouped][place] for kind, pmfs in found.items()})
         return CountForecast(
             total.failures,
             total.parts_used,
