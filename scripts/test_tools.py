@@ -37,7 +37,9 @@ def install_what_is_missing() -> str:
     # At run level 1 no package starts a service: the tests start a server of their own.
     quietly = [*as_root, "env", "DEBIAN_FRONTEND=noninteractive", "RUNLEVEL=1", "apt-get", "-q", "-y"]
     for command in ([*quietly, "update"], [*quietly, "install", "--no-install-recommends", *missing]):
-        subprocess.run(command, stdin=subprocess.DEVNULL, stdout=subprocess.DEVNULL)
+        done = subprocess.run(command, stdin=subprocess.DEVNULL, capture_output=True, text=True)
+        if done.returncode:
+            print(f"{' '.join(command)} failed:\n{done.stderr[-2000:]}", flush=True)
     left = missing_packages()
     return f"{advice}\n(Trying it here failed for {' and '.join(left)}.)" if left else ""
 

@@ -13,7 +13,7 @@ PRELUDE = """
 import sys
 sys.path.insert(0, "scripts")
 from pathlib import Path
-import run_tests, test_tools, throwaway_postgresql
+import subprocess, run_tests, test_tools, throwaway_postgresql
 throwaway_postgresql.find_programs = lambda: None
 test_tools.CHROMIUM = Path("not-there")
 sys.argv = ["run_tests.py"]
@@ -28,7 +28,8 @@ sys.argv = ["run_tests.py"]
         (
             "test_tools.root_prefix = lambda: []\n"
             "test_tools.shutil.which = lambda name: name\n"
-            "test_tools.subprocess.run = lambda *args, **kwargs: None",
+            "failed = subprocess.CompletedProcess([], 100, '', 'no network')\n"
+            "test_tools.subprocess.run = lambda *args, **kwargs: failed",
             "Trying it here failed for postgresql and chromium",
         ),
     ],
