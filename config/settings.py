@@ -8,6 +8,8 @@ from urllib.parse import unquote, urlsplit
 
 from config.sqlite import use_newer_sqlite
 
+# Several workers share the cores; threads of the numerical library would only wait for each other.
+os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
 SQLITE_VERSION = use_newer_sqlite()  # before Django opens a database
 
 from csp.constants import NONE, SELF  # noqa: E402

@@ -1,0 +1,215 @@
+"""Failures and parts used in a coming stretch of days, from the records: the document of the forecast.
+
+Each design of a component has its own posterior from its own lives; a part that fails is followed by the current
+design at the end of its chain. Removals for other reasons end a life too. Counts: `reliability.stats.counts`.
+"""
+
+from __future__ import annotations
+
+import datetime as dt
+import hashlib
+import math
+from collections import defaultdict
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+from typing import TYPE_CHECKING, Any
+
+from django.utils import timezone
+
+from fleet.models import Component
+from reliability.forecasts.horizon import WEEK, WEEKS, next_quarter, week_starts
+from reliability.forecasts.learned import Learned
+from reliability.lifetimes_from_fleet import lives
+from reliability.running_parts import RunningParts, RunningRow, running_parts
+
+if TYPE_CHECKING:
+    from reliability.stats.counts import CountDistribution, CountForecast, Counts
+
+BANDS = (0.5, 0.8, 0.95)
+FEW_FAILURES, MANY_DRAWS, FEW_DRAWS = 20, 400, 150
+AGE_CELLS = 60  # ages are told apart to this share of the typical life
+PACE_STEP = 0.06  # paces are told apart to this share
+GROUPINGS = ("part", "needed", "site", "type")
+
+
+@dataclass(frozen=True)
+class Question:
+    """What a forecast is asked; `by_type` costs one more count."""
+
+    component: Component
+    begin: dt.date
+    days: int
+    as_of: dt.date
+    sites: tuple[str, ...] | None = None
+    by_type: bool = False
+
+    @property
+    def gap(self) -> int:
+        """Days between the as-of day and the first day counted."""
+        return (self.begin - self.as_of).days
+
+    @property
+    def span(self) -> int:
+        return self.gap + self.days
+
+    def seed(self, part: str) -> int:
+        """The same question gives the same answer."""
+        text = f"{self.component.code} {self.begin} {self.days} {self.as_of} {self.sites} {part}"
+        return int.from_bytes(hashlib.sha256(text.encode()).digest()[:8], "big")
+
+
+def question_of(
+    component: Component,
+    *,
+    begin: dt.date | None = None,
+    days: int | None = None,
+    as_of: dt.date | None = None,
+    sites: Sequence[str] | None = None,
+    by_type: bool = False,
+) -> Question:
+    """The default is 13 whole weeks from the first Monday of the next calendar quarter."""
+    today = as_of or timezone.localdate()
+    return Question(
+        component=component,
+        begin=max(begin or next_quarter(today), today),
+        days=days or WEEKS * WEEK,
+        as_of=today,
+        sites=None if sites is None else tuple(sorted(sites)),
+        by_type=by_type,
+    )
+
+
+@dataclass
+class Tallies:
+    """Independent counts waiting to be added up: failures and parts used by grouping and label, failures by week."""
+
+    weeks: list[list[CountDistribution]]
+    failures: dict[str, dict[str, list[CountDistribution]]] = field(default_factory=lambda: defaultdict(dict))
+    used: dict[str, dict[str, list[CountDistribution]]] = field(default_factory=lambda: defaultdict(dict))
+
+    def add(self, grouping: str, label: str, counts: Counts) -> None:
+        self.failures[grouping].setdefault(label, []).append(counts.failures)
+        self.used[grouping].setdefault(label, []).append(counts.parts_used)
+
+
+def forecast_document(question: Question, *, bands: Sequence[float] = BANDS) -> dict[str, Any]:
+    """Totals, weeks and every grouping, as plain values."""
+    running = running_parts(
+        question.component, as_of=question.as_of, sites=None if question.sites is None else list(question.sites)
+    )
+    learned = Learned(lives(question.component, by="part", as_of=question.as_of))
+    tallies = Tallies([[] for _ in week_starts(question.days)[1:]])
+    by_part: dict[str, list[RunningRow]] = defaultdict(list)
+    for row in running.rows:
+        by_part[row.part].append(row)
+    for part, rows in by_part.items():
+        count_part(question, learned, running.replaced_by[part], part, rows, tallies)
+    if running.rows and learned.found.lifetimes is None:
+        learned.warnings.append("No life is on record yet, so nothing can be expected. Log what goes in and out first.")
+    return written(question, running, learned, tallies, bands)
+
+
+def count_part(
+    question: Question, learned: Learned, needed: str, part: str, rows: list[RunningRow], tallies: Tallies
+) -> None:
+    """Counts the positions that hold one design now."""
+    posterior = learned.posterior(part)
+    if posterior is None:
+        return
+    following = learned.posterior(needed) if needed != part else None
+    scale = typical_life(posterior)
+    merged = merge_rows(rows, scale / AGE_CELLS if scale else 1.0)
+    rate = learned.other_removals(part)
+    few = min(learned.failures(part), learned.failures(needed)) < FEW_FAILURES
+
+    def count(windows: list[int], group_window: int | None, label: str | None) -> CountForecast:
+        import numpy as np
+
+        from reliability.stats.counts import forecast_counts
+
+        return forecast_counts(
+            posterior,
+            np.array([row.age for row in merged]),
+            np.array([row.a_day * question.span for row in merged]),
+            weights=np.array([row.count for row in merged], dtype=float),
+            groups=[getattr(row, label) for row in merged] if label else None,
+            windows=windows,
+            group_window=group_window,
+            other_removals=rate,
+            next_posterior=following,
+            switch_at=0.0 if following is not None else None,
+            draws=MANY_DRAWS if few else FEW_DRAWS,
+            rng=np.random.default_rng(question.seed(part)),
+        )
+
+    whole = [0, question.span] if question.gap == 0 else [0, question.gap, question.span]
+    last = len(whole) - 2
+    by_site = count(whole, last, "site")
+    tallies.add("total", "", by_site.by_window[last])
+    tallies.add("part", part, by_site.by_window[last])
+    tallies.add("needed", needed, by_site.by_window[last])
+    for site, counts in by_site.by_group.items():
+        tallies.add("site", str(site), counts)
+    if question.by_type:
+        for kind, counts in count(whole, last, "type").by_group.items():
+            tallies.add("type", str(kind), counts)
+    starts = [question.gap + start for start in week_starts(question.days)]
+    weekly = count(starts if question.gap == 0 else [0, *starts], None, None).by_window
+    for week, counts in zip(tallies.weeks, weekly[-len(tallies.weeks) :], strict=True):
+        week.append(counts.failures)
+
+
+def typical_life(posterior: Any) -> float:
+    """The middle of the posterior's scale."""
+    import numpy as np
+
+    return float(np.median(posterior.draws(50, np.random.default_rng(0)).scales))
+
+
+def merge_rows(rows: list[RunningRow], cell: float) -> list[RunningRow]:
+    """Rows of about equal age and pace as one, so that the cost grows with the number of distinct ages."""
+    merged: dict[tuple[Any, ...], int] = defaultdict(int)
+    for row in rows:
+        if row.a_day <= 0:
+            continue
+        age = round(row.age / cell) * cell
+        pace = math.exp(round(math.log(row.a_day) / PACE_STEP) * PACE_STEP)
+        merged[age, pace, row.part, row.site, row.type] += row.count
+    return [RunningRow(*key, count) for key, count in sorted(merged.items())]
+
+
+def written(
+    question: Question, running: RunningParts, learned: Learned, tallies: Tallies, bands: Sequence[float]
+) -> dict[str, Any]:
+    """The document: see files.md, with weeks, all groupings, parts used and what was left out beside the total."""
+    from reliability.forecasts.combine import add_up, told
+
+    def both(grouping: str, label: str) -> dict[str, Any]:
+        failures = told(add_up(tallies.failures[grouping].get(label, [])), bands)
+        return {**failures, "parts_used": told(add_up(tallies.used[grouping].get(label, [])), bands)}
+
+    starts = week_starts(question.days)[:-1]
+    weeks = [
+        {"from": (question.begin + dt.timedelta(days=start)).isoformat(), **told(add_up(counts), bands)}
+        for start, counts in zip(starts, tallies.weeks, strict=True)
+    ]
+    groups = {
+        grouping: [{"group": label, **both(grouping, label)} for label in sorted(tallies.failures[grouping])]
+        for grouping in GROUPINGS
+    }
+    return {
+        "from": question.begin.isoformat(),
+        "days": question.days,
+        "as_of": question.as_of.isoformat(),
+        "component": question.component.code,
+        "clock": question.component.clock,
+        "sites": None if question.sites is None else list(question.sites),
+        "positions": running.count,
+        "failures_seen": learned.failures(),
+        "total": both("total", ""),
+        "weeks": weeks,
+        "groups": groups,
+        "replaced_by": running.replaced_by,
+        "left_out": [{"reason": reason, "count": count} for reason, count in running.left_out],
+        "warnings": [*running.notes, *learned.warnings],
+    }
