@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
-from reliability.stats.count_kernel import FromNew, Transform, at_place, delayed_tails
+from reliability.stats.count_kernel import FromNew, Transform
 from reliability.stats.count_lattice import VisitGrid
 from reliability.stats.count_masses import Ends, Hazards, MidpointGrid
 from reliability.stats.count_positions import Rows
@@ -40,116 +39,159 @@ class Block:
 
 
 class BlockTails:
-    """Masses and kernels of one block for some draws; `targets` yields the tails of one kind of end."""
+    """Masses and kernels of one block for some draws; `targets` gives the tails of one kind of end."""
 
     def __init__(self, block: Block, hazards: Hazards, following: Hazards | None, duty: FloatArray) -> None:
-        self._block, self._duty = block, duty
-        grid, rows = block.grid, block.rows
-        self._transform = Transform(grid.places, 0.0 if isinstance(grid, VisitGrid) else 0.5)
-        self._new, self._new_by = grid.new(hazards, rows.classes, duty)
-        self._next = None if following is None else grid.new(following, rows.classes, duty)
-        on_lattice = isinstance(grid, VisitGrid)
-        self._running = np.flatnonzero(np.isnan(rows.start) | on_lattice)
-        self._fresh = np.flatnonzero(~np.isnan(rows.start) & (not on_lattice))
-        self._ends, self._planned, self._planned_place = grid.running(hazards, rows, self._running, duty)
-        self._places = block.places()
+        self._block, self._rows, self._grid = block, block.rows, block.grid
+        on_lattice = isinstance(block.grid, VisitGrid)
+        self._transform = Transform(block.grid.places, 0.0 if on_lattice else 0.5)
+        self._new, self._new_by = block.grid.new(hazards, block.rows.classes, duty)
+        self._next = None if following is None else block.grid.new(following, block.rows.classes, duty)
+        self._running = np.flatnonzero(np.isnan(block.rows.start) | on_lattice)
+        self._fresh = np.flatnonzero(~np.isnan(block.rows.start) & (not on_lattice))
+        running = block.grid.running(hazards, block.rows, self._running, duty)
+        self._ends, self._planned, self._planned_place = running
+        self._spans = block.places()
 
-    def targets(self, kind: str) -> Iterator[FloatArray]:
+    def targets(self, kind: str) -> list[FloatArray]:
         """Tails P(N >= k), k = 1 .., (draws, rows, orders), of the whole horizon and of each window."""
         kernel = self._kernel(self._new, self._new_by, kind)
         whole = kernel.tails()
         following = None if self._next is None else self._kernel(*self._next, kind)
         known: dict[int, FloatArray] = {}
-        for number, (begin, end) in enumerate(self._places):
+        found = []
+        for begin, end in self._spans:
             if following is not None:
-                yield self._target(kind, number, self._switched(kernel, whole, following, begin, end))
-                continue
-            widths = np.where(begin == 0, self._block.grid.places, end - begin)
-            for width in np.unique(widths):
-                if width not in known:
-                    all_inside = width >= self._block.grid.places
-                    known[width] = whole if all_inside else kernel.window_tails(whole, int(width))
-            yield self._target(kind, number, _by_class(known, widths))
+                remaining = self._switched(kernel, whole, following, begin, end)
+            else:
+                remaining = self._windowed(kernel, whole, begin, end, known)
+            found.append(remaining)
+        return self._rows_tails(kind, found)
 
     def _kernel(self, masses: Ends, shares: Ends, kind: str) -> FromNew:
-        return FromNew(self._transform, *masses.split(kind), shares.split(kind)[0])
+        counted_by = shares.split(kind)[0]
+        return FromNew(self._transform, *masses.split(kind), counted_by)
+
+    def _widths(self, begin: IntArray, end: IntArray) -> IntArray:
+        """Window widths; a window from the start may reach as far back as the grid."""
+        return np.where(begin == 0, self._grid.places, end - begin)
+
+    def _windowed(
+        self, kernel: FromNew, whole: FloatArray, begin: IntArray, end: IntArray, known: dict[int, FloatArray]
+    ) -> FloatArray:
+        widths = self._widths(begin, end)
+        for width in np.unique(widths).tolist():
+            if width not in known:
+                known[width] = whole if width >= self._grid.places else kernel.window_tails(whole, width)
+        return _by_class(known, widths)
 
     def _switched(
         self, kernel: FromNew, whole: FloatArray, following: FromNew, begin: IntArray, end: IntArray
     ) -> FloatArray:
         """Remaining tails where parts fitted after the switch live by the next design."""
-        classes = self._block.rows.classes
-        switch = np.rint(self._block.grid.place_of(np.minimum(classes.switch_at, classes.horizon), classes))
+        classes = self._rows.classes
+        switch = np.rint(self._grid.place_of(np.minimum(classes.switch_at, classes.horizon), classes))
         next_whole = following.tails()
         orders = max(whole.shape[2], next_whole.shape[2]) + 1
         reference = np.zeros((*whole.shape[:2], orders, whole.shape[3]))
         mixed = np.zeros_like(reference)
-        settings = np.stack([np.where(begin == 0, self._block.grid.places, end - begin), end - switch.astype(np.int64)])
-        for width, until in np.unique(settings, axis=1).T:
+        settings = np.stack([self._widths(begin, end), end - switch.astype(np.int64)])
+        for width, until in np.unique(settings, axis=1).T.tolist():
             same = (settings[0] == width) & (settings[1] == until)
-            window = next_whole if width >= whole.shape[3] else following.window_tails(next_whole, int(width))
-            mixed[:, same] = kernel.staged_tails(reference, int(width), window, int(until))[:, same]
+            window = next_whole if width >= whole.shape[3] else following.window_tails(next_whole, width)
+            mixed[:, same] = kernel.staged_tails(reference, width, window, until)[:, same]
         return mixed
 
-    def _target(self, kind: str, number: int, remaining: FloatArray) -> FloatArray:
-        rows = self._block.rows
-        begin, end = self._places[number]
+    def _rows_tails(self, kind: str, remaining: list[FloatArray]) -> list[FloatArray]:
+        """Tails of all rows: running parts by one product for all targets, then the others."""
         counted, silent = self._ends.split(kind)
-        tails = np.zeros((remaining.shape[0], len(rows), remaining.shape[2] - 1))
-        first_rows = np.searchsorted(rows.class_index[self._running], np.arange(len(rows.classes) + 1))
-        for index in range(len(rows.classes)):
-            chosen = slice(first_rows[index], first_rows[index + 1])
-            if chosen.start == chosen.stop or end[index] <= begin[index]:
-                continue
-            width = int(end[index] - begin[index]) if begin[index] else self._block.grid.places
-            tails[:, self._running[chosen]] = delayed_tails(
-                counted[:, chosen],
-                None if silent is None else silent[:, chosen],
-                self._block.grid.at,
-                remaining[:, index],
-                int(end[index]),
-                self._transform.up_to(width),
-            )
-        if self._planned is not None:
-            tails[:, self._running] += self._planned_part(kind, remaining, begin, end)
-        if self._fresh.size:
-            tails[:, self._fresh] = self._fresh_tails(remaining, end)
-        return self._with_extra(kind, tails, begin, end)
-
-    def _planned_part(self, kind: str, remaining: FloatArray, begin: IntArray, end: IntArray) -> FloatArray:
-        """What follows the planned replacement of the running part, weighted by its chance."""
-        which = self._block.rows.class_index[self._running]
-        result = np.empty((remaining.shape[0], which.size, remaining.shape[2] - 1))
-        for draw in range(remaining.shape[0]):
-            for index in np.unique(which):
-                mine = which == index
-                left = end[index] - self._planned_place[draw, mine]
-                read = at_place(remaining[draw : draw + 1, index], left)[0]
-                inside = (left <= end[index] - begin[index])[:, None] & (kind != "failures")
-                follow = np.where(inside, read[:, :-1], read[:, 1:]) * (left >= 0)[:, None]
-                result[draw, mine] = follow * self._planned[draw, mine][:, None]
-        return result
-
-    def _fresh_tails(self, remaining: FloatArray, end: IntArray) -> FloatArray:
-        rows = self._block.rows
-        which = rows.class_index[self._fresh]
-        start = self._block.grid.place_of(rows.start[self._fresh], _Fewer(rows.classes.horizon[which]))
-        tails = np.zeros((remaining.shape[0], which.size, remaining.shape[2] - 1))
-        for index in np.unique(which):
-            mine = which == index
-            tails[:, mine] = at_place(remaining[:, index], end[index] - start[mine])[..., 1:]
+        masses = counted if silent is None else np.concatenate([counted, silent], axis=2)
+        follow = [self._follow(found, number, silent is not None) for number, found in enumerate(remaining)]
+        products = self._by_class_product(masses, np.concatenate(follow, axis=3))
+        tails, used = [], 0
+        for number, found in enumerate(remaining):
+            orders = found.shape[2] - 1
+            rows = np.zeros((found.shape[0], len(self._rows), orders))
+            rows[:, self._running] = products[..., used : used + orders]
+            used += orders
+            if self._planned is not None:
+                rows[:, self._running] += self._planned_part(kind, found, number)
+            if self._fresh.size:
+                place = self._start_place(self._fresh)
+                rows[:, self._fresh] = self._read(found, self._fresh, self._spans[number][1], place)[..., 1:]
+            tails.append(self._with_extra(kind, rows, number))
         return tails
 
-    def _with_extra(self, kind: str, tails: FloatArray, begin: IntArray, end: IntArray) -> FloatArray:
+    def _follow(self, remaining: FloatArray, number: int, with_silent: bool) -> FloatArray:
+        """What follows an end in each cell: (draws, classes, cells (twice with silent ends), orders - 1)."""
+        begin, end = self._spans[number]
+        at = self._grid.at
+        halves = 2 if with_silent else 1
+        draws, classes, orders, _ = remaining.shape
+        follow = np.zeros((draws, classes, halves * at.size, orders - 1))
+        spans = np.stack([self._widths(begin, end), end])
+        for width, stop in np.unique(spans[:, end > begin], axis=1).T.tolist():
+            same = np.flatnonzero((spans[0] == width) & (spans[1] == stop) & (end > begin))
+            cells = np.flatnonzero(stop - at >= 0)
+            left = stop - at[cells]
+            reached = remaining[:, same][..., left].swapaxes(2, 3)
+            inside = self._transform.up_to(width)[left][:, None]
+            value = reached[..., :-1] * inside + reached[..., 1:] * (1.0 - inside)
+            follow[np.ix_(range(draws), same, cells)] = value
+            if with_silent:
+                follow[np.ix_(range(draws), same, cells + at.size)] = reached[..., 1:]
+        return follow
+
+    def _by_class_product(self, masses: FloatArray, follow: FloatArray) -> FloatArray:
+        """masses (draws, rows, cells) times follow (draws, classes, cells, columns) of each row's class."""
+        index = self._rows.class_index[self._running]
+        classes = follow.shape[1]
+        counts = np.bincount(index, minlength=classes)
+        most = int(counts.max(initial=0))
+        if classes == 1:
+            return masses @ follow[:, 0]
+        if classes * most <= 3 * index.size:
+            slot = np.arange(index.size) - np.repeat(np.cumsum(counts) - counts, counts)
+            padded = np.zeros((masses.shape[0], classes, most, masses.shape[2]))
+            padded[:, index, slot] = masses
+            return (padded @ follow)[:, index, slot]
+        product = np.empty((*masses.shape[:2], follow.shape[3]))
+        edges = np.concatenate([[0], np.cumsum(counts)])
+        for number in np.flatnonzero(counts):
+            mine = slice(edges[number], edges[number + 1])
+            product[:, mine] = masses[:, mine] @ follow[:, number]
+        return product
+
+    def _planned_part(self, kind: str, remaining: FloatArray, number: int) -> FloatArray:
+        """What follows the planned replacement of the running part, weighted by its chance."""
+        begin, end = (edge[self._rows.class_index[self._running]] for edge in self._spans[number])
+        read = self._read(remaining, self._running, self._spans[number][1], self._planned_place)
+        left = end - self._planned_place
+        inside = (left <= self._widths(begin, end))[..., None] & (kind != "failures")
+        return np.where(inside, read[..., :-1], read[..., 1:]) * self._planned[..., None]
+
+    def _read(self, remaining: FloatArray, rows: IntArray, end: IntArray, start: FloatArray) -> FloatArray:
+        """remaining at real places end - start, 0 before the start: start (rows,) or (draws, rows)."""
+        which = self._rows.class_index[rows]
+        place = np.broadcast_to(end[which] - start, (remaining.shape[0], rows.size))
+        inside = np.clip(place, 0.0, remaining.shape[3] - 1.0)
+        left = np.minimum(np.floor(inside).astype(np.int64), remaining.shape[3] - 2)
+        share = (inside - left)[..., None]
+        draw = np.arange(remaining.shape[0])[:, None]
+        value = remaining[draw, which, :, left] * (1.0 - share) + remaining[draw, which, :, left + 1] * share
+        return value * (place >= 0)[..., None]
+
+    def _start_place(self, rows: IntArray) -> FloatArray:
+        start = np.nan_to_num(self._rows.start[rows])
+        return self._grid.place_of(start, self._rows.classes.take(self._rows.class_index[rows]))
+
+    def _with_extra(self, kind: str, tails: FloatArray, number: int) -> FloatArray:
         """Parts used by putting a stopped module right, and by overdue replacements, come on top."""
-        rows = self._block.rows
-        relevant = rows.extra == 2 if kind == "planned" else rows.extra > 0
+        relevant = self._rows.extra == 2 if kind == "planned" else self._rows.extra > 0
         if kind == "failures" or not relevant.any():
             return tails
-        start = np.nan_to_num(rows.start)
-        classes = rows.classes
-        place = self._block.grid.place_of(start, _Fewer.of(classes, rows.class_index))
-        low, high = begin[rows.class_index], end[rows.class_index]
+        place = self._start_place(np.arange(len(self._rows)))
+        low, high = (edge[self._rows.class_index] for edge in self._spans[number])
         used = relevant & (place <= high) & ((place > low) | (low == 0)) & (high > 0)
         longer = np.concatenate([tails, np.zeros_like(tails[..., :1])], axis=2)
         longer[:, used, 1:] = tails[:, used]
@@ -157,24 +199,10 @@ class BlockTails:
         return longer
 
 
-@dataclass(frozen=True, eq=False)
-class _Fewer:
-    """The figures of classes that a grid needs to place a time, row by row."""
-
-    horizon: FloatArray
-    visit_every: FloatArray | None = None
-    visit_next: FloatArray | None = None
-
-    @classmethod
-    def of(cls, classes: object, which: IntArray) -> _Fewer:
-        names = ("horizon", "visit_every", "visit_next")
-        return cls(*(getattr(classes, name)[which] for name in names))
-
-
 def _by_class(known: dict[int, FloatArray], widths: IntArray) -> FloatArray:
     """The remaining tails of each class for its own window width."""
-    distinct = np.unique(widths)
-    if distinct.size == 1:
+    distinct = np.unique(widths).tolist()
+    if len(distinct) == 1:
         return known[distinct[0]]
     orders = max(known[width].shape[2] for width in distinct)
     first = known[distinct[0]]

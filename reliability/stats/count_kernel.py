@@ -130,38 +130,3 @@ def _orders(tails: FloatArray) -> int:
 def up_to(place: IntArray, limit: int, tie: float) -> FloatArray:
     """1 for places below the limit, `tie` on it, 0 beyond."""
     return np.where(place < limit, 1.0, np.where(place == limit, tie, 0.0))
-
-
-def delayed_tails(
-    counted: FloatArray,
-    silent: FloatArray | None,
-    at: IntArray,
-    remaining: FloatArray,
-    end: int,
-    inside: FloatArray,
-) -> FloatArray:
-    """Tails P(N >= k), k = 1 .., of running parts, counting what lies in a window that ends at place `end`.
-
-    counted, silent: masses (draws, rows, cells) by which the running part ends at places `at` (cells,);
-    remaining: window tails of a new part (draws, orders, places); inside: the share of a mass with that many places
-    left that lies in the window (places,). Result (draws, rows, orders - 1).
-    """
-    left = end - at
-    used = left >= 0
-    left = left[used]
-    follow = remaining[:, :, left]
-    share = inside[left]
-    counted_follow = follow[:, :-1] * share + follow[:, 1:] * (1.0 - share)
-    tails = counted[:, :, used] @ counted_follow.swapaxes(1, 2)
-    if silent is not None:
-        tails += silent[:, :, used] @ follow[:, 1:].swapaxes(1, 2)
-    return tails
-
-
-def at_place(remaining: FloatArray, place: FloatArray) -> FloatArray:
-    """remaining (draws, orders, places) read at real places (rows,), 0 before the start: (draws, rows, orders)."""
-    inside = np.clip(place, 0.0, remaining.shape[2] - 1.0)
-    left = np.minimum(np.floor(inside).astype(np.int64), remaining.shape[2] - 2)
-    share = inside - left
-    value = remaining[:, :, left] * (1.0 - share) + remaining[:, :, left + 1] * share
-    return (value * (place >= 0)).swapaxes(1, 2)

@@ -14,8 +14,10 @@ from reliability.stats.errors import InvalidArgument
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
 
-MOST_EXACT_ROWS = 2500  # beyond this many distinct rows ages are moved to shared nodes
-MOST_HORIZONS = 24  # and horizons of a site to shared cells
+MOST_EXACT_ROWS = 600  # beyond this many distinct rows the ages of large groups are moved to shared nodes
+SMALL_GROUP = 60  # positions; smaller groups keep their ages, their generating functions may pass through zero
+MOST_HORIZONS = 24  # beyond this many, horizons of a site are moved to shared cells
+NODE_STEP = 0.12
 
 
 @dataclass(frozen=True, eq=False)
@@ -34,22 +36,27 @@ class Classes:
     def __len__(self) -> int:
         return int(self.site.size)
 
+    def take(self, chosen: NDArray[Any]) -> Classes:
+        """The classes at these indices (or where this is True)."""
+        return Classes(**{item.name: getattr(self, item.name)[chosen] for item in fields(Classes)})
+
 
 @dataclass(frozen=True, eq=False)
 class Rows:
-    """Distinct positions sorted by class; arrays of shape (rows,). `start` is the day a new part goes in, NaN where one
-    of age `age` runs now; `extra` the parts used by that fitting."""
+    """Distinct positions sorted by class; arrays of shape (rows,).
+
+    start: the day a new part goes in, NaN where one of age `age` runs now. extra: 1 where that fitting uses a part, 2
+    where it is a planned replacement. weights: positions of each group (groups + 1, rows), the last line their total.
+    """
 
     age: FloatArray
     start: FloatArray
     extra: IntArray
-    weight: FloatArray
-    group: IntArray
     class_index: IntArray
+    weights: FloatArray
     classes: Classes
     site_labels: list[Any]
     group_labels: list[Any]
-    by_site: bool
 
     def __len__(self) -> int:
         return int(self.age.size)
@@ -58,10 +65,26 @@ class Rows:
         """The rows of the chosen classes, which are numbered anew."""
         number = np.cumsum(chosen) - 1
         kept = chosen[self.class_index]
-        names = ("age", "start", "extra", "weight", "group")
-        columns = {name: getattr(self, name)[kept] for name in names}
-        classes = Classes(**{item.name: getattr(self.classes, item.name)[chosen] for item in fields(Classes)})
-        return replace(self, **columns, class_index=number[self.class_index[kept]], classes=classes)
+        columns = {name: getattr(self, name)[kept] for name in ("age", "start", "extra")}
+        return replace(
+            self,
+            **columns,
+            class_index=number[self.class_index[kept]],
+            weights=self.weights[:, kept],
+            classes=self.classes.take(chosen),
+        )
+
+
+@dataclass(frozen=True, eq=False)
+class _Cells:
+    """Positions alike in everything: one line a class, group, start and age, arrays (cells,)."""
+
+    class_index: IntArray
+    group: IntArray
+    start: FloatArray
+    extra: IntArray
+    age: FloatArray
+    weight: FloatArray
 
 
 def group_positions(
@@ -89,20 +112,31 @@ def group_positions(
     class_columns: dict[str, Any] = {"site": site, "horizon": horizon, **further}
     class_first, class_index = _distinct(list(class_columns.values()), count)
     classes = Classes(**{name: column[class_first] for name, column in class_columns.items()})
-    first, inverse = _distinct([class_index, group, start, extra, age], count)
-    rows = Rows(
-        age=age[first],
-        start=start[first],
-        extra=extra[first],
-        weight=np.bincount(inverse, weight, minlength=first.size),
-        group=group[first],
-        class_index=class_index[first],
+    cells = _merged(_Cells(class_index, group, start, extra, age, weight))
+    if _distinct([cells.class_index, cells.start, cells.age], cells.age.size)[0].size > MOST_EXACT_ROWS:
+        cells = _merged(_on_nodes(cells, len(group_labels), float(np.median(classes.horizon))))
+    columns = [cells.class_index, cells.start, cells.extra, cells.age]
+    first, inverse = _distinct(columns, cells.age.size)
+    weights = np.zeros((len(group_labels) + 1, first.size))
+    np.add.at(weights, (cells.group, inverse), cells.weight)
+    weights[-1] = weights[:-1].sum(axis=0)
+    return Rows(
+        age=cells.age[first],
+        start=cells.start[first],
+        extra=cells.extra[first],
+        class_index=cells.class_index[first],
+        weights=weights,
         classes=classes,
         site_labels=site_labels,
         group_labels=group_labels,
-        by_site=sites is not None,
     )
-    return rows if len(rows) <= MOST_EXACT_ROWS else _on_nodes(rows)
+
+
+def _merged(cells: _Cells) -> _Cells:
+    columns = [cells.class_index, cells.group, cells.start, cells.extra, cells.age]
+    first, inverse = _distinct(columns, cells.age.size)
+    weight = np.bincount(inverse, cells.weight, minlength=first.size)
+    return _Cells(*(column[first] for column in columns), weight)
 
 
 def _column(name: str, values: ArrayLike, count: int | None, *, least: float) -> FloatArray:
@@ -200,17 +234,18 @@ def _shared_horizons(horizon: FloatArray, site: IntArray, weight: FloatArray) ->
     return means[key]
 
 
-def _on_nodes(rows: Rows) -> Rows:
-    """Ages moved to shared nodes by four-point interpolation of the log generating function.
+def _on_nodes(cells: _Cells, groups: int, horizon: float) -> _Cells:
+    """Ages of large groups moved to shared nodes by four-point interpolation of the log generating function.
 
-    Nodes are evenly spaced in log(age + horizon / 4), 0.12 apart; weights may come out fractional and slightly
-    negative, which a sum of logarithms does not mind. Rows that start with a new part stay as they are.
+    Nodes are evenly spaced in log(age + horizon / 4); weights may come out fractional and slightly negative, which a
+    sum of logarithms does not mind. Small groups, and positions that start with a new part, stay as they are.
     """
-    running = np.isnan(rows.start)
-    typical = float(np.median(rows.classes.horizon)) or 1.0
-    offset = typical / 4.0
-    place = np.log((rows.age + offset) / offset) / 0.12
-    last = max(int(np.ceil(place.max())), 3)
+    group_key = cells.class_index * groups + cells.group
+    large = np.bincount(group_key, cells.weight)[group_key] > SMALL_GROUP
+    moved = large & np.isnan(cells.start)
+    offset = horizon / 4.0 or 1.0
+    place = np.log((cells.age[moved] + offset) / offset) / NODE_STEP
+    last = max(int(np.ceil(place.max(initial=0.0))), 3)
     left = np.clip(np.floor(place).astype(np.int64), 1, last - 2)
     shift = place - left
     lagrange = [
@@ -219,25 +254,19 @@ def _on_nodes(rows: Rows) -> Rows:
         -(shift + 1) * shift * (shift - 2) / 2.0,
         (shift + 1) * shift * (shift - 1) / 6.0,
     ]
-    groups = len(rows.group_labels)
-    node_key = (rows.class_index * groups + rows.group) * (last + 1) + left
-    size = len(rows.classes) * groups * (last + 1)
-    total = np.zeros(size + 2)
+    node_key = group_key[moved] * (last + 1) + left
+    total = np.zeros((int(group_key.max(initial=0)) + 1) * (last + 1) + 2)
     for step, share in zip((-1, 0, 1, 2), lagrange, strict=True):
-        total += np.bincount(node_key[running] + step, (share * rows.weight)[running], minlength=size + 2)
+        total += np.bincount(node_key + step, share * cells.weight[moved], minlength=total.size)
     used = np.flatnonzero(total)
-    node = used % (last + 1)
-    outer = used // (last + 1)
-    fresh = np.flatnonzero(~running)
-    moved = replace(
-        rows,
-        age=np.concatenate([offset * np.expm1(0.12 * node), rows.age[fresh]]),
-        start=np.concatenate([np.full(used.size, np.nan), rows.start[fresh]]),
-        extra=np.concatenate([np.zeros(used.size, dtype=np.int64), rows.extra[fresh]]),
-        weight=np.concatenate([total[used], rows.weight[fresh]]),
-        group=np.concatenate([outer % groups, rows.group[fresh]]),
-        class_index=np.concatenate([outer // groups, rows.class_index[fresh]]),
+    outer, node = np.divmod(used, last + 1)
+    nodes = _Cells(
+        class_index=outer // groups,
+        group=outer % groups,
+        start=np.full(used.size, np.nan),
+        extra=np.zeros(used.size, dtype=np.int64),
+        age=offset * np.expm1(NODE_STEP * node),
+        weight=total[used],
     )
-    order = np.lexsort((moved.age, moved.group, moved.class_index))
-    names = ("age", "start", "extra", "weight", "group", "class_index")
-    return replace(moved, **{name: getattr(moved, name)[order] for name in names})
+    names = [item.name for item in fields(_Cells)]
+    return _Cells(*(np.concatenate([getattr(nodes, name), getattr(cells, name)[~moved]]) for name in names))

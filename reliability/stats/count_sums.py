@@ -1,4 +1,13 @@
-"""The distribution of a sum of independent counts, from the tails of its members, averaged over draws."""
+"""Distributions of sums of independent counts, from the tails of their members, averaged over draws.
+
+The generating function of a sum is the product of its members': its logarithm is summed, evaluated on the unit
+circle, and inverted by one FFT. Three ways to the same logarithm, chosen by what is exact and cheap:
+
+- a variance above 9: the first eight cumulants, which reproduce it to 1e-7 wherever the result is not negligible;
+- members that rarely fail (P(N >= 1) below 0.3): its power series in z, log p_0 + sum_j c_j z^j (De Pril 1989, ASTIN
+  Bulletin 19, 9), with enough terms to leave less than 1e-10;
+- else member by member.
+"""
 
 from __future__ import annotations
 
@@ -7,50 +16,49 @@ import scipy.fft
 from numpy.typing import NDArray
 
 FloatArray = NDArray[np.float64]
+ComplexArray = NDArray[np.complex128]
 
-_SERIES_FROM = 9.0  # variance above which eight cumulants reproduce the characteristic function
+_SERIES_FROM = 9.0
+_RARE = 0.3
 
 
-class CountMixture:
-    """Collects the average over draws of the distribution of sum_i w_i copies of N_i.
+class CountMixtures:
+    """The average over draws of the distributions of several sums, sum_i w_gi copies of N_i for each sum g."""
 
-    `add` takes tails P(N_i >= k | draw), shape (draws, rows, k = 1 ..), and weights (rows,). The generating function of
-    a sum is the product of its members': evaluated on the unit circle and inverted by one FFT. Where a draw's sum has a
-    variance above 9 and its cumulants fall fast, the logarithm is summed as its first eight, good to 1e-7.
-    """
-
-    def __init__(self) -> None:
-        self._mass = np.zeros(64)
-        self._draws = 0
+    def __init__(self, sums: int) -> None:
+        self._mass = [np.zeros(64) for _ in range(sums)]
 
     def add(self, tails: FloatArray, weights: FloatArray) -> None:
-        """Add these draws to the mixture, each with the same weight."""
-        count, rows, _ = tails.shape
-        self._draws += count
-        if not rows or not weights.any():
-            self._mass[0] += count
+        """Add draws: tails P(N_i >= k), (draws, rows, k = 1 ..), and weights (sums, rows)."""
+        if not tails.shape[1] or not weights.any():
+            for mass in self._mass:
+                mass[0] += tails.shape[0]
             return
+        tails = tails[..., : max(int(np.count_nonzero(tails.max(axis=(0, 1)) > 1e-10)), 1)]
         probabilities = _probabilities(tails)
-        cumulants = _summed_cumulants(probabilities, weights)
-        wide = (cumulants[1] > _SERIES_FROM) & _series_serves(cumulants)
+        low = _moments(probabilities, weights)
+        wide = low[1] > _SERIES_FROM
         if wide.any():
-            self._add_wide(cumulants[:, wide])
-        if not wide.all():
-            narrow = slice(None) if not wide.any() else ~wide
-            self._add_narrow(tails[narrow], weights, cumulants[0, ~wide], cumulants[1, ~wide])
+            cumulants = _cumulants(probabilities, low, weights)
+            wide &= _series_serves(cumulants)
+            for number in np.flatnonzero(wide.any(axis=0)):
+                self._add_wide(int(number), cumulants[:, wide[:, number], number])
+        some = ~wide.all(axis=1)
+        if some.any():
+            self._add_narrow(tails[some], probabilities[some], weights, low[:, some], wide[some])
 
-    def pmf(self) -> FloatArray:
-        """Probabilities of 0, 1, 2 ... up to where less than 1e-12 is left."""
-        mass = np.maximum(self._mass, 0.0)
-        left = np.cumsum(mass[::-1])[::-1] / max(mass.sum(), 1e-300)
-        size = max(int(np.count_nonzero(left > 1e-12)), 1)
-        return mass[:size] / mass[:size].sum()
+    def pmfs(self) -> list[FloatArray]:
+        """For each sum the probabilities of 0, 1, 2 ... up to where less than 1e-12 is left."""
+        return [_trimmed(np.maximum(mass, 0.0)) for mass in self._mass]
 
-    def _room(self, size: int) -> None:
-        if size > self._mass.size:
-            self._mass = np.concatenate([self._mass, np.zeros(max(size, 2 * self._mass.size) - self._mass.size)])
+    def _put(self, number: int, start: int, mass: FloatArray) -> None:
+        held = self._mass[number]
+        if start + mass.size > held.size:
+            held = np.concatenate([held, np.zeros(max(start + mass.size, 2 * held.size) - held.size)])
+            self._mass[number] = held
+        held[start : start + mass.size] += mass
 
-    def _add_wide(self, cumulants: FloatArray) -> None:
+    def _add_wide(self, number: int, cumulants: FloatArray) -> None:
         mean, deviation = cumulants[0], np.sqrt(cumulants[1])
         size = scipy.fft.next_fast_len(int(np.ceil(18.0 * deviation.max())) + 24, real=True)
         offset = np.maximum(np.rint(mean) - size // 2, 0.0)
@@ -62,51 +70,80 @@ class CountMixture:
         spectrum = np.zeros((mean.size, angle.size), dtype=np.complex128)
         spectrum[:, : used.size] = power
         mass = scipy.fft.irfft(np.conj(spectrum), size, axis=1)
-        self._room(int(offset.max()) + size)
         for start, row in zip(offset.astype(np.int64), mass, strict=True):
-            self._mass[start : start + size] += row
+            self._put(number, int(start), row)
 
-    def _add_narrow(self, tails: FloatArray, weights: FloatArray, mean: FloatArray, variance: FloatArray) -> None:
-        top = float((mean + 12.0 * np.sqrt(np.maximum(variance, 0.0))).max())
-        size = scipy.fft.next_fast_len(int(np.ceil(top)) + 24, real=True)
+    def _add_narrow(
+        self,
+        tails: FloatArray,
+        probabilities: FloatArray,
+        weights: FloatArray,
+        low: FloatArray,
+        wide: NDArray[np.bool_],
+    ) -> None:
+        deviation = np.sqrt(np.maximum(low[1], 0.0))
+        top = float(np.where(wide, 0.0, low[0] + 12.0 * deviation).max())
+        size = scipy.fft.next_fast_len(int(np.ceil(top)) + 16, real=True)
         angle = 2.0 * np.pi / size * np.arange(size // 2 + 1)
-        single = weights == 1.0
-        chunk = max(1, int(1.5e6 / (tails.shape[1] * angle.size)))
+        rare = tails[..., 0].max() < _RARE
+        rows = tails.shape[1] if not rare else weights.shape[0]
+        chunk = max(1, int(1.5e6 / (rows * angle.size)))
         for start in range(0, tails.shape[0], chunk):
-            spectrum = _generating(tails[start : start + chunk], weights, single, angle)
-            mass = scipy.fft.irfft(np.conj(spectrum), size, axis=1).sum(axis=0)
-            self._room(size)
-            self._mass[:size] += mass
+            part = slice(start, start + chunk)
+            if rare:
+                spectrum = _by_power_series(probabilities[part], weights, angle)
+            else:
+                spectrum = _by_members(tails[part], weights, angle)
+            mass = scipy.fft.irfft(np.conj(spectrum), size, axis=2)
+            mass = np.einsum("dgn,dg->gn", mass, ~wide[part])
+            for number in range(weights.shape[0]):
+                self._put(number, 0, mass[number])
+
+
+def _trimmed(mass: FloatArray) -> FloatArray:
+    left = np.cumsum(mass[::-1])[::-1] / max(mass.sum(), 1e-300)
+    size = max(int(np.count_nonzero(left > 1e-12)), 1)
+    return mass[:size] / mass[:size].sum()
 
 
 def _probabilities(tails: FloatArray) -> FloatArray:
     """P(N = 0), P(N = 1), ... from tails; rounding that makes a tail rise is put right."""
-    full = np.concatenate([np.ones((*tails.shape[:2], 1)), tails, np.zeros((*tails.shape[:2], 1))], axis=2)
-    return np.maximum(full[..., :-1] - full[..., 1:], 0.0)
+    full = np.empty((*tails.shape[:2], tails.shape[2] + 1))
+    full[..., 0] = 1.0 - tails[..., 0]
+    full[..., 1:-1] = tails[..., :-1] - tails[..., 1:]
+    full[..., -1] = tails[..., -1]
+    return np.maximum(full, 0.0, out=full)
 
 
-def _summed_cumulants(probabilities: FloatArray, weights: FloatArray) -> FloatArray:
-    """Cumulants 1 to 8 of the sum, (8, draws)."""
+def _moments(probabilities: FloatArray, weights: FloatArray) -> FloatArray:
+    """Mean and variance of each sum, (2, draws, sums)."""
     counts = np.arange(probabilities.shape[2], dtype=np.float64)
     mean = probabilities @ counts
-    centred = counts - mean[..., None]
+    variance = probabilities @ counts**2 - mean**2
+    return np.stack([mean @ weights.T, variance @ weights.T])
+
+
+def _cumulants(probabilities: FloatArray, low: FloatArray, weights: FloatArray) -> FloatArray:
+    """Cumulants 1 to 8 of each sum, (8, draws, sums)."""
+    counts = np.arange(probabilities.shape[2], dtype=np.float64)
+    centred = counts - (probabilities @ counts)[..., None]
     power = probabilities * centred
     moments = []
     for _ in range(7):
-        power = power * centred
-        moments.append(power.sum(axis=2))
+        power *= centred
+        moments.append(power.sum(axis=2) if power.shape[2] > 8 else power @ np.ones(power.shape[2]))
     m2, m3, m4, m5, m6, m7, m8 = moments
+    square, product = m2 * m2, m3 * m2
+    eighth = m8 - 28 * m6 * m2 - 56 * m5 * m3 - 35 * m4 * m4
     rows = (
-        mean,
-        m2,
         m3,
-        m4 - 3 * m2**2,
-        m5 - 10 * m3 * m2,
-        m6 - 15 * m4 * m2 - 10 * m3**2 + 30 * m2**3,
-        m7 - 21 * m5 * m2 - 35 * m4 * m3 + 210 * m3 * m2**2,
-        m8 - 28 * m6 * m2 - 56 * m5 * m3 - 35 * m4**2 + 420 * m4 * m2**2 + 560 * m3**2 * m2 - 630 * m2**4,
+        m4 - 3 * square,
+        m5 - 10 * product,
+        m6 - 15 * m4 * m2 - 10 * m3 * m3 + 30 * square * m2,
+        m7 - 21 * m5 * m2 - 35 * m4 * m3 + 210 * product * m2,
+        eighth + 420 * m4 * square + 560 * product * m3 - 630 * square * square,
     )
-    return np.stack([row @ weights for row in rows])
+    return np.concatenate([low, np.stack([row @ weights.T for row in rows])])
 
 
 def _series_serves(cumulants: FloatArray) -> NDArray[np.bool_]:
@@ -115,8 +152,8 @@ def _series_serves(cumulants: FloatArray) -> NDArray[np.bool_]:
     return (np.abs(cumulants[6]) * step**7 / 5040.0 < 0.3) & (np.abs(cumulants[7]) * step**8 / 40320.0 < 0.1)
 
 
-def _cumulant_series(cumulants: FloatArray, angle: FloatArray, offset: FloatArray) -> NDArray[np.complex128]:
-    """Characteristic function of the sum less `offset`, (draws, angles)."""
+def _cumulant_series(cumulants: FloatArray, angle: FloatArray, offset: FloatArray) -> ComplexArray:
+    """Characteristic function of a sum less `offset`, (draws, angles)."""
     shifted = cumulants.copy()
     shifted[0] -= offset
     real = np.zeros((shifted.shape[1], angle.size))
@@ -133,30 +170,36 @@ def _cumulant_series(cumulants: FloatArray, angle: FloatArray, offset: FloatArra
     return np.exp(np.minimum(real, 0.0)) * (np.cos(imaginary) + 1j * np.sin(imaginary))
 
 
-def _generating(
-    tails: FloatArray, weights: FloatArray, single: NDArray[np.bool_], angle: FloatArray
-) -> NDArray[np.complex128]:
-    """Product over rows of G_i(e^{i angle})^w_i, G(z) = 1 + sum_k P(N >= k) (z - 1) z^(k - 1): (draws, angles)."""
+def _by_power_series(probabilities: FloatArray, weights: FloatArray, angle: FloatArray) -> ComplexArray:
+    """Generating functions of sums of rare counts: j c_j p_0 = j p_j - sum_i i c_i p_(j - i), (draws, sums, angles)."""
+    none = probabilities[..., 0]
+    ratio = probabilities[..., 1:] / none[..., None]
+    orders = ratio.shape[2]
+    odds = float((1.0 - none).max() / none.min())
+    size = int(np.clip(np.ceil(-23.0 / np.log(max(odds, 1e-5))), orders + 1, 32))
+    terms: list[FloatArray] = []  # j c_j of each row
+    for order in range(1, size + 1):
+        term = order * ratio[..., order - 1] if order <= orders else np.zeros_like(none)
+        for back in range(1, min(order - 1, orders) + 1):
+            term = term - ratio[..., back - 1] * terms[order - back - 1]
+        terms.append(term)
+    total = np.stack([np.log(none) @ weights.T, *(term @ weights.T / (j + 1) for j, term in enumerate(terms))], axis=2)
+    circle = np.arange(size + 1)[:, None] * angle
+    real, imaginary = total @ np.cos(circle), total @ np.sin(circle)
+    return np.exp(real) * (np.cos(imaginary) + 1j * np.sin(imaginary))
+
+
+def _by_members(tails: FloatArray, weights: FloatArray, angle: FloatArray) -> ComplexArray:
+    """Generating functions as products over rows of G_i(z)^w, G(z) = 1 + sum_k P(N >= k) (z - 1) z^(k - 1)."""
     orders = np.arange(tails.shape[2])
     circle = np.exp(1j * angle)
     basis = (circle - 1.0) * circle ** orders[:, None]
-    product = np.ones((tails.shape[0], angle.size), dtype=np.complex128)
-    if single.any():
-        product *= np.multiply.reduce(_values(tails[:, single], basis), axis=1)
-    if not single.all():
-        several = tails[:, ~single]
-        # turned back by the whole number next to its mean, so that the angle of a fractional power stays on one branch
-        middle = np.rint(several.sum(axis=2))
-        values = _values(several, basis) * np.exp(-1j * middle[..., None] * angle)
-        power = weights[~single][None, :, None]
-        size = (0.5 * power * np.log(np.maximum(values.real**2 + values.imag**2, 1e-300))).sum(axis=1)
-        turn = (power * np.arctan2(values.imag, values.real)).sum(axis=1) + (middle @ weights[~single])[:, None] * angle
-        product *= np.exp(size) * (np.cos(turn) + 1j * np.sin(turn))
-    return product
-
-
-def _values(tails: FloatArray, basis: NDArray[np.complex128]) -> NDArray[np.complex128]:
-    values = np.empty((*tails.shape[:2], basis.shape[1]), dtype=np.complex128)
+    # turned back by the whole number next to its mean, so that the angle of a fractional power stays on one branch
+    middle = np.rint(tails.sum(axis=2))
+    values = np.empty((*tails.shape[:2], angle.size), dtype=np.complex128)
     values.real = 1.0 + tails @ basis.real
     values.imag = tails @ basis.imag
-    return values
+    values *= np.exp(-1j * angle * np.arange(middle.max() + 1)[:, None])[middle.astype(np.int64)]
+    size = weights @ (0.5 * np.log(np.maximum(values.real**2 + values.imag**2, 1e-300)))
+    turn = weights @ np.arctan2(values.imag, values.real) + (middle @ weights.T)[..., None] * angle
+    return np.exp(size) * (np.cos(turn) + 1j * np.sin(turn))

@@ -11,6 +11,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import cached_property
+from itertools import pairwise
 from typing import Any, Protocol
 
 import numpy as np
@@ -271,7 +272,7 @@ def _chunks(rows: Rows, sharpness: FloatArray) -> list[IntArray]:
     chunks = []
     for start, stop in _runs(level):
         work = max(len(rows), 12 * len(rows.classes), 1) * 2.0 * cells[stop - 1]
-        size = int(np.clip(4e6 / work, 1, stop - start))
+        size = int(np.clip(1.2e6 / work, 1, stop - start))
         chunks += [order[first : min(first + size, stop)] for first in range(start, stop, size)]
     return chunks
 
@@ -279,7 +280,7 @@ def _chunks(rows: Rows, sharpness: FloatArray) -> list[IntArray]:
 def _runs(level: IntArray) -> list[tuple[int, int]]:
     """(start, stop) of each run of equal values."""
     edges = [0, *(np.flatnonzero(np.diff(level)) + 1).tolist(), level.size]
-    return list(zip(edges[:-1], edges[1:], strict=True))
+    return list(pairwise(edges))
 
 
 def _hazards(drawn: PosteriorDraws, rates: FloatArray, block: Block, chunk: IntArray) -> Hazards:
