@@ -252,6 +252,8 @@ class ModulePage:
         entries += [{"kind": kind, "label": label} for kind, label in ends.items()]
         if any(each.fitted_on is None for each in self.standing_fittings):
             entries.append({"kind": "open", "label": "since when is not known"})
+        elif self.windows is not None:
+            entries.append({"kind": "open", "label": "began before it came here"})
         if self.standing_stops:
             entries.append({"kind": "stop", "label": "stood still"})
         if any(stay.site.kind == SiteKind.DEPOT for stay in self.stays):

@@ -8,13 +8,20 @@ from typing import Any
 from django import forms
 
 
-class PickField(forms.ChoiceField):
+class TileField(forms.ChoiceField):
+    """A choice whose refusal does not repeat what was sent: that was no person's typing."""
+
+    default_error_messages = {
+        "invalid_choice": "This is not among the choices here. Choose one of the list.",
+        "required": "Choose one.",
+    }
+
+
+class PickField(TileField):
     """`options` are (record, words); the cleaned value is the record, or None where nothing was picked.
 
     `nothing` are the words for picking none; `nothing_value` tells that apart from not having chosen at all.
     """
-
-    default_error_messages = {"invalid_choice": "This is not among the choices here. Choose one of the list."}
 
     def __init__(
         self, options: Iterable[tuple[Any, str]], *, nothing: str | None = None, nothing_value: str = "", **kwargs: Any

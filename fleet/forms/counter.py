@@ -13,6 +13,7 @@ from django.core.exceptions import ValidationError
 from fleet.actions.entries import CounterEntry
 from fleet.actions.errors import CounterWentBack
 from fleet.formats import number
+from fleet.forms.choosing import TileField
 from fleet.models import Restart
 from fleet.models.reading import MOST_STROKES
 
@@ -57,9 +58,7 @@ class CounterForm(forms.Form):
 
     strokes = FaceField(whole=True, most=MOST_STROKES, words="the counter", required=False, label="Counter, strokes")
     hours = FaceField(whole=False, most=MOST_HOURS, words="the hour meter", required=False, label="Hour meter, hours")
-    restart = forms.ChoiceField(
-        choices=ANSWERS, required=False, widget=forms.RadioSelect, label="Was the counter changed?"
-    )
+    restart = TileField(choices=ANSWERS, required=False, widget=forms.RadioSelect, label="Was the counter changed?")
     serial = forms.CharField(
         max_length=60, required=False, label="Serial number of the new counter", help_text="Empty: named after the day."
     )

@@ -11,6 +11,7 @@ from django.core.exceptions import ValidationError
 
 from fleet.actions.errors import CounterWentBack, RecordError
 from fleet.formats import long_day
+from fleet.forms.choosing import TileField
 from fleet.forms.counter import CounterForm
 from fleet.forms.errors import add_record_error
 from fleet.forms.instants import DayField, SiteTimeForm, TimeOfDayField, instant_of
@@ -58,9 +59,7 @@ class VisitForm(SiteTimeForm, CounterForm):
 
     entry_key = EntryKeyField()
     all_well = forms.BooleanField(required=False, label="All well, nothing changed")
-    left = forms.ChoiceField(
-        choices=LEFT, initial=Left.RUNNING.value, widget=forms.RadioSelect, label="How you leave it"
-    )
+    left = TileField(choices=LEFT, initial=Left.RUNNING.value, widget=forms.RadioSelect, label="How you leave it")
     stood_day = DayField(zone=dt.UTC, required=False, label="Had stood still since, day")
     stood_time = TimeOfDayField(required=False, label="Time")
     note = forms.CharField(
@@ -190,9 +189,10 @@ class LogSheet:
     def visit_words(self) -> str:
         """`1 December 2026, 06:44`, as far as day and time are readable."""
         day, time = (self.visit[name].value() for name in ("day", "time"))
-        if isinstance(day, dt.date) and isinstance(time, dt.time):
-            return f"{long_day(day)}, {time:%H:%M}"
-        return f"{day or 'no day'}, {time or 'no time'}"
+        if hasattr(self.visit, "cleaned_data"):
+            day, time = (self.visit.cleaned_data.get(name) for name in ("day", "time"))
+        told = long_day(day) if day else "day not said"
+        return f"{told}, {time:%H:%M}" if time else f"{told}, time not said"
 
     @property
     def more_open(self) -> bool:

@@ -10,7 +10,7 @@ from django.core.validators import MaxValueValidator, MinValueValidator
 
 from fleet.actions.entries import FindingEntry, PartChange
 from fleet.formats import long_day
-from fleet.forms.choosing import PickField
+from fleet.forms.choosing import PickField, TileField
 from fleet.forms.instants import DayField
 from fleet.forms.log_choices import PositionChoices
 from fleet.models import FAILURE_REASONS, FoundBy, FoundKind, RemovalReason
@@ -45,8 +45,8 @@ MOST_AGE = 1e12
 class PositionForm(forms.Form):
     """Fields that do not belong to the chosen outcome are passed over, not refused: a phone may have hidden them."""
 
-    outcome = forms.ChoiceField(required=False, widget=forms.RadioSelect, label="What happened?")
-    because = forms.ChoiceField(
+    outcome = TileField(required=False, widget=forms.RadioSelect, label="What happened?")
+    because = TileField(
         choices=[(BY_AGE, "By its age"), (LOOKED_WORN, "It looked worn")],
         required=False,
         widget=forms.RadioSelect,
@@ -57,7 +57,7 @@ class PositionForm(forms.Form):
     age_at_fit = forms.FloatField(
         required=False, validators=[MinValueValidator(0), MaxValueValidator(MOST_AGE)], label="Age of a used part"
     )
-    found_by = forms.ChoiceField(required=False, choices=[("", "not said"), *FoundBy.choices], label="Found by")
+    found_by = TileField(required=False, choices=[("", "not said"), *FoundBy.choices], label="Found by")
     play = forms.FloatField(
         required=False, validators=[MinValueValidator(0), MaxValueValidator(1000)], label="Measured play, mm"
     )

@@ -37,6 +37,7 @@ def stop_page(
         "standing": standing,
         "form": form or StopForm(zone=standing.zone),
         "running": (running or RunningForm(zone=standing.zone)) if may(request.user, LOG) else None,
+        "faults": [str(told) for errors in form.errors.values() for told in errors] if form else [],
         "module_url": reverse("module", args=[module.code]),
     }
     return render(request, "log/stop.html", context, status=422 if wrong else 200)
