@@ -62,14 +62,14 @@ class LifeFit:
         share = np.asarray(probability, dtype=float)
         if not ((share > 0.0) & (share < 1.0)).all():
             raise InvalidArgument(f"The share failed is {probability}; it must lie between 0 and 1.")
-        return _plain(self._quantile(share))
+        return plain_number(self._quantile(share))
 
     def survival(self, age: ArrayLike) -> Any:
         """S(age), the share still good at the age; a float, or an array as given."""
         ages = np.asarray(age, dtype=float)
         if not (ages >= 0.0).all():
             raise InvalidArgument(f"The age is {age}; it must be at least 0.")
-        return _plain(self._survival(ages))
+        return plain_number(self._survival(ages))
 
     @property
     def median(self) -> float:
@@ -165,5 +165,6 @@ def unknown_quantity(quantity: Any) -> InvalidArgument:
     )
 
 
-def _plain(values: FloatArray) -> Any:
+def plain_number(values: FloatArray) -> Any:
+    """A float where a single number was asked for, else the array."""
     return float(values) if np.ndim(values) == 0 else values

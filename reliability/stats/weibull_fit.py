@@ -73,14 +73,15 @@ class WeibullFit(LifeFit):
         return float(np.log(self.scale) + self._best[1] / self.shape)
 
 
-def fit_weibull(lifetimes: Lifetimes, *, site_spread: bool = False) -> WeibullFit:
+def fit_weibull(lifetimes: Lifetimes, *, site_spread: bool = False, spread_prior: float = 1.0) -> WeibullFit:
     """Maximum-likelihood Weibull for any mix of exact, withdrawn, late-entered, interval and weighted rows.
 
     log L = sum over lives of: exact log f(t); withdrawn log S(t); interval log(S(L) - S(R)); minus log S(entry).
     Newton on (log shape, log cumulative hazard at the mean log failure age), analytic derivatives, one vectorised pass
     an iteration; started from the best of a grid of shapes. shape has no unit, scale the unit of the durations.
 
-    site_spread=True: hazards differ between `lifetimes.sites` by a gamma multiplier; see site_spread.py.
+    site_spread=True: hazards differ between `lifetimes.sites` by a gamma multiplier with mean 1 and a variance whose
+    prior is exponential with mean spread_prior; the result is a WeibullSiteFit and speaks of a typical site.
 
     Raises TooFewFailures (none), NoSpreadInFailures (nothing bounds the shape from above: one failure age and no life
     beyond it), UndefinedEstimate (nothing bounds it from below), NotConverged.
@@ -89,7 +90,7 @@ def fit_weibull(lifetimes: Lifetimes, *, site_spread: bool = False) -> WeibullFi
     if site_spread:
         from reliability.stats.site_spread import fit_weibull_with_site_spread
 
-        return fit_weibull_with_site_spread(lifetimes)
+        return fit_weibull_with_site_spread(lifetimes, spread_prior=spread_prior)
     refuse_unbounded_shape(lifetimes)
     likelihood = weibull_likelihood(lifetimes)
     top = _search(likelihood, _start_from_some(lifetimes, likelihood))

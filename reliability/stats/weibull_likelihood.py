@@ -114,6 +114,16 @@ def interval_row_terms(
     return value, k * m, k, by_shape_twice, (k - bend) * m, k - bend
 
 
+def interval_row_hazards(rows: IntervalRows, shape: float, level: float) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """log D of each row, and m and dm / d log shape where dD / d log shape = D m, shapes (m,)."""
+    d = np.minimum(shape * rows.log_ratio, FROM_ZERO)
+    with np.errstate(over="ignore", under="ignore"):
+        r = d / np.expm1(np.minimum(d, 700.0)) * (d < 700.0)
+    y = shape * rows.log_right
+    m = y + r
+    return y + level + np.log(-np.expm1(-d)), m, y * y + r * (2.0 * y - d) + m - m * m
+
+
 def weibull_likelihood(lifetimes: Lifetimes) -> WeibullLikelihood:
     """Prepare the rows once: logs from the reference age, signed weights, equal ages merged."""
     exact, interval = lifetimes.is_exact, lifetimes.is_interval

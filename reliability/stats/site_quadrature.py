@@ -1,0 +1,189 @@
+"""Sites with interval rows: their gamma multiplier has no closed form and is integrated by quadrature."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy import special
+
+from reliability.stats.lifetimes import BoolArray, FloatArray, IntArray, Lifetimes
+from reliability.stats.weibull_likelihood import IntervalRows, interval_row_hazards, interval_row_terms, interval_rows
+
+if TYPE_CHECKING:
+    from reliability.stats.site_likelihood import SiteSums
+
+# trapezoid nodes in standard deviations around the top, the lower side longer because its tail is exponential
+STEP = 0.6
+POSITIONS = np.arange(-7.8, 5.5, STEP)
+MODE_STEPS = 40
+# log((1 - exp(-x)) / x) = sum of factor x^power, Bernoulli numbers over power times power factorial; to x = 2 the
+# terms left out are below 1e-9
+SERIES = (
+    (1, -1 / 2),
+    (2, 1 / 24),
+    (4, -1 / 2880),
+    (6, 1 / 181440),
+    (8, -1 / 9676800),
+    (10, 1 / 479001600),
+    (12, -691 / 15692092416000),
+    (14, 1 / 1046139494400),
+    (16, -3617 / 170729965486080000),
+)
+LOG_SERIES_REACH = float(np.log(2.0))
+
+
+@dataclass(frozen=True, eq=False)
+class SiteIntervals:
+    """Interval rows sorted by site. concerned (S,) marks the sites that have any; first_row (C,) where each begins."""
+
+    rows: IntervalRows
+    concerned: BoolArray
+    first_row: IntArray
+    site: NDArray[np.int64]  # position among the concerned sites of each row
+
+
+def site_intervals(lifetimes: Lifetimes, log_reference: float) -> SiteIntervals:
+    rows = interval_rows(lifetimes, log_reference)
+    codes = lifetimes.site_codes[lifetimes.is_interval]
+    order = np.argsort(codes, kind="stable")
+    present, first, position = np.unique(codes[order], return_index=True, return_inverse=True)
+    concerned = np.zeros(lifetimes.site_labels.size, dtype=bool)
+    concerned[present] = True
+    sorted_rows = IntervalRows(rows.log_right[order], rows.log_ratio[order], rows.weights[order])
+    return SiteIntervals(sorted_rows, concerned, first, position)
+
+
+def site_interval_terms(
+    intervals: SiteIntervals, sums: SiteSums, shape: float, level: float, spreads: FloatArray
+) -> FloatArray:
+    """The six terms of the concerned sites, shape (6, C, K).
+
+    A site's integrand in u = log z, exp((D + 1/nu) u - (A + 1/nu) e^u) times the product of (1 - exp(-e^u D_i))^w_i,
+    is log-concave. It is added up by the trapezoid rule around its top; derivatives are averages over the nodes.
+    """
+    by_shape = sums.by_shape[intervals.concerned][:, None, None]
+    by_shape_twice = sums.by_shape_twice[intervals.concerned][:, None, None]
+    z, rows, shares, value = _integrals(intervals, sums, shape, level, spreads)
+    hazard = sums.hazard[intervals.concerned][:, None, None]
+    at_shape = rows[1] - z * by_shape
+    at_level = rows[2] - z * hazard
+    shape_twice = rows[3] - z * by_shape_twice + at_shape * at_shape
+    both = rows[4] - z * by_shape + at_shape * at_level
+    level_twice = rows[5] - z * hazard + at_level * at_level
+    means = [(shares * part).sum(axis=-1) for part in (at_shape, at_level, shape_twice, both, level_twice)]
+    return np.stack(
+        [
+            value,
+            means[0],
+            means[1],
+            means[2] - means[0] ** 2,
+            means[3] - means[0] * means[1],
+            means[4] - means[1] ** 2,
+        ]
+    )
+
+
+def site_interval_multipliers(
+    intervals: SiteIntervals, sums: SiteSums, shape: float, level: float, spreads: FloatArray
+) -> FloatArray:
+    """Mean of z given the records of the concerned sites, shape (C, K)."""
+    z, _, shares, _ = _integrals(intervals, sums, shape, level, spreads)
+    return (shares * z).sum(axis=-1)
+
+
+def _integrals(
+    intervals: SiteIntervals, sums: SiteSums, shape: float, level: float, spreads: FloatArray
+) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray]:
+    """Nodes z (C, K, J), the rows' six terms there, the nodes' shares of the integral, and its log (C, K)."""
+    precision = 1.0 / spreads[None, :]
+    power = sums.failures[intervals.concerned][:, None] + precision
+    rate = sums.hazard[intervals.concerned][:, None] + precision
+    top, width = _tops(intervals, shape, level, power, rate)
+    u = top[..., None] + width[..., None] * POSITIONS
+    z = np.exp(u)
+    rows = _row_sums(intervals, shape, level, u)
+    logs = power[..., None] * u - rate[..., None] * z + rows[0]
+    # below the lowest node the integrand falls by its slope there, which is nearly constant
+    slope = power - rate * z[..., 0] + rows[2][..., 0]
+    step = STEP * width
+    logs[..., 0] += np.log(0.5 + 1.0 / np.maximum(slope * step, 1e-8))
+    highest = logs.max(axis=-1, keepdims=True)
+    shares = np.exp(logs - highest)
+    total = shares.sum(axis=-1, keepdims=True)
+    norm = precision * np.log(precision) - special.gammaln(precision)
+    value = (highest + np.log(total))[..., 0] + np.log(step) + norm
+    return z, rows, shares / total, value
+
+
+def _row_sums(intervals: SiteIntervals, shape: float, level: float, u: FloatArray) -> FloatArray:
+    """Sums over the interval rows of each site of the six terms at multipliers exp(u): u (C, ...), sums (6, C, ...)."""
+    rows, flat = intervals.rows, u.reshape(u.shape[0], -1)
+    widest = np.exp(flat.max(axis=1))[intervals.site]
+    log_difference, ratio, curl = interval_row_hazards(rows, shape, level)
+    short = log_difference + np.log(widest) < LOG_SERIES_REACH
+    total = np.zeros((6, *flat.shape))
+    if short.any():
+        total += _series_sums(intervals, short, log_difference, ratio, curl, flat)
+    if not short.all():
+        site = intervals.site[~short]
+        chosen = [column[~short, None] for column in (rows.log_right, rows.log_ratio, rows.weights)]
+        terms = interval_row_terms(IntervalRows(*chosen), shape, level + flat[site])
+        starts = np.flatnonzero(np.append(True, np.diff(site) > 0))
+        for index, term in enumerate(terms):
+            total[index, site[starts]] += np.add.reduceat(term * chosen[2], starts, axis=0)
+    return total.reshape(6, *u.shape)
+
+
+def _series_sums(
+    intervals: SiteIntervals,
+    short: BoolArray,
+    log_difference: FloatArray,
+    ratio: FloatArray,
+    curl: FloatArray,
+    u: FloatArray,
+) -> FloatArray:
+    """The same for rows whose hazard x = z D stays small, from log(1 - exp(-x)) = log x - x / 2 + x^2 / 24 - ….
+
+    The series needs only sums of weight D^p over the rows of a site, however many rows there are. With D_a = D m the
+    derivatives of D^p in log shape are p D^p m and p^2 D^p m^2 + p D^p m'.
+    """
+    site, weights, count = intervals.site[short], intervals.rows.weights[short], intervals.first_row.size
+    log_d, m, m_slope = log_difference[short], ratio[short], curl[short]
+
+    def by_site(values: FloatArray) -> FloatArray:
+        return np.bincount(site, weights=values, minlength=count)[:, None]
+
+    lives, slope = by_site(weights), by_site(weights * m)
+    total = np.zeros((6, *u.shape))
+    total[0] = lives * u + by_site(weights * log_d)
+    total[1], total[2], total[3] = slope, lives, by_site(weights * m_slope)
+    z = np.exp(u)
+    for power, factor in SERIES:
+        powered = weights * np.exp(power * log_d)
+        z_power = factor * z**power
+        plain, first = by_site(powered) * z_power, by_site(powered * m) * (power * z_power)
+        second = by_site(powered * (power**2 * m * m + power * m_slope)) * z_power
+        for index, term in enumerate((plain, first, power * plain, second, power * first, power**2 * plain)):
+            total[index] += term
+    return total
+
+
+def _tops(
+    intervals: SiteIntervals, shape: float, level: float, power: FloatArray, rate: FloatArray
+) -> tuple[FloatArray, FloatArray]:
+    """Top of each integrand in u and its standard deviation there, shapes (C, K); Newton on a concave function."""
+    counts = np.add.reduceat(intervals.rows.weights, intervals.first_row)[:, None]
+    u = np.log((power + 0.5 * counts) / (rate + 0.5 * counts))
+    for _ in range(MODE_STEPS):
+        rows = _row_sums(intervals, shape, level, u)
+        z = np.exp(u)
+        slope = power - rate * z + rows[2]
+        bend = np.minimum(-rate * z + rows[5], -1e-12)
+        step = np.clip(-slope / bend, -1.0, 1.0)
+        u = u + step
+        if float(np.max(np.abs(step) * np.sqrt(-bend))) < 0.05:
+            break
+    return u, 1.0 / np.sqrt(-bend)
