@@ -1,4 +1,4 @@
-"""The demo's sites and people. Names, places and figures are invented."""
+"""The demo's sites. Names, places and figures are invented."""
 
 from __future__ import annotations
 
@@ -50,29 +50,8 @@ PLACES: list[Place] = [
 ]
 
 
-@dataclass(frozen=True)
-class DemoPerson:
-    code: str
-    name: str
-    role: str
-    sites: str
-    password: str  # of the demo's own book only; `manage.py demo` refuses any other
-
-
-PEOPLE: list[DemoPerson] = [
-    DemoPerson("INES", "Ines Harrow", "manager", "all", "otter-under-weir-41"),
-    DemoPerson("OTTO", "Otto Brandling", "planner", "all", "shelf-of-brass-27"),
-    DemoPerson("BRAM", "Bram Tolley", "crew", "WITHY KESTREL QUOIN", "wet-gloves-again-63"),
-    DemoPerson("NOOR", "Noor Castell", "crew", "OSIER MARL HERON TANK", "willow-boat-hook-18"),
-    DemoPerson("SVEN", "Sven Aldous", "crew", "TERN SALTGRASS MILL-E MILL-W", "sand-in-thread-95"),
-    DemoPerson("LUCA", "Luca Penrow", "crew", "BRACK FERNBECK LARCH", "trout-at-dawn-52"),
-    DemoPerson("GRETA", "Greta Munday", "bench", "DEPOT-N DEPOT-S", "vice-and-reamer-30"),
-    DemoPerson("PILAR", "Pilar Voss", "contact", "TERN SALTGRASS", "tide-table-page-74"),
-]
-
-
 def rows(first_day: dict[str, object]) -> dict[str, list[Row]]:
-    """Sites and people as records files; `first_day` gives records_from by site where records began late."""
+    """Sites as a records file; `first_day` gives records_from by site where records began late."""
     return {
         "sites": [
             {
@@ -87,15 +66,5 @@ def rows(first_day: dict[str, object]) -> dict[str, list[Row]]:
                 "visit_every_days": place.visit_every or "",
             }
             for place in PLACES
-        ],
-        "people": [
-            {
-                "person": person.code,
-                "name": person.name,
-                "role": person.role,
-                "sites": person.sites,
-                "active": "yes",
-            }
-            for person in PEOPLE
         ],
     }

@@ -6,7 +6,7 @@ import datetime as dt
 import random
 from typing import Any
 
-from fleet.demo import catalogue, places
+from fleet.demo import catalogue, people, places
 from fleet.demo.carriage import Calendar, Carriage
 from fleet.demo.places import PLACES, Place
 from fleet.demo.sheets import Sheets
@@ -55,7 +55,7 @@ def tell(*, modules: int = 320, years: float = 3, seed: int = 7, until: dt.date)
             carriage.live_day(day)
             day += dt.timedelta(days=1)
     first_day = records_began(days)
-    tables: Tables = catalogue.rows() | places.rows(first_day) | dict(sheets.rows)
+    tables: Tables = catalogue.rows() | places.rows(first_day) | people.rows() | dict(sheets.rows)
     tables["modules"] = [{"module": each.tag, "type": each.kind, "built_on": each.begin} for each in fleet]
     drop_what_was_not_written(tables, fleet, first_day, dice)
     for visit in tables["visits"]:
