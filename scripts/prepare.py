@@ -123,7 +123,7 @@ def demo_notes() -> str:
     if not Person.objects.exists() and not Site.objects.exists():
         say("Loading the demo fleet, this first time only.")
         began = time.monotonic()
-        call_command("demo", stdout=sys.stderr)
+        call_command("demo", stdout=io.StringIO())
         say(f"The demo fleet is loaded ({time.monotonic() - began:.0f} s).")
     if not Book.load().made_by_demo:
         return "The book found here was not made by the demo, so it has no demo people. Sign in as one of its own."
