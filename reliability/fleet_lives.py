@@ -44,6 +44,7 @@ class FleetLives:
     lifetimes: the rows, grouped, with `.groups` and `.sites` as codes; None where no life is left
     states: for each row failed, other mode, worn, not known, withdrawn or running
     if_not_known_failed: the same lives with every removal of unknown reason counted as a failure, where they are many
+    groups: labels of the groups in their natural order; one empty label where nothing was grouped
     """
 
     component: str
@@ -56,6 +57,8 @@ class FleetLives:
     warnings: list[str] = field(default_factory=list)
     modes: tuple[str, ...] = ()
     if_not_known_failed: Lifetimes | None = None
+    component_name: str = ""
+    groups: tuple[str, ...] = ()
 
     def count(self, *states: str, group: Any = None) -> int:
         """Lives in these states, in one group or in all."""
@@ -68,15 +71,6 @@ class FleetLives:
             chosen &= self.lifetimes.groups == group
         return round(float(self.lifetimes.weights[chosen].sum()))
 
-    @property
-    def groups(self) -> list[str]:
-        """Labels of the groups in their natural order; one empty label where nothing was grouped."""
-        from fleet.models.codes import natural_key
-
-        if self.lifetimes is None:
-            return []
-        return sorted((str(label) for label in self.lifetimes.group_labels), key=natural_key)
-
 
 def arrays_of(rows: Iterable[LifeRow], sites: dict[Any, str], groups: dict[Any, str]) -> tuple[Any, Any]:
     """Life data and states from rows, in an order that does not depend on the database's numbers."""
@@ -84,28 +78,24 @@ def arrays_of(rows: Iterable[LifeRow], sites: dict[Any, str], groups: dict[Any, 
 
     from reliability.stats.lifetimes import Lifetimes
 
-    kept = sorted(
-        (
-            groups.get(row.group, NOT_NAMED),
-            row.duration,
-            row.entry,
-            row.state,
-            -1.0 if row.last_good is None else row.last_good,
-            sites.get(row.site, NO_PLACE),
-            row.count,
-        )
-        for row in rows
-        if row.left_out is None
-    )
+    kept: dict[tuple[Any, ...], int] = {}
+    for row in rows:
+        if row.left_out is None:
+            good = -1.0 if row.last_good is None else row.last_good
+            label, place = groups.get(row.group, NOT_NAMED), sites.get(row.site, NO_PLACE)
+            key = (label, row.duration, row.entry, row.state, good, place)
+            kept[key] = kept.get(key, 0) + row.count
     if not kept:
         return None, np.array([], dtype=object)
-    labels, durations, entries, states, last_good, places, counts = zip(*kept, strict=True)
-    good = np.array(last_good, dtype=float)
+    keys = sorted(kept)
+    labels, durations, entries, states, last_good, places = zip(*keys, strict=True)
+    counts = [kept[key] for key in keys]
+    goods = np.array(last_good, dtype=float)
     lifetimes = Lifetimes(
         durations=np.array(durations, dtype=float),
         observed=np.array(states) == "failed",
         entries=np.array(entries, dtype=float),
-        last_good=np.where(good < 0, np.nan, good),
+        last_good=np.where(goods < 0, np.nan, goods),
         weights=np.array(counts, dtype=float),
         sites=np.array(places),
         groups=np.array(labels),

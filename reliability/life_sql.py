@@ -147,7 +147,8 @@ def _cuts(question: LifeQuestion) -> list[str]:
     )
     return [
         "cuts AS (SELECT DISTINCT module_id, once, once_day FROM judged WHERE still = 1)",
-        f"cut_days AS MATERIALIZED (SELECT cuts.*, CASE WHEN once = 1 THEN once_day ELSE {seen} END AS cut_day FROM cuts)",
+        "cut_days AS MATERIALIZED ("
+        f"SELECT cuts.*, CASE WHEN once = 1 THEN once_day ELSE {seen} END AS cut_day FROM cuts)",
         f"count_days AS MATERIALIZED (SELECT cut_days.*, {count_day} AS count_day FROM cut_days)",
         f"""at_cuts AS (
             SELECT count_days.*, a.{clock} + (b.{clock} - a.{clock})

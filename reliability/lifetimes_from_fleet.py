@@ -34,6 +34,7 @@ from fleet.models import (
     SiteKind,
     Visit,
 )
+from fleet.models.codes import natural_key
 from reliability.fleet_lives import (
     NO_PLACE,
     FleetLives,
@@ -263,7 +264,16 @@ def _answer(asked: _Asked, rows: list[LifeRow], left_out: list[LeftOut]) -> Flee
         warnings=warned,
         modes=asked.mode_codes,
         if_not_known_failed=with_not_known_failed(lifetimes, states) if many_not_known(rows) else None,
+        component_name=asked.component.title,
+        groups=_in_order(lifetimes),
     )
+
+
+def _in_order(lifetimes: Any) -> tuple[str, ...]:
+    """The labels of the groups, K-9 before K-10."""
+    if lifetimes is None:
+        return ()
+    return tuple(sorted((str(label) for label in lifetimes.group_labels), key=natural_key))
 
 
 def _site_names() -> tuple[dict[Any, str], dict[Any, str]]:
@@ -321,7 +331,17 @@ def _lives_of_set(asked: _Asked, code: str) -> FleetLives:
         names = sites
     lifetimes, states = arrays_of(rows, sites, names)
     left_out = [LeftOut(reason, count) for reason, count in counted_reasons(rows).items()]
-    return FleetLives(asked.component.code, asked.clock, asked.as_of, asked.by, lifetimes, states, left_out)
+    return FleetLives(
+        component=asked.component.code,
+        clock=asked.clock,
+        as_of=asked.as_of,
+        by=asked.by,
+        lifetimes=lifetimes,
+        states=states,
+        left_out=left_out,
+        component_name=asked.component.title,
+        groups=_in_order(lifetimes),
+    )
 
 
 def _component(component: Component | str) -> Component:
