@@ -8,6 +8,7 @@ from __future__ import annotations
 import datetime as dt
 from collections import defaultdict
 from collections.abc import Iterator
+from itertools import pairwise
 from typing import Any
 
 from django.db import connection
@@ -178,7 +179,7 @@ def faces_never_fall() -> Iterator[str]:
             if len(set(moments)) != len(moments):
                 continue  # two counters read at one moment: their order is told by their serials alone
             counter, last = "", None
-            for row in sorted(shown, key=lambda row: instant(row["read_at"]) or dt.datetime.min):
+            for row in sorted(shown, key=lambda row: (instant(row["read_at"]), row["id"])):
                 fresh = bool(row["restarts"]) or row["counter"] not in {"", counter}
                 if last is not None and not fresh and row[unit] < last:
                     yield f"reading {row['id']} of module {module}: {unit} fell from {last} to {row[unit]}"
@@ -190,7 +191,7 @@ def accumulated_never_falls() -> Iterator[str]:
         rows.sort(key=lambda row: row["day"])
         for unit in ("days", "hours", "strokes"):
             totals = [row[unit] for row in rows if row[unit] is not None]
-            if any(later < earlier - 1e-6 for earlier, later in zip(totals, totals[1:], strict=False)):
+            if any(later < earlier - 1e-6 for earlier, later in pairwise(totals)):
                 yield f"the clock of module {module} in {unit} falls: {totals}"
 
 
