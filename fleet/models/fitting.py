@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import datetime as dt
 from typing import TYPE_CHECKING
 
 from django.core.validators import MinValueValidator
 from django.db import models
-from django.db.models import Exists, F, OuterRef, Q
+from django.db.models import Exists, F, OuterRef, Q, Value
+from django.db.models.functions import Coalesce
 
 from fleet.history import kept_history
 from fleet.models.codes import Coded
@@ -54,13 +56,15 @@ class FittingQuerySet(StrikeableQuerySet):
 
         if person.all_sites and person.role != "bench":
             return self
-        seen = Placement.objects.standing().filter(
-            Q(to_on=None) | Q(to_on__gte=OuterRef("fitted_on")) | Q(to_on__gte=OuterRef("removed_on")),
+        begun = Coalesce(OuterRef("fitted_on"), Value(dt.date.min))
+        ended = Coalesce(OuterRef("removed_on"), Value(dt.date.max))
+        touching = Placement.objects.standing().filter(
+            Q(to_on=None) | Q(to_on__gte=begun),
+            from_on__lte=ended,
             module=OuterRef("module_id"),
             site__in=Site.objects.for_person(person),
         )
-        begun = Q(from_on__lte=OuterRef("removed_on")) | Q(to_on=None)
-        return self.filter(Exists(seen.filter(begun)) | Exists(seen.filter(from_on__lte=OuterRef("fitted_on"))))
+        return self.filter(Exists(touching))
 
     def running(self) -> FittingQuerySet:
         return self.filter(removed_on=None, struck_out="")

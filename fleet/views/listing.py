@@ -108,7 +108,7 @@ def safe_cell(value: Any) -> Any:
         return value.isoformat(timespec="minutes") if is_aware(value) else value
     if value is None:
         return ""
-    if isinstance(value, str) and value[:1] in "=+-@\t\r":
+    if isinstance(value, str) and value.startswith(("=", "+", "-", "@", "\t", "\r")):
         return f"'{value}"
     return value
 
