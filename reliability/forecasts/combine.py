@@ -27,6 +27,7 @@ def told(distribution: CountDistribution, bands: Sequence[float]) -> dict[str, A
     """Mean, bands and what to plan for, as in files.md."""
     return {
         "mean": float(distribution.mean),
+        "median": int(distribution.quantile(0.5)),
         "bands": {f"{band:g}": list(distribution.interval(band)) for band in bands},
         "plan_for": {f"{PLAN_FOR:g}": int(distribution.quantile(PLAN_FOR))},
     }

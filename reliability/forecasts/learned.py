@@ -1,4 +1,4 @@
-"""What the records teach about each design of a component: its posterior, and how often it comes out for other reasons."""
+"""What the records teach of each design: its posterior, and how often it comes out for other reasons."""
 
 from __future__ import annotations
 

@@ -206,6 +206,7 @@ def written(
         "sites": None if question.sites is None else list(question.sites),
         "positions": running.count,
         "failures_seen": learned.failures(),
+        "counted": learned.found.lifetimes is not None,
         "total": both("total", ""),
         "weeks": weeks,
         "groups": groups,
