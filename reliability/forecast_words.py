@@ -33,7 +33,7 @@ def heading(document: dict[str, Any]) -> str:
 
 def lead(document: dict[str, Any], name: str) -> str:
     """How many will fail, how sure that is, and how many are enough."""
-    total, used = document["total"], document["parts_used"]
+    total, used = document["total"], document["total"]["parts_used"]
     if document["positions"] == 0:
         return f"No {name} runs in the field, so none can fail."
     if not document["counted"]:
@@ -43,9 +43,10 @@ def lead(document: dict[str, Any], name: str) -> str:
             f"No {name} has failed so far. Most likely {between([total['median'], total['median']])} will fail; "
             f"having {number(used['plan_for']['0.95'])} is enough in 95 of 100 such stretches."
         )
+    band = "0.8" if "0.8" in total["bands"] else next(iter(total["bands"]))
     return (
-        f"About {about(total['mean'])} {plural(name)} will fail (80 of 100 such stretches: "
-        f"{between(total['bands']['0.8'])}). Having {number(used['plan_for']['0.95'])} parts is enough in 95 of 100."
+        f"About {about(total['mean'])} {plural(name)} will fail ({100 * float(band):.0f} of 100 such stretches: "
+        f"{between(total['bands'][band])}). Having {number(used['plan_for']['0.95'])} parts is enough in 95 of 100."
     )
 
 

@@ -78,7 +78,7 @@ def overview(components: list[Component], documents: dict[str, dict[str, Any]]) 
     rows = []
     for each in sorted(components, key=lambda one: -documents[one.code]["total"]["mean"]):
         document = documents[each.code]
-        total, used = document["total"], document["parts_used"]
+        total, used = document["total"], document["total"]["parts_used"]
         rows.append(
             [
                 {"text": each.title, "url": f"?component={each.code}"},
