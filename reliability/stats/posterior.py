@@ -175,6 +175,27 @@ def weibull_posterior(
     if early_until:
         lifetimes, early_counts = split_early(lifetimes, early_until)
     sums = SiteSums.from_lifetimes(lifetimes, by_site=site_spread)
+    axes, weights = _settled_grid(sums, log_shape_prior, spread_prior, site_spread)
+    return _sorted_points(sums, axes, weights, lifetimes, early_until, early_counts)
+
+
+def log_evidence(lifetimes: Lifetimes, *, log_shape_prior: tuple[float, float] = (log(2.0), 1.0)) -> float:
+    """Log of the marginal likelihood of one Weibull without spread between sites (level prior improper: compare
+    only).
+    """
+    sums = SiteSums.from_lifetimes(lifetimes, by_site=False)
+    axes, logs = _settled_grid(sums, log_shape_prior, 1.0, False)
+    cell = np.log(axes[0][1] - axes[0][0]) + np.log(axes[1][1] - axes[1][0])
+    peak = logs.max()
+    exact = lifetimes.is_exact
+    ages = float(lifetimes.weights[exact] @ np.log(lifetimes.durations[exact]))
+    return float(peak + np.log(np.exp(logs - peak).sum()) + cell - ages - np.log(log_shape_prior[1]))
+
+
+def _settled_grid(
+    sums: SiteSums, log_shape_prior: tuple[float, float], spread_prior: float, site_spread: bool
+) -> tuple[list[FloatArray], FloatArray]:
+    """Axes that hold the mass, and the log-weights on them."""
     axes = _starting_axes(sums, log_shape_prior, spread_prior, site_spread)
     for _ in range(12):
         weights = _log_weights(sums, axes, log_shape_prior, spread_prior)
@@ -182,8 +203,7 @@ def weibull_posterior(
         if settled:
             break
     axes = [_resized(axis, size) for axis, size in zip(axes, _FINE, strict=True)]
-    weights = _log_weights(sums, axes, log_shape_prior, spread_prior)
-    return _sorted_points(sums, axes, weights, lifetimes, early_until, early_counts)
+    return axes, _log_weights(sums, axes, log_shape_prior, spread_prior)
 
 
 def split_early(lifetimes: Lifetimes, until: float) -> tuple[Lifetimes, tuple[float, float]]:
