@@ -14,6 +14,7 @@ from reliability.stats.newton import PlaneTerms
 LARGEST_LOG_HAZARD = 600.0
 # stands for log(R / L) of an interval that begins at 0; exp(-800) is 0
 FROM_ZERO = 800.0
+ROWS_AT_ONCE = 16_384
 
 
 @dataclass(frozen=True, eq=False)
@@ -55,13 +56,7 @@ class WeibullLikelihood:
         if not (abs(log_shape) < 50.0 and abs(level) < 1e300):
             return -math.inf, 0.0, 0.0, 0.0, 0.0, 0.0
         shape = math.exp(log_shape)
-        with np.errstate(over="ignore", invalid="ignore", under="ignore"):
-            y = shape * self.log_ages
-            hazard = np.exp(np.minimum(y + level, LARGEST_LOG_HAZARD))
-            hazard *= self.signed_weights
-            sum0 = float(hazard.sum())
-            hazard *= y
-            sum1, sum2 = float(hazard.sum()), float(hazard @ y)
+        sum0, sum1, sum2 = self._hazard_sums(shape, level)
         failures, tilt = self.exact_failures, shape * self.sum_log_exact
         value = failures * (log_shape + level) + tilt + self.constant - sum0
         terms = (value, failures + tilt - sum1, failures - sum0, tilt - sum1 - sum2, -sum1, -sum0)
@@ -70,11 +65,30 @@ class WeibullLikelihood:
             terms = tuple(a + b for a, b in zip(terms, more, strict=True))
         return terms if math.isfinite(terms[0]) else (-math.inf, *terms[1:])
 
+    def _hazard_sums(self, shape: float, level: float) -> tuple[float, float, float]:
+        """Sums over the signed terms of exp(w), exp(w) y and exp(w) y^2, y = shape x."""
+        sums = np.zeros(3)
+        with np.errstate(over="ignore", invalid="ignore", under="ignore"):
+            # in pieces that stay in the processor's cache: twice as fast for a million rows, and little memory
+            for begin in range(0, self.log_ages.size, ROWS_AT_ONCE):
+                y = shape * self.log_ages[begin : begin + ROWS_AT_ONCE]
+                hazard = y + level
+                np.minimum(hazard, LARGEST_LOG_HAZARD, out=hazard)
+                np.exp(hazard, out=hazard)
+                hazard *= self.signed_weights[begin : begin + ROWS_AT_ONCE]
+                sums[0] += hazard.sum()
+                hazard *= y
+                sums[1] += hazard.sum()
+                # not hazard @ y: the threads of a dot product cost more than pieces of this size gain
+                hazard *= y
+                sums[2] += hazard.sum()
+        return float(sums[0]), float(sums[1]), float(sums[2])
+
     def best_level(self, shape: float) -> float:
         """The level that maximises the likelihood for this shape; exact without intervals, else their right ends."""
         y = shape * self.log_ages
         top = float(y.max(initial=-1e300))
-        total = float(np.exp(y - top) @ self.signed_weights)
+        total = float((np.exp(y - top) * self.signed_weights).sum())
         failures = self.exact_failures
         if self.intervals is not None:
             failures += float(self.intervals.weights.sum())
