@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import gc
 import os
 from typing import Any
 
@@ -34,3 +35,6 @@ def on_starting(server: Any) -> None:
     scipy.optimize.minimize(lambda point: (point**2).sum(), [0.5])
     scipy.special.gammaln(2.0)
     scipy.stats.norm.ppf(0.975)
+    # What was read up to here stays for ever: the collector need not touch, and so copy, the pages that forks share.
+    gc.collect()
+    gc.freeze()
