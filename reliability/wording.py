@@ -68,9 +68,10 @@ def _life(document: dict[str, Any], group: dict[str, Any], who: str) -> str:
         )
     if b10["estimate"] is None:
         return f"How long {who} last cannot be told from these records yet."
+    beyond = "" if seen_to is None else f"; none has run longer than {age(seen_to, clock)} yet"
     return (
-        f"Carried on beyond what has been seen{oldest}. One in ten of {who} is expected to fail within "
-        f"{age(b10['estimate'], clock)}{_limits(document, b10)}."
+        f"One in ten of {who} is expected to fail within {age(b10['estimate'], clock)}{_limits(document, b10)}. "
+        f"This carries the records on beyond what has been seen{beyond}."
     )
 
 
