@@ -74,12 +74,23 @@ def document_of(found: FleetLives, confidence: float = 0.95) -> dict[str, Any]:
         "by": found.by,
         "modes": list(found.modes),
         "groups": [_group(found, label, confidence) for label in found.groups],
+        "at_risk": _at_risk(found),
         "left_out": [{"reason": row.reason, "count": row.count} for row in found.left_out],
         "warnings": list(found.warnings),
     }
     for group in document["groups"]:
         group["sentence"] = life_sentence(document, group)
     return document
+
+
+def _at_risk(found: FleetLives) -> dict[str, Any]:
+    """Parts under observation at a few round ages, by group."""
+    from reliability.risk_ages import under_observation
+
+    if found.lifetimes is None:
+        return {"age": [], "counts": {}}
+    counted = under_observation(found.lifetimes, found.groups)
+    return {**counted, "counts": {label or ALL: counts for label, counts in counted["counts"].items()}}
 
 
 def _group(found: FleetLives, label: str, confidence: float) -> dict[str, Any]:

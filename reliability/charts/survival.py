@@ -5,139 +5,154 @@ from __future__ import annotations
 from typing import Any
 
 from fleet.formats import number
-from fleet.part_styles import part_style
+from reliability.charts.groups import (
+    MOST_BANDS,
+    Document,
+    Figure,
+    Group,
+    drawn_groups,
+    level_at,
+    steps,
+    style_of,
+)
+from reliability.risk_ages import round_ages
 
-MOST_GROUPS = 8  # beyond that colours repeat and nobody can tell them apart
-RISK_COLUMNS = 6
-
-Document = dict[str, Any]
-Figure = dict[str, Any]
+TABLE_ROWS = 11
 
 
 def survival_figure(document: Document, ranks: dict[str, int]) -> Figure:
-    """Kaplan–Meier steps with their log–log bands and the fitted Weibull as a thin line; `ranks` keeps a part's look."""
+    """Steps with their log–log bands and the fitted Weibull as a thin line; `ranks` keeps a part's look."""
     data: list[dict[str, Any]] = []
     groups = drawn_groups(document)
-    for place, group in enumerate(groups):
-        style = part_style(ranks.get(group["group"], place))
-        name = group["group"] or "all"
-        if len(groups) <= 3:
+    for group in groups:
+        style, name = style_of(document, group, ranks), named(group)
+        if len(groups) <= MOST_BANDS:
             data += band(group, style, name)
+        data += fitted_lines(group, style, name)
         data.append(curve(group, style, name))
-        fitted = fitted_line(group, style, name)
-        if fitted:
-            data.append(fitted)
     return {
         "data": data,
         "layout": {
-            "xaxis": {"title": f"Age, {document['clock']}", "rangemode": "tozero"},
+            "xaxis": {"title": f"Age, {document['clock']}", "range": [0, longest_age(groups)], "tickformat": ","},
             "yaxis": {"title": "Still working", "range": [0, 1.02], "tickformat": ".0%"},
             "showlegend": len(groups) > 1,
         },
     }
 
 
-def drawn_groups(document: Document) -> list[dict[str, Any]]:
-    """The groups that have a curve, those with most lives first, at most eight."""
-    groups = [group for group in document["groups"] if group["curve"]["age"]]
-    return sorted(groups, key=lambda group: -group["lives"])[:MOST_GROUPS]
+def named(group: Group) -> str:
+    return str(group["group"])
 
 
-def curve(group: dict[str, Any], style: Any, name: str) -> dict[str, Any]:
-    points = group["curve"]
+def longest_age(groups: list[Group]) -> float:
+    """Where the drawing ends: the oldest part seen, or where a line that is carried on reaches the half."""
+    ends = [group["curve"]["last_age"] or 1 for group in groups]
+    ends += [group["fitted"]["age"][-1] for group in groups if group.get("fitted")]
+    return 1.02 * max(ends, default=1)
+
+
+def curve(group: Group, style: Any, name: str) -> dict[str, Any]:
+    ages, heights = steps(group, "survival")
     return {
         "type": "scatter",
         "mode": "lines",
         "name": name,
-        "x": points["age"],
-        "y": points["survival"],
+        "legendgroup": name,
+        "x": ages,
+        "y": heights["survival"],
         "line": {"shape": "hv", "color": style.color, "dash": style.dash, "width": 2.4},
-        "customdata": points["at_risk"],
-        "hovertemplate": "%{y:.0%} still work at %{x}; %{customdata} at risk<extra>" + name + "</extra>",
+        "hovertemplate": "%{y:.0%} still work at %{x:,}<extra>" + name + "</extra>",
     }
 
 
-def band(group: dict[str, Any], style: Any, name: str) -> list[dict[str, Any]]:
-    points = group["curve"]
+def band(group: Group, style: Any, name: str) -> list[dict[str, Any]]:
+    ages, heights = steps(group, "lower", "upper")
     shared = {
         "type": "scatter",
         "mode": "lines",
-        "x": points["age"],
+        "x": ages,
         "hoverinfo": "skip",
         "showlegend": False,
         "line": {"shape": "hv", "width": 0},
         "legendgroup": name,
     }
-    lower = {**shared, "y": points["lower"]}
-    upper = {**shared, "y": points["upper"], "fill": "tonexty", "fillcolor": style.wash}
+    lower = {**shared, "y": heights["lower"]}
+    upper = {**shared, "y": heights["upper"], "fill": "tonexty", "fillcolor": style.wash}
     return [lower, upper]
 
 
-def fitted_line(group: dict[str, Any], style: Any, name: str) -> dict[str, Any] | None:
-    """The Weibull through the same data; none where it was not fitted."""
-    line = group.get("fitted") or {}
-    if not line.get("age"):
-        return None
-    return {
+def fitted_lines(group: Group, style: Any, name: str) -> list[dict[str, Any]]:
+    """The Weibull through the same lives, dotted where it is carried on beyond the oldest part; none without a fit."""
+    line = group.get("fitted")
+    if not line:
+        return []
+    ages, survival, seen_to = line["age"], line["survival"], line["seen_to"]
+    seen = sum(age <= seen_to for age in ages)
+    shared = {
         "type": "scatter",
         "mode": "lines",
         "name": f"{name}, Weibull",
-        "x": line["age"],
-        "y": line["survival"],
-        "line": {"color": style.color, "width": 1, "dash": "dot"},
-        "hoverinfo": "skip",
+        "legendgroup": name,
         "showlegend": False,
+        "hoverinfo": "skip",
     }
+    drawn = {
+        **shared,
+        "x": rounded(ages[:seen]),
+        "y": rounded(survival[:seen], 5),
+        "line": {"color": style.color, "width": 1.2},
+    }
+    if seen == len(ages):
+        return [drawn]
+    beyond = {
+        **shared,
+        "x": rounded(ages[max(seen - 1, 0) :]),
+        "y": rounded(survival[max(seen - 1, 0) :], 5),
+        "line": {"color": style.color, "width": 1.6, "dash": "1px,5px"},
+    }
+    return [drawn, beyond]
+
+
+def rounded(values: list[float], places: int = 2) -> list[float]:
+    return [round(value, places) for value in values]
 
 
 def at_risk_table(document: Document) -> dict[str, Any]:
-    """Numbers at risk at a few round ages: columns and rows for parts/table.html."""
-    groups = drawn_groups(document)
-    longest = max((group["curve"]["age"][-1] for group in groups), default=0)
-    ages = round_ages(longest)
-    columns = [{"key": "group", "label": f"At risk at age, {document['clock']}"}]
-    columns += [{"key": str(age), "label": number(age), "numeric": True} for age in ages]
-    rows = [[group["group"] or "all", *(at_risk(group["curve"], age) for age in ages)] for group in groups]
+    """Numbers under observation at a few round ages: columns and rows for parts/table.html."""
+    counted = document["at_risk"]
+    columns: list[dict[str, Any]] = [{"key": "group", "label": f"Under observation at age, {document['clock']}"}]
+    columns += [{"key": f"at {age:g}", "label": number(age), "numeric": True} for age in counted["age"]]
+    rows = [[named(group), *counted["counts"][group["group"]]] for group in drawn_groups(document)]
     return {"columns": columns, "rows": rows}
-
-
-def round_ages(longest: float) -> list[int]:
-    """A handful of round ages from 0 to the longest."""
-    if longest <= 0:
-        return [0]
-    step = longest / (RISK_COLUMNS - 1)
-    size = 10 ** (len(str(int(step))) - 1)
-    nice = next((factor * size for factor in (1, 2, 2.5, 5, 10) if factor * size >= step), step)
-    return [int(nice * place) for place in range(RISK_COLUMNS) if nice * place <= longest]
-
-
-def at_risk(points: dict[str, Any], age: float) -> int:
-    """How many were under observation just before an age."""
-    for knot, count in zip(points["age"], points["at_risk"], strict=True):
-        if knot >= age:
-            return count
-    return 0
 
 
 def curve_table(document: Document) -> dict[str, Any]:
-    """The drawn figures as rows: group, age, still working, band, at risk."""
-    columns = [
-        {"key": "group", "label": "Group"},
-        {"key": "age", "label": f"Age, {document['clock']}", "numeric": True},
-        {"key": "working", "label": "Still working, %", "numeric": True, "digits": 1},
-        {"key": "lower", "label": "from", "numeric": True, "digits": 1},
-        {"key": "upper", "label": "to", "numeric": True, "digits": 1},
-        {"key": "at_risk", "label": "At risk", "numeric": True},
-    ]
+    """The drawn curves at round ages: a row an age, a column a group, each share with its band."""
+    groups = drawn_groups(document)
+    longest = max((group["curve"]["last_age"] or 0 for group in groups), default=0)
+    columns: list[dict[str, Any]] = [{"key": "age", "label": f"Age, {document['clock']}"}]
+    columns += [{"key": named(group), "label": f"{named(group)}, still working", "numeric": True} for group in groups]
     rows = [
-        [group["group"] or "all", age, *(percent(end) for end in ends), risk]
-        for group in drawn_groups(document)
-        for age, *ends, risk in zip(
-            *(group["curve"][name] for name in ("age", "survival", "lower", "upper", "at_risk")), strict=True
-        )
+        [{"text": number(age)}, *(share_cell(group, "survival", "lower", "upper", age) for group in groups)]
+        for age in round_ages(longest, TABLE_ROWS)
+        if age > 0
     ]
     return {"columns": columns, "rows": rows}
 
 
-def percent(share: float | None) -> float | None:
-    return None if share is None else 100 * share
+def share_cell(group: Group, middle: str, lower: str, upper: str, age: float) -> dict[str, Any]:
+    """A share with its band in the softer ink, or that nobody was seen so far."""
+    found = {"estimate": level_at(group, middle, age), "lower": level_at(group, lower, age)}
+    if found["estimate"] is None:
+        return {"text": "not seen"}
+    return {"estimate": {**found, "upper": level_at(group, upper, age)}, "unit": "share"}
+
+
+def compared_at(document: Document, age: float) -> list[dict[str, Any]]:
+    """What share of each drawn group still works at one age, with its band; groups not seen so far are left out."""
+    told = []
+    for group in drawn_groups(document):
+        levels = {name: level_at(group, name, age) for name in ("survival", "lower", "upper")}
+        if levels["survival"] is not None:
+            told.append({"group": named(group), **levels})
+    return told
