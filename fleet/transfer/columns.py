@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass, field
+from functools import cached_property
 from typing import TYPE_CHECKING, Any
 
 from django.db import models
@@ -62,16 +63,22 @@ class FileKind:
     def table(self) -> str:
         return self.model._meta.db_table
 
-    @property
+    @cached_property
     def staged(self) -> list[str]:
         """Staged columns in their order: those of the model first."""
         attributes = {each.attname for each in self.model._meta.concrete_fields}
         names = dict.fromkeys([column.to for column in self.columns] + list(self.derived))
         return [name for name in names if name in attributes] + list(self.extra)
 
-    @property
+    @cached_property
     def stored(self) -> list[str]:
         return [name for name in self.staged if name not in self.extra]
+
+    @cached_property
+    def days_and_money(self) -> list[int]:
+        """Places among the staged columns whose values the engines take as text."""
+        sorts = ("DateField", "DecimalField")
+        return [at for at, name in enumerate(self.stored) if self.field_of(name).get_internal_type() in sorts]
 
     def column_of(self, staged: str) -> str:
         """The file's column behind a staged one."""

@@ -64,11 +64,12 @@ def add_missing(job: Job) -> None:
     codes = {module.id: code for code, module in job.known.modules.items()}
     first = 1 + (value_of("SELECT MAX(row) FROM stage_visits") or 0)
     missing = fetch("SELECT module_id, day, known FROM visit_days WHERE visit_id IS NULL ORDER BY module_id, day")
+    noons = Noons(job)
     for start in range(0, len(missing), BATCH):
         some = list(enumerate(missing[start : start + BATCH], start=first + start))
         fill(
             VISITS,
-            [made_visit(row, codes[module], module, as_day(day), known, job) for row, (module, day, known) in some],
+            [made_visit(row, codes[module], module, as_day(day), known, noons) for row, (module, day, known) in some],
         )
     job.reports[VISITS.name].made = len(missing)
     settle_taken_codes(first)
@@ -79,29 +80,45 @@ def add_missing(job: Job) -> None:
     )
 
 
-def made_visit(row: int, code: str, module: int, day: dt.date, known: Any, job: Job) -> tuple[Any, ...]:
+class Noons:
+    """Noon of a day in a zone, as both engines keep it."""
+
+    def __init__(self, job: Job) -> None:
+        self.known = job.known
+        self.texts: dict[tuple[str, dt.date], str] = {}
+
+    def at(self, module: int, day: dt.date) -> str:
+        zone = self.known.zone_on(module, day)
+        place = (zone.key, day)
+        if place not in self.texts:
+            noon = dt.datetime.combine(day, NOON, tzinfo=zone).astimezone(dt.UTC)
+            self.texts[place] = utc_text(min(noon, self.known.now.replace(microsecond=0)))
+        return self.texts[place]
+
+
+def made_visit(row: int, code: str, module: int, day: dt.date, known: Any, noons: Noons) -> list[Any]:
     """At noon in the site's zone, since only the day is known."""
-    noon = dt.datetime.combine(day, NOON, tzinfo=job.known.zone_on(module, day))
     visit_code = made_code(code, day)
     values = {
         "code": visit_code,
         "code_order": natural_key(visit_code),
         "module_id": module,
-        "happened_at": utc_text(min(noon.astimezone(dt.UTC), job.known.now.replace(microsecond=0))),
+        "happened_at": noons.at(module, day),
         "happened_on": day,
         "left": "",
         "known_on": known or day,
         "note": "",
     }
-    return (row, 0, -row, 0, *(values.get(name) for name in VISITS.staged))
+    return [row, 0, -row, 0, *map(values.get, VISITS.staged)]
 
 
 def made_code(module: str, day: dt.date) -> str:
     """The same for the same module and day, so that a repeated import makes the same visit."""
-    code = f"V-{module}-{day:%Y%m%d}"
+    stamp = day.isoformat().replace("-", "")
+    code = f"V-{module}-{stamp}"
     if len(code) <= CODE_LENGTH - 3:
         return code
-    return f"V-{hashlib.sha256(module.encode()).hexdigest()[:16].upper()}-{day:%Y%m%d}"
+    return f"V-{hashlib.sha256(module.encode()).hexdigest()[:16].upper()}-{stamp}"
 
 
 def settle_taken_codes(first: int) -> None:

@@ -10,7 +10,7 @@ from fleet.transfer.cells import BadCell
 from fleet.transfer.columns import Column, FileKind
 from fleet.transfer.job import FileReport, Job
 from fleet.transfer.problems import Unreadable
-from fleet.transfer.row import Row
+from fleet.transfer.row import Row, Say
 from fleet.transfer.sources import LONGEST_CELL, Table
 from fleet.transfer.staging import analyse, create_stage, fill
 
@@ -73,25 +73,27 @@ def column_list(kind: FileKind) -> str:
     return ", ".join(column.name for column in kind.columns)
 
 
-def staged_rows(
-    kind: FileKind, header: Header, batch: list[tuple[int, list[str]]], job: Job
-) -> Iterator[tuple[Any, ...]]:
+def staged_rows(kind: FileKind, header: Header, batch: list[tuple[int, list[str]]], job: Job) -> Iterator[list[Any]]:
     def say(number: int, column: str, value: Any, message: str) -> None:
         job.say(kind, number, column, value, message)
 
-    rows = [read_row(kind, header, number, cells, job, say) for number, cells in batch if any(cells)]
+    blank = {column.to: column.empty for column in kind.columns}
+    needed = [column for column in kind.columns if column.required]
+    rows = [read_row(header, number, cells, dict(blank), needed, job, say) for number, cells in batch if any(cells)]
     visit_columns = [column.to for column in kind.columns if column.name in {"visit", "fitted_visit", "removed_visit"}]
     referred = [name for name in visit_columns if name.endswith("_code")]
     if referred:
         job.known.load_visits({row.values[name] for row in rows for name in referred if row.values[name]})
+    staged, finish, known = kind.staged, kind.finish, job.known
     for row in rows:
-        kind.finish(row, job.known)
-        values = row.values
-        yield row.number, int(row.bad), -row.number, 0, *[values.get(name) for name in kind.staged]
+        finish(row, known)
+        value_of = row.values.get
+        yield [row.number, int(row.bad), -row.number, 0, *[value_of(name) for name in staged]]
 
 
-def read_row(kind: FileKind, header: Header, number: int, cells: list[str], job: Job, say: Any) -> Row:
-    values: dict[str, Any] = {column.to: column.empty for column in kind.columns}
+def read_row(
+    header: Header, number: int, cells: list[str], values: dict[str, Any], needed: list[Column], job: Job, say: Say
+) -> Row:
     given: dict[str, str] = {}
     bad = False
     if len(cells) > len(header) and any(cells[len(header) :]):
@@ -106,8 +108,8 @@ def read_row(kind: FileKind, header: Header, number: int, cells: list[str], job:
         except BadCell as fault:
             say(number, column.name, text, str(fault))
             bad = True
-    for column in kind.columns:
-        if column.required and column.name not in given:
+    for column in needed:
+        if column.name not in given:
             say(number, column.name, "", "is missing. Enter it.")
             bad = True
     return Row(number, values, given, say, bad)

@@ -6,10 +6,10 @@ import csv
 import io
 import zipfile
 from collections.abc import Callable, Iterable, Iterator
-from contextlib import AbstractContextManager
 from dataclasses import dataclass
+from functools import partial
 from pathlib import Path
-from typing import IO, Any
+from typing import IO
 
 from fleet.transfer.problems import Unreadable
 
@@ -36,7 +36,7 @@ def open_source(path: Path) -> list[Table]:
     if path.is_dir():
         files = sorted(child for child in path.iterdir() if child.suffix.lower() == ".csv" and child.is_file())
         bound_size(sum(child.stat().st_size for child in files), path.name)
-        return not_empty([csv_table(child.name, child.open("rb")) for child in files], path.name)
+        return not_empty([csv_table(child.name, partial(child.open, "rb")) for child in files], path.name)
     if not path.is_file():
         raise Unreadable("does not exist. Check the path.", file=str(path))
     return open_bytes(path.name, path.read_bytes() if path.stat().st_size <= MOST_BYTES else None)
@@ -48,7 +48,7 @@ def open_bytes(name: str, content: bytes | None) -> list[Table]:
         raise Unreadable(f"is larger than {MOST_BYTES // 1024**2} MB. Split it.", file=name)
     ending = name.rpartition(".")[2].lower()
     if ending == "csv":
-        return [csv_table(name, io.BytesIO(content))]
+        return [csv_table(name, partial(io.BytesIO, content))]
     if ending == "zip":
         return open_zip(name, content)
     if ending == "xlsx":
@@ -105,20 +105,13 @@ def open_zip(name: str, content: bytes) -> list[Table]:
         base = entry.filename.rpartition("/")[2]
         if entry.is_dir() or base.startswith(".") or "__MACOSX" in entry.filename or not base.lower().endswith(".csv"):
             continue
-        tables.append(csv_table(base, opener(archive, entry)))
+        tables.append(csv_table(base, partial(archive.open, entry)))
     return not_empty(tables, name)
 
 
-def opener(archive: zipfile.ZipFile, entry: zipfile.ZipInfo) -> Callable[[], IO[bytes]]:
-    return lambda: archive.open(entry)
-
-
-def csv_table(file: str, opened: IO[bytes] | Callable[[], IO[bytes]]) -> Table:
+def csv_table(file: str, opened: Callable[[], IO[bytes]]) -> Table:
     def rows() -> Iterator[tuple[int, list[str]]]:
-        stream: AbstractContextManager[Any] | Any = opened() if callable(opened) else opened
-        if not callable(opened):
-            stream.seek(0)
-        return csv_rows(file, io.TextIOWrapper(stream, encoding="utf-8-sig", errors="strict", newline=""))
+        return csv_rows(file, io.TextIOWrapper(opened(), encoding="utf-8-sig", errors="strict", newline=""))
 
     return Table(file, file.rpartition(".")[0].lower(), rows)
 
@@ -126,17 +119,18 @@ def csv_table(file: str, opened: IO[bytes] | Callable[[], IO[bytes]]) -> Table:
 def csv_rows(file: str, text: io.TextIOWrapper) -> Iterator[tuple[int, list[str]]]:
     csv.field_size_limit(LONGEST_CELL)
     number = 0
-    try:
-        first = text.readline(1 << 16)
-        separator = ";" if first.count(";") > first.count(",") else ","
-        for number, cells in enumerate(csv.reader(lines(first, text), delimiter=separator, strict=True), start=1):
-            if number > MOST_ROWS:
-                raise Unreadable(f"has more than {MOST_ROWS} rows. Split it.", file=file)
-            yield number, [cell.strip() for cell in cells]
-    except UnicodeDecodeError:
-        raise Unreadable(NOT_UTF8, file=file, row=number + 1 if number else 0) from None
-    except csv.Error as fault:
-        raise Unreadable(csv_words(str(fault)), file=file, row=number + 1) from None
+    with text:
+        try:
+            first = text.readline(1 << 16)
+            separator = ";" if first.count(";") > first.count(",") else ","
+            for number, cells in enumerate(csv.reader(lines(first, text), delimiter=separator, strict=True), start=1):
+                if number > MOST_ROWS:
+                    raise Unreadable(f"has more than {MOST_ROWS} rows. Split it.", file=file)
+                yield number, [cell.strip() for cell in cells]
+        except UnicodeDecodeError:
+            raise Unreadable(NOT_UTF8, file=file, row=number + 1 if number else 0) from None
+        except csv.Error as fault:
+            raise Unreadable(csv_words(str(fault)), file=file, row=number + 1) from None
 
 
 def lines(first: str, rest: Iterable[str]) -> Iterator[str]:

@@ -9,7 +9,6 @@ from __future__ import annotations
 import datetime as dt
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
-from decimal import Decimal
 from typing import Any
 
 from django.db import connection
@@ -73,28 +72,25 @@ def stage_exists(name: str) -> bool:
     return value_of("SELECT to_regclass(%s)", [f"pg_temp.{name}"]) is not None
 
 
-def plain(value: Any) -> Any:
-    """As both engines take it."""
-    if isinstance(value, dt.date):
-        return value.isoformat()
-    return str(value) if isinstance(value, Decimal) else value
-
-
-def fill(kind: FileKind, rows: list[tuple[Any, ...]]) -> None:
+def fill(kind: FileKind, rows: list[list[Any]]) -> None:
     """Rows in the order row, bad, id, differs, then the staged columns."""
     if not rows:
         return
     names = quoted(*OWN_COLUMNS, *kind.staged)
-    ready = [tuple(plain(value) for value in row) for row in rows]
+    for place in kind.days_and_money:
+        at = len(OWN_COLUMNS) + place
+        for row in rows:
+            if row[at] is not None:
+                row[at] = str(row[at])
     with connection.cursor() as cursor:
         if not on_sqlite():
             with cursor.copy(f"COPY {kind.stage} ({names}) FROM STDIN") as copy:
-                for row in ready:
+                for row in rows:
                     copy.write_row(row)
             return
-        marks = ", ".join(["%s"] * len(ready[0]))
+        marks = ", ".join(["%s"] * len(rows[0]))
         with one_temporary_transaction():
-            cursor.executemany(f"INSERT INTO {kind.stage} ({names}) VALUES ({marks})", ready)
+            cursor.executemany(f"INSERT INTO {kind.stage} ({names}) VALUES ({marks})", rows)
 
 
 @contextmanager
