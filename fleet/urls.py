@@ -7,6 +7,7 @@ from fleet.views import (
     catalogue,
     corrections,
     doubts,
+    health,
     history,
     log,
     modules,
@@ -19,6 +20,7 @@ from fleet.views import (
 )
 
 urlpatterns: list[URLPattern | URLResolver] = [
+    path("health", health.health, name="health"),
     path("sign-in/", sign_in.sign_in, name="sign_in"),
     path("sign-out/", sign_in.sign_out, name="sign_out"),
     path("password/", sign_in.change_password, name="change_password"),
