@@ -23,7 +23,7 @@ class Saving:
         many = {column.name for column in model._meta.many_to_many}
         self.lists = {name: list(value or ()) for name, value in fields.items() if name in many}
         plain = {name: clean_field(model, name, value) for name, value in fields.items() if name not in many}
-        self.before = {name: getattr(self.record, name) for name, value in plain.items() if self.differs(name, value)}
+        self.before = {name: self.now(name) for name, value in plain.items() if self.differs(name, value)}
         self.old_lists = {} if self.is_new else {name: self.list_now(name) for name in self.lists}
         if not self.is_new and self.changes_anything:
             check_version(self.record, version)
@@ -33,9 +33,10 @@ class Saving:
     def differs(self, name: str, value: Any) -> bool:
         if self.is_new:
             return True
-        column = self.record._meta.get_field(name)
-        now = getattr(self.record, column.attname)
-        return bool(now != (value.pk if isinstance(value, models.Model) else value))
+        return bool(self.now(name) != (value.pk if isinstance(value, models.Model) else value))
+
+    def now(self, name: str) -> Any:
+        return getattr(self.record, self.record._meta.get_field(name).attname)
 
     def list_now(self, name: str) -> set[int]:
         return set(getattr(self.record, name).values_list("pk", flat=True))

@@ -49,8 +49,8 @@ def correct_record(*, by: Person | None, record: Any, version: int | None, chang
         changes = {name: cleaned(record, name, value, module) for name, value in changes.items()}
         if all(same(record, name, value) for name, value in changes.items()):
             return record
-        check_version(record, version)
         check_may_correct(by, record, changes)
+        check_version(record, version)
         corrector(Correction(record=record, changes=changes, module=module, by=by, reason=reason))
         rebuild_clocks([module.pk])
     return record

@@ -40,7 +40,7 @@ def fit_part(
         check_position(position, module)
         check_part(part, position)
         check_parts_fit_type([part], module)
-        place = places.on(fitted_on)
+        place = places.on(clean_day(fitted_on, field="fitted_on"))
         day = day_of_visit(visit, module, fitted_on, field="fitted_on", today=place.today)
         measured = measured_in(visit, strokes_at_fit, hours_at_fit)
         fitting = Fitting(

@@ -40,7 +40,7 @@ def remove_part(
         fitting = Fitting.objects.select_related("position", "part").get(pk=fitting.pk)
         check_standing(fitting)
         fitting.module = module
-        place = Places(module).on(removed_on if isinstance(removed_on, dt.date) else None)
+        place = Places(module).on(need_day(removed_on, field="removed_on"))
         day = need_day(removed_on, field="removed_on", today=place.today)
         day_of_visit(visit, module, day, field="removed_on", today=place.today)
         fitting.reason, fitting.mode, fitting.found_by = reason, mode, found_by

@@ -32,9 +32,9 @@ def strike_out(
         record = fetched(record, module)
         if record.struck_out:
             raise AlreadyDone(f"This was struck out already: {record.struck_out}.", field="record")
+        check_may_correct(by, record)
         if not isinstance(record, Reading):
             check_version(record, version)
-        check_may_correct(by, record)
         if isinstance(record, Visit):
             strike_visit(record, by, reason, with_all=with_all)
         elif isinstance(record, Fitting):
