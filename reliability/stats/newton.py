@@ -119,6 +119,12 @@ def climbing_step(gradient: FloatArray, hessian: FloatArray) -> FloatArray:
     """The Newton step, with the Hessian's eigenvalues made negative where they are not, shape (p,)."""
     if gradient.size == 1:
         return gradient / max(abs(float(hessian[0, 0])), 1e-300)
+    if gradient.size == 2:
+        (a, b), (_, c) = hessian.tolist()
+        determinant = a * c - b * b
+        if a < 0.0 and determinant > 1e-12 * a * c:
+            x, y = gradient.tolist()
+            return np.array([b * y - c * x, b * x - a * y]) / determinant
     values, vectors = np.linalg.eigh(hessian)
     size = np.maximum(np.abs(values), 1e-12 * max(float(np.abs(values).max()), 1e-300))
     return vectors @ ((vectors.T @ gradient) / size)

@@ -219,7 +219,9 @@ def weibull_curve(
 
 def start_point(likelihood: WeibullLikelihood) -> tuple[float, float]:
     """The best of a grid of shapes, each with its best level: near the highest top where there are several."""
-    points = [(math.log(shape), likelihood.best_level(shape)) for shape in START_SHAPES]
+    # interval rows cost several times as much each, and Newton climbs well from twice as far
+    shapes = START_SHAPES if likelihood.intervals is None else START_SHAPES[::2]
+    points = [(math.log(shape), likelihood.best_level(shape)) for shape in shapes]
     return max(points, key=lambda point: likelihood(*point)[0])
 
 

@@ -115,13 +115,17 @@ def interval_row_terms(
     """The terms of `interval_terms` row by row; level may carry further axes that broadcast against the rows."""
     with np.errstate(over="ignore", under="ignore", invalid="ignore", divide="ignore"):
         d = np.minimum(shape * rows.log_ratio, FROM_ZERO)
-        r = d / np.expm1(np.minimum(d, 700.0)) * (d < 700.0)
+        part = -np.expm1(-d)  # (H_R - H_L) / H_R
+        r = d * (1.0 - part) / part
         y = shape * rows.log_right
-        log_difference = np.minimum(y + level + np.log(-np.expm1(-d)), LARGEST_LOG_HAZARD)
-        difference = np.exp(log_difference)
+        difference = np.exp(np.minimum(y + level, LARGEST_LOG_HAZARD)) * part
+        chance = -np.expm1(-difference)
+        k = difference * (1.0 - chance) / chance
+        value = np.log(chance)
         tiny = difference < 1e-8
-        k = np.where(tiny, 1.0 - 0.5 * difference, difference / np.expm1(np.minimum(difference, 700.0)))
-        value = np.where(tiny, log_difference - 0.5 * difference, np.log(-np.expm1(-difference)))
+        if tiny.any():
+            value = np.where(tiny, y + level + np.log(part) - 0.5 * difference, value)
+            k = np.where(tiny, 1.0 - 0.5 * difference, k)
     m = y + r
     bend = k * difference + k * k
     by_shape_twice = -bend * m * m + k * (y * y + r * (2.0 * y - d) + m)
