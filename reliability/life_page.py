@@ -37,6 +37,7 @@ def page_of(document: Document, ranks: dict[str, int], names: dict[str, str], so
     return {
         "lead": words.with_soft_interval(main["sentence"]) if main else "",
         "lead_rank": rank_in(document, main, ranks) if main else None,
+        "marked": len(document["groups"]) > 1,
         "sentences": [told(document, group, ranks) for group in rest[:SENTENCES_IN_SIGHT]],
         "more_sentences": [told(document, group, ranks) for group in rest[SENTENCES_IN_SIGHT:]],
         "survival": survival_chart(document, drawn, ranks) if drawn else None,
@@ -79,20 +80,24 @@ def survival_chart(document: Document, drawn: list[Group], ranks: dict[str, int]
         **curve_table(document),
         "notes": [
             words.curves_note(
-                document, bands=len(drawn) <= MOST_BANDS, fits=any(group.get("fitted") for group in drawn)
+                document,
+                bands=len(drawn) <= MOST_BANDS,
+                fits=len(drawn) <= MOST_BANDS and any(group.get("fitted") for group in drawn),
             )
         ],
     }
 
 
 def age_to_compare(document: Document, drawn: list[Group]) -> float | None:
-    """A round age at which most curves are still seen: near half of the longest, else earlier."""
-    ends = sorted(group["curve"]["last_age"] or 0 for group in drawn)
-    if not ends or not ends[-1]:
+    """A round age at which all that tell something were still seen: near half of the shortest of them."""
+    ends = [group["curve"]["last_age"] or 0 for group in drawn if group["weibull"] or len(drawn) == 1]
+    ends = ends or [group["curve"]["last_age"] or 0 for group in drawn]
+    longest = max(ends, default=0)
+    if not longest:
         return None
-    half = ends[len(ends) // 2] / 2
-    ages = [age for age in round_ages(ends[len(ends) // 2]) if age > 0]
-    return min(ages, key=lambda age: abs(age - half), default=None)
+    shortest = max(min(ends), longest / 10)
+    ages = [age for age in round_ages(shortest) if age > 0]
+    return min(ages, key=lambda age: abs(age - shortest / 2), default=None)
 
 
 def plot_chart(document: Document, drawn: list[Group], ranks: dict[str, int]) -> dict[str, Any]:
@@ -103,7 +108,7 @@ def plot_chart(document: Document, drawn: list[Group], ranks: dict[str, int]) ->
         "figure": weibull_figure(document, ranks),
         "caption": "The fitted lines",
         **line_table(document),
-        "notes": [words.plot_note(document, drawn)],
+        "notes": [words.plot_note(document, drawn, bands=len(drawn) <= MOST_BANDS)],
     }
 
 

@@ -79,22 +79,29 @@ def narrowed_words(question: dict[str, Any], titles: dict[str, str]) -> str:
 
 def survival_sentence(document: Document, compared: list[dict[str, Any]], at: float | None, drawn: int) -> str:
     """What the curves show, with their numbers at one age."""
-    told = [
-        f"{percent(row['survival'])} of {row['group']}{between(row['lower'], row['upper'])}"
-        if row["group"] != "all"
-        else f"{percent(row['survival'])}{between(row['lower'], row['upper'])}"
-        for row in compared[:MOST_COMPARED]
-    ]
     start = "The share still working at each age."
     if not any(group["failures"] for group in document["groups"]):
         oldest = max((group["curve"]["last_age"] or 0 for group in document["groups"]), default=0)
         start = f"None has failed yet: the line stays at the top. The oldest ran {age(oldest, document['clock'])}."
-    elif at is not None and told:
-        start = f"At {age(at, document['clock'])}, {joined(told)} still work."
+    elif at is not None and compared:
+        start = f"At {age(at, document['clock'])}, {compared_words(compared)} still work."
     left = len(document["groups"]) - drawn
     if left > 0:
         start += f" Drawn are the {number(drawn)} groups with most lives; the other {number(left)} stand in the table."
     return start
+
+
+def compared_words(compared: list[dict[str, Any]]) -> str:
+    """Each share with its band; of many the lowest and the highest."""
+    if len(compared) > MOST_COMPARED:
+        rows = sorted(compared, key=lambda row: row["survival"])
+        return f"between {share_of(rows[0])} and {share_of(rows[-1])}"
+    return joined([share_of(row) for row in compared])
+
+
+def share_of(row: dict[str, Any]) -> str:
+    of = "" if row["group"] == "all" else f" of {row['group']}"
+    return f"{percent(row['survival'])}{of}{between(row['lower'], row['upper'])}"
 
 
 def curves_note(document: Document, *, bands: bool, fits: bool) -> str:
@@ -146,14 +153,23 @@ def shape_limits(shape: dict[str, Any]) -> str:
 
 
 def plot_sentence(document: Document, drawn: Iterable[Group]) -> str:
-    """What the Weibull plot shows: the wear of each drawn group, or why there is no line."""
-    told = [
-        sentence for sentence in (wear_sentence(document, group) for group in list(drawn)[:MOST_COMPARED]) if sentence
-    ]
-    return " ".join(told) or "Too few failures for a line; the points are what was seen."
+    """What the Weibull plot shows: how the drawn groups wear, or why there is no line."""
+    fitted = [group for group in drawn if group["weibull"] and group["weibull"]["shape"]["estimate"] is not None]
+    if not fitted:
+        return "Too few failures for a line; the points are what was seen."
+    if len(fitted) < MOST_COMPARED:
+        return " ".join(wear_sentence(document, group) for group in fitted)
+    shapes = sorted((group["weibull"]["shape"]["estimate"], group["group"]) for group in fitted)
+    (least, flattest), (most, steepest) = shapes[0], shapes[-1]
+    wearing = sum((group["weibull"]["shape"]["lower"] or 0) > 1 for group in fitted)
+    return (
+        f"The shapes lie between {number(least, 1)} ({flattest}) and {number(most, 1)} ({steepest}). "
+        f"In {number(wearing)} of {number(len(fitted))} groups it is sure that the parts wear out: the older, the "
+        "sooner the next failure."
+    )
 
 
-def plot_note(document: Document, groups: Iterable[Group]) -> str:
+def plot_note(document: Document, groups: Iterable[Group], *, bands: bool) -> str:
     """How to read the plot, and what its band leaves out."""
     groups = list(groups)
     notes = [
@@ -161,14 +177,12 @@ def plot_note(document: Document, groups: Iterable[Group]) -> str:
         "at half its step. Where points leave the line at one end, the lives are a mixture or the Weibull does not fit."
     ]
     if any(group.get("fitted") for group in groups):
-        notes.append(
-            f"Line: all lives of the group as one population, with its {percent(document['confidence'])} "
-            "likelihood band, age by age."
-        )
+        band = f", with its {percent(document['confidence'])} likelihood band, age by age" if bands else ""
+        notes.append(f"Line: all lives of the group as one population{band}.")
     if any(group.get("independent") for group in groups):
         notes.append(
-            "The band takes lives as independent, which is too narrow where sites differ. The bars at 10 and 50 % are "
-            "B10 and median of a typical site as in the table, with the spread between sites in their intervals."
+            "Line and band take lives as independent, too narrow where sites differ. The bars at 10 and 50 % are B10 "
+            "and median of a typical site as in the table, with the spread between sites in their intervals."
         )
     return " ".join(notes)
 

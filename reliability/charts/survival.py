@@ -28,7 +28,7 @@ def survival_figure(document: Document, ranks: dict[str, int]) -> Figure:
         style, name = style_of(document, group, ranks), named(group)
         if len(groups) <= MOST_BANDS:
             data += band(group, style, name)
-        data += fitted_lines(group, style, name)
+            data += fitted_lines(group, style, name)
         data.append(curve(group, style, name))
     return {
         "data": data,

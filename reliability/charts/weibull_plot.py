@@ -36,7 +36,7 @@ def weibull_figure(document: Document, ranks: dict[str, int]) -> Figure:
             data.append(points(xs, ys, style, name))
         if group.get("independent"):
             data.append(bars(group, style, name))
-        ages += xs + line_ages(group)
+        ages += xs + line_ages(group) + bar_ends(group)
         heights += ys
     return {"data": data, "layout": layout(document, groups, ages, heights)}
 
@@ -166,6 +166,15 @@ def bars(group: Group, style: Any, name: str) -> dict[str, Any]:
         "customdata": [failed for _, failed in told],
         "hovertemplate": "typical site: %{customdata:.0%} failed by %{x:,}<extra>" + name + "</extra>",
     }
+
+
+def bar_ends(group: Group) -> list[float]:
+    """Where the bars end, as far as there is an end; one far off may leave the paper."""
+    if not group.get("independent"):
+        return []
+    seen_to = group["curve"]["last_age"] or 0
+    ends = [group[key][end] for key, _ in QUANTILES if group[key] for end in ("lower", "upper")]
+    return [end for end in ends if end and end <= 4 * seen_to]
 
 
 def layout(document: Document, groups: list[Group], ages: list[float], heights: list[float]) -> dict[str, Any]:
