@@ -1,17 +1,26 @@
-"""Forecast documents read where they were counted before from the same data."""
+"""Forecasts are counted once for each question and day, and again when somebody asks: entries of the same day move
+them little, and counting takes seconds on a large fleet. A forecast says which entries came after it.
+"""
 
 from __future__ import annotations
 
+import datetime as dt
+import json
 from typing import Any
 
-from fleet.models import Component
+from django.utils import timezone
+
+from fleet.models import DataVersion
 from reliability.forecasts.next_quarter import Question, forecast_document
-from reliability.kept import kept
+from reliability.kept import key_of
+from reliability.models import KeptResult
+
+KIND = "forecast"
+KEPT_FOR = dt.timedelta(days=3)
 
 
-def kept_forecast(question: Question) -> dict[str, Any]:
-    """As `forecast_document` with the usual bands."""
-    asked = {
+def asked(question: Question) -> dict[str, Any]:
+    return {
         "component": question.component.code,
         "begin": question.begin.isoformat(),
         "days": question.days,
@@ -19,9 +28,25 @@ def kept_forecast(question: Question) -> dict[str, Any]:
         "sites": list(question.sites) if question.sites is not None else None,
         "by_type": question.by_type,
     }
-    return kept("forecast", asked, lambda: forecast_document(question))
 
 
-def expected_order(components: list[Component], documents: dict[str, dict[str, Any]]) -> list[Component]:
-    """Those with the most expected failures first."""
-    return sorted(components, key=lambda each: -documents[each.code]["total"]["mean"])
+def kept_forecast(question: Question, *, again: bool = False) -> dict[str, Any]:
+    """The document with `counted_at`, and `current`: False where entries came after it."""
+    version, key = DataVersion.current(), key_of(asked(question))
+    row = KeptResult.objects.filter(kind=KIND, key=key).first()
+    if row is None or (again and row.data_version != version):
+        row = _count(question, key, version)
+    document = json.loads(bytes(row.payload))
+    return {**document, "counted_at": row.made_at, "current": row.data_version == version}
+
+
+def _count(question: Question, key: str, version: int) -> KeptResult:
+    document = forecast_document(question)
+    text = json.dumps(document, allow_nan=False, separators=(",", ":"))
+    KeptResult.objects.filter(kind=KIND, made_at__lt=timezone.now() - KEPT_FOR).delete()
+    row, _ = KeptResult.objects.update_or_create(
+        kind=KIND,
+        key=key,
+        defaults={"data_version": version, "payload": text.encode(), "made_at": timezone.now()},
+    )
+    return row

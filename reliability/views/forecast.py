@@ -5,7 +5,8 @@ from __future__ import annotations
 from typing import Any
 
 from django.http import HttpResponse, JsonResponse
-from django.shortcuts import render
+from django.shortcuts import redirect, render
+from django.urls import reverse
 
 from fleet.models import Component, Part
 from fleet.rights import COSTS, LIFE, may, needs
@@ -22,7 +23,9 @@ def forecast(request: Any) -> HttpResponse:
     if not form.is_valid():
         return render(request, "forecast/page.html", {"form": form}, status=422)
     components = list(request.seen(Component))
-    documents = documents_for(request, form, components)
+    documents = documents_for(request, form, components, again=request.method == "POST")
+    if request.method == "POST":
+        return redirect(f"{reverse('forecast')}?{request.GET.urlencode()}")
     needed = parts_needed(request, components, documents)
     if request.GET.get("as") == "csv":
         return parts_list(request, needed)
@@ -34,13 +37,16 @@ def forecast(request: Any) -> HttpResponse:
         "overview": overview(components, documents),
         "needed": needed_table(request, needed),
         "address": request.GET.urlencode(),
+        "older": min((each["counted_at"] for each in documents.values() if not each["current"]), default=None),
     }
     if chosen is not None:
         context |= detail(request, chosen, documents[chosen.code])
     return render(request, "forecast/page.html", context)
 
 
-def documents_for(request: Any, form: ForecastForm, components: list[Component]) -> dict[str, dict[str, Any]]:
+def documents_for(
+    request: Any, form: ForecastForm, components: list[Component], *, again: bool
+) -> dict[str, dict[str, Any]]:
     """One document a component, for the chosen days and sites; nobody gets sites that they do not see."""
     from fleet.models import Site
     from reliability.forecasts.kept_forecast import kept_forecast
@@ -51,7 +57,7 @@ def documents_for(request: Any, form: ForecastForm, components: list[Component])
     if sites is None and not request.user.all_sites:
         sites = list(request.seen(Site).values_list("code", flat=True))
     return {
-        each.code: kept_forecast(question_of(each, begin=asked["begin"], days=form.days(), sites=sites))
+        each.code: kept_forecast(question_of(each, begin=asked["begin"], days=form.days(), sites=sites), again=again)
         for each in components
     }
 
