@@ -89,11 +89,11 @@ def _base(question: LifeQuestion) -> Query:
             c.fitted_day, c.end_day, c.records_day, c.last_good_entered, {measured} AS measured,
             c.{clock}_at_fit AS at_fit, c.{clock}_at_records AS at_records,
             c.{clock}_at_good AS at_good, c.{clock}_at_end AS at_end,
-            COALESCE(CASE WHEN c.end_day IS NULL OR c.end_day > {question.as_of} THEN (
+            CASE WHEN c.end_day IS NULL OR c.end_day > {question.as_of} THEN (
                 SELECT stay.site_id FROM fleet_placement stay JOIN fleet_site place ON place.id = stay.site_id
                 WHERE stay.module_id = f.module_id AND stay.struck_out = '' AND stay.from_on <= %s
-                    AND place.kind <> 'depot'
-                ORDER BY stay.from_on DESC, stay.id DESC LIMIT 1) END, c.site_id) AS site_id
+                ORDER BY CASE WHEN place.kind = 'depot' THEN 1 ELSE 0 END, stay.from_on DESC, stay.id DESC LIMIT 1)
+                ELSE c.site_id END AS site_id
         FROM fleet_part p
         JOIN fleet_fitting f ON f.part_id = p.id
         JOIN fleet_fittingclock c ON c.fitting_id = f.id

@@ -81,8 +81,9 @@ def site_as_of(loaded: Loaded, span: SpanClock, as_of: int) -> int | None:
     """The site of the part's end; of a part that runs on that day the last field or rig site by then."""
     if span.end_day is not None and span.end_day <= as_of:
         return span.site_id
-    served = [stay.site for stay in loaded.record.stays if stay.in_service and stay.from_day <= as_of]
-    return served[-1] if served else span.site_id
+    begun = [stay for stay in loaded.record.stays if stay.from_day <= as_of]
+    served = [stay for stay in begun if stay.in_service] or begun
+    return served[-1].site if served else None
 
 
 def _facts(

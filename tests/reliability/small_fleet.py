@@ -108,8 +108,9 @@ class SmallFleet:
         running_at = None if until is None else instant(until)
         Stop.objects.create(module=module, stopped_at=instant(since), running_at=running_at, known_on=day(int(since)))
 
-    def lives(self, as_of: int, *, known_on: int | None = None, **choices: Any) -> FleetLives:
-        rebuild_clocks()
+    def lives(self, as_of: int, *, known_on: int | None = None, rebuild: bool = True, **choices: Any) -> FleetLives:
+        if rebuild:
+            rebuild_clocks()
         known = None if known_on is None else day(known_on)
         return lives("NUT", as_of=day(as_of), known_on=known, **choices)
 
