@@ -24,7 +24,7 @@ import throwaway_postgresql
 ROOT = Path(__file__).resolve().parent.parent
 BIN = Path(sys.executable).parent
 PYTHON = sys.executable
-TYPED = ["config", "fleet/actions", "fleet/work", "reliability/charts", "reliability/views", "scripts"]
+TYPED = ["config", "fleet/actions", "fleet/work", "reliability/charts", "scripts"]
 AT_ONCE = "2"
 WITHOUT_DATABASE = ("layout", "scripts", "stats")  # once is enough for these
 NOTHING_TO_RUN = 5  # pytest's status when no test was chosen

@@ -75,7 +75,8 @@ def clean_field(model: type[models.Model], name: str, value: Any) -> Any:
         if isinstance(column, (models.CharField, models.TextField)):
             return ""
         raise BadValue(f"“{name.replace('_', ' ')}” is missing. Enter it.", field=name)
-    if column.is_relation and value is not None and not isinstance(value, column.related_model):
+    kind = column.related_model if column.is_relation else None
+    if kind is not None and value is not None and not isinstance(value, kind):
         raise BadValue(f"“{name.replace('_', ' ')}” is not on record. Choose one from the list.", field=name)
     if isinstance(column, models.DateField) and name not in MAY_LIE_AHEAD:
         return clean_day(value, field=name)

@@ -64,7 +64,7 @@ def worded(column: models.Field, value: Any) -> str:
     """What a person reads: the code of a record, not its key."""
     if value in (None, ""):
         return "empty"
-    if column.is_relation:
+    if column.is_relation and column.related_model is not None:
         row = column.related_model._base_manager.filter(pk=value).first()
         return str(row) if row is not None else str(value)
     return str(value)

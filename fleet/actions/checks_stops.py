@@ -41,7 +41,7 @@ def check_stop(stop: Stop, others: list[Stop], zone: ZoneInfo) -> None:
     )
 
 
-def moment(instant: dt.datetime, zone: ZoneInfo) -> str:
+def moment(instant: dt.datetime, zone: dt.tzinfo) -> str:
     local = instant.astimezone(zone)
     return f"{day_words(local.date())}, {local:%H:%M}"
 

@@ -23,7 +23,7 @@ def settle_looks_wrong(*, by: Person, doubt: LooksWrong, outcome: str, answer: s
         if not sees(by, doubt):
             raise NotAllowed("This record belongs to a site that is none of yours. Ask a manager of your book.")
         doubt = opened(LooksWrong, doubt)
-        if doubt.outcome:
+        if doubt.outcome and doubt.settled_at is not None:
             raise AlreadyDone(
                 f"This was settled on {day_words(doubt.settled_at.date())}: {doubt.outcome}. Look at the record again."
             )
