@@ -15,6 +15,8 @@ Document = dict[str, Any]
 Group = dict[str, Any]
 SENTENCES_IN_SIGHT = 6
 NOTES_IN_SIGHT = 6
+MOST_FEW_TABLES = 3
+SHAPES_SIDE_BY_SIDE = (1.0, 2.0, 3.0, 5.0)
 BEYOND = "beyond the oldest part"
 COLUMNS = [
     ("group", "Group"),
@@ -45,7 +47,7 @@ def page_of(document: Document, ranks: dict[str, int], names: dict[str, str], so
         "groups": group_table(document, names, sort),
         "method_line": words.method_line(document),
         "plot": plot_chart(document, drawn, ranks) if any(group["failures"] for group in drawn) else None,
-        "few": [few_failures(document, group) for group in document["groups"] if group["few_failures"]],
+        "few": few_tables(document),
         "if_not_known": not_known_table(document),
         "engineer": engineer_table(document),
         "left_out_sentence": words.left_out_sentence(document),
@@ -187,12 +189,45 @@ def read_off(group: Group, key: str) -> dict[str, Any]:
     return {"estimate": found, "sub": "read off the curve"}
 
 
+def few_tables(document: Document) -> list[dict[str, Any]]:
+    """A table a group; where there are many such groups, one table with a row for each."""
+    groups = [group for group in document["groups"] if group["few_failures"]]
+    if len(groups) <= MOST_FEW_TABLES:
+        return [few_failures(document, group) for group in groups]
+    confidence, clock = groups[0]["few_failures"]["confidence"], document["clock"]
+    columns: list[dict[str, Any]] = [
+        {"key": "group", "label": "Group"},
+        {"key": "lives", "label": "Lives", "numeric": True},
+        {"key": "failures", "label": "Failed", "numeric": True},
+        {"key": "oldest", "label": f"Oldest, {clock}", "numeric": True, "digits": 0},
+    ]
+    columns += [
+        {"key": f"shape {shape:g}", "label": f"if shape {number(shape)}", "numeric": True}
+        for shape in SHAPES_SIDE_BY_SIDE
+    ]
+    return [
+        {
+            "title": "",
+            "sentence": words.many_few_sentence(len(groups), confidence),
+            "columns": columns,
+            "rows": [few_row(group) for group in groups],
+            "caption": f"Nine in ten last longer than so many {clock}, {percent(confidence)} sure",
+        }
+    ]
+
+
+def few_row(group: Group) -> list[Any]:
+    bounds = {bound["shape"]: bound["b10_lower"] for bound in group["few_failures"]["bounds"]}
+    shown = (shown_bound(bounds.get(shape)) for shape in SHAPES_SIDE_BY_SIDE)
+    return [group["group"], group["lives"], group["failures"], group["curve"]["last_age"], *shown]
+
+
 def few_failures(document: Document, group: Group) -> dict[str, Any]:
     """The bounds under assumed shapes, as a table with its sentence."""
     few = group["few_failures"]
     clock = document["clock"]
     return {
-        "title": "all together" if group["group"] == "all" else group["group"],
+        "title": "" if group["group"] == "all" else group["group"],
         "sentence": words.few_sentence(document, group),
         "columns": [
             {"key": "wears", "label": "If it"},

@@ -183,6 +183,8 @@ def plot_note(document: Document, groups: Iterable[Group], *, bands: bool) -> st
         notes.append(
             "Line and band take lives as independent, too narrow where sites differ. The bars at 10 and 50 % are B10 "
             "and median of a typical site as in the table, with the spread between sites in their intervals."
+            if bands
+            else "The lines take lives as independent; the table's figures are those of a typical site."
         )
     return " ".join(notes)
 
@@ -197,6 +199,14 @@ def few_sentence(document: Document, group: Group) -> str:
         f"What they prove depends on how the part wears, which so few failures do not tell. To show that nine in ten "
         f"last a given age, {number(few['parts_for_nine_in_ten'])} new parts must all reach it without a failure "
         f"({sure(few['confidence'])} then). Bounds beyond the oldest part ({oldest}) rest on the assumed shape alone."
+    )
+
+
+def many_few_sentence(groups: int, confidence: float) -> str:
+    return (
+        f"{number(groups)} groups have too few failures to say how they wear. What they prove depends on the shape "
+        "that is assumed: 1 does not wear, 2 wears steadily, 5 wears out almost at one age. The bounds are "
+        f"{percent(confidence)} sure if the shape is right; those beyond the oldest part rest on it alone."
     )
 
 

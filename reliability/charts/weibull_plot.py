@@ -34,7 +34,7 @@ def weibull_figure(document: Document, ranks: dict[str, int]) -> Figure:
         data += line(group, style, name)
         if xs:
             data.append(points(xs, ys, style, name))
-        if group.get("independent"):
+        if group.get("independent") and len(groups) <= MOST_BANDS:
             data.append(bars(group, style, name))
         ages += xs + line_ages(group) + bar_ends(group)
         heights += ys

@@ -94,6 +94,8 @@ class LifeForm(forms.Form):
     def __init__(self, data: Any, *, choices: Choices) -> None:
         super().__init__(_of_component(data, choices))
         component = choices.component
+        for field in self.fields.values():
+            field.error_messages["invalid_choice"] = NOT_A_CHOICE
         self.offer("component", [(each.code, each.title) for each in choices.components])
         own = component.clock if component else "its own clock"
         others = [(value, value) for value in Clock.values if component is None or value != component.clock]
@@ -111,7 +113,6 @@ class LifeForm(forms.Form):
     def offer(self, name: str, choices: list[tuple[str, str]]) -> None:
         field: Any = self.fields[name]
         field.choices = choices
-        field.error_messages["invalid_choice"] = NOT_A_CHOICE
 
     def clean_as_of(self) -> dt.date | None:
         day: dt.date | None = self.cleaned_data["as_of"]
@@ -142,11 +143,16 @@ class LifeForm(forms.Form):
         }
 
 
+def quotable(value: str) -> str:
+    """A message may quote it: bounded, and without what no page can hold."""
+    return value[:LONGEST_QUOTED].replace("\0", "\N{REPLACEMENT CHARACTER}")
+
+
 def _of_component(data: Any, choices: Choices) -> Any:
     """The address with the defaults filled in; parts and modes that went with another component fall away."""
     chosen = data.copy()
     for name, values in list(chosen.lists()):
-        chosen.setlist(name, [value[:LONGEST_QUOTED] for value in values])  # a message may quote it
+        chosen.setlist(name, [quotable(value) for value in values])
     if choices.component is not None:
         chosen["component"] = choices.component.code
         if chosen.get("clock") == choices.component.clock:
