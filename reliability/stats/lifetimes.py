@@ -163,6 +163,13 @@ class Lifetimes:
             raise InvalidLifetimes("No life is left after this choice. Choose fewer restrictions.")
         return self._trusted(columns)
 
+    def reweighted(self, weights: ArrayLike) -> Self:
+        """The same rows with other weights, shape (n,). Raises InvalidLifetimes where one is not above 0."""
+        columns = self._columns()
+        columns["weights"] = _column(weights, "weights", len(self))
+        _check_rows(columns)
+        return self._trusted(columns)
+
     def withdrawn_where(self, mask: ArrayLike) -> Self:
         """The same lives with the failures where mask is True counted as withdrawn at their durations."""
         columns = self._columns()

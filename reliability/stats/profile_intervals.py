@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from typing import Any, Protocol
 
@@ -35,6 +35,10 @@ class Interval:
     method: str
     lower_unbounded: bool = False
     upper_unbounded: bool = False
+
+    def __iter__(self) -> Iterator[float]:
+        """The two limits, for `low, high = fit.interval(...)`."""
+        return iter((self.lower, self.upper))
 
 
 # on a curve: x, y; dx, dy and their second derivatives along the free parameter; dx, dy as psi moves

@@ -146,3 +146,13 @@ def test_a_million_rows_stay_below_two_hundred_bytes_each():
     columns = [lives.durations, lives.observed, lives.entries, lives.last_good, lives.weights]
     real = sum(column.nbytes for column in columns if column.strides != (0,))
     assert real < 50 * count
+
+
+def test_other_weights_for_the_same_rows():
+    lives = Lifetimes([5, 6], [1, 0], sites=["a", "b"])
+    assert lives.reweighted([2.0, 0.5]).count == 2.5
+    assert lives.reweighted(3).failures == 3.0
+    with pytest.raises(InvalidLifetimes, match="weight is 0"):
+        lives.reweighted([1, 0])
+    with pytest.raises(InvalidLifetimes, match="weights has shape"):
+        lives.reweighted([1, 2, 3])

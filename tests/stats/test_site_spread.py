@@ -81,11 +81,10 @@ def test_likelihood_against_nested_integrals(intervals, late):
     def value(shape: float, scale: float) -> float:
         return likelihood(math.log(shape), shape * (likelihood.log_reference - math.log(scale)))[0]
 
-    # differences between points are what intervals are made of; the level itself is good to the grid's step
     points = [(2.0, 100.0), (1.4, 130.0), (2.6, 70.0)]
     slow = [integrated(lives, *point) for point in points]
     fast = [value(*point) for point in points]
-    assert fast == pytest.approx(slow, abs=3e-3)
+    assert fast == pytest.approx(slow, abs=3e-4)
 
 
 @pytest.mark.parametrize("intervals", [False, True])

@@ -154,6 +154,8 @@ def test_results_read_as_functions():
     assert fit.survival(np.array([0.0, fit.scale])) == pytest.approx([1.0, math.exp(-1)])
     assert fit.median == fit.quantile(0.5)
     assert isinstance(fit.quantile(0.1), float)
+    low, high = fit.interval("median")
+    assert low < fit.median < high
     assert fit.aicc == pytest.approx(fit.aic + 2 * 2 * 3 / (50 - 3))
     ages = np.linspace(0, 40 * fit.scale, 400_001)
     assert np.trapezoid(fit.survival(ages), ages) == pytest.approx(fit.mean, rel=1e-6)
