@@ -261,7 +261,11 @@ class Drawing:
                 yield f'<polyline class="counter" points="{points}"/>'
         last_day, last = self.history.counter[-1][-1] if self.history.counter[-1] else (self.history.last, most)
         y = foot - last / most * height
-        yield f'<text class="code" x="{self.x(last_day) + 4:.1f}" y="{y + 4:.1f}">{escape(short(last))}</text>'
+        if self.layout.names_above:
+            where = f'x="{self.layout.width - 2:g}" y="{y - 8:.1f}" text-anchor="end"'
+        else:
+            where = f'x="{self.x(last_day) + 4:.1f}" y="{y + 4:.1f}"'
+        yield f'<text class="code" {where}>{escape(short(last))}</text>'
 
 
 @dataclass(frozen=True)

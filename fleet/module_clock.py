@@ -51,6 +51,11 @@ class ModuleClock:
         share = (day - before[0]) / (after[0] - before[0])
         return before[column] + share * (after[column] - before[column])
 
+    def pace(self, clock: str) -> float | None:
+        """Use a day from now on, at the recent duty; None where it is not known or the clock stands."""
+        now, later = self.at(clock, self.now), self.at(clock, self.now + 1)
+        return None if now is None or later is None or later <= now else later - now
+
     def read_last(self, clock: str) -> float | None:
         """The day on which the counter or meter was read last."""
         if clock == "days":

@@ -29,7 +29,10 @@ class PickField(TileField):
         pairs = list(options)
         self.records = {str(record.pk): record for record, _ in pairs}
         choices = [(str(record.pk), words) for record, words in pairs]
-        super().__init__(choices=[(nothing_value, nothing), *choices] if nothing is not None else choices, **kwargs)
+        if nothing is not None:
+            # A deliberate “not known” is the last resort; an empty first line is where lists begin.
+            choices = [*choices, (nothing_value, nothing)] if nothing_value else [("", nothing), *choices]
+        super().__init__(choices=choices, **kwargs)
 
     def prepare_value(self, value: Any) -> Any:
         return str(value.pk) if hasattr(value, "pk") else value

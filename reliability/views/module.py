@@ -11,10 +11,13 @@ from django.urls import reverse
 
 from fleet.formats import long_day, moment
 from fleet.models import ModuleState
-from fleet.module_page import ModulePage
-from fleet.rights import CATALOGUE, LOG, SEE, may, needs
+from fleet.module_page import FittedNow, ModulePage
+from fleet.rights import CATALOGUE, CHANCES, LOG, SEE, may, needs
 from fleet.views.module_file import as_file
 from fleet.views.seen import seen_module
+from reliability.chances import PartNow, chances
+
+WITHOUT_PLAN_DAYS = 30
 
 
 @needs(SEE)
@@ -23,6 +26,7 @@ def module(request: Any, tag: str) -> HttpResponse:
     page = ModulePage(request.seen, request.user, found, request.GET.get("page"))
     if request.GET.get("as") == "csv":
         return as_file(page)
+    fitted = page.fitted_now()
     context = {
         "page": page,
         "module": found,
@@ -30,15 +34,51 @@ def module(request: Any, tag: str) -> HttpResponse:
         "crumbs": crumbs_of(page),
         "state": state_of(page),
         "actions": actions_of(request, page),
-        "fitted": page.fitted_now(),
+        "fitted": fitted,
+        **with_chances(request, page, fitted),
         "drawings": page.drawings(),
         "key": page.key(),
         "fittings": page.fitting_lines(),
+        "planned_visit": next_visit(page),
         "file_url": "?as=csv",
         "reckoned_since": reckoned_since(page),
         "as_of": page.today,
     }
     return render(request, "module/page.html", context)
+
+
+def with_chances(request: Any, page: ModulePage, fitted: list[FittedNow]) -> dict[str, Any]:
+    """Gives each running part of a running module its chance of failing before the next planned visit."""
+    if not may(request.user, CHANCES) or page.module.state != ModuleState.RUNNING:
+        return {}
+    visit = next_visit(page)
+    days = (visit - page.today).days if visit else WITHOUT_PLAN_DAYS
+    running = [
+        PartNow(row.position.pk, row.position.component.code, row.fitting.part.code, row.age.value, pace)
+        for row in fitted
+        if row.fitting and row.age and row.age.value is not None and not row.age.at_least
+        if (pace := page.clock.pace(row.age.clock)) is not None
+    ]
+    found = chances(running, days=days, as_of=page.today)
+    for row in fitted:
+        row.chance = found.get(row.position.pk)
+    likeliest = max(
+        (row for row in fitted if row.chance and not row.chance.words),
+        key=lambda row: row.chance.estimate,
+        default=None,
+    )
+    return {
+        "chances_shown": bool(found),
+        "next_visit": visit,
+        "chance_days": days,
+        "likeliest": likeliest,
+    }
+
+
+def next_visit(page: ModulePage) -> dt.date | None:
+    """Planned at the site, today or later."""
+    planned = page.standing.site.next_visit_on if page.standing.site else None
+    return planned if planned and planned > page.today else None
 
 
 def reckoned_since(page: ModulePage) -> dt.date | None:
