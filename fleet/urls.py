@@ -13,10 +13,12 @@ from fleet.views import (
     modules,
     people,
     readings,
+    records,
     search,
     sign_in,
     sites,
     stops,
+    work,
 )
 
 urlpatterns: list[URLPattern | URLResolver] = [
@@ -61,6 +63,12 @@ urlpatterns: list[URLPattern | URLResolver] = [
     path("people/<code:code>/sign-out/", people.sign_out_everywhere, name="sign_out_everywhere"),
     path("settings/", people.book, name="book"),
     path("search/", search.search, name="search"),
+    path("records/", records.records, name="records"),
+    path("records/out/", records.export, name="export_records"),
+    path("work/<uuid:pk>/", work.work, name="work"),
+    path("work/<uuid:pk>/confirm/", records.confirm_import, name="confirm_import"),
+    path("work/<uuid:pk>/cancel/", work.cancel_work, name="cancel_work"),
+    path("work/<uuid:pk>/file/", work.work_file, name="work_file"),
     path("log/", log.log, name="log"),
     path("m/<code:tag>/log", log.log_visit, name="log_visit"),
     path("m/<code:tag>/stop", stops.report_stop, name="report_stop"),

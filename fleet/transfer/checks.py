@@ -13,7 +13,7 @@ LEAST, MOST = "0001-01-01", "9999-12-31"
 OVERLAPS = """
 WITH stays AS (
     SELECT row, id, {same}, COALESCE({start}, '{least}') AS begun, COALESCE({end}, '{most}') AS ended
-    FROM {stage} WHERE bad = 0 {standing}
+    FROM {stage} WHERE bad = 0 AND {named} {standing}
     UNION ALL
     SELECT NULL, book.id, {book_same}, COALESCE(book.{start}, '{least}'), COALESCE(book.{end}, '{most}')
     FROM {table} AS book
@@ -46,6 +46,7 @@ def check_overlaps(kind: FileKind, same: list[str], start: str, end: str, words:
         least=LEAST,
         most=MOST,
         standing=standing,
+        named=" AND ".join(f"{name} IS NOT NULL" for name in same),
     )
     for row, row_before, reached, ended_before, begun in fetch(query):
         other = row_before if row is not None else None

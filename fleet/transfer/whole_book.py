@@ -13,7 +13,16 @@ from django.db.migrations.loader import MigrationLoader
 
 from fleet.models import Component, LifeSet, Module, ModuleType, Part, Person, Site, Visit
 
-HELD = [Person, Site, Component, ModuleType, Part, Module, Visit, LifeSet]
+HELD = {
+    "people": Person,
+    "sites": Site,
+    "components": Component,
+    "module types": ModuleType,
+    "parts": Part,
+    "modules": Module,
+    "visits": Visit,
+    "sets of lives": LifeSet,
+}
 SQLITE_HEAD = b"SQLite format 3\x00"
 POSTGRESQL_HEAD = b"PGDMP"
 OTHER_ENGINE = (
@@ -76,9 +85,8 @@ def put_back(path: Path) -> None:
 
 def refuse_full_book() -> None:
     tables = set(connection.introspection.table_names())
-    for model in HELD:
+    for words, model in HELD.items():
         if model._meta.db_table in tables and model._default_manager.exists():
-            words = model._meta.verbose_name_plural
             raise CannotCopy(f"This book holds {words} already. Put the copy back into an empty book.")
 
 

@@ -2,20 +2,32 @@
 
 from __future__ import annotations
 
+import tempfile
 import time
 from collections.abc import Callable, Sequence
 from pathlib import Path
 from typing import Any
 
+from django.db import transaction
+from django.utils import timezone
+
 from fleet.formats import counted
 from fleet.history import writing
-from fleet.models import KeptFile, Work
+from fleet.models import KeptFile, Site, Work
+from fleet.rights import CATALOGUE, may
+from fleet.transfer.export_records import write_export
 from fleet.transfer.import_records import Import, Outcome, make_clocks_again, sweep_before
 from fleet.transfer.problems import Unreadable
+from fleet.transfer.scope import scope_of
 from fleet.transfer.sources import Table, open_bytes, open_source
 from fleet.work import Progress, WorkFailed, work_kind
+from fleet.work.fence import write_fenced
 
 GONE = "The command was ended before anything was stored. Run it again."
+CONTENT_TYPES = {
+    "zip": "application/zip",
+    "xlsx": "application/vnd.openxmlformats-officedocument.spreadsheetml.sheet",
+}
 NO_FILE = "The file is no longer kept. Choose it again."
 
 
@@ -46,7 +58,11 @@ def import_records(work: Work, progress: Progress) -> dict[str, Any]:
 
 
 def importer(work: Work, progress: Progress) -> Import:
-    return Import(tables_of(work), person=work.person, update=bool(work.arguments.get("update")), progress=progress)
+    person = work.person
+    if person is not None and not (may(person, CATALOGUE) and person.all_sites):
+        raise WorkFailed(f"{person.name} may not bring records in. Ask a manager or planner who sees all sites.")
+    update = bool(work.arguments.get("update"))
+    return Import(tables_of(work), person=person, update=update, progress=progress)
 
 
 def tables_of(work: Work) -> Callable[[], Sequence[Table]]:
@@ -70,3 +86,32 @@ def finished(outcome: Outcome, started: float) -> dict[str, Any]:
 
 def refused(outcome: Outcome) -> str:
     return f"{counted(outcome.problems.count, 'error')}. Nothing was stored."
+
+
+@work_kind("export_records")
+def export_records(work: Work, progress: Progress) -> dict[str, Any]:
+    """Arguments: form (zip or xlsx), site. The file is kept beside the work; a second attempt makes it again."""
+    form = work.arguments.get("form", "zip")
+    code = work.arguments.get("site")
+    site = Site.objects.filter(code=code).first() if code else None
+    if code and site is None:
+        raise WorkFailed(f"Site {code} is not in the book any more. Choose another.")
+    progress.step(message="Reading the book")
+    with tempfile.TemporaryDirectory() as folder:
+        path = Path(folder) / f"records.{form}"
+        try:
+            counts = write_export(path, scope_of(work.person, site))
+        except Unreadable as fault:
+            raise WorkFailed(f"{fault.file} {fault.message}") from None
+        content = path.read_bytes()
+    progress.step(1, 1, "Keeping the file")
+    name = f"halfnut-{code.lower() + '-' if code else ''}{timezone.localdate().isoformat()}.{form}"
+    with transaction.atomic():
+        write_fenced(work.pk, work.attempt)
+        KeptFile.objects.filter(work=work, role="result").delete()
+        KeptFile.objects.create(work=work, role="result", name=name, content_type=CONTENT_TYPES[form], content=content)
+    return {
+        "files": [{"file": f"{name}.csv", "rows": rows} for name, rows in counts.items()],
+        "name": name,
+        "bytes": len(content),
+    }

@@ -51,7 +51,7 @@ def check_part(row: Row, known: Known, component: int | None, module: KnownModul
         return
     if component is not None and part.component != component:
         row.say("part", "is of another component than this position holds. Name a part for it.")
-    elif module is not None and part.types and module.type not in part.types:
+    elif module is not None and part.types and module.type not in {UNCLEAR, *part.types}:
         row.say("part", "does not fit modules of this type. Add the type to fits_types of the part, or name another.")
 
 
