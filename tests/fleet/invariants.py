@@ -37,7 +37,7 @@ def broken_rules() -> list[str]:
 def rows_of(model: Any) -> list[Row]:
     """Straight from the table, past managers and properties."""
     with connection.cursor() as cursor:
-        cursor.execute(f'SELECT * FROM "{model._meta.db_table}" ORDER BY 1')
+        cursor.execute(f'SELECT * FROM "{model._meta.db_table}" ORDER BY "{model._meta.pk.column}"')
         names = [column[0] for column in cursor.description]
         return [dict(zip(names, values, strict=True)) for values in cursor.fetchall()]
 
