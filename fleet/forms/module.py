@@ -71,7 +71,7 @@ class TakeAwayForm(RecordForm):
         self.fields["to_on"].initial = timezone.localdate()
 
     def save_by(self, person: Any) -> Any:
-        from fleet.actions.place_module import take_away_module
+        from fleet.actions.take_away_module import take_away_module
 
         take_away_module(by=person, module=self.record, to_on=self.cleaned_data["to_on"])
         return self.record
