@@ -9,6 +9,7 @@ from typing import Any, NamedTuple
 
 from django.db.models import F, OuterRef, Q, Subquery
 
+from fleet.formats import counted
 from fleet.models import ClockPoint, Component, Fitting, Part, PartState, Placement, SiteKind
 
 NO_PLACE = "no place"
@@ -62,15 +63,14 @@ def running_parts(component: Component, *, as_of: dt.date, sites: list[str] | No
         lower_bound += not known
         found.append((age, _pace(row), row["part_code"], row["site_code"] or NO_PLACE, row["type_code"]))
     rows, guessed = _with_pace(found, component.clock)
-    notes = (
-        [f"{lower_bound} parts whose fitting day is not known count with the age they have at least."]
-        if lower_bound
-        else []
-    )
+    notes = []
+    if lower_bound:
+        one, many = "part whose fitting day is not known counts", "parts whose fitting day is not known count"
+        age_told = "it has" if lower_bound == 1 else "they have"
+        notes.append(f"{counted(lower_bound, one, many)} with the age {age_told} at least.")
     if guessed:
-        notes.append(
-            f"{guessed} parts without readings of their own count with the pace of their site or of the fleet."
-        )
+        one, many = "part without readings of its own counts", "parts without readings of their own count"
+        notes.append(f"{counted(guessed, one, many)} with the pace of the site or of the fleet.")
     return RunningParts(
         component=component.code,
         clock=component.clock,

@@ -1,0 +1,112 @@
+"""Which parts run on a day, how old they are and how fast they age: worked by hand, one module a story."""
+
+from __future__ import annotations
+
+import pytest
+
+from fleet.actions.rebuild_clocks import rebuild_clocks
+from fleet.models import Part
+from reliability.running_parts import RunningRow, replacements, running_parts
+from tests.reliability.small_fleet import SmallFleet, day
+
+pytestmark = pytest.mark.django_db
+AS_OF = 200
+
+
+@pytest.fixture
+def fleet() -> SmallFleet:
+    return SmallFleet()
+
+
+def rows(fleet: SmallFleet, as_of: int = AS_OF, **choices: list[str]) -> list[RunningRow]:
+    rebuild_clocks()
+    return running_parts(fleet.component, as_of=day(as_of), **choices).rows
+
+
+def test_a_part_is_as_old_as_the_days_since_it_was_fitted(fleet: SmallFleet) -> None:
+    fleet.fit(fleet.module("M-1", fleet.site()), 120)
+    assert rows(fleet) == [RunningRow(80.0, 1.0, "N1", "LOCK", "CARRIAGE", 1)]
+
+
+def test_equal_parts_share_a_row_and_other_sites_do_not(fleet: SmallFleet) -> None:
+    here, there = fleet.site(), fleet.site("WEIR")
+    for tag, site in (("M-1", here), ("M-2", here), ("M-3", there)):
+        fleet.fit(fleet.module(tag, site), 120)
+    assert [(row.site, row.count) for row in rows(fleet)] == [("LOCK", 2), ("WEIR", 1)]
+    assert [row.site for row in rows(fleet, sites=["WEIR"])] == ["WEIR"]
+
+
+def test_a_part_that_came_out_before_or_goes_in_later_does_not_run(fleet: SmallFleet) -> None:
+    site = fleet.site()
+    fleet.fit(fleet.module("M-1", site), 10, 150, "failed")
+    fleet.fit(fleet.module("M-2", site), 250)
+    fleet.fit(fleet.module("M-3", site), 10, 260, "failed")
+    assert [row.age for row in rows(fleet)] == [190.0]
+
+
+def test_a_used_part_brings_its_age_along(fleet: SmallFleet) -> None:
+    fleet.fit(fleet.module("M-1", fleet.site()), 190, age_at_fit=30)
+    assert [row.age for row in rows(fleet)] == [40.0]
+
+
+def test_a_stop_takes_its_days_away(fleet: SmallFleet) -> None:
+    module = fleet.module("M-1", fleet.site())
+    fleet.fit(module, 100)
+    fleet.stop(module, 150, 170)
+    assert [row.age for row in rows(fleet)] == [80.0]
+
+
+def test_parts_at_depots_and_on_test_stands_are_named_as_left_out(fleet: SmallFleet) -> None:
+    fleet.fit(fleet.module("M-1", fleet.site("YARD", kind="depot")), 100)
+    fleet.fit(fleet.module("M-2", fleet.site("TANK", kind="rig")), 100)
+    fleet.fit(fleet.module("M-3", fleet.site(), scrapped_on=day(180)), 100)
+    rebuild_clocks()
+    found = running_parts(fleet.component, as_of=day(AS_OF))
+    assert found.rows == []
+    assert found.left_out == [("at a depot", 1), ("in a scrapped module", 1), ("on a test stand", 1)]
+
+
+def test_a_part_of_unknown_fitting_day_has_the_age_since_records_began_at_least(fleet: SmallFleet) -> None:
+    fleet.fit(fleet.module("M-1", fleet.site(records_from=day(140))), None)
+    rebuild_clocks()
+    found = running_parts(fleet.component, as_of=day(AS_OF))
+    assert [row.age for row in found.rows] == [60.0]
+    assert found.notes == ["1\u00a0part whose fitting day is not known counts with the age it has at least."]
+
+
+def test_strokes_come_from_readings_and_the_pace_from_the_last_of_them() -> None:
+    fleet = SmallFleet("strokes")
+    module = fleet.module("M-1", fleet.site())
+    fleet.fit(module, 100)
+    for at in (100, 150, 200):
+        fleet.read(module, at, strokes=int(at * 500))
+    (row,) = rows(fleet)
+    assert row.age == pytest.approx(50_000, rel=0.01)
+    assert row.a_day == pytest.approx(500, rel=0.02)
+
+
+def test_a_module_without_readings_takes_the_pace_of_its_site() -> None:
+    fleet = SmallFleet("strokes")
+    site = fleet.site(strokes_per_day=400)
+    module = fleet.module("M-1", site)
+    fleet.fit(module, 100)
+    fleet.stop(module, 190, None)
+    other = fleet.module("M-2", site)
+    fleet.fit(other, 100)
+    rebuild_clocks()
+    found = running_parts(fleet.component, as_of=day(AS_OF))
+    assert {row.a_day for row in found.rows} == {400.0}
+
+
+def test_the_replacement_is_the_current_design_at_the_end_of_the_chain(fleet: SmallFleet) -> None:
+    Part.objects.create(code="N3", component=fleet.component, supersedes=fleet.n2)
+    fleet.n2.supersedes = fleet.n1
+    fleet.n2.save()
+    Part.objects.create(code="N4", component=fleet.component, supersedes=fleet.n1, state="on trial")
+    assert replacements(fleet.component) == {"N1": "N3", "N2": "N3", "N3": "N3", "N4": "N4"}
+
+
+def test_a_circle_of_superseding_parts_ends(fleet: SmallFleet) -> None:
+    Part.objects.filter(pk=fleet.n1.pk).update(supersedes=fleet.n2)
+    Part.objects.filter(pk=fleet.n2.pk).update(supersedes=fleet.n1)
+    assert set(replacements(fleet.component)) == {"N1", "N2"}
