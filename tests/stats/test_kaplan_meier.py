@@ -188,3 +188,9 @@ def test_median_interval_covers_the_truth_at_its_rate():
         median = kaplan_meier(weibull_lives(rng, 40)).median
         held += median.lower <= truth < median.upper
     assert 0.91 <= held / 300 <= 0.99
+
+
+def test_a_failure_at_the_age_given_is_already_survived():
+    curve = kaplan_meier(Lifetimes([5, 8, 9], [1, 1, 0]), given_survival_to=5)
+    assert curve.times.tolist() == [8.0]
+    assert curve.survival.tolist() == [0.5]

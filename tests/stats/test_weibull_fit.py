@@ -211,3 +211,26 @@ def test_intervals_cover_at_their_rate():
             held[quantity] += interval.lower <= value <= interval.upper
     for quantity, count in held.items():
         assert 0.91 <= count / 400 <= 0.98, quantity
+
+
+def test_wald_limits_are_the_delta_method():
+    # the slopes of log mean, log B10 and log(-log S) in (shape, scale) by differences
+    fit = fit_weibull(weibull_lives(np.random.default_rng(14), 40, **KINDS["everything"]))
+    ways = {
+        "mean": lambda shape, scale: math.log(scale * math.gamma(1 + 1 / shape)),
+        ("quantile", 0.1): lambda shape, scale: math.log(scale) + math.log(-math.log(0.9)) / shape,
+        ("survival", 60.0): lambda shape, scale: shape * math.log(60.0 / scale),
+    }
+    for quantity, way in ways.items():
+        step = 1e-6
+        by_shape = (way(fit.shape + step, fit.scale) - way(fit.shape - step, fit.scale)) / (2 * step)
+        by_scale = (way(fit.shape, fit.scale + step) - way(fit.shape, fit.scale - step)) / (2 * step)
+        slopes = np.array([by_shape, by_scale])
+        half = 1.959964 * math.sqrt(slopes @ fit.covariance @ slopes)
+        limits = fit.interval(quantity, method="wald")
+        centre = way(fit.shape, fit.scale)
+        if quantity[0] == "survival":
+            expected = (math.exp(-math.exp(centre + half)), math.exp(-math.exp(centre - half)))
+        else:
+            expected = (math.exp(centre - half), math.exp(centre + half))
+        assert (limits.lower, limits.upper) == pytest.approx(expected, rel=1e-5)
