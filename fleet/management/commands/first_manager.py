@@ -47,14 +47,14 @@ class Command(BaseCommand):
         asks = sys.stdin.isatty()
         code = clean_code(code or (input("Code to sign in with, like ANNA: ") if asks else ""))
         name = (name or (input("Full name: ") if asks else "") or code).strip()
-        self.check(code, name)
+        self.look_over(code, name)
         person = Person(code=code, name=name, role=Role.MANAGER, all_sites=True)
         person.set_password(self.password(person, ask=asks and not options["link"]))
         with writing(source="command"), change(by=None, right=PEOPLE, raises_version=False):
             person.save()
         self.say(person, options)
 
-    def check(self, code: str, name: str) -> None:
+    def look_over(self, code: str, name: str) -> None:
         if not code:
             raise CommandError("The code is missing. Give it with --code, like --code ANNA.")
         try:

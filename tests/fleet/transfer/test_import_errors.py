@@ -223,9 +223,9 @@ def test_headers() -> None:
     twice = problems(look(fleet(sites=text("sites").replace("zone", "name"))))
     empty = problems(look(fleet(sites="")))
 
-    assert ("sites.csv", 1) == unknown[0][:2]
+    assert unknown[0][:2] == ("sites.csv", 1)
     assert "is no column of this file" in unknown[0][3]
-    assert ("modules.csv", 1, "type") == missing[0][:3]
+    assert missing[0][:3] == ("modules.csv", 1, "type")
     assert "stands twice" in twice[0][3]
     assert "has no header row" in empty[0][3]
 
@@ -237,7 +237,7 @@ def test_a_note_is_allowed_everywhere() -> None:
 def test_files_of_later_versions_and_strange_files() -> None:
     found = problems(look(fleet(stores="store\nMAIN\n", shopping="what\nbread\n")))
 
-    assert ("stores.csv", "is not kept by this version. Leave the file out.") == (found[0][0], found[0][3])
+    assert (found[0][0], found[0][3]) == ("stores.csv", "is not kept by this version. Leave the file out.")
     assert "is no records file" in found[1][3]
 
 
