@@ -102,8 +102,8 @@ def _not_measured(rows: Sequence[LifeRow], clock: str) -> str:
     if not estimated:
         return ""
     return (
-        f"The {clock} of {estimated} of {lives} lives are worked out from an assumed daily duty, not between two "
-        "readings. Read the counters to make them sure."
+        f"The {clock} of {estimated} of {lives} lives reach beyond the readings of their module, or it has none: there "
+        "they are carried on at its usual daily duty. Read the counters to make them sure."
     )
 
 

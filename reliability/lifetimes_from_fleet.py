@@ -117,28 +117,34 @@ def lives(
 
 def reporting_lags(as_of: dt.date, known_on: dt.date | None = None) -> dict[int, int]:
     """For each site that reports at once: days within which 95 % of its failures were known; of its visits if none."""
-    once = Site.objects.filter(reports_at_once=True)
+    once = Site.objects.filter(reports_at_once=True).values_list("pk", flat=True)
     known = Coalesce("removed_known_on", "removed_visit__known_on", "removed_on")
     failures = (
         Fitting.objects.standing()
         .filter(reason__in=FAILURE_REASONS, removed_on__lte=as_of, clock__site__in=once)
         .annotate(place=F("clock__site_id"), known=known, happened=Coalesce("failed_on", "removed_on"))
     )
-    visits = (
-        Visit.objects.standing()
-        .filter(happened_on__lte=as_of, site__in=once)
-        .annotate(place=F("site_id"), known=F("known_on"), happened=F("happened_on"))
-    )
-    lags = dict.fromkeys(once.values_list("pk", flat=True), 0)
-    for records in (visits, failures):  # failures last: where there are any, they decide
-        if known_on is not None:
-            records = records.filter(known__lte=known_on)
-        late = ExpressionWrapper(F("known") - F("happened"), output_field=DurationField())
-        counts: dict[int, list[tuple[int, int]]] = defaultdict(list)
-        for place, lag, count in records.annotate(late=late).values_list("place", "late").annotate(n=Count("pk")):
-            counts[place].append((max(0, lag.days), count))
-        lags.update({place: _quantile(pairs, LAG_QUANTILE) for place, pairs in counts.items()})
-    return lags
+    lags = _late_by(failures, known_on)
+    without = [site for site in once if site not in lags]
+    if without:
+        visits = (
+            Visit.objects.standing()
+            .filter(happened_on__lte=as_of, site__in=without)
+            .annotate(place=F("site_id"), known=F("known_on"), happened=F("happened_on"))
+        )
+        lags.update(_late_by(visits, known_on))
+    return {site: lags.get(site, 0) for site in once}
+
+
+def _late_by(records: Any, known_on: dt.date | None) -> dict[int, int]:
+    """For each place the quantile of the days from `happened` to `known`; the database subtracts the dates."""
+    if known_on is not None:
+        records = records.filter(known__lte=known_on)
+    late = ExpressionWrapper(F("known") - F("happened"), output_field=DurationField())
+    counts: dict[int, list[tuple[int, int]]] = defaultdict(list)
+    for place, lag, count in records.annotate(late=late).values_list("place", "late").annotate(n=Count("pk")):
+        counts[place].append((max(0, lag.days), count))
+    return {place: _quantile(pairs, LAG_QUANTILE) for place, pairs in counts.items()}
 
 
 def _quantile(pairs: list[tuple[int, int]], share: float) -> int:

@@ -47,21 +47,37 @@ def survival_curve(lifetimes: Lifetimes, confidence: float) -> SurvivalCurve:
     from reliability.stats.errors import UndefinedEstimate
     from reliability.stats.kaplan_meier import kaplan_meier
 
-    minimum: float = MINIMUM_AT_RISK
     notes: list[str] = []
-    if lifetimes.has_intervals:
-        return _with_intervals(lifetimes, confidence)
+    exact = _failing_at(lifetimes, early=False)
     try:
-        curve = kaplan_meier(lifetimes, confidence, minimum_at_risk=minimum)
+        curve = kaplan_meier(exact, confidence, minimum_at_risk=MINIMUM_AT_RISK)
     except UndefinedEstimate:
         notes.append(f"Fewer than {MINIMUM_AT_RISK} parts were ever under observation at one age.")
-        curve = kaplan_meier(lifetimes, confidence)
-    if curve.given_survival_to > 0:
-        notes.append(
-            f"Records began late: the curve tells the chance to outlive an age given survival to "
-            f"{curve.given_survival_to:g}."
-        )
+        curve = kaplan_meier(exact, confidence)
+    start = curve.given_survival_to
+    if start > 0:
+        notes.append(f"Records began late: the curve tells the chance to outlive an age given survival to {start:g}.")
+    if lifetimes.has_intervals:
+        return _with_intervals(_from_start(lifetimes, start), confidence, notes)
     return _from_kaplan_meier(curve, KAPLAN_MEIER, "log-log", notes)
+
+
+def _from_start(lifetimes: Lifetimes, start: float) -> Lifetimes:
+    """The lives that outlasted the start, observed from there on; a failure that may lie before it lies after it."""
+    import numpy as np
+
+    from reliability.stats.lifetimes import Lifetimes as Rows
+
+    if start <= 0:
+        return lifetimes
+    kept = lifetimes.subset(lifetimes.durations > start)
+    return Rows(
+        kept.durations,
+        kept.observed,
+        entries=np.maximum(kept.entries, start),
+        last_good=np.maximum(kept.last_good, start),
+        weights=kept.weights,
+    )
 
 
 def _from_kaplan_meier(curve: KaplanMeierCurve, method: str, band: str, notes: list[str]) -> SurvivalCurve:
@@ -80,7 +96,7 @@ def _from_kaplan_meier(curve: KaplanMeierCurve, method: str, band: str, notes: l
     )
 
 
-def _with_intervals(lifetimes: Lifetimes, confidence: float) -> SurvivalCurve:
+def _with_intervals(lifetimes: Lifetimes, confidence: float, notes: list[str]) -> SurvivalCurve:
     """Turnbull's curve; its band by Kaplan–Meier with every failure at the early and at the late end of its interval.
 
     Moving failures earlier only lowers a Kaplan–Meier curve, so the true one lies between the two and the band holds
@@ -92,9 +108,11 @@ def _with_intervals(lifetimes: Lifetimes, confidence: float) -> SurvivalCurve:
     from reliability.stats.kaplan_meier import kaplan_meier, number_at_risk
     from reliability.stats.turnbull import turnbull
 
-    early = kaplan_meier(_failing_at(lifetimes, early=True), confidence)
-    late = kaplan_meier(_failing_at(lifetimes, early=False), confidence)
-    found = f"{round(float(lifetimes.weights[lifetimes.is_interval].sum()))} failures were only found at a later look"
+    start = float(lifetimes.entries.min())
+    early, late = (
+        kaplan_meier(_failing_at(lifetimes, early=end), confidence, given_survival_to=start) for end in (True, False)
+    )
+    found = _found_later(round(float(lifetimes.weights[lifetimes.is_interval].sum())))
     try:
         if len(lifetimes) > MOST_CELLS:
             raise _TooMany(f"{len(lifetimes)} different ages")
@@ -104,10 +122,9 @@ def _with_intervals(lifetimes: Lifetimes, confidence: float) -> SurvivalCurve:
             f"{found}; the curve takes them at the day they were found, the band allows for the time before ({error})."
         )
         ages, survival, method = late.times, late.survival, KAPLAN_MEIER
-        start, notes = late.given_survival_to, [note]
     else:
+        note = f"{found}: the curve allows for the time before."
         ages, survival, method = curve.right, curve.survival, TURNBULL
-        start, notes = curve.given_survival_to, [f"{found}: the curve allows for the time before."]
     return SurvivalCurve(
         ages=ages,
         survival=survival,
@@ -119,7 +136,15 @@ def _with_intervals(lifetimes: Lifetimes, confidence: float) -> SurvivalCurve:
         last_age=float(lifetimes.durations.max()),
         method=method,
         band=WIDE_BAND,
-        notes=notes,
+        notes=[*notes, note],
+    )
+
+
+def _found_later(count: int) -> str:
+    return (
+        "1 failure was only found at a later look"
+        if count == 1
+        else f"{count} failures were only found at a later look"
     )
 
 
