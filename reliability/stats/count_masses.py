@@ -6,6 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.special import log_ndtr
 
 from reliability.stats.count_positions import Classes, Rows
 
@@ -15,7 +16,7 @@ IntArray = NDArray[np.int64]
 
 @dataclass(frozen=True, eq=False)
 class Hazards:
-    """Cumulative hazard rate * t^shape of the lives of some draws and classes, with an early share.
+    """Cumulative hazards of the lives of some draws and classes: rate * t^shape, with an early share.
 
     shape (draws,), rate (draws, classes); a share `early` (draws,) fails evenly before the age `early_until`, the
     others live Weibull given survival to it.
@@ -25,17 +26,31 @@ class Hazards:
     rate: FloatArray
     early: FloatArray
     early_until: float
+    scale: FloatArray | None = None  # with deviation: medians of lognormal draws, whose deviation is above 0
+    deviation: FloatArray | None = None
 
     def cumulative(self, ages: FloatArray, classes: IntArray | slice = slice(None)) -> FloatArray:
         """-log S at ages (draws or 1, x, n), x matching the rates of `classes`: (draws, x, n)."""
-        shape, rate = self.shape[:, None, None], self.rate[:, classes][:, :, None]
+        rate = self.rate[:, classes][:, :, None]
         if not self.early_until:
-            with np.errstate(divide="ignore"):
-                logs = np.log(ages)
-            return rate * np.exp(shape * logs)
+            return rate * self._unit(ages)
         until = self.early_until
         first = -np.log1p(-self.early[:, None, None] * np.minimum(ages, until) / until)
-        return first + rate * (np.maximum(ages, until) ** shape - until**shape)
+        return first + rate * (self._unit(np.maximum(ages, until)) - self._unit(np.full((1, 1, 1), until)))
+
+    def _unit(self, ages: FloatArray) -> FloatArray:
+        """Cumulative hazard at rate 1, (draws, x, n)."""
+        with np.errstate(divide="ignore"):
+            logs = np.log(ages)
+        if self.deviation is None or not self.deviation.any():
+            return np.exp(self.shape[:, None, None] * logs)
+        result = np.empty(np.broadcast_shapes(logs.shape, (self.shape.size, 1, 1)))
+        logs = np.broadcast_to(logs, result.shape)
+        lognormal = self.deviation > 0
+        result[~lognormal] = np.exp(self.shape[~lognormal][:, None, None] * logs[~lognormal])
+        place, width = np.log(self.scale[lognormal])[:, None, None], self.deviation[lognormal][:, None, None]
+        result[lognormal] = -log_ndtr((place - logs[lognormal]) / width)
+        return result
 
 
 @dataclass(frozen=True, eq=False)

@@ -11,6 +11,7 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
+from scipy.special import log_ndtr, ndtri_exp
 
 from reliability.stats.errors import InvalidArgument
 from reliability.stats.posterior import PosteriorDraws
@@ -38,20 +39,38 @@ class _Lives:
     rate: FloatArray
     early: FloatArray
     early_until: float
+    scale: FloatArray
+    deviation: FloatArray
 
     def end(self, age: FloatArray, exponential: FloatArray) -> FloatArray:
         """Age at failure of parts aged `age`, given standard exponential variates."""
         until = self.early_until
         if not until:
-            return (age**self.shape + exponential / self.rate) ** (1.0 / self.shape)
+            return self._age_at(self._unit(age) + exponential / self.rate)
         first = -np.log1p(-self.early * np.minimum(age, until) / until)
-        late = np.maximum(age, until) ** self.shape - until**self.shape
+        late = self._unit(np.maximum(age, until)) - self._unit(np.asarray(until))
         target = first + self.rate * late + exponential
         whole = -np.log1p(-self.early)
-        beyond = (np.maximum(target - whole, 0.0) / self.rate + until**self.shape) ** (1.0 / self.shape)
+        beyond = self._age_at(np.maximum(target - whole, 0.0) / self.rate + self._unit(np.asarray(until)))
         with np.errstate(divide="ignore", invalid="ignore"):
             within = until * -np.expm1(-target) / self.early
         return np.where(target < whole, within, beyond)
+
+    def _unit(self, age: FloatArray) -> FloatArray:
+        """Cumulative hazard at rate 1."""
+        weibull = age**self.shape
+        if not self.deviation.any():
+            return weibull
+        with np.errstate(divide="ignore"):
+            place = np.log(age / self.scale) / np.where(self.deviation > 0, self.deviation, 1.0)
+        return np.where(self.deviation > 0, -log_ndtr(-place), weibull)
+
+    def _age_at(self, hazard: FloatArray) -> FloatArray:
+        """Age at which the cumulative hazard at rate 1 is this much."""
+        weibull = hazard ** (1.0 / self.shape)
+        if not self.deviation.any():
+            return weibull
+        return np.where(self.deviation > 0, self.scale * np.exp(-self.deviation * ndtri_exp(-hazard)), weibull)
 
 
 def simulate_counts(
@@ -188,12 +207,20 @@ class _Tally:
 
 
 def _lives(posterior: Any, drawn: PosteriorDraws, labels: list[Any]) -> _Lives:
-    level = np.exp(-drawn.shapes * np.log(drawn.scales))[:, None]
+    level = drawn.levels[:, None]
     if posterior.has_spread:
         distinct = list(dict.fromkeys(labels))
         number = {label: index for index, label in enumerate(distinct)}
         level = level * drawn.for_sites(distinct)[:, [number[label] for label in labels]]
-    return _Lives(drawn.shapes[:, None], level, drawn.early_shares[:, None], drawn.early_until)
+    deviation = np.zeros(len(drawn)) if drawn.deviations is None else drawn.deviations
+    return _Lives(
+        drawn.shapes[:, None],
+        level,
+        drawn.early_shares[:, None],
+        drawn.early_until,
+        drawn.scales[:, None],
+        deviation[:, None],
+    )
 
 
 def _duty(spread: float | tuple[float, float], draws: int, labels: list[Any], rng: np.random.Generator) -> FloatArray:

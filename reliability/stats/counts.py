@@ -213,7 +213,7 @@ def _needs_sites(
 
 def _site_rates(posterior: Posterior, drawn: PosteriorDraws, rows: Rows) -> FloatArray:
     """Hazard level times site factor, (draws, sites)."""
-    level = np.exp(-drawn.shapes * np.log(drawn.scales))
+    level = drawn.levels
     if not posterior.has_spread:
         return np.broadcast_to(level[:, None], (level.size, len(rows.site_labels)))
     return level[:, None] * drawn.for_sites(rows.site_labels)
@@ -235,9 +235,9 @@ def _duty_factors(spread: float | tuple[float, float], draws: int, sites: int, r
 
 def _sharpness(drawn: PosteriorDraws, rates: FloatArray) -> FloatArray:
     """Shape over scale at each draw's hardest site, (draws,): one over the spread of its lives, or their number."""
-    hardest = rates.max(axis=1, initial=0.0)
+    hardest = rates.max(axis=1, initial=0.0) / drawn.levels
     with np.errstate(over="ignore"):
-        return np.maximum(drawn.shapes, 2.5) * np.maximum(hardest, 1e-300) ** (1.0 / drawn.shapes)
+        return np.maximum(drawn.shapes, 2.5) / drawn.scales * np.maximum(hardest, 1e-300) ** (1.0 / drawn.shapes)
 
 
 def _blocks(rows: Rows, sharpness: float, edges: FloatArray, cells: int | None) -> list[Block]:
@@ -289,6 +289,8 @@ def _hazards(drawn: PosteriorDraws, rates: FloatArray, block: Block, chunk: IntA
         rate=rates[chunk][:, block.rows.classes.site],
         early=drawn.early_shares[chunk],
         early_until=drawn.early_until,
+        scale=drawn.scales[chunk],
+        deviation=None if drawn.deviations is None else drawn.deviations[chunk],
     )
 
 

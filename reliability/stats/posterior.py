@@ -12,7 +12,6 @@ log nu): the second axis stays centred on the mass however shape and scale are c
 
 from __future__ import annotations
 
-from collections.abc import Iterable
 from dataclasses import dataclass, field
 from functools import cached_property
 from math import log
@@ -23,42 +22,16 @@ from numpy.typing import NDArray
 
 from reliability.stats.errors import InvalidArgument
 from reliability.stats.lifetimes import Lifetimes
+from reliability.stats.posterior_draws import PosteriorDraws, site_columns
+from reliability.stats.posterior_grid import refocused, resized, systematic, walk
 from reliability.stats.posterior_likelihood import SiteSums, log_likelihood
 
 FloatArray = NDArray[np.float64]
 
-_NEGLIGIBLE = 11.0  # log-weights this far below the peak are outside the mass
+# shapes beyond 40 and below 0.05 belong to no part, powers would overflow; the level is widened as far as it must be
+_LIMITS = ((log(0.05), log(40.0)), (-np.inf, np.inf), (log(1e-3), log(1e3)))
 _COARSE = (17, 15, 7)
 _FINE = (23, 21, 15)
-
-
-@dataclass(frozen=True, eq=False)
-class PosteriorDraws:
-    """Draws of the parameters: shapes, scales, spreads (count,) and a multiplier of the hazard for each known site.
-
-    Part j of site s in draw i lives Weibull(shapes[i], scales[i] * multiplier[i, s]^(-1 / shapes[i])).
-    early_shares (count,) is the chance to fail within `early_until` of fitting, evenly spread; 0 without such a part.
-    """
-
-    shapes: FloatArray
-    scales: FloatArray
-    spreads: FloatArray
-    multipliers: dict[Any, FloatArray]
-    early_shares: FloatArray
-    early_until: float = 0.0
-    _new_site_generator: np.random.Generator = field(default_factory=lambda: np.random.default_rng(0), repr=False)
-
-    def for_sites(self, labels: Iterable[Any]) -> FloatArray:
-        """Multipliers (count, number of labels); a label without history draws from the spread, once for good."""
-        return np.stack([self._multiplier(label) for label in labels], axis=1)
-
-    def _multiplier(self, label: Any) -> FloatArray:
-        if label not in self.multipliers:
-            self.multipliers[label] = _gamma_spread(self.spreads, self._new_site_generator)
-        return self.multipliers[label]
-
-    def __len__(self) -> int:
-        return int(self.shapes.size)
 
 
 @dataclass(frozen=True, eq=False)
@@ -74,6 +47,7 @@ class WeibullPosterior:
     weight: FloatArray
     lifetimes: Lifetimes = field(repr=False)
     spread_step: float = 0.0
+    evidence: float = 0.0  # log, up to the improper level prior: for comparison only
     early_until: float = 0.0
     early_counts: tuple[float, float] = (0.0, 0.0)
 
@@ -92,9 +66,7 @@ class WeibullPosterior:
         if count < 1:
             raise InvalidArgument(f"count is {count}; it must be at least 1.")
         rng = np.random.default_rng() if rng is None else rng
-        edges = np.cumsum(self.weight)
-        wanted = (np.arange(count) + rng.random()) / count * edges[-1]
-        chosen = np.minimum(np.searchsorted(edges, wanted, side="right"), edges.size - 1)
+        chosen = systematic(self.weight, count, rng)
         shapes = np.exp(self.log_shape[chosen])
         levels = self.log_level[chosen]
         # the spread's axis is coarse: spread the points over their cells
@@ -104,7 +76,7 @@ class WeibullPosterior:
             scales=np.exp(-levels / shapes),
             spreads=spreads,
             multipliers=self._site_draws(shapes, levels, spreads, rng),
-            early_shares=self._early_draws(count, rng),
+            early_shares=self.early_draws(count, rng),
             early_until=self.early_until,
             _new_site_generator=rng.spawn(1)[0],
         )
@@ -115,12 +87,10 @@ class WeibullPosterior:
         if not self.has_spread:
             return {}
         sums = SiteSums.from_lifetimes(self.lifetimes)
-        drawn = sums.draw_sites(shapes, levels, spreads, rng)
-        labels = self.lifetimes.site_labels
-        names = labels.tolist() if labels.size else [None]
-        return {name: drawn[:, index] for index, name in enumerate(names)}
+        return site_columns(self.lifetimes, sums.draw_sites(shapes, levels, spreads, rng))
 
-    def _early_draws(self, count: int, rng: np.random.Generator) -> FloatArray:
+    def early_draws(self, count: int, rng: np.random.Generator) -> FloatArray:
+        """Draws of the share that fails early, (count,)."""
         failed, survived = self.early_counts
         if self.early_until == 0:
             return np.zeros(count)
@@ -183,13 +153,9 @@ def log_evidence(lifetimes: Lifetimes, *, log_shape_prior: tuple[float, float] =
     """Log of the marginal likelihood of one Weibull without spread between sites (level prior improper: compare
     only).
     """
-    sums = SiteSums.from_lifetimes(lifetimes, by_site=False)
-    axes, logs = _settled_grid(sums, log_shape_prior, 1.0, False)
-    cell = np.log(axes[0][1] - axes[0][0]) + np.log(axes[1][1] - axes[1][0])
-    peak = logs.max()
     exact = lifetimes.is_exact
     ages = float(lifetimes.weights[exact] @ np.log(lifetimes.durations[exact]))
-    return float(peak + np.log(np.exp(logs - peak).sum()) + cell - ages - np.log(log_shape_prior[1]))
+    return weibull_posterior(lifetimes, log_shape_prior=log_shape_prior).evidence - ages - log(log_shape_prior[1])
 
 
 def _settled_grid(
@@ -199,10 +165,10 @@ def _settled_grid(
     axes = _starting_axes(sums, log_shape_prior, spread_prior, site_spread)
     for _ in range(12):
         weights = _log_weights(sums, axes, log_shape_prior, spread_prior)
-        axes, settled = _refocus(axes, weights)
+        axes, settled = refocused(axes, weights, _LIMITS)
         if settled:
             break
-    axes = [_resized(axis, size) for axis, size in zip(axes, _FINE, strict=True)]
+    axes = [resized(axis, size) for axis, size in zip(axes, _FINE, strict=True)]
     return axes, _log_weights(sums, axes, log_shape_prior, spread_prior)
 
 
@@ -229,18 +195,12 @@ def split_early(lifetimes: Lifetimes, until: float) -> tuple[Lifetimes, tuple[fl
     return late, (failed, survived)
 
 
-def _gamma_spread(spreads: FloatArray, rng: np.random.Generator) -> FloatArray:
-    known = np.maximum(spreads, 1e-6)
-    return np.where(spreads > 0, rng.gamma(1.0 / known, known), 1.0)
-
-
 def _starting_axes(
     sums: SiteSums, log_shape_prior: tuple[float, float], spread_prior: float, site_spread: bool
 ) -> list[FloatArray]:
     centre, deviation = log_shape_prior
     wide = max(4.0 * deviation, 0.7)
-    # shapes beyond 40 and below 0.05 belong to no part; without the limits the powers overflow
-    low, high = max(centre - wide, log(0.05)), min(centre + wide, log(40.0))
+    low, high = max(centre - wide, _LIMITS[0][0]), min(centre + wide, _LIMITS[0][1])
     # expected failures from a hundredth to a hundred times those seen
     levels = np.linspace(-log(100.0), log(100.0), _COARSE[1])
     spreads = np.linspace(log(1e-3), log(10.0 * spread_prior), _COARSE[2]) if site_spread else np.array([-np.inf])
@@ -266,32 +226,6 @@ def _log_weights(
     return np.where(np.isfinite(logs), logs, -np.inf)
 
 
-def _refocus(axes: list[FloatArray], logs: FloatArray) -> tuple[list[FloatArray], bool]:
-    """Axes narrowed to the mass, or widened where an edge still carries weight; True once nothing moves much."""
-    peak = logs.max()
-    focused, settled = [], True
-    for number, axis in enumerate(axes):
-        if axis.size == 1:
-            focused.append(axis)
-            continue
-        profile = logs.max(axis=tuple(other for other in range(3) if other != number)) - peak
-        inside = np.flatnonzero(profile > -_NEGLIGIBLE)
-        step = axis[1] - axis[0]
-        low, high = axis[inside[0]] - step, axis[inside[-1]] + step
-        if number == 0:
-            low, high = max(low, log(0.05)), min(high, log(40.0))
-        elif number == 2:
-            low, high = max(low, log(1e-3)), min(high, log(1e3))
-        # the level axis has no limits: it is widened for as long as an edge carries weight
-        settled &= abs(low - axis[0]) < 1.5 * step and abs(high - axis[-1]) < 1.5 * step
-        focused.append(np.linspace(low, high, axis.size))
-    return focused, settled
-
-
-def _resized(axis: FloatArray, size: int) -> FloatArray:
-    return axis if axis.size == 1 else np.linspace(axis[0], axis[-1], size)
-
-
 def _sorted_points(
     sums: SiteSums,
     axes: list[FloatArray],
@@ -308,24 +242,15 @@ def _sorted_points(
         np.broadcast_to(level[:, :, None], weight.shape),
         np.broadcast_to(log_spread[None, None, :], weight.shape),
     ]
-    # a boustrophedon walk: neighbours on the line are neighbours in the grid, so that a systematic sample is stratified
-    order = _walk(weight.shape)
+    order = walk(weight.shape)
     kept = order[weight.ravel()[order] > 1e-7]
     flat = weight.ravel()[kept]
     return WeibullPosterior(
         *(point.ravel()[kept] for point in points),
         weight=flat / flat.sum(),
         lifetimes=lifetimes,
+        evidence=float(logs.max() + np.log(weight.sum()) + sum(np.log(a[1] - a[0]) for a in axes if a.size > 1)),
         spread_step=float(log_spread[1] - log_spread[0]) if log_spread.size > 1 else 0.0,
         early_until=early_until,
         early_counts=early_counts,
     )
-
-
-def _walk(size: tuple[int, ...]) -> NDArray[np.int64]:
-    index = np.arange(np.prod(size)).reshape(size)
-    index = index.copy()
-    index[1::2] = index[1::2, ::-1]
-    lines = index.reshape(-1, size[2])
-    lines[1::2] = lines[1::2, ::-1]
-    return lines.ravel()

@@ -30,8 +30,8 @@ class SiteSums:
     age_log: FloatArray  # log of age over the greatest, one row a bound (durations, entries, interval bounds)
     age_weight: FloatArray  # signed weight of that bound's power in the site's exposure
     age_site: NDArray[np.int64]
-    exact_log: float  # sum of log age share over exact failures
-    exact_failures: float
+    exact_log: FloatArray  # log of age share of exact failures, and their weights
+    exact_weight: FloatArray
     failures: FloatArray  # failures of each site, intervals included
     low: FloatArray  # interval rows: lower and upper bound as shares of the greatest age
     high: FloatArray
@@ -57,8 +57,8 @@ class SiteSums:
             age_log=age_log,
             age_weight=signed,
             age_site=where,
-            exact_log=float(weight[exact] @ np.log(lifetimes.durations[exact] / greatest)),
-            exact_failures=float(weight[exact].sum()),
+            exact_log=np.log(lifetimes.durations[exact] / greatest),
+            exact_weight=weight[exact],
             failures=np.bincount(site[lifetimes.observed], weight[lifetimes.observed], minlength=sites),
             low=lifetimes.last_good[interval] / greatest,
             high=lifetimes.durations[interval] / greatest,
@@ -66,18 +66,31 @@ class SiteSums:
             interval_site=site[interval],
         )
 
-    def exposures(self, shape: FloatArray) -> FloatArray:
-        """A_s = sum of (age / greatest)^shape less entry's, by site: (shapes, sites)."""
-        powers = np.exp(shape[:, None] * self.age_log) * self.age_weight
+    def levels(self, points: FloatArray, log_level: FloatArray) -> FloatArray:
+        """Log hazard level in units of the greatest age, from log_level (shapes, ...) = -shape log scale."""
+        shape = points.reshape(-1, *(1,) * (log_level.ndim - 1))
+        return log_level + shape * self.log_greatest_age
+
+    def cumulative(self, points: FloatArray, age_log: FloatArray) -> FloatArray:
+        """Cumulative hazard at level 1 of log age shares (n,): age^shape, (shapes, n)."""
+        return np.exp(points[:, None] * age_log)
+
+    def exact_terms(self, points: FloatArray) -> FloatArray:
+        """Sum over exact rows of log(hazard times age) at level 1, (shapes,)."""
+        return np.log(points) * self.exact_weight.sum() + points * (self.exact_weight @ self.exact_log)
+
+    def exposures(self, points: FloatArray) -> FloatArray:
+        """A_s = sum of cumulative hazards at level 1 less those at entry, by site: (shapes, sites)."""
+        powers = self.cumulative(points, self.age_log) * self.age_weight
         starts = np.flatnonzero(np.diff(self.age_site, prepend=-1))
-        totals = np.zeros((shape.size, self.failures.size))
+        totals = np.zeros((len(points), self.failures.size))
         totals[:, self.age_site[starts]] = np.add.reduceat(powers, starts, axis=1)
         return np.maximum(totals, 1e-300)
 
-    def interval_steps(self, shape: FloatArray) -> FloatArray:
-        """d = R^shape - L^shape of each interval row: (shapes, rows)."""
+    def interval_steps(self, points: FloatArray) -> FloatArray:
+        """Cumulative hazard at level 1 within each interval row: (shapes, rows)."""
         with np.errstate(divide="ignore"):
-            top, bottom = shape[:, None] * np.log(self.high), shape[:, None] * np.log(self.low)
+            top, bottom = points[:, None] * np.log(self.high), points[:, None] * np.log(self.low)
         return np.exp(top) * -np.expm1(bottom - top)
 
     def centred_levels(self, shape: FloatArray, offset: FloatArray) -> FloatArray:
@@ -87,15 +100,15 @@ class SiteSums:
         return centre[:, None] + offset[None, :]
 
     def draw_sites(
-        self, shapes: FloatArray, log_levels: FloatArray, spreads: FloatArray, rng: np.random.Generator
+        self, points: FloatArray, log_levels: FloatArray, spreads: FloatArray, rng: np.random.Generator
     ) -> FloatArray:
         """One factor for each draw and site given the rest: Gamma(D + 1/nu, 1/nu + Lambda), (draws, sites).
 
         Interval rows tilt that by their correction: one of twelve candidates is kept by its weight.
         """
         # draws come from a grid: far fewer shapes than draws
-        distinct, which = np.unique(shapes, return_inverse=True)
-        level = log_levels + shapes * self.log_greatest_age
+        distinct, which = np.unique(points, axis=0, return_inverse=True)
+        level = self.levels(points, log_levels)
         expected = np.exp(level)[:, None] * self.exposures(distinct)[which]
         inverse = 1.0 / np.maximum(spreads, 1e-9)[:, None]
         form, rate = self.failures + inverse, inverse + expected
@@ -109,25 +122,27 @@ class SiteSums:
         return np.take_along_axis(candidates, keys.argmax(axis=2)[..., None], axis=2)[..., 0]
 
 
-def log_likelihood(sums: SiteSums, shape: FloatArray, log_level: FloatArray, spread: FloatArray) -> FloatArray:
-    """Log-likelihood less terms without parameters, (shapes, levels, spreads); log_level is (shapes, levels).
+def log_likelihood(sums: SiteSums, points: FloatArray, log_level: FloatArray, spread: FloatArray) -> FloatArray:
+    """Log-likelihood plus the sum of log age over exact rows, (shapes, levels, spreads); log_level is (shapes, levels).
 
     With spread nu > 0: sum over sites of log Gamma(D + 1/nu) - log Gamma(1/nu) - log(nu) / nu
     - (D + 1/nu) log(1/nu + Lambda); without it D log level - Lambda.
     """
-    level = log_level + shape[:, None] * sums.log_greatest_age
-    exposure = sums.exposures(shape)
+    level = sums.levels(points, log_level)
+    exposure = sums.exposures(points)
     total = sums.failures.sum()
-    fixed = sums.exact_failures * np.log(shape) + shape * sums.exact_log
-    step = sums.interval_steps(shape)
+    fixed = sums.exact_terms(points)
+    step = sums.interval_steps(points)
     if sums.low.size:
         fixed = fixed + np.log(np.maximum(step, 1e-300)) @ sums.interval_weight
     common = fixed[:, None] + total * level
     if not spread.any():
         logs = common - np.exp(level) * exposure.sum(axis=1)[:, None]
-        if sums.low.size:
+        if sums.low.size and level.shape[1] == 1:
+            logs = logs + (_correction(step * np.exp(level)) @ sums.interval_weight)[:, None]
+        elif sums.low.size:
             table = CorrectionTable(sums, step, level.min(), level.max(), pooled=True)
-            logs = logs + table.at(level, np.arange(shape.size)[:, None], 0)
+            logs = logs + table.at(level, np.arange(len(points))[:, None], 0)
         return logs[..., None]
     return common[..., None] + _spread_terms(sums, step, level, exposure, spread)
 
@@ -154,16 +169,17 @@ class CorrectionTable:
     """Sum over a site's interval rows of log(sinh(x / 2) / (x / 2)), x = level d, on a grid of log level."""
 
     def __init__(self, sums: SiteSums, step: FloatArray, low: float, high: float, *, pooled: bool) -> None:
-        self._grid = np.linspace(low, high, 40)
+        self._grid = np.linspace(low - 0.1, high + 0.1, 24 if len(step) > 100 else 40)
         sites = 1 if pooled else sums.failures.size
-        sums_by_site = np.zeros((step.shape[0], sites, self._grid.size))
-        weight, where = sums.interval_weight, np.zeros_like(sums.interval_site) if pooled else sums.interval_site
+        where = np.zeros_like(sums.interval_site) if pooled else sums.interval_site
         levels = np.exp(self._grid)
-        for number in range(step.shape[0]):
-            merged, weights, codes = _binned(step[number], weight, where)
-            values = _correction(merged[:, None] * levels) * weights[:, None]
-            np.add.at(sums_by_site[number], codes, values)
-        self._logs = np.log(np.maximum(sums_by_site, 1e-200))
+        by_site = np.zeros((len(step), sites, self._grid.size))
+        for number, row in enumerate(step):
+            merged, weights, codes = _binned(row, sums.interval_weight, where)
+            share = np.zeros((sites, merged.size))
+            share[codes, np.arange(merged.size)] = weights
+            by_site[number] = share @ _correction(merged[:, None] * levels)
+        self._logs = np.log(np.maximum(by_site, 1e-200))
 
     def at(self, level: FloatArray, shape_index: Any, site_index: Any) -> FloatArray:
         """Values at log levels, interpolated on the log scale, where they are almost straight (x^2 / 24 to x / 2)."""
@@ -202,7 +218,7 @@ def _binned(
     """Rows of one site with nearly equal steps (within 5 %) share one: their root mean square, as the leading term
     asks.
     """
-    if step.size < 200:
+    if step.size < 60:
         return step, weight, site
     code = np.rint(np.log(np.maximum(step, 1e-30)) / 0.05).astype(np.int64)
     key = site * 4000 + (code - code.min())

@@ -15,8 +15,7 @@ import numpy as np
 from scipy.special import gammaln
 
 from reliability.stats.counts import CountForecast, forecast_counts
-from reliability.stats.early_failures import early_window
-from reliability.stats.posterior import weibull_posterior
+from reliability.stats.life_posterior import life_posterior
 from reliability.stats.scoring import crps, randomised_pit
 from tests.benchmarks.calibration_fleets import NEW_SITE, Case, Fleet, make_fleet
 
@@ -68,8 +67,7 @@ class Scores:
 
 def forecast(case: Case, fleet: Fleet, rng: np.random.Generator) -> CountForecast:
     """The forecast as the program makes it: early failures looked for, site spread, removals by their rate."""
-    until = early_window(fleet.records)
-    posterior = weibull_posterior(fleet.records, site_spread=True, early_until=until)
+    posterior = life_posterior(fleet.records, site_spread=True)
     unplanned = 0.0 if np.isfinite(case.replace_at) else fleet.removals / fleet.observed_time
     return forecast_counts(
         posterior,
