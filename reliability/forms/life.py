@@ -104,11 +104,10 @@ class LifeForm(forms.Form):
         self.offer("part", [(each.code, each.title) for each in choices.parts])
         self.offer("mode", [(each.code, each.title) for each in choices.modes])
         self.offer("set", [("", "the fleet's records"), *((each.code, f"set {each.code}") for each in choices.sets)])
-        for name, known in (("site", choices.sites), ("part", choices.parts), ("mode", choices.modes)):
-            if len(known) < 2:
-                del self.fields[name]
-        if not choices.sets:
-            del self.fields["set"]
+        known = {"site": choices.sites, "part": choices.parts, "mode": choices.modes}
+        self.shown = {name for name, records in known.items() if len(records) > 1}
+        if choices.sets:
+            self.shown.add("set")
 
     def offer(self, name: str, choices: list[tuple[str, str]]) -> None:
         field: Any = self.fields[name]
@@ -161,6 +160,6 @@ def _of_component(data: Any, choices: Choices) -> Any:
     if not chosen.get("confidence"):
         chosen["confidence"] = COMMON_CONFIDENCE
     for name in ("part", "mode", "set", "site"):
-        codes = [clean_code(value) for value in data.getlist(name)]
+        codes = [clean_code(value) for value in chosen.getlist(name)]
         chosen.setlist(name, [code for code in codes if code not in choices.of_others.get(name, ())])
     return chosen
