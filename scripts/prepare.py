@@ -58,11 +58,10 @@ def prepare(*, demo: bool) -> str:
     find_the_database()
     call_command("check", databases=["default"], stdout=io.StringIO(), no_color=True)  # what is wrong goes to stderr
     migrate()
+    if not demo:
+        refuse_demo_passwords()
     collect_static_files()
-    if demo:
-        return demo_notes()
-    refuse_demo_passwords()
-    return real_notes()
+    return demo_notes() if demo else real_notes()
 
 
 def find_the_database() -> None:
