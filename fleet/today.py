@@ -3,17 +3,20 @@
 from __future__ import annotations
 
 import datetime as dt
+from collections import Counter
 from typing import Any
 
 from django.db.models import Exists, OuterRef
+from django.db.models.functions import Coalesce
 from django.utils import timezone
 
 from fleet.formats import counted
-from fleet.models import Fitting, LooksWrong, Module, ModuleState, Site, SiteKind, Stop
+from fleet.models import FAILURE_REASONS, Fitting, LooksWrong, Module, ModuleState, Site, SiteKind, Stop
 from fleet.rights import CATALOGUE, CORRECT, LOG, may
 
 MOST = 12  # lines shown before “all of them”
 VISITS_WITHIN_DAYS = 7
+WEEKS_BEFORE = 8
 
 
 def stopped_now(request: Any) -> dict[str, Any]:
@@ -41,6 +44,28 @@ def empty_positions(request: Any) -> list[Any]:
         .order_by("code_order")
     )
     return [{"module": module, "position": position} for module, position in rows[: MOST + 1]]
+
+
+def failures_by_week(request: Any, today: dt.date) -> dict[str, Any]:
+    """Failures since Monday beside the weeks before: what was recorded, no estimate."""
+    monday = today - dt.timedelta(days=today.weekday())
+    first = monday - dt.timedelta(weeks=WEEKS_BEFORE)
+    days = (
+        request.seen(Fitting)
+        .standing()
+        .filter(reason__in=FAILURE_REASONS)
+        .annotate(day=Coalesce("failed_on", "removed_on"))
+        .filter(day__gte=first, day__lte=today)
+        .values_list("day", flat=True)
+    )
+    weeks = Counter((day - first).days // 7 for day in days)
+    before = [weeks[number] for number in range(WEEKS_BEFORE)]
+    if not any(before) and not weeks[WEEKS_BEFORE]:
+        return {}
+    now = counted(weeks[WEEKS_BEFORE], "failure")
+    low, high = min(before), max(before)
+    usual = f"{low}" if low == high else f"{low} to {high}"
+    return {"sentence": f"{now} since Monday; {usual} in each of the {WEEKS_BEFORE} weeks before."}
 
 
 def visits_due(request: Any, today: dt.date) -> list[Site]:
@@ -92,5 +117,6 @@ def records_today(request: Any) -> dict[str, Any]:
         "marks": marks,
         "may_settle": may(request.user, CORRECT),
         "lead": sentence(request, stopped["stop_count"], len(marks)),
+        "failures": failures_by_week(request, today),
         "may_log": may(request.user, LOG),
     }
