@@ -13,11 +13,10 @@ from typing import Any
 
 from django.db import transaction
 from django.db.models import Model
-from django.utils import timezone
 
-from fleet.actions.errors import BadValue, NotAllowed, day_words
+from fleet.actions.errors import BadValue, NotAllowed
 from fleet.history import writing
-from fleet.models import DataVersion, EntryKey, Module, Person, Role, Site
+from fleet.models import DataVersion, EntryKey, Module, Person, Role
 from fleet.rights import may, seen_by
 
 USED_KEY = "This entry key was used for another entry. Open the form again."
@@ -55,14 +54,6 @@ def sees(by: Person, record: Model) -> bool:
     if by.all_sites and by.role != Role.BENCH:
         return True
     return bool(seen_by(by, type(record)).filter(pk=record.pk).exists())
-
-
-def not_in_future(day: dt.date | None, *, field: str, site: Site | None = None) -> None:
-    """A day up to today in the site's zone."""
-    now = timezone.now()
-    today = site.day_of(now) if site else (now + dt.timedelta(hours=14)).date()
-    if day is not None and day > today:
-        raise BadValue(f"{day_words(day)} lies in the future. Enter a day up to today.", field=field)
 
 
 @contextmanager

@@ -90,7 +90,8 @@ def first_clash(stay: Any, others: Iterable[Any], *, start: str, end: str, least
 def known_day(given: dt.date | None, *, happened: dt.date | None, today: dt.date, field: str = "known_on") -> dt.date:
     """When the office learned of it: today unless said; never before it happened, never after today."""
     if given is None:
-        return today
+        # Just before midnight a phone's clock may already be in tomorrow.
+        return max(today, happened or today)
     day = clean_day(given, field=field, today=today)
     assert day is not None
     if happened is not None and day < happened:

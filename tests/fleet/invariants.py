@@ -174,16 +174,22 @@ def faces_never_fall() -> Iterator[str]:
     """Within one counter, whatever was struck out or entered late between."""
     for (module,), rows in grouped(standing(Reading), "module_id"):
         for unit in ("strokes", "hours"):
-            shown = [row for row in rows if row[unit] is not None]
-            moments = [instant(row["read_at"]) for row in shown]
-            if len(set(moments)) != len(moments):
-                continue  # two counters read at one moment: their order is told by their serials alone
             counter, last = "", None
-            for row in sorted(shown, key=lambda row: (instant(row["read_at"]), row["id"])):
+            for row in as_read([row for row in rows if row[unit] is not None]):
                 fresh = bool(row["restarts"]) or row["counter"] not in {"", counter}
                 if last is not None and not fresh and row[unit] < last:
                     yield f"reading {row['id']} of module {module}: {unit} fell from {last} to {row[unit]}"
                 last, counter = row[unit], row["counter"] or counter
+
+
+def as_read(rows: list[Row]) -> Iterator[Row]:
+    """Of readings at one moment those of the counter that was running come before those of the next one."""
+    counter = ""
+    for _, together in sorted(grouped([{**row, "moment": instant(row["read_at"])} for row in rows], "moment")):
+        running = counter
+        for row in sorted(together, key=lambda row, now=running: (row["counter"] not in {"", now}, row["id"])):
+            counter = row["counter"] or counter
+            yield row
 
 
 def accumulated_never_falls() -> Iterator[str]:
