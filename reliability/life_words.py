@@ -110,7 +110,12 @@ def curves_note(document: Document, *, bands: bool, fits: bool) -> str:
     if not any(group["failures"] for group in document["groups"]):
         notes.append("Without a failure no band can be drawn; the bounds below say what is proven.")
     elif bands:
-        notes.append(f"Tint: {percent(document['confidence'])} band (log–log), age by age.")
+        wider = (
+            ", wider where sites differ"
+            if any("sites" in group["curve"]["band"] for group in document["groups"])
+            else ""
+        )
+        notes.append(f"Tint: {percent(document['confidence'])} band (log–log{wider}), age by age.")
     else:
         notes.append("Bands are left out here to keep the lines apart; they stand in the table below.")
     if fits:

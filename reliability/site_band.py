@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
@@ -9,12 +10,13 @@ if TYPE_CHECKING:
     from reliability.stats.lifetimes import Lifetimes
 
 FEWEST_SITES = 5  # with fewer, Student's factor makes the band say nothing
-NAME = "log-log, and wider where drawing whole sites again says so"
+LOG_LOG = "log-log"
+WITH_SITES = "log-log, wider where whole sites drawn again say so"
 NONE_FAILED = 1e-4  # chance that no site with a failure is drawn: above it the draws tell nothing yet
 
 
-def widened(curve: KaplanMeierCurve, lifetimes: Lifetimes, minimum_at_risk: float) -> tuple[Any, Any, bool]:
-    """Lower and upper limits at the curve's ages, and whether sites were drawn again.
+def widened(curve: KaplanMeierCurve, lifetimes: Lifetimes, minimum_at_risk: float = 0) -> tuple[KaplanMeierCurve, str]:
+    """The curve of these lives with limits that allow for sites, and the name of its band.
 
     Before so many sites have seen a failure that hardly any draw is without one, the log–log band stands alone.
     """
@@ -25,18 +27,21 @@ def widened(curve: KaplanMeierCurve, lifetimes: Lifetimes, minimum_at_risk: floa
 
     sites = len(lifetimes.site_labels)
     if sites < FEWEST_SITES or not len(curve.times):
-        return curve.lower, curve.upper, False
+        return curve, LOG_LOG
+    level = curve.confidence_level
     try:
-        band = site_bootstrap_band(lifetimes, confidence_level=curve.confidence_level, minimum_at_risk=minimum_at_risk)
+        band = site_bootstrap_band(lifetimes, confidence_level=level, minimum_at_risk=minimum_at_risk)
     except StatisticsError:
-        return curve.lower, curve.upper, False
+        return curve, LOG_LOG
     usable = (1.0 - sites_with_a_failure(lifetimes, curve.times) / sites) ** sites < NONE_FAILED
     usable &= curve.survival > 0.0  # at the end the draws have nothing left to vary
+    if not usable.any():
+        return curve, LOG_LOG
     lower = np.where(usable, np.minimum(curve.lower, band.lower), curve.lower)
     upper = np.where(usable, np.maximum(curve.upper, band.upper), curve.upper)
     # a survival curve falls, and so do its limits: where the site band sets in the wider of two neighbours holds
-    falling = np.minimum.accumulate(lower), np.maximum.accumulate(upper[::-1])[::-1]
-    return *falling, bool(usable.any())
+    lower, upper = np.minimum.accumulate(lower), np.maximum.accumulate(upper[::-1])[::-1]
+    return replace(curve, lower=lower, upper=upper), WITH_SITES
 
 
 def sites_with_a_failure(lifetimes: Lifetimes, ages: Any) -> Any:

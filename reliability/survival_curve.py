@@ -14,7 +14,7 @@ MOST_CELLS = 3000  # beyond, Turnbull's estimate takes longer than a page may
 WHOLE = 1.0  # the least age a life can gain on a clock of whole days or strokes
 KAPLAN_MEIER = "Kaplan–Meier, Greenwood"
 TURNBULL = "Turnbull"
-WIDE_BAND = "log-log, each failure as early as it may have been below and as late above"
+WIDE_BAND = "each failure as early as it may have been below and as late above"
 
 
 @dataclass(frozen=True, eq=False)
@@ -44,22 +44,25 @@ class SurvivalCurve:
 
 def survival_curve(lifetimes: Lifetimes, confidence: float) -> SurvivalCurve:
     """With late entries the curve starts where at least five were under observation."""
+    from reliability.site_band import widened
     from reliability.stats.errors import UndefinedEstimate
     from reliability.stats.kaplan_meier import kaplan_meier
 
     notes: list[str] = []
-    exact = _failing_at(lifetimes, early=False)
+    exact, minimum = _failing_at(lifetimes, early=False), MINIMUM_AT_RISK
     try:
-        curve = kaplan_meier(exact, confidence, minimum_at_risk=MINIMUM_AT_RISK)
+        curve = kaplan_meier(exact, confidence, minimum_at_risk=minimum)
     except UndefinedEstimate:
         notes.append(f"Fewer than {MINIMUM_AT_RISK} parts were ever under observation at one age.")
+        minimum = 0
         curve = kaplan_meier(exact, confidence)
     start = curve.given_survival_to
     if start > 0:
         notes.append(f"Records began late: the curve tells the chance to outlive an age given survival to {start:g}.")
     if lifetimes.has_intervals:
         return _with_intervals(_from_start(lifetimes, start), confidence, notes)
-    return _from_kaplan_meier(curve, KAPLAN_MEIER, "log-log", notes)
+    curve, band = widened(curve, exact, minimum)
+    return _from_kaplan_meier(curve, KAPLAN_MEIER, band, notes)
 
 
 def _from_start(lifetimes: Lifetimes, start: float) -> Lifetimes:
@@ -77,6 +80,7 @@ def _from_start(lifetimes: Lifetimes, start: float) -> Lifetimes:
         entries=np.maximum(kept.entries, start),
         last_good=np.maximum(kept.last_good, start),
         weights=kept.weights,
+        sites=kept.sites,
     )
 
 
@@ -104,13 +108,15 @@ def _with_intervals(lifetimes: Lifetimes, confidence: float, notes: list[str]) -
     """
     import numpy as np
 
+    from reliability.site_band import widened
     from reliability.stats.errors import StatisticsError
     from reliability.stats.kaplan_meier import kaplan_meier, number_at_risk
     from reliability.stats.turnbull import turnbull
 
     start = float(lifetimes.entries.min())
-    early, late = (
-        kaplan_meier(_failing_at(lifetimes, early=end), confidence, given_survival_to=start) for end in (True, False)
+    ends = [_failing_at(lifetimes, early=end) for end in (True, False)]
+    (early, _), (late, band) = (
+        widened(kaplan_meier(lives, confidence, given_survival_to=start), lives) for lives in ends
     )
     found = _found_later(round(float(lifetimes.weights[lifetimes.is_interval].sum())))
     try:
@@ -135,7 +141,7 @@ def _with_intervals(lifetimes: Lifetimes, confidence: float, notes: list[str]) -
         given_survival_to=start,
         last_age=float(lifetimes.durations.max()),
         method=method,
-        band=WIDE_BAND,
+        band=f"{band}; {WIDE_BAND}",
         notes=[*notes, note],
     )
 
@@ -163,7 +169,9 @@ def _failing_at(lifetimes: Lifetimes, *, early: bool) -> Lifetimes:
         inside = lifetimes.is_interval
         first = np.minimum(lifetimes.last_good[inside] + WHOLE, durations[inside])
         durations[inside] = np.where(first > lifetimes.entries[inside], first, durations[inside])
-    return Rows(durations, lifetimes.observed, entries=lifetimes.entries, weights=lifetimes.weights)
+    return Rows(
+        durations, lifetimes.observed, entries=lifetimes.entries, weights=lifetimes.weights, sites=lifetimes.sites
+    )
 
 
 def _levels(curve: KaplanMeierCurve, levels: Any, ages: Any) -> Any:

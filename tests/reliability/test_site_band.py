@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from reliability.site_band import FEWEST_SITES, sites_with_a_failure, widened
+from reliability.site_band import FEWEST_SITES, LOG_LOG, WITH_SITES, sites_with_a_failure, widened
 from reliability.stats.kaplan_meier import kaplan_meier
 from reliability.stats.lifetimes import Lifetimes
 from reliability.stats.site_bootstrap import site_bootstrap_band
@@ -23,10 +23,11 @@ def at_sites(sites: int, factor: float, seed: int = 3) -> Lifetimes:
 def test_where_sites_differ_the_band_is_that_of_whole_sites() -> None:
     lives = at_sites(12, 4.0)
     curve = kaplan_meier(lives)
-    lower, upper, drawn = widened(curve, lives, 0)
+    wide, name = widened(curve, lives)
+    lower, upper = wide.lower, wide.upper
     middle = len(curve.times) // 2
     band = site_bootstrap_band(lives)
-    assert drawn
+    assert name == WITH_SITES
     assert (lower[middle], upper[middle]) == pytest.approx((band.lower[middle], band.upper[middle]), abs=0.01)
     assert upper[middle] - lower[middle] > 2 * (curve.upper[middle] - curve.lower[middle])
 
@@ -35,7 +36,8 @@ def test_it_is_nowhere_narrower_and_falls_as_a_survival_does() -> None:
     for factor in (1.0, 3.0):
         lives = at_sites(8, factor)
         curve = kaplan_meier(lives)
-        lower, upper, _ = widened(curve, lives, 0)
+        wide, _ = widened(curve, lives)
+        lower, upper = wide.lower, wide.upper
         assert (lower <= curve.lower).all()
         assert (upper >= curve.upper).all()
         assert (np.diff(lower) <= 0).all()
@@ -47,17 +49,14 @@ def test_the_first_failures_are_not_drowned() -> None:
     lives = at_sites(12, 3.0)
     curve = kaplan_meier(lives)
     assert site_bootstrap_band(lives).lower[0] < 0.01
-    lower, _, _ = widened(curve, lives, 0)
-    assert lower[0] == curve.lower[0] > 0.9
+    wide, _ = widened(curve, lives)
+    assert wide.lower[0] == curve.lower[0] > 0.9
 
 
 def test_few_sites_keep_the_band_of_single_lives() -> None:
     lives = at_sites(FEWEST_SITES - 1, 3.0)
     curve = kaplan_meier(lives)
-    lower, upper, drawn = widened(curve, lives, 0)
-    assert not drawn
-    assert lower is curve.lower
-    assert upper is curve.upper
+    assert widened(curve, lives) == (curve, LOG_LOG)
 
 
 def test_sites_that_have_seen_a_failure_are_counted() -> None:
