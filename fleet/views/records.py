@@ -30,7 +30,7 @@ COLUMNS = [
 
 @needs(CATALOGUE)
 def records(request: Any) -> HttpResponse:
-    form = ImportForm(request.POST or None, request.FILES or None) if request.method == "POST" else ImportForm()
+    form = ImportForm(request.POST, request.FILES) if request.method == "POST" else ImportForm()
     if request.method == "POST" and not request.user.all_sites:
         form.add_error(None, ALL_SITES_NEEDED)
     if request.method == "POST" and form.is_valid():
@@ -82,7 +82,7 @@ def export_form(request: Any, data: Any = None) -> ExportForm:
 
 
 def page(request: Any, form: ImportForm, export_out: ExportForm, status: int) -> HttpResponse:
-    works = request.seen(Work).filter(kind__in=KINDS).select_related("person").order_by("-made_at")[:SHOWN]
+    works = request.seen(Work).filter(kind__in=KINDS).select_related("person").order_by("-made_at")
     return render(
         request,
         "records/page.html",
@@ -90,7 +90,7 @@ def page(request: Any, form: ImportForm, export_out: ExportForm, status: int) ->
             "form": form,
             "export_form": export_out,
             "columns": COLUMNS,
-            "rows": [{"cells": line(work)} for work in works],
+            "rows": [{"cells": line(work)} for work in works.defer("result", "arguments")[:SHOWN]],
             "file_columns": [
                 {"key": "file", "label": "File"},
                 {"key": "columns", "label": "Columns (needed ones first)"},
