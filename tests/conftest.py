@@ -11,12 +11,19 @@ from collections.abc import Iterator
 from typing import Any
 from urllib.parse import urlsplit
 
+import hypothesis
 import pytest
 from django.conf import settings
 
 CHROMIUM = "/usr/bin/chromium"
 # Playwright's own event loop would make Django refuse every query in a browser test.
 os.environ.setdefault("DJANGO_ALLOW_ASYNC_UNSAFE", "1")
+
+# The same cases in every run: what passed here passes there. HALFNUT_EXPLORE=1 looks for new ones.
+hypothesis.settings.register_profile(
+    "halfnut", deadline=None, derandomize=not os.environ.get("HALFNUT_EXPLORE"), print_blob=True
+)
+hypothesis.settings.load_profile("halfnut")
 
 
 def on_postgresql() -> bool:
