@@ -27,6 +27,7 @@ DRAWS = 400
 # reader of a page wait for all posteriors.
 FRESH_FOR = dt.timedelta(hours=6)
 TAIL = 0.025
+LEAST_TOLD = 0.01  # below this, a chance is told in words
 
 
 @dataclass(frozen=True)
@@ -71,6 +72,8 @@ def chance_of(design: dict[str, Any], age: float, more: float) -> Chance:
     shares = -np.expm1(-hazard)
     lower, upper = (float(end) for end in np.quantile(shares, [TAIL, 1 - TAIL]))
     words = ""
+    if upper < LEAST_TOLD:
+        words = f"under {percent(LEAST_TOLD)}"
     if design["failures"] == 0:
         # No failure yet: a mean would rest on the prior alone, the upper end on the parts that held.
         words = f"under {percent(math.ceil(upper * 100) / 100)}, no failure seen yet"

@@ -10,7 +10,7 @@ from django.shortcuts import render
 from django.urls import reverse
 
 from fleet.formats import long_day, moment
-from fleet.models import ModuleState
+from fleet.models import ModuleState, SiteKind
 from fleet.module_page import FittedNow, ModulePage
 from fleet.rights import CATALOGUE, CHANCES, LOG, SEE, may, needs
 from fleet.views.module_file import as_file
@@ -48,8 +48,9 @@ def module(request: Any, tag: str) -> HttpResponse:
 
 
 def with_chances(request: Any, page: ModulePage, fitted: list[FittedNow]) -> dict[str, Any]:
-    """Gives each running part of a running module its chance of failing before the next planned visit."""
-    if not may(request.user, CHANCES) or page.module.state != ModuleState.RUNNING:
+    """Gives each running part its chance of failing before the next planned visit; a rig is no field."""
+    on_a_rig = page.standing.site is not None and page.standing.site.kind == SiteKind.RIG
+    if not may(request.user, CHANCES) or page.module.state != ModuleState.RUNNING or on_a_rig:
         return {}
     visit = next_visit(page)
     days = (visit - page.today).days if visit else WITHOUT_PLAN_DAYS

@@ -59,6 +59,12 @@ def test_without_a_failure_only_the_upper_end_is_told():
     assert words.replace("\u00a0", " ") == "under 1 %, no failure seen yet"
 
 
+def test_what_lies_wholly_under_one_percent_is_told_in_words():
+    assert chance_of(design(scale=1e4), age=10.0, more=40.0).words.replace("\u00a0", " ") == "under 1 %"
+    spread = {"shapes": [2.0] * 40, "scales": [100.0 * (1 + index) for index in range(40)], "failures": 5}
+    assert chance_of(spread, age=10.0, more=40.0).words == ""
+
+
 def test_a_tiny_chance_of_a_huge_age_is_still_a_number():
     chance = chance_of(design(shape=8.0, scale=1e6), age=1e3, more=1.0)
     assert 0 <= chance.lower <= chance.estimate <= chance.upper < 1e-9
@@ -144,6 +150,12 @@ def test_a_module_that_stands_still_has_none(weir):
     answer = page(weir.manager)
     assert "chances_shown" not in answer.context
     assert all(row.chance is None for row in answer.context["fitted"])
+
+
+def test_a_test_stand_has_none(weir):
+    weir.site.kind = "rig"
+    weir.site.save()
+    assert all(row.chance is None for row in page(weir.manager).context["fitted"])
 
 
 def test_a_part_of_unknown_age_has_none(weir):
