@@ -40,7 +40,12 @@ class Maximum:
 
 
 def maximise(
-    evaluate: Evaluate, start: FloatArray, lower: FloatArray, upper: FloatArray, largest_step: FloatArray
+    evaluate: Evaluate,
+    start: FloatArray,
+    lower: FloatArray,
+    upper: FloatArray,
+    largest_step: FloatArray,
+    most_iterations: int = MAXIMUM_ITERATIONS,
 ) -> Maximum:
     """Maximum of a smooth function of p parameters inside a box, by Newton steps with halving.
 
@@ -49,7 +54,7 @@ def maximise(
     """
     point = np.clip(np.asarray(start, dtype=float), lower, upper)
     value, gradient, hessian = evaluate(point)
-    for iteration in range(1, MAXIMUM_ITERATIONS + 1):
+    for iteration in range(1, most_iterations + 1):
         step = climbing_step(gradient, hessian)
         decrement = 0.5 * float(gradient @ step)
         # shortened as a whole, also at the edge of the box: bending it would leave a narrow ridge
@@ -66,7 +71,7 @@ def maximise(
         pressed = ((point <= lower) & (gradient < 0)) | ((point >= upper) & (gradient > 0))
         if pressed.any():
             return _ended(point, value, gradient, hessian, iteration, False, lower, upper)
-    return _ended(point, value, gradient, hessian, MAXIMUM_ITERATIONS, False, lower, upper)
+    return _ended(point, value, gradient, hessian, most_iterations, False, lower, upper)
 
 
 def maximise_plane(
@@ -75,6 +80,7 @@ def maximise_plane(
     lower: tuple[float, float],
     upper: tuple[float, float],
     largest_step: tuple[float, float],
+    most_iterations: int = MAXIMUM_ITERATIONS,
 ) -> Maximum:
     """`maximise` for a function of two numbers that returns six."""
 
@@ -82,7 +88,7 @@ def maximise_plane(
         value, by_x, by_y, xx, xy, yy = evaluate(float(point[0]), float(point[1]))
         return value, np.array([by_x, by_y]), np.array([[xx, xy], [xy, yy]])
 
-    return maximise(at, np.array(start), np.array(lower), np.array(upper), np.array(largest_step))
+    return maximise(at, np.array(start), np.array(lower), np.array(upper), np.array(largest_step), most_iterations)
 
 
 def maximise_line(

@@ -8,10 +8,12 @@ import numpy as np
 import pytest
 from scipy import integrate, special
 
-from reliability.stats.errors import InvalidArgument, NoSpreadInFailures, TooFewFailures
+from reliability.stats.errors import InvalidArgument, NoSpreadInFailures, TooFewFailures, UndefinedEstimate
 from reliability.stats.lifetimes import Lifetimes
 from reliability.stats.site_likelihood import site_likelihood
+from reliability.stats.site_quadrature import _series_sums, site_intervals
 from reliability.stats.weibull_fit import fit_weibull
+from reliability.stats.weibull_likelihood import IntervalRows, interval_row_hazards, interval_row_terms
 from tests.stats import naive
 
 
@@ -145,6 +147,25 @@ def test_parts_anywhere_live_longer_at_the_median_than_the_typical_site():
     assert (fit.marginal_survival(ages)[1:] > fit.survival(ages)[1:]).all()
 
 
+@pytest.mark.parametrize("largest", [0.02, 0.9, 1.9])
+def test_sums_of_powers_stand_for_rows_with_small_hazards(largest):
+    # up to the reach of the series both ways agree, row by row and added up
+    rng = np.random.default_rng(15)
+    right = rng.uniform(20.0, 60.0, 9)
+    lives = Lifetimes(right, [1] * 9, last_good=right - rng.uniform(1.0, 15.0, 9), sites=[0] * 4 + [1] * 5)
+    intervals = site_intervals(lives, math.log(40.0))
+    shape, hazards = 1.7, interval_row_hazards(intervals.rows, 1.7, 0.0)
+    level = math.log(largest) - float(hazards[0].max()) - 0.4
+    u = np.linspace(-2.0, 0.4, 7)[None, :] * np.ones((2, 1))
+    log_difference, ratio, curl = interval_row_hazards(intervals.rows, shape, level)
+    series = _series_sums(intervals, np.ones(9, dtype=bool), log_difference, ratio, curl, u)
+    rows = intervals.rows
+    columns = [column[:, None] for column in (rows.log_right, rows.log_ratio, rows.weights)]
+    exact = interval_row_terms(IntervalRows(*columns), shape, level + u[intervals.site])
+    for term, sums in zip(exact, series, strict=True):
+        assert sums == pytest.approx(np.stack([term[:4].sum(axis=0), term[4:].sum(axis=0)]), abs=1e-7, rel=1e-7)
+
+
 def test_a_stronger_prior_pulls_the_sites_together():
     lives = site_lives(np.random.default_rng(11), 0.5, sites=5, each=6)
     usual, strong = (fit_weibull(lives, site_spread=True, spread_prior=prior) for prior in (1.0, 0.05))
@@ -194,6 +215,9 @@ def test_what_cannot_be_fitted_says_what_to_do():
         fit_weibull(Lifetimes([5, 6], [0, 0], sites=["a", "b"]), site_spread=True)
     with pytest.raises(NoSpreadInFailures):
         fit_weibull(Lifetimes([5, 5], [1, 1], sites=["a", "b"]), site_spread=True)
+    each_its_own_age = Lifetimes([7, 9, 1, 9], [1] * 4, last_good=[6, 5, 0, 8], sites=list("bbac"), weights=1e4)
+    with pytest.raises(UndefinedEstimate, match="cannot be told apart"):
+        fit_weibull(each_its_own_age, site_spread=True)
     with pytest.raises(InvalidArgument, match="prior mean of the spread is 0"):
         fit_weibull(Lifetimes([5, 6], [1, 1], sites=["a", "b"]), site_spread=True, spread_prior=0)
 
