@@ -13,15 +13,17 @@ from fleet.formats import counted
 from fleet.models import ClockPoint, Component, Fitting, Part, PartState, Placement, SiteKind
 
 NO_PLACE = "no place"
-MOST_STEPS = 20  # of a chain of superseding parts
+LATELY_DAYS = 120
+FEWEST_LATELY = 3  # fittings at a site that show what it fits now
 
 
 class RunningRow(NamedTuple):
-    """Equal running parts: age now and use a day in the clock's unit, where they stand, how many."""
+    """Equal running parts: age now and use a day in the clock's unit, what follows them, where, how many."""
 
     age: float
     a_day: float
     part: str
+    needed: str  # the design that goes in when it fails
     site: str
     type: str
     count: int
@@ -35,7 +37,6 @@ class RunningParts:
     clock: str
     as_of: dt.date
     rows: list[RunningRow]
-    replaced_by: dict[str, str]  # for each part, the design that goes in when it fails
     left_out: list[tuple[str, int]] = field(default_factory=list)
     notes: list[str] = field(default_factory=list)
 
@@ -62,7 +63,7 @@ def running_parts(component: Component, *, as_of: dt.date, sites: list[str] | No
             continue
         lower_bound += not known
         found.append((age, _pace(row), row["part_code"], row["site_code"] or NO_PLACE, row["type_code"]))
-    rows, guessed = _with_pace(found, component.clock)
+    rows, guessed = _with_pace(found, component.clock, Replacements(component, as_of))
     notes = []
     if lower_bound:
         one, many = "part whose fitting day is not known counts", "parts whose fitting day is not known count"
@@ -76,7 +77,6 @@ def running_parts(component: Component, *, as_of: dt.date, sites: list[str] | No
         clock=component.clock,
         as_of=as_of,
         rows=rows,
-        replaced_by=replacements(component),
         left_out=sorted(left_out.items()),
         notes=notes,
     )
@@ -146,7 +146,9 @@ def _pace(row: dict[str, Any]) -> float | None:
     return (row["after"] - row["before"]) / (row["after_day"] - row["before_day"]) or None
 
 
-def _with_pace(found: list[tuple[float, float | None, str, str, str]], clock: str) -> tuple[list[RunningRow], int]:
+def _with_pace(
+    found: list[tuple[float, float | None, str, str, str]], clock: str, replacements: Replacements
+) -> tuple[list[RunningRow], int]:
     """Equal parts as one row; who has no pace takes the median of the site, else of all."""
     if clock == "days":
         found = [(age, 1.0, part, site, kind) for age, _, part, site, kind in found]
@@ -155,12 +157,12 @@ def _with_pace(found: list[tuple[float, float | None, str, str, str]], clock: st
         if pace is not None:
             by_site[site].append(pace)
     everywhere = _median([pace for paces in by_site.values() for pace in paces])
-    counts: Counter[tuple[float, float, str, str, str]] = Counter()
+    counts: Counter[tuple[float, float, str, str, str, str]] = Counter()
     guessed = 0
     for age, pace, part, site, kind in found:
         guessed += pace is None
         use = pace if pace is not None else _median(by_site[site]) or everywhere
-        counts[(round(age, 1), float(f"{use:.4g}"), part, site, kind)] += 1
+        counts[(round(age, 1), float(f"{use:.4g}"), part, replacements.of(part, site), site, kind)] += 1
     rows = [RunningRow(*key, count) for key, count in sorted(counts.items())]
     return rows, guessed
 
@@ -170,20 +172,36 @@ def _median(values: list[float]) -> float:
     return ordered[len(ordered) // 2] if ordered else 0.0
 
 
-def replacements(component: Component) -> dict[str, str]:
-    """For each part the current design at the end of its chain of superseding parts; itself where there is none."""
+class Replacements:
+    """Which design goes in when a part fails: what its site fitted lately, else the end of the chain of designs."""
+
+    def __init__(self, component: Component, as_of: dt.date) -> None:
+        self.chains = chains_of(component)
+        self.lately: dict[str, Counter[str]] = defaultdict(Counter)
+        since = as_of - dt.timedelta(days=LATELY_DAYS)
+        fitted = Fitting.objects.standing().filter(part__component=component, fitted_on__gt=since, fitted_on__lte=as_of)
+        for site, part in fitted.values_list("clock__site__code", "part__code"):
+            self.lately[site or NO_PLACE][part] += 1
+
+    def of(self, part: str, site: str) -> str:
+        chain = self.chains[part]
+        counts = self.lately[site]
+        best = max(chain, key=lambda each: (counts[each], chain.index(each)))
+        return best if counts[best] >= FEWEST_LATELY else chain[-1]
+
+
+def chains_of(component: Component) -> dict[str, list[str]]:
+    """For each part itself and the current designs that supersede it, one after the other."""
     parts = {part.pk: part for part in Part.objects.filter(component=component)}
     newer = {
         part.supersedes_id: part
         for part in sorted(parts.values(), key=lambda part: part.code_order)
         if part.state == PartState.CURRENT and part.supersedes_id
     }
-    chosen = {}
+    chains = {}
     for part in parts.values():
-        last = part
-        for _ in range(MOST_STEPS):
-            if last.pk not in newer:
-                break
-            last = newer[last.pk]
-        chosen[part.code] = last.code
-    return chosen
+        chain = [part]
+        while chain[-1].pk in newer and newer[chain[-1].pk] not in chain:
+            chain.append(newer[chain[-1].pk])
+        chains[part.code] = [each.code for each in chain]
+    return chains

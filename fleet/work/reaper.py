@@ -13,6 +13,7 @@ from django_tasks import TaskResultStatus, task_backends
 from django_tasks.exceptions import TaskResultDoesNotExist
 
 from fleet.models import Work, WorkState
+from fleet.work.daily import enqueue_due
 from fleet.work.enqueue import send
 from fleet.work.fence import change_state
 
@@ -119,6 +120,7 @@ class Reaper:
             while True:
                 try:
                     reap()
+                    enqueue_due()
                 except DatabaseError as error:
                     logger.warning("the reaper could not look round: %s", error)
                     connection.close()

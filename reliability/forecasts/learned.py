@@ -35,14 +35,14 @@ class Learned:
         return everything
 
     def posterior(self, part: str) -> WeibullPosterior | None:
-        """None where the component has no life on record at all."""
+        """None where the component has no life on record at all; with two or more sites they may differ."""
         from reliability.stats.posterior import weibull_posterior
 
         if part not in self._posteriors:
             lifetimes = self.lifetimes(part)
             if lifetimes is None:
                 return None
-            self._posteriors[part] = weibull_posterior(lifetimes)
+            self._posteriors[part] = weibull_posterior(lifetimes, site_spread=len(lifetimes.site_labels) > 1)
         return self._posteriors[part]
 
     def failures(self, part: str | None = None) -> int:

@@ -1,7 +1,9 @@
 """Failures and parts used in a coming stretch of days, from the records: the document of the forecast.
 
-Each design of a component has its own posterior from its own lives; a part that fails is followed by the current
-design at the end of its chain. Removals for other reasons end a life too. Counts: `reliability.stats.counts`.
+Each design of a component has its own posterior from its own lives, with what sites differ in; a part that fails is
+followed by the design that its site fits now. Removals for other reasons end a life too. Where whole weeks are asked
+for, the count begins a whole number of weeks before them: at most three days from the as-of day, with the ages of that
+day; on a grid of weeks it costs a tenth. Counts: `reliability.stats.counts`.
 """
 
 from __future__ import annotations
@@ -28,7 +30,8 @@ if TYPE_CHECKING:
 BANDS = (0.5, 0.8, 0.95)
 FEW_FAILURES, MANY_DRAWS, FEW_DRAWS = 20, 400, 150
 AGE_CELLS = 60  # ages are told apart to this share of the typical life
-PACE_STEP = 0.06  # paces are told apart to this share
+PACE_STEP = 0.12  # paces are told apart to this share
+NEAR_DAYS = 3
 GROUPINGS = ("part", "needed", "site", "type")
 
 
@@ -45,8 +48,14 @@ class Question:
 
     @property
     def gap(self) -> int:
-        """Days between the as-of day and the first day counted."""
-        return (self.begin - self.as_of).days
+        """Days between the start of the count and the first day counted."""
+        days = (self.begin - self.as_of).days
+        return (days + NEAR_DAYS) // WEEK * WEEK if self.days % WEEK == 0 else days
+
+    @property
+    def shift(self) -> int:
+        """Days by which the start of the count lies after the as-of day; negative: before it."""
+        return (self.begin - self.as_of).days - self.gap
 
     @property
     def span(self) -> int:
@@ -99,11 +108,11 @@ def forecast_document(question: Question, *, bands: Sequence[float] = BANDS) -> 
     )
     learned = Learned(lives(question.component, by="part", as_of=question.as_of))
     tallies = Tallies([[] for _ in week_starts(question.days)[1:]])
-    by_part: dict[str, list[RunningRow]] = defaultdict(list)
+    pairs: dict[tuple[str, str], list[RunningRow]] = defaultdict(list)
     for row in running.rows:
-        by_part[row.part].append(row)
-    for part, rows in by_part.items():
-        count_part(question, learned, running.replaced_by[part], part, rows, tallies)
+        pairs[row.part, row.needed].append(row)
+    for (part, needed), rows in sorted(pairs.items()):
+        count_part(question, learned, needed, part, rows, tallies)
     if running.rows and learned.found.lifetimes is None:
         learned.warnings.append("No life is on record yet, so nothing can be expected. Log what goes in and out first.")
     return written(question, running, learned, tallies, bands)
@@ -112,15 +121,17 @@ def forecast_document(question: Question, *, bands: Sequence[float] = BANDS) -> 
 def count_part(
     question: Question, learned: Learned, needed: str, part: str, rows: list[RunningRow], tallies: Tallies
 ) -> None:
-    """Counts the positions that hold one design now."""
+    """Counts the positions that hold one design now and get another (or the same) when it fails."""
     posterior = learned.posterior(part)
     if posterior is None:
         return
     following = learned.posterior(needed) if needed != part else None
     scale = typical_life(posterior)
-    merged = merge_rows(rows, scale / AGE_CELLS if scale else 1.0)
+    merged = merge_rows(rows, scale / AGE_CELLS if scale else 1.0, question.shift)
     rate = learned.other_removals(part)
     few = min(learned.failures(part), learned.failures(needed)) < FEW_FAILURES
+
+    spread = posterior.has_spread or (following is not None and following.has_spread)
 
     def count(windows: list[int], group_window: int | None, label: str | None) -> CountForecast:
         import numpy as np
@@ -132,6 +143,9 @@ def count_part(
             np.array([row.age for row in merged]),
             np.array([row.a_day * question.span for row in merged]),
             weights=np.array([row.count for row in merged], dtype=float),
+            sites=[row.site for row in merged]
+            if posterior.has_spread or (following and following.has_spread)
+            else None,
             groups=[getattr(row, label) for row in merged] if label else None,
             windows=windows,
             group_window=group_window,
@@ -166,15 +180,15 @@ def typical_life(posterior: Any) -> float:
     return float(np.median(posterior.draws(50, np.random.default_rng(0)).scales))
 
 
-def merge_rows(rows: list[RunningRow], cell: float) -> list[RunningRow]:
-    """Rows of about equal age and pace as one, so that the cost grows with the number of distinct ages."""
+def merge_rows(rows: list[RunningRow], cell: float, shift: int = 0) -> list[RunningRow]:
+    """Rows of about equal age (`shift` days later) and pace as one: the cost grows with the number of distinct ages."""
     merged: dict[tuple[Any, ...], int] = defaultdict(int)
     for row in rows:
         if row.a_day <= 0:
             continue
-        age = round(row.age / cell) * cell
+        age = round(max(0.0, row.age + shift * row.a_day) / cell) * cell
         pace = math.exp(round(math.log(row.a_day) / PACE_STEP) * PACE_STEP)
-        merged[age, pace, row.part, row.site, row.type] += row.count
+        merged[age, pace, row.part, row.needed, row.site, row.type] += row.count
     return [RunningRow(*key, count) for key, count in sorted(merged.items())]
 
 
@@ -210,7 +224,7 @@ def written(
         "total": both("total", ""),
         "weeks": weeks,
         "groups": groups,
-        "replaced_by": running.replaced_by,
+        "follows": sorted({(row.part, row.needed) for row in running.rows}),
         "left_out": [{"reason": reason, "count": count} for reason, count in running.left_out],
         "warnings": [*running.notes, *learned.warnings],
     }

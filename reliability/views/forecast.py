@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
+from django.contrib import messages
 from django.http import HttpResponse, JsonResponse
 from django.shortcuts import redirect, render
 from django.urls import reverse
@@ -11,6 +12,7 @@ from django.urls import reverse
 from fleet.models import Component, Part
 from fleet.rights import COSTS, LIFE, may, needs
 from fleet.views.listing import as_csv
+from fleet.work import enqueue
 from reliability import forecast_words as words
 from reliability.forms.forecast import ForecastForm
 
@@ -23,9 +25,9 @@ def forecast(request: Any) -> HttpResponse:
     if not form.is_valid():
         return render(request, "forecast/page.html", {"form": form}, status=422)
     components = list(request.seen(Component))
-    documents = documents_for(request, form, components, again=request.method == "POST")
     if request.method == "POST":
-        return redirect(f"{reverse('forecast')}?{request.GET.urlencode()}")
+        return count_again(request, form, components)
+    documents = documents_for(request, form, components)
     needed = parts_needed(request, components, documents)
     if request.GET.get("as") == "csv":
         return parts_list(request, needed)
@@ -44,8 +46,19 @@ def forecast(request: Any) -> HttpResponse:
     return render(request, "forecast/page.html", context)
 
 
+def count_again(request: Any, form: ForecastForm, components: list[Component]) -> HttpResponse:
+    """The usual question goes to the background; any other is counted while one waits."""
+    asked = form.cleaned_data
+    if asked["begin"] or asked["site"] or not request.user.all_sites:
+        documents_for(request, form, components, again=True)
+    else:
+        enqueue("count_forecasts", "Counting next quarter again", {}, request.user)
+        messages.success(request, "Next quarter is being counted again. Load this page again in a minute.")
+    return redirect(f"{reverse('forecast')}?{request.GET.urlencode()}")
+
+
 def documents_for(
-    request: Any, form: ForecastForm, components: list[Component], *, again: bool
+    request: Any, form: ForecastForm, components: list[Component], *, again: bool = False
 ) -> dict[str, dict[str, Any]]:
     """One document a component, for the chosen days and sites; nobody gets sites that they do not see."""
     from fleet.models import Site
@@ -173,12 +186,20 @@ def detail(request: Any, chosen: Component, document: dict[str, Any]) -> dict[st
             "caption": f"{chosen.title}, failures by week",
             "size": "short",
         },
-        "by_part": group_table(document, "part", "Part fitted now", document["replaced_by"]),
+        "by_part": group_table(document, "part", "Part fitted now", followers(document)),
         "by_site": group_table(document, "site", "Site", {}),
     }
 
 
-def group_table(document: dict[str, Any], grouping: str, label: str, replaced_by: dict[str, str]) -> dict[str, Any]:
+def followers(document: dict[str, Any]) -> dict[str, str]:
+    """For each design, in words, what goes in after it where that is another."""
+    after: dict[str, list[str]] = {}
+    for part, needed in document["follows"]:
+        after.setdefault(part, []).append(needed)
+    return {part: f"followed by {' or '.join(needed)}" for part, needed in after.items() if needed != [part]}
+
+
+def group_table(document: dict[str, Any], grouping: str, label: str, followed_by: dict[str, str]) -> dict[str, Any]:
     columns = [
         {"key": "group", "label": label},
         {"key": "mean", "label": "Failures expected", "numeric": True},
@@ -190,11 +211,9 @@ def group_table(document: dict[str, Any], grouping: str, label: str, replaced_by
     ]
     rows = []
     for row in document["groups"][grouping]:
-        needed = replaced_by.get(row["group"], row["group"])
-        follows = f"followed by {needed}" if grouping == "part" and needed != row["group"] else ""
         rows.append(
             [
-                {"text": row["group"], "sub": follows},
+                {"text": row["group"], "sub": followed_by.get(row["group"], "")},
                 words.about(row["mean"]),
                 *(words.between(row["bands"][band]) for band in BANDS),
                 {"text": row["parts_used"]["plan_for"]["0.95"], "strong": True},

@@ -6,7 +6,7 @@ import pytest
 
 from fleet.actions.rebuild_clocks import rebuild_clocks
 from fleet.models import Part
-from reliability.running_parts import RunningRow, replacements, running_parts
+from reliability.running_parts import Replacements, RunningRow, chains_of, running_parts
 from tests.reliability.small_fleet import SmallFleet, day
 
 pytestmark = pytest.mark.django_db
@@ -25,7 +25,7 @@ def rows(fleet: SmallFleet, as_of: int = AS_OF, **choices: list[str]) -> list[Ru
 
 def test_a_part_is_as_old_as_the_days_since_it_was_fitted(fleet: SmallFleet) -> None:
     fleet.fit(fleet.module("M-1", fleet.site()), 120)
-    assert rows(fleet) == [RunningRow(80.0, 1.0, "N1", "LOCK", "CARRIAGE", 1)]
+    assert rows(fleet) == [RunningRow(80.0, 1.0, "N1", "N1", "LOCK", "CARRIAGE", 1)]
 
 
 def test_equal_parts_share_a_row_and_other_sites_do_not(fleet: SmallFleet) -> None:
@@ -98,15 +98,29 @@ def test_a_module_without_readings_takes_the_pace_of_its_site() -> None:
     assert {row.a_day for row in found.rows} == {400.0}
 
 
-def test_the_replacement_is_the_current_design_at_the_end_of_the_chain(fleet: SmallFleet) -> None:
+def test_the_chain_of_designs_leads_to_the_current_one(fleet: SmallFleet) -> None:
     Part.objects.create(code="N3", component=fleet.component, supersedes=fleet.n2)
     fleet.n2.supersedes = fleet.n1
     fleet.n2.save()
     Part.objects.create(code="N4", component=fleet.component, supersedes=fleet.n1, state="on trial")
-    assert replacements(fleet.component) == {"N1": "N3", "N2": "N3", "N3": "N3", "N4": "N4"}
+    assert chains_of(fleet.component) == {"N1": ["N1", "N2", "N3"], "N2": ["N2", "N3"], "N3": ["N3"], "N4": ["N4"]}
 
 
 def test_a_circle_of_superseding_parts_ends(fleet: SmallFleet) -> None:
     Part.objects.filter(pk=fleet.n1.pk).update(supersedes=fleet.n2)
     Part.objects.filter(pk=fleet.n2.pk).update(supersedes=fleet.n1)
-    assert set(replacements(fleet.component)) == {"N1", "N2"}
+    assert chains_of(fleet.component) == {"N1": ["N1", "N2"], "N2": ["N2", "N1"]}
+
+
+def test_what_a_site_fitted_lately_goes_in_next(fleet: SmallFleet) -> None:
+    """One site has gone over to the second design, another still fits the first; a third shows too little."""
+    fleet.n2.supersedes = fleet.n1
+    fleet.n2.save()
+    sites = {code: fleet.site(code) for code in ("NEW", "OLD", "QUIET")}
+    for code, part, count in (("NEW", fleet.n2, 3), ("OLD", fleet.n1, 4), ("QUIET", fleet.n1, 2)):
+        for number in range(count):
+            fleet.fit(fleet.module(f"{code}-{number}", sites[code]), 180, part=part)
+    rebuild_clocks()
+    found = Replacements(fleet.component, day(AS_OF))
+    assert [found.of("N1", code) for code in ("NEW", "OLD", "QUIET", "nowhere")] == ["N2", "N1", "N2", "N2"]
+    assert Replacements(fleet.component, day(AS_OF + 120)).of("N1", "OLD") == "N2"
