@@ -143,9 +143,7 @@ def count_part(
             np.array([row.age for row in merged]),
             np.array([row.a_day * question.span for row in merged]),
             weights=np.array([row.count for row in merged], dtype=float),
-            sites=[row.site for row in merged]
-            if posterior.has_spread or (following and following.has_spread)
-            else None,
+            sites=[row.site for row in merged] if spread else None,
             groups=[getattr(row, label) for row in merged] if label else None,
             windows=windows,
             group_window=group_window,
