@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, fields, replace
+from dataclasses import dataclass, field, fields, replace
 from typing import Any
 
 import numpy as np
@@ -18,6 +18,7 @@ MOST_EXACT_ROWS = 600  # beyond this many distinct rows the ages of large groups
 SMALL_GROUP = 60  # positions; smaller groups keep their ages, their generating functions may pass through zero
 MOST_HORIZONS = 24  # beyond this many, horizons of a site are moved to shared cells
 NODE_STEP = 0.12
+COARSE_STEP = 0.2  # where failures are rare: four-point interpolation is then within half a per cent of their number
 
 
 @dataclass(frozen=True, eq=False)
@@ -57,6 +58,7 @@ class Rows:
     classes: Classes
     site_labels: list[Any]
     group_labels: list[Any]
+    cells: _Cells = field(repr=False)
 
     def __len__(self) -> int:
         return int(self.age.size)
@@ -73,6 +75,12 @@ class Rows:
             weights=self.weights[:, kept],
             classes=self.classes.take(chosen),
         )
+
+    def coarse(self) -> Rows:
+        """All running positions on shared nodes, for draws in which failures are rare."""
+        horizon = float(np.median(self.classes.horizon))
+        cells = _on_nodes(self.cells, len(self.group_labels), horizon, COARSE_STEP, smallest=0)
+        return _rows(_merged(cells), self.classes, self.site_labels, self.group_labels)
 
 
 @dataclass(frozen=True, eq=False)
@@ -113,13 +121,21 @@ def group_positions(
     class_first, class_index = _distinct(list(class_columns.values()), count)
     classes = Classes(**{name: column[class_first] for name, column in class_columns.items()})
     cells = _merged(_Cells(class_index, group, start, extra, age, weight))
-    if _distinct([cells.class_index, cells.start, cells.age], cells.age.size)[0].size > MOST_EXACT_ROWS:
-        cells = _merged(_on_nodes(cells, len(group_labels), float(np.median(classes.horizon))))
-    columns = [cells.class_index, cells.start, cells.extra, cells.age]
-    first, inverse = _distinct(columns, cells.age.size)
-    weights = np.zeros((len(group_labels) + 1, first.size))
-    np.add.at(weights, (cells.group, inverse), cells.weight)
-    weights[-1] = weights[:-1].sum(axis=0)
+    rows = _rows(cells, classes, site_labels, group_labels)
+    if len(rows) <= MOST_EXACT_ROWS:
+        return rows
+    moved = _on_nodes(cells, len(group_labels), float(np.median(classes.horizon)), NODE_STEP, smallest=SMALL_GROUP)
+    return _rows(_merged(moved), classes, site_labels, group_labels)
+
+
+def _rows(cells: _Cells, classes: Classes, site_labels: list[Any], group_labels: list[Any]) -> Rows:
+    first, inverse = _distinct([cells.class_index, cells.start, cells.extra, cells.age], cells.age.size)
+    # with very many distinct rows the table of groups is made only after they have moved to nodes
+    groups = len(group_labels) if first.size <= 20 * MOST_EXACT_ROWS else 0
+    weights = np.zeros((groups + 1, first.size))
+    if groups:
+        np.add.at(weights, (cells.group, inverse), cells.weight)
+        weights[-1] = weights[:-1].sum(axis=0)
     return Rows(
         age=cells.age[first],
         start=cells.start[first],
@@ -129,6 +145,7 @@ def group_positions(
         classes=classes,
         site_labels=site_labels,
         group_labels=group_labels,
+        cells=cells,
     )
 
 
@@ -234,17 +251,17 @@ def _shared_horizons(horizon: FloatArray, site: IntArray, weight: FloatArray) ->
     return means[key]
 
 
-def _on_nodes(cells: _Cells, groups: int, horizon: float) -> _Cells:
+def _on_nodes(cells: _Cells, groups: int, horizon: float, spacing: float, *, smallest: int) -> _Cells:
     """Ages of large groups moved to shared nodes by four-point interpolation of the log generating function.
 
     Nodes are evenly spaced in log(age + horizon / 4); weights may come out fractional and slightly negative, which a
     sum of logarithms does not mind. Small groups, and positions that start with a new part, stay as they are.
     """
     group_key = cells.class_index * groups + cells.group
-    large = np.bincount(group_key, cells.weight)[group_key] > SMALL_GROUP
+    large = np.bincount(group_key, cells.weight)[group_key] > smallest
     moved = large & np.isnan(cells.start)
     offset = horizon / 4.0 or 1.0
-    place = np.log((cells.age[moved] + offset) / offset) / NODE_STEP
+    place = np.log((cells.age[moved] + offset) / offset) / spacing
     last = max(int(np.ceil(place.max(initial=0.0))), 3)
     left = np.clip(np.floor(place).astype(np.int64), 1, last - 2)
     shift = place - left
@@ -265,7 +282,7 @@ def _on_nodes(cells: _Cells, groups: int, horizon: float) -> _Cells:
         group=outer % groups,
         start=np.full(used.size, np.nan),
         extra=np.zeros(used.size, dtype=np.int64),
-        age=offset * np.expm1(NODE_STEP * node),
+        age=offset * np.expm1(spacing * node),
         weight=total[used],
     )
     names = [item.name for item in fields(_Cells)]

@@ -31,6 +31,8 @@ IntArray = NDArray[np.int64]
 
 LEAST_CELLS = 24
 MOST_CELLS = 512
+FEW_ROWS = 40
+_RARE_HAZARD = 0.25
 
 
 class Posterior(Protocol):
@@ -178,8 +180,11 @@ def forecast_counts(
     if group_window is not None and not 0 <= group_window < len(edges) - 1:
         raise InvalidArgument(f"group_window is {group_window}; there are {len(edges) - 1} windows, counted from 0.")
     tallies = _Tallies(rows, len(edges) - 1, 0 if group_window is None else group_window + 1)
+    coarse = rows.coarse() if len(rows) > FEW_ROWS else rows
+    coarse = coarse if len(coarse) < 0.7 * len(rows) else rows
     for chunk in _chunks(rows, sharpness):
-        blocks = _blocks(rows, float(np.quantile(sharpness[chunk], 0.9)), edges, cells)
+        chosen = coarse if _are_rare(rows, _hazards(drawn, rates, rows, chunk), duty[chunk]) else rows
+        blocks = _blocks(chosen, float(np.quantile(sharpness[chunk], 0.9)), edges, cells)
         _add_draws(tallies, blocks, (drawn, rates), (following, next_rates), duty, chunk)
     return tallies.forecast(rows, windows, draws)
 
@@ -283,15 +288,25 @@ def _runs(level: IntArray) -> list[tuple[int, int]]:
     return list(pairwise(edges))
 
 
-def _hazards(drawn: PosteriorDraws, rates: FloatArray, block: Block, chunk: IntArray) -> Hazards:
+def _hazards(drawn: PosteriorDraws, rates: FloatArray, rows: Rows, chunk: IntArray) -> Hazards:
     return Hazards(
         shape=drawn.shapes[chunk],
-        rate=rates[chunk][:, block.rows.classes.site],
+        rate=rates[chunk][:, rows.classes.site],
         early=drawn.early_shares[chunk],
         early_until=drawn.early_until,
         scale=drawn.scales[chunk],
         deviation=None if drawn.deviations is None else drawn.deviations[chunk],
     )
+
+
+def _are_rare(rows: Rows, hazards: Hazards, duty: FloatArray) -> bool:
+    """Whether no position of these draws is likely to fail: then interpolation between ages is safe for every group."""
+    if not len(rows):
+        return False
+    ages = np.linspace(0.0, rows.age.max(), 6)
+    ahead = rows.classes.horizon[:, None] * duty[:, rows.classes.site][:, :, None]
+    before = hazards.cumulative(np.broadcast_to(ages, (1, len(rows.classes), ages.size)))
+    return bool((hazards.cumulative(ages + ahead) - before).max() < _RARE_HAZARD)
 
 
 def _add_draws(
@@ -304,9 +319,9 @@ def _add_draws(
 ) -> None:
     worked = []
     for block in blocks:
-        following = None if later[0] is None else _hazards(later[0], later[1], block, chunk)
+        following = None if later[0] is None else _hazards(later[0], later[1], block.rows, chunk)
         factors = duty[chunk][:, block.rows.classes.site]
-        worked.append(BlockTails(block, _hazards(*now, block, chunk), following, factors))
+        worked.append(BlockTails(block, _hazards(*now, block.rows, chunk), following, factors))
     weights = [block.rows.weights for block in blocks]
     for kind in tallies.kinds:
         for number, parts in enumerate(zip(*(tails.targets(kind) for tails in worked), strict=True)):
