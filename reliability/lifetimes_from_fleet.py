@@ -44,7 +44,7 @@ from reliability.fleet_lives import (
     counted_reasons,
     with_not_known_failed,
 )
-from reliability.life_errors import NothingNamed
+from reliability.life_errors import NothingNamed, NotYet
 from reliability.life_rules import Reason, Rules
 from reliability.life_sql import LifeQuestion, grouped_lives, left_out_fittings
 from reliability.life_warnings import many_not_known, warnings_for
@@ -53,6 +53,7 @@ from reliability.lives_as_known import Known, Places, rows_as_known
 CLOCKS = ("days", "hours", "strokes")
 GROUPINGS = ("part", "site", "type", "lot", "quarter")
 LAG_QUANTILE = 0.95
+EARLIEST_ZONE = dt.timedelta(hours=14)  # where a day begins first
 
 
 @dataclass(frozen=True)
@@ -98,7 +99,7 @@ def lives(
         component=found,
         clock=_one_of(clock or found.clock, CLOCKS, "clock"),
         by=None if by is None else _one_of(by, GROUPINGS, "grouping"),
-        as_of=as_of or timezone.localdate(),
+        as_of=_come(as_of or timezone.localdate()),
         known_on=known_on,
         sites=_keys(Site, sites, "site"),
         parts=_keys(Part, parts, "part", component=found),
@@ -369,6 +370,12 @@ def _keys(model: type[models.Model], chosen: Sequence[Any] | None, noun: str, **
         if code not in known:
             raise NothingNamed(noun, code, known)
     return tuple(known[code] for code in codes)
+
+
+def _come(day: dt.date) -> dt.date:
+    if day > (timezone.now() + EARLIEST_ZONE).date():
+        raise NotYet(day)
+    return day
 
 
 def _code(item: Any) -> str:

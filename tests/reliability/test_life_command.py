@@ -63,10 +63,11 @@ def test_only_one_part() -> None:
     [
         (["SCREW"], "There is no component SCREW. Choose one of NUT."),
         (["NUT", "--site", "NOWHERE"], "There is no site NOWHERE. Choose one of LOCK."),
+        (["NUT", "--as-of", "2999-01-01"], "1\u00a0January 2999 has not come yet. Choose today or an earlier day."),
         (["NUT", "--set", "TRIAL"], "There is no set TRIAL. No set is in the book yet."),
     ],
 )
-def test_names_that_do_not_exist_are_refused(arguments: list[str], told: str) -> None:
+def test_what_cannot_be_answered_is_refused(arguments: list[str], told: str) -> None:
     with pytest.raises(CommandError, match=told) as refusal:
         run(*arguments)
     assert refusal.value.returncode == 1

@@ -40,7 +40,7 @@ class Command(BaseCommand):
 
     def handle(self, *args: Any, **options: Any) -> None:
         from reliability.life_answer import life_document
-        from reliability.life_errors import NothingNamed
+        from reliability.life_errors import QuestionRefused
         from reliability.stats.errors import StatisticsError
 
         try:
@@ -56,7 +56,7 @@ class Command(BaseCommand):
                 confidence=options["confidence"],
                 with_rigs=options["with_rigs"],
             )
-        except (NothingNamed, StatisticsError) as error:
+        except (QuestionRefused, StatisticsError) as error:
             raise CommandError(str(error)) from error
         if options["json"]:
             self.stdout.write(json.dumps(document, ensure_ascii=False, allow_nan=False, indent=1))
