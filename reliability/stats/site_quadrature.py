@@ -175,8 +175,7 @@ def _tops(
     intervals: SiteIntervals, shape: float, level: float, power: FloatArray, rate: FloatArray
 ) -> tuple[FloatArray, FloatArray]:
     """Top of each integrand in u and its standard deviation there, shapes (C, K); Newton on a concave function."""
-    counts = np.add.reduceat(intervals.rows.weights, intervals.first_row)[:, None]
-    u = np.log((power + 0.5 * counts) / (rate + 0.5 * counts))
+    u = _start_of_tops(intervals, shape, level, power, rate)
     for _ in range(MODE_STEPS):
         rows = _row_sums(intervals, shape, level, u)
         z = np.exp(u)
@@ -187,3 +186,22 @@ def _tops(
         if float(np.max(np.abs(step) * np.sqrt(-bend))) < 0.05:
             break
     return u, 1.0 / np.sqrt(-bend)
+
+
+def _start_of_tops(
+    intervals: SiteIntervals, shape: float, level: float, power: FloatArray, rate: FloatArray
+) -> FloatArray:
+    """Where the integrand's slope vanishes if each interval row's share of it is taken as straight about z = 1.
+
+    A row adds x / (e^x - 1) to the slope in u, x = z D; near enough to the top to save Newton most of its steps.
+    """
+    x = np.exp(np.clip(interval_row_hazards(intervals.rows, shape, level)[0], -30.0, 5.0))
+    grown = np.expm1(x)
+    value, slope = x / grown, (grown - x * (1.0 + grown)) / grown**2
+    short = x < 1e-3
+    value, slope = np.where(short, 1.0 - 0.5 * x, value), np.where(short, x / 6.0 - 0.5, slope)
+    weights = intervals.rows.weights
+    at_none, with_z = (
+        np.add.reduceat(weights * term, intervals.first_row)[:, None] for term in (value - slope * x, -slope * x)
+    )
+    return np.log((power + at_none) / (rate + with_z))
