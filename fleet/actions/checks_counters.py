@@ -10,6 +10,7 @@ from zoneinfo import ZoneInfo
 
 from django.db.models import Q
 
+from fleet.actions.entries import CounterEntry
 from fleet.actions.errors import BadValue, CounterWentBack, day_words, thousands
 from fleet.clock_counts import Face, accumulate
 from fleet.models import Module, Reading, Restart
@@ -55,6 +56,35 @@ def in_order(rows: Sequence[Shown]) -> list[Shown]:
 def running_after(rows: Sequence[Shown]) -> str:
     """The serial of the counter that runs after the last of these readings."""
     return next((row.counter for row in reversed(rows) if row.counter), "")
+
+
+def split_faces(module: Module, read_at: dt.datetime, entry: CounterEntry) -> list[CounterEntry]:
+    """Strokes and hours read at once, of which only one began again: told apart, so that the other goes on counting.
+
+    The face that fell is the one that began again; if neither fell, it is the counter of strokes.
+    """
+    if entry.strokes is None or entry.hours is None or not (entry.restarts or entry.counter):
+        return [entry]
+    before = {unit: [row for row in shown_by(module, unit) if row.read_at <= read_at] for unit in UNITS}
+    if not any(before.values()):
+        return [entry]
+    fell = {unit: bool(rows) and getattr(entry, unit) < rows[-1].value for unit, rows in before.items()}
+    again = {
+        "strokes": bool(before["strokes"]) and (fell["strokes"] or not fell["hours"]),
+        "hours": bool(before["hours"]) and (fell["hours"] or not before["strokes"]),
+    }
+    begins = {
+        unit: bool(entry.restarts) or (bool(rows) and entry.counter not in {"", running_after(rows)})
+        for unit, rows in before.items()
+    }
+    goes_on = [unit for unit in UNITS if begins[unit] and not again[unit]]
+    if not goes_on:
+        return [entry]
+    said = {"counter": entry.counter, "restarts": entry.restarts}
+    return [
+        CounterEntry(**{unit: getattr(entry, unit)}, **({} if unit in goes_on else said))  # type: ignore[arg-type]
+        for unit in UNITS
+    ]
 
 
 @dataclass(frozen=True, slots=True)

@@ -37,9 +37,6 @@ class Counts:
         self.module = module
         self.by_unit: dict[str, dict[int, float]] = {}
 
-    def at(self, reading: Reading) -> Measured:
-        return measured_of({unit: self.of(unit, reading) for unit in UNITS})
-
     def of(self, unit: str, reading: Reading) -> float | None:
         if getattr(reading, unit) is None:
             return None
@@ -49,11 +46,14 @@ class Counts:
 
 
 def measured_by_visit(module: Module, visits: set[int]) -> dict[int, Measured]:
-    """What the last standing counter reading of each visit says."""
-    rows = Reading.objects.standing().filter(SAYS_COUNTER, visit__in=visits).order_by("id")
-    readings = {reading.visit_id: reading for reading in rows}
+    """What the last standing readings of strokes and of hours at each visit add up to."""
     counts = Counts(module)
-    return {visit: counts.at(reading) for visit, reading in readings.items() if visit is not None}
+    said: dict[int, dict[str, float | None]] = {}
+    for reading in Reading.objects.standing().filter(SAYS_COUNTER, visit__in=visits).order_by("id"):
+        assert reading.visit_id is not None
+        totals = {unit: counts.of(unit, reading) for unit in UNITS if getattr(reading, unit) is not None}
+        said.setdefault(reading.visit_id, {}).update(totals)
+    return {visit: measured_of(totals) for visit, totals in said.items()}
 
 
 class MeasuredEnds:

@@ -3,8 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from copy import copy
 
-from fleet.actions.checks_counters import check_counter
+from django.db.models.base import ModelState
+
+from fleet.actions.checks_counters import check_counter, split_faces
 from fleet.actions.checks_parts import check_position
 from fleet.actions.checks_places import Place
 from fleet.actions.checks_values import choose, clean_columns
@@ -35,15 +38,35 @@ def write_face(reading: Reading, counter: CounterEntry, place: Place, *, follow:
     if counter.strokes is None and counter.hours is None:
         raise BadValue("The counter is missing. Enter its number.", field="strokes")
     choose(counter.restarts, Restart, field="restarts")
+    totals: dict[str, float] = {}
+    for part in split_faces(reading.module, reading.read_at, cleaned(reading, counter)):
+        put(reading, part)
+        checked = check_counter(reading, place.zone)
+        ends = MeasuredEnds(reading) if follow or not checked.last else None
+        reading.save()
+        if ends is not None:
+            ends.follow()
+        totals |= checked.totals
+        # Where the hours go on while the counter began again they are a reading of their own.
+        reading = copy_of(reading)
+    return measured_of(totals)
+
+
+def put(reading: Reading, counter: CounterEntry) -> None:
     reading.strokes, reading.hours = counter.strokes, counter.hours
     reading.counter, reading.restarts = counter.counter, counter.restarts
+
+
+def cleaned(reading: Reading, counter: CounterEntry) -> CounterEntry:
+    put(reading, counter)
     clean_columns(reading)
-    checked = check_counter(reading, place.zone)
-    ends = MeasuredEnds(reading) if follow or not checked.last else None
-    reading.save()
-    if ends is not None:
-        ends.follow()
-    return measured_of(checked.totals)
+    return CounterEntry(reading.strokes, reading.hours, reading.counter, reading.restarts)
+
+
+def copy_of(reading: Reading) -> Reading:
+    again = copy(reading)
+    again.pk, again._state = None, ModelState()
+    return again
 
 
 def write_play(visit: Visit, play: Mapping[Position, float], by: Person | None) -> None:

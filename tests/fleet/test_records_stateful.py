@@ -202,10 +202,11 @@ class Records(RuleBasedStateMachine):
         position = self.weir.screw if part == "s1" else self.weir.nut
         self.attempt(fit_part, module=self.module, position=position, part=getattr(self.weir, part), fitted_on=day)
 
-    @rule(number=FEW, day=DAYS, reason=REASONS, failed=MAYBE_DAYS)
-    def remove(self, number: int, day: Any, reason: str, failed: Any) -> None:
+    @rule(number=FEW, lasted=st.integers(-2, 12), reason=REASONS, failed=st.none() | MAYBE_DAYS)
+    def remove(self, number: int, lasted: int, reason: str, failed: Any) -> None:
         fitting = self.some(Fitting, number)
         if fitting is not None:
+            day = (fitting.fitted_on or FIRST) + dt.timedelta(days=lasted)
             self.attempt(remove_part, fitting=fitting, removed_on=day, reason=reason, failed_on=failed)
 
     @rule(late=st.booleans(), hours=HOURS, counter=counters(), number=FEW, with_visit=st.booleans())
@@ -227,18 +228,20 @@ class Records(RuleBasedStateMachine):
         until = None if lasted is None else at + dt.timedelta(hours=lasted)
         self.attempt(report_stop, module=self.module, stopped_at=at, running_at=until, entry_key=uuid.uuid4())
 
-    @rule(number=FEW, at=INSTANTS)
-    def run_again(self, number: int, at: Any) -> None:
-        stop = self.some(Stop, number)
+    @rule(number=FEW, lasted=st.integers(-9, 90), any_stop=SELDOM)
+    def run_again(self, number: int, lasted: int, any_stop: bool) -> None:
+        stop = self.some(Stop, number) if any_stop else Stop.objects.now().filter(module=self.module).first()
         if stop is not None:
-            self.attempt(end_stop, stop=stop, running_at=at)
+            self.attempt(end_stop, stop=stop, running_at=stop.stopped_at + dt.timedelta(hours=lasted))
 
     @rule(site=st.integers(0, 2), day=DAYS, same_day=st.booleans())
     def place(self, site: int, day: Any, same_day: bool) -> None:
         self.attempt(place_module, module=self.module, site=self.sites[site], from_on=day, same_day=same_day)
 
-    @rule(day=DAYS)
-    def take_away(self, day: Any) -> None:
+    @rule(day=DAYS, really=SELDOM)
+    def take_away(self, day: Any, really: bool) -> None:
+        if not really:
+            return
         self.attempt(take_away_module, module=self.module, to_on=day)
 
     @rule(number=FEW, old=st.booleans(), fields=st.fixed_dictionaries({}, optional=FITTING_FIELDS))
@@ -272,7 +275,11 @@ class Records(RuleBasedStateMachine):
             # An older version is accepted only where it asks for what stands already.
             assert opened == record.version or now == fields
 
-    @rule(kind=st.sampled_from([Visit, Fitting, Stop, Reading, Placement, Finding]), number=FEW, with_all=st.booleans())
+    @rule(
+        kind=st.sampled_from([Visit, Fitting, Fitting, Stop, Reading, Placement, Finding]),
+        number=FEW,
+        with_all=st.booleans(),
+    )
     def strike(self, kind: Any, number: int, with_all: bool) -> None:
         record = self.some(kind, number)
         if record is not None:

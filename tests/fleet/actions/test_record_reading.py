@@ -98,6 +98,49 @@ def test_at_a_change_both_counters_are_read_at_one_moment_in_any_order(weir: Car
     assert Reading.objects.order_by("-read_at").first().counter == "C-2"
 
 
+@pytest.mark.parametrize(
+    ("strokes", "hours", "said", "counted"),
+    [
+        (20, 14.0, {"restarts": "rolled over"}, (10_020, 14.0)),
+        (20, 14.0, {"counter": "C-2"}, (9_990, 14.0)),
+        (9_995, 0.5, {"restarts": "reset"}, (9_995, 13.0)),
+        (20, 0.5, {"restarts": "reset"}, (10_010, 13.0)),
+        (9_999, 14.0, {"counter": "C-2"}, (9_990, 14.0)),
+        (9_999, 14.0, {"counter": "C-1"}, (9_999, 14.0)),
+    ],
+)
+def test_of_counter_and_meter_only_the_one_that_fell_began_again(
+    weir: Carriage, strokes: int, hours: float, said: dict[str, str], counted: tuple[float, float]
+) -> None:
+    read(weir, "2024-03-01", 9_990, hours=12.5, counter="C-1")
+    first = read(weir, "2024-03-02", strokes, hours=hours, **said)
+    assert first.strokes == strokes
+    read(weir, "2024-03-03", strokes + 10, hours=hours + 1)
+    last = ClockPoint.objects.filter(module=weir.module, measured=True).order_by("-day").first()
+    assert (last.strokes, last.hours) == (counted[0] + 10, counted[1] + 1)
+
+
+def test_the_first_hours_come_with_a_counter_that_rolled_over(weir: Carriage) -> None:
+    read(weir, "2024-03-01", 9_990)
+    read(weir, "2024-03-02", 20, hours=7.0, restarts="rolled over")
+    assert accumulated(weir) == [9_990, 10_020]
+
+
+def test_a_visit_measures_both_where_only_the_counter_is_new(weir: Carriage) -> None:
+    read(weir, "2024-03-01", 9_990, hours=12.5, counter="C-1")
+    visit = record_visit(
+        by=weir.crew,
+        module=weir.module,
+        happened_at=at("2024-03-02"),
+        counter=CounterEntry(strokes=5, hours=13.5, counter="C-2"),
+        changes=[PartChange(position=weir.nut, part=weir.n1)],
+    )
+    fitting = Fitting.objects.get()
+    assert (fitting.strokes_at_fit, fitting.hours_at_fit) == (9_990, 13.5)
+    screw = weir.fit(weir.s1, "2024-03-02", visit=visit)
+    assert (screw.strokes_at_fit, screw.hours_at_fit) == (9_990, 13.5)
+
+
 def test_a_new_counter_does_not_roll_over(weir: Carriage) -> None:
     read(weir, "2024-03-01", 900, counter="C-1")
     with pytest.raises(BadValue, match="has not rolled over"):
