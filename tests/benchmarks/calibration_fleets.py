@@ -27,8 +27,8 @@ class Case:
     shape: float | tuple[float, float] = 2.0
     scale: float | tuple[float, float] = 100.0
     spread: float = 0.0
-    sites: int = 16
-    positions: int = 25  # a site
+    sites: int = 12
+    positions: int = 16  # a site
     deployed: tuple[float, float] = (10.0, 120.0)  # days before the as-of day, evenly
     records_from: float | None = None  # days before the as-of day since when removals are written down
     visits: float = 0.0
