@@ -27,6 +27,7 @@ DRAWS = 400
 # reader of a page wait for all posteriors.
 FRESH_FOR = dt.timedelta(hours=6)
 TAIL = 0.025
+NO_SITE = "a site without history"
 LEAST_TOLD = 0.01  # below this, a chance is told in words
 
 
@@ -39,6 +40,7 @@ class PartNow:
     part: str
     age: float
     a_day: float
+    site: str = ""
 
 
 @dataclass(frozen=True)
@@ -60,16 +62,18 @@ def chances(parts: Iterable[PartNow], *, days: float, as_of: dt.date) -> dict[in
             told[part.component] = design_lives(part.component, as_of)
         design = told[part.component].get(part.part) or told[part.component].get("")
         if design is not None and part.a_day > 0 and days > 0:
-            found[part.position] = chance_of(design, part.age, part.a_day * days)
+            found[part.position] = chance_of(design, part.age, part.a_day * days, part.site)
     return found
 
 
-def chance_of(design: dict[str, Any], age: float, more: float) -> Chance:
+def chance_of(design: dict[str, Any], age: float, more: float, site: str = "") -> Chance:
+    """With the site's own factor on the hazard; a site without history has one drawn from the spread of all."""
     import numpy as np
 
     shapes, scales = np.array(design["shapes"]), np.array(design["scales"])
     hazard = ((age + more) / scales) ** shapes - (age / scales) ** shapes
-    shares = -np.expm1(-hazard)
+    factors = design.get("sites", {}).get(site) or design.get("new_site") or [1.0]
+    shares = -np.expm1(-hazard * np.array(factors))
     lower, upper = (float(end) for end in np.quantile(shares, [TAIL, 1 - TAIL]))
     words = ""
     if upper < LEAST_TOLD:
@@ -82,7 +86,7 @@ def chance_of(design: dict[str, Any], age: float, more: float) -> Chance:
 
 def design_lives(component: str, as_of: dt.date) -> dict[str, dict[str, Any]]:
     """Posterior draws by part, and of all parts together under the empty name; read where they are fresh enough."""
-    key = key_of({"component": component, "draws": DRAWS})
+    key = key_of({"component": component, "draws": DRAWS, "sites": "differ"})
     kept = KeptResult.objects.filter(kind=KIND, key=key, made_at__gte=timezone.now() - FRESH_FOR)
     for payload in kept.values_list("payload", flat=True):
         return json.loads(bytes(payload))
@@ -110,11 +114,19 @@ def drawn(posterior: Any, failures: int) -> dict[str, Any]:
     import numpy as np
 
     draws = posterior.draws(DRAWS, np.random.default_rng(0))
-    return {
-        "shapes": [float(f"{shape:.6g}") for shape in draws.shapes],
-        "scales": [float(f"{scale:.6g}") for scale in draws.scales],
-        "failures": failures,
-    }
+    spread = {}
+    if posterior.has_spread:
+        known = sorted(label for label in draws.multipliers if label is not None)
+        spread = {
+            "sites": {str(label): short(draws.multipliers[label]) for label in known},
+            "new_site": short(draws.for_sites([NO_SITE])[:, 0]),
+        }
+    return {"shapes": short(draws.shapes), "scales": short(draws.scales), "failures": failures, **spread}
+
+
+def short(values: Any) -> list[float]:
+    """Six figures are more than anybody knows, and half the bytes."""
+    return [float(f"{value:.6g}") for value in values]
 
 
 def keep(key: str, payload: bytes) -> None:

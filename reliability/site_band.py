@@ -12,13 +12,14 @@ if TYPE_CHECKING:
 FEWEST_SITES = 5  # with fewer, Student's factor makes the band say nothing
 LOG_LOG = "log-log"
 WITH_SITES = "log-log, wider where whole sites drawn again say so"
-NONE_FAILED = 1e-4  # chance that no site with a failure is drawn: above it the draws tell nothing yet
+NONE_DRAWN = 1e-4  # chance that a draw holds none of the sites that can tell something
 
 
 def widened(curve: KaplanMeierCurve, lifetimes: Lifetimes, minimum_at_risk: float = 0) -> tuple[KaplanMeierCurve, str]:
     """The curve of these lives with limits that allow for sites, and the name of its band.
 
-    Before so many sites have seen a failure that hardly any draw is without one, the log–log band stands alone.
+    Before so many sites have seen a failure that hardly any draw is without one, and after so few are still under
+    observation that some draw has none, the draws say nothing and the log–log band stands alone.
     """
     import numpy as np
 
@@ -33,8 +34,8 @@ def widened(curve: KaplanMeierCurve, lifetimes: Lifetimes, minimum_at_risk: floa
         band = site_bootstrap_band(lifetimes, confidence_level=level, minimum_at_risk=minimum_at_risk)
     except StatisticsError:
         return curve, LOG_LOG
-    usable = (1.0 - sites_with_a_failure(lifetimes, curve.times) / sites) ** sites < NONE_FAILED
-    usable &= curve.survival > 0.0  # at the end the draws have nothing left to vary
+    telling = np.minimum(sites_with_a_failure(lifetimes, curve.times), sites_still_seen(lifetimes, curve.times))
+    usable = ((1.0 - telling / sites) ** sites < NONE_DRAWN) & (curve.survival > 0.0)
     if not usable.any():
         return curve, LOG_LOG
     lower = np.where(usable, np.minimum(curve.lower, band.lower), curve.lower)
@@ -52,3 +53,12 @@ def sites_with_a_failure(lifetimes: Lifetimes, ages: Any) -> Any:
     first = np.full(len(lifetimes.site_labels), np.inf)
     np.minimum.at(first, lifetimes.site_codes[failed], lifetimes.durations[failed])
     return np.searchsorted(np.sort(first), ages, side="right")
+
+
+def sites_still_seen(lifetimes: Lifetimes, ages: Any) -> Any:
+    """How many sites have a life under observation at or beyond each age."""
+    import numpy as np
+
+    last = np.zeros(len(lifetimes.site_labels))
+    np.maximum.at(last, lifetimes.site_codes, lifetimes.durations)
+    return last.size - np.searchsorted(np.sort(last), ages, side="left")

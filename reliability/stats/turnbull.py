@@ -290,6 +290,8 @@ def _self_consistent(cells: _Cells) -> tuple[FloatArray, int]:
 
 def _masses(cells: _Cells, hazard: FloatArray) -> FloatArray:
     """Mass of each cell. Raises UndefinedEstimate where S falls to 0 before others came under observation."""
+    if np.isinf(cells.right[-1]):
+        hazard = np.append(hazard[:-1], 1.0)  # what outlasts all ages fails beyond them
     survival = np.cumprod(np.append(1.0, 1.0 - hazard))
     emptied = np.flatnonzero(survival[1:] < 1e-12)
     if emptied.size and (cells.entry > emptied[0]).any():

@@ -54,8 +54,9 @@ def with_chances(request: Any, page: ModulePage, fitted: list[FittedNow]) -> dic
         return {}
     visit = next_visit(page)
     days = (visit - page.today).days if visit else WITHOUT_PLAN_DAYS
+    site = page.standing.site.code if page.standing.site else ""
     running = [
-        PartNow(row.position.pk, row.position.component.code, row.fitting.part.code, row.age.value, pace)
+        PartNow(row.position.pk, row.position.component.code, row.fitting.part.code, row.age.value, pace, site)
         for row in fitted
         if row.fitting and row.age and row.age.value is not None and not row.age.at_least
         if (pace := page.clock.pace(row.age.clock)) is not None

@@ -46,6 +46,13 @@ def test_with_wear_it_grows_with_age_and_with_time():
     assert chance == sorted(chance)
 
 
+def test_a_hard_site_counts_by_its_own_factor_and_a_new_one_by_the_spread():
+    """1 - exp(-0.11 z): twice the hazard at the sandy site, between half and double where nothing is known."""
+    sites = {**design(), "sites": {"TERN": [2.0]}, "new_site": [0.5]}
+    assert chance_of(sites, 50.0, 10.0, "TERN").estimate == pytest.approx(1 - math.exp(-0.22), rel=1e-12)
+    assert chance_of(sites, 50.0, 10.0, "ELSEWHERE").estimate == pytest.approx(1 - math.exp(-0.055), rel=1e-12)
+
+
 def test_the_interval_holds_the_middle_of_the_draws():
     spread = {"shapes": [2.0] * 400, "scales": [50.0 + index for index in range(400)], "failures": 30}
     chance = chance_of(spread, age=20.0, more=20.0)
