@@ -78,6 +78,19 @@ def test_striking_out_takes_a_fitting_and_a_reading_away(fleet: SmallFleet) -> N
     assert not ClockPoint.objects.filter(strokes__gt=0).exists()
 
 
+def test_struck_out_visits_and_stops_no_longer_count(fleet: SmallFleet) -> None:
+    begun = day(0).toordinal()
+    last = ClockPoint.objects.latest("day")
+    assert ClockPoint.objects.filter(day=begun + 0.4, seen_working=True).exists()
+    assert last.days == pytest.approx(last.day - ClockPoint.objects.earliest("day").day - 2.4)
+    for model in (Visit, Stop):
+        model.objects.update(struck_out="other module")
+    rebuild_clocks([fleet.ada.pk])  # type: ignore[attr-defined]
+    last = ClockPoint.objects.latest("day")
+    assert not ClockPoint.objects.filter(day=begun + 0.4, seen_working=True).exists()
+    assert last.days == pytest.approx(last.day - ClockPoint.objects.earliest("day").day)
+
+
 def test_records_belong_to_the_site_where_the_module_stood(fleet: SmallFleet) -> None:
     ada = fleet.ada  # type: ignore[attr-defined]
     lock = ada.placements.get().site
