@@ -174,7 +174,7 @@ def remark(group: Group, key: str, found: dict[str, Any]) -> str:
     elif "lower" in open_ends:
         told.append("no lower limit")
     last_age = group["curve"]["last_age"]
-    if key in ("b10", "median") and last_age is not None and found["estimate"] > last_age:
+    if key != "shape" and last_age is not None and found["estimate"] > last_age:
         told.append(BEYOND)
     return ", ".join(told)
 

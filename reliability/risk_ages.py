@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Iterable
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
@@ -21,7 +22,7 @@ def round_ages(longest: float, most: int = COLUMNS) -> list[float]:
     return [nice * place for place in range(most) if nice * place <= longest]
 
 
-def under_observation(lifetimes: Lifetimes, groups: list[str]) -> dict[str, Any]:
+def under_observation(lifetimes: Lifetimes, groups: Iterable[str]) -> dict[str, Any]:
     """Lives of each group with entry <= age < duration at a few round ages."""
     import numpy as np
 

@@ -7,7 +7,7 @@ from typing import Any
 from urllib.parse import parse_qs, urlsplit
 
 from django.db.models import Count, Q
-from django.http import Http404, HttpResponse, JsonResponse
+from django.http import Http404, HttpResponse, JsonResponse, StreamingHttpResponse
 from django.shortcuts import render
 from django.urls import reverse
 
@@ -124,7 +124,8 @@ def names_of(choices: Choices, document: dict[str, Any]) -> dict[str, str]:
 
 
 def titles_of(choices: Choices) -> dict[str, str]:
-    return {each.code: each.title for each in (*choices.sites, *choices.parts, *choices.modes)}
+    named: list[Any] = [*choices.sites, *choices.parts, *choices.modes]
+    return {each.code: each.title for each in named}
 
 
 def same_component(request: Any, component: Component | None) -> bool:
@@ -194,7 +195,7 @@ LEFT_OUT = Listing(
 
 
 @needs(LIFE)
-def life_left_out(request: Any) -> HttpResponse:
+def life_left_out(request: Any) -> HttpResponse | StreamingHttpResponse:
     """The fittings behind one line of “what was left out”."""
     from reliability.lifetimes_from_fleet import lives
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from reliability.site_band import FEWEST_SITES, LOG_LOG, WITH_SITES, sites_with_a_failure, widened
+from reliability.site_band import FEWEST_SITES, LOG_LOG, WITH_SITES, sites_still_seen, sites_with_a_failure, widened
 from reliability.stats.kaplan_meier import kaplan_meier
 from reliability.stats.lifetimes import Lifetimes
 from reliability.stats.site_bootstrap import site_bootstrap_band
@@ -62,3 +62,25 @@ def test_few_sites_keep_the_band_of_single_lives() -> None:
 def test_sites_that_have_seen_a_failure_are_counted() -> None:
     lives = Lifetimes([5, 7, 9, 6], [True, True, True, False], sites=["A", "B", "A", "C"])
     assert sites_with_a_failure(lives, np.array([4, 5, 6, 7, 9])).tolist() == [0, 1, 1, 2, 2]
+
+
+def test_sites_that_are_still_seen_are_counted() -> None:
+    lives = Lifetimes([5, 7, 9, 6], [True, True, True, False], sites=["A", "B", "A", "C"])
+    assert sites_still_seen(lives, np.array([5, 6, 7, 8, 9, 10])).tolist() == [3, 3, 2, 1, 1, 0]
+
+
+def test_a_thin_tail_does_not_blow_up_the_whole_band() -> None:
+    """Eleven sites end early, one goes on: draws without that one have no survivor at the late ages."""
+    short = at_sites(11, 1.5)
+    rng = np.random.default_rng(4)
+    late = 150 + np.ceil(100 * rng.random(12))
+    lives = Lifetimes(
+        np.append(np.minimum(short.durations, 120), late),
+        np.append(short.observed & (short.durations <= 120), np.ones(12, dtype=bool)),
+        sites=np.append(short.sites, np.full(12, 99)),
+    )
+    curve = kaplan_meier(lives)
+    wide, _ = widened(curve, lives)
+    middle = int(np.searchsorted(curve.times, 60))
+    alone = site_bootstrap_band(lives).upper[middle]
+    assert wide.upper[middle] == pytest.approx(max(alone, curve.upper[middle]), abs=0.02)
