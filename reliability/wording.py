@@ -59,20 +59,26 @@ def _life(document: dict[str, Any], group: dict[str, Any], who: str) -> str:
     clock, seen_to = document["clock"], group["curve"]["last_age"]
     median, b10 = group["median"], group["b10"]
     if median["estimate"] is not None and seen_to is not None and median["estimate"] <= seen_to:
-        return f"Half of {who} fail within {age(median['estimate'], clock)}{_limits(document, median)}."
+        return f"{_at(group, 'Half')} of {who} fail within {age(median['estimate'], clock)}{_limits(document, median)}."
     oldest = "" if seen_to is None else f": the oldest ran {age(seen_to, clock)}"
     if b10["estimate"] is not None and seen_to is not None and b10["estimate"] <= seen_to:
         return (
-            f"One in ten of {who} fails within {age(b10['estimate'], clock)}{_limits(document, b10)}. "
+            f"{_at(group, 'One')} in ten of {who} fails within {age(b10['estimate'], clock)}{_limits(document, b10)}. "
             f"When half of them will have failed has not been seen yet{oldest}."
         )
     if b10["estimate"] is None:
         return f"How long {who} last cannot be told from these records yet."
     beyond = "" if seen_to is None else f"; none has run longer than {age(seen_to, clock)} yet"
     return (
-        f"One in ten of {who} is expected to fail within {age(b10['estimate'], clock)}{_limits(document, b10)}. "
+        f"{_at(group, 'One')} in ten of {who} is expected to fail within "
+        f"{age(b10['estimate'], clock)}{_limits(document, b10)}. "
         f"This carries the records on beyond what has been seen{beyond}."
     )
+
+
+def _at(group: dict[str, Any], word: str) -> str:
+    """Where sites differ the figures are those of a typical one, which is not the same as the fleet's."""
+    return f"At a typical site {word.lower()}" if group.get("independent") else word
 
 
 def _limits(document: dict[str, Any], estimate: dict[str, Any]) -> str:

@@ -78,6 +78,12 @@ def test_no_failure_yet() -> None:
     assert told.startswith("None of the N2 nuts has failed: 118 parts in 9 120 000 days together.")
 
 
+def test_where_sites_differ_the_figure_is_that_of_a_typical_one() -> None:
+    assert life_sentence(document(), group(independent={"median": {}})).startswith("At a typical site half of the N2")
+    told = life_sentence(document(), group(independent={"median": {}}, curve={"last_age": 40}))
+    assert told.startswith("At a typical site one in ten of the N2")
+
+
 def test_other_removals_and_chosen_modes_are_said() -> None:
     told = plain(life_sentence(document(modes=["WORN"]), group(removed_otherwise=1, running=1, failures=1)))
     assert told.startswith("If only WORN acted: Half of the N2 nuts")
