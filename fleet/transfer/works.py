@@ -17,6 +17,7 @@ from fleet.models import KeptFile, Site, Work
 from fleet.rights import CATALOGUE, may
 from fleet.transfer.export_records import write_export
 from fleet.transfer.import_records import Import, Outcome, make_clocks_again, sweep_before
+from fleet.transfer.outcome_words import outcome_sentence
 from fleet.transfer.problems import Unreadable
 from fleet.transfer.scope import scope_of
 from fleet.transfer.sources import Table, open_bytes, open_source
@@ -36,7 +37,7 @@ def preview_records(work: Work, progress: Progress) -> dict[str, Any]:
     """Arguments: file (of this work), update."""
     started = time.monotonic()
     outcome = importer(work, progress).preview()
-    return finished(outcome, started)
+    return told(work, finished(outcome, started))
 
 
 @work_kind("import_records")
@@ -54,7 +55,7 @@ def import_records(work: Work, progress: Progress) -> dict[str, Any]:
         work.refresh_from_db(fields=["result"])
     make_clocks_again(work.result["touched"], progress)
     result = {key: value for key, value in work.result.items() if key != "touched"}
-    return result | {"seconds": round(time.monotonic() - started, 1)}
+    return told(work, result | {"seconds": round(time.monotonic() - started, 1)})
 
 
 def importer(work: Work, progress: Progress) -> Import:
@@ -84,6 +85,10 @@ def finished(outcome: Outcome, started: float) -> dict[str, Any]:
     return outcome.as_dict() | {"seconds": round(time.monotonic() - started, 1)}
 
 
+def told(work: Work, result: dict[str, Any]) -> dict[str, Any]:
+    return result | {"message": outcome_sentence(work.kind, result)}
+
+
 def refused(outcome: Outcome) -> str:
     return f"{counted(outcome.problems.count, 'error')}. Nothing was stored."
 
@@ -110,8 +115,5 @@ def export_records(work: Work, progress: Progress) -> dict[str, Any]:
         write_fenced(work.pk, work.attempt)
         KeptFile.objects.filter(work=work, role="result").delete()
         KeptFile.objects.create(work=work, role="result", name=name, content_type=CONTENT_TYPES[form], content=content)
-    return {
-        "files": [{"file": f"{name}.csv", "rows": rows} for name, rows in counts.items()],
-        "name": name,
-        "bytes": len(content),
-    }
+    files = [{"file": f"{table}.csv", "rows": rows} for table, rows in counts.items()]
+    return told(work, {"files": files, "name": name, "bytes": len(content)})

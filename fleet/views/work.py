@@ -9,9 +9,9 @@ from django.shortcuts import get_object_or_404, redirect, render
 from django.urls import reverse
 from django.views.decorators.http import require_POST
 
-from fleet.formats import counted
 from fleet.models import Work, WorkState
 from fleet.rights import CATALOGUE, LIFE, SEE, may, needs
+from fleet.transfer.outcome_words import changes, outcome_sentence
 from fleet.views.listing import as_csv
 from fleet.work.enqueue import ask_to_cancel
 
@@ -83,7 +83,7 @@ def context(request: Any, chosen: Work, errors: list[Any]) -> dict[str, Any]:
         "work_url": reverse("work", args=[chosen.pk]),
         "cancel_url": reverse("cancel_work", args=[chosen.pk]),
         "crumbs": [{"name": "Records in and out", "url": reverse("records")}] if records else [],
-        "lead": sentence(chosen, result),
+        "lead": outcome_sentence(chosen.kind, result, done=done) if records else "",
         "file_columns": FILE_COLUMNS if chosen.kind != "export_records" else FILE_COLUMNS[:2],
         "file_rows": [{"cells": file_cells(each, chosen.kind)} for each in files if records and not count],
         "error_columns": ERROR_COLUMNS,
@@ -97,38 +97,9 @@ def context(request: Any, chosen: Work, errors: list[Any]) -> dict[str, Any]:
 
 
 def may_confirm(request: Any, chosen: Work) -> bool:
-    if chosen.kind != "preview_records" or chosen.result.get("error_count") or not changes(chosen.result):
+    if chosen.kind != "preview_records" or chosen.result.get("error_count"):
         return False
-    return bool(request.user.all_sites)
-
-
-def changes(result: dict[str, Any]) -> int:
-    return sum(each["added"] + each["updated"] for each in result.get("files", []))
-
-
-def sentence(chosen: Work, result: dict[str, Any]) -> str:
-    """What came of it, in numbers."""
-    if chosen.kind not in RECORDS or not chosen.ended or not result:
-        return ""
-    files = result.get("files", [])
-    if result.get("error_count"):
-        remedy = "Nothing was stored: put them right in the files, then choose them again."
-        return f"{counted(result['error_count'], 'error')}. {remedy}"
-    if chosen.state != WorkState.DONE:
-        return ""
-    if chosen.kind == "export_records":
-        return f"{counted(sum(each['rows'] for each in files), 'row')} in {counted(len(files), 'file')}."
-    added, updated = (sum(each[key] for each in files) for key in ("added", "updated"))
-    made = sum(each.get("made", 0) for each in files)
-    if not added and not updated:
-        return "Everything in these files is in the book already."
-    verb = "would be " if chosen.kind == "preview_records" else "were "
-    parts = [f"{counted(added, 'record')} {verb}added"]
-    if made:
-        parts.append(f"{counted(made, 'visit')} {verb}made for the changes of parts")
-    if updated:
-        parts.append(f"{counted(updated, 'record')} {verb}changed")
-    return ", ".join(parts) + "."
+    return bool(request.user.all_sites and changes(chosen.result))
 
 
 def file_cells(each: dict[str, Any], kind: str) -> list[Any]:

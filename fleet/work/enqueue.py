@@ -13,6 +13,8 @@ from django.db import transaction
 from fleet.models import KeptFile, Person, Work, WorkState
 from fleet.work.fence import change_state
 
+SOMEBODY_WAITS = 50  # before work that only keeps results fresh
+
 
 @dataclass(frozen=True)
 class GivenFile:
@@ -41,7 +43,8 @@ def send(work_id: uuid.UUID) -> None:
     """One task for the work; a second one does no harm, since only one can claim it."""
     from fleet.work.run import run_work
 
-    task = run_work.enqueue(str(work_id))
+    asked_for = Work.objects.filter(pk=work_id, person__isnull=False).exists()
+    task = run_work.using(priority=SOMEBODY_WAITS if asked_for else 0).enqueue(str(work_id))
     change_state(Work.objects.filter(pk=work_id, state=WorkState.WAITING), task_id=str(task.id))
 
 

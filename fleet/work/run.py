@@ -57,7 +57,7 @@ def run_claimed(work: Work) -> str:
             raise WorkFailed(f"This version knows no work called “{work.kind}”. Start it again from its screen.")
         with Heartbeat(progress), writing(person=work.person):
             result = run(work, progress)
-        end(work, WorkState.DONE, result=result)
+        end(work, WorkState.DONE, message=str(result.pop("message", "")), result=result)
     except Cancelled:
         end(work, WorkState.CANCELLED, message="Stopped as asked. Nothing was stored.")
     except PutBack:
