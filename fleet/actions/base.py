@@ -5,20 +5,22 @@ from __future__ import annotations
 import datetime as dt
 import hashlib
 import json
+import logging
 import uuid
 from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
 from dataclasses import fields, is_dataclass
 from typing import Any
 
-from django.db import transaction
+from django.db import IntegrityError, OperationalError, transaction
 from django.db.models import Model
 
-from fleet.actions.errors import BadValue, NotAllowed
+from fleet.actions.errors import BadValue, Collided, NotAllowed
 from fleet.history import writing
 from fleet.models import DataVersion, EntryKey, Module, Person, Role
 from fleet.rights import may, seen_by
 
+log = logging.getLogger(__name__)
 USED_KEY = "This entry key was used for another entry. Open the form again."
 RETRY = dt.timedelta(hours=1)  # how far the times of one submission, sent twice, may lie apart
 
@@ -28,12 +30,29 @@ def change(
     *, by: Person | None, right: str, module: Module | None = None, reason: str = "", raises_version: bool = True
 ) -> Iterator[Any]:
     """One change of the records; yields the module as it is under its lock. `by` is None only for commands."""
-    with transaction.atomic(), writing(person=by, reason=reason or None):
+    with told_in_words(), transaction.atomic(), writing(person=by, reason=reason or None):
         if by is not None:
             require(by, right)
         yield lock_module(module, by) if module is not None else None
         if raises_version:
             DataVersion.raise_version()
+
+
+@contextmanager
+def told_in_words() -> Iterator[None]:
+    """The guards of the database are the last ones; whoever runs into one gets a sentence, and the log the rest."""
+    try:
+        yield
+    except IntegrityError as error:
+        log.exception("The database refused a change.")
+        raise Collided(
+            "Somebody recorded something here at the same moment. Look at it again, then send yours once more."
+        ) from error
+    except OperationalError as error:
+        if not any(word in str(error) for word in ("locked", "deadlock")):
+            raise
+        log.exception("A change waited too long.")
+        raise Collided("The book was busy for too long, and nothing was recorded. Send it once more.") from error
 
 
 def require(by: Person, right: str) -> None:

@@ -2,12 +2,18 @@
 
 from __future__ import annotations
 
+import datetime as dt
 from itertools import pairwise
 from typing import Any
+from zoneinfo import ZoneInfo
 
 from django.db import models
 
+from fleet.actions.checks_values import label
 from fleet.actions.errors import ChangedSince
+from fleet.formats import long_day, moment
+from fleet.models import Book, Site
+from fleet.models.zones import zone as zone_named
 
 # Derived or kept beside: nobody edits these.
 NOT_TOLD = {"version", "code_order", "folded", "site", "entered_at", "entered_by"}
@@ -33,6 +39,7 @@ def changes_since(record: Any, version: int) -> list[dict[str, Any]]:
         return []
     base, later = opened[-1], [row for row in rows if row.version > version]
     changes = []
+    zone = zone_of(record)
     for column in record._meta.concrete_fields:
         if column.name in NOT_TOLD or not hasattr(base, column.attname) or not later:
             continue
@@ -43,8 +50,9 @@ def changes_since(record: Any, version: int) -> list[dict[str, Any]]:
         changes.append(
             {
                 "field": column.name,
-                "before": worded(column, before),
-                "now": worded(column, now),
+                "words": label(column),
+                "before": worded(column, before, zone),
+                "now": worded(column, now, zone),
                 "who": changer.history_user.name if changer.history_user_id else "Somebody",
                 "when": changer.history_date,
             }
@@ -60,11 +68,19 @@ def last_changer(rows: list[Any], attribute: str) -> Any:
     return changer
 
 
-def worded(column: models.Field, value: Any) -> str:
-    """What a person reads: the code of a record, not its key."""
+def zone_of(record: Any) -> ZoneInfo:
+    """The zone in which instants of the record are read."""
+    site = getattr(record, "site", None)
+    return site.tz if isinstance(site, Site) else zone_named(Book.load().zone)
+
+
+def worded(column: models.Field, value: Any, zone: ZoneInfo) -> str:
+    """What a person reads: the code of a record, not its key; days and times as everywhere."""
     if value in (None, ""):
         return "empty"
     if column.is_relation and column.related_model is not None:
         row = column.related_model._base_manager.filter(pk=value).first()
         return str(row) if row is not None else str(value)
-    return str(value)
+    if isinstance(value, dt.datetime):
+        return moment(value.astimezone(zone))
+    return long_day(value) if isinstance(value, dt.date) else str(value)

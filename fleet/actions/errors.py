@@ -67,11 +67,15 @@ class AlreadyDone(RecordError):
     """Struck out, settled or ended before."""
 
 
+class Collided(RecordError):
+    """The database refused what no check had seen coming, or was busy for too long: nothing was recorded."""
+
+
 class ChangedSince(RecordError):
-    """Somebody changed the record after it was opened; `changes` lists (field, before, now, who, when)."""
+    """Somebody changed the record after it was opened; `changes` lists (field, words, before, now, who, when)."""
 
     def __init__(self, *, record: str, changes: list[dict[str, Any]]) -> None:
-        told = "; ".join(f"{c['field']}: {c['before']} → {c['now']}" for c in changes) or "see its history"
+        told = "; ".join(f"{c['words']}: {c['before']} → {c['now']}" for c in changes) or "see its history"
         who = changes[0]["who"] if changes else "somebody"
         super().__init__(
             f"{who} changed {record} since you opened it ({told}). Look at it again, then save your change.",

@@ -16,7 +16,7 @@ from hypothesis.stateful import RuleBasedStateMachine, initialize, invariant, ru
 from fleet.actions.correct_record import correct_record
 from fleet.actions.end_stop import end_stop
 from fleet.actions.entries import CounterEntry, FindingEntry, PartChange
-from fleet.actions.errors import RecordError
+from fleet.actions.errors import Collided, RecordError
 from fleet.actions.fit_part import fit_part
 from fleet.actions.place_module import place_module
 from fleet.actions.rebuild_clocks import rebuild_clocks
@@ -118,6 +118,7 @@ class Records(RuleBasedStateMachine):
 
     def check_refusal(self, refusal: RecordError, before: tuple[int, ...]) -> None:
         assert refusal.message[-1] in ".?", refusal.message
+        assert not isinstance(refusal, Collided), "the database had to refuse what the action let through"
         assert self.print_of_the_book() == before
 
     def print_of_the_book(self) -> tuple[int, ...]:
