@@ -200,6 +200,8 @@ def _fresh_parts(
     """Start day and parts used at it, for stopped modules and for parts already overdue for planned replacement."""
     # where crews come only at visits the overdue part runs on to the next one
     overdue = (down == 0) & (age >= further["replace_at"]) & (further["visit_every"] == 0)
+    if not overdue.any() and not down.any():
+        return age, np.broadcast_to(np.nan, age.shape), np.broadcast_to(np.int64(0), age.shape)
     start = np.where(down > 0, down, np.where(overdue, 0.0, np.nan))
     fresh = ~np.isnan(start)
     # 2 marks a planned replacement
