@@ -104,7 +104,7 @@ class LifeForm(forms.Form):
         self.offer("part", [(each.code, each.title) for each in choices.parts])
         self.offer("mode", [(each.code, each.title) for each in choices.modes])
         self.offer("set", [("", "the fleet's records"), *((each.code, f"set {each.code}") for each in choices.sets)])
-        known = {"site": choices.sites, "part": choices.parts, "mode": choices.modes}
+        known: dict[str, list[Any]] = {"site": choices.sites, "part": choices.parts, "mode": choices.modes}
         self.shown = {name for name, records in known.items() if len(records) > 1}
         if choices.sets:
             self.shown.add("set")
