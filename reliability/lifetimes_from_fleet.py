@@ -116,6 +116,10 @@ def lives(
     return _answer(asked, rows, [*left_out, *_struck_out(asked)])
 
 
+def component_codes() -> list[str]:
+    return list(Component.objects.values_list("code", flat=True))
+
+
 def reporting_lags(as_of: dt.date, known_on: dt.date | None = None) -> dict[int, int]:
     """For each site that reports at once: days within which 95 % of its failures were known; of its visits if none."""
     once = Site.objects.filter(reports_at_once=True).values_list("pk", flat=True)

@@ -1,5 +1,6 @@
 """The kinds of background work on estimates, found here by their registry."""
 
 from reliability.forecasts.works import count_forecasts
+from reliability.life_works import fit_lives
 
-__all__ = ["count_forecasts"]
+__all__ = ["count_forecasts", "fit_lives"]

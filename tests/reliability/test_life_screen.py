@@ -17,6 +17,7 @@ from fleet.actions.rebuild_clocks import rebuild_clocks
 from fleet.models import Component, DataVersion, FailureMode, LifeSet, Part, SetLife
 from reliability.forms.life import GROUPINGS
 from reliability.life_answer import life_document
+from reliability.life_works import fit_lives
 from tests.factories import make_manager, make_planner
 from tests.reliability.small_fleet import SmallFleet, day
 
@@ -294,3 +295,16 @@ def test_worn_parts_taken_as_good_are_warned_of(nuts: Nuts, ines: Client) -> Non
     page = text_of(ask(ines, worn="withdrawn"))
     assert "parts worn to the limit taken as removed in good order" in page
     assert "about to fail, so the lives shown here are too long" in page
+
+
+def test_the_first_page_of_the_day_is_read_and_not_computed(nuts: Nuts, ines: Client, monkeypatch: Any) -> None:
+    """The daily work asks exactly what the screen asks when nothing is chosen."""
+
+    class Steps:
+        def step(self, done: int, total: int, message: str) -> None:
+            assert done < total
+
+    assert fit_lives(None, Steps()) == {"components": 2}
+    monkeypatch.setattr("reliability.life_answer.life_document", lambda *_, **__: pytest.fail("computed again"))
+    for component in ("NUT", "SCREW"):
+        assert ines.get(LIFE, {"component": component}).status_code == 200
