@@ -141,7 +141,7 @@ def report_difference(kind: FileKind, row: int, name: str, ours: Any, book: Any,
     if name == "all_sites":
         name, ours, book = "linked", "all" if ours else "a list", "all" if book else "a list"
     column = kind.column_of(name)
-    words = {"value": readable(kind, name, ours), "book": f"“{readable(kind, name, book)}”"}
+    words = {"value": readable(kind, name, ours, job), "book": f"“{readable(kind, name, book, job)}”"}
     if kind.name == "readings":
         job.say(kind, row, column, words["value"], READING_STAYS.format(**words))
     elif not job.update:
@@ -162,7 +162,7 @@ def in_use(kind: FileKind, row: int) -> bool:
     return Fitting.objects.filter(**{column: record}).exists()
 
 
-def readable(kind: FileKind, name: str, value: Any) -> str:
+def readable(kind: FileKind, name: str, value: Any, job: Job) -> str:
     """Codes instead of record numbers, yes and no, nothing for nothing."""
     if value is None or value == "":
         return "nothing"
@@ -173,7 +173,13 @@ def readable(kind: FileKind, name: str, value: Any) -> str:
         return "yes" if value else "no"
     if not column.is_relation:
         return str(value)
-    if value < 0:
-        return "a new one"
     related: Any = column.related_model
+    if value < 0:
+        return new_code(related._meta.db_table, value, job)
     return str(related._default_manager.filter(pk=value).values_list("code", flat=True).first() or value)
+
+
+def new_code(table: str, number: int, job: Job) -> str:
+    """The code of a record that comes with the files."""
+    kind = next(kind for kind in job.kinds if kind.table == table)
+    return str(fetch(f"SELECT code FROM {kind.stage} WHERE row = %s", [-number])[0][0])

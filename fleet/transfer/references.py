@@ -14,7 +14,7 @@ def resolve(kind: FileKind, code: str, target: str, column: str, words: str, job
     index_stage(kind, "code")
     run(
         f'UPDATE {kind.stage} SET "{target}" = COALESCE('
-        f"(SELECT other.id FROM {kind.stage} AS other WHERE other.code = {kind.stage}.{code}), "
+        f"(SELECT MAX(other.id) FROM {kind.stage} AS other WHERE other.code = {kind.stage}.{code}), "
         f"(SELECT book.id FROM {kind.table} AS book WHERE book.code = {kind.stage}.{code})) WHERE {code} IS NOT NULL"
     )
     for row, value in fetch(

@@ -138,6 +138,15 @@ def test_present_and_different_is_reported(tmp_path: Path) -> None:
     assert Fitting.objects.get(code="F-2").part.code == "N-2"
 
 
+def test_a_difference_is_told_in_codes(tmp_path: Path) -> None:
+    bring_in(tmp_path)
+    part = "part,component\nN-3,NUT\n"
+    (found,) = look({"parts": part, "fittings": with_cell("fittings", 3, "part", "N-3")}).problems
+
+    assert (found.column, found.value) == ("part", "N-3")
+    assert "the book, which has “N-2”" in found.message
+
+
 def test_update_overwrites_with_history_and_version(tmp_path: Path) -> None:
     bring_in(tmp_path)
     ended = "fitting,module,position,part,removed_on,reason\nF-2,K-9,N1,N-2,2024-05-01,planned\n"
