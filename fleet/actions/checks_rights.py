@@ -7,6 +7,7 @@ from collections.abc import Iterable
 from dataclasses import dataclass
 from typing import Any
 
+from fleet.actions.base import sees
 from fleet.actions.errors import NotAllowed, day_words
 from fleet.models import Finding, Fitting, Module, Person, Site
 from fleet.rights import CORRECT, may, may_correct
@@ -39,7 +40,12 @@ def module_of(record: Any) -> Module:
 
 
 def check_may_correct(by: Person | None, record: Any, fields: Iterable[str] = ()) -> None:
-    if by is None or may(by, CORRECT):
+    """A record belongs to the site where its module stood then, which need not be where it stands now."""
+    if by is None:
+        return
+    if not sees(by, record):
+        raise NotAllowed("This belongs to a site that is none of yours. Ask a planner of that site.")
+    if may(by, CORRECT):
         return
     for entry in entries_behind(record, set(fields)):
         if not may_correct(by, entry):

@@ -10,12 +10,13 @@ from fleet.actions.correct_record import correct_record
 from fleet.actions.entries import CounterEntry, FindingEntry, PartChange
 from fleet.actions.errors import AlreadyDone, BadValue, ChangedSince, ModuleElsewhere, NotAllowed, PositionTaken
 from fleet.actions.fit_part import fit_part
+from fleet.actions.place_module import place_module
 from fleet.actions.record_visit import record_visit
 from fleet.actions.remove_part import remove_part
 from fleet.actions.report_stop import report_stop
 from fleet.actions.strike_out import strike_out
 from fleet.models import Finding, Fitting, Person, Placement, Reading, Stop
-from tests.factories import Carriage, at, make_part, make_site, make_type, on
+from tests.factories import Carriage, at, make_part, make_planner, make_site, make_type, on
 from tests.fleet.invariants import broken_rules
 
 pytestmark = pytest.mark.django_db
@@ -230,6 +231,19 @@ def test_a_crew_corrects_its_own_entry_of_the_same_day(weir: Carriage, rosa: Per
     assert correct(rosa, mine, reason="upgrade").reason == "upgrade"
     with pytest.raises(NotAllowed):
         correct(rosa, mine, part=weir.n2)
+
+
+def test_a_planner_of_the_site_where_it_stands_now_leaves_its_past_elsewhere_alone(weir: Carriage) -> None:
+    visit = record_visit(by=weir.crew, module=weir.module, happened_at=at("2024-02-01"))
+    pond = make_site()
+    place_module(by=weir.manager, module=weir.module, site=pond, from_on=on("2024-03-01"))
+    here = record_visit(by=weir.manager, module=weir.module, happened_at=at("2024-03-09"))
+    half = make_planner(sites=[pond])
+    assert correct(half, here, note="all well").note == "all well"
+    with pytest.raises(NotAllowed, match="none of yours"):
+        correct(half, visit, note="all well")
+    with pytest.raises(NotAllowed, match="none of yours"):
+        strike_out(by=half, record=visit, reason="wrong")
 
 
 def test_others_entries_and_stays_are_the_offices(weir: Carriage, rosa: Person, tom: Person) -> None:
