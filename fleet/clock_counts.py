@@ -43,7 +43,8 @@ def accumulate(faces: Sequence[Face]) -> list[Anchor]:
 
     The first counter starts with its face. A counter with another serial starts at its first face: what ran between
     the last face of the old and the first of the new is not counted. A reset counter counts from 0; one that rolled
-    over went on to the next power of ten above its last face. A reading without a serial is the same counter still.
+    over went on to the next power of ten above its last face; one that shows no less than before did not (it is the
+    other face of a reading that did). A reading without a serial is the same counter still.
     """
     anchors: list[Anchor] = []
     total, last, counter = 0.0, 0.0, ""
@@ -51,7 +52,7 @@ def accumulate(faces: Sequence[Face]) -> list[Anchor]:
         before = total
         if not anchors:
             total = face.value
-        elif face.restarts == "rolled over":
+        elif face.restarts == "rolled over" and face.value < last:
             total += _next_power_of_ten(last) - last + face.value
         elif face.restarts == "reset":
             total += face.value

@@ -98,6 +98,7 @@ def test_without_readings_the_duty_of_each_site_counts_and_is_not_called_measure
         ([Face(1, 51_877, "A"), Face(2, 120, "B"), Face(3, 1_120, "B")], [51_877, 51_877, 52_877]),
         ([Face(1, 99_950, "A"), Face(2, 30, "A", "rolled over")], [99_950, 100_030]),
         ([Face(1, 100_000), Face(2, 5, "", "rolled over")], [100_000, 1_000_005]),
+        ([Face(1, 1_200.5), Face(2, 1_204.0, "", "rolled over")], [1_200.5, 1_204.0]),  # only the strokes rolled over
         ([Face(1, 700), Face(2, 40, "", "reset"), Face(3, 90)], [700, 740, 790]),
         ([Face(1, 700), Face(2, 900, "A"), Face(3, 950, "A")], [700, 700, 750]),  # named: another counter
         ([Face(1, 700, "A"), Face(2, 800), Face(3, 900, "A")], [700, 800, 900]),  # not named: the same counter
