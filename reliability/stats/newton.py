@@ -108,15 +108,18 @@ def maximise_line(
         step = min(max(step, -largest_step), largest_step)
         target = min(max(point + step, lower), upper)
         rounding = 1e-13 * (1.0 + abs(value))
-        for _ in range(60):
-            reached, new_slope, new_bend = evaluate(target) if target != point else (-math.inf, 0.0, 0.0)
-            if reached >= value - rounding and math.isfinite(new_slope) and math.isfinite(new_bend):
-                break
+        reached, new_slope, new_bend = evaluate(target) if target != point else (-math.inf, 0.0, 0.0)
+        halvings = 0
+        while not (reached >= value - rounding and math.isfinite(new_slope) and math.isfinite(new_bend)):
             target = point + 0.5 * (target - point)
-        else:
-            return point, value
+            halvings += 1
+            if halvings > 60 or target == point:
+                return point, value
+            reached, new_slope, new_bend = evaluate(target)
+        # many halvings for next to no gain: value and slope no longer agree to the digits that are left
+        stalled = halvings >= 3 and reached - value < 0.05 * decrement
         point, value, slope, bend = target, reached, new_slope, new_bend
-        if decrement < LINE_DECREMENT_ENOUGH:
+        if stalled or decrement < LINE_DECREMENT_ENOUGH:
             return point, value
     return point, value
 

@@ -124,8 +124,9 @@ def quantity_interval(
         reach = FARTHEST + (3.0 * abs(centre) if scale.falling else 0.0)
         lowest, highest = range_of_psi or (centre - reach, centre + reach)
         peak = evaluate(*best)[0]
+        drift = _drift(curve, gradient, covariance, error)
         ends = [
-            profile_limit(evaluate, curve, best, peak, z, centre, max(error, 1e-6), direction, farthest)
+            profile_limit(evaluate, curve, best, peak, z, centre, max(error, 1e-6), drift, direction, farthest)
             for direction, farthest in ((-1.0, lowest), (1.0, highest))
         ]
     (low, low_open), (high, high_open) = reversed(ends) if scale.falling else ends
@@ -141,6 +142,13 @@ def quantity_interval(
     )
 
 
+def _drift(curve: Curve, gradient: FloatArray, covariance: FloatArray, error: float) -> float:
+    """How fast the free parameter moves with psi along the profile, at the estimate."""
+    base = curve.free_of(0.0, 0.0)
+    direction = np.array([curve.free_of(1.0, 0.0) - base, curve.free_of(0.0, 1.0) - base])
+    return float(direction @ covariance @ gradient) / error**2 if error > 0.0 else 0.0
+
+
 def profile_limit(
     evaluate: EvaluatePlane,
     curve: Curve,
@@ -149,6 +157,7 @@ def profile_limit(
     z: float,
     centre: float,
     error: float,
+    drift: float,
     direction: float,
     farthest: float,
 ) -> tuple[float, bool]:
@@ -157,7 +166,7 @@ def profile_limit(
     The signed root of that fall is nearly straight in psi, so Newton steps on it need few profile maxima; a bracket
     guards them. Lawless, Statistical Models and Methods for Lifetime Data (2003), section 4.1 and appendix C.
     """
-    inside, outside, free, drift = centre, None, curve.free_of(*best), 0.0
+    inside, outside, free = centre, None, curve.free_of(*best)
     psi = centre + direction * min(z * error, 3.0)
     for _ in range(200):
         if direction * (psi - farthest) > 0:
@@ -169,7 +178,7 @@ def profile_limit(
         if fall < z:
             if psi == farthest:
                 return psi, True
-            drift = (new_free - free) / (psi - inside) if psi != inside else 0.0
+            drift = (new_free - free) / (psi - inside) if psi != inside else drift
             inside, free = psi, new_free
         else:
             outside = psi

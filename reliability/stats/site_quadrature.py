@@ -15,10 +15,14 @@ from reliability.stats.weibull_likelihood import IntervalRows, interval_row_haza
 if TYPE_CHECKING:
     from reliability.stats.site_likelihood import SiteSums
 
-# trapezoid nodes in standard deviations around the top, the lower side longer because its tail is exponential
-STEP = 0.6
-POSITIONS = np.arange(-7.8, 5.5, STEP)
+# a coarse look outward from the top, in standard deviations there
+OUTWARD = np.array([-60.0, -30.0, -16.0, -11.0, -8.0, -6.5, -5.0, -3.0, 0.0, 3.0, 4.0, 5.0, 6.0, 7.0, 8.0, 12.0, 20.0])
+# where the integrand has fallen by exp(-17) the rest is below 1e-7 of it
+DEPTH = 17.0
+STEP, MOST_NODES = 0.6, 200
 MODE_STEPS = 40
+# rows a site from which sums of powers are cheaper than the rows themselves
+MANY_ROWS = 12
 # log((1 - exp(-x)) / x) = sum of factor x^power, Bernoulli numbers over power times power factorial; to x = 2 the
 # terms left out are below 1e-9
 SERIES = (
@@ -101,21 +105,38 @@ def _integrals(
     precision = 1.0 / spreads[None, :]
     power = sums.failures[intervals.concerned][:, None] + precision
     rate = sums.hazard[intervals.concerned][:, None] + precision
-    top, width = _tops(intervals, shape, level, power, rate)
-    u = top[..., None] + width[..., None] * POSITIONS
+    u = _nodes(intervals, shape, level, power, rate)
     z = np.exp(u)
     rows = _row_sums(intervals, shape, level, u)
     logs = power[..., None] * u - rate[..., None] * z + rows[0]
-    # below the lowest node the integrand falls by its slope there, which is nearly constant
-    slope = power - rate * z[..., 0] + rows[2][..., 0]
-    step = STEP * width
-    logs[..., 0] += np.log(0.5 + 1.0 / np.maximum(slope * step, 1e-8))
     highest = logs.max(axis=-1, keepdims=True)
     shares = np.exp(logs - highest)
     total = shares.sum(axis=-1, keepdims=True)
     norm = precision * np.log(precision) - special.gammaln(precision)
-    value = (highest + np.log(total))[..., 0] + np.log(step) + norm
+    value = (highest + np.log(total))[..., 0] + np.log(u[..., 1] - u[..., 0]) + norm
     return z, rows, shares / total, value
+
+
+def _nodes(intervals: SiteIntervals, shape: float, level: float, power: FloatArray, rate: FloatArray) -> FloatArray:
+    """Even nodes over all of each integrand that counts, close enough for its width, shape (C, K, J).
+
+    The integrand may be a narrow bell or a plateau with sharp ends (a site known only to have failed early): a coarse
+    look outward from the top finds its ends. Functions of exp(u) need steps below 0.6 however wide they are.
+    """
+    top, width = _tops(intervals, shape, level, power, rate)
+    u = top[..., None] + width[..., None] * OUTWARD
+    logs = (
+        power[..., None] * u - rate[..., None] * np.exp(np.minimum(u, 600.0)) + _row_sums(intervals, shape, level, u)[0]
+    )
+    depth = logs.max(axis=-1, keepdims=True) - logs
+    inside = depth < DEPTH
+    count = OUTWARD.size
+    first = np.maximum(np.argmax(inside, axis=-1) - 1, 0)
+    last = np.minimum(count - np.argmax(inside[..., ::-1], axis=-1), count - 1)
+    low, high = (np.take_along_axis(u, at[..., None], axis=-1) for at in (first, last))
+    steps = (high - low)[..., 0] / (STEP * np.minimum(width, 1.0))
+    nodes = int(min(max(np.ceil(steps.max()), 24), MOST_NODES))
+    return low + (high - low) * np.linspace(0.0, 1.0, nodes + 1)
 
 
 def _row_sums(intervals: SiteIntervals, shape: float, level: float, u: FloatArray) -> FloatArray:
@@ -124,6 +145,8 @@ def _row_sums(intervals: SiteIntervals, shape: float, level: float, u: FloatArra
     widest = np.exp(flat.max(axis=1))[intervals.site]
     log_difference, ratio, curl = interval_row_hazards(rows, shape, level)
     short = log_difference + np.log(widest) < LOG_SERIES_REACH
+    if short.sum() < MANY_ROWS * u.shape[0]:
+        short = np.zeros(short.size, dtype=bool)
     total = np.zeros((6, *flat.shape))
     if short.any():
         total += _series_sums(intervals, short, log_difference, ratio, curl, flat)
