@@ -12,13 +12,15 @@ from reliability.stats.lifetimes import BoolArray, FloatArray, IntArray, Lifetim
 
 # at one age the order is: exact failure begins, any interval ends, an open interval begins
 EXACT_BEGINS, ENDS, OPEN_BEGINS = 0, 1, 2
-SELF_CONSISTENCY_STEPS = 200_000
+SELF_CONSISTENCY_STEPS = 20_000
 MASS_STEPS = 200
 # the Newton steps need a matrix of cells by cells
 MOST_CELLS_FOR_NEWTON = 1500
 # how far the likelihood's slope may point outside, relative to the number of lives
 SLOPE_ENOUGH = 1e-10
 CHANGE_ENOUGH = 1e-12
+# heavy weights leave rounding above that: then no progress for this many steps, once the change is small, will do
+ROUNDING_CHANGE, STEPS_WITHOUT_PROGRESS = 1e-9, 40
 
 
 @dataclass(frozen=True, eq=False)
@@ -268,13 +270,15 @@ def _self_consistent(cells: _Cells) -> tuple[FloatArray, int]:
     """Masses from hazards that reproduce themselves: expected failures over expected numbers at risk in each cell."""
     size = cells.right.size
     hazard = _reproduced(cells, 1.0 / np.arange(size, 0, -1))
-    iteration, settled = 0, False
+    iteration, settled, smallest, since = 0, False, np.inf, 0
     while not settled:
         iteration += 1
         once = _reproduced(cells, hazard)
         twice = _reproduced(cells, once)
         change, bend = once - hazard, twice - 2.0 * once + hazard
-        settled = float(np.abs(change).max()) <= CHANGE_ENOUGH
+        largest = float(np.abs(change).max())
+        smallest, since = (largest, 0) if largest < 0.5 * smallest else (smallest, since + 1)
+        settled = largest <= CHANGE_ENOUGH or (smallest <= ROUNDING_CHANGE and since >= STEPS_WITHOUT_PROGRESS)
         # squared extrapolation (Varadhan & Roland, Scandinavian J. Statistics 35 (2008) 335-353)
         length = float(np.linalg.norm(change)) / max(float(np.linalg.norm(bend)), 1e-300)
         far = hazard + 2.0 * length * change + length * length * bend

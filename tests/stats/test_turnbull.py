@@ -167,6 +167,15 @@ def test_inside_an_interval_only_bounds_are_known():
         curve.quantile(0)
 
 
+def test_heavy_weights_settle_at_their_rounding():
+    ages = [14, 100, 57, 40, 61, 46, 85, 25, 71, 70, 94]
+    weights = [1000, 1000, 5000, 3000, 2000, 5000, 2000, 2000, 5000, 2000, 3000]
+    lives = Lifetimes(ages, [age in (14, 57, 94) for age in ages], weights=weights)
+    curve = turnbull(lives)
+    assert curve.survival == pytest.approx(kaplan_meier(lives).survival, abs=1e-9)
+    assert curve.iterations < 500
+
+
 def test_nothing_failed_and_one_life():
     assert turnbull(Lifetimes([5, 8], [0, 0])).mass.size == 0
     one = turnbull(Lifetimes([5], [1], last_good=[2]))
