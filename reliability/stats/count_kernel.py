@@ -18,7 +18,7 @@ from numpy.typing import NDArray
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
 
-MOST_RENEWALS = 400
+MOST_RENEWALS = 300
 _TAIL_LEFT = 1e-9
 
 

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from reliability.stats.count_masses import Ends, Hazards
+from reliability.stats.count_masses import Ends, Hazards, since_start
 from reliability.stats.count_positions import Classes, Rows
 
 FloatArray = NDArray[np.float64]
@@ -67,7 +67,7 @@ class VisitGrid:
         cumulative = hazards.cumulative(age, which)
         other = classes.other_removals[which][:, None] * np.maximum(since, 0.0)
         due = (age >= classes.replace_at[which][:, None] - 1e-9) & (since > 0.0)
-        masses = _found_at_visits(cumulative - cumulative[..., :1], other, due)
+        masses = _found_at_visits(since_start(cumulative), other, due)
         return Ends(*masses), None, None
 
 

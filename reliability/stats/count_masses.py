@@ -40,8 +40,10 @@ class Hazards:
 
     def _unit(self, ages: FloatArray) -> FloatArray:
         """Cumulative hazard at rate 1, (draws, x, n)."""
-        with np.errstate(divide="ignore"):
-            logs = np.log(ages)
+        with np.errstate(divide="ignore", over="ignore"):
+            return self._unit_at(np.log(ages))
+
+    def _unit_at(self, logs: FloatArray) -> FloatArray:
         if self.deviation is None or not self.deviation.any():
             return np.exp(self.shape[:, None, None] * logs)
         result = np.empty(np.broadcast_shapes(logs.shape, (self.shape.size, 1, 1)))
@@ -92,7 +94,9 @@ class MidpointGrid:
 
     def place_of(self, time: FloatArray, classes: Classes) -> FloatArray:
         """Real place of a time since the start, (len(classes),)."""
-        return time / np.maximum(classes.horizon, 1e-300) * (2 * self.cells)
+        within = classes.horizon > 0
+        place = time / np.where(within, classes.horizon, 1.0) * (2 * self.cells)
+        return np.where(within, place, np.where(time > 0, np.inf, 0.0))
 
     def new(self, hazards: Hazards, classes: Classes, duty: FloatArray) -> tuple[Ends, Ends]:
         """Masses of new parts, and the exact cumulative shares, (draws, classes, places)."""
@@ -123,15 +127,25 @@ class MidpointGrid:
         limit = (classes.replace_at[which][:, None] - age) / factor
         clipped = np.minimum(time[None], limit)
         cumulative = hazards.cumulative(age + clipped * factor, which)
-        failed, removed, alive = _competing(
-            cumulative - cumulative[..., :1], classes.other_removals[which][:, None] * clipped
-        )
+        failed, removed, alive = _competing(since_start(cumulative), classes.other_removals[which][:, None] * clipped)
         share = _start_share(np.log(np.maximum(alive[..., 0] / np.maximum(alive[..., 1], 1e-300), 1.0)))
         ends = Ends(*(_with_start(mass, share) for mass in (failed, removed)), None)
         if not np.isfinite(limit).any():
             return ends, None, None
-        place = limit[..., 0] / np.maximum(classes.horizon[which], 1e-300) * (2 * self.cells)
+        horizon = classes.horizon[which]
+        place = limit[..., 0] / np.where(horizon > 0, horizon, 1e-9) * (2 * self.cells)
         return ends, alive[..., -1], place
+
+
+def since_start(cumulative: FloatArray) -> FloatArray:
+    """Cumulative hazard since the first place; a part impossibly old for its life fails at once."""
+    with np.errstate(invalid="ignore"):
+        since = cumulative - cumulative[..., :1]
+    lost = ~np.isfinite(since)
+    if lost.any():
+        since = np.where(lost, 1e3, since)
+        since[..., 0] = 0.0
+    return since
 
 
 def _competing(cumulative: FloatArray, other: FloatArray) -> tuple[FloatArray, FloatArray | None, FloatArray]:

@@ -27,12 +27,16 @@ class CountMixtures:
 
     def __init__(self, sums: int) -> None:
         self._mass = [np.zeros(64) for _ in range(sums)]
+        self._share = 1.0
 
-    def add(self, tails: FloatArray, weights: FloatArray) -> None:
-        """Add draws: tails P(N_i >= k), (draws, rows, k = 1 ..), and weights (sums, rows)."""
+    def add(self, tails: FloatArray, weights: FloatArray, *, share: float = 1.0) -> None:
+        """Add draws: tails P(N_i >= k), (draws, rows, k = 1 ..), weights (sums, rows); each stands for `share`
+        draws.
+        """
+        self._share = share
         if not tails.shape[1] or not weights.any():
             for mass in self._mass:
-                mass[0] += tails.shape[0]
+                mass[0] += share * tails.shape[0]
             return
         tails = tails[..., : max(int(np.count_nonzero(tails.max(axis=(0, 1)) > 1e-10)), 1)]
         probabilities = _probabilities(tails)
@@ -56,7 +60,7 @@ class CountMixtures:
         if start + mass.size > held.size:
             held = np.concatenate([held, np.zeros(max(start + mass.size, 2 * held.size) - held.size)])
             self._mass[number] = held
-        held[start : start + mass.size] += mass
+        held[start : start + mass.size] += self._share * mass
 
     def _add_wide(self, number: int, cumulants: FloatArray) -> None:
         mean, deviation = cumulants[0], np.sqrt(cumulants[1])

@@ -34,6 +34,7 @@ __all__ = ["CountDistribution", "CountForecast", "Counts", "calibrated_predictio
 LEAST_CELLS = 24
 MOST_CELLS = 512
 FEW_ROWS = 40
+MANY_RENEWALS = 75.0
 _RARE_HAZARD = 0.25
 
 
@@ -122,10 +123,10 @@ def forecast_counts(
     tallies = _Tallies(rows, len(edges) - 1, 0 if group_window is None else group_window + 1)
     coarse = rows.coarse() if len(rows) > FEW_ROWS else rows
     coarse = coarse if len(coarse) < 0.7 * len(rows) else rows
-    for chunk in _chunks(rows, sharpness):
+    for chunk, share in _chunks(rows, sharpness):
         chosen = coarse if _are_rare(rows, _hazards(drawn, rates, rows, chunk), duty[chunk]) else rows
         blocks = _blocks(chosen, float(np.quantile(sharpness[chunk], 0.9)), edges, cells)
-        _add_draws(tallies, blocks, (drawn, rates), (following, next_rates), duty, chunk)
+        _add_draws(tallies.each_for(share), blocks, (drawn, rates), (following, next_rates), duty, chunk)
     return tallies.forecast(rows, windows, draws)
 
 
@@ -209,16 +210,24 @@ def _cell_count(horizon: float, sharpness: float, edges: FloatArray) -> int:
     return MOST_CELLS
 
 
-def _chunks(rows: Rows, sharpness: FloatArray) -> list[IntArray]:
-    """Draws of like lives together: most need few cells and orders; arrays stay within some tens of megabytes."""
+def _chunks(rows: Rows, sharpness: FloatArray) -> list[tuple[IntArray, float]]:
+    """Draws of like lives together, and how many draws each stands for.
+
+    Most draws need few cells and orders; arrays stay within some tens of megabytes. Weak records leave draws with
+    dozens of failures a position: slow to count, and too uncertain to need every one of them.
+    """
     order = np.argsort(sharpness, kind="stable")
-    cells = np.clip(5.0 * rows.classes.horizon.max(initial=0.0) * sharpness[order], LEAST_CELLS, MOST_CELLS)
+    renewals = rows.classes.horizon.max(initial=0.0) * sharpness[order]
+    cells = np.clip(5.0 * renewals, LEAST_CELLS, MOST_CELLS)
     level = np.floor(1.5 * np.log2(cells / LEAST_CELLS)).astype(np.int64)
     chunks = []
     for start, stop in _runs(level):
+        thinning = 8 if renewals[start] > MANY_RENEWALS and stop - start >= 16 else 1
+        mine = order[start:stop][thinning // 2 :: thinning]
         work = max(len(rows), 12 * len(rows.classes), 1) * 2.0 * cells[stop - 1]
-        size = int(np.clip(1.2e6 / work, 1, stop - start))
-        chunks += [order[first : min(first + size, stop)] for first in range(start, stop, size)]
+        size = int(np.clip(1.2e6 / work, 1, mine.size))
+        share = (stop - start) / mine.size
+        chunks += [(mine[first : first + size], share) for first in range(0, mine.size, size)]
     return chunks
 
 
@@ -246,7 +255,10 @@ def _are_rare(rows: Rows, hazards: Hazards, duty: FloatArray) -> bool:
     ages = np.linspace(0.0, rows.age.max(), 6)
     ahead = rows.classes.horizon[:, None] * duty[:, rows.classes.site][:, :, None]
     before = hazards.cumulative(np.broadcast_to(ages, (1, len(rows.classes), ages.size)))
-    return bool((hazards.cumulative(ages + ahead) - before).max() < _RARE_HAZARD)
+    with np.errstate(invalid="ignore"):
+        most = (hazards.cumulative(ages + ahead) - before).max()
+    # not so either where ages are impossible for the life
+    return bool(most < _RARE_HAZARD)
 
 
 def _add_draws(
@@ -282,6 +294,7 @@ class _Tallies:
     """The mixtures being collected: for each kind the total and each window's, one of them by group as well."""
 
     def __init__(self, rows: Rows, windows: int, grouped: int = 0) -> None:
+        self._share = 1.0
         self._grouped = grouped  # the target that the groups speak of: 0 the whole horizon
         classes = rows.classes
         planned = bool(np.isfinite(classes.replace_at).any())
@@ -297,13 +310,19 @@ class _Tallies:
 
     def add(self, kind: str, number: int, tails: FloatArray, weights: FloatArray) -> None:
         """Tails of target `number` (0 the whole horizon) for some draws."""
-        self._mixtures[kind][number].add(tails, weights[self._first if number == self._grouped else -1 :])
+        own = weights[self._first if number == self._grouped else -1 :]
+        self._mixtures[kind][number].add(tails, own, share=self._share)
+
+    def each_for(self, share: float) -> _Tallies:
+        """These tallies, where each draw added from now on stands for `share` draws."""
+        self._share = share
+        return self
 
     def add_nothing(self, draws: int) -> None:
         """No positions at all: nothing will fail."""
         for mixtures in self._mixtures.values():
             for mixture in mixtures:
-                mixture.add(np.zeros((draws, 0, 1)), np.zeros((1, 0)))
+                mixture.add(np.zeros((draws, 0, 1)), np.zeros((1, 0)), share=self._share)
 
     def forecast(self, rows: Rows, windows: Sequence[float] | None, draws: int) -> CountForecast:
         """The finished distributions."""
