@@ -269,6 +269,7 @@ def _curvature(cells: _Cells, values: FloatArray) -> FloatArray:
 def _self_consistent(cells: _Cells) -> tuple[FloatArray, int]:
     """Masses from hazards that reproduce themselves: expected failures over expected numbers at risk in each cell."""
     size = cells.right.size
+    # even masses to begin with: the last hazard is 1
     hazard = _reproduced(cells, 1.0 / np.arange(size, 0, -1))
     iteration, settled, smallest, since = 0, False, np.inf, 0
     while not settled:
@@ -294,8 +295,6 @@ def _self_consistent(cells: _Cells) -> tuple[FloatArray, int]:
 
 def _masses(cells: _Cells, hazard: FloatArray) -> FloatArray:
     """Mass of each cell. Raises UndefinedEstimate where S falls to 0 before others came under observation."""
-    if np.isinf(cells.right[-1]):
-        hazard = np.append(hazard[:-1], 1.0)  # what outlasts all ages fails beyond them
     survival = np.cumprod(np.append(1.0, 1.0 - hazard))
     emptied = np.flatnonzero(survival[1:] < 1e-12)
     if emptied.size and (cells.entry > emptied[0]).any():
@@ -321,7 +320,10 @@ def _reproduced(cells: _Cells, hazard: FloatArray) -> FloatArray:
     failed = mass * covering
     # still at risk in a cell: the share of the row's chance that lies in it or in later cells
     at_risk += np.maximum(_running(first, last, share * summed[last], size) - summed[:-1] * covering, failed)
-    return np.where(at_risk > 0.0, np.minimum(failed / np.maximum(at_risk, 1e-300), 1.0), 0.0)
+    reproduced = np.where(at_risk > 0.0, np.minimum(failed / np.maximum(at_risk, 1e-300), 1.0), 0.0)
+    if np.isinf(cells.right[-1]):
+        reproduced[-1] = 1.0  # what outlasts all ages fails beyond them; none was counted there
+    return reproduced
 
 
 def _running(first: IntArray, last: IntArray, values: FloatArray, size: int) -> FloatArray:
