@@ -11,6 +11,7 @@ from scipy.special import gammaln
 from reliability.stats.errors import InvalidArgument
 from reliability.stats.lifetimes import Lifetimes
 from reliability.stats.posterior import KnownWeibull, weibull_posterior
+from reliability.stats.posterior_likelihood import _correction
 
 
 def fleet(rng: np.random.Generator, sites: int, lives: int, *, shape: float = 2.0, spread: float = 0.0) -> Lifetimes:
@@ -215,3 +216,10 @@ def test_refuses_an_impossible_prior() -> None:
         weibull_posterior(CASES["plenty"], early_until=500.0)
     with pytest.raises(InvalidArgument):
         weibull_posterior(CASES["plenty"]).draws(0)
+
+
+def test_the_correction_of_interval_rows_is_exact_on_both_sides_of_its_seam() -> None:
+    x = np.array([1e-6, 0.02, 0.0999, 0.1001, 1.0, 30.0, 900.0])
+    # log(sinh(x / 2) / (x / 2)), the large ones without overflow
+    expected = np.where(x < 700, np.log(np.sinh(np.minimum(x, 700) / 2) / (x / 2)), x / 2 - np.log(x))
+    assert _correction(x) == pytest.approx(expected, rel=1e-6, abs=1e-12)
