@@ -36,9 +36,9 @@ def test_the_warning_that_names_sites_is_known_by_its_beginning() -> None:
 
 
 def test_an_interval_is_softer_and_everything_is_escaped() -> None:
-    marked = words.with_soft_interval("Half of <b> fail by 3 (we are 95 % sure it lies between 2 and 5). 1 of 9.")
+    marked = words.with_soft_interval("Half of <b> fail by 3 (we are 95 % sure it lies between 2 and 5). 1 of <9.")
     interval = '<span class="ci">(we are 95 % sure it lies between 2 and 5)</span>'
-    assert marked == f"Half of &lt;b&gt; fail by 3 {interval}. 1 of 9."
+    assert marked == f"Half of &lt;b&gt; fail by 3 {interval}. 1 of &lt;9."
 
 
 @pytest.mark.parametrize(
