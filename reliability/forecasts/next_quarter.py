@@ -28,7 +28,7 @@ if TYPE_CHECKING:
     from reliability.stats.counts import CountDistribution, CountForecast, Counts
 
 BANDS = (0.5, 0.8, 0.95)
-FEW_FAILURES, MANY_DRAWS, FEW_DRAWS = 20, 400, 150
+FEW_FAILURES, MANY_DRAWS, FEW_DRAWS = 20, 400, 100
 AGE_CELLS = 60  # ages are told apart to this share of the typical life
 PACE_STEP = 0.12  # paces are told apart to this share
 NEAR_DAYS = 3

@@ -58,6 +58,9 @@ class BlockTails:
         kernel = self._kernel(self._new, self._new_by, kind)
         whole = kernel.tails()
         following = None if self._next is None else self._kernel(*self._next, kind)
+        if following is not None and (self._rows.classes.switch_at <= 0).all():
+            # every part fitted from now on is of the next design: nothing to switch within the horizon
+            kernel, whole, following = following, following.tails(), None
         known: dict[int, FloatArray] = {}
         found = []
         for begin, end in self._spans:
