@@ -22,6 +22,8 @@ Evaluate = Callable[[FloatArray], Evaluation]
 MAXIMUM_ITERATIONS = 200
 # half the squared Newton step in standard errors; the last step is still taken, and squares the error once more
 DECREMENT_ENOUGH = 1e-9
+# where rounding or quadrature allow no better: within 0.04 standard errors of the top
+NEAR_ENOUGH = 1e-3
 # inside a profile only the height matters, and its error is the square of the step's
 LINE_DECREMENT_ENOUGH = 1e-6
 
@@ -64,10 +66,12 @@ def maximise(
         moved = _climb(evaluate, point, value, target)
         if moved is None:
             # no step climbs: either rounding is reached or the function is flat to the last digit
-            return _ended(point, value, gradient, hessian, iteration, decrement < 1e-4, lower, upper)
-        point, value, gradient, hessian = moved
-        if decrement < DECREMENT_ENOUGH:
-            return _ended(point, value, gradient, hessian, iteration, True, lower, upper)
+            return _ended(point, value, gradient, hessian, iteration, decrement < NEAR_ENOUGH, lower, upper)
+        before, (point, value, gradient, hessian, halvings) = value, moved
+        # many halvings for next to no gain: value and slope no longer agree to the digits that are left
+        stalled = halvings >= 3 and value - before < 0.05 * decrement
+        if decrement < DECREMENT_ENOUGH or stalled:
+            return _ended(point, value, gradient, hessian, iteration, decrement < NEAR_ENOUGH, lower, upper)
         pressed = ((point <= lower) & (gradient < 0)) | ((point >= upper) & (gradient > 0))
         if pressed.any():
             return _ended(point, value, gradient, hessian, iteration, False, lower, upper)
@@ -116,7 +120,6 @@ def maximise_line(
             if halvings > 60 or target == point:
                 return point, value
             reached, new_slope, new_bend = evaluate(target)
-        # many halvings for next to no gain: value and slope no longer agree to the digits that are left
         stalled = halvings >= 3 and reached - value < 0.05 * decrement
         point, value, slope, bend = target, reached, new_slope, new_bend
         if stalled or decrement < LINE_DECREMENT_ENOUGH:
@@ -141,15 +144,15 @@ def climbing_step(gradient: FloatArray, hessian: FloatArray) -> FloatArray:
 
 def _climb(
     evaluate: Evaluate, point: FloatArray, value: float, target: FloatArray
-) -> tuple[FloatArray, float, FloatArray, FloatArray] | None:
-    """The first of target, half way, a quarter of the way … that is no worse; None where none is."""
+) -> tuple[FloatArray, float, FloatArray, FloatArray, int] | None:
+    """The first of target, half way, a quarter of the way … that is no worse, with the number of halvings; or None."""
     rounding = 1e-13 * (1.0 + abs(value))
-    for _ in range(60):
+    for halvings in range(60):
         if (target == point).all():
             return None
         reached, gradient, hessian = evaluate(target)
         if reached >= value - rounding and np.isfinite(gradient).all() and np.isfinite(hessian).all():
-            return target, reached, gradient, hessian
+            return target, reached, gradient, hessian, halvings
         target = point + 0.5 * (target - point)
     return None
 
