@@ -37,7 +37,7 @@ def records(request: Any) -> HttpResponse:
         file = form.cleaned_data["records"]
         arguments = {"update": form.cleaned_data["update"], "name": file.name}
         work = enqueue("preview_records", f"Preview of {file.name}", arguments, request.user, [file])
-        return redirect("work", pk=work.pk)
+        return redirect("work", work_id=work.pk)
     return page(request, form, export_form(request), status=422 if form.is_bound else 200)
 
 
@@ -51,17 +51,17 @@ def export(request: Any) -> HttpResponse:
     arguments = {"form": form.cleaned_data["form"], "site": site}
     title = f"Records of {site}" if site else "Records of all sites"
     work = enqueue("export_records", title, arguments, request.user)
-    return redirect("work", pk=work.pk)
+    return redirect("work", work_id=work.pk)
 
 
 @needs(CATALOGUE)
 @require_POST
-def confirm_import(request: Any, pk: Any) -> HttpResponse:
+def confirm_import(request: Any, work_id: Any) -> HttpResponse:
     """Brings in exactly what the preview showed: the same file, and only if it still comes to the same."""
-    preview = get_object_or_404(request.seen(Work), pk=pk, kind="preview_records", state=WorkState.DONE)
+    preview = get_object_or_404(request.seen(Work), pk=work_id, kind="preview_records", state=WorkState.DONE)
     file = preview.files.filter(role="input").first()
     if preview.result.get("error_count") or file is None or not request.user.all_sites:
-        return redirect("work", pk=preview.pk)
+        return redirect("work", work_id=preview.pk)
     begun = request.seen(Work).filter(kind="import_records", arguments__preview=str(preview.pk))
     running = begun.exclude(state__in=[WorkState.FAILED, WorkState.CANCELLED]).first()
     if running is None:
@@ -73,7 +73,7 @@ def confirm_import(request: Any, pk: Any) -> HttpResponse:
             "name": file.name,
         }
         running = enqueue("import_records", f"Import of {file.name}", arguments, request.user)
-    return redirect("work", pk=running.pk)
+    return redirect("work", work_id=running.pk)
 
 
 def export_form(request: Any, data: Any = None) -> ExportForm:

@@ -32,17 +32,17 @@ FILE_COLUMNS = [
 ]
 
 
-def own_work(request: Any, pk: Any) -> Work:
+def own_work(request: Any, work_id: Any) -> Work:
     """Somebody else's work is not there; neither is work that the person's role may not start any more."""
-    work: Work = get_object_or_404(request.seen(Work), pk=pk)
+    work: Work = get_object_or_404(request.seen(Work), pk=work_id)
     if not may(request.user, CATALOGUE if work.kind in RECORDS else LIFE):
         raise Http404
     return work
 
 
 @needs(SEE)
-def work(request: Any, pk: Any) -> HttpResponse:
-    chosen = own_work(request, pk)
+def work(request: Any, work_id: Any) -> HttpResponse:
+    chosen = own_work(request, work_id)
     errors = chosen.result.get("errors", [])
     if request.GET.get("as") == "csv":
         names = ["file", "row", "column", "value", "message"]
@@ -54,16 +54,16 @@ def work(request: Any, pk: Any) -> HttpResponse:
 
 @needs(SEE)
 @require_POST
-def cancel_work(request: Any, pk: Any) -> HttpResponse:
-    chosen = own_work(request, pk)
+def cancel_work(request: Any, work_id: Any) -> HttpResponse:
+    chosen = own_work(request, work_id)
     ask_to_cancel(chosen)
-    return redirect("work", pk=chosen.pk)
+    return redirect("work", work_id=chosen.pk)
 
 
 @needs(SEE)
-def work_file(request: Any, pk: Any) -> HttpResponse:
+def work_file(request: Any, work_id: Any) -> HttpResponse:
     """The file that the work made."""
-    chosen = own_work(request, pk)
+    chosen = own_work(request, work_id)
     file = chosen.files.filter(role="result").first()  # type: ignore[attr-defined]
     if file is None:
         raise Http404
