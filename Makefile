@@ -39,7 +39,8 @@ lock: $(VENV)/test.stamp ## pin the libraries again after requirements.in or req
 
 benchmark: $(VENV)/test.stamp ## measure and print; nothing is judged by the clock
 	@for script in tests/benchmarks/bench_*.py; do \
-		echo "== $$script"; $(BIN)/python "$$script" || exit 1; \
+		name=$${script##*/}; echo "== $$name"; \
+		$(BIN)/python -m tests.benchmarks.$${name%.py} || exit 1; \
 	done
 
 clean: ## remove what these commands made, except the book in data/
