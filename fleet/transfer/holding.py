@@ -5,6 +5,7 @@ from __future__ import annotations
 
 import time
 from collections.abc import Callable
+from functools import partial
 from typing import Any
 
 from django.db import connection, transaction
@@ -95,7 +96,7 @@ def sweep_leftovers() -> None:
     """Of imports that were given up on."""
     ended = Work.objects.filter(kind="import_records", state__in=[WorkState.FAILED, WorkState.CANCELLED])
     for work in ended.filter(result__has_key="holding"):
-        without_constraints(lambda work=work: sweep(work.result["holding"]))
+        without_constraints(partial(sweep, work.result["holding"]))
         work.result = {key: value for key, value in work.result.items() if key != "holding"}
         work.save(update_fields=["result"])
 

@@ -9,7 +9,7 @@ from collections.abc import Callable, Iterable, Iterator
 from dataclasses import dataclass
 from functools import partial
 from pathlib import Path
-from typing import IO
+from typing import Any
 
 from fleet.transfer.problems import Unreadable
 
@@ -109,7 +109,7 @@ def open_zip(name: str, content: bytes) -> list[Table]:
     return not_empty(tables, name)
 
 
-def csv_table(file: str, opened: Callable[[], IO[bytes]]) -> Table:
+def csv_table(file: str, opened: Callable[[], Any]) -> Table:
     def rows() -> Iterator[tuple[int, list[str]]]:
         return csv_rows(file, io.TextIOWrapper(opened(), encoding="utf-8-sig", errors="strict", newline=""))
 

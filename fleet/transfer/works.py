@@ -73,7 +73,7 @@ def tables_of(work: Work) -> Callable[[], Sequence[Table]]:
 
     def kept() -> Sequence[Table]:
         file = KeptFile.objects.filter(pk=work.arguments["file"]).first() if "file" in work.arguments else None
-        file = file or work.files.filter(role="input").first()  # type: ignore[attr-defined]
+        file = file or work.files.filter(role="input").first()
         if file is None:
             raise Unreadable(NO_FILE)
         return open_bytes(file.name, bytes(file.content))

@@ -47,7 +47,7 @@ def insert_statement(kind: FileKind, numbers: Numbers, *, waiting: bool) -> tupl
         if each.column in SKIPPED:
             continue
         expression, values = source_of(each, kind, numbers, waiting)
-        columns.append(each.column)
+        columns.append(str(each.column))
         expressions.append(expression)
         params += values
     statement = (

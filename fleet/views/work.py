@@ -5,6 +5,7 @@ from __future__ import annotations
 from typing import Any
 
 from django.http import Http404, HttpResponse, JsonResponse
+from django.http.response import HttpResponseBase
 from django.shortcuts import get_object_or_404, redirect, render
 from django.urls import reverse
 from django.views.decorators.http import require_POST
@@ -41,7 +42,7 @@ def own_work(request: Any, work_id: Any) -> Work:
 
 
 @needs(SEE)
-def work(request: Any, work_id: Any) -> HttpResponse:
+def work(request: Any, work_id: Any) -> HttpResponseBase:
     chosen = own_work(request, work_id)
     errors = chosen.result.get("errors", [])
     if request.GET.get("as") == "csv":
@@ -64,7 +65,7 @@ def cancel_work(request: Any, work_id: Any) -> HttpResponse:
 def work_file(request: Any, work_id: Any) -> HttpResponse:
     """The file that the work made."""
     chosen = own_work(request, work_id)
-    file = chosen.files.filter(role="result").first()  # type: ignore[attr-defined]
+    file = chosen.files.filter(role="result").first()
     if file is None:
         raise Http404
     answer = HttpResponse(bytes(file.content), content_type=file.content_type)

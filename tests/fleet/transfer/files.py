@@ -5,7 +5,7 @@ from __future__ import annotations
 import csv
 import io
 import zipfile
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
@@ -87,7 +87,7 @@ def text(name: str) -> str:
     return FLEET[name].strip() + "\n"
 
 
-def zipped(files: dict[str, str | bytes]) -> bytes:
+def zipped(files: Mapping[str, str | bytes]) -> bytes:
     content = io.BytesIO()
     with zipfile.ZipFile(content, "w", zipfile.ZIP_DEFLATED) as archive:
         for name, body in files.items():
@@ -97,7 +97,7 @@ def zipped(files: dict[str, str | bytes]) -> bytes:
 
 def fleet(**changed: str | bytes | None) -> dict[str, str | bytes]:
     """The small fleet; a file may be replaced, added, or left out with None."""
-    files: dict[str, str | bytes] = {name: text(name) for name in FLEET}
+    files: Mapping[str, str | bytes] = {name: text(name) for name in FLEET}
     for name, body in changed.items():
         if body is None:
             files.pop(name, None)
@@ -121,16 +121,16 @@ def with_rows(name: str, *rows: str) -> str:
     return text(name) + "\n".join(rows) + "\n"
 
 
-def tables(files: dict[str, str | bytes]) -> Callable[[], Sequence[Table]]:
+def tables(files: Mapping[str, str | bytes]) -> Callable[[], Sequence[Table]]:
     content = zipped(files)
     return lambda: open_bytes("fleet.zip", content)
 
 
-def look(files: dict[str, str | bytes], *, person: Person | None = None, update: bool = False) -> Outcome:
+def look(files: Mapping[str, str | bytes], *, person: Person | None = None, update: bool = False) -> Outcome:
     return Import(tables(files), person=person, update=update, progress=SilentProgress()).preview()
 
 
-def bring_in(folder: Path, files: dict[str, str | bytes] | None = None, *, update: bool = False) -> Work:
+def bring_in(folder: Path, files: Mapping[str, str | bytes] | None = None, *, update: bool = False) -> Work:
     """Through the same work as the command; the files are written into the folder first."""
     path = folder / "fleet.zip"
     path.write_bytes(zipped(fleet() if files is None else files))

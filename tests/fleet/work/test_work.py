@@ -17,6 +17,7 @@ from fleet.work.enqueue import ask_to_cancel
 from fleet.work.progress import STOPPING, Heartbeat
 from fleet.work.reaper import MOST_ATTEMPTS, reap
 from fleet.work.run import claim
+from fleet.work.worker import KEPT_DAYS, forget_old_files
 from tests import factories as make
 from tests.fleet.work.worker_process import wait_until
 
@@ -177,3 +178,14 @@ def test_the_heart_beats_beside_the_work() -> None:
     with Heartbeat(Progress(work), seconds=0.05):
         wait_until(lambda: Work.objects.get(pk=work.pk).heartbeat_at > timezone.now() - LATER / 2, "it beats")
     assert reap() == 0
+
+
+def test_files_of_long_ago_are_forgotten_but_not_the_work() -> None:
+    work = new_work()
+    old, young = (KeptFile.objects.create(work=work, name=name, content=b"x") for name in ("old", "young"))
+    KeptFile.objects.filter(pk=old.pk).update(made_at=timezone.now() - dt.timedelta(days=KEPT_DAYS + 1))
+
+    forget_old_files()
+
+    assert list(KeptFile.objects.all()) == [young]
+    assert Work.objects.filter(pk=work.pk).exists()
