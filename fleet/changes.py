@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import datetime as dt
 from collections import defaultdict
 from collections.abc import Iterable
 from dataclasses import dataclass
@@ -9,6 +10,7 @@ from typing import Any
 
 from django.db import models
 
+from fleet.formats import long_day, moment
 from fleet.models import (
     Book,
     Component,
@@ -46,7 +48,18 @@ KINDS: dict[str, type[models.Model]] = {
 }
 OFFICE_KINDS = {"person", "book"}  # need the right to people and settings
 VERBS = {"+": "entered", "~": "changed", "-": "removed"}
-NOT_TOLD = {"id", "version", "code_order", "folded", "struck_out_at", "struck_out_by_id", "entered_by_id", "site_id"}
+NOT_TOLD = {
+    "id",
+    "version",
+    "code_order",
+    "folded",
+    "struck_out_at",
+    "struck_out_by_id",
+    "entered_by_id",
+    "entered_at",
+    "happened_on",
+    "site_id",
+}
 
 
 @dataclass(frozen=True)
@@ -80,7 +93,9 @@ def words_of(field: Any, value: Any, names: dict[Any, dict[Any, str]]) -> str:
         return names.get(field.related_model, {}).get(value, f"number {value}")
     if isinstance(value, bool):
         return "yes" if value else "no"
-    return str(value)
+    if isinstance(value, dt.datetime):
+        return f"{moment(value.astimezone(dt.UTC))} UTC"
+    return long_day(value) if isinstance(value, dt.date) else str(value)
 
 
 def label_of(field: Any) -> str:
