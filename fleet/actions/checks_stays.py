@@ -18,7 +18,8 @@ class Stays:
     def __init__(self, module: Module, positions: Iterable[Position | int], since: dt.date | None = None) -> None:
         self.module = module
         keys = {position if isinstance(position, int) else position.pk for position in positions}
-        rows = Fitting.objects.standing().filter(module=module, position__in=keys).select_related("part")
+        # The usual order would join modules, types and positions only to sort a handful of rows.
+        rows = Fitting.objects.standing().filter(module=module, position__in=keys).order_by("fitted_on", "id")
         if since is not None:
             rows = rows.filter(Q(removed_on=None) | Q(removed_on__gte=since))
         self.rows: list[Fitting] = list(rows) if keys else []
