@@ -85,7 +85,7 @@ class LifeForm(forms.Form):
     )
     set = forms.ChoiceField(required=False, label="Lives from")
     worn = forms.ChoiceField(
-        choices=[("", "failures: the limit is the failure"), ("withdrawn", "taken out in good order")],
+        choices=[("", "failures"), ("withdrawn", "removals in good order")],
         required=False,
         label="Parts worn to the limit count as",
     )
