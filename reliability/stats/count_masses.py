@@ -81,6 +81,7 @@ class MidpointGrid:
     """`cells` equal cells of each class's horizon: masses at odd places 1, 3, ..., tails at places 0 .. 2 cells."""
 
     cells: int
+    refit_delay: float = 0.0  # from a failure to the first moment the new part can fail, in the unit of the horizon
 
     @property
     def places(self) -> int:
@@ -101,7 +102,7 @@ class MidpointGrid:
     def new(self, hazards: Hazards, classes: Classes, duty: FloatArray) -> tuple[Ends, Ends]:
         """Masses of new parts, and the exact cumulative shares, (draws, classes, places)."""
         fraction = np.arange(self.places) / (2.0 * self.cells)
-        time = fraction * classes.horizon[:, None]
+        time = np.maximum(fraction * classes.horizon[:, None] - self.refit_delay, 0.0)
         limit = classes.replace_at[:, None] / duty[:, :, None]
         clipped = np.minimum(time[None], limit)
         cumulative = hazards.cumulative(clipped * duty[:, :, None])

@@ -91,6 +91,7 @@ def simulate_counts(
     leave_at: ArrayLike = np.inf,
     next_posterior: Any = None,
     switch_at: ArrayLike = np.inf,
+    refit_delay: float = 0.0,
 ) -> SimulatedCounts:
     """One simulated horizon for each posterior draw; arguments as in `forecast_counts` (no weights). Units of the
     lives.
@@ -110,6 +111,7 @@ def simulate_counts(
         other_removals=np.broadcast_to(np.asarray(other_removals, dtype=np.float64), (count,)),
         switch_at=np.broadcast_to(np.asarray(switch_at, dtype=np.float64), (count,)),
         visits=None if visits is None else tuple(np.broadcast_to(np.asarray(v, dtype=float), (count,)) for v in visits),
+        refit_delay=refit_delay,
         rng=rng,
     )
     edges = np.array([0.0, 1.0]) if windows is None else np.asarray(windows, dtype=np.float64) / windows[-1]
@@ -138,6 +140,7 @@ class _Fleet:
     other_removals: FloatArray
     switch_at: FloatArray
     visits: tuple[FloatArray, FloatArray] | None
+    refit_delay: float
     rng: np.random.Generator
 
     def run(self, age: FloatArray, down: FloatArray, tally: _Tally) -> None:
@@ -160,7 +163,7 @@ class _Fleet:
             if not here.any():
                 return
             tally.count(end, here, failed, planned)
-            now = np.where(here, end, np.inf)
+            now = np.where(here, end + self.refit_delay, np.inf)
             fitted, current = now, np.zeros(size)
 
     def _next_end(

@@ -66,6 +66,7 @@ def forecast_counts(
     leave_at: ArrayLike | None = None,
     next_posterior: Posterior | None = None,
     switch_at: ArrayLike | None = None,
+    refit_delay: float = 0.0,
     cells: int | None = None,
     group_window: int | None = None,
 ) -> CountForecast:
@@ -83,7 +84,9 @@ def forecast_counts(
     (common, a site's).
     down_until: above 0 the module is stopped and gets a new part then. leave_at: the position is counted until then.
     next_posterior, switch_at: parts fitted after switch_at live by next_posterior.
-    draws: of the posterior. cells: steps of the grid (chosen from the lives if None).
+    refit_delay: from a failure to the moment the new part's life begins; half a day where failures are written down by
+    the day and parts begin with the next. draws: of the posterior. cells: steps of the grid (chosen from the lives
+    if None).
     group_window: by_group speaks of this window (0 the first) instead of the whole horizon.
     Raises InvalidArgument. Source: Cox 1962; early renewals by mass at cell midpoints, see count_kernel.
     """
@@ -110,6 +113,8 @@ def forecast_counts(
             "switch_at": np.inf if switch_at is None else switch_at,
         },
     )
+    if not refit_delay >= 0:
+        raise InvalidArgument(f"refit_delay is {refit_delay:g}; it must be at least 0.")
     if (next_posterior is None) != (switch_at is None):
         raise InvalidArgument("next_posterior and switch_at belong together: give both or neither.")
     drawn = posterior.draws(draws, rng)
@@ -125,7 +130,7 @@ def forecast_counts(
     coarse = coarse if len(coarse) < 0.7 * len(rows) else rows
     for chunk, share in _chunks(rows, sharpness):
         chosen = coarse if _are_rare(rows, _hazards(drawn, rates, rows, chunk), duty[chunk]) else rows
-        blocks = _blocks(chosen, float(np.quantile(sharpness[chunk], 0.9)), edges, cells)
+        blocks = _blocks(chosen, float(np.quantile(sharpness[chunk], 0.9)), edges, cells, refit_delay)
         _add_draws(tallies.each_for(share), blocks, (drawn, rates), (following, next_rates), duty, chunk)
     return tallies.forecast(rows, windows, draws)
 
@@ -186,13 +191,13 @@ def _sharpness(drawn: PosteriorDraws, rates: FloatArray) -> FloatArray:
         return np.maximum(drawn.shapes, 2.5) / drawn.scales * np.maximum(hardest, 1e-300) ** (1.0 / drawn.shapes)
 
 
-def _blocks(rows: Rows, sharpness: float, edges: FloatArray, cells: int | None) -> list[Block]:
+def _blocks(rows: Rows, sharpness: float, edges: FloatArray, cells: int | None, refit_delay: float) -> list[Block]:
     classes = rows.classes
     at_visits = classes.visit_every > 0
     blocks = []
     if (~at_visits).any():
         number = cells or _cell_count(float(classes.horizon[~at_visits].max()), sharpness, edges)
-        blocks.append(Block(MidpointGrid(number), rows.of_classes(~at_visits), edges))
+        blocks.append(Block(MidpointGrid(number, refit_delay), rows.of_classes(~at_visits), edges))
     if at_visits.any():
         some = rows.of_classes(at_visits)
         seen = (some.classes.horizon - some.classes.visit_next) / some.classes.visit_every

@@ -19,7 +19,7 @@ from numpy.typing import NDArray
 from reliability.stats.early_failures import early_window
 from reliability.stats.errors import InvalidArgument
 from reliability.stats.lifetimes import Lifetimes
-from reliability.stats.posterior import WeibullPosterior, weibull_posterior
+from reliability.stats.posterior import WeibullPosterior, unrounded, weibull_posterior
 from reliability.stats.posterior_draws import PosteriorDraws, joined_draws
 from reliability.stats.posterior_lognormal import LognormalGrid, lognormal_grid
 
@@ -95,11 +95,13 @@ def life_posterior(
     log_shape_prior: tuple[float, float] = (log(2.0), 1.0),
     spread_prior: float = 1.0,
     early_until: float | None = None,
+    rounded_up_to: float = 0.0,
 ) -> LifePosterior:
     """Posterior for counts of failures to come. Arguments as in `weibull_posterior`.
 
     early_until: looked for in the records if None. With site_spread (and two sites) half the prior is on sites alike.
     """
+    lifetimes = unrounded(lifetimes, rounded_up_to)
     until = early_window(lifetimes) if early_until is None else early_until
     spreads = [False, True] if site_spread and lifetimes.site_labels.size > 1 else [site_spread]
     weibulls = [

@@ -132,15 +132,18 @@ def weibull_posterior(
     log_shape_prior: tuple[float, float] = (log(2.0), 1.0),
     spread_prior: float = 1.0,
     early_until: float = 0.0,
+    rounded_up_to: float = 0.0,
 ) -> WeibullPosterior:
     """Posterior of shape, scale and (with site_spread) the variance nu of site factors, as weighted grid points.
 
     log_shape_prior: mean and standard deviation of log shape. spread_prior: mean of the exponential prior on nu.
     early_until: lives are split at this age: a share fails before it (its own binomial), the rest is Weibull given
-    survival to it; 0 means one Weibull. Raises InvalidArgument for a prior outside its domain.
+    survival to it; 0 means one Weibull. rounded_up_to: the unit that ages at failure were rounded up to (1 for whole
+    days), see `unrounded`. Raises InvalidArgument for a prior outside its domain.
     """
     if not (log_shape_prior[1] > 0 and spread_prior > 0 and early_until >= 0):
         raise InvalidArgument("The prior's standard deviation and mean spread must be above 0, early_until at least 0.")
+    lifetimes = unrounded(lifetimes, rounded_up_to)
     early_counts = (0.0, 0.0)
     if early_until:
         lifetimes, early_counts = split_early(lifetimes, early_until)
@@ -170,6 +173,31 @@ def _settled_grid(
             break
     axes = [resized(axis, size) for axis, size in zip(axes, _FINE, strict=True)]
     return axes, _log_weights(sums, axes, log_shape_prior, spread_prior)
+
+
+def unrounded(lifetimes: Lifetimes, unit: float) -> Lifetimes:
+    """The lives with half a unit taken off exact ages at failure, which were rounded up; withdrawals are whole units
+    done.
+
+    Left as they are, a large fleet of wearing parts is forecast almost one per cent too low at a life of eighty days.
+    """
+    if unit < 0:
+        raise InvalidArgument(f"Ages cannot be rounded up to {unit:g}; give the unit, or 0 where they are not rounded.")
+    if unit == 0:
+        return lifetimes
+    exact = lifetimes.is_exact
+    middle = np.maximum(lifetimes.durations - 0.5 * unit, 0.5 * np.minimum(unit, lifetimes.durations))
+    # a life entered within its last unit keeps its age
+    room = exact & (middle > lifetimes.entries)
+    return Lifetimes(
+        np.where(room, middle, lifetimes.durations),
+        lifetimes.observed,
+        entries=lifetimes.entries,
+        last_good=lifetimes.last_good,
+        weights=lifetimes.weights,
+        sites=lifetimes.sites,
+        groups=lifetimes.groups,
+    )
 
 
 def split_early(lifetimes: Lifetimes, until: float) -> tuple[Lifetimes, tuple[float, float]]:

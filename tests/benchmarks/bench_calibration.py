@@ -67,7 +67,7 @@ class Scores:
 
 def forecast(case: Case, fleet: Fleet, rng: np.random.Generator) -> CountForecast:
     """The forecast as the program makes it: early failures looked for, site spread, removals by their rate."""
-    posterior = life_posterior(fleet.records, site_spread=True)
+    posterior = life_posterior(fleet.records, site_spread=True, rounded_up_to=1.0)
     unplanned = 0.0 if np.isfinite(case.replace_at) else fleet.removals / fleet.observed_time
     return forecast_counts(
         posterior,
@@ -81,6 +81,7 @@ def forecast(case: Case, fleet: Fleet, rng: np.random.Generator) -> CountForecas
         visits=fleet.visits,
         replace_at=case.replace_at if np.isfinite(case.replace_at) else None,
         duty_spread=case.duty_spread,
+        refit_delay=0.5,
     )
 
 

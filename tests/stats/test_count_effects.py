@@ -43,6 +43,7 @@ CASES: dict[str, dict[str, Any]] = {
     "stopped now": {"down_until": DOWN},
     "stopped now, visits": {"down_until": DOWN, "visits": (14.0, NEXT_VISIT)},
     "leaving": {"leave_at": LEAVE},
+    "new parts begin later": {"refit_delay": 3.0, "other_removals": 0.004},
     "next design from a day on": {"next_posterior": LATER_NUT, "switch_at": 35.0},
     "next design, removed": {"next_posterior": LATER_NUT, "switch_at": 35.0, "other_removals": 0.01},
     "next design, visits": {"next_posterior": LATER_NUT, "switch_at": 40.0, "visits": (14.0, NEXT_VISIT)},

@@ -10,7 +10,7 @@ from scipy.special import gammaln
 
 from reliability.stats.errors import InvalidArgument
 from reliability.stats.lifetimes import Lifetimes
-from reliability.stats.posterior import KnownWeibull, weibull_posterior
+from reliability.stats.posterior import KnownWeibull, unrounded, weibull_posterior
 from reliability.stats.posterior_likelihood import _correction
 
 
@@ -223,3 +223,23 @@ def test_the_correction_of_interval_rows_is_exact_on_both_sides_of_its_seam() ->
     # log(sinh(x / 2) / (x / 2)), the large ones without overflow
     expected = np.where(x < 700, np.log(np.sinh(np.minimum(x, 700) / 2) / (x / 2)), x / 2 - np.log(x))
     assert _correction(x) == pytest.approx(expected, rel=1e-6, abs=1e-12)
+
+
+def test_ages_written_down_in_whole_days_are_taken_at_their_middle() -> None:
+    """A failure is recorded the day it happened (rounded up), a withdrawal in whole days done; the truth comes back."""
+    rng = np.random.default_rng(13)
+    life, watched = 40.0 * rng.weibull(2.0, 60_000), rng.integers(5, 90, 60_000)
+    records = Lifetimes(np.where(life <= watched, np.ceil(life), watched), life <= watched).grouped()
+    plain, middle = (weibull_posterior(records, rounded_up_to=unit) for unit in (0.0, 1.0))
+    scales = [np.exp(found.weight @ (-found.log_level / np.exp(found.log_shape))) for found in (plain, middle)]
+    shapes = [np.exp(found.weight @ found.log_shape) for found in (plain, middle)]
+    assert (shapes[1], scales[1]) == pytest.approx((2.0, 40.0), rel=0.006)
+    assert scales[0] > 1.007 * 40.0
+    assert shapes[0] > 1.01 * 2.0
+
+
+def test_a_life_entered_within_its_last_day_keeps_its_age() -> None:
+    records = Lifetimes([1.0, 5.0, 9.0], [1, 1, 0], entries=[0.0, 4.7, 2.0])
+    assert unrounded(records, 1.0).durations.tolist() == [0.5, 5.0, 9.0]
+    with pytest.raises(InvalidArgument):
+        unrounded(records, -1.0)
