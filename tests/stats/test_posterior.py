@@ -233,9 +233,9 @@ def test_ages_written_down_in_whole_days_are_taken_at_their_middle() -> None:
     plain, middle = (weibull_posterior(records, rounded_up_to=unit) for unit in (0.0, 1.0))
     scales = [np.exp(found.weight @ (-found.log_level / np.exp(found.log_shape))) for found in (plain, middle)]
     shapes = [np.exp(found.weight @ found.log_shape) for found in (plain, middle)]
-    assert (shapes[1], scales[1]) == pytest.approx((2.0, 40.0), rel=0.006)
-    assert scales[0] > 1.007 * 40.0
-    assert shapes[0] > 1.01 * 2.0
+    assert (shapes[1], scales[1]) == pytest.approx((2.0, 40.0), rel=0.012)
+    assert scales[0] > 1.008 * scales[1]
+    assert shapes[0] > 1.01 * shapes[1]
 
 
 def test_a_life_entered_within_its_last_day_keeps_its_age() -> None:
