@@ -82,6 +82,14 @@ def test_the_reporting_lag_cuts_running_parts_and_late_failures_alike(fleet: Sma
     assert left_out(cut) == {"fitted after the last day that counts at its site": 1}
 
 
+def test_one_late_failure_in_ten_is_more_than_five_in_a_hundred(fleet: SmallFleet) -> None:
+    lock = fleet.site()
+    for number in range(10):
+        fleet.fit(fleet.module(f"ADA-{number}", lock), 0, 30, "failed", known=35 if number == 0 else 30)
+    fleet.fit(fleet.module("BEN", lock), 0)
+    assert rows_of(fleet.lives(100)) == [(0, 30, "failed", None, 10), (0, 95, "running", None, 1)]
+
+
 def test_without_failures_the_visits_tell_the_lag(fleet: SmallFleet) -> None:
     ada = fleet.module("ADA", fleet.site())
     fleet.fit(ada, 0)
