@@ -281,7 +281,7 @@ def _self_consistent(cells: _Cells) -> tuple[FloatArray, int]:
         smallest, since = (largest, 0) if largest < 0.5 * smallest else (smallest, since + 1)
         settled = largest <= CHANGE_ENOUGH or (smallest <= ROUNDING_CHANGE and since >= STEPS_WITHOUT_PROGRESS)
         # squared extrapolation (Varadhan & Roland, Scandinavian J. Statistics 35 (2008) 335-353)
-        length = float(np.linalg.norm(change)) / max(float(np.linalg.norm(bend)), 1e-300)
+        length = float(np.linalg.norm(change)) / max(float(np.linalg.norm(bend)), 1e-12)
         far = hazard + 2.0 * length * change + length * length * bend
         usable = length > 1.0 and bool(((far >= 0.0) & (far <= 1.0)).all())
         hazard = _reproduced(cells, far) if usable and not settled else twice

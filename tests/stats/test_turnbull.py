@@ -176,6 +176,11 @@ def test_heavy_weights_settle_at_their_rounding():
     assert curve.iterations < 500
 
 
+def test_a_change_without_bend_overflows_nothing():
+    lives = Lifetimes([89, 20, 14, 14, 53, 43], [0, 1, 1, 1, 1, 1], weights=[1000, 3000, 1000, 2000, 3000, 5000])
+    assert turnbull(lives).survival == pytest.approx(kaplan_meier(lives).survival, abs=1e-9)
+
+
 def test_nothing_failed_and_one_life():
     assert turnbull(Lifetimes([5, 8], [0, 0])).mass.size == 0
     one = turnbull(Lifetimes([5], [1], last_good=[2]))
