@@ -227,7 +227,7 @@ def _lives(posterior: Any, drawn: PosteriorDraws, labels: list[Any]) -> _Lives:
 
 
 def _duty(spread: float | tuple[float, float], draws: int, labels: list[Any], rng: np.random.Generator) -> FloatArray:
-    common, own = (spread, 0.0) if np.ndim(spread) == 0 else spread
+    common, own = spread if isinstance(spread, tuple) else (spread, 0.0)
     distinct = list(dict.fromkeys(labels))
     number = {label: index for index, label in enumerate(distinct)}
     logs = common * rng.standard_normal((draws, 1)) - common**2 / 2.0

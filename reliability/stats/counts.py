@@ -159,7 +159,7 @@ def _needs_sites(
     spread = posterior.has_spread or (next_posterior is not None and next_posterior.has_spread)
     if spread and sites is None:
         raise InvalidArgument("This posterior has a spread between sites: give the site of every position.")
-    return spread or np.ndim(duty_spread) > 0
+    return spread or isinstance(duty_spread, tuple)
 
 
 def _site_rates(posterior: Posterior, drawn: PosteriorDraws, rows: Rows) -> FloatArray:
@@ -172,7 +172,7 @@ def _site_rates(posterior: Posterior, drawn: PosteriorDraws, rows: Rows) -> Floa
 
 def _duty_factors(spread: float | tuple[float, float], draws: int, sites: int, rng: np.random.Generator) -> FloatArray:
     """Lognormal factors of mean 1 on the horizon's use, (draws, sites); the common one is stratified."""
-    common, own = (spread, 0.0) if np.ndim(spread) == 0 else spread
+    common, own = spread if isinstance(spread, tuple) else (spread, 0.0)
     if common < 0 or own < 0:
         raise InvalidArgument("duty_spread must be at least 0.")
     factors = np.ones((draws, sites))
