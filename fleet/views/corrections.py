@@ -38,7 +38,7 @@ def correct_record(request: Any, kind: str, pk: int) -> HttpResponse:
     if kind not in CORRECT_FORMS:
         raise Http404
     record = opened(request, kind, pk)
-    form = CORRECT_FORMS[kind](request.POST or None, record=record, request=request)
+    form = CORRECT_FORMS[kind](request.POST if request.method == "POST" else None, record=record, request=request)
     if request.method == "POST" and form.is_valid():
         asked = {"version": form.cleaned_data["version"], "reason": form.cleaned_data["reason"]}
         try:
@@ -56,7 +56,7 @@ def strike_out_record(request: Any, kind: str, pk: int) -> HttpResponse:
     from fleet.actions.strike_out import strike_out
 
     record = opened(request, kind, pk)
-    form = StrikeOutForm(request.POST or None, record=record)
+    form = StrikeOutForm(request.POST if request.method == "POST" else None, record=record)
     if request.method == "POST" and form.is_valid():
         try:
             strike_out(by=request.user, record=record, **form.cleaned_data)

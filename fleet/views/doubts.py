@@ -79,7 +79,7 @@ def settle_doubt(request: Any, pk: int) -> HttpResponse:
     from fleet.actions.settle_looks_wrong import settle_looks_wrong
 
     doubt = get_object_or_404(request.seen(LooksWrong).select_related("module", "said_by"), pk=pk)
-    form = SettleForm(request.POST or None)
+    form = SettleForm(request.POST if request.method == "POST" else None)
     if request.method == "POST" and form.is_valid():
         try:
             settle_looks_wrong(by=request.user, doubt=doubt, **form.cleaned_data)

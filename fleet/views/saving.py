@@ -26,7 +26,7 @@ def save_form(
     **context: Any,
 ) -> HttpResponse:
     """Shows the form; on POST calls `form.save_by(person)` and goes to the record's page, or tells what is wrong."""
-    form = form_class(request.POST or None, record=record, request=request)
+    form = form_class(request.POST if request.method == "POST" else None, record=record, request=request)
     if request.method == "POST" and form.is_valid():
         try:
             saved = form.save_by(request.user)

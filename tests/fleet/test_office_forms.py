@@ -1,0 +1,116 @@
+"""Forms of the office: what is wrong is said at its field, nothing is stored, nothing breaks."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import pytest
+from django.test import Client
+
+from fleet.models import Book, Component, FailureMode, Module, ModuleType, Part, Person, Placement, Position, Site
+from tests import factories as make
+
+pytestmark = pytest.mark.django_db
+LONG = "x" * 10_000
+ROTTEN = [LONG, "nul\0byte", "=1+1", "-1", "1e999", "2026-02-30", "31.12.2026", "९", "<script>", " "]
+
+
+@pytest.fixture
+def world(client: Client) -> make.Carriage:
+    carriage = make.Carriage()
+    make.make_book()
+    client.force_login(carriage.manager)
+    return carriage
+
+
+def forms_of(world: make.Carriage) -> dict[str, dict[str, Any]]:
+    """Every form of the office with a right entry."""
+    return {
+        "/sites/new/": {"code": "POND", "kind": "field"},
+        "/modules/new/": {"code": "BC-9", "type": world.type.code},
+        "/modules/place/": {"module": world.module.code, "site": world.site.code, "from_on": "2026-01-05"},
+        "/catalogue/components/new/": {"code": "SAIL", "clock": "days"},
+        f"/catalogue/components/{world.nuts.code}/modes/new/": {"code": "TORN"},
+        "/catalogue/types/new/": {"code": "KITE"},
+        f"/catalogue/types/{world.type.code}/positions/new/": {"code": "P-9", "component": world.nuts.code, "order": 1},
+        "/catalogue/parts/new/": {
+            "code": "S-9",
+            "component": world.nuts.code,
+            "state": "current",
+            "pack": 1,
+            "minimum": 0,
+        },
+        "/people/new/": {"code": "ROSA", "name": "Rosa", "role": "crew", "sites": [world.site.code], "is_active": "on"},
+    }
+
+
+def counts() -> list[int]:
+    models = (Site, Module, Placement, Component, FailureMode, ModuleType, Position, Part, Person, Book)
+    return [model.objects.count() for model in models]
+
+
+def test_a_right_entry_is_stored(client: Client, world: make.Carriage) -> None:
+    for address, entry in forms_of(world).items():
+        before = counts()
+        answer = client.post(address, entry)
+        assert answer.status_code == 302, (address, answer.content.decode()[-3000:])
+        assert sum(counts()) == sum(before) + 1, address
+
+
+def test_every_field_takes_rotten_input_as_an_error_in_words(client: Client, world: make.Carriage) -> None:
+    for address, entry in forms_of(world).items():
+        fields = client.get(address).context["form"].fields
+        for name in fields:
+            for rotten in ROTTEN:
+                before = counts()
+                answer = client.post(address, {**entry, name: rotten})
+                assert answer.status_code in {302, 422}, (address, name, rotten[:20])
+                if answer.status_code == 422:
+                    assert counts() == before, (address, name, rotten[:20])
+                    assert answer.context["form"].errors, (address, name, rotten[:20])
+                elif sum(counts()) > sum(before):
+                    entry = {**entry, "code": f"C-{make.number()}"} if "code" in entry else entry
+
+
+def test_an_empty_form_names_what_is_missing(client: Client, world: make.Carriage) -> None:
+    for address in forms_of(world):
+        answer = client.post(address, {})
+        assert answer.status_code == 422, address
+        assert answer.context["form"].errors, address
+
+
+def test_a_code_that_exists_is_refused(client: Client, world: make.Carriage) -> None:
+    answer = client.post("/sites/new/", {"code": world.site.code.lower(), "kind": "field"})
+    assert answer.status_code == 422
+    assert "code" in answer.context["form"].errors
+
+
+def test_who_edits_an_older_version_is_told_what_changed(client: Client, world: make.Carriage) -> None:
+    address = f"/sites/{world.site.code}/edit/"
+    opened = client.get(address).context["form"]
+    entry = {"code": world.site.code, "kind": "field", "zone": "Europe/Lisbon", "version": opened["version"].value()}
+    assert client.post(address, {**entry, "name": "Old lock"}).status_code == 302
+    answer = client.post(address, {**entry, "name": "New lock"})
+    assert answer.status_code == 422
+    assert "since you opened it" in answer.content.decode()
+    world.site.refresh_from_db()
+    assert world.site.name == "Old lock"
+
+
+def test_history_tells_old_and_new_and_who(client: Client, world: make.Carriage) -> None:
+    address = f"/sites/{world.site.code}/edit/"
+    client.post(address, {"code": world.site.code, "kind": "field", "zone": "UTC", "name": "Old lock", "version": 1})
+    page = client.get("/history/?kind=site").content.decode()
+    assert "Old lock" in page
+    assert world.manager.name in page
+    assert "browser" in page
+
+
+def test_a_manager_can_hand_over_a_link_and_sign_somebody_out(client: Client, world: make.Carriage) -> None:
+    page = client.post(f"/people/{world.crew.code}/link/").content.decode()
+    assert "/password/" in page
+    phone = Client()
+    phone.force_login(world.crew)
+    assert phone.get("/").status_code == 200
+    client.post(f"/people/{world.crew.code}/sign-out/")
+    assert phone.get("/").status_code == 302
