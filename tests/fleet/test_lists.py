@@ -14,15 +14,6 @@ from tests import factories as make
 
 pytestmark = pytest.mark.django_db
 LISTS = ["/", "/sites/", "/modules/", "/catalogue/", "/catalogue/parts/", "/people/", "/history/", "/looks-wrong/"]
-    "/",
-    "/sites/",
-    "/modules/",
-    "/catalogue/",
-    "/catalogue/parts/",
-    "/people/",
-    "/history/?kind=site",
-    "/looks-wrong/",
-]
 
 
 @pytest.fixture

@@ -25,10 +25,11 @@ def world(client: Client) -> make.Carriage:
 
 def forms_of(world: make.Carriage) -> dict[str, dict[str, Any]]:
     """Every form of the office with a right entry."""
+    elsewhere = make.make_site()
     return {
         "/sites/new/": {"code": "POND", "kind": "field"},
         "/modules/new/": {"code": "BC-9", "type": world.type.code},
-        "/modules/place/": {"module": world.module.code, "site": world.site.code, "from_on": "2026-01-05"},
+        "/modules/place/": {"module": world.module.code, "site": elsewhere.code, "from_on": "2026-01-05"},
         "/catalogue/components/new/": {"code": "SAIL", "clock": "days"},
         f"/catalogue/components/{world.nuts.code}/modes/new/": {"code": "TORN"},
         "/catalogue/types/new/": {"code": "KITE"},
