@@ -82,7 +82,8 @@ def share(text: str) -> float:
 
 
 def lines_of(document: dict[str, Any]) -> list[str]:
-    head = f"{document['component_name']}, lives in {document['clock']}, as of {document['as_of']}"
+    name = document["component_name"]
+    head = f"{name[:1].upper()}{name[1:]}, lives in {document['clock']}, as of {document['as_of']}"
     lines = [head, ""]
     if not document["groups"]:
         lines.append("No life of this component is in the records that were chosen.")
