@@ -10,7 +10,8 @@ from typing import Any
 import pytest
 
 from fleet.actions.fit_part import fit_part
-from fleet.models import Fitting, Module, Part, Position, Visit, Work
+from fleet.actions.remove_part import remove_part
+from fleet.models import Fitting, Module, Part, Placement, Position, Visit, Work
 from fleet.transfer import import_records, storing
 from fleet.transfer.holding import sweep_leftovers
 from fleet.transfer.reserve import reserve
@@ -75,6 +76,24 @@ def test_a_clash_with_an_entry_of_the_last_moment_stores_nothing(
     assert broken_rules() == []
 
 
+def test_a_clash_that_no_constraint_of_the_embedded_database_sees(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    bring_in(tmp_path)
+
+    def in_and_out() -> None:
+        remove_part(by=None, fitting=logs("F-8"), removed_on=dt.date(2024, 3, 20), reason="planned")
+
+    meanwhile(monkeypatch, in_and_out)
+    closed = SCREW.replace("fitted_on", "fitted_on,removed_on,reason").replace("02-01", "02-01,2024-04-01,planned")
+    work = bring_in(tmp_path, {"fittings": closed})
+
+    assert work.state == "failed"
+    assert "overlaps another part" in work.result["errors"][0]["message"]
+    assert nothing_waits()
+    assert broken_rules() == []
+
+
 def test_the_same_code_given_at_the_last_moment(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     bring_in(tmp_path)
     meanwhile(monkeypatch, lambda: logs("F-9", module="K-9"))
@@ -120,7 +139,7 @@ def test_cancelled_while_it_stores(tmp_path: Path, monkeypatch: pytest.MonkeyPat
     original = storing.Job.step
 
     def cancel_when_storing(self: Any, rows: int, message: str) -> None:
-        if message.startswith("Storing"):
+        if message == "Storing fittings.csv":
             ask_to_cancel(Work.objects.get(state="running"))
             self.progress._next_write = 0.0
         original(self, rows, message)
@@ -130,9 +149,9 @@ def test_cancelled_while_it_stores(tmp_path: Path, monkeypatch: pytest.MonkeyPat
     work = bring_in(tmp_path)
 
     assert work.state == "cancelled"
-    assert not Module.objects.exists()
-    assert not Fitting.objects.exists()
-    assert not Fitting.history.exists()
+    for model in (Module, Placement, Visit, Fitting):
+        assert not model.objects.exists()
+        assert not model.history.exists()
 
 
 def cancelled_before(original: Callable[[Any], None]) -> Callable[[Any], None]:
