@@ -45,23 +45,21 @@ def note_touched_modules(kinds: list[FileKind]) -> None:
 
 def signature(own: Ranges | None = None) -> list[Any]:
     """Counts and versions of the catalogue and of the touched modules' records, without rows of this import."""
+    own = own or {}
     parts: list[Any] = []
     for model in CATALOGUE:
-        parts += fetch(f"SELECT COUNT(*), COALESCE(SUM(version), 0) FROM {model._meta.db_table}")
-    parts += fetch(f"SELECT COUNT(*) FROM {LifeSet._meta.db_table}")
+        parts += of_others(model._meta.db_table, "COALESCE(SUM(version), 0)", own)
+    parts += of_others(LifeSet._meta.db_table, "0", own)
+    touched = "module_id IN (SELECT id FROM touched_modules)"
     for model in OF_MODULES:
-        parts += of_modules(model._meta.db_table, "COALESCE(SUM(version), 0)", own or {})
-    parts += of_modules(Reading._meta.db_table, "COUNT(NULLIF(struck_out, ''))", own or {})
+        parts += of_others(model._meta.db_table, "COALESCE(SUM(version), 0)", own, touched)
+    parts += of_others(Reading._meta.db_table, "COUNT(NULLIF(struck_out, ''))", own, touched)
     return [[int(each) for each in row] for row in parts]
 
 
-def of_modules(table: str, measure: str, own: Ranges) -> list[Any]:
+def of_others(table: str, measure: str, own: Ranges, which: str = "1 = 1") -> list[Any]:
     low, high = own.get(table, (0, 0))
-    return fetch(
-        f"SELECT COUNT(*), {measure} FROM {table} WHERE module_id IN (SELECT id FROM touched_modules) "
-        "AND NOT (id > %s AND id <= %s)",
-        [low, high],
-    )
+    return fetch(f"SELECT COUNT(*), {measure} FROM {table} WHERE {which} AND NOT (id > %s AND id <= %s)", [low, high])
 
 
 def hold_still() -> None:
@@ -70,4 +68,4 @@ def hold_still() -> None:
         return
     tables = ", ".join(connection.ops.quote_name(model._meta.db_table) for model in CATALOGUE)
     run(f"LOCK TABLE {tables} IN SHARE ROW EXCLUSIVE MODE")
-    run("SELECT id FROM fleet_module WHERE id IN (SELECT id FROM touched_modules) ORDER BY id FOR UPDATE")
+    run("SELECT id FROM fleet_module WHERE id IN (SELECT id FROM touched_modules) ORDER BY id FOR NO KEY UPDATE")

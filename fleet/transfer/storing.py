@@ -15,7 +15,7 @@ from fleet.transfer.job import Job
 from fleet.transfer.link_rows import write_links
 from fleet.transfer.reserve import reserve
 from fleet.transfer.signature import hold_still, signature
-from fleet.transfer.staging import fetch, run, value_of
+from fleet.transfer.staging import fetch, on_sqlite, run, value_of
 from fleet.transfer.writing_sql import (
     LIFE_SETS,
     Numbers,
@@ -79,20 +79,21 @@ class Store:
         write_fenced(self.work.pk, self.work.attempt)
 
     def last_transaction(self, held: list[FileKind]) -> None:
-        hold_still()
-        self.hold()
-        if signature({table: (low, high) for table, (low, high) in self.ranges.items()}) != self.seen:
-            raise BookChanged
-        for kind in self.job.kinds:  # close before you open: updates first
-            if has_differing(kind):
-                run(*update_statement(kind, self.numbers))
-                self.note_update(kind)
+        """What takes long comes before the last look at the book, so that others are held up for a moment only."""
+        updated = [kind for kind in self.job.kinds if has_differing(kind)]
+        if updated:  # close before you open
+            self.look_again()
+            for kind in updated:
+                self.write_update(kind)
         self.add_life_sets()
         for kind in self.job.kinds:
-            if kind in held:
-                let_stand(kind, self.last_rows[kind.name], self.numbers)
-            elif self.last_rows[kind.name]:
+            if kind not in held and self.last_rows[kind.name]:
                 self.add_rows(kind)
+        check_references()
+        if not updated:
+            self.look_again()
+        for kind in held:
+            let_stand(kind, self.last_rows[kind.name], self.numbers)
         for kind in self.job.kinds:
             if "linked" in kind.extra:
                 write_links(kind, self.job.known, self.numbers)
@@ -100,13 +101,30 @@ class Store:
         # A worker that dies from here on leaves nothing to do but the clocks.
         self.job.progress.keep(self.report | {"stored": True, "touched": self.touched_modules()})
 
+    def look_again(self) -> None:
+        """From here to the commit nobody changes what the check stood on; whoever did so before is found out."""
+        hold_still()
+        self.hold()
+        own = {
+            kind.table: (base := self.numbers.base[kind.table], base + self.last_rows[kind.name])
+            for kind in self.job.kinds
+            if self.last_rows[kind.name]
+        }
+        if signature(own | self.new_life_sets()) != self.seen:
+            raise BookChanged
+
+    def new_life_sets(self) -> dict[str, tuple[int, int]]:
+        base = self.numbers.base.get(LIFE_SETS, 0)
+        return {LIFE_SETS: (base, base + len(self.job.known.new_life_sets))}
+
     def add_rows(self, kind: FileKind) -> None:
         statement, params = insert_statement(kind, self.numbers, waiting=False)
         run(statement, [*params, 0, self.last_rows[kind.name]])
         base = self.numbers.base[kind.table]
         write_history(kind, self.numbers, base, base + self.last_rows[kind.name])
 
-    def note_update(self, kind: FileKind) -> None:
+    def write_update(self, kind: FileKind) -> None:
+        run(*update_statement(kind, self.numbers))
         if keeps_history(kind):
             where = f"id IN (SELECT id FROM {kind.stage} WHERE differs = 1)"
             run(*history_statement(kind, self.numbers, "~", where))
@@ -141,6 +159,12 @@ class Store:
                     )
                 }
         return sorted(each if each > 0 else base - each for each in found)
+
+
+def check_references() -> None:
+    """PostgreSQL would look them up at the commit, while everybody waits for the data version: do it before."""
+    if not on_sqlite():
+        run("SET CONSTRAINTS ALL IMMEDIATE")
 
 
 def last_new_row(kind: FileKind) -> int:
