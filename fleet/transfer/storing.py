@@ -165,6 +165,7 @@ def check_references() -> None:
     """PostgreSQL would look them up at the commit, while everybody waits for the data version: do it before."""
     if not on_sqlite():
         run("SET CONSTRAINTS ALL IMMEDIATE")
+        run("SET CONSTRAINTS ALL DEFERRED")
 
 
 def last_new_row(kind: FileKind) -> int:
