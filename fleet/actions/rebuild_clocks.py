@@ -38,7 +38,8 @@ def _batches(keys: Iterable[int], size: int) -> Iterator[list[int]]:
 def _lock(batch: list[int]) -> None:
     """Two rebuilds of one module at a time would both add its knots."""
     if connection.features.has_select_for_update:
-        list(Module.objects.filter(pk__in=batch).order_by("pk").select_for_update().values_list("pk", flat=True))
+        rows = Module.objects.filter(pk__in=batch).order_by("pk").select_for_update(no_key=True)
+        list(rows.values_list("pk", flat=True))
 
 
 def _rebuild(batch: list[int]) -> None:
