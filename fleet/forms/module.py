@@ -43,6 +43,7 @@ class PlaceForm(RecordForm):
     site = forms.ModelChoiceField(queryset=None, to_field_name="code")
     bay = forms.CharField(max_length=40, required=False, help_text="Where on the site.")
     from_on = DayInput(label="From")
+    same_day = forms.BooleanField(required=False, label="It moved twice on that day")
 
     def prepare(self) -> None:
         self.fields["site"].queryset = self.request.seen(Site)

@@ -10,6 +10,7 @@ from django.http import Http404, HttpResponse
 from django.shortcuts import redirect, render
 from django.urls import reverse
 
+from fleet.actions.checks_rights import entries_behind
 from fleet.actions.errors import RecordError
 from fleet.forms.correct import CORRECT_FORMS, StrikeOutForm
 from fleet.forms.errors import add_record_error
@@ -20,8 +21,8 @@ from fleet.rights import LOG, may_correct, needs
 def opened(request: Any, kind: str, pk: int) -> Any:
     """The record, if the person may see and correct it."""
     record = seen_record(request, kind, pk, kinds=ENTERED)
-    owner = record.visit if kind == "finding" else record
-    if not may_correct(request.user, owner):
+    behind = [*entries_behind(record, set()), *(entries_behind(record, {"reason"}) if kind == "fitting" else [])]
+    if not any(may_correct(request.user, entry) for entry in behind):
         raise PermissionDenied
     return record
 
@@ -44,6 +45,8 @@ def correct_record(request: Any, kind: str, pk: int) -> HttpResponse:
         try:
             correct(by=request.user, record=record, changes=form.changed(), **asked)
         except RecordError as error:
+            if kind == "fitting" and error.field == "reason":
+                error.field = "removal"  # the form's own “reason” says why it is corrected
             add_record_error(form, error)
         else:
             messages.success(request, f"The {kind} is corrected; its history keeps what stood before.")
