@@ -9,7 +9,7 @@ from typing import Any
 
 from django.db import DatabaseError, connection
 
-from fleet.models import Work
+from fleet.models import Work, WorkState
 from fleet.work.errors import Cancelled, PutBack, Superseded
 from fleet.work.fence import write_fenced
 
@@ -21,9 +21,10 @@ STOPPING = threading.Event()  # set when this process was asked to end
 class Progress:
     """Handed to the function that does the work; call `step` often."""
 
-    def __init__(self, work: Work) -> None:
+    def __init__(self, work: Work, *, gives_way: bool = False) -> None:
         self.work_id: uuid.UUID = work.pk
         self.attempt: int = work.attempt
+        self.gives_way = gives_way  # ends here, to be begun again, as soon as somebody waits for other work
         self._next_write = 0.0
 
     def step(self, done: int = 0, total: int = 0, message: str = "", *, may_stop: bool = True) -> None:
@@ -37,10 +38,18 @@ class Progress:
         write_fenced(self.work_id, self.attempt, done=done, total=total, message=message[:300])
         if may_stop and Work.objects.filter(pk=self.work_id, cancel_asked=True).exists():
             raise Cancelled
+        if may_stop and self.gives_way and somebody_waits():
+            raise PutBack
 
     def keep(self, result: dict[str, Any]) -> None:
         """Keeps a result; inside the transaction that stores the records, both hold or neither does."""
         write_fenced(self.work_id, self.attempt, result=result)
+
+
+def somebody_waits() -> bool:
+    """For work that is in line; what lost its task waits for the reaper, not for us."""
+    waiting = Work.objects.filter(state=WorkState.WAITING, person__isnull=False)
+    return waiting.exclude(task_id="").exists()
 
 
 class SilentProgress(Progress):

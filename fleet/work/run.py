@@ -27,7 +27,8 @@ FAULT = "It ended by a fault of the program ({name}). Nothing more was stored; t
 def run_work(work_id: str) -> str:
     """The task of the queue: does the work unless somebody else has it or it ended."""
     work = claim(uuid.UUID(work_id))
-    return run_claimed(work) if work else "not waiting"
+    # What nobody asked for gives way: one worker must not keep a person waiting for minutes.
+    return run_claimed(work, gives_way=work.person_id is None) if work else "not waiting"
 
 
 def run_here(work: Work) -> Work:
@@ -49,8 +50,8 @@ def claim(work_id: uuid.UUID) -> Work | None:
         return Work.objects.get(pk=work_id) if taken else None
 
 
-def run_claimed(work: Work) -> str:
-    progress = Progress(work)
+def run_claimed(work: Work, *, gives_way: bool = False) -> str:
+    progress = Progress(work, gives_way=gives_way)
     try:
         run = find_kind(work.kind)
         if run is None:

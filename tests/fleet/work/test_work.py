@@ -13,10 +13,10 @@ from django_tasks_db.models import DBTaskResult
 from fleet.history import current_writer
 from fleet.models import KeptFile, Work
 from fleet.work import Cancelled, GivenFile, Progress, PutBack, Superseded, WorkFailed, enqueue, run_here, work_kind
-from fleet.work.enqueue import ask_to_cancel
+from fleet.work.enqueue import ask_to_cancel, send
 from fleet.work.progress import STOPPING, Heartbeat
 from fleet.work.reaper import MOST_ATTEMPTS, reap
-from fleet.work.run import claim
+from fleet.work.run import claim, run_work
 from fleet.work.worker import KEPT_DAYS, forget_old_files
 from tests import factories as make
 from tests.fleet.work.worker_process import wait_until
@@ -115,6 +115,29 @@ def test_a_stopping_worker_puts_it_back(monkeypatch: pytest.MonkeyPatch) -> None
     monkeypatch.setattr("fleet.work.progress.STOPPING.is_set", lambda: True)
     with pytest.raises(PutBack):
         Progress(claimed).step()
+
+
+def test_work_that_nobody_asked_for_gives_way_to_a_persons() -> None:
+    for_nobody, for_a_person = new_work(), new_work()
+    run_work.func(str(for_nobody.pk))
+    for_nobody.refresh_from_db()
+    assert for_nobody.state == "done"  # nobody waits
+
+    for_nobody = new_work()
+    for_a_person.person = make.make_manager()
+    for_a_person.save()
+    send(for_a_person.pk)
+    run_work.func(str(for_nobody.pk))
+    for_nobody.refresh_from_db()
+    assert for_nobody.state == "waiting"
+    send(for_nobody.pk)
+    in_line = [task.args_kwargs["args"][0] for task in DBTaskResult.objects.ready()]
+    assert in_line[0] == str(for_a_person.pk)
+
+    assert run_here(for_a_person).state == "done"
+    run_work.func(str(for_nobody.pk))
+    for_nobody.refresh_from_db()
+    assert (for_nobody.state, for_nobody.attempt) == ("done", 2)
 
 
 def test_an_attempt_that_was_taken_over_writes_nothing() -> None:
