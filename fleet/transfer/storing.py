@@ -39,6 +39,7 @@ class Store:
         self.numbers = Numbers(now=timezone.now(), person=job.person, work_id=work.pk)
         self.last_rows = {kind.name: int(last_new_row(kind)) for kind in job.kinds}
         self.ranges: dict[str, list[int]] = {}
+        self.touched: list[int] = []
 
     def run(self) -> None:
         """Raises BookChanged with nothing stored."""
@@ -71,6 +72,7 @@ class Store:
             for kind in held:
                 hold_rows(kind, self.last_rows[kind.name], self.numbers, self.hold, self.job.step)
         self.job.progress.step(self.job.rows_done, self.job.rows_total, "Storing")
+        self.touched = self.touched_modules()
         with transaction.atomic():
             self.last_transaction(held)
 
@@ -99,7 +101,7 @@ class Store:
                 write_links(kind, self.job.known, self.numbers)
         DataVersion.raise_version()
         # A worker that dies from here on leaves nothing to do but the clocks.
-        self.job.progress.keep(self.report | {"stored": True, "touched": self.touched_modules()})
+        self.job.progress.keep(self.report | {"stored": True, "touched": self.touched})
 
     def look_again(self) -> None:
         """From here to the commit nobody changes what the check stood on; whoever did so before is found out."""
