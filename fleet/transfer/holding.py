@@ -23,7 +23,7 @@ from fleet.transfer.writing_sql import (
 )
 
 FIRST_ROWS = 2000
-WANTED_SECONDS = 0.35  # a writer waits for one batch, and gets in at the pause after it
+WANTED_SECONDS = 0.4  # a writer waits for one batch, and gets in at the pause after it
 PAUSE_SECONDS = 0.1  # SQLite lets a waiting writer look every tenth of a second: a shorter pause could be missed
 Step = Callable[[int, str], None]
 

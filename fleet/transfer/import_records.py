@@ -31,7 +31,7 @@ from fleet.transfer.storing import BookChanged, Store
 from fleet.work import Progress
 
 MOST_TRIES = 4
-RECORDS_AT_ONCE = 2000  # fittings and readings whose clocks are made in one transaction
+RECORDS_AT_ONCE = 4000  # fittings and readings whose clocks are made in one transaction
 BUSY = (
     "The same modules were changed again and again while the files were being stored ({why}). "
     "Nothing was stored. Import them in a quiet hour."

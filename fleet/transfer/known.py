@@ -74,6 +74,7 @@ class Stay:
     to_on: dt.date | None
     depot: bool
     zone: ZoneInfo
+    site: int = 0
 
     def touches(self, day: dt.date) -> bool:
         return self.from_on <= day and (self.to_on is None or day <= self.to_on)
@@ -147,6 +148,13 @@ class Known:
         here = [stay for stay in self.stays.get(module, ()) if stay.touches(day)] if module is not None else []
         return min(here, key=rank).zone if here else self.book_zone
 
+    def site_on(self, module: int | None, day: dt.date | None) -> int | None:
+        """Whose a record of that day is; the clocks, which are made last, have the final say."""
+        if module is None or day is None:
+            return None
+        here = [stay for stay in self.stays.get(module, ()) if stay.touches(day)]
+        return min(here, key=rank).site if here else None
+
     def zone_at(self, module: int, instant: dt.datetime) -> ZoneInfo:
         stays = self.stays.get(module, ())
         here = [stay for stay in stays if stay.touches(instant.astimezone(stay.zone).date())]
@@ -186,7 +194,7 @@ class Known:
                 continue
             place = by_id[site]
             here = zone(place.zone) if place.zone else self.book_zone
-            self.stays.setdefault(module, []).append(Stay(from_on, to_on, place.depot, here))
+            self.stays.setdefault(module, []).append(Stay(from_on, to_on, place.depot, here, site))
 
     def load_visits(self, codes: set[str]) -> None:
         """Visits that the next rows refer to."""

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import datetime as dt
 import hashlib
+from functools import cache
 from typing import Any
 
 from fleet.models.codes import CODE_LENGTH, natural_key
@@ -98,11 +99,12 @@ class Noons:
 
 def made_visit(row: int, code: str, module: int, day: dt.date, known: Any, noons: Noons) -> list[Any]:
     """At noon in the site's zone, since only the day is known."""
-    visit_code = made_code(code, day)
+    visit_code, code_order = made_code(code, day)
     values = {
         "code": visit_code,
-        "code_order": natural_key(visit_code),
+        "code_order": code_order,
         "module_id": module,
+        "site_id": noons.known.site_on(module, day),
         "happened_at": noons.at(module, day),
         "happened_on": day,
         "left": "",
@@ -112,13 +114,19 @@ def made_visit(row: int, code: str, module: int, day: dt.date, known: Any, noons
     return [row, 0, -row, 0, *map(values.get, VISITS.staged)]
 
 
-def made_code(module: str, day: dt.date) -> str:
-    """The same for the same module and day, so that a repeated import makes the same visit."""
+def made_code(module: str, day: dt.date) -> tuple[str, str]:
+    """Code and its natural order; the same for the same module and day, so that a repeated import makes the same."""
+    start, order = code_start(module)
     stamp = day.isoformat().replace("-", "")
-    code = f"V-{module}-{stamp}"
-    if len(code) <= CODE_LENGTH - 3:
-        return code
-    return f"V-{hashlib.sha256(module.encode()).hexdigest()[:16].upper()}-{stamp}"
+    return start + stamp, order + stamp.rjust(12, "0")
+
+
+@cache
+def code_start(module: str) -> tuple[str, str]:
+    start = f"V-{module}-"
+    if len(start) > CODE_LENGTH - 11:  # eight digits for the day, and perhaps a number behind
+        start = f"V-{hashlib.sha256(module.encode()).hexdigest()[:16].upper()}-"
+    return start, natural_key(start)
 
 
 def settle_taken_codes(first: int) -> None:

@@ -20,6 +20,7 @@ from fleet.transfer.row import Row
 def finish(row: Row, known: Known) -> None:
     module = module_of(row, known)
     day = known.settle_instant(row, "read_at", "read_at", row["module_id"])
+    row["site_id"] = known.site_on(row["module_id"], day)
     check_module_days(row, "read_at", day, module)
     settle_position(row, known, module)
     settle_visit(row, known, "visit", "visit_id", row["module_id"])
@@ -52,6 +53,6 @@ READINGS = FileKind(
     ),
     key=("module_id", "read_at", "counter", "position_id", "struck_out"),
     key_columns=("module", "read_at", "counter", "position"),
-    derived=("position_id", "visit_id"),
+    derived=("position_id", "visit_id", "site_id"),
     finish=finish,
 )

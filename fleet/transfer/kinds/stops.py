@@ -13,6 +13,7 @@ from fleet.transfer.row import Row
 def finish(row: Row, known: Known) -> None:
     day = known.settle_instant(row, "stopped_at", "stopped_at", row["module_id"])
     known.settle_instant(row, "running_at", "running_at", row["module_id"])
+    row["site_id"] = known.site_on(row["module_id"], day)
     check_module_days(row, "stopped_at", day, module_of(row, known))
     settle_visit(row, known, "visit", "visit_id", row["module_id"])
     settle_known_on(row, known, "known_on", "known_on", day)
@@ -35,6 +36,6 @@ STOPS = FileKind(
     ),
     key=("module_id", "stopped_at"),
     key_columns=("module", "stopped_at"),
-    derived=("visit_id",),
+    derived=("visit_id", "site_id"),
     finish=finish,
 )

@@ -14,6 +14,7 @@ from fleet.transfer.row import Row
 def finish(row: Row, known: Known) -> None:
     row["code_order"] = natural_key(row["code"] or "")
     row["happened_on"] = known.settle_instant(row, "happened_at", "happened_at", row["module_id"])
+    row["site_id"] = known.site_on(row["module_id"], row["happened_on"])
     check_module_days(row, "happened_at", row["happened_on"], module_of(row, known))
     settle_known_on(row, known, "known_on", "known_on", row["happened_on"])
 
@@ -33,6 +34,6 @@ VISITS = FileKind(
     ),
     key=("code",),
     key_columns=("visit",),
-    derived=("code_order", "happened_on"),
+    derived=("code_order", "happened_on", "site_id"),
     finish=finish,
 )

@@ -26,6 +26,8 @@ from fleet.models import (
     Visit,
     Work,
 )
+from fleet.models.codes import natural_key, validate_code
+from fleet.transfer.made_visits import made_code
 from tests.fleet.transfer.files import bring_in, fleet, look, problems, text, with_cell
 
 pytestmark = pytest.mark.django_db
@@ -75,6 +77,15 @@ def test_a_visit_is_made_for_each_module_and_day_without_one(tmp_path: Path) -> 
     assert Fitting.objects.get(code="F-3").fitted_visit == first
     assert Fitting.objects.get(code="F-2").fitted_visit.code == "V-1"  # the visit of that day is taken
     assert Visit.objects.count() == 3
+
+
+@pytest.mark.parametrize("module", ["K-9", "M007", "X" * 40])
+def test_a_made_visit_has_a_code_that_sorts_naturally(module: str) -> None:
+    code, order = made_code(module, dt.date(2024, 1, 10))
+
+    validate_code(code)
+    assert order == natural_key(code)
+    assert code == made_code(module, dt.date(2024, 1, 10))[0]
 
 
 def test_derived_columns_and_clocks_are_made(tmp_path: Path) -> None:
