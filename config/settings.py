@@ -132,7 +132,8 @@ def database(address: str) -> dict:
         "HOST": unquote(parts.hostname or ""),
         "PORT": str(parts.port or ""),
         # The tests open and drop databases, which a pool would hold open.
-        "OPTIONS": {} if TESTING else {"pool": True},
+        # Room for the threads of one web process; the pool's own default of four would make them wait for each other.
+        "OPTIONS": {} if TESTING else {"pool": {"min_size": 1, "max_size": 12}},
     }
 
 
