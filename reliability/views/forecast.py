@@ -91,7 +91,7 @@ def overview(components: list[Component], documents: dict[str, dict[str, Any]]) 
         {"key": "positions", "label": "In service", "numeric": True},
         {"key": "failures", "label": "Failures expected", "numeric": True},
         {"key": "band", "label": "80 in 100", "numeric": True},
-        {"key": "used", "label": "Parts used", "numeric": True},
+        {"key": "used", "label": "Parts used, 80 in 100", "numeric": True},
         {"key": "plan", "label": "Plan for", "numeric": True},
     ]
     rows = []
@@ -104,7 +104,7 @@ def overview(components: list[Component], documents: dict[str, dict[str, Any]]) 
                 document["positions"],
                 expected_cell(document, total),
                 words.between(total["bands"]["0.8"]),
-                expected_cell(document, used),
+                {**expected_cell(document, used), "sub": words.between(used["bands"]["0.8"])},
                 {"text": used["plan_for"]["0.95"], "strong": True},
             ]
         )
