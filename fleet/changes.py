@@ -24,6 +24,8 @@ from fleet.models import (
     Person,
     Placement,
     Position,
+    Redesign,
+    RolloutStep,
     Site,
     Stop,
     Visit,
@@ -43,6 +45,8 @@ KINDS: dict[str, type[models.Model]] = {
     "mode": FailureMode,
     "type": ModuleType,
     "position": Position,
+    "redesign": Redesign,
+    "rollout": RolloutStep,
     "person": Person,
     "book": Book,
 }

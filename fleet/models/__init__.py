@@ -10,6 +10,7 @@ from fleet.models.module_type import ModuleType, Position
 from fleet.models.part import Part, PartState
 from fleet.models.person import Person, Role
 from fleet.models.reading import Reading, Restart
+from fleet.models.redesign import Redesign, RedesignChange, RolloutStep
 from fleet.models.site import Site, SiteKind
 from fleet.models.stop import Stop
 from fleet.models.visit import Finding, FoundKind, Left, Visit
@@ -43,9 +44,12 @@ __all__ = [
     "Position",
     "Reading",
     "RecordKind",
+    "Redesign",
+    "RedesignChange",
     "RemovalReason",
     "Restart",
     "Role",
+    "RolloutStep",
     "SetLife",
     "Site",
     "SiteKind",
