@@ -23,11 +23,12 @@ def add_up(distributions: Iterable[CountDistribution]) -> CountDistribution:
     return CountDistribution(total / total.sum())
 
 
-def told(distribution: CountDistribution, bands: Sequence[float]) -> dict[str, Any]:
-    """Mean, bands and what to plan for, as in files.md."""
+def told(distribution: CountDistribution, bands: Sequence[float], level: float = PLAN_FOR) -> dict[str, Any]:
+    """Mean, bands and what to plan for, as in files.md; also at another level where one is asked for."""
+    levels = dict.fromkeys([PLAN_FOR, level])
     return {
         "mean": float(distribution.mean),
         "median": int(distribution.quantile(0.5)),
         "bands": {f"{band:g}": list(distribution.interval(band)) for band in bands},
-        "plan_for": {f"{PLAN_FOR:g}": int(distribution.quantile(PLAN_FOR))},
+        "plan_for": {f"{each:g}": int(distribution.quantile(each)) for each in levels},
     }

@@ -11,7 +11,8 @@ from typing import Any
 from django.utils import timezone
 
 from fleet.models import DataVersion
-from reliability.forecasts.next_quarter import Question, forecast_document
+from reliability.forecasts.next_quarter import forecast_document
+from reliability.forecasts.question import Question
 from reliability.kept import key_of
 from reliability.models import KeptResult
 
@@ -19,20 +20,9 @@ KIND = "forecast"
 KEPT_FOR = dt.timedelta(days=3)
 
 
-def asked(question: Question) -> dict[str, Any]:
-    return {
-        "component": question.component.code,
-        "begin": question.begin.isoformat(),
-        "days": question.days,
-        "as_of": question.as_of.isoformat(),
-        "sites": list(question.sites) if question.sites is not None else None,
-        "by_type": question.by_type,
-    }
-
-
 def kept_forecast(question: Question, *, again: bool = False) -> dict[str, Any]:
     """The document with `counted_at`, and `current`: False where entries came after it."""
-    version, key = DataVersion.current(), key_of(asked(question))
+    version, key = DataVersion.current(), key_of(question.asked())
     row = KeptResult.objects.filter(kind=KIND, key=key).first()
     if row is None or (again and row.data_version != version):
         row = _count(question, key, version)

@@ -8,101 +8,34 @@ day; on a grid of weeks it costs a tenth. Counts: `reliability.stats.counts`.
 
 from __future__ import annotations
 
-import datetime as dt
-import hashlib
 import math
 from collections import defaultdict
 from collections.abc import Sequence
-from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any
 
-from django.utils import timezone
-
-from fleet.models import Component
-from reliability.forecasts.horizon import WEEK, WEEKS, next_quarter, week_starts
+from reliability.forecasts.horizon import week_starts
 from reliability.forecasts.learned import Learned
+from reliability.forecasts.question import Question, question_of
+from reliability.forecasts.what_if import NotCountedYet
+from reliability.forecasts.written import Tallies, written
 from reliability.lifetimes_from_fleet import lives
-from reliability.running_parts import RunningParts, RunningRow, running_parts
+from reliability.running_parts import RunningRow, running_parts
 
 if TYPE_CHECKING:
-    from reliability.stats.counts import CountDistribution, CountForecast, Counts
+    from reliability.stats.counts import CountForecast
+
+__all__ = ["Question", "forecast_document", "question_of"]
 
 BANDS = (0.5, 0.8, 0.95)
 FEW_FAILURES, MANY_DRAWS, FEW_DRAWS = 20, 400, 100
 AGE_CELLS = 60  # ages are told apart to this share of the typical life
 PACE_STEP = 0.12  # paces are told apart to this share
-NEAR_DAYS = 3
-GROUPINGS = ("part", "needed", "site", "type")
-
-
-@dataclass(frozen=True)
-class Question:
-    """What a forecast is asked; `by_type` costs one more count."""
-
-    component: Component
-    begin: dt.date
-    days: int
-    as_of: dt.date
-    sites: tuple[str, ...] | None = None
-    by_type: bool = False
-
-    @property
-    def gap(self) -> int:
-        """Days between the start of the count and the first day counted."""
-        days = (self.begin - self.as_of).days
-        return (days + NEAR_DAYS) // WEEK * WEEK if self.days % WEEK == 0 else days
-
-    @property
-    def shift(self) -> int:
-        """Days by which the start of the count lies after the as-of day; negative: before it."""
-        return (self.begin - self.as_of).days - self.gap
-
-    @property
-    def span(self) -> int:
-        return self.gap + self.days
-
-    def seed(self, part: str) -> int:
-        """The same question gives the same answer."""
-        text = f"{self.component.code} {self.begin} {self.days} {self.as_of} {self.sites} {part}"
-        return int.from_bytes(hashlib.sha256(text.encode()).digest()[:8], "big")
-
-
-def question_of(
-    component: Component,
-    *,
-    begin: dt.date | None = None,
-    days: int | None = None,
-    as_of: dt.date | None = None,
-    sites: Sequence[str] | None = None,
-    by_type: bool = False,
-) -> Question:
-    """The default is 13 whole weeks from the first Monday of the next calendar quarter."""
-    today = as_of or timezone.localdate()
-    return Question(
-        component=component,
-        begin=max(begin or next_quarter(today), today),
-        days=days or WEEKS * WEEK,
-        as_of=today,
-        sites=None if sites is None else tuple(sorted(sites)),
-        by_type=by_type,
-    )
-
-
-@dataclass
-class Tallies:
-    """Independent counts waiting to be added up: failures and parts used by grouping and label, failures by week."""
-
-    weeks: list[list[CountDistribution]]
-    failures: dict[str, dict[str, list[CountDistribution]]] = field(default_factory=lambda: defaultdict(dict))
-    used: dict[str, dict[str, list[CountDistribution]]] = field(default_factory=lambda: defaultdict(dict))
-
-    def add(self, grouping: str, label: str, counts: Counts) -> None:
-        self.failures[grouping].setdefault(label, []).append(counts.failures)
-        self.used[grouping].setdefault(label, []).append(counts.parts_used)
 
 
 def forecast_document(question: Question, *, bands: Sequence[float] = BANDS) -> dict[str, Any]:
     """Totals, weeks and every grouping, as plain values."""
+    if not question.what_if.is_base:
+        raise NotCountedYet("This assumption is not counted yet.")
     running = running_parts(
         question.component, as_of=question.as_of, sites=None if question.sites is None else list(question.sites)
     )
@@ -188,41 +121,3 @@ def merge_rows(rows: list[RunningRow], cell: float, shift: int = 0) -> list[Runn
         pace = math.exp(round(math.log(row.a_day) / PACE_STEP) * PACE_STEP)
         merged[age, pace, row.part, row.needed, row.site, row.type] += row.count
     return [RunningRow(*key, count) for key, count in sorted(merged.items())]
-
-
-def written(
-    question: Question, running: RunningParts, learned: Learned, tallies: Tallies, bands: Sequence[float]
-) -> dict[str, Any]:
-    """The document: see files.md, with weeks, all groupings, parts used and what was left out beside the total."""
-    from reliability.forecasts.combine import add_up, told
-
-    def both(grouping: str, label: str) -> dict[str, Any]:
-        failures = told(add_up(tallies.failures[grouping].get(label, [])), bands)
-        return {**failures, "parts_used": told(add_up(tallies.used[grouping].get(label, [])), bands)}
-
-    starts = week_starts(question.days)[:-1]
-    weeks = [
-        {"from": (question.begin + dt.timedelta(days=start)).isoformat(), **told(add_up(counts), bands)}
-        for start, counts in zip(starts, tallies.weeks, strict=True)
-    ]
-    groups = {
-        grouping: [{"group": label, **both(grouping, label)} for label in sorted(tallies.failures[grouping])]
-        for grouping in GROUPINGS
-    }
-    return {
-        "from": question.begin.isoformat(),
-        "days": question.days,
-        "as_of": question.as_of.isoformat(),
-        "component": question.component.code,
-        "clock": question.component.clock,
-        "sites": None if question.sites is None else list(question.sites),
-        "positions": running.count,
-        "failures_seen": learned.failures(),
-        "counted": learned.found.lifetimes is not None,
-        "total": both("total", ""),
-        "weeks": weeks,
-        "groups": groups,
-        "follows": sorted({(row.part, row.needed) for row in running.rows}),
-        "left_out": [{"reason": reason, "count": count} for reason, count in running.left_out],
-        "warnings": [*running.notes, *learned.warnings],
-    }
