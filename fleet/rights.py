@@ -22,6 +22,9 @@ REPORT = "report"  # a stop, “looks wrong”
 CORRECT = "correct"  # any record, any day; crews and bench correct their own of the same day
 CATALOGUE = "catalogue"  # components, types, parts, sites, modules, import
 BENCH = "bench"  # bench jobs and hours
+STORES = "stores"  # what lies in the stores they see
+ISSUE = "issue"  # parts to a visit or a job; crews only from what they carry along
+STOCK = "stock"  # receipts, counts, transfers, scrap, supply orders
 LIFE = "life"  # life, forecast, redesigns
 CHANCES = "chances"  # the chance of failing, for modules they see
 COSTS = "costs"
@@ -37,6 +40,9 @@ HOLDERS: dict[str, frozenset[str]] = {
     CORRECT: OFFICE,
     CATALOGUE: OFFICE,
     BENCH: OFFICE | {Role.BENCH},
+    STORES: OFFICE | {Role.CREW, Role.BENCH},
+    ISSUE: OFFICE | {Role.CREW, Role.BENCH},
+    STOCK: OFFICE,
     LIFE: OFFICE,
     CHANCES: OFFICE | {Role.CREW},
     COSTS: OFFICE | {Role.CREW, Role.BENCH},

@@ -1,3 +1,4 @@
+from fleet.models.bench import BenchCapacity, BenchHours, BenchJob, Outcome, Stage
 from fleet.models.book import Book, DataVersion
 from fleet.models.clocks import ClockPoint, FittingClock
 from fleet.models.component import Clock, Component, FailureMode
@@ -12,16 +13,23 @@ from fleet.models.person import Person, Role
 from fleet.models.reading import Reading, Restart
 from fleet.models.redesign import Redesign, RedesignChange, RolloutStep
 from fleet.models.site import Site, SiteKind
+from fleet.models.stock_move import Condition, MoveKind, StockBalance, StockMove
 from fleet.models.stop import Stop
+from fleet.models.store import Store
+from fleet.models.supply import SupplyLine, SupplyOrder
 from fleet.models.visit import Finding, FoundKind, Left, Visit
 from fleet.models.work import KeptFile, Work, WorkState
 
 __all__ = [
     "FAILURE_REASONS",
+    "BenchCapacity",
+    "BenchHours",
+    "BenchJob",
     "Book",
     "Clock",
     "ClockPoint",
     "Component",
+    "Condition",
     "DataVersion",
     "EntryKey",
     "FailureMode",
@@ -37,6 +45,8 @@ __all__ = [
     "Module",
     "ModuleState",
     "ModuleType",
+    "MoveKind",
+    "Outcome",
     "Part",
     "PartState",
     "Person",
@@ -53,7 +63,13 @@ __all__ = [
     "SetLife",
     "Site",
     "SiteKind",
+    "Stage",
+    "StockBalance",
+    "StockMove",
     "Stop",
+    "Store",
+    "SupplyLine",
+    "SupplyOrder",
     "Visit",
     "Work",
     "WorkState",

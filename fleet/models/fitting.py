@@ -11,6 +11,7 @@ from django.db.models import Exists, F, OuterRef, Q, Value
 from django.db.models.functions import Coalesce
 
 from fleet.history import kept_history
+from fleet.models.bench import BenchJob
 from fleet.models.codes import Coded
 from fleet.models.component import FailureMode
 from fleet.models.exclusion import NoOverlap
@@ -95,6 +96,8 @@ class Fitting(Coded, Versioned, Strikeable, Entered):
     caused_by = models.ForeignKey("self", on_delete=models.PROTECT, null=True, blank=True, related_name="took_along")
     removed_visit = models.ForeignKey(Visit, on_delete=models.PROTECT, null=True, blank=True, related_name="removed")
     removed_known_on = models.DateField(null=True, blank=True)
+    # The bench job during which it came out or, where it did not, went in.
+    job = models.ForeignKey(BenchJob, on_delete=models.PROTECT, null=True, blank=True, related_name="fittings")
     note = models.TextField(blank=True, default="", max_length=4000)
     history = kept_history()
 
