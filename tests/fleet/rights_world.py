@@ -10,7 +10,7 @@ from typing import Any
 
 from django.urls import URLPattern, URLResolver, get_resolver
 
-from fleet.models import Finding, LooksWrong, Person, Reading, Role, Stop, Visit, Work
+from fleet.models import Finding, LooksWrong, Person, Reading, Redesign, Role, RolloutStep, Stop, Visit, Work
 from tests import factories as make
 
 # Pages of the framework's own static files are served to everybody.
@@ -63,6 +63,8 @@ class Place:
         self.mark = LooksWrong.objects.create(
             kind="visit", record=self.visit.pk, word="twice", said_by=carriage.manager, **known
         )
+        self.redesign = Redesign.objects.create(code=f"R-{make.number()}")
+        self.step = RolloutStep.objects.create(redesign=self.redesign, module=self.module, order=1)
         self.work = Work.objects.create(kind="import_records", person=carriage.manager)
 
     def record(self, kind: str) -> Any:
@@ -85,13 +87,14 @@ class Place:
             "catalogue/components": carriage.nuts.code,
             "catalogue/types": carriage.type.code,
             "people/": carriage.crew.code,
+            "redesigns/": self.redesign.code,
         }
         values: dict[str, Any] = {
             "tag": self.module.code,
             "code": next((code for start, code in codes.items() if route.pattern.startswith(start)), None),
             "mode": carriage.worn.code,
             "position": carriage.nut.code,
-            "pk": self.mark.pk,
+            "pk": self.step.pk if route.pattern.startswith("redesigns/") else self.mark.pk,
             "work_id": self.work.pk,
             "uidb64": "MQ",
             "token": "none",
