@@ -26,6 +26,7 @@ class LifeRow(NamedTuple):
     group: Any
     count: int
     not_measured: int = 0
+    also: Any = None  # a second label: mode, module or lot
 
 
 @dataclass(frozen=True)
@@ -45,6 +46,9 @@ class FleetLives:
     states: for each row failed, other mode, worn, not known, withdrawn or running
     if_not_known_failed: the same lives with every removal of unknown reason counted as a failure, where they are many
     groups: labels of the groups in their natural order; one empty label where nothing was grouped
+    also: for each row its second label as text (mode, module or lot; empty where there is none)
+    mode_names: what people call the chosen modes, by code
+    not_measured: lives whose strokes or hours reach beyond the readings
     """
 
     component: str
@@ -59,6 +63,10 @@ class FleetLives:
     if_not_known_failed: Lifetimes | None = None
     component_name: str = ""
     groups: tuple[str, ...] = ()
+    also: Any = None
+    mode_names: dict[str, str] = field(default_factory=dict)
+    not_measured: int = 0
+    life_set: str | None = None
 
     def count(self, *states: str, group: Any = None) -> int:
         """Lives in these states, in one group or in all."""
@@ -72,8 +80,10 @@ class FleetLives:
         return round(float(self.lifetimes.weights[chosen].sum()))
 
 
-def arrays_of(rows: Iterable[LifeRow], sites: dict[Any, str], groups: dict[Any, str]) -> tuple[Any, Any]:
-    """Life data and states from rows, in an order that does not depend on the database's numbers."""
+def arrays_of(
+    rows: Iterable[LifeRow], sites: dict[Any, str], groups: dict[Any, str], alsos: dict[Any, str] | None = None
+) -> tuple[Any, Any, Any]:
+    """Life data, states and second labels from rows, in an order that does not depend on the database's numbers."""
     import numpy as np
 
     from reliability.stats.lifetimes import Lifetimes
@@ -83,12 +93,12 @@ def arrays_of(rows: Iterable[LifeRow], sites: dict[Any, str], groups: dict[Any, 
         if row.left_out is None:
             good = -1.0 if row.last_good is None else row.last_good
             label, place = groups.get(row.group, NOT_NAMED), sites.get(row.site, NO_PLACE)
-            key = (label, row.duration, row.entry, row.state, good, place)
+            key = (label, row.duration, row.entry, row.state, good, place, (alsos or {}).get(row.also, ""))
             kept[key] = kept.get(key, 0) + row.count
     if not kept:
-        return None, np.array([], dtype=object)
+        return None, np.array([], dtype=object), np.array([], dtype=object)
     keys = sorted(kept)
-    labels, durations, entries, states, last_good, places = zip(*keys, strict=True)
+    labels, durations, entries, states, last_good, places, also = zip(*keys, strict=True)
     counts = [kept[key] for key in keys]
     goods = np.array(last_good, dtype=float)
     lifetimes = Lifetimes(
@@ -100,7 +110,16 @@ def arrays_of(rows: Iterable[LifeRow], sites: dict[Any, str], groups: dict[Any, 
         sites=np.array(places),
         groups=np.array(labels),
     )
-    return lifetimes, np.array(states)
+    return lifetimes, np.array(states), np.array(also)
+
+
+def in_order(lifetimes: Lifetimes | None) -> tuple[str, ...]:
+    """The labels of the groups, K-9 before K-10."""
+    from fleet.models.codes import natural_key
+
+    if lifetimes is None:
+        return ()
+    return tuple(sorted((str(label) for label in lifetimes.group_labels), key=natural_key))
 
 
 def with_not_known_failed(lifetimes: Lifetimes, states: Any) -> Lifetimes:

@@ -36,6 +36,7 @@ class Rules(NamedTuple):
     modes: Collection[int] | None
     with_rigs: bool
     worn_is_failure: bool
+    also: str | None = None
 
 
 class Point(NamedTuple):

@@ -25,6 +25,7 @@ class LifeQuestion:
     as_of: int
     as_of_text: str
     by: str | None = None
+    also: str | None = None  # a second label beside the group: mode, module or lot
     sites: tuple[int, ...] | None = None
     parts: tuple[int, ...] | None = None
     types: tuple[int, ...] | None = None
@@ -43,15 +44,25 @@ GROUP_COLUMNS = {
     "type": "m.type_id",
     "lot": "f.lot",
 }
+ALSO_COLUMNS = {None: "CAST(NULL AS integer)", "mode": "f.mode_id", "module": "f.module_id", "lot": "f.lot"}
 
 
 def grouped_lives(question: LifeQuestion) -> Query:
-    """Rows (left_out, state, entry, duration, last_good, site, group, count, count not measured)."""
+    """Rows (left_out, state, entry, duration, last_good, site, group, count, count not measured, also)."""
     text, parameters = _lives(question)
-    columns = "left_out, state, entry, duration, last_good, site_id, label"
     return (
-        f"{text} SELECT {columns}, COUNT(*), SUM(CASE WHEN measured THEN 0 ELSE 1 END) "
-        "FROM told GROUP BY 1, 2, 3, 4, 5, 6, 7",
+        f"{text} SELECT left_out, state, entry, duration, last_good, site_id, label, COUNT(*), "
+        "SUM(CASE WHEN measured THEN 0 ELSE 1 END), also FROM told GROUP BY 1, 2, 3, 4, 5, 6, 7, 10",
+        parameters,
+    )
+
+
+def single_lives(question: LifeQuestion) -> Query:
+    """A row a fitting in the order of its position: (module, position, left_out, state, entry, duration, site)."""
+    text, parameters = _lives(question)
+    return (
+        f"{text} SELECT module_id, position_id, left_out, state, entry, duration, site_id "
+        "FROM told ORDER BY module_id, position_id, fitted_day, id",
         parameters,
     )
 
@@ -85,7 +96,8 @@ def _base(question: LifeQuestion) -> Query:
     measured = "TRUE" if clock == "days" else f"c.{clock}_measured"
     filters = _in("f.part_id", question.parts) + _in("m.type_id", question.types)
     text = f"""base AS MATERIALIZED (
-        SELECT f.id, f.module_id, f.reason, f.mode_id, f.age_at_fit, f.removed_on, {label} AS label,
+        SELECT f.id, f.module_id, f.position_id, f.reason, f.mode_id, f.age_at_fit, f.removed_on, {label} AS label,
+            {ALSO_COLUMNS[question.also]} AS also,
             c.fitted_day, c.end_day, c.records_day, c.last_good_entered, {measured} AS measured,
             c.{clock}_at_fit AS at_fit, c.{clock}_at_records AS at_records,
             c.{clock}_at_good AS at_good, c.{clock}_at_end AS at_end,
@@ -203,8 +215,10 @@ def _told(question: LifeQuestion) -> str:
                 THEN {_down("age_at_fit + at_good - at_fit", clock)} END AS good_age
         FROM ages) rounded"""
     first_day = "state = 'failed' AND whole_age <= entry" if clock == "days" else "1 = 0"
+    also = "CASE WHEN state = 'failed' THEN also END" if question.also == "mode" else "also"
     return f"""told AS (
         SELECT id, CASE {_reasons(question, first_day)} END AS left_out, state, entry, measured, site_id, label,
+            {also} AS also, module_id, position_id, fitted_day,
             CASE WHEN {first_day} THEN entry + 1 ELSE whole_age END AS duration,
             CASE WHEN {first_day} THEN entry WHEN good_age >= whole_age THEN NULL
                 WHEN good_age < entry THEN entry ELSE good_age END AS last_good

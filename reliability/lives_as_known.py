@@ -5,6 +5,8 @@ from __future__ import annotations
 import datetime as dt
 from collections import Counter
 from collections.abc import Iterable, Iterator, Mapping
+from contextlib import contextmanager
+from contextvars import ContextVar
 from dataclasses import dataclass
 from typing import NamedTuple
 
@@ -14,6 +16,10 @@ from reliability.fleet_lives import LifeRow
 from reliability.life_rules import Facts, Point, Rules, tell
 
 MODULES_AT_ONCE = 400
+MOST_SHARED = 20_000  # modules whose clocks are held in memory at once
+
+Clocks = tuple[Loaded, ModuleClocks]
+_shared: ContextVar[dict[tuple[dt.date, int], Clocks] | None] = ContextVar("shared records", default=None)
 
 
 class Known(NamedTuple):
@@ -24,6 +30,7 @@ class Known(NamedTuple):
     mode: int | None
     age_at_fit: float
     label: object
+    also: object = None
 
 
 @dataclass(frozen=True)
@@ -34,8 +41,32 @@ class Places:
     rigs: frozenset[int]
 
 
-def modules_as_known(module_ids: Iterable[int], known_on: dt.date) -> Iterator[tuple[Loaded, ModuleClocks]]:
-    keys = sorted(set(module_ids))
+@contextmanager
+def shared_records() -> Iterator[None]:
+    """Within it, the clocks made for one question serve the next ones about the same day; nobody may write meanwhile
+    what they should see.
+    """
+    token = _shared.set({})
+    try:
+        yield
+    finally:
+        _shared.reset(token)
+
+
+def modules_as_known(module_ids: Iterable[int], known_on: dt.date) -> Iterator[Clocks]:
+    """Records and clocks of modules, in the order of their keys."""
+    keys, shared = sorted(set(module_ids)), _shared.get()
+    if shared is None or len(keys) > MOST_SHARED:
+        yield from _made(keys, known_on)
+        return
+    if any(day != known_on for day, _ in shared) or len(shared) + len(keys) > MOST_SHARED:
+        shared.clear()
+    missing = [key for key in keys if (known_on, key) not in shared]
+    shared.update(((known_on, each[0].record.module), each) for each in _made(missing, known_on))
+    yield from (shared[known_on, key] for key in keys if (known_on, key) in shared)
+
+
+def _made(keys: list[int], known_on: dt.date) -> Iterator[Clocks]:
     for start in range(0, len(keys), MODULES_AT_ONCE):
         for loaded in load_records(keys[start : start + MODULES_AT_ONCE], known_on):
             yield loaded, clocks_of(loaded.record)
@@ -63,7 +94,8 @@ def rows_as_known(
                 continue
             told = tell(_facts(span, known, removed[span.fitting_id], site, rules, places), points, rules)
             measured = rules.clock == "days" or bool(getattr(span, f"{rules.clock}_measured"))
-            counts[LifeRow(*told, site, known.label, 1, 0 if measured else 1)] += 1
+            also = known.also if rules.also != "mode" or told.state == "failed" else None
+            counts[LifeRow(*told, site, known.label, 1, 0 if measured else 1, also)] += 1
             if told.left_out is not None:
                 left_out.setdefault(told.left_out, []).append(span.fitting_id)
     rows = [row._replace(count=count, not_measured=row.not_measured * count) for row, count in counts.items()]

@@ -22,6 +22,9 @@ WITHOUT_ROWS = ("fleet.models.codes.natural_key",)  # the order of codes, no rec
 # Screens, commands and forecasts may need records; what they know about lives comes from lifetimes_from_fleet.
 MAY_READ_RECORDS = (
     "reliability/lifetimes_from_fleet.py",
+    "reliability/life_question.py",  # turns the names of a question into records
+    "reliability/lives_of_set.py",  # imported lives, which have no records behind them
+    "reliability/histories_from_fleet.py",  # the order of failures in a position, and the duty of modules
     "reliability/running_parts.py",  # what runs now and how hard, for the forecast: ages, no lives
     "reliability/kept.py",  # asks for the version of the data, never for rows
     "reliability/views/",
