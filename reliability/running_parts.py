@@ -4,13 +4,17 @@ from __future__ import annotations
 
 import datetime as dt
 from collections import Counter, defaultdict
+from collections.abc import Iterator
 from dataclasses import dataclass, field
 from typing import Any, NamedTuple
 
-from django.db.models import F, OuterRef, Q, Subquery
+from django.db.models import Case, DateField, F, OuterRef, Q, Subquery, When
+from django.db.models.functions import Coalesce
+from django.utils import timezone
 
 from fleet.formats import counted
-from fleet.models import ClockPoint, Component, Fitting, Part, PartState, Placement, SiteKind
+from fleet.models import ClockPoint, Component, Fitting, Part, PartState, Placement, Site, SiteKind
+from reliability.running_as_known import running_as_known
 
 NO_PLACE = "no place"
 LATELY_DAYS = 120
@@ -45,12 +49,18 @@ class RunningParts:
         return sum(row.count for row in self.rows)
 
 
-def running_parts(component: Component, *, as_of: dt.date, sites: list[str] | None = None) -> RunningParts:
-    """Parts in service at field sites (or in modules without any stay on record) on the as-of day."""
+def running_parts(
+    component: Component, *, as_of: dt.date, sites: list[str] | None = None, known_on: dt.date | None = None
+) -> RunningParts:
+    """Parts in service at field sites (or in modules without any stay on record) on the as-of day.
+
+    `known_on` in the past tells it as the book had it by then: see `running_as_known.py`.
+    """
     left_out: Counter[str] = Counter()
     lower_bound = 0
     found: list[tuple[float, float | None, str, str, str]] = []
-    for row in _fitted(component, as_of):
+    then = known_on if known_on is not None and known_on < timezone.localdate() else None
+    for row in _fitted(component, as_of) if then is None else _fitted_as_known(component, as_of, then):
         place = _left_out(row, as_of)
         if place:
             left_out[place] += 1
@@ -63,7 +73,7 @@ def running_parts(component: Component, *, as_of: dt.date, sites: list[str] | No
             continue
         lower_bound += not known
         found.append((age, _pace(row), row["part_code"], row["site_code"] or NO_PLACE, row["type_code"]))
-    rows, guessed = _with_pace(found, component.clock, Replacements(component, as_of))
+    rows, guessed = _with_pace(found, component.clock, Replacements(component, as_of, then))
     notes = []
     if lower_bound:
         one, many = "part whose fitting day is not known counts", "parts whose fitting day is not known count"
@@ -111,6 +121,20 @@ def _fitted(component: Component, as_of: dt.date) -> Any:
         )
         .order_by("module_id", "position_id")
     )
+
+
+def _fitted_as_known(component: Component, as_of: dt.date, known_on: dt.date) -> Iterator[dict[str, Any]]:
+    """The same rows from what had reached the book by that day."""
+    fittings = (
+        Fitting.objects.standing()
+        .filter(part__component=component)
+        .order_by("module_id", "position_id")
+        .values(
+            "pk", "age_at_fit", "fitted_on", "module_id", part_code=F("part__code"), type_code=F("module__type__code")
+        )
+    )
+    places = {pk: (code, kind) for pk, code, kind in Site.objects.values_list("pk", "code", "kind")}
+    return running_as_known(list(fittings), places, component.clock, as_of, known_on)
 
 
 def _left_out(row: dict[str, Any], as_of: dt.date) -> str:
@@ -175,13 +199,21 @@ def _median(values: list[float]) -> float:
 class Replacements:
     """Which design goes in when a part fails: what its site fitted lately, else the end of the chain of designs."""
 
-    def __init__(self, component: Component, as_of: dt.date) -> None:
-        self.chains = chains_of(component)
+    def __init__(self, component: Component, as_of: dt.date, known_on: dt.date | None = None) -> None:
         self.lately: dict[str, Counter[str]] = defaultdict(Counter)
         since = as_of - dt.timedelta(days=LATELY_DAYS)
-        fitted = Fitting.objects.standing().filter(part__component=component, fitted_on__gt=since, fitted_on__lte=as_of)
-        for site, part in fitted.values_list("clock__site__code", "part__code"):
-            self.lately[site or NO_PLACE][part] += 1
+        standing, site, designs = (
+            Fitting.objects.standing().filter(part__component=component),
+            "clock__site__code",
+            None,
+        )
+        if known_on is not None:
+            standing, site = _known_by(standing, known_on), "site_then"
+            designs = set(standing.values_list("part__code", flat=True))
+        fitted = standing.filter(fitted_on__gt=since, fitted_on__lte=as_of)
+        for code, part in fitted.values_list(site, "part__code"):
+            self.lately[code or NO_PLACE][part] += 1
+        self.chains = chains_of(component, designs)
 
     def of(self, part: str, site: str) -> str:
         chain = self.chains[part]
@@ -190,13 +222,28 @@ class Replacements:
         return best if counts[best] >= FEWEST_LATELY else chain[-1]
 
 
-def chains_of(component: Component) -> dict[str, list[str]]:
-    """For each part itself and the current designs that supersede it, one after the other."""
+def _known_by(fittings: Any, known_on: dt.date) -> Any:
+    """Fittings that had reached the book by the day, and the site at which the module last served by then."""
+    fitted_known = Coalesce("fitted_known_on", "fitted_visit__known_on", "fitted_on")
+    removed_known = Coalesce("removed_known_on", "removed_visit__known_on", "removed_on")
+    until = Case(When(removed_known__lte=known_on, then="removed_on"), default=known_on, output_field=DateField())
+    served = Placement.objects.standing().exclude(site__kind=SiteKind.DEPOT).order_by("-from_on", "-pk")
+    here = served.filter(module=OuterRef("module_id"), from_on__lte=OuterRef("until")).values("site__code")[:1]
+    return (
+        fittings.annotate(fitted_known=fitted_known, removed_known=removed_known)
+        .filter(Q(fitted_known=None) | Q(fitted_known__lte=known_on))
+        .annotate(until=until)
+        .annotate(site_then=Subquery(here))
+    )
+
+
+def chains_of(component: Component, designs: set[str] | None = None) -> dict[str, list[str]]:
+    """For each part itself and the current designs that supersede it, one after the other; `designs`: only these."""
     parts = {part.pk: part for part in Part.objects.filter(component=component)}
     newer = {
         part.supersedes_id: part
         for part in sorted(parts.values(), key=lambda part: part.code_order)
-        if part.state == PartState.CURRENT and part.supersedes_id
+        if part.state == PartState.CURRENT and part.supersedes_id and (designs is None or part.code in designs)
     }
     chains = {}
     for part in parts.values():

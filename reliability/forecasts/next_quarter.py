@@ -11,6 +11,7 @@ from __future__ import annotations
 import math
 from collections import defaultdict
 from collections.abc import Sequence
+from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 from reliability.forecasts.horizon import week_starts
@@ -19,12 +20,13 @@ from reliability.forecasts.question import Question, question_of
 from reliability.forecasts.what_if import NotCountedYet
 from reliability.forecasts.written import Tallies, written
 from reliability.lifetimes_from_fleet import lives
-from reliability.running_parts import RunningRow, running_parts
+from reliability.running_parts import RunningParts, RunningRow, running_parts
 
 if TYPE_CHECKING:
-    from reliability.stats.counts import CountForecast
+    from reliability.fleet_lives import FleetLives
+    from reliability.stats.counts import CountDistribution, CountForecast
 
-__all__ = ["Question", "forecast_document", "question_of"]
+__all__ = ["Question", "forecast_distributions", "forecast_document", "question_of"]
 
 BANDS = (0.5, 0.8, 0.95)
 FEW_FAILURES, MANY_DRAWS, FEW_DRAWS = 20, 400, 100
@@ -32,23 +34,48 @@ AGE_CELLS = 60  # ages are told apart to this share of the typical life
 PACE_STEP = 0.12  # paces are told apart to this share
 
 
+@dataclass(frozen=True)
+class Distributions:
+    """What a forecast says of all failures and parts used, and what it was made from."""
+
+    failures: CountDistribution
+    parts_used: CountDistribution
+    running: RunningParts
+    found: FleetLives
+
+
 def forecast_document(question: Question, *, bands: Sequence[float] = BANDS) -> dict[str, Any]:
     """Totals, weeks and every grouping, as plain values."""
+    running, learned, tallies = tallied(question)
+    if running.rows and learned.found.lifetimes is None:
+        learned.warnings.append("No life is on record yet, so nothing can be expected. Log what goes in and out first.")
+    return written(question, running, learned, tallies, bands)
+
+
+def forecast_distributions(question: Question) -> Distributions:
+    """The whole distributions of the totals, to be judged by what happened."""
+    from reliability.forecasts.combine import add_up
+
+    running, learned, tallies = tallied(question)
+    failures, used = (add_up(each["total"].get("", [])) for each in (tallies.failures, tallies.used))
+    return Distributions(failures, used, running, learned.found)
+
+
+def tallied(question: Question) -> tuple[RunningParts, Learned, Tallies]:
+    """The count itself: what runs, what its lives teach, and what comes of both."""
     if not question.what_if.is_base:
         raise NotCountedYet("This assumption is not counted yet.")
-    running = running_parts(
-        question.component, as_of=question.as_of, sites=None if question.sites is None else list(question.sites)
-    )
-    learned = Learned(lives(question.component, by="part", as_of=question.as_of))
+    sites = None if question.sites is None else list(question.sites)
+    as_of, known_on = question.as_of, question.known_on
+    running = running_parts(question.component, as_of=as_of, sites=sites, known_on=known_on)
+    learned = Learned(lives(question.component, by="part", as_of=as_of, known_on=known_on))
     tallies = Tallies([[] for _ in week_starts(question.days)[1:]])
     pairs: dict[tuple[str, str], list[RunningRow]] = defaultdict(list)
     for row in running.rows:
         pairs[row.part, row.needed].append(row)
     for (part, needed), rows in sorted(pairs.items()):
         count_part(question, learned, needed, part, rows, tallies)
-    if running.rows and learned.found.lifetimes is None:
-        learned.warnings.append("No life is on record yet, so nothing can be expected. Log what goes in and out first.")
-    return written(question, running, learned, tallies, bands)
+    return running, learned, tallies
 
 
 def count_part(

@@ -29,6 +29,7 @@ class Question:
     sites: tuple[str, ...] | None = None
     by_type: bool = False
     what_if: WhatIf = BASE
+    known_on: dt.date | None = None  # in the past: only what had reached the book by then
 
     @property
     def gap(self) -> int:
@@ -62,7 +63,9 @@ class Question:
 
     def asked(self) -> dict[str, Any]:
         """The question as JSON can hold it."""
+        known = {} if self.known_on is None else {"known_on": self.known_on.isoformat()}
         return {
+            **known,
             "component": self.component.code,
             "begin": self.begin.isoformat(),
             "days": self.days,
@@ -82,6 +85,7 @@ def question_of(
     sites: Sequence[str] | None = None,
     by_type: bool = False,
     what_if: WhatIf | None = None,
+    known_on: dt.date | None = None,
 ) -> Question:
     """The default is 13 whole weeks from the first Monday of the next calendar quarter."""
     today = as_of or timezone.localdate()
@@ -93,4 +97,5 @@ def question_of(
         sites=None if sites is None else tuple(sorted(sites)),
         by_type=by_type,
         what_if=what_if or BASE,
+        known_on=known_on,
     )
