@@ -30,6 +30,7 @@ class Known(NamedTuple):
     mode: int | None
     age_at_fit: float
     label: object
+    also: object = None
 
 
 @dataclass(frozen=True)
@@ -93,7 +94,8 @@ def rows_as_known(
                 continue
             told = tell(_facts(span, known, removed[span.fitting_id], site, rules, places), points, rules)
             measured = rules.clock == "days" or bool(getattr(span, f"{rules.clock}_measured"))
-            counts[LifeRow(*told, site, known.label, 1, 0 if measured else 1)] += 1
+            also = known.also if rules.also != "mode" or told.state == "failed" else None
+            counts[LifeRow(*told, site, known.label, 1, 0 if measured else 1, also)] += 1
             if told.left_out is not None:
                 left_out.setdefault(told.left_out, []).append(span.fitting_id)
     rows = [row._replace(count=count, not_measured=row.not_measured * count) for row, count in counts.items()]
