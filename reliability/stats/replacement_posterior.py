@@ -31,21 +31,23 @@ _TAIL_POINTS = 500
 
 @dataclass(frozen=True, eq=False)
 class ReplacementCosts:
-    """Cost rates for each unit of time, at `ages` (n,); `never` is the one of failures alone.
+    """Expected cost rates for each unit of time: `cost_rate` at the best `age`, `never` that of failures alone, and the
+    `curve` with its band `lower`, `upper` at `ages`, each (n,).
 
-    best_age inf: no age is expected to cost less than never. age_lower, age_upper: band of the draws' own best ages
-    (inf: never). saving: share of the cost of failures alone that best_age saves, expected, with band. chance: share
-    of the draws in which best_age saves anything. flat: least and greatest age that cost within `flat_within` of the
+    age inf: none is expected to cost less than never. age_lower, age_upper: band of the draws' own best ages (inf:
+    never). saving: share of the cost of failures alone that the best age saves, expected, with band. chance: share of
+    the draws in which it saves anything. flat: least and greatest age that cost within `flat_within` of the
     best.
     """
 
+    age: float
+    cost_rate: float
     ages: FloatArray
-    cost_rate: FloatArray
+    curve: FloatArray
     lower: FloatArray
     upper: FloatArray
     never: float
     never_band: tuple[float, float]
-    best_age: float
     age_lower: float
     age_upper: float
     saving: float
@@ -58,7 +60,7 @@ class ReplacementCosts:
     @property
     def pays(self) -> bool:
         """Whether the saving is shown: it is above 0 at the lower end of its band."""
-        return isfinite(self.best_age) and self.saving_band[0] > 0
+        return isfinite(self.age) and self.saving_band[0] > 0
 
 
 def replacement_costs(
@@ -120,13 +122,14 @@ def _told(
     # no interpolation: some of them are endless
     age_ends = np.quantile(own_ages, ends, method="inverted_cdf")
     return ReplacementCosts(
+        age=float(ages[best]) if pays else inf,
+        cost_rate=least,
         ages=ages,
-        cost_rate=expected,
+        curve=expected,
         lower=lower,
         upper=upper,
         never=alone,
         never_band=_pair(np.quantile(never, ends)),
-        best_age=float(ages[best]) if pays else inf,
         age_lower=float(age_ends[0]),
         age_upper=float(age_ends[1]),
         saving=1.0 - least / alone,

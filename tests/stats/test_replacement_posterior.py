@@ -31,9 +31,9 @@ def lived(rng: np.random.Generator, shape: float, count: int = 60, until: float 
 def test_a_life_that_is_known_gives_the_closed_answer() -> None:
     found = replacement_costs(known((2.5, 100.0)), 1.0, 5.0)
     exact = best_replacement_age(2.5, 100.0, 1.0, 5.0)
-    assert found.cost_rate == pytest.approx(cost_rates(2.5, 100.0, 1.0, 5.0, found.ages), rel=1e-8)
+    assert found.curve == pytest.approx(cost_rates(2.5, 100.0, 1.0, 5.0, found.ages), rel=1e-8)
     assert found.never == pytest.approx(exact.never, rel=1e-6)
-    assert found.best_age == pytest.approx(exact.age, abs=np.diff(found.ages)[0])
+    assert found.age == pytest.approx(exact.age, abs=np.diff(found.ages)[0])
     assert found.saving == pytest.approx(exact.saving, rel=1e-3)
     assert found.pays
 
@@ -51,7 +51,7 @@ def test_the_flat_region_costs_what_it_says() -> None:
 def test_visits_only_agree_with_the_single_life() -> None:
     exact = best_replacement_age(2.5, 100.0, 1.0, 5.0, visit_interval=30.0)
     found = replacement_costs(known((2.5, 100.0)), 1.0, 5.0, visit_interval=30.0)
-    assert found.cost_rate.min() == pytest.approx(exact.cost_rate, rel=2e-3)
+    assert found.curve.min() == pytest.approx(exact.cost_rate, rel=2e-3)
 
 
 def test_sites_are_averaged_by_their_positions() -> None:
@@ -59,20 +59,20 @@ def test_sites_are_averaged_by_their_positions() -> None:
     draws = known((2.0, 100.0), multipliers={"SAND": np.array([4.0]), "LOCK": np.array([1.0])})
     found = replacement_costs(draws, 1.0, 6.0, sites={"SAND": 1.0, "LOCK": 3.0}, ages=[20.0, 40.0])
     by_hand = 0.25 * cost_rates(2.0, 50.0, 1.0, 6.0, [20.0, 40.0]) + 0.75 * cost_rates(2.0, 100.0, 1.0, 6.0, [20, 40])
-    assert found.cost_rate == pytest.approx(by_hand, rel=1e-7)
+    assert found.curve == pytest.approx(by_hand, rel=1e-7)
 
 
 @pytest.mark.parametrize(("lives", "failure"), [([(1.0, 50.0), (0.8, 70.0)], 20.0), ([(3.0, 50.0)], 1.0)])
 def test_where_it_cannot_pay_no_age_is_named(lives: list[tuple[float, float]], failure: float) -> None:
     found = replacement_costs(known(*lives), 1.0, failure)
-    assert found.best_age == inf
+    assert found.age == inf
     assert (found.age_lower, found.age_upper) == (inf, inf)
     assert (found.saving, found.chance, found.pays) == (0.0, 0.0, False)
 
 
 def test_a_saving_that_the_records_do_not_show_is_not_claimed() -> None:
     found = replacement_costs(known(*[(2.5, 100.0)] * 9, (0.8, 100.0)), 1.0, 5.0)
-    assert found.best_age < inf
+    assert found.age < inf
     assert found.saving_band[0] < 0
     assert not found.pays
     assert found.age_upper == inf
@@ -108,7 +108,7 @@ def test_lognormal_lives_and_early_failures_are_integrated_too() -> None:
 
     hazard = -log_ndtr(-np.log(np.maximum(fine, 5.0) / 100.0) / 0.4) + log_ndtr(-np.log(0.05) / 0.4)
     alive = np.exp(-hazard) * (1.0 - 0.1 * np.minimum(fine, 5.0) / 5.0)
-    for age, rate in zip(found.ages, found.cost_rate, strict=True):
+    for age, rate in zip(found.ages, found.curve, strict=True):
         kept = fine <= age
         by_hand = (5.0 - 4.0 * alive[kept][-1]) / np.trapezoid(alive[kept], fine[kept])
         assert rate == pytest.approx(by_hand, rel=1e-3)
