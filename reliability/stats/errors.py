@@ -36,6 +36,14 @@ class UndefinedEstimate(StatisticsError):
     """The records do not determine the estimate (for example because of truncation)."""
 
 
+class CollinearCovariates(StatisticsError):
+    """Covariates that do not vary, or that follow from one another; `names` are those to choose from."""
+
+    def __init__(self, message: str, *, names: tuple[str, ...]) -> None:
+        super().__init__(message)
+        self.names = names
+
+
 class UnsupportedRows(StatisticsError):
     """The method cannot use rows of this kind; the text names the one that can."""
 

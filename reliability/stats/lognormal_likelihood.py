@@ -77,39 +77,51 @@ def chained(value: FloatArray, slope: FloatArray, bend: FloatArray, y: FloatArra
     )
 
 
+def chained_rows(value: FloatArray, slope: FloatArray, bend: FloatArray, y: FloatArray) -> FloatArray:
+    """The same row by row, without weights, shape (6, n)."""
+    slope_y, bend_y = slope * y, bend * y
+    return np.stack([value, slope_y, slope, bend_y * y + slope_y, bend_y, bend])
+
+
 def interval_terms(rows: IntervalRows, steepness: float, level: float) -> FloatArray:
     """Weighted sums of log(Phi(z_R) - Phi(z_L)) and its derivatives, shape (6,)."""
+    return interval_row_terms(rows, steepness, np.full(rows.weights.size, level)) @ rows.weights
+
+
+def interval_row_terms(rows: IntervalRows, steepness: float, level: FloatArray) -> FloatArray:
+    """The same row by row, without weights, each row with its level (m,); shape (6, m)."""
     width = steepness * rows.log_ratio
     right = steepness * rows.log_right
     narrow = width < NARROW
-    total = np.zeros(6)
+    terms = np.zeros((6, width.size))
     if narrow.any():
-        total += _narrow_terms(right[narrow] - 0.5 * width[narrow], width[narrow], level, rows.weights[narrow])
+        terms[:, narrow] = _narrow_terms(right[narrow] - 0.5 * width[narrow], width[narrow], level[narrow])
     if not narrow.all():
         wide = ~narrow
-        total += _wide_terms(right[wide], width[wide], level, rows.weights[wide])
-    return total
+        terms[:, wide] = _wide_terms(right[wide], width[wide], level[wide])
+    return terms
 
 
-def _narrow_terms(y: FloatArray, width: FloatArray, level: float, weights: FloatArray) -> FloatArray:
+def _narrow_terms(y: FloatArray, width: FloatArray, level: FloatArray) -> FloatArray:
     """Density at the middle times the width, with the next term of the series, (z^2 - 1) width^2 / 24."""
     z = y + level
-    total = chained(-0.5 * z * z - HALF_LOG_TWO_PI + np.log(width), -z, np.full_like(z, -1.0), y, weights)
+    terms = chained_rows(-0.5 * z * z - HALF_LOG_TWO_PI + np.log(width), -z, np.full_like(z, -1.0), y)
     part = width * width / 24.0
-    more = [
-        (z * z - 1.0) * part,
-        (2.0 * z * y + 2.0 * (z * z - 1.0)) * part,
-        2.0 * z * part,
-        (2.0 * y * y + 10.0 * z * y + 4.0 * (z * z - 1.0)) * part,
-        (2.0 * y + 4.0 * z) * part,
-        2.0 * part,
-    ]
-    total += np.array([float(term @ weights) for term in more])
-    total[1] += float(weights.sum())  # the width is proportional to the steepness
-    return total
+    terms += np.stack(
+        [
+            (z * z - 1.0) * part,
+            (2.0 * z * y + 2.0 * (z * z - 1.0)) * part,
+            2.0 * z * part,
+            (2.0 * y * y + 10.0 * z * y + 4.0 * (z * z - 1.0)) * part,
+            (2.0 * y + 4.0 * z) * part,
+            2.0 * part,
+        ]
+    )
+    terms[1] += 1.0  # the width is proportional to the steepness
+    return terms
 
 
-def _wide_terms(y_right: FloatArray, width: FloatArray, level: float, weights: FloatArray) -> FloatArray:
+def _wide_terms(y_right: FloatArray, width: FloatArray, level: FloatArray) -> FloatArray:
     z_right = y_right + level
     from_zero = width > 1e5
     z_left = np.where(from_zero, -np.inf, z_right - width)
@@ -125,15 +137,16 @@ def _wide_terms(y_right: FloatArray, width: FloatArray, level: float, weights: F
     twice_right, twice_left = -at_right * (z_right + at_right), at_left * (z_left - at_left)
     both = at_right * at_left
     by_log = at_right * y_right - at_left * y_left
-    terms = [
-        value,
-        by_log,
-        at_right - at_left,
-        twice_right * y_right**2 + 2.0 * both * y_right * y_left + twice_left * y_left**2 + by_log,
-        twice_right * y_right + both * (y_right + y_left) + twice_left * y_left,
-        twice_right + 2.0 * both + twice_left,
-    ]
-    return np.array([float(term @ weights) for term in terms])
+    return np.stack(
+        [
+            value,
+            by_log,
+            at_right - at_left,
+            twice_right * y_right**2 + 2.0 * both * y_right * y_left + twice_left * y_left**2 + by_log,
+            twice_right * y_right + both * (y_right + y_left) + twice_left * y_left,
+            twice_right + 2.0 * both + twice_left,
+        ]
+    )
 
 
 def lognormal_likelihood(lifetimes: Lifetimes) -> LognormalLikelihood:

@@ -17,6 +17,8 @@ from reliability.stats.newton import EvaluatePlane, maximise_line
 METHODS = ("likelihood-ratio", "wald", "wald-plain")
 # a quantity whose logarithm may move this far without the likelihood falling enough is called unbounded
 FARTHEST = 50.0
+# this near the limit (as a share of z) one more Newton step squares the error, and needs no further maximum
+NEAR_LIMIT = 1e-3
 
 
 @dataclass(frozen=True)
@@ -125,11 +127,28 @@ def quantity_interval(
         lowest, highest = range_of_psi or (centre - reach, centre + reach)
         peak = evaluate(*best)[0]
         drift = _drift(curve, gradient, covariance, error)
+
+        def profile(psi: float, free: float) -> tuple[float, float, float]:
+            return profile_maximum(evaluate, curve, psi, free)
+
         ends = [
-            profile_limit(evaluate, curve, best, peak, z, centre, max(error, 1e-6), drift, direction, farthest)
+            profile_limit(profile, curve.free_of(*best), peak, z, centre, max(error, 1e-6), drift, direction, farthest)
             for direction, farthest in ((-1.0, lowest), (1.0, highest))
         ]
-    (low, low_open), (high, high_open) = reversed(ends) if scale.falling else ends
+    return interval_between(ends[0], ends[1], estimate, scale, quantity, confidence_level, method)
+
+
+def interval_between(
+    low_end: tuple[float, bool],
+    high_end: tuple[float, bool],
+    estimate: float,
+    scale: Scale,
+    quantity: Any,
+    confidence_level: float,
+    method: str,
+) -> Interval:
+    """The interval whose ends in psi are given, each with whether it is open."""
+    (low, low_open), (high, high_open) = (high_end, low_end) if scale.falling else (low_end, high_end)
     return Interval(
         quantity,
         estimate,
@@ -149,42 +168,47 @@ def _drift(curve: Curve, gradient: FloatArray, covariance: FloatArray, error: fl
     return float(direction @ covariance @ gradient) / error**2 if error > 0.0 else 0.0
 
 
+# psi and a guess at the free parameters -> greatest log-likelihood there, its slope in psi, the free parameters
+Profile = Callable[[float, Any], tuple[float, float, Any]]
+
+
 def profile_limit(
-    evaluate: EvaluatePlane,
-    curve: Curve,
-    best: tuple[float, float],
+    profile: Profile,
+    free: Any,
     peak: float,
     z: float,
     centre: float,
     error: float,
-    drift: float,
+    drift: Any,
     direction: float,
     farthest: float,
 ) -> tuple[float, bool]:
     """The psi beyond `centre` where twice the fall of the profile log-likelihood is z squared; True if there is none.
 
+    free: the other parameters at the estimate, a number or an array; drift: how fast they move with psi.
     The signed root of that fall is nearly straight in psi, so Newton steps on it need few profile maxima; a bracket
     guards them. Lawless, Statistical Models and Methods for Lifetime Data (2003), section 4.1 and appendix C.
     """
-    inside, outside, free = centre, None, curve.free_of(*best)
+    inside, outside = centre, None
     psi = centre + direction * min(z * error, 3.0)
     for _ in range(200):
         if direction * (psi - farthest) > 0:
             psi = farthest
-        height, slope, new_free = profile_maximum(evaluate, curve, psi, free + drift * (psi - inside))
+        height, slope, new_free = profile(psi, free + drift * (psi - inside))
         fall = math.sqrt(max(2.0 * (peak - height), 0.0)) if math.isfinite(height) else math.inf
-        if abs(fall - z) < 1e-9 * z:
-            return psi, False
+        if fall < z and psi == farthest:
+            return psi, True
+        near = abs(fall - z) < NEAR_LIMIT * z
         if fall < z:
-            if psi == farthest:
-                return psi, True
             drift = (new_free - free) / (psi - inside) if psi != inside else drift
             inside, free = psi, new_free
         else:
             outside = psi
         if outside is not None and abs(outside - inside) <= 1e-12 * max(1.0, abs(inside)):
             return inside, False
-        psi = _next_psi(psi, fall, z, slope, direction, centre, inside, outside)
+        last, psi = psi, _next_psi(psi, fall, z, slope, direction, centre, inside, outside)
+        if near and abs(psi - last) < 5.0 * NEAR_LIMIT * abs(last - centre):
+            return psi, False
     raise NotConverged("The likelihood-ratio limit was not found in 200 steps. Use the Wald interval.", iterations=200)
 
 

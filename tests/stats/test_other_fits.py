@@ -123,8 +123,9 @@ def test_wide_and_narrow_intervals_agree_where_they_meet():
 
     for right in (-4.0, -0.3, 0.0, 2.0, 6.0):
         rows = IntervalRows(np.array([right]), np.array([module.NARROW]), np.array([1.0]))
-        narrow = module._narrow_terms(rows.log_right - 0.5 * rows.log_ratio, rows.log_ratio, 0.1, rows.weights)
-        wide = module._wide_terms(rows.log_right, rows.log_ratio, 0.1, rows.weights)
+        level = np.array([0.1])
+        narrow = module._narrow_terms(rows.log_right - 0.5 * rows.log_ratio, rows.log_ratio, level)
+        wide = module._wide_terms(rows.log_right, rows.log_ratio, level)
         assert narrow == pytest.approx(wide, rel=1e-6, abs=1e-6)
 
 
