@@ -18,17 +18,20 @@ IntArray = NDArray[np.int64]
 
 @dataclass(frozen=True, eq=False)
 class Block:
-    """Rows that share a kind of grid; `window_edges` are shares of the horizon, (windows + 1,) or empty."""
+    """Rows that share a kind of grid; `spans` are shares of the horizon, (targets, 2).
+
+    taken_share: share of the other removals that is not counted among the parts used.
+    """
 
     grid: MidpointGrid | VisitGrid
     rows: Rows
-    window_edges: FloatArray
+    spans: FloatArray
+    taken_share: float = 0.0
 
     def places(self) -> list[tuple[IntArray, IntArray]]:
-        """(begin, end) places of the whole horizon, then of each window, for each class."""
+        """(begin, end) places of each target, for each class."""
         classes = self.rows.classes
-        spans = [(0.0, 1.0), *zip(self.window_edges[:-1], self.window_edges[1:], strict=True)]
-        return [tuple(self._place(share * classes.horizon) for share in span) for span in spans]
+        return [(self._place(begin * classes.horizon), self._place(end * classes.horizon)) for begin, end in self.spans]
 
     def _place(self, time: FloatArray) -> IntArray:
         place = self.grid.place_of(np.minimum(time, self.rows.classes.leave_at), self.rows.classes)
@@ -53,8 +56,8 @@ class BlockTails:
         self._ends, self._planned, self._planned_place = running
         self._spans = block.places()
 
-    def targets(self, kind: str) -> list[FloatArray]:
-        """Tails P(N >= k), k = 1 .., (draws, rows, orders), of the whole horizon and of each window."""
+    def targets(self, kind: str, count: int) -> list[FloatArray]:
+        """Tails P(N >= k), k = 1 .., (draws, rows, orders), of each of the first `count` targets."""
         kernel = self._kernel(self._new, self._new_by, kind)
         whole = kernel.tails()
         following = None if self._next is None else self._kernel(*self._next, kind)
@@ -63,7 +66,7 @@ class BlockTails:
             kernel, whole, following = following, following.tails(), None
         known: dict[int, FloatArray] = {}
         found = []
-        for begin, end in self._spans:
+        for begin, end in self._spans[:count]:
             if following is not None:
                 remaining = self._switched(kernel, whole, following, begin, end)
             else:
@@ -72,8 +75,8 @@ class BlockTails:
         return self._rows_tails(kind, found)
 
     def _kernel(self, masses: Ends, shares: Ends, kind: str) -> FromNew:
-        counted_by = shares.split(kind)[0]
-        return FromNew(self._transform, *masses.split(kind), counted_by)
+        counted_by = shares.split(kind, self._block.taken_share)[0]
+        return FromNew(self._transform, *masses.split(kind, self._block.taken_share), counted_by)
 
     def _widths(self, begin: IntArray, end: IntArray) -> IntArray:
         """Window widths; a window from the start may reach as far back as the grid."""
@@ -107,7 +110,7 @@ class BlockTails:
 
     def _rows_tails(self, kind: str, remaining: list[FloatArray]) -> list[FloatArray]:
         """Tails of all rows: running parts by one product for all targets, then the others."""
-        counted, silent = self._ends.split(kind)
+        counted, silent = self._ends.split(kind, self._block.taken_share)
         masses = counted if silent is None else np.concatenate([counted, silent], axis=2)
         follow = [self._follow(found, number, silent is not None) for number, found in enumerate(remaining)]
         products = self._by_class_product(masses, np.concatenate(follow, axis=3))

@@ -65,14 +65,17 @@ class Ends:
     removed: FloatArray | None
     planned: FloatArray | None
 
-    def split(self, kind: str) -> tuple[FloatArray, FloatArray | None]:
-        """(counted, silent) masses for "failures", "parts" or "planned"."""
+    def split(self, kind: str, taken_share: float = 0.0) -> tuple[FloatArray, FloatArray | None]:
+        """(counted, silent) masses for "failures", "parts" (less the taken share of removals) or "planned"."""
         others = [mass for mass in (self.removed, self.planned) if mass is not None]
         if kind == "failures":
             return self.failed, sum(others[1:], others[0]) if others else None
         if kind == "planned":
             silent = self.failed if self.removed is None else self.failed + self.removed
             return (np.zeros_like(self.failed) if self.planned is None else self.planned), silent
+        if taken_share and self.removed is not None:
+            own = self.failed + (1.0 - taken_share) * self.removed
+            return (own if self.planned is None else own + self.planned), taken_share * self.removed
         return sum(others, self.failed), None
 
 

@@ -21,7 +21,7 @@ from reliability.stats.count_lattice import VisitGrid
 from reliability.stats.count_masses import Hazards, MidpointGrid
 from reliability.stats.count_positions import Rows, group_positions
 from reliability.stats.count_results import CountDistribution, CountForecast, Counts
-from reliability.stats.count_sums import CountMixtures
+from reliability.stats.count_tallies import Plan, Tallies
 from reliability.stats.errors import InvalidArgument
 from reliability.stats.posterior_draws import PosteriorDraws
 from reliability.stats.prediction import calibrated_prediction
@@ -69,6 +69,10 @@ def forecast_counts(
     refit_delay: float = 0.0,
     cells: int | None = None,
     group_window: int | None = None,
+    also_groups: Sequence[Any] | None = None,
+    stretch: tuple[int, int] | None = None,
+    parts_by_window: bool = True,
+    taken_share: float = 0.0,
 ) -> CountForecast:
     """Distribution of failures and parts used by positions within their horizons.
 
@@ -88,6 +92,9 @@ def forecast_counts(
     the day and parts begin with the next. draws: of the posterior. cells: steps of the grid (chosen from the lives
     if None).
     group_window: by_group speaks of this window (0 the first) instead of the whole horizon.
+    also_groups: second labels, answered in by_also. stretch: (first, last) edge of windows; totals, groups and windows
+    speak of what lies between them, in one pass. parts_by_window: False leaves the windows' parts_used at failures.
+    taken_share: share of the other removals that parts_used leaves out, because they are counted elsewhere.
     Raises InvalidArgument. Source: Cox 1962; early renewals by mass at cell midpoints, see count_kernel.
     """
     rng = np.random.default_rng() if rng is None else rng
@@ -97,11 +104,12 @@ def forecast_counts(
         # without windows leaving only shortens the horizon, exactly
         horizons, leave = np.minimum(np.asarray(horizons, dtype=np.float64), leave), np.inf
     needs_sites = _needs_sites(posterior, next_posterior, duty_spread, sites, ages)
+    pairs = groups if also_groups is None else _pairs(groups, also_groups)
     rows = group_positions(
         ages,
         horizons,
         sites=sites if needs_sites else None,
-        groups=groups,
+        groups=pairs,
         weights=weights,
         columns={
             "down_until": down_until,
@@ -125,14 +133,24 @@ def forecast_counts(
     sharpness = _sharpness(drawn, rates)
     if group_window is not None and not 0 <= group_window < len(edges) - 1:
         raise InvalidArgument(f"group_window is {group_window}; there are {len(edges) - 1} windows, counted from 0.")
-    tallies = _Tallies(rows, len(edges) - 1, 0 if group_window is None else group_window + 1)
+    if not 0 <= taken_share <= 1:
+        raise InvalidArgument(f"taken_share is {taken_share:g}; it must lie between 0 and 1.")
+    spans = _spans(edges, stretch)
+    plan = Plan(
+        grouped=0 if group_window is None else group_window + 1,
+        groupings=1 if also_groups is None else 2,
+        windows=() if windows is None else _told_windows(windows, stretch),
+        parts_by_window=parts_by_window,
+    )
+    tallies = Tallies(rows, len(spans), plan)
     coarse = rows.coarse() if len(rows) > FEW_ROWS else rows
     coarse = coarse if len(coarse) < 0.7 * len(rows) else rows
     for chunk, share in _chunks(rows, sharpness):
         chosen = coarse if _are_rare(rows, _hazards(drawn, rates, rows, chunk), duty[chunk]) else rows
-        blocks = _blocks(chosen, float(np.quantile(sharpness[chunk], 0.9)), edges, cells, refit_delay)
+        sharp = float(np.quantile(sharpness[chunk], 0.9))
+        blocks = _blocks(chosen, sharp, (edges, spans), cells, (refit_delay, taken_share))
         _add_draws(tallies.each_for(share), blocks, (drawn, rates), (following, next_rates), duty, chunk)
-    return tallies.forecast(rows, windows, draws)
+    return tallies.forecast(rows, draws)
 
 
 def _window_edges(windows: Sequence[float] | None) -> FloatArray:
@@ -191,18 +209,47 @@ def _sharpness(drawn: PosteriorDraws, rates: FloatArray) -> FloatArray:
         return np.maximum(drawn.shapes, 2.5) / drawn.scales * np.maximum(hardest, 1e-300) ** (1.0 / drawn.shapes)
 
 
-def _blocks(rows: Rows, sharpness: float, edges: FloatArray, cells: int | None, refit_delay: float) -> list[Block]:
+def _spans(edges: FloatArray, stretch: tuple[int, int] | None) -> FloatArray:
+    """(begin, end) of what is counted, as shares of the horizon: the whole (or the stretch), then its windows."""
+    if edges.size == 1 and stretch is None:
+        return np.array([[0.0, 1.0]])
+    first, last = (0, edges.size - 1) if stretch is None else stretch
+    if not 0 <= first < last <= edges.size - 1:
+        raise InvalidArgument(f"stretch is {stretch}; it must name two edges of the windows, the first one first.")
+    own = np.stack([edges[first:last], edges[first + 1 : last + 1]], axis=1)
+    return np.concatenate([[[edges[first], edges[last]]], own])
+
+
+def _told_windows(windows: Sequence[float], stretch: tuple[int, int] | None) -> tuple[tuple[float, float], ...]:
+    told = tuple(pairwise(map(float, windows)))
+    return told if stretch is None else told[stretch[0] : stretch[1]]
+
+
+def _pairs(groups: Sequence[Any] | None, also: Sequence[Any]) -> list[tuple[Any, Any]]:
+    if groups is None or len(groups) != len(also):
+        raise InvalidArgument("also_groups needs groups, with as many labels.")
+    return list(zip(groups, also, strict=True))
+
+
+def _blocks(
+    rows: Rows,
+    sharpness: float,
+    times: tuple[FloatArray, FloatArray],
+    cells: int | None,
+    settings: tuple[float, float],
+) -> list[Block]:
+    (edges, spans), (refit_delay, taken_share) = times, settings
     classes = rows.classes
     at_visits = classes.visit_every > 0
     blocks = []
     if (~at_visits).any():
         number = cells or _cell_count(float(classes.horizon[~at_visits].max()), sharpness, edges)
-        blocks.append(Block(MidpointGrid(number, refit_delay), rows.of_classes(~at_visits), edges))
+        blocks.append(Block(MidpointGrid(number, refit_delay), rows.of_classes(~at_visits), spans, taken_share))
     if at_visits.any():
         some = rows.of_classes(at_visits)
         seen = (some.classes.horizon - some.classes.visit_next) / some.classes.visit_every
         most = max(int(np.floor(seen.max() + 1e-9)) + 1, 1)
-        blocks.append(Block(VisitGrid(most), some, edges))
+        blocks.append(Block(VisitGrid(most), some, spans, taken_share))
     return blocks
 
 
@@ -267,7 +314,7 @@ def _are_rare(rows: Rows, hazards: Hazards, duty: FloatArray) -> bool:
 
 
 def _add_draws(
-    tallies: _Tallies,
+    tallies: Tallies,
     blocks: list[Block],
     now: tuple[PosteriorDraws, FloatArray],
     later: tuple[PosteriorDraws | None, FloatArray | None],
@@ -281,7 +328,8 @@ def _add_draws(
         worked.append(BlockTails(block, _hazards(*now, block.rows, chunk), following, factors))
     weights = [block.rows.weights for block in blocks]
     for kind in tallies.kinds:
-        for number, parts in enumerate(zip(*(tails.targets(kind) for tails in worked), strict=True)):
+        targets = tallies.targets(kind)
+        for number, parts in enumerate(zip(*(tails.targets(kind, targets) for tails in worked), strict=True)):
             tallies.add(kind, number, _joined(parts), np.concatenate(weights, axis=1))
     if not worked:
         tallies.add_nothing(chunk.size)
@@ -293,66 +341,3 @@ def _joined(parts: Sequence[FloatArray]) -> FloatArray:
     orders = max(part.shape[2] for part in parts)
     padded = [np.pad(part, ((0, 0), (0, 0), (0, orders - part.shape[2]))) for part in parts]
     return np.concatenate(padded, axis=1)
-
-
-class _Tallies:
-    """The mixtures being collected: for each kind the total and each window's, one of them by group as well."""
-
-    def __init__(self, rows: Rows, windows: int, grouped: int = 0) -> None:
-        self._share = 1.0
-        self._grouped = grouped  # the target that the groups speak of: 0 the whole horizon
-        classes = rows.classes
-        planned = bool(np.isfinite(classes.replace_at).any())
-        differ = planned or bool(classes.other_removals.any()) or bool(rows.extra.any())
-        self.kinds = ["failures", *(["parts"] if differ else []), *(["planned"] if planned else [])]
-        # one group alone is the total
-        self._first = 0 if len(rows.group_labels) > 1 else 1
-        sums = len(rows.group_labels) + 1 - self._first
-        self._mixtures = {
-            kind: [CountMixtures(sums if number == grouped else 1) for number in range(1 + windows)]
-            for kind in self.kinds
-        }
-
-    def add(self, kind: str, number: int, tails: FloatArray, weights: FloatArray) -> None:
-        """Tails of target `number` (0 the whole horizon) for some draws."""
-        own = weights[self._first if number == self._grouped else -1 :]
-        self._mixtures[kind][number].add(tails, own, share=self._share)
-
-    def each_for(self, share: float) -> _Tallies:
-        """These tallies, where each draw added from now on stands for `share` draws."""
-        self._share = share
-        return self
-
-    def add_nothing(self, draws: int) -> None:
-        """No positions at all: nothing will fail."""
-        for mixtures in self._mixtures.values():
-            for mixture in mixtures:
-                mixture.add(np.zeros((draws, 0, 1)), np.zeros((1, 0)), share=self._share)
-
-    def forecast(self, rows: Rows, windows: Sequence[float] | None, draws: int) -> CountForecast:
-        """The finished distributions."""
-        found = {kind: [mixture.pmfs() for mixture in mixtures] for kind, mixtures in self._mixtures.items()}
-        total = _counts({kind: pmfs[0][-1] for kind, pmfs in found.items()})
-        spans = () if windows is None else tuple(zip(map(float, windows[:-1]), map(float, windows[1:]), strict=True))
-        by_window = [_counts({kind: pmfs[1 + n][-1] for kind, pmfs in found.items()}) for n in range(len(spans))]
-        by_group: dict[Any, Counts] = {}
-        if rows.group_labels != [None]:
-            for index, label in enumerate(rows.group_labels):
-                # one group alone is the total, which stands last
-                place = -1 if self._first else index
-                by_group[label] = _counts({kind: pmfs[self._grouped][place] for kind, pmfs in found.items()})
-        return CountForecast(
-            total.failures,
-            total.parts_used,
-            total.planned,
-            by_group=by_group,
-            by_window=tuple(by_window),
-            windows=spans,
-            draws=draws,
-        )
-
-
-def _counts(found: dict[str, FloatArray]) -> Counts:
-    counts = {kind: CountDistribution(pmf) for kind, pmf in found.items()}
-    none = CountDistribution(np.array([1.0]))
-    return Counts(counts["failures"], counts.get("parts", counts["failures"]), counts.get("planned", none))
