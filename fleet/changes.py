@@ -12,6 +12,9 @@ from django.db import models
 
 from fleet.formats import long_day, moment
 from fleet.models import (
+    BenchCapacity,
+    BenchHours,
+    BenchJob,
     Book,
     Component,
     FailureMode,
@@ -27,7 +30,11 @@ from fleet.models import (
     Redesign,
     RolloutStep,
     Site,
+    StockMove,
     Stop,
+    Store,
+    SupplyLine,
+    SupplyOrder,
     Visit,
 )
 
@@ -47,6 +54,13 @@ KINDS: dict[str, type[models.Model]] = {
     "position": Position,
     "redesign": Redesign,
     "rollout": RolloutStep,
+    "store": Store,
+    "stock-move": StockMove,
+    "supply-order": SupplyOrder,
+    "supply-line": SupplyLine,
+    "bench-job": BenchJob,
+    "bench-hours": BenchHours,
+    "bench-capacity": BenchCapacity,
     "person": Person,
     "book": Book,
 }
@@ -82,12 +96,10 @@ class Told:
 
 
 def told_fields(model: type[models.Model], kind: str) -> list[Any]:
-    keep_site = kind in {"placement", "site"}
+    kept = {"placement": "site_id", "site": "site_id", "store": "site_id", "stock-move": "happened_on"}.get(kind)
     fields = model.history.model._meta.concrete_fields  # type: ignore[attr-defined]
     own = {field.name for field in model._meta.concrete_fields}
-    return [
-        f for f in fields if f.name in own and (f.attname not in NOT_TOLD or (keep_site and f.attname == "site_id"))
-    ]
+    return [f for f in fields if f.name in own and (f.attname not in NOT_TOLD or f.attname == kept)]
 
 
 def words_of(field: Any, value: Any, names: dict[Any, dict[Any, str]]) -> str:

@@ -21,6 +21,8 @@ from fleet.models import (
     Role,
     Site,
     SiteKind,
+    StockMove,
+    Store,
 )
 
 _numbers = count(1)
@@ -151,6 +153,19 @@ def make_fitting(**fields: Any) -> Fitting:
     fields.setdefault("code", f"F-{number()}")
     fields.setdefault("fitted_on", LONG_AGO)
     return Fitting.objects.create(**fields)
+
+
+def make_store(**fields: Any) -> Store:
+    fields.setdefault("code", f"STORE-{number()}")
+    return Store.objects.create(**fields)
+
+
+def stock(store: Store, part: Part, quantity: int, **fields: Any) -> StockMove:
+    """So many lie there: received by the action, without an order."""
+    from fleet.actions.receive_stock import receive_stock
+
+    fields.setdefault("happened_on", LONG_AGO)
+    return receive_stock(by=None, store=store, part=part, quantity=quantity, **fields)
 
 
 class Carriage:

@@ -9,6 +9,7 @@ import logging
 import uuid
 from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
+from contextvars import ContextVar
 from dataclasses import fields, is_dataclass
 from typing import Any
 
@@ -22,6 +23,7 @@ from fleet.rights import may, seen_by
 
 log = logging.getLogger(__name__)
 USED_KEY = "This entry key was used for another entry. Open the form again."
+_raises: ContextVar[list[bool] | None] = ContextVar("raises", default=None)
 RETRY = dt.timedelta(hours=1)  # how far the times of one submission, sent twice, may lie apart
 
 
@@ -29,13 +31,24 @@ RETRY = dt.timedelta(hours=1)  # how far the times of one submission, sent twice
 def change(
     *, by: Person | None, right: str, module: Module | None = None, reason: str = "", raises_version: bool = True
 ) -> Iterator[Any]:
-    """One change of the records; yields the module as it is under its lock. `by` is None only for commands."""
-    with told_in_words(), transaction.atomic(), writing(person=by, reason=reason or None):
-        if by is not None:
-            require(by, right)
-        yield lock_module(module, by) if module is not None else None
-        if raises_version:
-            DataVersion.raise_version()
+    """One change of the records; yields the module as it is under its lock. `by` is None only for commands.
+
+    Of changes within changes the outermost raises the version: everybody waits for that row from then on.
+    """
+    outer = _raises.get()
+    wanted: list[bool] = [] if outer is None else outer
+    token = _raises.set(wanted)
+    try:
+        with told_in_words(), transaction.atomic(), writing(person=by, reason=reason or None):
+            if by is not None:
+                require(by, right)
+            yield lock_module(module, by) if module is not None else None
+            if raises_version:
+                wanted.append(True)
+            if outer is None and wanted:
+                DataVersion.raise_version()
+    finally:
+        _raises.reset(token)
 
 
 @contextmanager

@@ -9,7 +9,7 @@ from typing import Any
 
 from fleet.actions.base import sees
 from fleet.actions.errors import NotAllowed, day_words
-from fleet.models import Finding, Fitting, Module, Person, Site
+from fleet.models import BenchHours, Finding, Fitting, Module, Person, Site
 from fleet.rights import CORRECT, may, may_correct
 
 REMOVAL_FIELDS = {
@@ -36,6 +36,8 @@ class Entry:
 
 
 def module_of(record: Any) -> Module:
+    if isinstance(record, BenchHours):
+        return record.job.module
     return record.visit.module if isinstance(record, Finding) else record.module
 
 

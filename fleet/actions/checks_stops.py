@@ -7,7 +7,8 @@ from zoneinfo import ZoneInfo
 
 from fleet.actions.checks_places import first_clash
 from fleet.actions.errors import AlreadyDone, BadValue, day_words
-from fleet.models import Left, Module, Stop, Visit
+from fleet.actions.writes import save_again
+from fleet.models import Left, Module, Placement, Site, SiteKind, Stop, Visit
 
 LEAST = dt.datetime.min.replace(tzinfo=dt.UTC)
 MOST = dt.datetime.max.replace(tzinfo=dt.UTC)
@@ -57,3 +58,31 @@ def next_change(module: Module, since: dt.datetime, stops: list[Stop]) -> dt.dat
     )
     begun = min((stop.stopped_at for stop in stops if stop.stopped_at > since), default=None)
     return min((instant for instant in (later, begun) if instant is not None), default=None)
+
+
+def end_of_standing(module: Module, since: dt.datetime, stops: list[Stop]) -> dt.datetime | None:
+    """When what stands still from an instant on does so no more: as above, or it came to a depot."""
+    ends = (next_change(module, since, stops), came_to_depot(module, since))
+    return min((instant for instant in ends if instant is not None), default=None)
+
+
+def came_to_depot(module: Module, since: dt.datetime) -> dt.datetime | None:
+    """The first moment, from an instant on, at which a stay at a depot began: there nothing stands still."""
+    stays = Placement.objects.standing().filter(module=module, site__kind=SiteKind.DEPOT).select_related("site")
+    mornings = [
+        max(since, morning(stay.from_on, stay.site)) for stay in stays if stay.from_on >= stay.site.day_of(since)
+    ]
+    return min(mornings, default=None)
+
+
+def morning(day: dt.date, site: Site) -> dt.datetime:
+    return dt.datetime.combine(day, dt.time(), site.tz)
+
+
+def end_stop_at_depot(stay: Placement) -> None:
+    """A module that comes to a depot stands still no more; its parts do not age there either."""
+    if stay.site.kind != SiteKind.DEPOT:
+        return
+    for stop in Stop.objects.now().filter(module=stay.module):
+        stop.running_at = max(stop.stopped_at, morning(stay.from_on, stay.site))
+        save_again(stop)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from fleet.actions.base import sees
+from fleet.actions.checks_jobs import check_jobs_of
 from fleet.actions.checks_places import known_day, module_exists_on
 from fleet.actions.checks_stays_at_sites import check_placement
 from fleet.actions.checks_stops import check_stop, standing_stops
@@ -46,3 +47,4 @@ def correct_placement(correction: Correction) -> None:
             module_exists_on(correction.module, getattr(stay, name), field=name)
     check_placement(stay, correction.places.stays)
     save_again(stay)
+    check_jobs_of(correction.module)

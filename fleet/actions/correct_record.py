@@ -12,13 +12,26 @@ from fleet.actions.changed_since import check_version, describe
 from fleet.actions.checks_places import Places
 from fleet.actions.checks_rights import check_may_correct, module_of
 from fleet.actions.checks_values import clean_day, clean_instant, clean_text
+from fleet.actions.correct_bench import correct_hours, correct_job
 from fleet.actions.correct_fitting import correct_fitting
 from fleet.actions.correct_others import correct_finding, correct_placement, correct_stop
 from fleet.actions.correct_visit import correct_visit
 from fleet.actions.corrections import Correction
 from fleet.actions.errors import AlreadyDone, BadValue
 from fleet.actions.rebuild_clocks import rebuild_clocks
-from fleet.models import Finding, Fitting, Module, Person, Placement, Reading, Stop, Visit
+from fleet.models import (
+    BenchHours,
+    BenchJob,
+    Finding,
+    Fitting,
+    Module,
+    Person,
+    Placement,
+    Reading,
+    StockMove,
+    Stop,
+    Visit,
+)
 from fleet.rights import LOG
 
 Corrector = Callable[[Correction], None]
@@ -35,6 +48,8 @@ CORRECTORS: dict[type[models.Model], tuple[Corrector, set[str]]] = {
     Stop: (correct_stop, {"stopped_at", "running_at", "known_on", "note"}),
     Finding: (correct_finding, {"position", "finding", "mode", "note"}),
     Placement: (correct_placement, {"site", "bay", "from_on", "to_on"}),
+    BenchJob: (correct_job, {"reason", "received_on", "started_on", "finished_on", "outcome", "note"}),
+    BenchHours: (correct_hours, {"day", "hours"}),
 }  # fmt: skip
 
 
@@ -59,6 +74,8 @@ def correct_record(*, by: Person | None, record: Any, version: int | None, chang
 def corrector_of(record: Any, changes: dict[str, Any]) -> Corrector:
     if isinstance(record, Reading):
         raise BadValue("A reading is not edited. Enter the right one, then strike this one out.", field="record")
+    if isinstance(record, StockMove):
+        raise BadValue("A stock move is not edited. Enter the right one, then strike this one out.", field="record")
     if type(record) not in CORRECTORS:
         raise BadValue(f"{describe(record).capitalize()} is not corrected this way.", field="record")
     corrector, allowed = CORRECTORS[type(record)]

@@ -17,7 +17,7 @@ from fleet.actions.measured import MeasuredEnds
 from fleet.actions.strike import strike
 from fleet.actions.visit_stops import leave_otherwise
 from fleet.actions.writes import save_again
-from fleet.models import Fitting, Reading, Stop, Visit
+from fleet.models import Fitting, Reading, StockMove, Stop, Visit
 
 
 def correct_visit(correction: Correction) -> None:
@@ -36,6 +36,7 @@ def correct_visit(correction: Correction) -> None:
         move_fittings(correction, visit, old)
         move_stops(correction, visit, old, place)
         move_readings(correction, visit, old, place)
+        move_issues(visit, old)
     if visit.left != old["left"]:
         leave_otherwise(visit, old["left"], place, correction.by, correction.reason)
 
@@ -110,6 +111,14 @@ def move_readings(correction: Correction, visit: Visit, old: dict[str, Any], pla
     if readings:
         for unit in UNITS:
             check_rows(shown_by(correction.module, unit), place.zone)
+
+
+def move_issues(visit: Visit, old: dict[str, Any]) -> None:
+    """Parts issued to the visit on its old day left their store on its new one."""
+    for move in StockMove.objects.standing().filter(visit=visit, happened_on=old["happened_on"]):
+        if move.happened_on != visit.happened_on:
+            move.happened_on = visit.happened_on
+            save_again(move)
 
 
 def entered_again(reading: Reading, visit: Visit, shift: dt.timedelta, correction: Correction, place: Place) -> Reading:

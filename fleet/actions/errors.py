@@ -81,3 +81,31 @@ class ChangedSince(RecordError):
             f"{who} changed {record} since you opened it ({told}). Look at it again, then save your change.",
             changes=changes,
         )
+
+
+class NotEnough(RecordError):
+    """A store holds fewer than are to leave it."""
+
+    def __init__(self, *, store: str, part: str, on_hand: int, asked: int, used: bool = False) -> None:
+        kind = f"used {part}" if used else part
+        held = "none" if on_hand <= 0 else thousands(on_hand)
+        super().__init__(
+            f"{store} holds {held} of {kind} on record, and {thousands(asked)} should leave it. "
+            "Take fewer, choose another store, or count the shelf.",
+            field="quantity",
+            on_hand=on_hand,
+            asked=asked,
+        )
+
+
+class ChangedCount(RecordError):
+    """Stock moved between the moment somebody began to count and the moment they said the number."""
+
+    def __init__(self, *, part: str, expected: int, on_hand: int) -> None:
+        super().__init__(
+            f"When you began to count, {thousands(expected)} of {part} were on record; now {thousands(on_hand)} are. "
+            "Somebody moved some meanwhile. Look at the shelf again and send the number once more.",
+            field="counted",
+            expected=expected,
+            on_hand=on_hand,
+        )

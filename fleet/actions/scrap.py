@@ -12,12 +12,13 @@ from fleet.actions.catalogue import Saving
 from fleet.actions.checks_places import Places
 from fleet.actions.errors import BadValue, day_words
 from fleet.actions.writes import save_again
-from fleet.models import Fitting, Module, Person, Placement, RemovalReason, Stop, Visit
+from fleet.models import BenchJob, Fitting, Module, Outcome, Person, Placement, RemovalReason, Stage, Stop, Visit
 
 DAYS: tuple[tuple[Any, tuple[str, ...]], ...] = (
     (Placement, ("from_on", "to_on")),
     (Fitting, ("fitted_on", "removed_on")),
     (Visit, ("happened_on",)),
+    (BenchJob, ("received_on", "finished_on")),
 )
 
 
@@ -56,13 +57,16 @@ def days_on_record(module: Module) -> tuple[dt.date | None, dt.date | None]:
 
 
 def scrap(module: Module, by: Person | None) -> None:
-    """It leaves its site, its parts count as withdrawn that day, and it stands still no more."""
+    """It leaves its site, its job and its parts end that day, and it stands still no more."""
     day = module.scrapped_on
     assert day is not None
     place = Places(module).on(day)
     for stay in Placement.objects.current().filter(module=module):
         stay.to_on = day
         save_again(stay)
+    for job in BenchJob.objects.open().filter(module=module):
+        job.stage, job.finished_on, job.outcome, job.waits_for = Stage.FINISHED, day, Outcome.SCRAPPED, None
+        save_again(job)
     for fitting in Fitting.objects.running().filter(module=module):
         fitting.removed_on, fitting.reason = day, RemovalReason.MODULE_WITHDRAWN
         fitting.removed_known_on = max(day, place.today)

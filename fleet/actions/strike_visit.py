@@ -10,12 +10,13 @@ from fleet.actions.checks_rights import REMOVAL_FIELDS, check_may_correct
 from fleet.actions.checks_stays import Stays
 from fleet.actions.correct_fitting import put_back
 from fleet.actions.errors import BadValue, day_words
+from fleet.actions.ledger import effects, locked_balances, take_back
 from fleet.actions.measured import MeasuredEnds
 from fleet.actions.strike import strike
 from fleet.actions.visit_stops import reopen_stops
 from fleet.actions.writes import save_again
 from fleet.formats import counted
-from fleet.models import Finding, Fitting, Person, Reading, Stop, Visit
+from fleet.models import Finding, Fitting, Person, Reading, StockMove, Stop, Visit
 
 
 def strike_visit(visit: Visit, by: Person | None, reason: str, *, with_all: bool) -> None:
@@ -38,6 +39,7 @@ class Hanging:
         self.visit = visit
         self.findings = list(Finding.objects.standing().filter(visit=visit))
         self.readings = list(Reading.objects.standing().filter(visit=visit))
+        self.moves = list(StockMove.objects.standing().filter(visit=visit).order_by("store", "part", "condition"))
         self.stops = list(Stop.objects.standing().filter(visit=visit))
         fittings = Fitting.objects.standing().select_related("position", "part", "removed_visit")
         self.fitted = list(fittings.filter(fitted_visit=visit))
@@ -51,12 +53,13 @@ class Hanging:
             (self.findings, "finding", "findings"),
             (self.readings, "reading", "readings"),
             (self.stops, "stop", "stops"),
+            (self.moves, "part issued", "parts issued"),
         ]
         return ", ".join(counted(len(rows), one, many) for rows, one, many in numbers if rows)
 
     def check(self, by: Person | None) -> None:
         """Everything must be the person's to correct, and nothing later may build on it."""
-        for record in [*self.fitted, *self.readings, *self.stops]:
+        for record in [*self.fitted, *self.readings, *self.stops, *self.moves]:
             check_may_correct(by, record)
         for fitting in self.removed:
             check_may_correct(by, fitting, REMOVAL_FIELDS)
@@ -79,6 +82,9 @@ class Hanging:
         rows: list[Any] = [*self.findings, *self.stops, *self.fitted]
         for record in rows:
             strike(record, by, reason)
+        locked_balances(key for move in self.moves for key in effects(move))
+        for move in self.moves:
+            take_back(move, by, reason)
         stays = Stays(module, [fitting.position_id for fitting in self.removed])
         for fitting in self.removed:
             fitting.module = module

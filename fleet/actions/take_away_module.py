@@ -5,6 +5,7 @@ from __future__ import annotations
 import datetime as dt
 
 from fleet.actions.base import change
+from fleet.actions.checks_jobs import check_no_open_job
 from fleet.actions.checks_places import Places
 from fleet.actions.checks_stays_at_sites import check_placement
 from fleet.actions.checks_values import need_day
@@ -22,6 +23,7 @@ def take_away_module(*, by: Person | None, module: Module, to_on: dt.date) -> Pl
         stay = next((stay for stay in places.stays if stay.to_on is None), None)
         if stay is None:
             raise AlreadyDone(f"Module {module.code} stands at no site now. Place it first.", field="to_on")
+        check_no_open_job(module, f"It cannot leave {stay.site.code} before")
         stay.to_on = need_day(to_on, field="to_on", today=places.now().today)
         check_placement(stay, places.stays)
         save_again(stay)

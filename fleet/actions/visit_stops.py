@@ -1,21 +1,25 @@
-"""How a visit leaves its module: running ends a stop, stopped begins one."""
+"""How a visit leaves its module: running ends a stop, stopped or sent to the bench begins one."""
 
 from __future__ import annotations
 
 import datetime as dt
 
 from fleet.actions.checks_places import Place
-from fleet.actions.checks_stops import check_stop, next_change, standing_stops
+from fleet.actions.checks_stops import check_stop, end_of_standing, standing_stops
 from fleet.actions.strike import strike
 from fleet.actions.writes import add, save_again
-from fleet.models import Left, Person, Stop, Visit
+from fleet.models import Left, Person, SiteKind, Stop, Visit
 
 
 def leave_module(visit: Visit, stopped_at: dt.datetime | None, place: Place, by: Person | None) -> None:
     if visit.left == Left.RUNNING:
         end_open_stop(visit, stopped_at, place, by)
-    elif visit.left == Left.STOPPED:
+    elif visit.left == Left.STOPPED or (visit.left == Left.TO_BENCH and not at_depot(place)):
         open_stop(visit, stopped_at, place, by)
+
+
+def at_depot(place: Place) -> bool:
+    return place.site is not None and place.site.kind == SiteKind.DEPOT
 
 
 def end_open_stop(visit: Visit, stopped_at: dt.datetime | None, place: Place, by: Person | None) -> None:
@@ -51,7 +55,7 @@ def open_stop(visit: Visit, stopped_at: dt.datetime | None, place: Place, by: Pe
     if any(stop.stopped_at <= visit.happened_at and covers_end(stop, visit.happened_at) for stop in stops):
         return
     stop = new_stop(visit, since, place, by)
-    stop.running_at = next_change(visit.module, visit.happened_at, stops)
+    stop.running_at = end_of_standing(visit.module, visit.happened_at, stops)
     check_stop(stop, stops, place.zone)
     add(stop)
 
@@ -82,13 +86,13 @@ def reopen_stops(visit: Visit) -> None:
     for stop in ended_by(visit, visit.happened_at):
         others = [other for other in standing_stops(visit.module) if other.pk != stop.pk]
         stop.module = visit.module
-        stop.running_at = next_change(visit.module, visit.happened_at, others)
+        stop.running_at = end_of_standing(visit.module, visit.happened_at, others)
         save_again(stop)
 
 
 def leave_otherwise(visit: Visit, before: str, place: Place, by: Person | None, reason: str) -> None:
     """The visit was said to have left its module otherwise than it did."""
-    if before == Left.STOPPED:
+    if before in {Left.STOPPED, Left.TO_BENCH}:
         for stop in Stop.objects.standing().filter(visit=visit):
             strike(stop, by, reason)
     if before == Left.RUNNING:

@@ -1,0 +1,58 @@
+"""A bench job ends: the module is ready for the pool, scrapped, or withdrawn from the bench."""
+
+from __future__ import annotations
+
+import datetime as dt
+
+from django.utils import timezone
+
+from fleet.actions.checks_jobs import check_job_days
+from fleet.actions.checks_values import choose, clean_text, need_day
+from fleet.actions.move_job import job_change
+from fleet.actions.rebuild_clocks import rebuild_clocks
+from fleet.actions.scrap import scrap
+from fleet.actions.writes import save_again
+from fleet.models import BenchJob, Outcome, Person, Placement, Stage
+
+
+def finish_job(
+    *,
+    by: Person | None,
+    job: BenchJob,
+    outcome: str,
+    finished_on: dt.date | None = None,
+    note: str = "",
+    version: int | None = None,
+) -> BenchJob:
+    """Ready: it waits in the pool. Scrapped: so is the module. Withdrawn: unmended, it leaves the depot."""
+    choose(outcome, Outcome, field="outcome", blank=False)
+    with job_change(by=by, job=job, version=version, raises_version=True) as job:
+        today = job.depot.day_of(timezone.now())
+        day = today if finished_on is None else need_day(finished_on, field="finished_on", today=today)
+        job.stage, job.finished_on, job.outcome, job.waits_for = Stage.FINISHED, day, outcome, None
+        if outcome == Outcome.READY and job.started_on is None:
+            job.started_on = day
+        said = clean_text(note, field="note", longest=4000, words="The note")
+        job.note = "\n".join(text for text in (job.note, said) if text)
+        check_job_days(job)
+        save_again(job)
+        if outcome == Outcome.SCRAPPED:
+            scrap_module(job, by)
+        elif outcome == Outcome.WITHDRAWN:
+            leave_depot(job)
+        rebuild_clocks([job.module_id])
+    return job
+
+
+def scrap_module(job: BenchJob, by: Person | None) -> None:
+    job.module.scrapped_on = job.finished_on
+    save_again(job.module, {"scrapped_on"})
+    scrap(job.module, by)
+
+
+def leave_depot(job: BenchJob) -> None:
+    """It stands nowhere until a planner places it: the pool holds only what is ready."""
+    assert job.finished_on is not None
+    for stay in Placement.objects.current().filter(module=job.module, site=job.depot):
+        stay.to_on = max(stay.from_on, job.finished_on)
+        save_again(stay)

@@ -1,0 +1,91 @@
+"""Parts are ordered from a supplier."""
+
+from __future__ import annotations
+
+import datetime as dt
+import uuid
+from collections.abc import Sequence
+from dataclasses import dataclass
+from decimal import Decimal
+
+from django.utils import timezone
+
+from fleet.actions.base import change, once
+from fleet.actions.checks_values import need_day
+from fleet.actions.errors import BadValue, RecordError, day_words
+from fleet.actions.writes import add
+from fleet.models import Book, Part, Person, SupplyLine, SupplyOrder
+from fleet.models.zones import zone
+from fleet.rights import STOCK
+
+
+@dataclass(frozen=True)
+class OrderedPart:
+    """A line of an order; without a day the part's own lead time tells when it is due, without a cost its own cost."""
+
+    part: Part
+    quantity: int
+    due_on: dt.date | None = None
+    unit_cost: Decimal | None = None
+
+
+def place_supply_order(
+    *,
+    by: Person | None,
+    lines: Sequence[OrderedPart],
+    supplier: str = "",
+    ordered_on: dt.date | None = None,
+    entry_key: uuid.UUID | None = None,
+    code: str | None = None,
+) -> SupplyOrder:
+    """All lines in one order; its code is the supplier's or the book's own."""
+    said = (lines, supplier, ordered_on, code)
+    with (
+        change(by=by, right=STOCK, raises_version=False),
+        once(entry_key, by=by, verb="place_supply_order", said=said) as answer,
+    ):
+        if "order" in answer:
+            return SupplyOrder.objects.get(pk=answer["order"])
+        today = timezone.now().astimezone(zone(Book.load().zone)).date()
+        day = today if ordered_on is None else need_day(ordered_on, field="ordered_on", today=today)
+        if not lines:
+            raise BadValue("The order holds no part yet. Enter how many of at least one.")
+        order = SupplyOrder(supplier=supplier, ordered_on=day, entered_by=by)
+        add(order, code=code or None, prefix="SO")
+        seen: set[int] = set()
+        for row, line in enumerate(lines):
+            try:
+                if line.part.pk in seen:
+                    raise BadValue(f"{line.part.code} stands twice on this order. Enter one line.", field="part")
+                write_line(order, line, by)
+            except RecordError as error:
+                error.data["row"] = row
+                raise
+            seen.add(line.part.pk)
+        answer["order"] = order.pk
+    return order
+
+
+def write_line(order: SupplyOrder, line: OrderedPart, by: Person | None) -> SupplyLine:
+    due = line.due_on
+    if due is None and line.part.lead_time_days is not None:
+        due = order.ordered_on + dt.timedelta(days=line.part.lead_time_days)
+    record = SupplyLine(
+        order=order,
+        part=line.part,
+        quantity=line.quantity,
+        due_on=due,
+        unit_cost=line.part.unit_cost if line.unit_cost is None else line.unit_cost,
+        entered_by=by,
+    )
+    check_due(record, order)
+    return add(record)
+
+
+def check_due(line: SupplyLine, order: SupplyOrder) -> None:
+    if line.due_on is not None and line.due_on < order.ordered_on:
+        raise BadValue(
+            f"Due on {day_words(line.due_on)}, before it was ordered on {day_words(order.ordered_on)}. "
+            "Enter a day from then on.",
+            field="due_on",
+        )
