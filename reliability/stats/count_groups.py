@@ -44,11 +44,13 @@ class Block:
 class BlockTails:
     """Masses and kernels of one block for some draws; `targets` gives the tails of one kind of end."""
 
-    def __init__(self, block: Block, hazards: Hazards, following: Hazards | None, duty: FloatArray) -> None:
+    def __init__(
+        self, block: Block, hazards: Hazards, fitted: Hazards, following: Hazards | None, duty: FloatArray
+    ) -> None:
         self._block, self._rows, self._grid = block, block.rows, block.grid
         on_lattice = isinstance(block.grid, VisitGrid)
         self._transform = Transform(block.grid.places, 0.0 if on_lattice else 0.5)
-        self._new, self._new_by = block.grid.new(hazards, block.rows.classes, duty)
+        self._new, self._new_by = block.grid.new(fitted, block.rows.classes, duty)
         self._next = None if following is None else block.grid.new(following, block.rows.classes, duty)
         self._running = np.flatnonzero(np.isnan(block.rows.start) | on_lattice)
         self._fresh = np.flatnonzero(~np.isnan(block.rows.start) & (not on_lattice))

@@ -61,7 +61,9 @@ class VisitGrid:
         visit = upcoming + np.arange(-1, self.visits) * every
         start = rows.start[index][:, None]
         fresh = ~np.isnan(start)
+        joined = classes.join_at[which][:, None]
         since = np.where(fresh, np.maximum(visit - start, 0.0), visit)
+        since = np.where(joined > 0, np.maximum(since - joined, 0.0), since)
         factor = duty[:, which][:, :, None]
         age = np.maximum(rows.age[index][:, None] + since[None] * factor, 0.0)
         cumulative = hazards.cumulative(age, which)

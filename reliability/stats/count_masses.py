@@ -18,39 +18,42 @@ IntArray = NDArray[np.int64]
 class Hazards:
     """Cumulative hazards of the lives of some draws and classes: rate * t^shape, with an early share.
 
-    shape (draws,), rate (draws, classes); a share `early` (draws,) fails evenly before the age `early_until`, the
-    others live Weibull given survival to it.
+    Arrays (draws, classes), early_until (classes,): a share `early` fails evenly before that age, the others live
+    Weibull given survival to it.
     """
 
     shape: FloatArray
     rate: FloatArray
     early: FloatArray
-    early_until: float
+    early_until: FloatArray
     scale: FloatArray | None = None  # with deviation: medians of lognormal draws, whose deviation is above 0
     deviation: FloatArray | None = None
 
     def cumulative(self, ages: FloatArray, classes: IntArray | slice = slice(None)) -> FloatArray:
         """-log S at ages (draws or 1, x, n), x matching the rates of `classes`: (draws, x, n)."""
         rate = self.rate[:, classes][:, :, None]
-        if not self.early_until:
-            return rate * self._unit(ages)
-        until = self.early_until
-        first = -np.log1p(-self.early[:, None, None] * np.minimum(ages, until) / until)
-        return first + rate * (self._unit(np.maximum(ages, until)) - self._unit(np.full((1, 1, 1), until)))
+        if not self.early_until.any():
+            return rate * self._unit(ages, classes)
+        until = self.early_until[classes][None, :, None]
+        within = np.minimum(ages, until) / np.where(until > 0, until, 1.0)
+        first = -np.log1p(-self.early[:, classes][:, :, None] * within)
+        return first + rate * (self._unit(np.maximum(ages, until), classes) - self._unit(until, classes))
 
-    def _unit(self, ages: FloatArray) -> FloatArray:
+    def _unit(self, ages: FloatArray, classes: IntArray | slice) -> FloatArray:
         """Cumulative hazard at rate 1, (draws, x, n)."""
         with np.errstate(divide="ignore", over="ignore"):
-            return self._unit_at(np.log(ages))
+            return self._unit_at(np.log(ages), classes)
 
-    def _unit_at(self, logs: FloatArray) -> FloatArray:
+    def _unit_at(self, logs: FloatArray, classes: IntArray | slice) -> FloatArray:
+        shape = self.shape[:, classes][:, :, None]
         if self.deviation is None or not self.deviation.any():
-            return np.exp(self.shape[:, None, None] * logs)
-        result = np.empty(np.broadcast_shapes(logs.shape, (self.shape.size, 1, 1)))
+            return np.exp(shape * logs)
+        deviation, scale = self.deviation[:, classes], self.scale[:, classes]
+        result = np.empty(np.broadcast_shapes(logs.shape, shape.shape))
         logs = np.broadcast_to(logs, result.shape)
-        lognormal = self.deviation > 0
-        result[~lognormal] = np.exp(self.shape[~lognormal][:, None, None] * logs[~lognormal])
-        place, width = np.log(self.scale[lognormal])[:, None, None], self.deviation[lognormal][:, None, None]
+        lognormal = deviation > 0
+        result[~lognormal] = np.exp(self.shape[:, classes][~lognormal][:, None] * logs[~lognormal])
+        place, width = np.log(scale[lognormal])[:, None], deviation[lognormal][:, None]
         result[lognormal] = -log_ndtr((place - logs[lognormal]) / width)
         return result
 
@@ -125,7 +128,8 @@ class MidpointGrid:
         """Ends of running parts at `at`, (draws, rows, cells), then weight and place of planned replacement if any."""
         classes, which = rows.classes, rows.class_index[index]
         fraction = np.arange(self.cells + 1) / self.cells
-        time = fraction * classes.horizon[which][:, None]
+        joined = classes.join_at[which][:, None]
+        time = np.maximum(fraction * classes.horizon[which][:, None] - joined, 0.0)
         age = rows.age[index][:, None]
         factor = duty[:, which][:, :, None]
         limit = (classes.replace_at[which][:, None] - age) / factor
@@ -137,7 +141,7 @@ class MidpointGrid:
         if not np.isfinite(limit).any():
             return ends, None, None
         horizon = classes.horizon[which]
-        place = limit[..., 0] / np.where(horizon > 0, horizon, 1e-9) * (2 * self.cells)
+        place = (limit + joined)[..., 0] / np.where(horizon > 0, horizon, 1e-9) * (2 * self.cells)
         return ends, alive[..., -1], place
 
 
@@ -182,7 +186,7 @@ def _at_midpoints(half: FloatArray | None, shape: FloatArray) -> FloatArray | No
     masses = np.zeros((*half.shape[:2], half.shape[2] + 1))
     masses[..., 1::2] = half[..., ::2] + half[..., 1::2]
     # the mean age at failure within a short first cell is its length times shape / (shape + 1)
-    share = np.maximum(1.0 - 2.0 * shape / (shape + 1.0), 0.0)[:, None]
+    share = np.maximum(1.0 - 2.0 * shape / (shape + 1.0), 0.0)
     masses[..., 0] = share * masses[..., 1]
     masses[..., 1] -= masses[..., 0]
     return masses

@@ -18,6 +18,7 @@ MOST_EXACT_ROWS = 600  # beyond this many distinct rows the ages of large groups
 SMALL_GROUP = 60  # positions; smaller groups keep their ages, their generating functions may pass through zero
 MOST_HORIZONS = 24  # beyond this many, horizons of a site are moved to shared cells
 NODE_STEP = 0.12
+NO_DESIGN = np.zeros(1, dtype=np.int64)
 COARSE_STEP = 0.2  # where failures are rare: four-point interpolation is then within half a per cent of their number
 
 
@@ -33,6 +34,10 @@ class Classes:
     replace_at: FloatArray
     other_removals: FloatArray
     switch_at: FloatArray
+    join_at: FloatArray
+    running: IntArray  # the design that runs, is fitted from now on, and after the switch
+    fitted: IntArray
+    later: IntArray
 
     def __len__(self) -> int:
         return int(self.site.size)
@@ -103,8 +108,12 @@ def group_positions(
     groups: Sequence[Any] | None,
     weights: ArrayLike | None,
     columns: dict[str, ArrayLike],
+    designs: tuple[IntArray, IntArray, IntArray] = (NO_DESIGN, NO_DESIGN, NO_DESIGN),
 ) -> Rows:
-    """Rows of the positions; `columns` are the further per-position figures of Classes and down_until."""
+    """Rows of the positions; `columns` are the further per-position figures of Classes and down_until.
+
+    designs: codes of the running, the fitted and the later design, (n,) or one for all.
+    """
     age = _column("ages", ages, None, least=0.0)
     count = age.size
     weight = np.ones(count) if weights is None else _column("weights", weights, count, least=0.0)
@@ -117,7 +126,11 @@ def group_positions(
     group, group_labels = (site, site_labels) if same else _codes("groups", groups, count)
     age, start, extra = _fresh_parts(age, down, further)
     horizon = _shared_horizons(horizon, site, weight)
+    running, fitted, later = (_design(code, count) for code in designs)
+    # a module that starts with a new part starts with what is fitted there
+    running = np.where(np.isnan(start), running, fitted)
     class_columns: dict[str, Any] = {"site": site, "horizon": horizon, **further}
+    class_columns |= {"running": running, "fitted": fitted, "later": later}
     class_first, class_index = _distinct(list(class_columns.values()), count)
     classes = Classes(**{name: column[class_first] for name, column in class_columns.items()})
     cells = _merged(_Cells(class_index, group, start, extra, age, weight))
@@ -126,6 +139,13 @@ def group_positions(
         return rows
     moved = _on_nodes(cells, len(group_labels), float(np.median(classes.horizon)), NODE_STEP, smallest=SMALL_GROUP)
     return _rows(_merged(moved), classes, site_labels, group_labels)
+
+
+def _design(codes: IntArray, count: int) -> IntArray:
+    try:
+        return np.broadcast_to(codes, (count,))
+    except ValueError:
+        raise InvalidArgument(f"There are {codes.size} labels of designs for {count} positions.") from None
 
 
 def _rows(cells: _Cells, classes: Classes, site_labels: list[Any], group_labels: list[Any]) -> Rows:
@@ -202,7 +222,7 @@ def _fresh_parts(
     overdue = (down == 0) & (age >= further["replace_at"]) & (further["visit_every"] == 0)
     if not overdue.any() and not down.any():
         return age, np.broadcast_to(np.nan, age.shape), np.broadcast_to(np.int64(0), age.shape)
-    start = np.where(down > 0, down, np.where(overdue, 0.0, np.nan))
+    start = np.where(down > 0, down, np.where(overdue, further["join_at"], np.nan))
     fresh = ~np.isnan(start)
     # 2 marks a planned replacement
     extra = np.where(overdue, 2, np.where(fresh, 1, 0)).astype(np.int64)

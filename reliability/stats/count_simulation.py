@@ -1,6 +1,7 @@
 """Plain, seeded simulation of the same counts as `counts.forecast_counts`: slow, simple, and written separately.
 
-It serves to check the exact engine, and what-ifs that feed back on themselves, which have no generating function.
+It serves to check the exact engine, what-ifs that feed back on themselves (retrofits at a given pace), which have no
+generating function, and differences: the k-th life of a position has the same luck whatever is assumed.
 """
 
 from __future__ import annotations
@@ -11,66 +12,41 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
-from scipy.special import log_ndtr, ndtri_exp
 
+from reliability.stats.count_designs import roles_of
+from reliability.stats.count_luck import DesignLives, Luck
 from reliability.stats.errors import InvalidArgument
-from reliability.stats.posterior import PosteriorDraws
 
 FloatArray = NDArray[np.float64]
+IntArray = NDArray[np.int64]
 BoolArray = NDArray[np.bool_]
+
+
+@dataclass(frozen=True)
+class Retrofit:
+    """Running parts of the old design changed for the later one: so many each step from a share of the horizon on.
+
+    start: share of the horizon; each: parts a step; step: share of the horizon. Who is next is a matter of chance.
+    """
+
+    start: float
+    each: float
+    step: float
 
 
 @dataclass(frozen=True, eq=False)
 class SimulatedCounts:
-    """One fleet a draw: counts (draws,) in total, by group label (draws,), by window (draws, windows)."""
+    """One fleet a draw: counts (draws,) in total, by group label (draws,), by window (draws, windows).
+
+    by_position: failed, used and planned of each position, (draws, positions), within the stretch.
+    """
 
     failures: FloatArray
     parts_used: FloatArray
     planned: FloatArray
     by_group: dict[Any, FloatArray] = field(default_factory=dict)
     by_window: FloatArray = field(default_factory=lambda: np.zeros((0, 0)))
-
-
-@dataclass(frozen=True, eq=False)
-class _Lives:
-    """Inverse of the cumulative hazard for each draw and position, arrays (draws, positions) or (draws, 1)."""
-
-    shape: FloatArray
-    rate: FloatArray
-    early: FloatArray
-    early_until: float
-    scale: FloatArray
-    deviation: FloatArray
-
-    def end(self, age: FloatArray, exponential: FloatArray) -> FloatArray:
-        """Age at failure of parts aged `age`, given standard exponential variates."""
-        until = self.early_until
-        if not until:
-            return self._age_at(self._unit(age) + exponential / self.rate)
-        first = -np.log1p(-self.early * np.minimum(age, until) / until)
-        late = self._unit(np.maximum(age, until)) - self._unit(np.asarray(until))
-        target = first + self.rate * late + exponential
-        whole = -np.log1p(-self.early)
-        beyond = self._age_at(np.maximum(target - whole, 0.0) / self.rate + self._unit(np.asarray(until)))
-        with np.errstate(divide="ignore", invalid="ignore"):
-            within = until * -np.expm1(-target) / self.early
-        return np.where(target < whole, within, beyond)
-
-    def _unit(self, age: FloatArray) -> FloatArray:
-        """Cumulative hazard at rate 1."""
-        weibull = age**self.shape
-        if not self.deviation.any():
-            return weibull
-        with np.errstate(divide="ignore"):
-            place = np.log(age / self.scale) / np.where(self.deviation > 0, self.deviation, 1.0)
-        return np.where(self.deviation > 0, -log_ndtr(-place), weibull)
-
-    def _age_at(self, hazard: FloatArray) -> FloatArray:
-        """Age at which the cumulative hazard at rate 1 is this much."""
-        weibull = hazard ** (1.0 / self.shape)
-        if not self.deviation.any():
-            return weibull
-        return np.where(self.deviation > 0, self.scale * np.exp(-self.deviation * ndtri_exp(-hazard)), weibull)
+    by_position: tuple[FloatArray, FloatArray, FloatArray] = field(default=(np.zeros((0, 0)),) * 3, repr=False)
 
 
 def simulate_counts(
@@ -90,33 +66,52 @@ def simulate_counts(
     down_until: ArrayLike = 0.0,
     leave_at: ArrayLike = np.inf,
     next_posterior: Any = None,
-    switch_at: ArrayLike = np.inf,
+    switch_at: ArrayLike | None = None,
     refit_delay: float = 0.0,
+    join_at: ArrayLike = 0.0,
+    designs: Sequence[Any] | None = None,
+    next_designs: Sequence[Any] | None = None,
+    later_designs: Sequence[Any] | None = None,
+    stretch: tuple[float, float] = (0.0, 1.0),
+    retrofit: Retrofit | None = None,
 ) -> SimulatedCounts:
     """One simulated horizon for each posterior draw; arguments as in `forecast_counts` (no weights). Units of the
     lives.
+
+    stretch: shares of the horizon between which counts count. retrofit: see there; it needs a later design.
     """
     age = np.asarray(ages, dtype=np.float64)
     count = age.size
-    if posterior.has_spread and sites is None:
+    later = next_posterior if later_designs is None else later_designs
+    roles = roles_of(posterior, designs, next_designs, later, switch_at is not None)
+    if roles.has_spread and sites is None:
         raise InvalidArgument("This posterior has a spread between sites: give the site of every position.")
+    if retrofit is not None and later is None:
+        raise InvalidArgument("Retrofits need the design that goes in.")
     labels = list(sites) if sites is not None else [None] * count
+
+    def column(values: ArrayLike) -> FloatArray:
+        return np.broadcast_to(np.asarray(values, dtype=np.float64), (count,))
+
+    # draws of the lives, of the duty and of chance: each stays the same whatever else is asked
+    for_lives, for_duty, for_luck, for_order = rng.spawn(4)
     fleet = _Fleet(
-        lives=_lives(posterior, posterior.draws(draws, rng), labels),
-        next_lives=None if next_posterior is None else _lives(next_posterior, next_posterior.draws(draws, rng), labels),
-        duty=_duty(duty_spread, draws, labels, rng),
-        horizon=np.broadcast_to(np.asarray(horizons, dtype=np.float64), (count,)),
-        leave_at=np.broadcast_to(np.asarray(leave_at, dtype=np.float64), (count,)),
-        replace_at=np.broadcast_to(np.asarray(replace_at, dtype=np.float64), (count,)),
-        other_removals=np.broadcast_to(np.asarray(other_removals, dtype=np.float64), (count,)),
-        switch_at=np.broadcast_to(np.asarray(switch_at, dtype=np.float64), (count,)),
-        visits=None if visits is None else tuple(np.broadcast_to(np.asarray(v, dtype=float), (count,)) for v in visits),
+        lives=DesignLives.drawn(roles, draws, for_lives, labels),
+        duty=_duty(duty_spread, draws, labels, for_duty),
+        horizon=column(horizons),
+        leave_at=column(leave_at),
+        join_at=column(join_at),
+        replace_at=column(replace_at),
+        other_removals=column(other_removals),
+        switch_at=column(np.inf if switch_at is None else switch_at),
+        visits=None if visits is None else (column(visits[0]), column(visits[1])),
         refit_delay=refit_delay,
-        rng=rng,
+        luck=Luck(for_luck, (draws, count)),
+        order=for_order.permutation(count),
     )
     edges = np.array([0.0, 1.0]) if windows is None else np.asarray(windows, dtype=np.float64) / windows[-1]
-    tally = _Tally(draws, count, fleet.horizon, edges)
-    fleet.run(age, np.broadcast_to(np.asarray(down_until, dtype=np.float64), (count,)), tally)
+    tally = _Tally(draws, fleet.horizon, edges, stretch)
+    fleet.run(age, column(down_until), tally, retrofit)
     by_group = (
         {} if groups is None else {g: tally.failed[:, _where(groups, g)].sum(axis=1) for g in dict.fromkeys(groups)}
     )
@@ -126,104 +121,138 @@ def simulate_counts(
         planned=tally.planned.sum(axis=1),
         by_group=by_group,
         by_window=tally.windows,
+        by_position=(tally.failed, tally.used, tally.planned),
     )
 
 
 @dataclass(frozen=True, eq=False)
 class _Fleet:
-    lives: _Lives
-    next_lives: _Lives | None
+    lives: DesignLives
     duty: FloatArray
     horizon: FloatArray
     leave_at: FloatArray
+    join_at: FloatArray
     replace_at: FloatArray
     other_removals: FloatArray
     switch_at: FloatArray
     visits: tuple[FloatArray, FloatArray] | None
     refit_delay: float
-    rng: np.random.Generator
+    luck: Luck
+    order: IntArray
 
-    def run(self, age: FloatArray, down: FloatArray, tally: _Tally) -> None:
+    def run(self, age: FloatArray, down: FloatArray, tally: _Tally, retrofit: Retrofit | None) -> None:
         """Follow every position of every draw from end to end of its parts until the horizon is over."""
         size = self.duty.shape
         last = np.minimum(self.horizon, self.leave_at)
-        now = np.zeros(size) + down
-        current = np.where(down > 0, 0.0, age) + np.zeros(size)
-        tally.count_used(np.broadcast_to((down > 0) & (down <= last), size))
+        fresh = np.broadcast_to(down > 0, size)
+        now = np.zeros(size) + np.where(down > 0, down, self.join_at)
+        current = np.where(fresh, 0.0, age) + np.zeros(size)
+        tally.count_used(now, fresh & (down <= last))
         if self.visits is not None:
             every, upcoming = self.visits
             # a running part was good at the last visit, or when it was fitted since
             known_good = np.maximum(upcoming - every, -current / self.duty)
-            now = np.where(down > 0, now, known_good)
-            current = np.where(down > 0, 0.0, current + known_good * self.duty)
-        fitted = np.where(down > 0, now, -np.inf)
-        while True:
-            end, failed, planned = self._next_end(now, current, fitted)
-            here = end <= last
-            if not here.any():
-                return
-            tally.count(end, here, failed, planned)
-            now = np.where(here, end + self.refit_delay, np.inf)
-            fitted, current = now, np.zeros(size)
+            earlier = ~fresh & (self.join_at == 0)
+            now = np.where(earlier, known_good, now)
+            current = np.where(earlier, current + known_good * self.duty, current)
+        design = np.where(fresh, 1, 0) + np.zeros(size, dtype=np.int64)
+        state = _State(now, current, design, np.zeros(size, dtype=np.int64))
+        self._draw_ends(state, np.ones(size, dtype=bool))
+        for until in _steps(retrofit):
+            self._until(state, np.minimum(last, until * self.horizon), tally)
+            if retrofit is not None and until > retrofit.start and until < 1.0:
+                self._retrofit(state, until, retrofit, tally)
 
-    def _next_end(
-        self, now: FloatArray, age: FloatArray, fitted: FloatArray
-    ) -> tuple[FloatArray, BoolArray, BoolArray]:
-        """Time at which each running part goes out, and whether by failure or by plan."""
-        exponential = self.rng.exponential(size=now.shape)
-        final = self.lives.end(age, exponential)
-        if self.next_lives is not None:
-            final = np.where(fitted > self.switch_at, self.next_lives.end(age, exponential), final)
-        failing = now + (final - age) / self.duty
+    def _until(self, state: _State, limit: FloatArray, tally: _Tally) -> None:
+        while (here := state.end <= limit).any():
+            tally.count(state.end, here, state.failed, state.planned)
+            now = state.end + self.refit_delay
+            self._renew(state, here, np.where(here, now, 0.0), np.where(now > self.switch_at, 2, 1))
+
+    def _renew(self, state: _State, here: BoolArray, now: FloatArray, design: IntArray) -> None:
+        state.now = np.where(here, now, state.now)
+        state.age = np.where(here, 0.0, state.age)
+        state.design = np.where(here, design, state.design)
+        state.life = state.life + here
+        self._draw_ends(state, here)
+
+    def _retrofit(self, state: _State, until: float, retrofit: Retrofit, tally: _Tally) -> None:
+        """The next old parts in the order of chance, as many as are due by now."""
+        at = until * self.horizon
+        old = (state.design < 2) & (at < self.leave_at) & (at > np.maximum(self.join_at, state.now))
+        behind = np.cumsum(old[:, self.order], axis=1)
+        place = np.empty_like(behind)
+        place[:, self.order] = behind
+        steps = round((until - retrofit.start) / retrofit.step)
+        due = np.floor(retrofit.each * steps + 1e-9) - np.floor(retrofit.each * (steps - 1) + 1e-9)
+        chosen = old & (place <= due)
+        tally.count(np.broadcast_to(at, old.shape), chosen, np.zeros_like(old), chosen)
+        self._renew(state, chosen, np.broadcast_to(at, old.shape), np.full(old.shape, 2))
+
+    def _draw_ends(self, state: _State, where: BoolArray) -> None:
+        """Time at which each of these parts goes out, and whether by failure or by plan."""
+        draw, position = np.nonzero(where)
+        now, age = state.now[draw, position], state.age[draw, position]
+        duty = self.duty[draw, position]
+        first, second = self.luck.of(state.life[draw, position], draw, position)
+        final = self.lives.end(state.design[draw, position], age, first, draw, position)
+        failing = now + (final - age) / duty
         with np.errstate(divide="ignore"):
-            removal = np.maximum(now, 0.0) + self.rng.exponential(size=now.shape) / self.other_removals
-        due = now + np.maximum(self.replace_at - age, 0.0) / self.duty
-        if self.visits is None:
-            end = np.minimum(np.minimum(failing, removal), due)
-            return end, failing <= end, (due <= end) & (failing > end)
-        every, upcoming = self.visits
-        soonest = np.minimum(np.minimum(failing, removal), due)
-        with np.errstate(invalid="ignore"):
-            number = np.maximum(np.ceil((soonest - upcoming) / every - 1e-12), np.floor((now - upcoming) / every) + 1.0)
-        end = np.where(np.isfinite(now), upcoming + np.maximum(number, 0.0) * every, np.inf)
-        failed = failing <= end
-        return end, failed, ~failed & (removal > end)
+            removal = np.maximum(now, 0.0) + second / self.other_removals[position]
+        due = now + np.maximum(self.replace_at[position] - age, 0.0) / duty
+        end = np.minimum(np.minimum(failing, removal), due)
+        failed, planned = failing <= end, (due <= end) & (failing > end)
+        if self.visits is not None:
+            every, upcoming = (column[position] for column in self.visits)
+            safe = np.where(every > 0, every, 1.0)
+            soonest = np.ceil((end - upcoming) / safe - 1e-12)
+            number = np.maximum(soonest, np.floor((now - upcoming) / safe) + 1.0)
+            seen = np.where(every > 0, upcoming + np.maximum(number, 0.0) * every, end)
+            failed = np.where(every > 0, failing <= seen, failed)
+            planned = np.where(every > 0, ~failed & (removal > seen), planned)
+            end = seen
+        state.end[draw, position] = end
+        state.failed[draw, position], state.planned[draw, position] = failed, planned
+
+
+class _State:
+    """Of every draw and position: the part's start, age then, design, number, and how it ends."""
+
+    def __init__(self, now: FloatArray, age: FloatArray, design: IntArray, life: IntArray) -> None:
+        self.now, self.age, self.design, self.life = now, age, design, life
+        self.end = np.full(now.shape, np.inf)
+        self.failed, self.planned = np.zeros(now.shape, dtype=bool), np.zeros(now.shape, dtype=bool)
+
+
+def _steps(retrofit: Retrofit | None) -> list[float]:
+    if retrofit is None:
+        return [1.0]
+    found = np.arange(retrofit.start + retrofit.step, 1.0, retrofit.step).tolist()
+    return [*found, 1.0]
 
 
 class _Tally:
-    def __init__(self, draws: int, count: int, horizon: FloatArray, edges: FloatArray) -> None:
-        self.failed, self.used, self.planned = (np.zeros((draws, count)) for _ in range(3))
+    def __init__(self, draws: int, horizon: FloatArray, edges: FloatArray, stretch: tuple[float, float]) -> None:
+        self.failed, self.used, self.planned = (np.zeros((draws, horizon.size)) for _ in range(3))
         self.windows = np.zeros((draws, edges.size - 1))
         self._horizon, self._edges = horizon, edges
+        self._begin, self._end = stretch[0] * horizon, stretch[1] * horizon
 
-    def count_used(self, used: BoolArray) -> None:
-        self.used += used
+    def _inside(self, at: FloatArray, which: BoolArray) -> BoolArray:
+        return which & ((at > self._begin) | (self._begin == 0)) & (at <= self._end)
+
+    def count_used(self, at: FloatArray, used: BoolArray) -> None:
+        self.used += self._inside(at, used)
 
     def count(self, end: FloatArray, here: BoolArray, failed: BoolArray, planned: BoolArray) -> None:
-        self.used += here
-        self.failed += here & failed
-        self.planned += here & planned
+        counted = self._inside(end, here)
+        self.used += counted
+        self.failed += counted & failed
+        self.planned += counted & planned
         draw, position = np.nonzero(here & failed)
         share = end[draw, position] / self._horizon[position]
         window = np.clip(np.searchsorted(self._edges, share, side="left") - 1, 0, self._edges.size - 2)
         np.add.at(self.windows, (draw, window), 1.0)
-
-
-def _lives(posterior: Any, drawn: PosteriorDraws, labels: list[Any]) -> _Lives:
-    level = drawn.levels[:, None]
-    if posterior.has_spread:
-        distinct = list(dict.fromkeys(labels))
-        number = {label: index for index, label in enumerate(distinct)}
-        level = level * drawn.for_sites(distinct)[:, [number[label] for label in labels]]
-    deviation = np.zeros(len(drawn)) if drawn.deviations is None else drawn.deviations
-    return _Lives(
-        drawn.shapes[:, None],
-        level,
-        drawn.early_shares[:, None],
-        drawn.early_until,
-        drawn.scales[:, None],
-        deviation[:, None],
-    )
 
 
 def _duty(spread: float | tuple[float, float], draws: int, labels: list[Any], rng: np.random.Generator) -> FloatArray:

@@ -8,22 +8,22 @@ parameters; the forecast is its average over draws of the posterior.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from itertools import pairwise
-from typing import Any, Protocol
+from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 from scipy.special import ndtri
 
+from reliability.stats.count_designs import DesignDraws, Posterior, Roles, roles_of
 from reliability.stats.count_groups import Block, BlockTails
 from reliability.stats.count_lattice import VisitGrid
-from reliability.stats.count_masses import Hazards, MidpointGrid
+from reliability.stats.count_masses import MidpointGrid
 from reliability.stats.count_positions import Rows, group_positions
 from reliability.stats.count_results import CountDistribution, CountForecast, Counts
 from reliability.stats.count_tallies import Plan, Tallies
 from reliability.stats.errors import InvalidArgument
-from reliability.stats.posterior_draws import PosteriorDraws
 from reliability.stats.prediction import calibrated_prediction
 
 FloatArray = NDArray[np.float64]
@@ -38,17 +38,8 @@ MANY_RENEWALS = 75.0
 _RARE_HAZARD = 0.25
 
 
-class Posterior(Protocol):
-    """What a forecast asks of a posterior: `WeibullPosterior` or `KnownWeibull`."""
-
-    @property
-    def has_spread(self) -> bool: ...
-
-    def draws(self, count: int, rng: np.random.Generator | None) -> PosteriorDraws: ...
-
-
 def forecast_counts(
-    posterior: Posterior,
+    posterior: Posterior | Mapping[Any, Posterior],
     ages: ArrayLike,
     horizons: ArrayLike,
     *,
@@ -73,6 +64,10 @@ def forecast_counts(
     stretch: tuple[int, int] | None = None,
     parts_by_window: bool = True,
     taken_share: float = 0.0,
+    join_at: ArrayLike = 0.0,
+    designs: Sequence[Any] | None = None,
+    next_designs: Sequence[Any] | None = None,
+    later_designs: Sequence[Any] | None = None,
 ) -> CountForecast:
     """Distribution of failures and parts used by positions within their horizons.
 
@@ -95,6 +90,9 @@ def forecast_counts(
     also_groups: second labels, answered in by_also. stretch: (first, last) edge of windows; totals, groups and windows
     speak of what lies between them, in one pass. parts_by_window: False leaves the windows' parts_used at failures.
     taken_share: share of the other removals that parts_used leaves out, because they are counted elsewhere.
+    join_at: the position is there, and its part ages, only from then on.
+    designs, next_designs, later_designs: with one posterior a design (a mapping), the label of the design that runs at
+    each position, is fitted there from now on, and after switch_at; all designs' draws, sites and duty belong together.
     Raises InvalidArgument. Source: Cox 1962; early renewals by mass at cell midpoints, see count_kernel.
     """
     rng = np.random.default_rng() if rng is None else rng
@@ -103,7 +101,9 @@ def forecast_counts(
     if windows is None and leave_at is not None:
         # without windows leaving only shortens the horizon, exactly
         horizons, leave = np.minimum(np.asarray(horizons, dtype=np.float64), leave), np.inf
-    needs_sites = _needs_sites(posterior, next_posterior, duty_spread, sites, ages)
+    later = next_posterior if later_designs is None else later_designs
+    roles = roles_of(posterior, designs, next_designs, later, switch_at is not None)
+    needs_sites = _needs_sites(roles, duty_spread, sites, ages)
     pairs = groups if also_groups is None else _pairs(groups, also_groups)
     rows = group_positions(
         ages,
@@ -119,18 +119,15 @@ def forecast_counts(
             "replace_at": np.inf if replace_at is None else replace_at,
             "other_removals": other_removals,
             "switch_at": np.inf if switch_at is None else switch_at,
+            "join_at": join_at,
         },
+        designs=(roles.running, roles.fitted, roles.fitted if roles.later is None else roles.later),
     )
     if not refit_delay >= 0:
         raise InvalidArgument(f"refit_delay is {refit_delay:g}; it must be at least 0.")
-    if (next_posterior is None) != (switch_at is None):
-        raise InvalidArgument("next_posterior and switch_at belong together: give both or neither.")
-    drawn = posterior.draws(draws, rng)
-    following = None if next_posterior is None else next_posterior.draws(draws, rng)
-    rates = _site_rates(posterior, drawn, rows)
-    next_rates = None if following is None else _site_rates(next_posterior, following, rows)
+    drawn = DesignDraws.drawn(roles.posteriors, draws, rng, rows.site_labels)
     duty = _duty_factors(duty_spread, draws, len(rows.site_labels), rng)
-    sharpness = _sharpness(drawn, rates)
+    sharpness = drawn.sharpness(_used_designs(rows))
     if group_window is not None and not 0 <= group_window < len(edges) - 1:
         raise InvalidArgument(f"group_window is {group_window}; there are {len(edges) - 1} windows, counted from 0.")
     if not 0 <= taken_share <= 1:
@@ -146,10 +143,10 @@ def forecast_counts(
     coarse = rows.coarse() if len(rows) > FEW_ROWS else rows
     coarse = coarse if len(coarse) < 0.7 * len(rows) else rows
     for chunk, share in _chunks(rows, sharpness):
-        chosen = coarse if _are_rare(rows, _hazards(drawn, rates, rows, chunk), duty[chunk]) else rows
+        chosen = coarse if _are_rare(rows, drawn, duty, chunk) else rows
         sharp = float(np.quantile(sharpness[chunk], 0.9))
         blocks = _blocks(chosen, sharp, (edges, spans), cells, (refit_delay, taken_share))
-        _add_draws(tallies.each_for(share), blocks, (drawn, rates), (following, next_rates), duty, chunk)
+        _add_draws(tallies.each_for(share), blocks, drawn, roles.later is not None, duty, chunk)
     return tallies.forecast(rows, draws)
 
 
@@ -165,8 +162,7 @@ def _window_edges(windows: Sequence[float] | None) -> FloatArray:
 
 
 def _needs_sites(
-    posterior: Posterior,
-    next_posterior: Posterior | None,
+    roles: Roles,
     duty_spread: float | tuple[float, float],
     sites: Sequence[Any] | None,
     ages: ArrayLike,
@@ -174,18 +170,10 @@ def _needs_sites(
     """Whether positions of different sites differ; sites that change nothing would only multiply the work."""
     if sites is not None and len(sites) != np.size(ages):
         raise InvalidArgument(f"sites holds {len(sites)} labels; there are {np.size(ages)} positions.")
-    spread = posterior.has_spread or (next_posterior is not None and next_posterior.has_spread)
+    spread = roles.has_spread
     if spread and sites is None:
         raise InvalidArgument("This posterior has a spread between sites: give the site of every position.")
     return spread or isinstance(duty_spread, tuple)
-
-
-def _site_rates(posterior: Posterior, drawn: PosteriorDraws, rows: Rows) -> FloatArray:
-    """Hazard level times site factor, (draws, sites)."""
-    level = drawn.levels
-    if not posterior.has_spread:
-        return np.broadcast_to(level[:, None], (level.size, len(rows.site_labels)))
-    return level[:, None] * drawn.for_sites(rows.site_labels)
 
 
 def _duty_factors(spread: float | tuple[float, float], draws: int, sites: int, rng: np.random.Generator) -> FloatArray:
@@ -202,11 +190,10 @@ def _duty_factors(spread: float | tuple[float, float], draws: int, sites: int, r
     return factors
 
 
-def _sharpness(drawn: PosteriorDraws, rates: FloatArray) -> FloatArray:
-    """Shape over scale at each draw's hardest site, (draws,): one over the spread of its lives, or their number."""
-    hardest = rates.max(axis=1, initial=0.0) / drawn.levels
-    with np.errstate(over="ignore"):
-        return np.maximum(drawn.shapes, 2.5) / drawn.scales * np.maximum(hardest, 1e-300) ** (1.0 / drawn.shapes)
+def _used_designs(rows: Rows) -> IntArray:
+    classes = rows.classes
+    used = np.unique(np.concatenate([classes.running, classes.fitted, classes.later]))
+    return used if used.size else np.zeros(1, dtype=np.int64)
 
 
 def _spans(edges: FloatArray, stretch: tuple[int, int] | None) -> FloatArray:
@@ -289,24 +276,15 @@ def _runs(level: IntArray) -> list[tuple[int, int]]:
     return list(pairwise(edges))
 
 
-def _hazards(drawn: PosteriorDraws, rates: FloatArray, rows: Rows, chunk: IntArray) -> Hazards:
-    return Hazards(
-        shape=drawn.shapes[chunk],
-        rate=rates[chunk][:, rows.classes.site],
-        early=drawn.early_shares[chunk],
-        early_until=drawn.early_until,
-        scale=drawn.scales[chunk],
-        deviation=None if drawn.deviations is None else drawn.deviations[chunk],
-    )
-
-
-def _are_rare(rows: Rows, hazards: Hazards, duty: FloatArray) -> bool:
+def _are_rare(rows: Rows, drawn: DesignDraws, duty: FloatArray, chunk: IntArray) -> bool:
     """Whether no position of these draws is likely to fail: then interpolation between ages is safe for every group."""
     if not len(rows):
         return False
+    classes = rows.classes
     ages = np.linspace(0.0, rows.age.max(), 6)
-    ahead = rows.classes.horizon[:, None] * duty[:, rows.classes.site][:, :, None]
-    before = hazards.cumulative(np.broadcast_to(ages, (1, len(rows.classes), ages.size)))
+    ahead = classes.horizon[:, None] * duty[chunk][:, classes.site][:, :, None]
+    hazards = drawn.hazards(chunk, classes.running, classes)
+    before = hazards.cumulative(np.broadcast_to(ages, (1, len(classes), ages.size)))
     with np.errstate(invalid="ignore"):
         most = (hazards.cumulative(ages + ahead) - before).max()
     # not so either where ages are impossible for the life
@@ -314,18 +292,14 @@ def _are_rare(rows: Rows, hazards: Hazards, duty: FloatArray) -> bool:
 
 
 def _add_draws(
-    tallies: Tallies,
-    blocks: list[Block],
-    now: tuple[PosteriorDraws, FloatArray],
-    later: tuple[PosteriorDraws | None, FloatArray | None],
-    duty: FloatArray,
-    chunk: IntArray,
+    tallies: Tallies, blocks: list[Block], drawn: DesignDraws, switched: bool, duty: FloatArray, chunk: IntArray
 ) -> None:
     worked = []
     for block in blocks:
-        following = None if later[0] is None else _hazards(later[0], later[1], block.rows, chunk)
-        factors = duty[chunk][:, block.rows.classes.site]
-        worked.append(BlockTails(block, _hazards(*now, block.rows, chunk), following, factors))
+        classes = block.rows.classes
+        running, fitted = (drawn.hazards(chunk, design, classes) for design in (classes.running, classes.fitted))
+        later = drawn.hazards(chunk, classes.later, classes) if switched else None
+        worked.append(BlockTails(block, running, fitted, later, duty[chunk][:, classes.site]))
     weights = [block.rows.weights for block in blocks]
     for kind in tallies.kinds:
         targets = tallies.targets(kind)
