@@ -94,8 +94,16 @@ def site_interval_multipliers(
     intervals: SiteIntervals, sums: SiteSums, shape: float, level: float, spreads: FloatArray
 ) -> FloatArray:
     """Mean of z given the records of the concerned sites, shape (C, K)."""
-    z, _, shares, _ = _integrals(intervals, sums, shape, level, spreads)
+    z, shares = site_interval_nodes(intervals, sums, shape, level, spreads)
     return (shares * z).sum(axis=-1)
+
+
+def site_interval_nodes(
+    intervals: SiteIntervals, sums: SiteSums, shape: float, level: float, spreads: FloatArray
+) -> tuple[FloatArray, FloatArray]:
+    """Nodes of z of the concerned sites and their shares of its distribution given the records, shapes (C, K, J)."""
+    z, _, shares, _ = _integrals(intervals, sums, shape, level, spreads)
+    return z, shares
 
 
 def _integrals(
