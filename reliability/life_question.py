@@ -72,8 +72,8 @@ def asked_of(
     )
 
 
-def life_question(asked: Asked, lags: dict[int, int]) -> LifeQuestion:
-    """The same in the database's own numbers."""
+def life_question(asked: Asked, lags: dict[int, int], starts: dict[int, int] | None = None) -> LifeQuestion:
+    """The same in the database's own numbers; `starts` gives sites a day before which nothing there is looked at."""
     year, year_parameters = connection.ops.date_extract_sql("year", "f.fitted_on", ())
     quarter, quarter_parameters = connection.ops.date_extract_sql("quarter", "f.fitted_on", ())
     return LifeQuestion(
@@ -91,6 +91,7 @@ def life_question(asked: Asked, lags: dict[int, int]) -> LifeQuestion:
         with_rigs=asked.with_rigs,
         worn_is_failure=asked.worn_is_failure,
         lags=lags,
+        starts=starts or {},
         quarter=f"({year}) * 10 + ({quarter})",
         quarter_parameters=(*year_parameters, *quarter_parameters),
     )
@@ -103,6 +104,11 @@ def component_of(component: Component | str) -> Component:
     if found is None:
         raise NothingNamed("component", component, Component.objects.values_list("code", flat=True))
     return found
+
+
+def titles_of_modes(component: Component | str) -> dict[str, str]:
+    """What people call the failure modes of a component, by code."""
+    return {mode.code: mode.title for mode in FailureMode.objects.filter(component=component_of(component))}
 
 
 def keys_of(

@@ -33,6 +33,7 @@ class LifeQuestion:
     with_rigs: bool = False
     worn_is_failure: bool = True
     lags: Mapping[int, int] = field(default_factory=dict)  # site -> days until its failures are known
+    starts: Mapping[int, int] = field(default_factory=dict)  # site -> day from which lives there are observed at all
     quarter: str = "NULL"  # the quarter of f.fitted_on as year * 10 + quarter, in the engine's SQL
     quarter_parameters: tuple[Any, ...] = ()
 
@@ -67,6 +68,16 @@ def single_lives(question: LifeQuestion) -> Query:
     )
 
 
+def lives_of_positions(question: LifeQuestion) -> Query:
+    """A row a fitting, as `PositionLife` in lives_of_positions.py."""
+    text, parameters = _lives(question)
+    return (
+        f"{text} SELECT module_id, position_id, label, also, left_out, state, entry, duration, last_good, site_id, "
+        "fitted_day FROM told",
+        parameters,
+    )
+
+
 def left_out_fittings(question: LifeQuestion, reason: str) -> Query:
     """The fittings left out for one reason."""
     text, parameters = _lives(question)
@@ -75,7 +86,10 @@ def left_out_fittings(question: LifeQuestion, reason: str) -> Query:
 
 def _lives(question: LifeQuestion) -> Query:
     base, parameters = _base(question)
-    steps = [base, _placed(question), _judged(), *_cuts(question), _ages(question), _told(question)]
+    begun = _begun(question) if question.starts else []
+    if begun:
+        base = base.replace("base AS", "every AS", 1)
+    steps = [base, *begun, _placed(question), _judged(), *_cuts(question), _ages(question), _told(question)]
     return "WITH " + ",\n".join([_lags(question), *steps]), parameters
 
 
@@ -114,6 +128,38 @@ def _base(question: LifeQuestion) -> Query:
             AND (c.fitted_day IS NULL OR c.fitted_day <= {question.as_of}){filters})"""
     first = question.quarter_parameters if question.by == "quarter" else ()
     return text, [*first, question.as_of_text]
+
+
+def _begun(question: LifeQuestion) -> list[str]:
+    """At sites with a start, observation begins there: a part that was already in enters at its age on that day."""
+    clock = question.clock
+    pairs = ", ".join(f"({int(site)}, {int(day)})" for site, day in question.starts.items())
+    before = _last_knot("begun", "<= begun.day", column="id")
+    after = (
+        "(SELECT k.id FROM fleet_clockpoint k WHERE k.module_id = begun.module_id "
+        "AND k.day > begun.day ORDER BY k.day LIMIT 1)"
+    )
+    later = "at_begun.day > COALESCE(every.records_day, at_begun.day - 1)"
+    kept = (
+        "id, module_id, position_id, reason, mode_id, age_at_fit, removed_on, label, also, fitted_day, end_day, "
+        "last_good_entered, measured, at_fit, at_good, at_end, site_id"
+    )
+    return [
+        f"starts(site_id, day) AS (VALUES {pairs})",
+        "begun AS MATERIALIZED (SELECT DISTINCT every.module_id, starts.day FROM every "
+        "JOIN starts ON starts.site_id = every.site_id WHERE every.fitted_day < starts.day)",
+        f"""at_begun AS MATERIALIZED (
+            SELECT begun.*, a.{clock} + (b.{clock} - a.{clock}) * (begun.day - a.day) / (b.day - a.day) AS count
+            FROM begun LEFT JOIN fleet_clockpoint a ON a.id = {before}
+            LEFT JOIN fleet_clockpoint b ON b.id = {after})""",
+        f"""base AS MATERIALIZED (
+            SELECT {", ".join(f"every.{name.strip()}" for name in kept.split(","))},
+                CASE WHEN {later} THEN at_begun.day ELSE every.records_day END AS records_day,
+                CASE WHEN {later} THEN at_begun.count ELSE every.at_records END AS at_records
+            FROM every LEFT JOIN starts ON starts.site_id = every.site_id
+            LEFT JOIN at_begun ON at_begun.module_id = every.module_id AND at_begun.day = starts.day
+                AND every.fitted_day < starts.day)""",
+    ]
 
 
 def _placed(question: LifeQuestion) -> str:
