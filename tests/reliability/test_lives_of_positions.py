@@ -49,7 +49,7 @@ def test_from_a_sites_start_old_parts_enter_at_their_age_that_day() -> None:
         ("failed", 0, 20, None),
         ("failed", 0, 20, None),
         ("failed", 40, 70, None),
-        ("failed", 50, 20, "ended before records were kept"),
+        ("failed", 50, 51, "ended before records were kept"),
         ("running", 20, 70, None),
     ]
 
