@@ -14,6 +14,7 @@ from django.utils import timezone
 
 from fleet.formats import counted
 from fleet.models import ClockPoint, Component, Fitting, Part, PartState, Placement, Site, SiteKind
+from reliability.forecasts.modules_ahead import NEVER, Arrival, ModulesAhead, modules_ahead
 from reliability.running_as_known import running_as_known
 
 NO_PLACE = "no place"
@@ -31,6 +32,11 @@ class RunningRow(NamedTuple):
     site: str
     type: str
     count: int
+    least: bool = False  # the age is the least it can be
+    stopped: float = -1.0  # days its module has stood still by now; below 0 while it runs
+    joins: float = 0.0  # days until it is there
+    leaves: float = NEVER  # days until it is there no more
+    seen: float = -1.0  # days since its module was last visited, where failures are found only then
 
 
 @dataclass(frozen=True)
@@ -46,7 +52,8 @@ class RunningParts:
 
     @property
     def count(self) -> int:
-        return sum(row.count for row in self.rows)
+        """Parts in service now, without those that join later."""
+        return sum(row.count for row in self.rows if row.joins == 0)
 
 
 def running_parts(
@@ -57,39 +64,68 @@ def running_parts(
     `known_on` in the past tells it as the book had it by then: see `running_as_known.py`.
     """
     left_out: Counter[str] = Counter()
-    lower_bound = 0
-    found: list[tuple[float, float | None, str, str, str]] = []
+    found: list[_Found] = []
     then = known_on if known_on is not None and known_on < timezone.localdate() else None
+    ahead = modules_ahead(as_of, then)
+    wanted = None if sites is None else set(sites)
     for row in _fitted(component, as_of) if then is None else _fitted_as_known(component, as_of, then):
-        place = _left_out(row, as_of)
-        if place:
-            left_out[place] += 1
-            continue
-        if sites is not None and (row["site_code"] or NO_PLACE) not in sites:
-            continue
         age, known = _age(row, as_of)
-        if age is None:
+        stays = _stays(row, ahead, as_of, left_out)
+        if age is None and any(stay.after == 0 for stay in stays):
             left_out["neither readings nor a duty known"] += 1
-            continue
-        lower_bound += not known
-        found.append((age, _pace(row), row["part_code"], row["site_code"] or NO_PLACE, row["type_code"]))
-    rows, guessed = _with_pace(found, component.clock, Replacements(component, as_of, then))
-    notes = []
-    if lower_bound:
-        one, many = "part whose fitting day is not known counts", "parts whose fitting day is not known count"
-        age_told = "it has" if lower_bound == 1 else "they have"
-        notes.append(f"{counted(lower_bound, one, many)} with the age {age_told} at least.")
-    if guessed:
-        one, many = "part without readings of its own counts", "parts without readings of their own count"
-        notes.append(f"{counted(guessed, one, many)} with the pace of the site or of the fleet.")
+        for stay in stays:
+            if age is not None and (wanted is None or stay.site in wanted):
+                found.append(_Found(age, _pace(row), row["part_code"], row["type_code"], known, row["module_id"], stay))
+    rows, guessed = _with_pace(found, component.clock, Replacements(component, as_of, then), ahead)
     return RunningParts(
         component=component.code,
         clock=component.clock,
         as_of=as_of,
         rows=rows,
-        left_out=sorted(left_out.items()),
-        notes=notes,
+        left_out=sorted((reason, count) for reason, count in left_out.items() if count),
+        notes=_notes(rows, guessed),
     )
+
+
+class _Found(NamedTuple):
+    """One running part at one of its module's stays."""
+
+    age: float
+    pace: float | None
+    part: str
+    type: str
+    known: bool
+    module: int
+    stay: Arrival
+
+
+def _stays(row: dict[str, Any], ahead: ModulesAhead, as_of: dt.date, left_out: Counter[str]) -> list[Arrival]:
+    """The stay of today, if it counts, and those planned."""
+    coming = ahead.arrives.get(row["module_id"], [])
+    place = _left_out(row, as_of)
+    if place:
+        left_out[place] += 0 if coming else 1
+        return coming if not row["scrapped"] or row["scrapped"] > as_of else []
+    return [Arrival(0.0, row["site_code"] or NO_PLACE, ahead.leaves.get(row["module_id"], NEVER)), *coming]
+
+
+def _notes(rows: list[RunningRow], guessed: int) -> list[str]:
+    notes = []
+    least = sum(row.count for row in rows if row.least and row.joins == 0)
+    if least:
+        one, many = "part whose fitting day is not known counts", "parts whose fitting day is not known count"
+        owner = "it" if least == 1 else "they"
+        notes.append(f"{counted(least, one, many)} with every age that {owner} can have.")
+    if guessed:
+        one, many = "part without readings of its own counts", "parts without readings of their own count"
+        notes.append(f"{counted(guessed, one, many)} with the pace of the site or of the fleet.")
+    joining = sum(row.count for row in rows if row.joins > 0)
+    if joining:
+        notes.append(f"{counted(joining, 'part joins', 'parts join')} on the day planned for the module.")
+    leaving = sum(row.count for row in rows if row.joins == 0 and row.leaves < NEVER)
+    if leaving:
+        notes.append(f"{counted(leaving, 'part leaves', 'parts leave')} on the day planned for the module.")
+    return notes
 
 
 def _fitted(component: Component, as_of: dt.date) -> Any:
@@ -106,6 +142,7 @@ def _fitted(component: Component, as_of: dt.date) -> Any:
         .values(
             "age_at_fit",
             "fitted_on",
+            "module_id",
             part_code=F("part__code"),
             type_code=F("module__type__code"),
             scrapped=F("module__scrapped_on"),
@@ -171,23 +208,33 @@ def _pace(row: dict[str, Any]) -> float | None:
 
 
 def _with_pace(
-    found: list[tuple[float, float | None, str, str, str]], clock: str, replacements: Replacements
+    found: list[_Found], clock: str, replacements: Replacements, ahead: ModulesAhead
 ) -> tuple[list[RunningRow], int]:
     """Equal parts as one row; who has no pace takes the median of the site, else of all."""
     if clock == "days":
-        found = [(age, 1.0, part, site, kind) for age, _, part, site, kind in found]
+        found = [each._replace(pace=1.0) for each in found]
     by_site: dict[str, list[float]] = defaultdict(list)
-    for _, pace, _, site, _ in found:
-        if pace is not None:
-            by_site[site].append(pace)
+    for each in found:
+        if each.pace is not None and each.stay.after == 0:
+            by_site[each.stay.site].append(each.pace)
     everywhere = _median([pace for paces in by_site.values() for pace in paces])
-    counts: Counter[tuple[float, float, str, str, str, str]] = Counter()
+    counts: Counter[tuple[Any, ...]] = Counter()
     guessed = 0
-    for age, pace, part, site, kind in found:
-        guessed += pace is None
-        use = pace if pace is not None else _median(by_site[site]) or everywhere
-        counts[(round(age, 1), float(f"{use:.4g}"), part, replacements.of(part, site), site, kind)] += 1
-    rows = [RunningRow(*key, count) for key, count in sorted(counts.items())]
+    for each in found:
+        guessed += each.pace is None
+        site = each.stay.site
+        use = each.pace if each.pace is not None else _median(by_site[site]) or everywhere
+        now = each.stay.after == 0
+        further = (
+            not each.known,
+            ahead.stopped.get(each.module, -1.0) if now else -1.0,
+            each.stay.after,
+            each.stay.leaves,
+            ahead.seen.get(each.module, -1.0),
+        )
+        needed = replacements.of(each.part, site)
+        counts[(round(each.age, 1), float(f"{use:.4g}"), each.part, needed, site, each.type, *further)] += 1
+    rows = [RunningRow(*key[:6], count, *key[6:]) for key, count in sorted(counts.items())]
     return rows, guessed
 
 

@@ -2,12 +2,16 @@
 
 from __future__ import annotations
 
+import datetime as dt
+
 import pytest
+from django.utils import timezone
 
 from fleet.actions.rebuild_clocks import rebuild_clocks
 from fleet.models import Part
+from reliability.forecasts.modules_ahead import NEVER
 from reliability.running_parts import Replacements, RunningRow, chains_of, running_parts
-from tests.reliability.small_fleet import SmallFleet, day
+from tests.reliability.small_fleet import DAY_0, SmallFleet, day
 
 pytestmark = pytest.mark.django_db
 AS_OF = 200
@@ -71,7 +75,43 @@ def test_a_part_of_unknown_fitting_day_has_the_age_since_records_began_at_least(
     rebuild_clocks()
     found = running_parts(fleet.component, as_of=day(AS_OF))
     assert [row.age for row in found.rows] == [60.0]
-    assert found.notes == ["1\u00a0part whose fitting day is not known counts with the age it has at least."]
+    assert found.notes == ["1\u00a0part whose fitting day is not known counts with every age that it can have."]
+
+
+def test_a_module_that_stands_still_says_for_how_long(fleet: SmallFleet) -> None:
+    module = fleet.module("M-1", fleet.site())
+    fleet.fit(module, 100)
+    fleet.stop(module, 190, None)
+    assert [(row.age, row.stopped) for row in rows(fleet)] == [(90.0, 11.0)]
+
+
+def test_parts_at_sites_that_wait_for_visits_know_when_they_were_seen(fleet: SmallFleet) -> None:
+    here, there = fleet.module("M-1", fleet.site("WEIR", reports_at_once=False)), fleet.module("M-2", fleet.site())
+    for module in (here, there):
+        fleet.fit(module, 120)
+        fleet.visit(module, 188)
+    assert [(row.site, row.seen) for row in rows(fleet)] == [("LOCK", -1.0), ("WEIR", 12.0)]
+
+
+def test_planned_days_are_followed_only_while_they_lie_ahead(fleet: SmallFleet) -> None:
+    """A module leaves for the yard, another comes from it, a third is to be scrapped: all planned today."""
+    today = timezone.localdate()
+    now, soon = (today - DAY_0).days, today + dt.timedelta(days=20)
+    yard, weir = fleet.site("YARD", kind="depot"), fleet.site("WEIR")
+    going, coming, scrapped = fleet.module("M-1", weir), fleet.module("M-2", yard), fleet.module("M-3", weir)
+    for module in (going, coming, scrapped):
+        fleet.fit(module, now - 30)
+    going.placements.update(to_on=soon)
+    coming.placements.update(to_on=soon)
+    coming.placements.create(site=weir, from_on=soon)
+    scrapped.scrapped_on = soon
+    scrapped.save()
+    rebuild_clocks()
+    found = running_parts(fleet.component, as_of=today)
+    assert sorted((row.joins, row.leaves, row.count) for row in found.rows) == [(0.0, 20.0, 2), (20.0, NEVER, 1)]
+    assert (found.count, found.left_out) == (2, [])
+    earlier = running_parts(fleet.component, as_of=today - dt.timedelta(days=1))
+    assert [(row.joins, row.leaves, row.count) for row in earlier.rows] == [(0.0, NEVER, 2)]
 
 
 def test_strokes_come_from_readings_and_the_pace_from_the_last_of_them() -> None:
