@@ -146,10 +146,11 @@ class PlanForm(forms.Form):
         )
         if asked["type"]:
             wanted = wanted.filter(type=asked["type"])
-        at_sites = list(wanted.filter(now_site_id__in=[site.pk for site in asked["sites"]])) if asked["sites"] else []
-        by_tag = {module.code: module for module in wanted.filter(code__in=asked["tags"])} if asked["tags"] else {}
-        self.tell_unknown(asked["tags"], by_tag)
-        return list(dict.fromkeys([*at_sites, *(by_tag[tag] for tag in asked["tags"] if tag in by_tag)]))
+        tags, sites = asked["tags"], [site.pk for site in asked["sites"]]
+        at_sites = list(wanted.filter(now_site_id__in=sites)) if sites else []
+        by_tag = {module.code: module for module in wanted.filter(code__in=tags)} if tags else {}
+        self.tell_unknown(tags, by_tag)
+        return list(dict.fromkeys([*at_sites, *(by_tag[tag] for tag in tags if tag in by_tag)]))
 
     def tell_unknown(self, tags: list[str], found: dict[str, Module]) -> None:
         missing = [tag for tag in dict.fromkeys(tags) if tag not in found]
