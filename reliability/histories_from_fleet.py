@@ -2,21 +2,26 @@
 
 from __future__ import annotations
 
+from bisect import bisect_left
 from collections.abc import Iterable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import groupby
-from typing import Any, NamedTuple
+from typing import TYPE_CHECKING, Any, NamedTuple
 
 from django.db import connection
 from django.db.models import F, Max, Min
 
-from fleet.models import ClockPoint, Fitting, Site
+from fleet.models import ClockPoint, Fitting, Part, Site
 from reliability.fleet_lives import NO_PLACE
 from reliability.life_question import Asked, asked_of, life_question
 from reliability.life_rules import Reason
 from reliability.life_sql import single_lives
 from reliability.lifetimes_from_fleet import reporting_lags
 
+if TYPE_CHECKING:
+    from reliability.stats.lifetimes import Lifetimes
+
+MOST = 0.8  # share of the lives that a clock must be known for
 SHORTEST_USE = 7.0  # days in service below which a module says nothing about its duty
 
 
@@ -34,29 +39,42 @@ class PositionHistory:
     other_removals: int
 
 
-class _Stay(NamedTuple):
+class _Life(NamedTuple):
+    """One fitting as `single_lives` gives it."""
+
+    id: int
+    module: int
+    position: int
     left_out: str | None
     state: str
     entry: float | None
     duration: float | None
+    last_good: float | None
     site: int | None
+    label: Any
+    measured: bool
+    fitted_day: float | None
+    last_day: float | None
 
 
 def position_histories(component: Any, **choices: Any) -> list[PositionHistory]:
     """Histories under the choices of `lives`, as they stand in the records now."""
-    asked = asked_of(component, **choices)
-    text, parameters = single_lives(life_question(asked, reporting_lags(asked.as_of)))
     codes = dict(Site.objects.values_list("pk", "code"))
-    with connection.cursor() as cursor:
-        cursor.execute(text, parameters)
-        rows = cursor.fetchall()
     found: list[PositionHistory] = []
-    for (module, _), fitted in groupby(rows, key=lambda row: (row[0], row[1])):
-        found += _histories(module, (_Stay(*row[2:]) for row in fitted), codes)
+    rows = _single_lives(asked_of(component, **choices))
+    for (module, _), fitted in groupby(rows, key=lambda life: (life.module, life.position)):
+        found += _histories(module, fitted, codes)
     return found
 
 
-def _histories(module: int, stays: Iterable[_Stay], codes: dict[int, str]) -> Iterable[PositionHistory]:
+def _single_lives(asked: Asked) -> list[_Life]:
+    text, parameters = single_lives(life_question(asked, reporting_lags(asked.as_of)))
+    with connection.cursor() as cursor:
+        cursor.execute(text, parameters)
+        return [_Life(*row) for row in cursor.fetchall()]
+
+
+def _histories(module: int, stays: Iterable[_Life], codes: dict[int, str]) -> Iterable[PositionHistory]:
     """Begins with a part that was new when it came under observation; a stay that is left out breaks it."""
     failures: list[float] = []
     end, others, site = 0.0, 0, NO_PLACE
@@ -77,6 +95,86 @@ def _histories(module: int, stays: Iterable[_Stay], codes: dict[int, str]) -> It
             others += 1
     if end:
         yield PositionHistory(module, site, tuple(failures), end, others)
+
+
+@dataclass(frozen=True, eq=False)
+class LivesOnClocks:
+    """The same lives in the same order on each clock that is known for most of them.
+
+    interpolated: share of the counted strokes (hours) beyond the readings taken within the lives, by clock
+    not_known: clocks that most lives do not have; dropped: lives that one of the clocks does not have
+    """
+
+    by_clock: dict[str, Lifetimes]
+    interpolated: dict[str, float]
+    not_known: list[str]
+    dropped: int
+
+
+def lives_on_clocks(component: Any, clocks: Iterable[str], **choices: Any) -> LivesOnClocks:
+    asked = asked_of(component, **choices)
+    told = {clock: _told_on(replace(asked, clock=clock)) for clock in clocks}
+    longest = max((len(lives) for lives in told.values()), default=0)
+    known = {clock: lives for clock, lives in told.items() if lives and len(lives) >= MOST * longest}
+    keys = sorted(set.intersection(*(set(lives) for lives in known.values()))) if known else []
+    codes = dict(Site.objects.values_list("pk", "code"))
+    parts = dict(Part.objects.filter(component=asked.component).values_list("pk", "code"))
+    read_on = _reading_days(asked)
+    by_clock, interpolated = {}, {}
+    for clock, lives in known.items() if keys else ():
+        rows = [lives[key] for key in keys]
+        by_clock[clock] = _lifetimes(rows, codes, parts if asked.by == "part" else {})
+        counted = [float(row.duration or 0) - float(row.entry or 0) for row in rows]
+        read = read_on.get(clock, {})
+        unread = [used * _unread(row, read) for used, row in zip(counted, rows, strict=True)]
+        interpolated[clock] = 0.0 if clock == "days" else sum(unread) / sum(counted)
+    return LivesOnClocks(by_clock, interpolated, [clock for clock in told if clock not in known], longest - len(keys))
+
+
+def _told_on(asked: Asked) -> dict[int, _Life]:
+    return {life.id: life for life in _single_lives(asked) if life.left_out is None}
+
+
+def _reading_days(asked: Asked) -> dict[str, dict[int, list[float]]]:
+    """The days on which counter and meter of each module were read, in order."""
+    with_parts = Fitting.objects.standing().filter(part__component=asked.component).values("module")
+    days: dict[str, dict[int, list[float]]] = {}
+    for clock in ("strokes", "hours"):
+        read: dict[int, list[float]] = {}
+        knots = ClockPoint.objects.filter(module__in=with_parts, **{f"{clock}_read": True})
+        for module, day in knots.order_by("module_id", "day").values_list("module_id", "day"):
+            read.setdefault(module, []).append(day)
+        days[clock] = read
+    return days
+
+
+def _unread(life: _Life, read_on: dict[int, list[float]]) -> float:
+    """The share of a life's days that lies beyond the readings taken within it: there its days stand for its use."""
+    days = read_on.get(life.module, [])
+    if life.fitted_day is None or life.last_day is None:
+        return 1.0
+    first, after = bisect_left(days, life.fitted_day), bisect_left(days, life.last_day + 1)
+    if first == after:
+        return 1.0
+    begun = life.fitted_day if first > 0 else days[first]
+    covered = min(days[after - 1], life.last_day) - begun
+    whole = life.last_day - life.fitted_day
+    return 0.0 if whole <= 0 else min(1.0, max(0.0, 1.0 - covered / whole))
+
+
+def _lifetimes(rows: list[_Life], sites: dict[int, str], parts: dict[int, str]) -> Lifetimes:
+    import numpy as np
+
+    from reliability.stats.lifetimes import Lifetimes
+
+    return Lifetimes(
+        np.array([row.duration for row in rows], dtype=float),
+        np.array([row.state == "failed" for row in rows]),
+        entries=np.array([row.entry for row in rows], dtype=float),
+        last_good=np.array([np.nan if row.last_good is None else row.last_good for row in rows], dtype=float),
+        sites=np.array([sites.get(row.site or 0, NO_PLACE) for row in rows]),
+        groups=np.array([parts.get(row.label, "") for row in rows]),
+    )
 
 
 class Duty(NamedTuple):

@@ -18,8 +18,11 @@ if TYPE_CHECKING:
     from reliability.stats.lifetimes import Lifetimes
 
 FEWEST_FAILURES = 5  # below, no maximum-likelihood shape is shown
+MOST_FITTED = 60  # groups; beyond them the curve alone speaks, so that an answer comes in seconds
 ALL = "all"
 QUANTITIES: dict[str, Any] = {"b10": ("quantile", 0.1), "median": ("quantile", 0.5), "mean": "mean"}
+STATES = ("failed", "running", "withdrawn", "worn", "not known", "other mode")
+NOT_FITTED = ("b10", "median", "mean", "weibull", "independent", "few_failures", "fitted")
 PARAMETERS: dict[str, Any] = {"shape": "shape", "scale": "scale"}
 
 
@@ -44,8 +47,12 @@ def life_document(
     worn_is_failure: bool = True,
     life_set: str | None = None,
     confidence: float = 0.95,
+    most: int | None = None,
 ) -> dict[str, Any]:
-    """What JSON can hold: numbers are finite, a missing or endless limit is None beside a flag."""
+    """What JSON can hold: numbers are finite, a missing or endless limit is None beside a flag.
+
+    `most`: only so many groups, those with most lives; the others are counted in `more_groups`.
+    """
     found = lives(
         component,
         clock=clock,
@@ -59,12 +66,15 @@ def life_document(
         worn_is_failure=worn_is_failure,
         life_set=life_set,
     )
-    return document_of(found, confidence)
+    return document_of(found, confidence, most)
 
 
-def document_of(found: FleetLives, confidence: float = 0.95) -> dict[str, Any]:
+def document_of(found: FleetLives, confidence: float = 0.95, most: int | None = None) -> dict[str, Any]:
     from reliability.wording import life_sentence
 
+    by_lives = sorted(found.groups, key=lambda label: -found.count(*STATES, group=label))
+    shown = set(by_lives[:most])
+    fitted = set(by_lives[:MOST_FITTED])
     document: dict[str, Any] = {
         "component": found.component,
         "component_name": found.component_name,
@@ -73,7 +83,10 @@ def document_of(found: FleetLives, confidence: float = 0.95) -> dict[str, Any]:
         "confidence": confidence,
         "by": found.by,
         "modes": list(found.modes),
-        "groups": [_group(found, label, confidence) for label in found.groups],
+        "mode_names": found.mode_names,
+        "life_set": found.life_set,
+        "groups": [_group(found, label, confidence, fit=label in fitted) for label in found.groups if label in shown],
+        "more_groups": [_counts(found, label) for label in found.groups if label not in shown],
         "at_risk": _at_risk(found),
         "left_out": [{"reason": row.reason, "count": row.count} for row in found.left_out],
         "warnings": list(found.warnings),
@@ -93,22 +106,28 @@ def _at_risk(found: FleetLives) -> dict[str, Any]:
     return {**counted, "counts": {label or ALL: counts for label, counts in counted["counts"].items()}}
 
 
-def _group(found: FleetLives, label: str, confidence: float) -> dict[str, Any]:
+def _counts(found: FleetLives, label: str) -> dict[str, Any]:
+    return {
+        "group": label or ALL,
+        "lives": found.count(*STATES, group=label),
+        "failures": found.count("failed", group=label),
+        "running": found.count("running", group=label),
+    }
+
+
+def _group(found: FleetLives, label: str, confidence: float, *, fit: bool) -> dict[str, Any]:
     assert found.lifetimes is not None
     chosen = found.lifetimes.groups == label
     lifetimes = found.lifetimes.subset(chosen)
     answer: dict[str, Any] = {
-        "group": label or ALL,
-        "lives": _count(lifetimes.count),
-        "failures": _count(lifetimes.failures),
-        "running": found.count("running", group=label),
+        **_counts(found, label),
         "removed_otherwise": found.count("withdrawn", "worn", "not known", "other mode", group=label),
         "exposure": finite(lifetimes.exposure),
         "sites": len(lifetimes.site_labels),
         "notes": [],
     }
     answer["curve"] = curve_of(lifetimes, confidence, answer["notes"])
-    answer.update(_estimates(lifetimes, confidence, answer["notes"]))
+    answer.update(_estimates(lifetimes, confidence, answer["notes"]) if fit else dict.fromkeys(NOT_FITTED))
     if found.if_not_known_failed is not None:
         other = found.if_not_known_failed.subset(chosen)
         answer["if_not_known_failed"] = {"failures": _count(other.failures), **_estimates(other, confidence, [])}
@@ -145,16 +164,16 @@ def _estimates(lifetimes: Lifetimes, confidence: float, notes: list[str]) -> dic
 
 
 def _told_by(fit: LifeFit, confidence: float, notes: list[str]) -> dict[str, Any]:
-    answer = {name: _interval(fit, quantity, confidence, notes) for name, quantity in QUANTITIES.items()}
+    answer = {name: interval_of(fit, quantity, confidence, notes) for name, quantity in QUANTITIES.items()}
     weibull: dict[str, Any] = {
-        name: _interval(fit, quantity, confidence, notes) for name, quantity in PARAMETERS.items()
+        name: interval_of(fit, quantity, confidence, notes) for name, quantity in PARAMETERS.items()
     }
     weibull.update(
         log_likelihood=finite(fit.log_likelihood),
         aicc=finite(fit.aicc),
         method="likelihood-ratio",
         distribution=fit.distribution,
-        wald={name: _interval(fit, quantity, confidence, [], "wald") for name, quantity in PARAMETERS.items()},
+        wald={name: interval_of(fit, quantity, confidence, [], "wald") for name, quantity in PARAMETERS.items()},
     )
     return {**answer, "weibull": weibull}
 
@@ -167,7 +186,7 @@ def _between_sites(fit: Any, confidence: float) -> dict[str, Any]:
     }
 
 
-def _interval(
+def interval_of(
     fit: LifeFit, quantity: Any, confidence: float, notes: list[str], method: str = "likelihood-ratio"
 ) -> dict[str, Any]:
     """Estimate and limits; a limit that the records do not give is None and named in `unbounded`."""

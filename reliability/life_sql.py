@@ -46,6 +46,10 @@ GROUP_COLUMNS = {
     "lot": "f.lot",
 }
 ALSO_COLUMNS = {None: "CAST(NULL AS integer)", "mode": "f.mode_id", "module": "f.module_id", "lot": "f.lot"}
+SINGLE_COLUMNS = (
+    *("id", "module_id", "position_id", "left_out", "state", "entry", "duration", "last_good"),
+    *("site_id", "label", "measured", "fitted_day", "last_day"),
+)
 
 
 def grouped_lives(question: LifeQuestion) -> Query:
@@ -59,11 +63,10 @@ def grouped_lives(question: LifeQuestion) -> Query:
 
 
 def single_lives(question: LifeQuestion) -> Query:
-    """A row a fitting in the order of its position: (module, position, left_out, state, entry, duration, site)."""
+    """A row a fitting in the order of its position; the columns are those of `SINGLE_COLUMNS`."""
     text, parameters = _lives(question)
     return (
-        f"{text} SELECT module_id, position_id, left_out, state, entry, duration, site_id "
-        "FROM told ORDER BY module_id, position_id, fitted_day, id",
+        f"{text} SELECT {', '.join(SINGLE_COLUMNS)} FROM told ORDER BY module_id, position_id, fitted_day, id",
         parameters,
     )
 
@@ -264,7 +267,7 @@ def _told(question: LifeQuestion) -> str:
     also = "CASE WHEN state = 'failed' THEN also END" if question.also == "mode" else "also"
     return f"""told AS (
         SELECT id, CASE {_reasons(question, first_day)} END AS left_out, state, entry, measured, site_id, label,
-            {also} AS also, module_id, position_id, fitted_day,
+            {also} AS also, module_id, position_id, fitted_day, last_day,
             CASE WHEN {first_day} THEN entry + 1 ELSE whole_age END AS duration,
             CASE WHEN {first_day} THEN entry WHEN good_age >= whole_age THEN NULL
                 WHEN good_age < entry THEN entry ELSE good_age END AS last_good

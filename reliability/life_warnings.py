@@ -6,6 +6,7 @@ from collections.abc import Mapping, Sequence
 from typing import Any
 
 from reliability.fleet_lives import LifeRow
+from reliability.wording import in_sentence
 
 MANY_NOT_KNOWN = 0.05
 REMOVED = ("failed", "other mode", "worn", "not known", "withdrawn")
@@ -45,7 +46,7 @@ def warnings_for(
 def _modes(modes: Sequence[str], without_mode: int) -> str:
     if not modes:
         return ""
-    named = ", ".join(modes)
+    named = ", ".join(in_sentence(mode) for mode in modes)
     sentence = (
         f"If only this mode acted ({named}): every other failure counts as a removal in good order, "
         "so this is not what will happen."

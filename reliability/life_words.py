@@ -85,7 +85,7 @@ def survival_sentence(document: Document, compared: list[dict[str, Any]], at: fl
         start = f"None has failed yet: the line stays at the top. The oldest ran {age(oldest, document['clock'])}."
     elif at is not None and compared:
         start = f"At {age(at, document['clock'])}, {compared_words(compared)} still work."
-    left = len(document["groups"]) - drawn
+    left = len(document["groups"]) + len(document["more_groups"]) - drawn
     if left > 0:
         start += f" Drawn are the {number(drawn)} groups with most lives; the other {number(left)} stand in the table."
     return start
@@ -127,6 +127,15 @@ def between(lower: float | None, upper: float | None) -> str:
     if lower is None or upper is None:
         return ""
     return f" ({percent(lower).removesuffix(f'{FIXED}%')}–{percent(upper).removesuffix(f'{FIXED}%')})"
+
+
+def p_words(value: float | None, name: str = "P") -> str:
+    """“P = 0.03”, “P under 0.001”; without a name the value alone, for tables."""
+    if value is None:
+        return f"{name} not known".strip()
+    if value < 0.001:
+        return f"{name} under 0.001".strip()
+    return f"{name} = {number(value, 3 if value < 0.1 else 2)}" if name else number(value, 3 if value < 0.1 else 2)
 
 
 def joined(texts: list[str]) -> str:
@@ -179,7 +188,7 @@ def plot_note(document: Document, groups: Iterable[Group], *, bands: bool) -> st
     groups = list(groups)
     notes = [
         "On this paper a Weibull life is a straight line, steeper the more the parts wear. Points: what was seen, each "
-        "at half its step. Where points leave the line at one end, the lives are a mixture or the Weibull does not fit."
+        "at half its step. Whether they leave the line by more than chance is said below, not judged by eye."
     ]
     if any(group.get("fitted") for group in groups):
         band = f", with its {percent(document['confidence'])} likelihood band, age by age" if bands else ""
@@ -217,7 +226,7 @@ def many_few_sentence(groups: int, confidence: float) -> str:
 
 def left_out_sentence(document: Document) -> str:
     total = sum(row["count"] for row in document["left_out"])
-    lives = sum(group["lives"] for group in document["groups"])
+    lives = sum(group["lives"] for group in [*document["groups"], *document["more_groups"]])
     if not total:
         return f"Nothing is left out: every fitting counts among the {number(lives)} lives."
     one = total == 1

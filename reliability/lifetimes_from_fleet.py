@@ -31,7 +31,7 @@ from reliability.fleet_lives import (
     in_order,
     with_not_known_failed,
 )
-from reliability.life_question import Asked, asked_of, life_question
+from reliability.life_question import Asked, asked_of, life_question, titles_of_modes
 from reliability.life_rules import Reason, Rules
 from reliability.life_sql import grouped_lives, left_out_fittings
 from reliability.life_warnings import many_not_known, warnings_for
@@ -206,7 +206,8 @@ def _answer(asked: Asked, rows: list[LifeRow], left_out: list[LeftOut]) -> Fleet
     without_mode = 0
     if asked.modes is not None:
         without_mode = _fittings(asked).standing().filter(reason__in=FAILURE_REASONS, mode=None).count()
-    mode_names = mode_titles(asked)
+    titles = titles_of_modes(asked.component) if asked.mode_codes else {}
+    mode_names = {code: titles[code] for code in asked.mode_codes}
     warned = warnings_for(
         rows,
         clock=asked.clock,
@@ -258,14 +259,6 @@ def _group_names(asked: Asked, rows: Iterable[LifeRow], site_codes: dict[Any, st
     if asked.by == "quarter":
         return {quarter: f"{int(quarter) // 10}-Q{int(quarter) % 10}" for quarter in used if quarter}
     return dict.fromkeys(used, "")
-
-
-def mode_titles(asked: Asked) -> dict[str, str]:
-    """What people call the chosen modes, by code."""
-    if not asked.mode_codes:
-        return {}
-    chosen = FailureMode.objects.filter(component=asked.component, code__in=asked.mode_codes)
-    return {mode.code: mode.title for mode in chosen}
 
 
 def _also_names(asked: Asked, rows: Iterable[LifeRow]) -> dict[Any, str]:

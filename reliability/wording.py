@@ -13,10 +13,25 @@ SMALL_NUMBERS = {1: "one", 2: "two", 3: "three", 4: "four"}
 def life_sentence(document: dict[str, Any], group: dict[str, Any]) -> str:
     """One group of a life document in words."""
     who = parts_of(document, group["group"])
-    condition = f"If only {' or '.join(document['modes'])} acted: " if document["modes"] else ""
+    condition = only_modes(document)
+    if group["few_failures"] is None and group["median"] is None:
+        return condition + _not_fitted(group, who)
     if group["few_failures"] is not None:
         return condition + _few(document, group, who)
     return condition + " ".join((_life(document, group, who), _counts(group)))
+
+
+def only_modes(document: dict[str, Any]) -> str:
+    """“If only thread worn out acted: ”, by the names of the chosen modes."""
+    if not document["modes"]:
+        return ""
+    names = document.get("mode_names") or {}
+    return f"If only {' or '.join(in_sentence(names.get(code, code)) for code in document['modes'])} acted: "
+
+
+def in_sentence(name: str) -> str:
+    """A name inside a sentence: “Thread worn out” as “thread worn out”; a code stays as it is."""
+    return name if name.isupper() else name[:1].lower() + name[1:]
 
 
 def parts_of(document: dict[str, Any], label: str) -> str:
@@ -103,6 +118,12 @@ def _counts(group: dict[str, Any]) -> str:
         removed = group["removed_otherwise"]
         told.append(f"{number(removed)} {'was' if removed == 1 else 'were'} taken out for another reason")
     return "; ".join(told) + "."
+
+
+def _not_fitted(group: dict[str, Any], who: str) -> str:
+    """Of groups beyond those that are fitted: what was counted."""
+    failed = "has" if group["failures"] == 1 else "have"
+    return f"Of {who} {number(group['failures'])} of {number(group['lives'])} {failed} failed."
 
 
 def _few(document: dict[str, Any], group: dict[str, Any], who: str) -> str:

@@ -7,17 +7,18 @@ from typing import Any
 from urllib.parse import parse_qs, urlsplit
 
 from django.db.models import Count, Q
-from django.http import Http404, HttpResponse, JsonResponse, StreamingHttpResponse
+from django.http import HttpResponse, JsonResponse
 from django.shortcuts import render
 from django.urls import reverse
 
-from fleet.formats import long_day
-from fleet.models import FAILURE_REASONS, Component, Fitting, Part
+from fleet.models import FAILURE_REASONS, Component, Part
 from fleet.models.codes import clean_code
 from fleet.part_ranks import part_ranks
 from fleet.rights import CATALOGUE, LIFE, may, needs
-from fleet.views.listing import Column, Listing, as_csv
+from fleet.views.listing import as_csv
+from reliability.charts.groups import MOST_GROUPS
 from reliability.forms.life import GROUPINGS, Choices, LifeForm
+from reliability.life_panels import PANELS, Panel
 
 NO_COMPONENT = {
     "state": "No component is in the book yet.",
@@ -36,12 +37,12 @@ def life(request: Any) -> HttpResponse:
     if not form.is_valid() or component is None:
         context = {"form": form, "component": component, "same_component": same_component(request, component)}
         return render(request, "life/page.html", context, status=422)
-    document = seen_document(request, choices, form)
     kind = request.GET.get("as")
     if kind == "json":
-        return JsonResponse(document, json_dumps_params={"ensure_ascii": False})
+        return JsonResponse(everything(request, choices, form), json_dumps_params={"ensure_ascii": False})
     if kind in ("csv", "curve.csv"):
-        return as_file(component, document, curve=kind == "curve.csv")
+        return as_file(component, seen_document(request, choices, form), curve=kind == "curve.csv")
+    document = seen_document(request, choices, form, most=MOST_GROUPS)
     return render(request, "life/page.html", context_of(request, choices, form, document))
 
 
@@ -56,27 +57,38 @@ def chosen_component(request: Any, components: list[Component]) -> Component | N
     return max(components, key=lambda each: failures.get(each.pk, 0))
 
 
-def seen_document(request: Any, choices: Choices, form: LifeForm) -> dict[str, Any]:
+def seen_document(request: Any, choices: Choices, form: LifeForm, most: int | None = None) -> dict[str, Any]:
     """The answer as this person may see it: estimates from everywhere, but by name only their own sites."""
     from reliability.life_answer import kept_life_document
-    from reliability.life_words import warnings_seen
+    from reliability.life_sight import as_seen
 
     assert choices.component is not None
-    document = kept_life_document(choices.component.code, **form.question())
-    if request.user.all_sites:
-        return document
-    mine = {site.code for site in choices.sites}
-    if document["by"] == "site":
-        document["groups"] = [group for group in document["groups"] if group["group"] in mine]
-        counts = document["at_risk"]["counts"].items()
-        document["at_risk"]["counts"] = {site: count for site, count in counts if site in mine}
-    for group in document["groups"]:
-        if group["weibull"] and "site_multipliers" in group["weibull"]:
-            known = group["weibull"]["site_multipliers"].items()
-            group["weibull"]["site_multipliers"] = {site: value for site, value in known if site in mine}
+    # of many sites the ones with most lives are drawn; who sees some only is shown all of those
+    most = most if request.user.all_sites or form.question()["by"] != "site" else None
+    document = kept_life_document(choices.component.code, most=most, **form.question())
+    return with_own_warnings(request, choices, as_seen(document, own_sites(request, choices)))
+
+
+def everything(request: Any, choices: Choices, form: LifeForm) -> dict[str, Any]:
+    """All groups and all panels, as this person may see them."""
+    from reliability.life_panels import whole_document
+
+    assert choices.component is not None
+    document = whole_document(choices.component.code, mine=own_sites(request, choices), **form.question())
+    return with_own_warnings(request, choices, document)
+
+
+def own_sites(request: Any, choices: Choices) -> set[str] | None:
+    """Codes of the only sites that may be named; None: all."""
+    return None if request.user.all_sites else {site.code for site in choices.sites}
+
+
+def with_own_warnings(request: Any, choices: Choices, document: dict[str, Any]) -> dict[str, Any]:
+    from reliability.life_words import warnings_seen
+
     unanswered = [site.title for site in choices.sites if site.reports_at_once is None]
-    document["warnings"] = warnings_seen(document["warnings"], unanswered, all_sites=False)
-    return document
+    warnings = warnings_seen(document["warnings"], unanswered, all_sites=request.user.all_sites)
+    return {**document, "warnings": warnings}
 
 
 def as_file(component: Component, document: dict[str, Any], *, curve: bool) -> Any:
@@ -109,7 +121,8 @@ def context_of(request: Any, choices: Choices, form: LifeForm, document: dict[st
             {"name": "CSV of the curves", "url": file_address(request, "curve.csv")},
             {"name": "JSON", "url": file_address(request, "json")},
         ],
-        "left_out": left_out_rows(request, form, document),
+        "left_out": left_out_rows(request, document),
+        "panels": waiting_panels(request) if document["groups"] else [],
     }
     if document["groups"]:
         context |= page_of(document, ranks, names_of(choices, document), request.GET.get("sort", ""))
@@ -152,11 +165,20 @@ def address(request: Any, **changes: str) -> str:
     return f"?{query.urlencode()}"
 
 
+def waiting_panels(request: Any) -> list[dict[str, str]]:
+    """The panels by address, to be brought when they come into sight; without scripts each is a link."""
+    return [{"id": panel.name, "title": panel.title, "url": panel_address(request, panel)} for panel in PANELS]
+
+
+def panel_address(request: Any, panel: Panel, **changes: str) -> str:
+    return reverse(f"life_{panel.key}") + address(request, **changes)
+
+
 def file_address(request: Any, kind: str) -> str:
     return address(request, **{"as": kind})
 
 
-def left_out_rows(request: Any, form: LifeForm, document: dict[str, Any]) -> list[dict[str, Any]]:
+def left_out_rows(request: Any, document: dict[str, Any]) -> list[dict[str, Any]]:
     from reliability.life_words import REMEDIES
 
     listed = reverse("life_left_out")
@@ -165,56 +187,7 @@ def left_out_rows(request: Any, form: LifeForm, document: dict[str, Any]) -> lis
             "reason": row["reason"],
             "count": row["count"],
             "remedy": REMEDIES.get(row["reason"], ""),
-            "url": "" if form.question()["life_set"] else listed + address(request, reason=row["reason"]),
+            "url": listed + address(request, reason=row["reason"]),
         }
         for row in document["left_out"]
     ]
-
-
-LEFT_OUT = Listing(
-    columns=[
-        Column(
-            "module",
-            "Module",
-            lambda fitting: {"text": fitting.module.code, "url": reverse("module", args=[fitting.module.code])},
-            plain=lambda fitting: fitting.module.code,
-            sort=("module__code_order",),
-        ),
-        Column("position", "Position", lambda fitting: fitting.position.code, sort=("position__code_order",)),
-        Column("part", "Part", lambda fitting: fitting.part.code, sort=("part__code_order",)),
-        Column("fitted", "Fitted", lambda fitting: fitting.fitted_on, sort=("fitted_on",)),
-        Column("removed", "Removed", lambda fitting: fitting.removed_on, sort=("removed_on",)),
-        Column("why", "Reason of removal", lambda fitting: fitting.reason, sort=("reason",)),
-        Column("struck", "Struck out", lambda fitting: fitting.struck_out),
-    ],
-    what="fittings left out",
-    caption="Fittings that are in no figure of the Life screen",
-    sort="module",
-    empty_state="No fitting of your sites is left out for this reason.",
-)
-
-
-@needs(LIFE)
-def life_left_out(request: Any) -> HttpResponse | StreamingHttpResponse:
-    """The fittings behind one line of “what was left out”."""
-    from reliability.lifetimes_from_fleet import lives
-
-    components = list(request.seen(Component))
-    component = chosen_component(request, components) if components else None
-    form = LifeForm(request.GET, choices=Choices.seen(request, components, component))
-    if component is None or not form.is_valid():
-        raise Http404
-    question = {name: value for name, value in form.question().items() if name not in ("confidence", "by")}
-    reason = request.GET.get("reason", "")
-    found = next((row for row in lives(component, **question).left_out if row.reason == reason), None)
-    if found is None or found.query is None:
-        raise Http404
-    rows = request.seen(Fitting).filter(pk__in=found.query.values("pk")).select_related("module", "position", "part")
-    back = reverse("life") + address(request, reason="", page="")
-    return LEFT_OUT.answer(
-        request,
-        rows,
-        title=f"Left out: {reason}",
-        lead=f"{component.title}, from the records of {long_day(question['as_of'])}.",
-        crumbs=[{"name": "Life", "url": back}],
-    )

@@ -15,8 +15,10 @@ from django.urls import reverse
 
 from fleet.actions.rebuild_clocks import rebuild_clocks
 from fleet.models import Component, DataVersion, FailureMode, LifeSet, Part, SetLife
+from reliability.charts.groups import MOST_GROUPS
 from reliability.forms.life import GROUPINGS
 from reliability.life_answer import life_document
+from reliability.life_panels import PANELS
 from reliability.life_works import fit_lives
 from tests.factories import make_manager, make_planner
 from tests.reliability.small_fleet import SmallFleet, day
@@ -107,14 +109,17 @@ def test_table_and_file_hold_the_document(nuts: Nuts, ines: Client) -> None:
     curve = lines_of(ask(ines, **{"as": "curve.csv"}))
     told = [float(row["survival"]) for row in curve if row["group"] == "N1"]
     assert told == pytest.approx(document["groups"][0]["curve"]["survival"])
-    assert ask(ines, **{"as": "json"}).json() == document
+    whole = ask(ines, **{"as": "json"}).json()
+    assert {key: whole[key] for key in document} == document
+    assert {panel.key for panel in PANELS} <= set(whole)
 
 
 def test_choices_stand_in_the_address_and_narrow_the_answer(nuts: Nuts, ines: Client) -> None:
     narrowed = ask(
         ines, component="nut", by="site", site="LOCK", mode="WORN", confidence="0.8", **{"as": "json"}
     ).json()
-    assert narrowed == life_document("NUT", by="site", sites=["LOCK"], modes=["WORN"], confidence=0.8, as_of=day(182))
+    told = life_document("NUT", by="site", sites=["LOCK"], modes=["WORN"], confidence=0.8, as_of=day(182))
+    assert {key: narrowed[key] for key in told} == told
     page = text_of(ask(ines, component="nut", by="site", site="LOCK", mode="WORN", confidence="0.8"))
     assert "Chosen: only at Withy Lock; only failures by WORN." in page
     assert "If only this mode acted (WORN)" in page
@@ -218,7 +223,8 @@ def test_the_number_of_queries_does_not_grow_with_the_fleet(nuts: Nuts, ines: Cl
     rebuild_clocks()
     DataVersion.raise_version()
     assert asked() == few <= 12
-    assert len(ask(ines, by="site").context["document"]["groups"]) == 17
+    told = ask(ines, by="site").context["document"]
+    assert (len(told["groups"]), len(told["more_groups"])) == (MOST_GROUPS, 17 - MOST_GROUPS)
 
 
 def test_a_book_without_components_says_what_to_do(ines: Client) -> None:

@@ -41,10 +41,12 @@ class Command(BaseCommand):
     def handle(self, *args: Any, **options: Any) -> None:
         from reliability.life_answer import life_document
         from reliability.life_errors import QuestionRefused
+        from reliability.life_panels import whole_document
         from reliability.stats.errors import StatisticsError
 
+        answered = whole_document if options["json"] else life_document
         try:
-            document = life_document(
+            document = answered(
                 options["component"],
                 clock=options["clock"],
                 by=options["by"],
