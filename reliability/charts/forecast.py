@@ -10,8 +10,8 @@ Figure = dict[str, Any]
 FANS = [("0.95", "fan-95"), ("0.8", "fan-80"), ("0.5", "fan-50")]
 
 
-def weekly_figure(document: Document) -> Figure:
-    """Bands by week, widest below, the mean as a line; weeks are stairs, not slopes."""
+def weekly_figure(document: Document, base: Document | None = None) -> Figure:
+    """Bands by week, widest below, the mean as a line; weeks are stairs, not slopes. The base case is a dashed line."""
     weeks = document["weeks"]
     starts = [week["from"] for week in weeks]
     if not weeks:
@@ -37,12 +37,41 @@ def weekly_figure(document: Document) -> Figure:
             "hovertemplate": "week from %{x}: %{y:.1f} expected<extra></extra>",
         }
     )
+    if base is not None:
+        data.append(base_line(days, [week["mean"] for week in base["weeks"]]))
     layout = {
         "xaxis": {"type": "date", "tickformat": "%-d %b"},
         "yaxis": {"title": "Failures a week", "rangemode": "tozero"},
         "showlegend": False,
     }
     return {"data": data, "layout": layout}
+
+
+def base_line(days: list[str], mean: list[float]) -> dict[str, Any]:
+    return {
+        "type": "scatter",
+        "mode": "lines",
+        "x": days,
+        "y": [*mean, mean[-1]],
+        "name": "base case",
+        "line": {"shape": "hv", "color": "var(--ink)", "width": 1.6, "dash": "6px,4px"},
+        "hovertemplate": "week from %{x}: %{y:.1f} expected without<extra></extra>",
+    }
+
+
+def happened_marks(weeks: list[Document], counts: list[int]) -> dict[str, Any]:
+    """What happened in the weeks that have passed, at the middle of each."""
+    half = dt.timedelta(days=3, hours=12)
+    middles = [(dt.datetime.fromisoformat(week["from"]) + half).isoformat() for week in weeks[: len(counts)]]
+    return {
+        "type": "scatter",
+        "mode": "markers",
+        "x": middles,
+        "y": counts,
+        "name": "failed",
+        "marker": {"symbol": "x-thin", "size": 9, "line": {"color": "var(--red)", "width": 2.4}},
+        "hovertemplate": "%{y} failed<extra></extra>",
+    }
 
 
 def fan(days: list[str], lower: list[float], upper: list[float], wash: str) -> list[dict[str, Any]]:
@@ -58,14 +87,14 @@ def fan(days: list[str], lower: list[float], upper: list[float], wash: str) -> l
     return [{**shared, "y": [*lower, lower[-1]]}, top]
 
 
-def weekly_table(document: Document) -> dict[str, Any]:
+def weekly_table(document: Document, base: Document | None = None) -> dict[str, Any]:
     """The drawn figures as columns and rows for parts/table.html."""
-    columns = [
+    columns: list[dict[str, Any]] = [
         {"key": "from", "label": "Week from"},
         {"key": "mean", "label": "Expected", "numeric": True, "digits": 1},
         *({"key": band, "label": f"{100 * float(band):.0f} in 100", "numeric": True} for band, _ in FANS[::-1]),
     ]
-    rows = [
+    rows: list[list[Any]] = [
         [
             dt.date.fromisoformat(week["from"]),
             week["mean"],
@@ -73,4 +102,8 @@ def weekly_table(document: Document) -> dict[str, Any]:
         ]
         for week in document["weeks"]
     ]
+    if base is not None:
+        columns.append({"key": "base", "label": "Base case", "numeric": True, "digits": 1})
+        for row, week in zip(rows, base["weeks"], strict=True):
+            row.append(week["mean"])
     return {"columns": columns, "rows": rows}

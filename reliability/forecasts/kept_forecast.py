@@ -11,9 +11,10 @@ from typing import Any
 from django.utils import timezone
 
 from fleet.models import DataVersion
+from reliability.forecasts.difference import difference_document
 from reliability.forecasts.next_quarter import forecast_document
 from reliability.forecasts.question import Question
-from reliability.kept import key_of
+from reliability.kept import kept, key_of
 from reliability.models import KeptResult
 
 KIND = "forecast"
@@ -21,13 +22,24 @@ KEPT_FOR = dt.timedelta(days=3)
 
 
 def kept_forecast(question: Question, *, again: bool = False) -> dict[str, Any]:
-    """The document with `counted_at`, and `current`: False where entries came after it."""
+    """The document with `counted_at`, its `data_version`, and `current`: False where entries came after it."""
     version, key = DataVersion.current(), key_of(question.asked())
     row = KeptResult.objects.filter(kind=KIND, key=key).first()
     if row is None or (again and row.data_version != version):
         row = _count(question, key, version)
     document = json.loads(bytes(row.payload))
-    return {**document, "counted_at": row.made_at, "current": row.data_version == version}
+    return {
+        **document,
+        "counted_at": row.made_at,
+        "data_version": row.data_version,
+        "current": row.data_version == version,
+    }
+
+
+def kept_difference(question: Question) -> dict[str, Any]:
+    """What the assumptions change, kept for the same day and data as the forecast."""
+    found: dict[str, Any] = kept("forecast difference", question.asked(), lambda: difference_document(question))
+    return found
 
 
 def _count(question: Question, key: str, version: int) -> KeptResult:

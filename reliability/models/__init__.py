@@ -1,3 +1,5 @@
+from reliability.models.kept_forecast import KeptForecast, KeptForecastsNeverChange
 from reliability.models.kept_result import KeptResult
+from reliability.models.replacement_cost import ReplacementCost
 
-__all__ = ["KeptResult"]
+__all__ = ["KeptForecast", "KeptForecastsNeverChange", "KeptResult", "ReplacementCost"]

@@ -14,8 +14,8 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
+from scipy.special import log_ndtr
 
-from reliability.stats.count_masses import Hazards
 from reliability.stats.errors import InvalidArgument
 from reliability.stats.posterior_draws import PosteriorDraws
 from reliability.stats.replacement import check_costs
@@ -23,7 +23,7 @@ from reliability.stats.replacement_visits import visit_cost_rates
 
 FloatArray = NDArray[np.float64]
 
-AGES = 96
+AGES = 240
 VISIT_AGES, VISIT_ROWS = 40, 1200  # what is tried where only visits replace: each costs a small system of equations
 _TAIL = 30.0  # a life is over when its cumulative hazard is so high
 _TAIL_POINTS = 500
@@ -158,15 +158,6 @@ class _Lives:
 
     def _set(self, draws: PosteriorDraws, factors: FloatArray, shares: FloatArray, kept: NDArray[np.int64]) -> None:
         self.draws, self.factors, self.shares, self.kept = draws, factors[kept], shares, kept
-        deviation = None if draws.deviations is None else draws.deviations[kept]
-        self.hazards = Hazards(
-            shape=draws.shapes[kept],
-            rate=draws.levels[kept][:, None] * self.factors,
-            early=draws.early_shares[kept],
-            early_until=draws.early_until,
-            scale=draws.scales[kept],
-            deviation=deviation,
-        )
         self.scale = np.broadcast_to(draws.scales[kept][:, None], self.factors.shape)
 
     def thinned(self, rows: int) -> _Lives:
@@ -180,8 +171,30 @@ class _Lives:
 
     def survival(self, ages: FloatArray) -> FloatArray:
         """(draws, sites, n) at ages (n,)."""
-        with np.errstate(over="ignore"):
-            return np.exp(-self.hazards.cumulative(np.asarray(ages)[None, None, :]))
+        return np.exp(-self.cumulative(np.asarray(ages)[None, None, :]))
+
+    def cumulative(self, ages: FloatArray, site: slice = slice(None)) -> FloatArray:
+        """-log S at ages (draws or 1, sites or 1, n): an early share fails evenly, the others live given survival."""
+        until, factors = self.draws.early_until, self.factors[:, site, None]
+        early = self.draws.early_shares[self.kept][:, None, None]
+        if not until:
+            return factors * self._unit(ages)
+        first = -np.log1p(-early * np.minimum(ages, until) / until)
+        late = self._unit(np.maximum(ages, until)) - self._unit(np.full((1, 1, 1), until))
+        found: FloatArray = first + factors * late
+        return found
+
+    def _unit(self, ages: FloatArray) -> FloatArray:
+        """Cumulative hazard of a site like the average, (draws, sites or 1, n)."""
+        scale, shape = (values[self.kept][:, None, None] for values in (self.draws.scales, self.draws.shapes))
+        with np.errstate(divide="ignore", over="ignore"):
+            logs = np.log(ages / scale)
+            weibull: FloatArray = np.exp(shape * logs)
+            if self.draws.deviations is None:
+                return weibull
+            deviation = self.draws.deviations[self.kept][:, None, None]
+            lognormal = -log_ndtr(-logs / np.where(deviation > 0, deviation, 1.0))
+        return np.where(deviation > 0, lognormal, weibull)
 
     def flat_survival(self, ages: FloatArray) -> FloatArray:
         alive = self.survival(ages)
@@ -205,16 +218,14 @@ class _Lives:
         low, high = np.log(self.scale) - 40.0, np.log(self.scale) + 60.0
         for _ in range(50):
             middle = (low + high) / 2.0
-            with np.errstate(over="ignore"):
-                over = self.hazards.cumulative(np.exp(middle)[:, :, None])[:, :, 0] > _TAIL
+            over = self.cumulative(np.exp(middle)[:, :, None])[:, :, 0] > _TAIL
             low, high = np.where(over, low, middle), np.where(over, middle, high)
         span = np.linspace(-30.0, 0.0, _TAIL_POINTS)
         total = np.zeros_like(low)
         # site by site: all at once would fill some hundred megabytes
         for site in range(low.shape[1]):
             ages = np.exp(high[:, site : site + 1, None] + span)
-            with np.errstate(over="ignore"):
-                alive = np.exp(-self.hazards.cumulative(ages, np.array([site])))
+            alive = np.exp(-self.cumulative(ages, slice(site, site + 1)))
             total[:, site] = np.trapezoid(alive * ages, dx=span[1] - span[0], axis=2)[:, 0]
         return total
 

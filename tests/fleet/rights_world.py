@@ -12,6 +12,7 @@ from django.urls import URLPattern, URLResolver, get_resolver
 
 from fleet.models import Finding, LooksWrong, Person, Reading, Redesign, Role, RolloutStep, Stop, Visit, Work
 from tests import factories as make
+from tests.reliability.kept_forecasts import make_kept_forecast
 
 # Pages of the framework's own static files are served to everybody.
 NOT_OURS = {"static"}
@@ -65,6 +66,7 @@ class Place:
         )
         self.redesign = Redesign.objects.create(code=f"R-{make.number()}")
         self.step = RolloutStep.objects.create(redesign=self.redesign, module=self.module, order=1)
+        self.kept = make_kept_forecast(component=carriage.nuts, made_by=carriage.manager, sites=[self.site])
         self.work = Work.objects.create(kind="import_records", person=carriage.manager)
 
     def record(self, kind: str) -> Any:
@@ -79,6 +81,10 @@ class Place:
         else:
             yield self.fill(route)
 
+    def key_of(self, route: Route) -> int:
+        keys = {"redesigns/": self.step.pk, "forecast/kept/": self.kept.pk}
+        return next((key for start, key in keys.items() if route.pattern.startswith(start)), self.mark.pk)
+
     def fill(self, route: Route, **given: Any) -> str:
         carriage = self.carriage
         codes = {
@@ -88,13 +94,14 @@ class Place:
             "catalogue/types": carriage.type.code,
             "people/": carriage.crew.code,
             "redesigns/": self.redesign.code,
+            "forecast/planned-replacement/": carriage.nuts.code,
         }
         values: dict[str, Any] = {
             "tag": self.module.code,
             "code": next((code for start, code in codes.items() if route.pattern.startswith(start)), None),
             "mode": carriage.worn.code,
             "position": carriage.nut.code,
-            "pk": self.step.pk if route.pattern.startswith("redesigns/") else self.mark.pk,
+            "pk": self.key_of(route),
             "work_id": self.work.pk,
             "uidb64": "MQ",
             "token": "none",

@@ -22,7 +22,7 @@ def manager(client: Client) -> Client:
 def test_it_says_how_many_how_sure_and_how_many_to_have(manager: Client) -> None:
     lived_fleet(12)
     page = manager.get("/forecast/").content.decode()
-    assert "will fail (80 of 100 such stretches:" in page
+    assert "will fail (80 of 100 quarters:" in page
     assert "is enough in 95 of 100" in page
     assert "They do not certify that any part is safe" in page
     for group in ("N2", "LOCK", "WEIR"):
