@@ -44,7 +44,7 @@ def _runs(span: SpanClock, removed_day: int | None, as_of: int) -> bool:
 def _module_row(loaded: Loaded, clocks: ModuleClocks, places: Places, clock: str, as_of: dt.date) -> Row:
     """Where the module stands on the day, and its clock on both sides of it."""
     day, record = as_of.toordinal(), loaded.record
-    place = bisect_right(clocks.knots, day, key=lambda knot: knot.day)
+    place = bisect_right(clocks.knots, float(day), key=lambda knot: knot.day)
     before = clocks.knots[place - 1] if place else None
     after = clocks.knots[place] if place < len(clocks.knots) else None
     stay = _stay_on(record.stays, day)
