@@ -24,13 +24,13 @@ from reliability.forecasts.backtest_quarter import (
     past_quarters,
 )
 from reliability.forecasts.backtest_summary import summed_up
+from reliability.forecasts.backtest_works import QUARTERS
 from reliability.forecasts.horizon import next_quarter
 from reliability.kept import key_of
 from reliability.lives_as_known import shared_records
 from reliability.models import KeptResult
 
 KIND, KIND_QUARTER = "backtest", "backtest quarter"
-QUARTERS, MOST_QUARTERS = 8, 40
 KEPT_FOR = dt.timedelta(days=120)
 Tell = Callable[[int, int, str], None]
 

@@ -8,12 +8,13 @@ from fleet.models import Component, Work
 from fleet.work import Progress, WorkFailed, work_kind
 
 ASKED, DUE = "backtest", "backtest_due"
+QUARTERS, MOST_QUARTERS = 8, 40
 
 
 @work_kind(ASKED)
 def judge_past_forecasts(work: Work, progress: Progress) -> dict[str, Any]:
     """The last quarters of one component, or of all; an earlier attempt's quarters are read, not judged again."""
-    from reliability.forecasts.backtest import QUARTERS, backtest
+    from reliability.forecasts.backtest import backtest
 
     code = work.arguments.get("component")
     components = list(Component.objects.all() if code is None else Component.objects.filter(code=code))

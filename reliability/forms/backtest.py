@@ -7,7 +7,7 @@ from typing import Any
 from django import forms
 
 from fleet.models import Component
-from reliability.forecasts.backtest import MOST_QUARTERS, QUARTERS
+from reliability.forecasts.backtest_works import MOST_QUARTERS, QUARTERS
 
 
 class BacktestForm(forms.Form):

@@ -10,16 +10,15 @@ from django.core.management.base import BaseCommand, CommandParser
 
 from fleet.models.codes import clean_code
 from reliability import forecast_words
+from reliability.forecasts.backtest_works import MOST_QUARTERS, QUARTERS
 from reliability.management.commands.forecast import chosen
-
-LONGEST = 40
 
 
 class Command(BaseCommand):
     help = "Judges the forecasts of past quarters by what happened, beside two plain rivals, and keeps the answer."
 
     def add_arguments(self, parser: CommandParser) -> None:
-        parser.add_argument("--quarters", type=quarters, default=8, help="how many past quarters (8)")
+        parser.add_argument("--quarters", type=quarters, default=QUARTERS, help=f"how many past quarters ({QUARTERS})")
         parser.add_argument("--component", type=clean_code, metavar="CODE", help="only this component")
         parser.add_argument("--json", action="store_true", help="one JSON document")
 
@@ -62,6 +61,6 @@ def lines_of(document: dict[str, Any]) -> list[str]:
 
 
 def quarters(text: str) -> int:
-    if not text.isdigit() or not 1 <= int(text) <= LONGEST:
-        raise ArgumentTypeError(f"“{text}” is no number of quarters. Write 1 to {LONGEST}.")
+    if not text.isdigit() or not 1 <= int(text) <= MOST_QUARTERS:
+        raise ArgumentTypeError(f"“{text}” is no number of quarters. Write 1 to {MOST_QUARTERS}.")
     return int(text)
