@@ -76,6 +76,26 @@ def day(text: str) -> dt.date:
     return value
 
 
+WEEK = re.compile(r"(\d{4})-?W(\d{2})\Z", re.IGNORECASE)
+
+
+def week(text: str) -> dt.date:
+    """The Monday of a week, from any day of it or from its number."""
+    numbered = WEEK.match(text)
+    if numbered is None and not DAY.match(MIDNIGHT.sub("", text)):
+        raise BadCell("is no week. Write any day of it, like 2026-03-09, or its number, like 2026-W11.")
+    if numbered is None:
+        value = day(text)
+        return value - dt.timedelta(days=value.weekday())
+    try:
+        value = dt.date.fromisocalendar(int(numbered[1]), int(numbered[2]), 1)
+    except ValueError:
+        raise BadCell("is a week that its year does not have. Check the number.") from None
+    if value.year < 1900:
+        raise BadCell("lies before 1900. Check the year.")
+    return value
+
+
 def instant(text: str) -> dt.datetime:
     """With its offset, or naive: then in the site's zone. A bare day is its noon."""
     if not INSTANT.match(text):

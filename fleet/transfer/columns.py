@@ -15,9 +15,6 @@ if TYPE_CHECKING:
     from fleet.transfer.known import Known
     from fleet.transfer.row import Row
 
-# Files of features that this version does not have.
-NOT_KEPT = {"stores", "moves", "supply", "bench", "hours", "capacity"}
-
 
 @dataclass(frozen=True)
 class Column:

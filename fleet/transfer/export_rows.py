@@ -2,22 +2,17 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
+from collections.abc import Callable
 from typing import Any
 from zoneinfo import ZoneInfo
 
-from django.db.models import Case, F, QuerySet, Value, When
+from django.db.models import Case, F, Value, When
 
 from fleet.models import Book, Component, FailureMode, ModuleType, Part, Person, Position, SetLife, Site
 from fleet.models.zones import zone
+from fleet.transfer.export_stock import bench, capacity, hours, moves, stores, supply
+from fleet.transfer.plain_rows import Rows, plain
 from fleet.transfer.scope import Scope
-
-CHUNK = 5000
-Rows = Iterator[tuple[Any, ...]]
-
-
-def plain(query: QuerySet[Any], *columns: Any) -> Rows:
-    return query.values_list(*columns).iterator(chunk_size=CHUNK)
 
 
 def sites(scope: Scope) -> Rows:
@@ -122,6 +117,11 @@ def standing_visit(path: str, scope: Scope) -> Any:
     return Case(When(**limits, then=F(f"{path}__code")))
 
 
+def seen_job(scope: Scope) -> Any:
+    """The job's code, where the job goes out too."""
+    return Case(When(job__in=scope.jobs().values("pk"), then=F("job__code")))
+
+
 def fittings(scope: Scope) -> Rows:
     query = scope.fittings().order_by(
         "module__code_order", "position__order", "position__code_order", "fitted_on", "pk"
@@ -129,13 +129,12 @@ def fittings(scope: Scope) -> Rows:
     cause: Any = "caused_by__code"
     if scope.sites is not None:
         cause = Case(When(caused_by__in=scope.fittings().values("pk"), then=F("caused_by__code")))
-    for row in plain(
+    yield from plain(
         query, "code", "module__code", "position__code", "part__code", "serial", "lot", "fitted_on", "age_at_fit",
         "strokes_at_fit", "hours_at_fit", standing_visit("fitted_visit", scope), "fitted_known_on", "failed_on",
         "removed_on", "strokes_at_removal", "hours_at_removal", "reason", "mode__code", "found_by", "last_good_on",
-        cause, standing_visit("removed_visit", scope), "removed_known_on", "struck_out", "note",
-    ):  # fmt: skip
-        yield *row[:23], None, *row[23:]  # no bench jobs in this version
+        cause, standing_visit("removed_visit", scope), "removed_known_on", seen_job(scope), "struck_out", "note",
+    )  # fmt: skip
 
 
 def findings(scope: Scope) -> Rows:
@@ -182,12 +181,18 @@ ROWS: dict[str, Callable[[Scope], Rows]] = {
     "types": types,
     "positions": positions,
     "parts": parts,
+    "stores": stores,
+    "supply": supply,
+    "capacity": capacity,
     "modules": modules,
     "placements": placements,
+    "bench": bench,
+    "hours": hours,
     "visits": visits,
     "fittings": fittings,
     "findings": findings,
     "stops": stops,
     "readings": readings,
+    "moves": moves,
     "lives": lives,
 }

@@ -11,8 +11,9 @@ from django.db import transaction
 from fleet.models import DataVersion, Fitting, Person, Work
 from fleet.rights import PEOPLE, may
 from fleet.transfer.checks import check_overlaps
+from fleet.transfer.checks_jobs import check_jobs_keep_their_stays
 from fleet.transfer.checks_readings import check_readings, name_counters
-from fleet.transfer.columns import NOT_KEPT, FileKind
+from fleet.transfer.columns import FileKind
 from fleet.transfer.holding import pause, sweep, sweep_leftovers, without_constraints
 from fleet.transfer.job import Job
 from fleet.transfer.kinds import ALL_KINDS, BY_NAME, PLACEMENTS
@@ -20,6 +21,7 @@ from fleet.transfer.known import Known
 from fleet.transfer.lives import check_sets
 from fleet.transfer.made_visits import make_visits
 from fleet.transfer.matching import compare, find_repeats, match
+from fleet.transfer.orders import check_orders, drop_unused
 from fleet.transfer.problems import Problems, Unreadable
 from fleet.transfer.reading import stage_file
 from fleet.transfer.references import check_causes, check_supersession
@@ -27,6 +29,7 @@ from fleet.transfer.refresh import refresh
 from fleet.transfer.signature import note_touched_modules, signature
 from fleet.transfer.sources import Table
 from fleet.transfer.staging import drop_stages, fetch, value_of
+from fleet.transfer.stock import check_hours, check_moves, check_received
 from fleet.transfer.storing import BookChanged, Store
 from fleet.work import Progress
 
@@ -121,9 +124,7 @@ def sorted_tables(tables: list[Table], job: Job) -> list[tuple[FileKind, Table]]
     """In the order in which files refer to each other; what is no records file is an error."""
     chosen: dict[str, Table] = {}
     for table in tables:
-        if table.name in NOT_KEPT:
-            job.problems.add(table.file, 0, "", "", "is not kept by this version. Leave the file out.")
-        elif table.name not in BY_NAME:
+        if table.name not in BY_NAME:
             known = ", ".join(kind.name for kind in ALL_KINDS)
             job.problems.add(table.file, 0, "", "", f"is no records file. Name it as one of: {known}; or leave it out.")
         elif table.name == "people" and job.person is not None and not may(job.person, PEOPLE):
@@ -153,6 +154,7 @@ def check_together(job: Job) -> None:
             check_supersession(kind, job)
         elif kind.name == "placements":
             check_overlaps(kind, ["module_id"], "from_on", "to_on", "another stay of this module", job)
+            check_jobs_keep_their_stays(kind, job)
         elif kind.name == "fittings":
             check_causes(kind, job)
             same = ["module_id", "position_id"]
@@ -161,6 +163,17 @@ def check_together(job: Job) -> None:
             check_overlaps(kind, ["module_id"], "stopped_at", "running_at", "another stop of this module", job)
         elif kind.name == "readings":
             check_readings(kind, job)
+        elif kind.name == "supply":
+            check_orders(kind, job)
+            drop_unused(job)
+            if not any(other.name == "moves" for other in job.kinds):
+                check_received(job)
+        elif kind.name == "bench":
+            check_overlaps(kind, ["module_id"], "received_on", "finished_on", "another job of this module", job)
+        elif kind.name == "hours":
+            check_hours(kind, job)
+        elif kind.name == "moves":
+            check_moves(kind, job)
         elif kind.name == "lives":
             check_sets(kind, job)
         compare(kind, job)

@@ -43,6 +43,7 @@ class Job:
     rows_done: int = 0
     rows_total: int = 0
     message: str = ""
+    changed_orders: dict[int, tuple[Any, Any]] = field(default_factory=dict)  # supplier and day of orders of the book
 
     def say(self, kind: FileKind, row: int, column: str, value: Any, message: str) -> None:
         self.problems.add(self.reports[kind.name].file, row, column, value, message)

@@ -15,6 +15,7 @@ from django.db import connection
 from django.utils import timezone
 
 from fleet.models import (
+    BenchJob,
     Book,
     Component,
     FailureMode,
@@ -26,6 +27,9 @@ from fleet.models import (
     Placement,
     Position,
     Site,
+    Store,
+    SupplyLine,
+    SupplyOrder,
     Visit,
 )
 from fleet.models.zones import zone
@@ -66,6 +70,25 @@ class KnownVisit(NamedTuple):
     module: int
     happened_on: dt.date
     struck_out: str
+
+
+class KnownJob(NamedTuple):
+    id: int
+    module: int
+    received_on: dt.date
+    finished_on: dt.date | None
+    depot: int
+
+
+class KnownOrder(NamedTuple):
+    id: int
+    supplier: str
+    ordered_on: dt.date
+
+
+class KnownLine(NamedTuple):
+    id: int
+    ordered_on: dt.date
 
 
 @dataclass(frozen=True, slots=True)
@@ -111,6 +134,23 @@ class Known:
         }
         self.life_sets = dict(LifeSet.objects.values_list("code", "pk"))
         self.new_life_sets: dict[str, int] = {}
+        self.stores = dict(Store.objects.values_list("code", "pk"))
+        self.jobs = {
+            row[0]: KnownJob(*row[1:])
+            for row in BenchJob.objects.standing().values_list(
+                "code", "pk", "module_id", "received_on", "finished_on", "depot_id"
+            )
+        }
+        self.jobs_by_id = {job.id: job for job in self.jobs.values()}
+        self.orders = {
+            row[0]: KnownOrder(*row[1:])
+            for row in SupplyOrder.objects.values_list("code", "pk", "supplier", "ordered_on")
+        }
+        self.new_orders: dict[str, KnownOrder] = {}
+        self.lines = {
+            (order, part): pk
+            for pk, order, part in SupplyLine.objects.standing().values_list("pk", "order_id", "part_id")
+        }
         self.stays: dict[int, list[Stay]] = {}
         self.stays_loaded = False
         self.visits: dict[str, KnownVisit] = {}
@@ -127,6 +167,21 @@ class Known:
         if len(self._modules_by_id) != len(self.modules):
             self._modules_by_id = {module.id: module for module in self.modules.values()}
         return self._modules_by_id.get(pk)
+
+    def job_by_id(self, pk: int) -> KnownJob | None:
+        return self.jobs_by_id.get(pk)
+
+    def order(self, code: str, supplier: str, ordered_on: dt.date) -> KnownOrder:
+        """The order of the book, or the one that an earlier line of the file made."""
+        found = self.orders.get(code) or self.new_orders.get(code)
+        if found is None:
+            found = self.new_orders[code] = KnownOrder(-1 - len(self.new_orders), supplier, ordered_on)
+        return found
+
+    def line(self, code: str, part: int) -> KnownLine | None:
+        order = self.orders.get(code) or self.new_orders.get(code)
+        pk = self.lines.get((order.id, part)) if order is not None else None
+        return KnownLine(pk, order.ordered_on) if order is not None and pk is not None else None
 
     # --- days and instants
 

@@ -11,11 +11,23 @@ from fleet.models.codes import CODE_LENGTH, natural_key
 from fleet.transfer.cells import NOON, utc_text
 from fleet.transfer.job import FileReport, Job
 from fleet.transfer.kinds import FITTINGS, VISITS
-from fleet.transfer.staging import analyse, as_day, create_stage, fetch, fill, index_stage, run, value_of
+from fleet.transfer.staging import (
+    analyse,
+    as_day,
+    create_stage,
+    fetch,
+    fill,
+    index_stage,
+    run,
+    stage_exists,
+    value_of,
+)
 
 WITHOUT = """
 SELECT module_id, {day} AS day, MIN({known}) AS known FROM stage_fittings
 WHERE (id < 0 OR differs = 1) AND bad = 0 AND struck_out = '' AND {day} IS NOT NULL AND {visit} IS NULL
+AND NOT (job_id IS NOT NULL AND EXISTS (SELECT 1 FROM bench_days WHERE bench_days.module_id = stage_fittings.module_id
+    AND {day} >= received_on AND {day} <= finished_on))
 GROUP BY module_id, {day}
 """
 FITTED = WITHOUT.format(day="fitted_on", known="fitted_known_on", visit="fitted_visit_id")
@@ -37,6 +49,8 @@ TAKE = """
 UPDATE stage_fittings SET {visit} = (
     SELECT visit_id FROM visit_days WHERE visit_days.module_id = stage_fittings.module_id AND visit_days.day = {day}
 ) WHERE (id < 0 OR differs = 1) AND bad = 0 AND struck_out = '' AND {day} IS NOT NULL AND {visit} IS NULL
+AND NOT (job_id IS NOT NULL AND EXISTS (SELECT 1 FROM bench_days WHERE bench_days.module_id = stage_fittings.module_id
+    AND {day} >= received_on AND {day} <= finished_on))
 """
 BATCH = 5000
 
@@ -51,6 +65,7 @@ def make_visits(job: Job) -> None:
     index_stage(FITTINGS, "module_id", "fitted_on")
     index_stage(FITTINGS, "module_id", "removed_on")
     analyse(VISITS)
+    note_bench_days()
     run("DROP TABLE IF EXISTS visit_days")
     run(DAYS)
     run("CREATE INDEX visit_days_place ON visit_days (module_id, day)")
@@ -59,6 +74,17 @@ def make_visits(job: Job) -> None:
         run(TAKE.format(visit=visit, day=day))
     analyse(VISITS)
     analyse(FITTINGS)
+
+
+def note_bench_days() -> None:
+    """What was changed during a bench job belongs to the job: no visit is made for it."""
+    run("DROP TABLE IF EXISTS bench_days")
+    job = "SELECT module_id, received_on, COALESCE(finished_on, '9999-12-31') AS finished_on FROM"
+    staged = f"UNION ALL {job} stage_bench WHERE bad = 0" if stage_exists("stage_bench") else ""
+    named = "WHERE struck_out = '' AND id IN (SELECT job_id FROM stage_fittings WHERE job_id > 0)"
+    modules = "OR struck_out = '' AND module_id IN (SELECT module_id FROM stage_fittings WHERE job_id IS NOT NULL)"
+    run(f"CREATE TEMPORARY TABLE bench_days AS {job} fleet_benchjob {named} {modules} {staged}")
+    run("CREATE INDEX bench_days_place ON bench_days (module_id, received_on)")
 
 
 def add_missing(job: Job) -> None:

@@ -58,7 +58,7 @@ def match(kind: FileKind, job: Job) -> None:
         else f'book."{name}" = {kind.stage}."{name}"'
         for name in kind.key
     ]
-    if strikeable(kind) and not named_struck(kind) and kind.name != "visits":
+    if strikeable(kind) and not named_struck(kind) and kind.key != ("code",):
         same.append("book.struck_out = ''")
     run(f"UPDATE {kind.stage} SET id = book.id FROM {kind.table} AS book WHERE {' AND '.join(same)}")
     index_stage(kind, "id")
@@ -176,10 +176,14 @@ def readable(kind: FileKind, name: str, value: Any, job: Job) -> str:
     related: Any = column.related_model
     if value < 0:
         return new_code(related._meta.db_table, value, job)
+    if not hasattr(related, "code"):
+        return str(related._default_manager.filter(pk=value).first() or value)
     return str(related._default_manager.filter(pk=value).values_list("code", flat=True).first() or value)
 
 
 def new_code(table: str, number: int, job: Job) -> str:
     """The code of a record that comes with the files."""
     kind = next(kind for kind in job.kinds if kind.table == table)
+    if "code" not in kind.staged:
+        return f"a new {kind.noun}"
     return str(fetch(f"SELECT code FROM {kind.stage} WHERE row = %s", [-number])[0][0])

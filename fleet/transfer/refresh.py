@@ -6,7 +6,7 @@ from collections.abc import Callable
 from typing import Any
 
 from fleet.transfer.columns import FileKind
-from fleet.transfer.known import UNCLEAR, Known, KnownModule, KnownPart, KnownPosition, KnownSite
+from fleet.transfer.known import UNCLEAR, Known, KnownJob, KnownModule, KnownPart, KnownPosition, KnownSite
 from fleet.transfer.staging import as_day, fetch
 
 
@@ -69,6 +69,29 @@ def placements(kind: FileKind, known: Known) -> None:
     known.load_stays([(m, s, day(a), day(b)) for _, m, s, a, b in staged], matched)
 
 
+def stores(kind: FileKind, known: Known) -> None:
+    known.stores.update(rows(kind, "code", "id"))
+
+
+def supply(kind: FileKind, known: Known) -> None:
+    for pk, order, part in fetch(f"SELECT id, order_id, part_id FROM {kind.stage} ORDER BY row DESC"):
+        if order is not None and part is not None:
+            known.lines[order, part] = pk
+    said = fetch(f"SELECT order_id, ordered_on FROM {kind.stage} WHERE order_id > 0")
+    days = {order: day(ordered_on) for order, ordered_on in said}
+    known.orders = {
+        code: each._replace(ordered_on=days.get(each.id, each.ordered_on)) for code, each in known.orders.items()
+    }
+
+
+def bench(kind: FileKind, known: Known) -> None:
+    columns = ("code", "id", "module_id", "received_on", "finished_on", "depot_id")
+    for code, pk, module, received, finished, depot in rows(kind, *columns):
+        if received is not None:
+            known.jobs[code] = KnownJob(pk, module or UNCLEAR, day(received), day(finished), depot or UNCLEAR)
+            known.jobs_by_id[pk] = known.jobs[code]
+
+
 READERS: dict[str, Callable[[FileKind, Known], None]] = {
     "sites": sites,
     "people": people,
@@ -79,4 +102,7 @@ READERS: dict[str, Callable[[FileKind, Known], None]] = {
     "parts": parts,
     "modules": modules,
     "placements": placements,
+    "stores": stores,
+    "supply": supply,
+    "bench": bench,
 }

@@ -7,8 +7,24 @@ from typing import Any
 
 from django.db.models import Exists, OuterRef, Q, QuerySet
 
-from fleet.models import Finding, Fitting, Module, Person, Placement, Reading, Site, Stop, Visit
-from fleet.rights import COSTS, PEOPLE, may
+from fleet.models import (
+    BenchCapacity,
+    BenchHours,
+    BenchJob,
+    Finding,
+    Fitting,
+    Module,
+    Person,
+    Placement,
+    Reading,
+    Site,
+    StockMove,
+    Stop,
+    Store,
+    SupplyLine,
+    Visit,
+)
+from fleet.rights import BENCH, COSTS, PEOPLE, STOCK, STORES, may
 
 
 @dataclass(frozen=True)
@@ -18,6 +34,9 @@ class Scope:
     sites: frozenset[int] | None = None
     costs: bool = True
     all_people: bool = True
+    stock: bool = True  # stores and what lies there
+    orders: bool = True
+    bench: bool = True
 
     @property
     def everywhere(self) -> bool:
@@ -62,11 +81,44 @@ class Scope:
             Exists(here.filter(begun)) | Exists(here.filter(from_on__lte=OuterRef("fitted_on")))
         )
 
+    def moves(self) -> QuerySet[StockMove]:
+        rows = StockMove.objects.standing() if self.stock else StockMove.objects.none()
+        if self.sites is None:
+            return rows
+        return rows.filter(Q(store__site__in=self.sites) | Q(other_store__site__in=self.sites))
+
+    def stores(self) -> QuerySet[Store]:
+        """Those at the sites, and the other ends of their moves: without these a transfer would lead nowhere."""
+        rows = Store.objects.all() if self.stock else Store.objects.none()
+        if self.sites is None:
+            return rows
+        moves = self.moves()
+        ends = Q(pk__in=moves.values("store")) | Q(pk__in=moves.exclude(other_store=None).values("other_store"))
+        return rows.filter(Q(site__in=self.sites) | ends)
+
+    def supply(self) -> QuerySet[SupplyLine]:
+        """Everywhere all of it; of some sites what came to their stores."""
+        rows = SupplyLine.objects.standing() if self.orders else SupplyLine.objects.none()
+        if self.sites is None:
+            return rows
+        return rows.filter(pk__in=self.moves().exclude(line=None).values("line"))
+
+    def jobs(self) -> QuerySet[BenchJob]:
+        rows = BenchJob.objects.standing() if self.bench else BenchJob.objects.none()
+        return self.rows(rows, "depot").filter(module__in=self.modules())
+
+    def hours(self) -> QuerySet[BenchHours]:
+        return BenchHours.objects.standing().filter(job__in=self.jobs())
+
+    def capacity(self) -> QuerySet[BenchCapacity]:
+        return BenchCapacity.objects.all() if self.bench and self.everywhere else BenchCapacity.objects.none()
+
     def people(self) -> QuerySet[Person]:
         """Everybody for a manager; else those whom the records name."""
         if self.all_people and self.everywhere:
             return Person.objects.all()
         named = Q(pk__in=self.visits().values("crew")) | Q(pk__in=self.stops().values("reported_by"))
+        named |= Q(pk__in=self.stores().values("person")) | Q(pk__in=self.hours().values("person"))
         if self.all_people:
             named |= Q(pk__in=Person.sites.through.objects.filter(site__in=self.sites or ()).values("person"))
         return Person.objects.filter(named)
@@ -82,4 +134,11 @@ def scope_of(person: Person | None, site: Site | None = None) -> Scope:
         seen = frozenset(
             own.filter(pk=site.pk).values_list("pk", flat=True) if site else own.values_list("pk", flat=True)
         )
-    return Scope(seen, costs=may(person, COSTS), all_people=may(person, PEOPLE))
+    return Scope(
+        seen,
+        costs=may(person, COSTS),
+        all_people=may(person, PEOPLE),
+        stock=may(person, STORES),
+        orders=may(person, STOCK),
+        bench=may(person, BENCH),
+    )

@@ -7,6 +7,9 @@ from typing import Any
 from django.db import connection
 
 from fleet.models import (
+    BenchCapacity,
+    BenchHours,
+    BenchJob,
     Component,
     FailureMode,
     Fitting,
@@ -20,14 +23,19 @@ from fleet.models import (
     Reading,
     Site,
     Stop,
+    Store,
+    SupplyLine,
+    SupplyOrder,
     Visit,
 )
 from fleet.transfer.columns import FileKind
 from fleet.transfer.staging import fetch, on_sqlite, run
+from fleet.transfer.stock import hold_stock_still, note_touched_stock, stock_signature
 
-CATALOGUE = [Person, Site, Component, FailureMode, ModuleType, Position, Part, Module]
-OF_MODULES = [Placement, Visit, Fitting, Stop]
-OWN = {"placements", "visits", "fittings", "stops", "readings"}
+CATALOGUE = [Person, Site, Component, FailureMode, ModuleType, Position, Part, Module, Store]
+SUPPLY = [SupplyOrder, SupplyLine, BenchCapacity, BenchHours]
+OF_MODULES = [Placement, Visit, Fitting, Stop, BenchJob]
+OWN = {"placements", "visits", "fittings", "stops", "readings", "bench"}
 Ranges = dict[str, tuple[int, int]]
 
 
@@ -41,19 +49,21 @@ def note_touched_modules(kinds: list[FileKind]) -> None:
                 f"INSERT INTO touched_modules SELECT DISTINCT module_id FROM {kind.stage} "
                 "WHERE module_id > 0 AND module_id NOT IN (SELECT id FROM touched_modules)"
             )
+    note_touched_stock(kinds)
 
 
 def signature(own: Ranges | None = None) -> list[Any]:
     """Counts and versions of the catalogue and of the touched modules' records, without rows of this import."""
     own = own or {}
     parts: list[Any] = []
-    for model in CATALOGUE:
+    for model in [*CATALOGUE, *SUPPLY]:
         parts += of_others(model._meta.db_table, "COALESCE(SUM(version), 0)", own)
     parts += of_others(LifeSet._meta.db_table, "0", own)
     touched = "module_id IN (SELECT id FROM touched_modules)"
     for model in OF_MODULES:
         parts += of_others(model._meta.db_table, "COALESCE(SUM(version), 0)", own, touched)
     parts += of_others(Reading._meta.db_table, "COUNT(NULLIF(struck_out, ''))", own, touched)
+    parts += stock_signature()
     return [[int(each) for each in row] for row in parts]
 
 
@@ -66,6 +76,7 @@ def hold_still() -> None:
     """On PostgreSQL nobody changes the catalogue or these modules until the commit; SQLite has one writer anyway."""
     if on_sqlite():
         return
-    tables = ", ".join(connection.ops.quote_name(model._meta.db_table) for model in CATALOGUE)
+    tables = ", ".join(connection.ops.quote_name(model._meta.db_table) for model in [*CATALOGUE, *SUPPLY])
     run(f"LOCK TABLE {tables} IN SHARE ROW EXCLUSIVE MODE")
     run("SELECT id FROM fleet_module WHERE id IN (SELECT id FROM touched_modules) ORDER BY id FOR NO KEY UPDATE")
+    hold_stock_still()

@@ -53,7 +53,7 @@ def as_day(value: Any) -> dt.date:
 
 
 def drop_stages(kinds: Sequence[FileKind]) -> None:
-    for name in [*(kind.stage for kind in kinds), "touched_modules", "visit_days"]:
+    for name in [*(kind.stage for kind in kinds), "touched_modules", "touched_stock", "visit_days"]:
         run(f"DROP TABLE IF EXISTS {temporary(name)}")
 
 

@@ -13,9 +13,11 @@ from fleet.transfer.columns import FileKind
 from fleet.transfer.holding import hold_rows, let_stand, sweep, waits, without_constraints, write_history
 from fleet.transfer.job import Job
 from fleet.transfer.link_rows import write_links
+from fleet.transfer.orders import ORDERS, write_orders
 from fleet.transfer.reserve import reserve
 from fleet.transfer.signature import hold_still, signature
 from fleet.transfer.staging import fetch, on_sqlite, run, value_of
+from fleet.transfer.stock import write_balances
 from fleet.transfer.writing_sql import (
     LIFE_SETS,
     Numbers,
@@ -57,6 +59,10 @@ class Store:
         for kind in self.job.kinds:
             if self.last_rows[kind.name]:
                 self.numbers.base[kind.table] = reserve(kind.table, self.last_rows[kind.name])
+        new_orders = self.job.known.new_orders
+        if new_orders:
+            most = -min(order.id for order in new_orders.values())
+            self.numbers.base[ORDERS] = reserve(ORDERS, most)
         new_sets = self.job.known.new_life_sets
         if new_sets:
             self.numbers.base[LIFE_SETS] = reserve(LIFE_SETS, len(new_sets))
@@ -88,6 +94,7 @@ class Store:
             for kind in updated:
                 self.write_update(kind)
         self.add_life_sets()
+        write_orders(self.job, self.numbers)
         for kind in self.job.kinds:
             if kind not in held and self.last_rows[kind.name]:
                 self.add_rows(kind)
@@ -99,6 +106,8 @@ class Store:
         for kind in self.job.kinds:
             if "linked" in kind.extra:
                 write_links(kind, self.job.known, self.numbers)
+            if kind.name == "moves":
+                write_balances(kind, self.last_rows[kind.name], self.numbers)
         DataVersion.raise_version()
         # A worker that dies from here on leaves nothing to do but the clocks.
         self.job.progress.keep(self.report | {"stored": True, "touched": self.touched})
@@ -112,12 +121,16 @@ class Store:
             for kind in self.job.kinds
             if self.last_rows[kind.name]
         }
-        if signature(own | self.new_life_sets()) != self.seen:
+        if signature(own | self.new_life_sets() | self.new_orders()) != self.seen:
             raise BookChanged
 
     def new_life_sets(self) -> dict[str, tuple[int, int]]:
         base = self.numbers.base.get(LIFE_SETS, 0)
         return {LIFE_SETS: (base, base + len(self.job.known.new_life_sets))}
+
+    def new_orders(self) -> dict[str, tuple[int, int]]:
+        base = self.numbers.base.get(ORDERS, 0)
+        return {ORDERS: (base, base - min((each.id for each in self.job.known.new_orders.values()), default=0))}
 
     def add_rows(self, kind: FileKind) -> None:
         statement, params = insert_statement(kind, self.numbers, waiting=False)
@@ -148,7 +161,7 @@ class Store:
         base = self.numbers.base.get("fleet_module", 0)
         for kind in self.job.kinds:
             changed = f"FROM {kind.stage} WHERE id < 0 OR differs = 1"
-            if kind.name in {"placements", "visits", "fittings", "stops", "readings"}:
+            if kind.name in {"placements", "visits", "fittings", "stops", "readings"}:  # a job alone moves no clock
                 found |= {each for (each,) in fetch(f"SELECT DISTINCT module_id {changed}")}
             elif kind.name == "modules":
                 found |= {each for (each,) in fetch(f"SELECT id {changed}")}

@@ -41,8 +41,9 @@ def finish(row: Row, known: Known) -> None:
     else:
         settle_known_on(row, known, "removed_known_on", "removed_known_on", row["removed_on"])
         check_removal(row)
-    if row.values.pop("job", None):
-        row.say("job", "names a bench job, and this version keeps none. Leave it empty.")
+    job = known.job_by_id(row["job_id"]) if row["job_id"] is not None else None
+    if job is not None and module is not None and job.module != module.id:
+        row.say("job", "was of another module. Name one of this module, or leave it empty.")
 
 
 def check_part(row: Row, known: Known, component: int | None, module: KnownModule | None) -> None:
@@ -115,7 +116,7 @@ FITTINGS = FileKind(
         Column("caused_by", "caused_by_code", cells.code),
         Column("removed_visit", "removed_visit_code", cells.code),
         Column("removed_known_on", "removed_known_on", cells.day),
-        Column("job", "job", cells.text_up_to(60)),
+        Column("job", "job_id", cells.code, refers="job"),
         Column("struck_out", "struck_out", cells.text_up_to(500), empty=""),
         Column("note", "note", cells.text_up_to(4000), empty=""),
     ),

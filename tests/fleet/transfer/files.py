@@ -82,9 +82,51 @@ CAGE,NUT,,200,no,50,,5,,hours
 CAGE,NUT,,200,no,50,,5,,hours""",
 }
 
+# The same fleet with a bench at the shed, its shelf, and Anna's van.
+STOCKED = {
+    "stores": """
+store,name,site,person,may_go_below_zero
+SHELF,Shelf in the shed,SHED,,
+VAN-A,Van of Anna,,ANNA,yes""",
+    "supply": """
+order,part,quantity,ordered_on,due_on,supplier,unit_cost
+PO-1,N-1,10,2024-02-01,2024-02-20,Brandt,11.50
+PO-1,S-1,2,2024-02-01,,Brandt,
+PO-2,N-1,5,2024-05-02,2024-06-02,Brandt,""",
+    "bench": """
+job,module,depot,reason,received_on,stage,started_on,finished_on,outcome,note
+J-1,K-9,SHED,screw bowed,2024-06-01,,2024-06-03,2024-06-28,ready,""",
+    "hours": """
+job,person,day,hours
+J-1,MAX,2024-06-03,2.5
+J-1,MAX,2024-06-04,1""",
+    "capacity": """
+week,hours
+2024-06-03,40
+2024-W24,32""",
+    "moves": """
+move,store,part,happened_on,quantity,kind,other_store,visit,job,order,condition,reason
+SM-1,SHELF,N-1,2024-02-18,6,receipt,,,,PO-1,,
+SM-2,SHELF,N-1,2024-03-05,4,receipt,,,,PO-1,,
+SM-3,SHELF,S-1,2024-02-18,2,receipt,,,,PO-1,new,
+SM-4,SHELF,N-1,2024-02-19,-2,transfer,VAN-A,,,,,
+SM-5,VAN-A,N-1,2024-03-01,-1,issue,,V-1,,,,
+SM-6,SHELF,S-1,2024-06-03,-1,issue,,,J-1,,,
+SM-7,SHELF,N-1,2024-07-01,-1,count,,,,,,one missing
+SM-8,SHELF,N-1,2024-07-02,1,receipt,,,,,used,from K-10
+SM-9,SHELF,N-1,2024-07-03,-1,scrap,,,,,,dropped""",
+}
+
 
 def text(name: str) -> str:
-    return FLEET[name].strip() + "\n"
+    return (FLEET | STOCKED)[name].strip() + "\n"
+
+
+def stocked(**changed: str | bytes | None) -> dict[str, str | bytes]:
+    """The small fleet with its stores and its bench; K-9 got a new screw on the bench."""
+    more = {name: text(name) for name in STOCKED}
+    fittings = with_cell("fittings", 2, "job", "") + "F-5,K-9,S1,S-1,2024-06-03,,,,,,,J-1\n"
+    return fleet(**{**more, "fittings": fittings, **changed})
 
 
 def zipped(files: Mapping[str, str | bytes]) -> bytes:

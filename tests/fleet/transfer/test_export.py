@@ -19,8 +19,9 @@ from tests import factories as make
 from tests.fleet.transfer.files import bring_in, fleet, text, with_cell
 
 pytestmark = pytest.mark.django_db
-TABLES = ["sites", "people", "components", "modes", "types", "positions", "parts", "modules", "placements", "visits",
-          "fittings", "findings", "stops", "readings", "lives"]  # fmt: skip
+TABLES = ["sites", "people", "components", "modes", "types", "positions", "parts", "stores", "supply", "capacity",
+          "modules", "placements", "bench", "hours", "visits", "fittings", "findings", "stops", "readings", "moves",
+          "lives"]  # fmt: skip
 
 
 def exported(tmp_path: Path, name: str = "out.zip", scope: Scope | None = None) -> dict[str, list[dict[str, str]]]:

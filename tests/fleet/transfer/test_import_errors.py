@@ -79,7 +79,7 @@ BAD_CELLS = [
     ("fittings", 2, "caused_by", "F-3", "taken with another"),
     ("fittings", 2, "strokes_at_fit", "6000", "below strokes_at_fit"),
     ("fittings", 2, "age_at_fit", "-1", "out of range"),
-    ("fittings", 2, "job", "J-1", "this version keeps none"),
+    ("fittings", 2, "job", "J-1", "neither in the files nor in the book"),
     ("fittings", 3, "fitted_on", "2024-02-01", "overlaps another part in this position"),
     ("findings", 2, "finding", "broken", "failed, adjusted, cleaned, nothing found"),
     ("findings", 2, "position", "N7", "no position of this module's type"),
@@ -234,11 +234,11 @@ def test_a_note_is_allowed_everywhere() -> None:
     assert problems(look(fleet(sites=with_cell("sites", 2, "note", "by the road")))) == []
 
 
-def test_files_of_later_versions_and_strange_files() -> None:
-    found = problems(look(fleet(stores="store\nMAIN\n", shopping="what\nbread\n")))
+def test_strange_files() -> None:
+    found = problems(look(fleet(shopping="what\nbread\n")))
 
-    assert (found[0][0], found[0][3]) == ("stores.csv", "is not kept by this version. Leave the file out.")
-    assert "is no records file" in found[1][3]
+    assert found[0][0] == "shopping.csv"
+    assert "is no records file" in found[0][3]
 
 
 def test_a_cell_beyond_the_header() -> None:
