@@ -16,7 +16,7 @@ from reliability.fleet_lives import LifeRow
 from reliability.life_rules import Facts, Point, Rules, tell
 
 MODULES_AT_ONCE = 400
-MOST_SHARED = 20_000  # modules whose clocks are held in memory at once
+MOST_SHARED = 5_000  # modules, each on one day, whose clocks are held in memory at once
 
 Clocks = tuple[Loaded, ModuleClocks]
 _shared: ContextVar[dict[tuple[dt.date, int], Clocks] | None] = ContextVar("shared records", default=None)
@@ -59,9 +59,10 @@ def modules_as_known(module_ids: Iterable[int], known_on: dt.date) -> Iterator[C
     if shared is None or len(keys) > MOST_SHARED:
         yield from _made(keys, known_on)
         return
-    if any(day != known_on for day, _ in shared) or len(shared) + len(keys) > MOST_SHARED:
-        shared.clear()
     missing = [key for key in keys if (known_on, key) not in shared]
+    if len(shared) + len(missing) > MOST_SHARED:
+        shared.clear()
+        missing = keys
     shared.update(((known_on, each[0].record.module), each) for each in _made(missing, known_on))
     yield from (shared[known_on, key] for key in keys if (known_on, key) in shared)
 

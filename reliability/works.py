@@ -1,7 +1,7 @@
 """The kinds of background work on estimates, found here by their registry."""
 
-from reliability.forecasts.backtest_works import judge_past_forecasts, judge_what_is_due
+from reliability.forecasts.backtest_works import expect_failures, judge_past_forecasts, judge_what_is_due
 from reliability.forecasts.works import count_forecasts
 from reliability.life_works import fit_lives
 
-__all__ = ["count_forecasts", "fit_lives", "judge_past_forecasts", "judge_what_is_due"]
+__all__ = ["count_forecasts", "expect_failures", "fit_lives", "judge_past_forecasts", "judge_what_is_due"]

@@ -33,3 +33,19 @@ def judge_what_is_due(work: Work, progress: Progress) -> dict[str, Any]:
     due = [component for component in Component.objects.all() if is_due(component)]
     documents = backtest(due, since=work.made_at, tell=progress.step) if due else []
     return {"components": [each["component"] for each in documents]}
+
+
+@work_kind("expect_failures", daily="Counting what is to be expected now")
+def expect_failures(work: Work, progress: Progress) -> dict[str, Any]:
+    """This week and this quarter of every component, as Today compares them."""
+    from django.utils import timezone
+
+    from reliability.forecasts.expected_now import keep_expected
+    from reliability.lives_as_known import shared_records
+
+    components, today = list(Component.objects.all()), timezone.localdate()
+    with shared_records():
+        for place, component in enumerate(components):
+            progress.step(place, len(components), component.title)
+            keep_expected(component, today)
+    return {"components": len(components)}

@@ -109,14 +109,14 @@ def failures_in_modules_that_came_later(component: Component, begin: dt.date, en
     return failed(component, begin, end).filter(Exists(placed)).exclude(Exists(there)).count()
 
 
-def failed(component: Component, begin: dt.date, end: dt.date, known_on: dt.date | None = None) -> Any:
-    """Fittings that ended by a failure, each with its `day` and `place`."""
+def failed(component: Component | None, begin: dt.date, end: dt.date, known_on: dt.date | None = None) -> Any:
+    """Fittings (of all components without one) that ended by a failure, each with its `day` and `place`."""
     on_a_day = Q(failed_on__gte=begin, failed_on__lt=end) | Q(failed_on=None, removed_on__gte=begin, removed_on__lt=end)
     fittings = (
-        Fitting.objects.standing()
-        .filter(on_a_day, part__component=component, reason__in=FAILURE_REASONS)
-        .exclude(clock__site__kind=SiteKind.RIG)
+        Fitting.objects.standing().filter(on_a_day, reason__in=FAILURE_REASONS).exclude(clock__site__kind=SiteKind.RIG)
     )
+    if component is not None:
+        fittings = fittings.filter(part__component=component)
     if known_on is not None:
         known = Coalesce("removed_known_on", "removed_visit__known_on", "removed_on")
         fittings = fittings.annotate(known=known).filter(known__lte=known_on)
@@ -157,3 +157,14 @@ def _sums(rows: Iterable[HappenedRow], grouping: str) -> dict[Any, dict[str, int
         counts["failures"] += row.failures
         counts["parts_used"] += row.parts_used
     return sums
+
+
+def failures_by_component(begin: dt.date, later: dt.date, end: dt.date) -> dict[str, tuple[int, int]]:
+    """For each component the failures from `begin` and those from `later` on, both until `end` (that day no more)."""
+    since = Q(day__gte=later)
+    rows = (
+        failed(None, begin, end)
+        .values_list("part__component__code")
+        .annotate(whole=Count("pk"), late=Count("pk", filter=since))
+    )
+    return {code: (whole, late) for code, whole, late in rows}

@@ -2,15 +2,30 @@
 
 from __future__ import annotations
 
+import datetime as dt
 from typing import Any
 
 from django.http import HttpResponse
 from django.shortcuts import render
 
-from fleet.rights import SEE, needs
+from fleet.models import Component
+from fleet.rights import LIFE, SEE, may, needs
 from fleet.today import records_today
 
 
 @needs(SEE)
 def today(request: Any) -> HttpResponse:
-    return render(request, "today/page.html", records_today(request))
+    context = records_today(request)
+    # Expectations are learned from all sites, and so are the figures beside them.
+    if may(request.user, LIFE) and request.user.all_sites:
+        context["expected"] = expected(request, context["today"])
+    return render(request, "today/page.html", context)
+
+
+def expected(request: Any, day: dt.date) -> dict[str, Any]:
+    """Whether this week and this quarter are unusual; empty while no component is in the catalogue."""
+    from reliability.forecasts.expected_now import expected_now
+    from reliability.forecasts.expected_words import told
+
+    components = list(request.seen(Component))
+    return told(expected_now(components), day) if components else {}
