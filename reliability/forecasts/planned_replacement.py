@@ -14,12 +14,13 @@ from typing import TYPE_CHECKING, Any
 
 from fleet.models import Component
 from reliability.forecasts.horizon import WEEK, WEEKS
-from reliability.forecasts.learned import Learned
 from reliability.kept import kept
 from reliability.lifetimes_from_fleet import lives
 from reliability.running_parts import RunningRow, running_parts
 
 if TYPE_CHECKING:
+    from reliability.stats.life_posterior import LifePosterior
+    from reliability.stats.lifetimes import Lifetimes
     from reliability.stats.replacement_posterior import ReplacementCosts
 
 DRAWS = 200
@@ -78,11 +79,11 @@ def replacement_document(question: ReplacementQuestion) -> dict[str, Any]:
     }
     if not part or document["use_a_day"] <= 0:
         return document
-    learned = Learned(lives(question.component, by="part", as_of=question.as_of))
-    document["failures_seen"] = learned.failures(part)
-    posterior = learned.posterior(part) if document["failures_seen"] else None
-    if posterior is None:
+    found = lives(question.component, by="part", as_of=question.as_of)
+    document["failures_seen"] = found.count("failed", group=part)
+    if not document["failures_seen"] or found.lifetimes is None:
         return document
+    posterior = _posterior(found.lifetimes.subset(found.lifetimes.groups == part), question.component)
     pace = document["use_a_day"] / document["positions"]
     return {**document, "told": _told(question, posterior, dict(use[part]), pace)}
 
@@ -95,7 +96,19 @@ def positions_by_design(rows: list[RunningRow]) -> dict[str, int]:
     return dict(counts)
 
 
-def _told(question: ReplacementQuestion, posterior: Any, use: dict[str, float], pace: float) -> dict[str, Any]:
+def _posterior(lifetimes: Lifetimes, component: Component) -> LifePosterior:
+    from reliability.stats.life_posterior import life_posterior
+
+    return life_posterior(
+        lifetimes,
+        site_spread=len(lifetimes.site_labels) > 1,
+        rounded_up_to=1.0 if component.clock == "days" else 0.0,
+    )
+
+
+def _told(
+    question: ReplacementQuestion, posterior: LifePosterior, use: dict[str, float], pace: float
+) -> dict[str, Any]:
     import numpy as np
 
     from reliability.stats.replacement_posterior import replacement_costs

@@ -112,7 +112,6 @@ def weekly_chart(request: Any, document: Document, base: Document | None, chosen
         **weekly_table(document, base),
         "caption": f"{chosen.title}, failures by week",
         "csv_url": f"?{query.urlencode()}",
-        "size": "short",
     }
 
 
@@ -143,10 +142,6 @@ def address_of(request: Any, chosen: Component) -> str:
 
 def backtest_line(request: Any, chosen: Component) -> Any:
     """How past forecasts did; of all sites, so only for those who see all."""
-    if not request.user.all_sites:
-        return None
-    try:
-        from reliability.forecasts.backtest import latest_line
-    except ModuleNotFoundError:
-        return None
-    return latest_line(chosen)
+    from reliability.forecasts.backtest import latest_line
+
+    return latest_line(chosen) if request.user.all_sites else None

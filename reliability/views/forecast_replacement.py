@@ -165,6 +165,7 @@ def answer(component: Component, document: Document, currency: str) -> Document:
             "figure": cost_figure(document, currency),
             **cost_table(document),
             "caption": f"Cost a quarter by the age of planned replacement, {currency}",
+            "size": "tall",
         }
     return context
 

@@ -6,7 +6,7 @@ from typing import Any
 
 from django.http import HttpResponse
 
-from fleet.models import Part
+from fleet.models import Book, Part
 from fleet.rights import COSTS, may
 from fleet.views.listing import as_csv
 from reliability import forecast_what_if_words as what_if_words
@@ -70,13 +70,15 @@ def parts_needed(answer: Answer) -> list[tuple[Part, Document]]:
 
 def needed_table(request: Any, answer: Answer) -> Document:
     costs = may(request.user, COSTS)
-    columns = [
+    columns: list[Document] = [
         {"key": "part", "label": "Part"},
         {"key": "expected", "label": "Expected", "numeric": True},
         {"key": "band", "label": "80 in 100", "numeric": True},
         {"key": "plan", "label": "Plan for", "numeric": True},
     ]
-    columns += [{"key": "cost", "label": "Cost of the plan", "numeric": True, "digits": 0}] if costs else []
+    if costs:
+        cost = f"Cost of the plan, {Book.load().currency}"
+        columns.append({"key": "cost", "label": cost, "numeric": True, "digits": 0})
     rows = []
     for part, used in parts_needed(answer):
         planned = words.plan_for(used)

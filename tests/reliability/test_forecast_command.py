@@ -52,6 +52,7 @@ def test_all_components_make_one_document() -> None:
     [
         (("--component", "SAIL"), "There is no component SAIL. The book has: NUT."),
         (("--from", "2024-01-01", "--as-of", "2024-02-01"), "lies before --as-of"),
+        (("--as-of", "2190-01-01"), "has not come yet"),
         (("--days", "0"), "no number of days"),
         (("--days", "many"), "no number of days"),
         (("--from", "31.12.2026"), "no day"),

@@ -39,6 +39,7 @@ class Command(BaseCommand):
 
     def document(self, component: Component, options: dict[str, Any]) -> dict[str, Any]:
         from reliability.forecasts.next_quarter import forecast_document, question_of
+        from reliability.life_errors import QuestionRefused
         from reliability.stats.errors import StatisticsError
 
         as_of, begin, by = options["as_of"], options["begin"], options["by"]
@@ -47,7 +48,7 @@ class Command(BaseCommand):
         try:
             question = question_of(component, begin=begin, days=options["days"], as_of=as_of, by_type=by == "type")
             document = forecast_document(question, bands=options["bands"])
-        except StatisticsError as error:
+        except (QuestionRefused, StatisticsError) as error:
             raise CommandError(str(error)) from error
         groups, weeks = document.pop("groups"), document["weeks"]
         rows = [{"group": week["from"], **week} for week in weeks] if by == "week" else groups[by]
