@@ -1,61 +1,227 @@
-"""What the records teach of each design: its posterior, and how often it comes out for other reasons."""
+"""What the records teach of a component: each design's life, and everything else that a count of days to come needs.
+
+All of it depends on the records and the day alone, not on the days counted, so it is kept until the next entry.
+"""
 
 from __future__ import annotations
 
+import datetime as dt
+import math
+from collections.abc import Mapping
 from dataclasses import dataclass, field
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
+from django.utils import timezone
+
+from fleet.models import Component
 from reliability.fleet_lives import FleetLives
+from reliability.forecasts.duty import Duty, duty
+from reliability.forecasts.removals import Removals, Rule, removals
+from reliability.forecasts.standing import Standing, standing, stop_shares
+from reliability.forecasts.taken_along import Trigger, triggers
+from reliability.forecasts.visiting import Visiting, visiting
+from reliability.kept import kept
+from reliability.lifetimes_from_fleet import lives
 
 if TYPE_CHECKING:
+    from reliability.stats.kept_draws import KeptDraws
+    from reliability.stats.life_posterior import LifePosterior
     from reliability.stats.lifetimes import Lifetimes
-    from reliability.stats.posterior import WeibullPosterior
 
-OTHER_REASONS = ("withdrawn", "not known", "worn")
+DRAWS = 400
+FEW = 10  # failures below which an earlier design's shape is leaned on, and from which it can be
+SHAPE_SPREAD = 0.35  # how far the log shape of a new design strays from the earlier one's
+PLAIN_PRIOR = (math.log(2.0), 1.0)
+ALL = ""  # the design that stands for all parts of the component
+
+
+@dataclass(frozen=True)
+class Design:
+    """What is known of one design: draws of its life, failures seen, and removals by chance per unit of the clock."""
+
+    life: KeptDraws
+    failures: int
+    removals: float
+    upgrades: float
+    typical: float  # middle of the draws' scales
 
 
 @dataclass
 class Learned:
-    """Posteriors by part, made when first asked for; a design without a life of its own borrows its component's."""
+    """Of a component as of a day; `designs` is empty where no life is on record."""
 
-    found: FleetLives
+    failures: int
+    designs: dict[str, Design]
+    taken_share: float  # of the removals by chance, those that the failures in `triggers` caused
+    rules: dict[str, Rule]
+    visits: dict[str, Visiting]
+    standing: Standing
+    stop_share: float
+    duty: Duty
+    triggers: list[Trigger]
     warnings: list[str] = field(default_factory=list)
-    _posteriors: dict[str, WeibullPosterior] = field(default_factory=dict)
 
-    def lifetimes(self, part: str) -> Lifetimes | None:
-        everything = self.found.lifetimes
-        if everything is None:
-            return None
-        own = everything.groups == part
-        if own.any():
-            return everything.subset(own)
-        borrowed = f"No life of {part} is on record yet: it counts as the {self.found.component} parts so far."
-        if borrowed not in self.warnings:
-            self.warnings.append(borrowed)
-        return everything
+    def design(self, part: str) -> Design:
+        """A design without a life of its own borrows its component's."""
+        return self.designs.get(part) or self.designs[ALL]
 
-    def posterior(self, part: str) -> WeibullPosterior | None:
-        """None where the component has no life on record at all; with two or more sites they may differ."""
-        from reliability.stats.posterior import weibull_posterior
+    def label(self, part: str) -> str:
+        return part if part in self.designs else ALL
 
-        if part not in self._posteriors:
-            lifetimes = self.lifetimes(part)
-            if lifetimes is None:
-                return None
-            self._posteriors[part] = weibull_posterior(lifetimes, site_spread=len(lifetimes.site_labels) > 1)
-        return self._posteriors[part]
 
-    def failures(self, part: str | None = None) -> int:
-        return self.found.count("failed", group=part)
+def learned(component: Component, as_of: dt.date, known_on: dt.date | None = None) -> Learned:
+    """Kept where it speaks of today; a look back is made each time, for nobody asks twice."""
+    if known_on is not None or as_of != timezone.localdate():
+        return from_told(_learn(component, as_of, known_on))
+    asked = {"component": component.code, "as_of": as_of}
+    return from_told(kept(f"learned {component.code}", asked, lambda: _learn(component, as_of, known_on)))
 
-    def other_removals(self, part: str) -> float:
-        """Removals for other reasons per unit of the clock: the design's own, and one more at its component's rate."""
-        everything = self.found.lifetimes
-        if everything is None or everything.exposure <= 0:
-            return 0.0
-        rate = self.found.count(*OTHER_REASONS) / everything.exposure
-        own = everything.groups == part
-        if rate == 0 or not own.any():
-            return rate
-        removed = self.found.count(*OTHER_REASONS, group=part)
-        return (removed + 1.0) / (everything.subset(own).exposure + 1.0 / rate)
+
+def learned_from(found: FleetLives, component: Component, as_of: dt.date, known_on: dt.date | None) -> Learned:
+    """From lives that are at hand already."""
+    return from_told(_learn(component, as_of, known_on, found))
+
+
+def _learn(
+    component: Component, as_of: dt.date, known_on: dt.date | None, found: FleetLives | None = None
+) -> dict[str, Any]:
+    found = found or lives(component, by="part", as_of=as_of, known_on=known_on)
+    out = removals(component, as_of, known_on)
+    visits, without = visiting(as_of, known_on)
+    taken = triggers(component, as_of, known_on)
+    designs, warnings = _designs(found, component, out)
+    if without and component.clock:
+        warnings.append(
+            f"How often crews come to {', '.join(without)} is not known: failures there count as found at once. "
+            "Enter the days between visits of the site."
+        )
+    by_chance = sum(out.by_part.values())
+    how, use = standing(as_of, known_on), duty(component.clock, as_of)
+    return {
+        "failures": found.count("failed"),
+        "designs": designs,
+        "taken_share": min(1.0, sum(each.parts for each in taken) / by_chance) if by_chance else 0.0,
+        "rules": {site: list(rule) for site, rule in out.rules.items()},
+        "visits": {site: list(each) for site, each in visits.items()},
+        "standing": [how.running, how.everywhere, how.durations],
+        "stop_share": stop_shares(component.pk, as_of, known_on),
+        "duty": [use.common, use.own, use.season],
+        "triggers": [each.told() for each in taken],
+        "warnings": warnings,
+    }
+
+
+def from_told(told: Mapping[str, Any]) -> Learned:
+    """The same as an object."""
+    from reliability.stats.kept_draws import KeptDraws
+
+    designs = {
+        part: Design(
+            KeptDraws.from_told(each["life"]),
+            *(each[name] for name in ("failures", "removals")),
+            each["upgrades"],
+            each["typical"],
+        )
+        for part, each in told["designs"].items()
+    }
+    return Learned(
+        failures=told["failures"],
+        designs=designs,
+        taken_share=told["taken_share"],
+        rules={site: Rule(*rule) for site, rule in told["rules"].items()},
+        visits={site: Visiting(*each) for site, each in told["visits"].items()},
+        standing=Standing(*told["standing"]),
+        stop_share=told["stop_share"],
+        duty=Duty(*told["duty"]),
+        triggers=[Trigger(**each) for each in told["triggers"]],
+        warnings=list(told["warnings"]),
+    )
+
+
+def _designs(found: FleetLives, component: Component, out: Removals) -> tuple[dict[str, Any], list[str]]:
+    """Each design with lives of its own; one that stands for all where some part has none yet."""
+    import numpy as np
+
+    from reliability.stats.kept_draws import KeptDraws
+
+    if found.lifetimes is None:
+        return {}, []
+    warnings: list[str] = []
+    posteriors = _posteriors(found.lifetimes, component, warnings)
+    rate = sum(out.by_part.values()) / max(found.lifetimes.exposure, 1e-9)
+    told = {}
+    for part, (posterior, lifetimes) in posteriors.items():
+        rng = np.random.default_rng(np.frombuffer(part.encode().ljust(8, b"-")[:64], dtype=np.uint8).tolist())
+        life = KeptDraws.of(posterior, DRAWS, rng)
+        removed = out.by_part.get(part, 0) if part != ALL else sum(out.by_part.values())
+        told[part] = {
+            "life": life.told(),
+            "failures": round(lifetimes.failures),
+            # the design's own, and one more at its component's rate
+            "removals": (removed + 1.0) / (lifetimes.exposure + 1.0 / rate) if rate else 0.0,
+            "upgrades": out.upgrades_lately.get(part, 0) / max(lifetimes.exposure, 1e-9),
+            "typical": float(np.median(life.drawn.scales)),
+        }
+    return told, warnings
+
+
+def _posteriors(
+    everything: Lifetimes, component: Component, warnings: list[str]
+) -> dict[str, tuple[LifePosterior, Lifetimes]]:
+    """Posterior and lives of each design, the ones with many failures first: the others may lean on their shape."""
+    by_part = {str(part): everything.subset(everything.groups == part) for part in everything.group_labels}
+    order = sorted(by_part, key=lambda part: -by_part[part].failures)
+    known: dict[str, tuple[LifePosterior, Lifetimes]] = {}
+    older = _superseded(component)
+    for part in order:
+        prior = PLAIN_PRIOR
+        leaned_on = _earlier(part, older, known) if by_part[part].failures < FEW else None
+        if leaned_on is not None:
+            prior = _shape_prior(known[leaned_on][0])
+            warnings.append(
+                f"{part} has failed {round(by_part[part].failures)} times so far. How its failures grow with age leans "
+                f"on {leaned_on} (shape {math.exp(prior[0]):.1f}); how long it lives comes from its own records."
+            )
+        known[part] = (_posterior(by_part[part], component.clock, prior), by_part[part])
+    if any(part not in known for part in component.parts.values_list("code", flat=True)):
+        known[ALL] = (_posterior(everything, component.clock, PLAIN_PRIOR), everything)
+    return known
+
+
+def _posterior(lifetimes: Lifetimes, clock: str, prior: tuple[float, float]) -> LifePosterior:
+    from reliability.stats.life_posterior import life_posterior
+
+    return life_posterior(
+        lifetimes,
+        site_spread=len(lifetimes.site_labels) > 1,
+        log_shape_prior=prior,
+        rounded_up_to=1.0 if clock == "days" else 0.0,
+    )
+
+
+def _superseded(component: Component) -> dict[str, str]:
+    """The design that each one superseded."""
+    rows = component.parts.exclude(supersedes=None).values_list("code", "supersedes__code")
+    return dict(rows)
+
+
+def _earlier(part: str, older: Mapping[str, str], known: Mapping[str, Any]) -> str | None:
+    """An earlier design with enough failures: down the chain, else the one with the most of them."""
+    enough = [each for each, (_, lifetimes) in known.items() if lifetimes.failures >= FEW]
+    step, seen = older.get(part), {part}
+    while step is not None and step not in seen:
+        if step in enough:
+            return step
+        seen.add(step)
+        step = older.get(step)
+    return enough[0] if enough else None
+
+
+def _shape_prior(posterior: LifePosterior) -> tuple[float, float]:
+    """Centre and spread of a new design's log shape: the earlier one's, as far as that is known, and how designs
+    differ.
+    """
+    weibull = posterior.weibull
+    centre = float(weibull.weight @ weibull.log_shape)
+    variance = float(weibull.weight @ (weibull.log_shape - centre) ** 2)
+    return centre, math.sqrt(SHAPE_SPREAD**2 + variance)

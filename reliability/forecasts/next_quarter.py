@@ -1,37 +1,39 @@
 """Failures and parts used in a coming stretch of days, from the records: the document of the forecast.
 
 Each design of a component has its own posterior from its own lives, with what sites differ in; a part that fails is
-followed by the design that its site fits now. Removals for other reasons end a life too. Where whole weeks are asked
-for, the count begins a whole number of weeks before them: at most three days from the as-of day, with the ages of that
-day; on a grid of weeks it costs a tenth. Counts: `reliability.stats.counts`.
+followed by the design that its site fits now. What else the records teach (removals by chance, planned replacement,
+visits, duty, modules that stand still, leave or join) is in `learned.py` and `positions.py`; the count itself, in one
+pass from the same draws, in `count.py`. Where whole weeks are asked for, the count begins a whole number of weeks
+before them: at most three days from the as-of day, with the ages of that day; on a grid of weeks it costs a tenth.
 """
 
 from __future__ import annotations
 
-import math
-from collections import defaultdict
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any
 
+from fleet.models import Component, Part
+from reliability.forecasts.count import LABELS, count
 from reliability.forecasts.horizon import week_starts
-from reliability.forecasts.learned import Learned
+from reliability.forecasts.learned import Learned, learned, learned_from
+from reliability.forecasts.positions import positions_of
 from reliability.forecasts.question import Question, question_of
-from reliability.forecasts.what_if import NotCountedYet
-from reliability.forecasts.written import Tallies, written
+from reliability.forecasts.taken_along import Trigger, parts_taken
+from reliability.forecasts.written import written
+from reliability.life_errors import NothingNamed
 from reliability.lifetimes_from_fleet import lives
-from reliability.running_parts import RunningParts, RunningRow, running_parts
+from reliability.running_parts import RunningParts, running_parts
 
 if TYPE_CHECKING:
     from reliability.fleet_lives import FleetLives
-    from reliability.stats.counts import CountDistribution, CountForecast
+    from reliability.stats.count_results import CountDistribution, CountForecast, Counts
 
 __all__ = ["Question", "forecast_distributions", "forecast_document", "question_of"]
 
 BANDS = (0.5, 0.8, 0.95)
-FEW_FAILURES, MANY_DRAWS, FEW_DRAWS = 20, 400, 100
-AGE_CELLS = 60  # ages are told apart to this share of the typical life
-PACE_STEP = 0.12  # paces are told apart to this share
+NO_LIFE = "No life is on record yet, so nothing can be expected. Log what goes in and out first."
+DAYS_KNOW_NO_DUTY = "Lives are counted in days here, so that another duty changes nothing."
 
 
 @dataclass(frozen=True)
@@ -44,107 +46,133 @@ class Distributions:
     found: FleetLives
 
 
+@dataclass
+class Tally:
+    """Counts in total and by grouping and label, failures by week."""
+
+    total: Counts
+    weeks: list[CountDistribution]
+    groups: dict[str, dict[str, Counts]]
+    warnings: list[str] = field(default_factory=list)
+
+
 def forecast_document(question: Question, *, bands: Sequence[float] = BANDS) -> dict[str, Any]:
     """Totals, weeks and every grouping, as plain values."""
-    running, learned, tallies = tallied(question)
-    if running.rows and learned.found.lifetimes is None:
-        learned.warnings.append("No life is on record yet, so nothing can be expected. Log what goes in and out first.")
-    return written(question, running, learned, tallies, bands)
+    running, taught = running_now(question), learned(question.component, question.as_of, question.known_on)
+    tally = tallied(question, running, taught)
+    return written(question, running, taught, tally, bands)
 
 
 def forecast_distributions(question: Question) -> Distributions:
     """The whole distributions of the totals, to be judged by what happened."""
-    from reliability.forecasts.combine import add_up
+    component, as_of, known_on = question.component, question.as_of, question.known_on
+    running = running_now(question)
+    found = lives(component, by="part", as_of=as_of, known_on=known_on)
+    total = tallied(question, running, learned_from(found, component, as_of, known_on)).total
+    return Distributions(total.failures, total.parts_used, running, found)
 
-    running, learned, tallies = tallied(question)
-    failures, used = (add_up(each["total"].get("", [])) for each in (tallies.failures, tallies.used))
-    return Distributions(failures, used, running, learned.found)
 
-
-def tallied(question: Question) -> tuple[RunningParts, Learned, Tallies]:
-    """The count itself: what runs, what its lives teach, and what comes of both."""
-    if not question.what_if.is_base:
-        raise NotCountedYet("This assumption is not counted yet.")
+def running_now(question: Question) -> RunningParts:
+    """What runs where the question asks."""
     sites = None if question.sites is None else list(question.sites)
-    as_of, known_on = question.as_of, question.known_on
-    running = running_parts(question.component, as_of=as_of, sites=sites, known_on=known_on)
-    learned = Learned(lives(question.component, by="part", as_of=as_of, known_on=known_on))
-    tallies = Tallies([[] for _ in week_starts(question.days)[1:]])
-    pairs: dict[tuple[str, str], list[RunningRow]] = defaultdict(list)
-    for row in running.rows:
-        pairs[row.part, row.needed].append(row)
-    for (part, needed), rows in sorted(pairs.items()):
-        count_part(question, learned, needed, part, rows, tallies)
-    return running, learned, tallies
+    return running_parts(question.component, as_of=question.as_of, sites=sites, known_on=question.known_on)
 
 
-def count_part(
-    question: Question, learned: Learned, needed: str, part: str, rows: list[RunningRow], tallies: Tallies
-) -> None:
-    """Counts the positions that hold one design now and get another (or the same) when it fails."""
-    posterior = learned.posterior(part)
-    if posterior is None:
-        return
-    following = learned.posterior(needed) if needed != part else None
-    scale = typical_life(posterior)
-    merged = merge_rows(rows, scale / AGE_CELLS if scale else 1.0, question.shift)
-    rate = learned.other_removals(part)
-    few = min(learned.failures(part), learned.failures(needed)) < FEW_FAILURES
-
-    spread = posterior.has_spread or (following is not None and following.has_spread)
-
-    def count(windows: list[int], group_window: int | None, label: str | None) -> CountForecast:
-        import numpy as np
-
-        from reliability.stats.counts import forecast_counts
-
-        return forecast_counts(
-            posterior,
-            np.array([row.age for row in merged]),
-            np.array([row.a_day * question.span for row in merged]),
-            weights=np.array([row.count for row in merged], dtype=float),
-            sites=[row.site for row in merged] if spread else None,
-            groups=[getattr(row, label) for row in merged] if label else None,
-            windows=windows,
-            group_window=group_window,
-            other_removals=rate,
-            next_posterior=following,
-            switch_at=0.0 if following is not None else None,
-            draws=MANY_DRAWS if few else FEW_DRAWS,
-            rng=np.random.default_rng(question.seed(part)),
-        )
-
-    whole = [0, question.span] if question.gap == 0 else [0, question.gap, question.span]
-    last = len(whole) - 2
-    by_site = count(whole, last, "site")
-    tallies.add("total", "", by_site.by_window[last])
-    tallies.add("part", part, by_site.by_window[last])
-    tallies.add("needed", needed, by_site.by_window[last])
-    for site, counts in by_site.by_group.items():
-        tallies.add("site", str(site), counts)
-    if question.by_type:
-        for kind, counts in count(whole, last, "type").by_group.items():
-            tallies.add("type", str(kind), counts)
-    starts = [question.gap + start for start in week_starts(question.days)]
-    weekly = count(starts if question.gap == 0 else [0, *starts], None, None).by_window
-    for week, counts in zip(tallies.weeks, weekly[-len(tallies.weeks) :], strict=True):
-        week.append(counts.failures)
+def tallied(question: Question, running: RunningParts, taught: Learned) -> Tally:
+    """The count itself: what comes of what runs and what its lives teach."""
+    checked(question)
+    warnings = []
+    if question.what_if.duty != 1.0 and question.component.clock == "days":
+        warnings.append(DAYS_KNOW_NO_DUTY)
+    warnings += _season(question, taught)
+    if not running.rows or not taught.designs:
+        return _nothing(question, [*warnings, *([NO_LIFE] if running.rows else [])])
+    if any(row.part not in taught.designs for row in running.rows) or _assumed_unknown(question, taught):
+        warnings += _borrowed(question, running, taught)
+    found = count(question, taught, positions_of(running.rows, question, taught))
+    tally = _tally(found, warnings)
+    for trigger in taught.triggers:
+        _add_taken(tally, trigger, question)
+    return tally
 
 
-def typical_life(posterior: Any) -> float:
-    """The middle of the posterior's scale."""
+def _season(question: Question, taught: Learned) -> list[str]:
+    factor = taught.duty.factor(question.span)
+    if abs(factor - 1.0) < 0.02:
+        return []
+    return [
+        f"These days count with {factor:.2f} times the use a day of the past 90, as the same season had in earlier "
+        "years."
+    ]
+
+
+def checked(question: Question) -> None:
+    """Refuses a superseding part that the component does not have."""
+    assumed = question.what_if.superseding
+    if assumed is not None:
+        known = list(Part.objects.filter(component=question.component).values_list("code", flat=True))
+        if assumed not in known:
+            raise NothingNamed("part", assumed, known)
+
+
+def _assumed_unknown(question: Question, taught: Learned) -> bool:
+    assumed = question.what_if.superseding
+    return assumed is not None and assumed not in taught.designs
+
+
+def _borrowed(question: Question, running: RunningParts, taught: Learned) -> list[str]:
+    parts = {name for row in running.rows for name in (row.part, row.needed)} | {question.what_if.superseding}
+    return [
+        f"No life of {part} is on record yet: it counts as the {question.component.code} parts so far."
+        for part in sorted(name for name in parts if name is not None and name not in taught.designs)
+    ]
+
+
+def _nothing(question: Question, warnings: list[str]) -> Tally:
     import numpy as np
 
-    return float(np.median(posterior.draws(50, np.random.default_rng(0)).scales))
+    from reliability.stats.count_results import CountDistribution, Counts
+
+    none = CountDistribution(np.array([1.0]))
+    weeks = [none for _ in week_starts(question.days)[1:]]
+    return Tally(Counts(none, none, none), weeks, {name: {} for name in LABELS}, warnings)
 
 
-def merge_rows(rows: list[RunningRow], cell: float, shift: int = 0) -> list[RunningRow]:
-    """Rows of about equal age (`shift` days later) and pace as one: the cost grows with the number of distinct ages."""
-    merged: dict[tuple[Any, ...], int] = defaultdict(int)
-    for row in rows:
-        if row.a_day <= 0:
-            continue
-        age = round(max(0.0, row.age + shift * row.a_day) / cell) * cell
-        pace = math.exp(round(math.log(row.a_day) / PACE_STEP) * PACE_STEP)
-        merged[age, pace, row.part, row.needed, row.site, row.type] += row.count
-    return [RunningRow(*key, count) for key, count in sorted(merged.items())]
+def _tally(found: CountForecast, warnings: list[str]) -> Tally:
+    groups = dict(zip(LABELS, (found.by_group, *found.by_also), strict=True))
+    return Tally(found, [week.failures for week in found.by_window], groups, warnings)
+
+
+def _add_taken(tally: Tally, trigger: Trigger, question: Question) -> None:
+    """Parts taken along with the failures of another component, on top of those already counted."""
+    from dataclasses import replace
+
+    from reliability.forecasts.combine import add_up
+    from reliability.stats.count_results import CountDistribution, Counts
+
+    other = question_of(
+        Component.objects.get(code=trigger.component),
+        begin=question.begin,
+        days=question.days,
+        as_of=question.as_of,
+        sites=question.sites,
+        known_on=question.known_on,
+    )
+    if question.component.clock != "days":
+        other = replace(other, what_if=replace(other.what_if, duty=question.what_if.duty))
+    failing = tallied(other, running_now(other), learned(other.component, other.as_of, other.known_on))
+
+    def more(counts: Counts, failures: Any, share: float) -> Counts:
+        taken = CountDistribution(parts_taken(trigger, failures.pmf, share))
+        return Counts(counts.failures, add_up([counts.parts_used, taken]), counts.planned)
+
+    whole = tally.total.failures.mean + 1e-9
+    tally.total = more(tally.total, failing.total.failures, 1.0)
+    for grouping in ("site", "type"):
+        own, others = tally.groups[grouping], failing.groups[grouping]
+        own.update({label: more(own[label], others[label].failures, 1.0) for label in own if label in others})
+    for grouping in ("part", "needed"):
+        own = tally.groups[grouping]
+        # which design is hit goes by how many of them run
+        for label, counts in own.items():
+            own[label] = more(counts, failing.total.failures, min(1.0, counts.failures.mean / whole))

@@ -3,9 +3,8 @@
 from __future__ import annotations
 
 import datetime as dt
-from collections import Counter, defaultdict
+from collections import Counter
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any
 
 from reliability.forecasts.horizon import week_starts
@@ -15,47 +14,32 @@ from reliability.running_parts import RunningParts, RunningRow
 
 if TYPE_CHECKING:
     from reliability.forecasts.learned import Learned
-    from reliability.stats.counts import CountDistribution, Counts
+    from reliability.forecasts.next_quarter import Tally
+    from reliability.stats.count_results import Counts
 
 GROUPINGS = ("part", "needed", "site", "type")
 AGE_BANDS = 12
 
 
-@dataclass
-class Tallies:
-    """Independent counts waiting to be added up: failures and parts used by grouping and label, failures by week."""
-
-    weeks: list[list[CountDistribution]]
-    failures: dict[str, dict[str, list[CountDistribution]]] = field(default_factory=lambda: defaultdict(dict))
-    used: dict[str, dict[str, list[CountDistribution]]] = field(default_factory=lambda: defaultdict(dict))
-    planned: list[CountDistribution] = field(default_factory=list)
-
-    def add(self, grouping: str, label: str, counts: Counts) -> None:
-        self.failures[grouping].setdefault(label, []).append(counts.failures)
-        self.used[grouping].setdefault(label, []).append(counts.parts_used)
-        if grouping == "total":
-            self.planned.append(counts.planned)
-
-
 def written(
-    question: Question, running: RunningParts, learned: Learned, tallies: Tallies, bands: Sequence[float]
+    question: Question, running: RunningParts, learned: Learned, tally: Tally, bands: Sequence[float]
 ) -> dict[str, Any]:
     """Totals, weeks and every grouping."""
-    from reliability.forecasts.combine import add_up, told
+    from reliability.forecasts.combine import told
 
     level = question.what_if.service_level
 
-    def both(grouping: str, label: str) -> dict[str, Any]:
-        failures = told(add_up(tallies.failures[grouping].get(label, [])), bands, level)
-        return {**failures, "parts_used": told(add_up(tallies.used[grouping].get(label, [])), bands, level)}
+    def both(counts: Counts) -> dict[str, Any]:
+        failures, used = (told(each, bands, level) for each in (counts.failures, counts.parts_used))
+        return {**failures, "parts_used": used}
 
     starts = week_starts(question.days)[:-1]
     weeks = [
-        {"from": (question.begin + dt.timedelta(days=start)).isoformat(), **told(add_up(counts), bands, level)}
-        for start, counts in zip(starts, tallies.weeks, strict=True)
+        {"from": (question.begin + dt.timedelta(days=start)).isoformat(), **told(counts, bands, level)}
+        for start, counts in zip(starts, tally.weeks, strict=True)
     ]
     groups = {
-        grouping: [{"group": label, **both(grouping, label)} for label in sorted(tallies.failures[grouping])]
+        grouping: [{"group": label, **both(counts)} for label, counts in sorted(tally.groups[grouping].items())]
         for grouping in GROUPINGS
     }
     return {
@@ -67,16 +51,16 @@ def written(
         "sites": None if question.sites is None else list(question.sites),
         "what_if": question.what_if.told(),
         "positions": running.count,
-        "failures_seen": learned.failures(),
-        "counted": learned.found.lifetimes is not None,
-        "total": both("total", ""),
-        "planned": told(add_up(tallies.planned), bands, level),
+        "failures_seen": learned.failures,
+        "counted": bool(learned.designs),
+        "total": both(tally.total),
+        "planned": told(tally.total.planned, bands, level),
         "weeks": weeks,
         "groups": groups,
-        "age_profile": age_profile(running.rows),
+        "age_profile": age_profile([row for row in running.rows if row.joins == 0]),
         "follows": sorted({(row.part, row.needed) for row in running.rows}),
         "left_out": [{"reason": reason, "count": count} for reason, count in running.left_out],
-        "warnings": [*running.notes, *learned.warnings],
+        "warnings": [*running.notes, *learned.warnings, *tally.warnings],
     }
 
 

@@ -1,0 +1,166 @@
+"""The count of one component's question: everything in one pass from the same draws, exactly where that is possible.
+
+What feeds back on itself (retrofits at a pace) or needs three designs in one stretch is simulated instead.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import TYPE_CHECKING, Any
+
+from reliability.forecasts.horizon import WEEK, week_starts
+from reliability.forecasts.learned import Learned
+from reliability.forecasts.positions import Positions
+from reliability.forecasts.question import Question
+from reliability.forecasts.what_if import NotCountedYet
+
+if TYPE_CHECKING:
+    from reliability.stats.count_results import CountForecast
+    from reliability.stats.count_simulation import SimulatedCounts
+
+FEW_FAILURES = 20
+MANY_DRAWS, SOME_DRAWS, FEW_DRAWS = 400, 200, 100
+LABELS = ("site", "type", "part", "needed")
+SIMULATED = 600_000  # draws times positions
+FEWEST_SIMULATED, MOST_SIMULATED = 200, 2000
+MOST_POSITIONS = 20_000  # in a simulation
+
+
+def is_simulated(question: Question) -> bool:
+    """Whether the exact count does not cover what is assumed."""
+    assumed = question.what_if
+    return assumed.retrofit_a_week is not None or 0 < switch_day(question) < question.span
+
+
+def switch_day(question: Question) -> int:
+    """Days from the start of the count to the day from which the superseding part goes in; 0: from the start."""
+    begin = question.what_if.superseding_from
+    return 0 if begin is None else max((begin - question.start).days, 0)
+
+
+def edges_of(question: Question) -> tuple[list[int], tuple[int, int]]:
+    """Edges of what is counted, in days from the start of the count, and the stretch asked for among them."""
+    starts = [question.gap + start for start in week_starts(question.days)]
+    if question.gap == 0:
+        return starts, (0, len(starts) - 1)
+    return [0, *starts], (1, len(starts))
+
+
+def count(question: Question, learned: Learned, positions: Positions) -> CountForecast:
+    """Failures, parts used and planned ones: in total, by week, and by site, type, part and what goes in."""
+    import numpy as np
+
+    from reliability.stats.counts import forecast_counts
+
+    if is_simulated(question):
+        from reliability.forecasts.simulated import simulated_forecast
+
+        return simulated_forecast(question, simulate(question, learned, positions), positions)
+    windows, stretch = edges_of(question)
+    labels = [positions.column(name) for name in LABELS]
+    return forecast_counts(
+        designs_of(question, learned, positions),
+        positions.ages,
+        positions.horizons,
+        weights=positions.weights,
+        groups=labels[0],
+        also_groups=labels[1:],
+        windows=windows,
+        stretch=stretch,
+        parts_by_window=False,
+        taken_share=learned.taken_share,
+        draws=draws_for(learned, positions),
+        rng=np.random.default_rng(question.seed("")),
+        **settings_of(question, learned, positions),
+    )
+
+
+def designs_of(question: Question, learned: Learned, positions: Positions) -> dict[str, Any]:
+    """Draws of every design in play, the superseding one last whether it is in play or not."""
+    labels = {learned.label(name) for place in positions.places for name in (place.part, place.needed)}
+    assumed = question.what_if.superseding
+    ordered = sorted(labels - {assumed})
+    return {label: learned.design(label).life for label in [*ordered, *({learned.label(assumed)} if assumed else ())]}
+
+
+def draws_for(learned: Learned, positions: Positions) -> int:
+    """Few failures leave much open, which takes many draws to tell."""
+    if learned.failures < FEW_FAILURES:
+        return MANY_DRAWS
+    labels = {learned.label(name) for place in positions.places for name in (place.part, place.needed)}
+    return SOME_DRAWS if min(learned.design(label).failures for label in labels) < FEW_FAILURES else FEW_DRAWS
+
+
+def settings_of(question: Question, learned: Learned, positions: Positions) -> dict[str, Any]:
+    """What both engines are told alike."""
+    import numpy as np
+
+    assumed = question.what_if.superseding
+    at_once = assumed is not None and switch_day(question) == 0
+    fitted = [learned.label(assumed if at_once else place.needed) for place in positions.places]
+    removed = [learned.design(place.part) for place in positions.places]
+    upgraded = [place.part != place.needed for place in positions.places]
+    rates = [each.removals + each.upgrades * yes for each, yes in zip(removed, upgraded, strict=True)]
+    settings: dict[str, Any] = {
+        "sites": positions.column("site"),
+        "designs": [learned.label(place.part) for place in positions.places],
+        "next_designs": fitted,
+        "other_removals": np.array(rates),
+        "replace_at": np.array(positions.column("rule")),
+        "visits": (positions.clock("every"), positions.clock("next")),
+        "down_until": positions.clock("down"),
+        "join_at": positions.clock("joins"),
+        "leave_at": positions.clock("leaves"),
+        "duty_spread": learned.duty.spread,
+        "refit_delay": 0.5 if question.component.clock == "days" else 0.0,
+    }
+    if assumed is not None and not at_once and switch_day(question) < question.span:
+        settings["later_designs"] = [learned.label(assumed)] * len(positions)
+        settings["switch_at"] = np.array([place.pace * switch_day(question) for place in positions.places])
+    return settings
+
+
+def simulate(question: Question, learned: Learned, positions: Positions) -> SimulatedCounts:
+    """The same question by plain simulation; the same seed gives every position the same luck in every what-if."""
+    import numpy as np
+
+    from reliability.stats.count_simulation import Retrofit, simulate_counts
+
+    single = singles(positions)
+    if len(single) > MOST_POSITIONS:
+        raise NotCountedYet(
+            f"{len(single)} parts are more than can be simulated ({MOST_POSITIONS}). Ask for fewer sites."
+        )
+    settings = settings_of(question, learned, single)
+    assumed = question.what_if
+    retrofit = None
+    if assumed.retrofit_a_week is not None:
+        begin = switch_day(question) / question.span
+        if begin < 1.0:
+            step = WEEK / question.span
+            retrofit = Retrofit(begin, assumed.retrofit_a_week, step)
+        settings.setdefault("later_designs", [learned.label(assumed.superseding or "")] * len(single))
+        settings.setdefault("switch_at", 0.0)
+    windows, _ = edges_of(question)
+    draws = int(np.clip(SIMULATED / max(len(single), 1), FEWEST_SIMULATED, MOST_SIMULATED))
+    return simulate_counts(
+        designs_of(question, learned, positions),
+        single.ages,
+        single.horizons,
+        windows=windows,
+        stretch=(question.gap / question.span, 1.0),
+        draws=draws,
+        rng=np.random.default_rng(question.seed("simulated")),
+        retrofit=retrofit,
+        **settings,
+    )
+
+
+def singles(positions: Positions) -> Positions:
+    """A line a position; fractions of positions are rounded so that their running sum stays right."""
+    import numpy as np
+
+    counts = np.diff(np.rint(np.cumsum(positions.weights)), prepend=0.0).astype(int)
+    line = np.repeat(np.arange(len(positions)), counts)
+    places: Sequence[Any] = [positions.places[number] for number in line]
+    return Positions(positions.ages[line], positions.horizons[line], np.ones(line.size), list(places))

@@ -1,0 +1,154 @@
+"""Running parts and what was learned, as the arrays that a count takes: one line for any number of like positions."""
+
+from __future__ import annotations
+
+import datetime as dt
+import math
+from collections import defaultdict
+from collections.abc import Iterable, Iterator
+from dataclasses import dataclass
+from typing import Any, NamedTuple
+
+from reliability.forecasts.learned import Learned
+from reliability.forecasts.question import Question
+from reliability.running_parts import RunningRow
+
+AGE_CELLS = 60  # ages are told apart to this share of the typical life
+PACE_STEP = 0.12  # paces are told apart to this share
+NEVER = math.inf
+
+
+class Place(NamedTuple):
+    """Positions alike in everything but age; times in days from the start of the count, pace in use a day."""
+
+    site: str
+    type: str
+    part: str
+    needed: str
+    pace: float
+    rule: float  # age at planned replacement
+    every: float  # days between visits, 0 where failures are found at once
+    next: float
+    down: float
+    joins: float
+    leaves: float
+
+
+@dataclass(frozen=True, eq=False)
+class Positions:
+    """Columns (n,) in the unit of the component's clock; weights may be fractions where an age is spread."""
+
+    ages: Any
+    horizons: Any
+    weights: Any
+    places: list[Place]
+
+    def column(self, name: str) -> list[Any]:
+        return [getattr(place, name) for place in self.places]
+
+    def clock(self, name: str) -> Any:
+        """A time of the places on the clock."""
+        import numpy as np
+
+        return np.array([getattr(place, name) * place.pace for place in self.places])
+
+    def __len__(self) -> int:
+        return len(self.places)
+
+
+def positions_of(rows: Iterable[RunningRow], question: Question, learned: Learned) -> Positions:
+    """Rows of about equal age and pace as one: the cost grows with the number of distinct ages."""
+    import numpy as np
+
+    found: dict[Place, list[tuple[float, float, float]]] = defaultdict(list)
+    for row in rows:
+        for place, age, weight in _spread(row, question, learned):
+            if place.pace > 0 and place.leaves > 0:
+                step = round(math.log(place.pace) / PACE_STEP)
+                found[place._replace(pace=float(step))].append((age, weight, place.pace))
+    ages, weights, places = [], [], []
+    for key, members in sorted(found.items()):
+        cell = max(learned.design(key.part).typical / AGE_CELLS, 1e-9)
+        whole = sum(weight for _, weight, _ in members)
+        # means, so that no use is lost or gained by sharing a line
+        place = key._replace(pace=sum(weight * pace for _, weight, pace in members) / whole)
+        cells: dict[int, list[float]] = defaultdict(lambda: [0.0, 0.0])
+        for age, weight, _ in members:
+            total = cells[round(age / cell)]
+            total[0] += weight
+            total[1] += weight * age
+        for _, (weight, aged) in sorted(cells.items()):
+            ages.append(aged / weight)
+            weights.append(weight)
+            places.append(place)
+    horizons = np.array([place.pace * question.span for place in places])
+    return Positions(np.array(ages), horizons, np.array(weights), places)
+
+
+def _spread(row: RunningRow, question: Question, learned: Learned) -> Iterator[tuple[Place, float, float]]:
+    """A row as one or more: ages that are known only at least, and a module that stands still, may go several ways."""
+    days = question.component.clock == "days"
+    use = 1.0 if days else question.what_if.duty * learned.duty.factor(question.span)
+    pace = row.a_day * learned.standing.share(row.site) * use
+    shift = question.shift
+    place = Place(
+        site=row.site,
+        type=row.type,
+        part=row.part,
+        needed=row.needed,
+        pace=pace,
+        rule=_rule(row, question, learned),
+        every=0.0,
+        next=0.0,
+        down=0.0,
+        joins=max(row.joins - shift, 0.0) if row.joins > 0 else 0.0,
+        leaves=row.leaves - shift,
+    )
+    place = _visited(place, row, question, learned)
+    for age, share in _ages(row, learned, pace):
+        aged = age if row.joins > 0 else max(age + shift * pace, 0.0)
+        left = learned.standing.days_left(row.stopped) - shift if row.stopped >= 0 else 0.0
+        if left <= 0:
+            yield place, aged, row.count * share
+            continue
+        # it may be this part that failed: then a new one goes in; else this one waits as it is
+        left = round(left, 1)
+        yield place._replace(down=left), age, row.count * share * learned.stop_share
+        yield place._replace(joins=left), age, row.count * share * (1.0 - learned.stop_share)
+
+
+def _ages(row: RunningRow, learned: Learned, pace: float) -> list[tuple[float, float]]:
+    from reliability.stats.count_compound import ages_at_least
+
+    if not row.least:
+        return [(row.age, 1.0)]
+    ages, weights = ages_at_least(learned.design(row.part).life.drawn, row.age)
+    return list(zip(ages.tolist(), weights.tolist(), strict=True))
+
+
+def _rule(row: RunningRow, question: Question, learned: Learned) -> float:
+    """The age at planned replacement: assumed for all, else what the site's records show."""
+    if question.what_if.replace_at is not None:
+        return question.what_if.replace_at
+    rule = learned.rules.get(row.site)
+    if rule is None:
+        return NEVER
+    return rule.age if rule.clock == question.component.clock else rule.age * row.a_day
+
+
+def _visited(place: Place, row: RunningRow, question: Question, learned: Learned) -> Place:
+    """Visits, where failures wait for one: the day entered for the site, else an interval after the module's last."""
+    visits = learned.visits.get(row.site)
+    if visits is None:
+        return place
+    every = visits.every
+    if visits.next_on is not None:
+        upcoming = float((dt.date.fromisoformat(visits.next_on) - question.start).days)
+    elif row.seen >= 0:
+        # one that is overdue may come any day
+        upcoming = max(every - row.seen - question.shift, 1.0)
+    else:
+        upcoming = math.ceil(every / 2)
+    while upcoming <= 0:
+        upcoming += every
+    return place._replace(every=max(every, upcoming), next=upcoming)

@@ -1,0 +1,104 @@
+"""Why parts come out without having failed: by chance, or by a rule of planned replacement that the records show."""
+
+from __future__ import annotations
+
+import datetime as dt
+from collections import Counter, defaultdict
+from collections.abc import Iterable
+from dataclasses import dataclass
+from typing import Any, NamedTuple
+
+from django.db.models import F, Q
+from django.db.models.functions import Coalesce
+
+from fleet.models import Component, Fitting, RemovalReason, SiteKind
+from reliability.running_parts import NO_PLACE
+
+LATELY = dt.timedelta(days=400)  # planned removals that show a rule
+IN_FORCE = dt.timedelta(days=200)  # one at least must be as recent as this
+FEWEST, NEAR, MOSTLY, MOST_BEYOND = 5, 0.15, 0.6, 0.25
+
+
+class Rule(NamedTuple):
+    """Planned replacement at an age on a clock: the component's own, or days in service."""
+
+    age: float
+    clock: str
+
+
+@dataclass(frozen=True)
+class Removals:
+    """Removals for other reasons by part, those under a rule left out, and the rules by site."""
+
+    by_part: dict[str, int]
+    upgrades_lately: dict[str, int]
+    rules: dict[str, Rule]
+
+
+class _Planned(NamedTuple):
+    site: str
+    day: dt.date
+    own: float | None
+    days: float | None
+
+
+CHANCE = [RemovalReason.TAKEN_WITH_ANOTHER, RemovalReason.MODULE_WITHDRAWN, RemovalReason.NOT_KNOWN]
+
+
+def removals(component: Component, as_of: dt.date, known_on: dt.date | None) -> Removals:
+    """Of field sites, up to the day and as far as it was known."""
+    clock = component.clock
+    known = Coalesce("removed_known_on", "removed_visit__known_on", "removed_on")
+    ended = (
+        Fitting.objects.standing()
+        .filter(part__component=component, removed_on__lte=as_of)
+        .exclude(clock__site__kind=SiteKind.RIG)
+        .annotate(known=known)
+    )
+    if known_on is not None:
+        ended = ended.filter(known__lte=known_on)
+    by_part: Counter[str] = Counter(ended.filter(reason__in=CHANCE).values_list("part__code", flat=True))
+    recent = ended.filter(removed_on__gt=as_of - LATELY)
+    upgrades = Counter(recent.filter(reason=RemovalReason.UPGRADE).values_list("part__code", flat=True))
+    rules = _rules(recent, clock, as_of)
+    planned = ended.filter(reason=RemovalReason.PLANNED)
+    for part, site in planned.values_list("part__code", "clock__site__code"):
+        by_part[part] += (site or NO_PLACE) not in rules
+    return Removals(dict(by_part), dict(upgrades), rules)
+
+
+def _rules(recent: Any, clock: str, as_of: dt.date) -> dict[str, Rule]:
+    own = F(f"clock__{clock}_at_end") - F(f"clock__{clock}_at_fit") + F("age_at_fit")
+    days = F("clock__days_at_end") - F("clock__days_at_fit")
+    rows = recent.annotate(own=own, days=days).values_list("reason", "clock__site__code", "removed_on", "own", "days")
+    planned: dict[str, list[_Planned]] = defaultdict(list)
+    others: dict[str, list[_Planned]] = defaultdict(list)
+    for reason, site, *found in rows.filter(~Q(fitted_on=None)):
+        (planned if reason == RemovalReason.PLANNED else others)[site or NO_PLACE].append(_Planned(site, *found))
+    rules = {}
+    for site, seen in planned.items():
+        if max(each.day for each in seen) <= as_of - IN_FORCE:
+            continue
+        found_rules = [_rule(seen, others[site], column, name) for column, name in (("own", clock), ("days", "days"))]
+        best = min((each for each in found_rules if each is not None), default=None, key=lambda each: each[0])
+        if best is not None:
+            rules[site] = best[1]
+    return rules
+
+
+def _rule(seen: Iterable[_Planned], others: Iterable[_Planned], column: str, clock: str) -> tuple[float, Rule] | None:
+    """The spread of the ages about the rule, and the rule, where most planned removals lie near one age and few parts
+    are left to grow older.
+    """
+    ages = sorted(age for each in seen if (age := getattr(each, column)) is not None)
+    if len(ages) < FEWEST:
+        return None
+    centre = max(ages, key=lambda age: sum(abs(other - age) <= NEAR * age for other in ages))
+    near = [age for age in ages if abs(age - centre) <= NEAR * centre]
+    if len(near) < max(FEWEST, MOSTLY * len(ages)):
+        return None
+    age = near[len(near) // 2]
+    beyond = sum((getattr(each, column) or 0.0) > (1.0 + 2.0 * NEAR) * age for each in others)
+    if beyond > MOST_BEYOND * len(near):
+        return None
+    return (near[-1] - near[0]) / age, Rule(age, clock)
