@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from reliability.stats.lifetimes import Lifetimes
 
 FEWEST_FAILURES = 5  # below, no maximum-likelihood shape is shown
+SHOWN_TO_LAST, TEST_LENGTH = 0.9, 2.0  # a test that shows nine in ten to last an age, run to twice that age
 MOST_FITTED = 60  # groups; beyond them the curve alone speaks, so that an answer comes in seconds
 ALL = "all"
 QUANTITIES: dict[str, Any] = {"b10": ("quantile", 0.1), "median": ("quantile", 0.5), "mean": "mean"}
@@ -226,10 +227,13 @@ def _few_failures(lifetimes: Lifetimes, confidence: float) -> dict[str, Any]:
                 "mean_lower": finite(bound.mean_lower),
                 "scale": finite(bound.scale),
                 "scale_lower": finite(bound.scale_lower),
+                "parts_to_twice": success_run_size(
+                    SHOWN_TO_LAST, confidence, life_ratio=TEST_LENGTH, shape=bound.shape
+                ),
             }
             for bound in bounds
         ],
-        "parts_for_nine_in_ten": success_run_size(0.9, confidence),
+        "parts_for_nine_in_ten": success_run_size(SHOWN_TO_LAST, confidence),
     }
 
 

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 from fleet.formats import number, percent
 from reliability.life_panels import ALL, FEWEST_FAILURES, MOST_STRATA, Data, PanelQuestion, main_stratum, refused
 from reliability.life_words import joined
-from reliability.wording import parts_of, sure
+from reliability.wording import parts_of
 
 if TYPE_CHECKING:
     from reliability.histories_from_fleet import LivesOnClocks
@@ -167,8 +167,8 @@ def _table(data: Data) -> Data:
                 says,
             ]
         )
-    caption = f"How much lives vary on each clock, with intervals ({sure(data['confidence'])} of each)"
-    return {"columns": columns, "rows": rows, "caption": caption}
+    caption = f"How much lives vary on each clock ({percent(data['confidence'])} intervals)"
+    return {"columns": columns, "rows": rows, "narrow": "stacked", "caption": caption}
 
 
 FILE_HEAD = ["component", "group", "clock", "coefficient_of_variation", "lower", "upper", "preferred_share", "refused"]

@@ -309,7 +309,7 @@ def _effect_table(data: Data) -> Data:
         low, high = each.get("duty_low"), each.get("duty_high")
         between = None if low is None or high is None else f"{number(rounded(low))}–{number(rounded(high))}"
         rows.append([parts_of(data, each["group"]), each["clock"], shown, each["failures"], between])
-    return {"columns": columns, "rows": rows, "caption": "What duty does to life"}
+    return {"columns": columns, "rows": rows, "narrow": "stacked", "caption": "What duty does to life"}
 
 
 def _site_table(data: Data) -> Data:

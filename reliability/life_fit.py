@@ -231,7 +231,7 @@ def _table(data: Data) -> Data:
                     {"estimate": row["median"]},
                 ]
             )
-    return {"columns": columns, "rows": rows, "caption": "Three curves through the same lives"}
+    return {"columns": columns, "rows": rows, "narrow": "stacked", "caption": "Three curves through the same lives"}
 
 
 FILE_HEAD = [

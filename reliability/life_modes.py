@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
-from fleet.formats import ends, number, percent, rounded
+from fleet.formats import FIXED, number, percent, rounded
 from reliability.life_panels import Data, PanelQuestion, Stratum, main_stratum, refused
 from reliability.life_words import joined
 from reliability.risk_ages import round_ages
@@ -176,12 +176,15 @@ def sentence(data: Data) -> str:
     told = []
     for row in main["modes"][:NAMED_IN_SENTENCE]:
         share = row["at"][at]
-        told.append(f"{percent(share['estimate'])} {by_mode(row)} ({ends(share['lower'], share['upper'], percent)})")
+        told.append(f"{percent(share['estimate'])} {by_mode(row)} ({between(share)})")
     when = age(main["modes"][0]["at"][at]["age"], data["clock"])
-    return (
-        f"Of {who}, these have failed within {when}: {joined(told)}; {sure(data['confidence'])} of each range. "
-        "All modes act, as in the field."
-    )
+    return f"Of {who}, these have failed within {when}: {joined(told)}; {sure(data['confidence'])} of each range."
+
+
+def between(share: Data) -> str:
+    """“40 to 61 %”"""
+    sign = f"{FIXED}%"
+    return f"{percent(share['lower']).removesuffix(sign)} to {percent(share['upper'])}"
 
 
 def by_mode(row: Data) -> str:
@@ -223,7 +226,7 @@ def page(data: Data, *, address: Any = None) -> Data:
 def notes(data: Data, main: Data) -> list[str]:
     told = [
         f"{'' if main['group'] == 'all' else main['group'] + ': '}each layer is one mode; together they are the share "
-        "that has failed. What one mode takes, another can no longer."
+        "that has failed. All modes act, as in the field: what one takes, another can no longer."
     ]
     later = sum(group["found_later"] for group in data["groups"])
     if later:

@@ -122,6 +122,18 @@ def group_table(document: Document, names: dict[str, str], sort: str) -> dict[st
     return {"columns": columns, "rows": [row_of(group, names) for group in groups]}
 
 
+def every_group(document: Document, names: dict[str, str], sort: str) -> dict[str, Any]:
+    """The table of all groups where there are more than are drawn; those too small to fit show what was counted."""
+    table = group_table(document, names, sort)
+    few = sum(group["median"] is None and group["few_failures"] is None for group in document["groups"])
+    note = (
+        f"{number(few)} groups with fewest lives are not fitted; they show what their curve comes down to."
+        if few
+        else ""
+    )
+    return {**table, "note": note, "plain_columns": [{**column, "sort": False} for column in table["columns"]]}
+
+
 def sorted_groups(groups: list[Group], sort: str) -> list[Group]:
     """In the order asked for, groups without the figure last; else in their own order."""
     key = sort.removeprefix("-")
@@ -232,14 +244,16 @@ def few_failures(document: Document, group: Group) -> dict[str, Any]:
         "columns": [
             {"key": "wears", "label": "If it"},
             {"key": "shape", "label": "Shape assumed", "numeric": True, "digits": 1},
-            {"key": "b10", "label": f"nine in ten last longer than, {clock}", "numeric": True},
-            {"key": "mean", "label": f"they last on average longer than, {clock}", "numeric": True},
+            {"key": "b10", "label": f"nine in ten last over, {clock}", "numeric": True},
+            {"key": "mean", "label": f"mean life over, {clock}", "numeric": True},
+            {"key": "test", "label": "parts to run to twice an age", "numeric": True},
         ],
         "rows": [
             [
                 words.WEAR.get(bound["shape"], "wears so"),
                 bound["shape"],
                 *(shown_bound(bound[name]) for name in ("b10_lower", "mean_lower")),
+                bound["parts_to_twice"],
             ]
             for bound in few["bounds"]
         ],

@@ -118,8 +118,12 @@ def panel_document(component: str, name: str, *, mine: set[str] | None = None, *
 
 
 def question_of(component: str, *, confidence: float = 0.95, **choices: Any) -> PanelQuestion:
+    """However the screen is grouped, panels treat each design by itself: mixed designs would pass for bad sites or
+    lots. Only “all together” takes them together.
+    """
     as_of: dt.date = choices.pop("as_of", None) or timezone.localdate()
-    return PanelQuestion(component, confidence, {**choices, "as_of": as_of})
+    by = "part" if choices.pop("by", None) else None
+    return PanelQuestion(component, confidence, {**choices, "by": by, "as_of": as_of})
 
 
 def panels_of(component: str, *, mine: set[str] | None = None, **choices: Any) -> Data:

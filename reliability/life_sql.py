@@ -76,7 +76,7 @@ def lives_of_positions(question: LifeQuestion) -> Query:
     text, parameters = _lives(question)
     return (
         f"{text} SELECT module_id, position_id, label, also, left_out, state, entry, duration, last_good, site_id, "
-        "fitted_day FROM told",
+        "fitted_day, last_day FROM told",
         parameters,
     )
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
-from fleet.formats import counted, number, percent
+from fleet.formats import number, percent
 from reliability.life_panels import FEWEST_FAILURES, Data, PanelQuestion, Stratum, refused
 from reliability.life_words import joined
 from reliability.wording import parts_of, sure
@@ -111,38 +111,44 @@ def as_seen(data: Data, mine: set[str]) -> Data:
 
 def sentence(data: Data) -> str:
     """What stands out, by name, with how sure that is; the designs in their order."""
-    told = [_family_words(data, family) for family in data["families"] if named(family)]
-    for kind in ("sites", "lots"):
-        families = [family for family in data["families"] if family["kind"] == kind and not family.get("refused")]
-        if families and not any(named(family) for family in families):
-            own = "Among yours no site" if any(family.get("only_own") for family in families) else f"No {KINDS[kind]}"
-            told.append(
-                f"{own} stands out: of none can it be said that its parts fail over {number(data['factor'], 2)} times "
-                "as fast as is typical."
-            )
-    if not told:
+    told = [_kind_words(data, kind) for kind in KINDS]
+    if not any(told):
         reasons = {family["refused"] for family in data["families"] if family.get("refused")}
         return (
             f"We cannot tell, because {joined(sorted(reasons))}." if reasons else "We cannot tell: nothing to compare."
         )
-    return " ".join(told)
+    rates = [family["false_discovery_rate"] for family in data["families"] if named(family)]
+    if rates:
+        told.append(
+            f"{sure(data['confidence'])[:1].upper()}{sure(data['confidence'])[1:]} of each range; at most "
+            f"{percent(max(rates))} of such namings are expected to be false."
+        )
+    return " ".join(each for each in told if each)
+
+
+def _kind_words(data: Data, kind: str) -> str:
+    """Sites, or lots, of all designs in one sentence; nothing where they could not be compared."""
+    families = [family for family in data["families"] if family["kind"] == kind and not family.get("refused")]
+    if not families:
+        return ""
+    found = [family for family in families if named(family)]
+    times = number(data["factor"], 2)
+    if not found:
+        own = "Among yours no site" if any(family.get("only_own") for family in families) else f"No {KINDS[kind]}"
+        return f"{own} stands out: of none can it be said that its parts fail over {times} times as fast as is typical."
+    told = [_family_words(family, several=len(families) > 1) for family in found]
+    return f"{kind.capitalize()} whose parts fail clearly faster than a typical one's: {'; '.join(told)}."
 
 
 def named(family: Data) -> list[Data]:
     return [row for row in family["rows"] if row["stands_out"]]
 
 
-def _family_words(data: Data, family: Data) -> str:
-    rows, word = named(family), KINDS[family["kind"]]
-    one = len(rows) == 1
-    shown = joined([_row_words(row) for row in rows[:NAMED]])
+def _family_words(family: Data, *, several: bool) -> str:
+    rows = named(family)
+    of = f"of {family['group']} " if several and family["group"] != "all" else ""
     more = f" and {number(len(rows) - NAMED)} more" if len(rows) > NAMED else ""
-    wrong = percent(family["false_discovery_rate"])
-    return (
-        f"Of {parts_of(data, family['group'])}, {counted(len(rows), word)} of {number(family['count'])} "
-        f"{'fails' if one else 'fail'} clearly faster than a typical one: {shown}{more} ({sure(data['confidence'])} of "
-        f"each range; {wrong} of such namings are expected to be false)."
-    )
+    return f"{of}{joined([_row_words(row) for row in rows[:NAMED]])}{more}"
 
 
 def _row_words(row: Data) -> str:
@@ -158,7 +164,7 @@ def page(data: Data, *, address: Any = None) -> Data:
     ranked = sorted(families, key=lambda family: (-len(named(family)), -family["running"], -family["lives"]))
     tables = [_table(data, family) for family in ranked]
     return {
-        "chart": {"figure": stand_outs_figure(data, ranked[0]), "notes": notes(data, ranked[0])} if ranked else None,
+        "chart": _chart(data, ranked[0], stand_outs_figure) if ranked else None,
         "tables": tables[:1],
         "more_tables": tables[1:],
         "more_title": "The other designs, sites and lots",
@@ -179,6 +185,10 @@ def page(data: Data, *, address: Any = None) -> Data:
     }
 
 
+def _chart(data: Data, family: Data, figure: Any) -> Data:
+    return {"figure": figure(data, family), "notes": notes(data, family), "size": "tall"}
+
+
 def notes(data: Data, family: Data) -> list[str]:
     told = [
         f"{KINDS[family['kind']].capitalize()}s of {parts_of(data, family['group'])}: how many times as fast as a "
@@ -197,22 +207,22 @@ def _table(data: Data, family: Data) -> Data:
     word = KINDS[family["kind"]]
     columns = [
         {"key": "label", "label": word.capitalize()},
-        {"key": "lives", "label": "Lives", "numeric": True},
+        {"key": "times", "label": "Times as fast", "numeric": True},
+        {"key": "says", "label": "Says"},
         {"key": "failures", "label": "Failed", "numeric": True},
         {"key": "expected", "label": "a typical one would have had", "numeric": True, "digits": 1},
-        {"key": "times", "label": "Times as fast", "numeric": True},
+        {"key": "lives", "label": "Lives", "numeric": True},
         {"key": "chance", "label": f"Chance of over {number(data['factor'], 2)} times", "numeric": True},
-        {"key": "says", "label": ""},
     ]
     rows = [
         [
             row["label"],
-            row["lives"],
+            {"estimate": row["multiplier"], "digits": 2},
+            {"text": "stands out", "kind": "late"} if row["stands_out"] else "as others",
             row["failures"],
             row["expected"],
-            {"estimate": row["multiplier"], "digits": 2},
+            row["lives"],
             percent(row["chance_worse"]),
-            {"text": "stands out", "kind": "late"} if row["stands_out"] else "",
         ]
         for row in family["rows"][:ROWS_IN_SIGHT]
     ]

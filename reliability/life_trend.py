@@ -325,7 +325,7 @@ def _test_table(data: Data, names: tuple[str, ...], caption: str) -> Data:
         if name == "Lewis–Robinson" and data["failures"] < ENOUGH_EACH * data["positions"]:
             says = "cannot tell: with fewer than ten failures a position it takes youth for a trend"
         rows.append([name, ASKED[name], test["statistic"], p_words(test["p_value"], ""), says])
-    return {"columns": columns, "rows": rows, "caption": caption}
+    return {"columns": columns, "rows": rows, "narrow": "stacked", "caption": caption}
 
 
 def verdict(test: Data) -> str:

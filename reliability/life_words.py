@@ -211,8 +211,9 @@ def few_sentence(document: Document, group: Group) -> str:
     return (
         f"{number(group['lives'])} parts, {failures}, {together}. "
         f"What they prove depends on how the part wears, which so few failures do not tell. To show that nine in ten "
-        f"last a given age, {number(few['parts_for_nine_in_ten'])} new parts must all reach it without a failure "
-        f"({sure(few['confidence'])} then). Bounds beyond the oldest part ({oldest}) rest on the assumed shape alone."
+        f"last a given age, {number(few['parts_for_nine_in_ten'])} new parts must all reach it without a failure, or "
+        f"fewer must run to twice that age, as the table says ({sure(few['confidence'])} then). Bounds beyond the "
+        f"oldest part ({oldest}) rest on the assumed shape alone."
     )
 
 

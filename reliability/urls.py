@@ -12,6 +12,7 @@ from reliability.views import (
     life,
     life_left_out,
     life_panels,
+    life_print,
     module,
     redesigns,
     today,
@@ -34,6 +35,8 @@ urlpatterns: list[URLPattern | URLResolver] = [
     path("redesigns/", redesigns.redesigns, name="redesigns"),
     path("redesigns/<code:code>/", redesigns.redesign, name="redesign"),
     path("life/left-out/", life_left_out.life_left_out, name="life_left_out"),
+    path("life/print/", life_print.life_print, name="life_print"),
+    path("life/groups/", life_panels.life_groups, name="life_groups"),
     *(
         path(f"life/{panel.name}/", life_panels.life_panel, {"name": panel.name}, name=f"life_{panel.key}")
         for panel in PANELS

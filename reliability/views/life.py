@@ -104,8 +104,6 @@ def context_of(request: Any, choices: Choices, form: LifeForm, document: dict[st
     from reliability.life_page import page_of
     from reliability.life_words import narrowed_words
 
-    by_key = part_ranks(choices.parts)
-    ranks = {part.code: by_key[part.pk] for part in choices.parts}
     context: dict[str, Any] = {
         "form": form,
         "component": choices.component,
@@ -120,14 +118,23 @@ def context_of(request: Any, choices: Choices, form: LifeForm, document: dict[st
             {"name": "CSV", "url": file_address(request, "csv")},
             {"name": "CSV of the curves", "url": file_address(request, "curve.csv")},
             {"name": "JSON", "url": file_address(request, "json")},
+            {"name": "two sheets of paper", "url": reverse("life_print") + address(request)},
         ],
         "left_out": left_out_rows(request, document),
         "panels": waiting_panels(request) if document["groups"] else [],
+        "every_group_url": reverse("life_groups") + address(request),
+        "every_group_count": len(document["groups"]) + len(document["more_groups"]),
     }
     if document["groups"]:
-        context |= page_of(document, ranks, names_of(choices, document), request.GET.get("sort", ""))
+        context |= page_of(document, looks_of(choices), names_of(choices, document), request.GET.get("sort", ""))
         context["survival"]["csv_url"] = file_address(request, "curve.csv")
     return context
+
+
+def looks_of(choices: Choices) -> dict[str, int]:
+    """The rank of each part by its code: its look on every screen."""
+    by_key = part_ranks(choices.parts)
+    return {part.code: by_key[part.pk] for part in choices.parts}
 
 
 def names_of(choices: Choices, document: dict[str, Any]) -> dict[str, str]:

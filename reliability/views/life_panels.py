@@ -5,6 +5,7 @@ from __future__ import annotations
 import datetime as dt
 from typing import Any
 
+from django.core.paginator import Paginator
 from django.http import Http404, HttpResponse, JsonResponse
 from django.shortcuts import render
 from django.urls import reverse
@@ -15,6 +16,8 @@ from fleet.views.listing import as_csv
 from reliability.forms.life import Choices, LifeForm
 from reliability.life_panels import BY_NAME, Panel
 from reliability.views.life import address, chosen_component, own_sites, panel_address
+
+GROUPS_A_PAGE = 50
 
 
 @needs(LIFE)
@@ -40,6 +43,33 @@ def life_panel(request: Any, name: str) -> HttpResponse:
         "crumbs": [{"name": "Life", "url": reverse("life") + address(request)}],
     }
     return render(request, "life/panel.html" if request.htmx else "life/panel_page.html", context)
+
+
+@needs(LIFE)
+def life_groups(request: Any) -> HttpResponse:
+    """All groups where there are more than are drawn: sorted, paged, a page of its own or the part of the screen."""
+    from reliability.life_page import every_group
+    from reliability.views.life import names_of, seen_document
+
+    components = list(request.seen(Component))
+    component = chosen_component(request, components) if components else None
+    choices = Choices.seen(request, components, component)
+    form = LifeForm(request.GET, choices=choices)
+    if component is None or not form.is_valid():
+        raise Http404
+    document = seen_document(request, choices, form)
+    table = every_group(document, names_of(choices, document), request.GET.get("sort", ""))
+    page = Paginator(table["rows"], GROUPS_A_PAGE).get_page(request.GET.get("page"))
+    context = {
+        "component": component,
+        "document": document,
+        "table": {**table, "rows": page.object_list},
+        "page": page,
+        "whole_url": reverse("life_groups") + address(request),
+        "as_of": dt.date.fromisoformat(document["as_of"]),
+        "crumbs": [{"name": "Life", "url": reverse("life") + address(request, page="")}],
+    }
+    return render(request, "life/groups.html" if request.htmx else "life/groups_page.html", context)
 
 
 def seen_panel(request: Any, choices: Choices, form: LifeForm, panel: Panel) -> dict[str, Any]:
