@@ -28,6 +28,7 @@ class PositionLife(NamedTuple):
     last_good: float | None
     site: int | None
     fitted_day: int | None
+    last_day: float | None
 
 
 def lives_of_positions(

@@ -9,7 +9,7 @@ from __future__ import annotations
 import datetime as dt
 from collections import Counter
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -21,13 +21,15 @@ from reliability.lives_of_positions import PositionLife, first_fitted, lives_of_
 from reliability.stats.lifetimes import Lifetimes
 
 BEFORE, AFTER = "before", "after"
+COLUMNS = ("modules", "positions", "parts", "states", "fitted", "begun", "ended", "modes", "rigs")
 
 
 @dataclass(frozen=True, eq=False)
 class Compared:
     """One row a life. lifetimes.groups is before or after; the other columns have its length.
 
-    positions: a number for each place in each module. states: as in `FleetLives`. days: ordinal day of the fitting.
+    modules: the records' own numbers. positions: a number for each place in each module. states: as in `FleetLives`.
+    begun, ended: ordinal days of the fitting (or of the start of observation) and of the end of observation.
     modes: code of the failure mode, empty where none. rigs: True on a test stand.
     starts: for each site the day from which it is looked at; empty where all history counts.
     """
@@ -38,10 +40,13 @@ class Compared:
     new: tuple[str, ...]
     old: tuple[str, ...]
     lifetimes: Lifetimes | None
+    modules: NDArray[np.int64]
     positions: NDArray[np.int64]
     parts: NDArray[Any]
     states: NDArray[Any]
-    days: NDArray[np.int64]
+    fitted: NDArray[np.int64]
+    begun: NDArray[np.float64]
+    ended: NDArray[np.float64]
     modes: NDArray[Any]
     rigs: NDArray[np.bool_]
     starts: dict[str, dt.date]
@@ -56,27 +61,42 @@ class Compared:
 
     def chosen(self, rows: NDArray[np.bool_]) -> Compared:
         """The same with these rows only."""
-        kept = self.lifetimes.subset(rows) if self.lifetimes is not None and rows.any() else None
-        columns = ("positions", "parts", "states", "days", "modes", "rigs")
-        cut: dict[str, Any] = {name: getattr(self, name)[rows] for name in columns}
-        return Compared(
-            self.component, self.clock, self.as_of, self.new, self.old, kept, **cut, starts=self.starts,
-            left_out=self.left_out,
-        )  # fmt: skip
+        lifetimes = self.lifetimes.subset(rows) if self.lifetimes is not None and rows.any() else None
+        return replace(self, lifetimes=lifetimes, **{name: getattr(self, name)[rows] for name in COLUMNS})
 
     def if_only(self, modes: Sequence[str]) -> Compared:
         """The same lives if only these failure modes acted: other failures count as withdrawals in good order."""
         if self.lifetimes is None:
             return self
         others = self.lifetimes.observed & ~np.isin(self.modes, list(modes))
-        columns = ("positions", "parts", "days", "modes", "rigs")
-        kept: dict[str, Any] = {name: getattr(self, name) for name in columns}
         states = np.where(others, "other mode", self.states)
-        lives = self.lifetimes.withdrawn_where(others)
-        return Compared(
-            self.component, self.clock, self.as_of, self.new, self.old, lives, states=states, **kept,
-            starts=self.starts, left_out=self.left_out,
-        )  # fmt: skip
+        return replace(self, lifetimes=self.lifetimes.withdrawn_where(others), states=states)
+
+    def as_seen_on(self, day: int) -> Compared:
+        """The lives as they stood on an earlier (ordinal) day, for the path of the evidence.
+
+        Ages on that day lie on a straight line through each life's use; what ended later was still running.
+        """
+        if self.lifetimes is None:
+            return self
+        lives, later = self.lifetimes, self.ended > day
+        share = np.clip((day - self.begun) / np.maximum(self.ended - self.begun, 1.0), 0.0, 1.0)
+        durations = np.where(
+            later, np.floor(lives.entries + share * (lives.durations - lives.entries)), lives.durations
+        )
+        seen = durations > lives.entries
+        if not seen.any():
+            return self.chosen(np.zeros(len(lives), dtype=bool))
+        cut = Lifetimes(
+            durations[seen],
+            (lives.observed & ~later)[seen],
+            entries=lives.entries[seen],
+            last_good=np.where(later, np.nan, lives.last_good)[seen],
+            sites=lives.sites[seen],
+            groups=lives.groups[seen],
+        )
+        states = np.where(later, "running", self.states)
+        return replace(self.chosen(seen), lifetimes=cut, states=states[seen])
 
 
 def all_history(component: Component, new: Sequence[str], old: Sequence[str], **choices: Any) -> Compared:
@@ -111,6 +131,7 @@ def _compared(
     modes = dict(FailureMode.objects.filter(component=component).values_list("pk", "code"))
     left_out: Counter[str] = Counter(row.left_out for row in rows if row.left_out is not None)
     kept = [row for row in rows if row.left_out is None]
+    began = {site: day.toordinal() for site, day in starts.items()}
     parts = np.array([named[row.part] for row in kept], dtype=object)
     place = [sites.get(row.site or 0, (NO_PLACE, "")) for row in kept]
     return Compared(
@@ -120,10 +141,13 @@ def _compared(
         new=tuple(new),
         old=tuple(old),
         lifetimes=_lifetimes(kept, np.isin(parts, list(new)), [code for code, _ in place]),
+        modules=np.array([row.module for row in kept], dtype=np.int64),
         positions=_numbered(kept),
         parts=parts,
         states=np.array([row.state for row in kept], dtype=object),
-        days=np.array([row.fitted_day or 0 for row in kept], dtype=np.int64),
+        fitted=np.array([row.fitted_day or 0 for row in kept], dtype=np.int64),
+        begun=np.array([max(row.fitted_day or 0, began.get(row.site or 0, 0)) for row in kept], dtype=float),
+        ended=np.array([row.last_day or 0 for row in kept], dtype=float),
         modes=np.array([modes.get(row.also, "") for row in kept], dtype=object),
         rigs=np.array([kind == SiteKind.RIG for _, kind in place], dtype=bool),
         starts={sites[site][0]: day for site, day in starts.items()},

@@ -1,0 +1,157 @@
+"""How comparable old and new parts are: sites, seasons, duty, lots and failure modes of each side, and what follows.
+
+Shares are of what was observed: days in service for sites and seasons, failures for modes, parts for lots.
+"""
+
+from __future__ import annotations
+
+import datetime as dt
+from collections import Counter
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from fleet.models import Fitting
+from reliability.histories_from_fleet import module_duties
+from reliability.life_question import asked_of
+from reliability.redesigns.compared import AFTER, BEFORE, Compared
+
+LITTLE_OVERLAP = 0.5  # below, the page warns in words
+ALL_AT_ONCE = 0.1  # an old share of a site's watched days below which it was switched all at once
+UNLIKE_DUTY = 1.15  # one side's mean duty over the other's from which regression is worth a look
+SEASONS = ("January to March", "April to June", "July to September", "October to December")
+
+
+@dataclass(frozen=True)
+class Mix:
+    """One thing that may differ: shares of both sides by label, and how far they overlap (1: the same mixture)."""
+
+    name: str
+    of: str
+    labels: tuple[str, ...]
+    before: tuple[float, ...]
+    after: tuple[float, ...]
+
+    @property
+    def overlap(self) -> float | None:
+        """Sum of the smaller shares; None where a side has nothing to share out."""
+        if not any(self.before) or not any(self.after):
+            return None
+        return float(sum(min(pair) for pair in zip(self.before, self.after, strict=True)))
+
+
+@dataclass(frozen=True)
+class Duty:
+    """Use a day of the modules of each side, weighted by days watched; None where no counter says so."""
+
+    clock: str
+    before: float | None
+    after: float | None
+
+    @property
+    def unlike(self) -> bool:
+        if not self.before or not self.after:
+            return False
+        return max(self.before / self.after, self.after / self.before) > UNLIKE_DUTY
+
+
+@dataclass(frozen=True)
+class Comparability:
+    mixes: tuple[Mix, ...]
+    duty: Duty
+    all_at_once: tuple[str, ...]  # sites where hardly an old part ran beside the new ones
+    concurrent_sites: tuple[str, ...]
+
+    def mix(self, name: str) -> Mix:
+        return next(each for each in self.mixes if each.name == name)
+
+
+def comparability(everything: Compared, concurrent: Compared) -> Comparability:
+    """Sides of `everything` with their mixtures; which sites give a control over the same dates."""
+    days = everything.ended - everything.begun
+    sites = np.asarray([]) if everything.lifetimes is None else everything.lifetimes.sites
+    failed = everything.states == "failed"
+    mixes = (
+        _mix("site", "days in service", everything, sites, days),
+        _seasons(everything),
+        _mix("failure mode", "failures", everything, everything.modes, failed.astype(float), unnamed="not named"),
+        _lots(everything),
+    )
+    at_once, beside = _switched(concurrent)
+    return Comparability(mixes, _duty(everything, days), at_once, beside)
+
+
+def _mix(name: str, of: str, lives: Compared, labels: NDArray[Any], weights: NDArray[Any], unnamed: str = "") -> Mix:
+    sides: dict[str, Counter[str]] = {BEFORE: Counter(), AFTER: Counter()}
+    if lives.lifetimes is not None:
+        groups = lives.lifetimes.groups
+        for label, side, weight in zip(labels.tolist(), groups.tolist(), weights.tolist(), strict=True):
+            if weight > 0:
+                sides[side][str(label) or unnamed] += weight
+    return _shared(name, of, sides, lambda label: label)
+
+
+def _shared(name: str, of: str, sides: dict[str, Counter[str]], order: Callable[[str], Any]) -> Mix:
+    labels = sorted(set(sides[BEFORE]) | set(sides[AFTER]), key=order)
+    totals = {side: sum(counts.values()) for side, counts in sides.items()}
+    shares = {
+        side: tuple(counts[label] / totals[side] if totals[side] else 0.0 for label in labels)
+        for side, counts in sides.items()
+    }
+    return Mix(name, of, tuple(labels), shares[BEFORE], shares[AFTER])
+
+
+def _seasons(lives: Compared) -> Mix:
+    """Days watched by quarter of the year."""
+    sides: dict[str, Counter[str]] = {BEFORE: Counter(), AFTER: Counter()}
+    if lives.lifetimes is not None and len(lives.begun):
+        begun, ended = lives.begun.astype(int), lives.ended.astype(int)
+        first, last = int(begun.min()), max(int(ended.max()), int(begun.min()) + 1)
+        quarter = np.array([(dt.date.fromordinal(day).month - 1) // 3 for day in range(first, last)])
+        for number, season in enumerate(SEASONS):
+            until = np.concatenate([[0], np.cumsum(quarter == number)])
+            days = until[np.clip(ended - first, 0, last - first)] - until[begun - first]
+            for side, counts in sides.items():
+                counts[season] += float(days[lives.lifetimes.groups == side].sum())
+    return _shared("season", "days in service", sides, SEASONS.index)
+
+
+def _lots(lives: Compared) -> Mix:
+    """Parts by lot; old and new never share one, so this names how many lots stand behind each side."""
+    sides: dict[str, Counter[str]] = {BEFORE: Counter(), AFTER: Counter()}
+    fitted = Fitting.objects.standing().filter(part__component=lives.component, fitted_on__lte=lives.as_of)
+    for side, parts in ((BEFORE, lives.old), (AFTER, lives.new)):
+        for lot in fitted.filter(part__code__in=parts).values_list("lot", flat=True):
+            sides[side][lot or "no lot"] += 1
+    return _shared("lot", "parts", sides, lambda label: label)
+
+
+def _duty(lives: Compared, days: NDArray[np.float64]) -> Duty:
+    """Strokes a day (hours, where the life is counted in them)."""
+    clock = "hours" if lives.clock == "hours" else "strokes"
+    found: dict[str, float | None] = {BEFORE: None, AFTER: None}
+    if lives.lifetimes is not None:
+        duties = module_duties(asked_of(lives.component, clock=lives.clock, as_of=lives.as_of), clock)
+        a_day = np.array([duties[str(m)].a_day if str(m) in duties else np.nan for m in lives.modules.tolist()])
+        for side in found:
+            chosen = (lives.lifetimes.groups == side) & ~np.isnan(a_day) & (days > 0)
+            if chosen.any():
+                found[side] = float(np.average(a_day[chosen], weights=days[chosen]))
+    return Duty(clock, found[BEFORE], found[AFTER])
+
+
+def _switched(concurrent: Compared) -> tuple[tuple[str, ...], tuple[str, ...]]:
+    """Sites without old parts beside the new ones since their start, and those with some."""
+    if concurrent.lifetimes is None:
+        return tuple(sorted(concurrent.starts)), ()
+    days = np.maximum(concurrent.ended - concurrent.begun, 0.0)
+    at_once, beside = [], []
+    for site in sorted(concurrent.starts):
+        here = concurrent.lifetimes.sites == site
+        old = days[here & (concurrent.lifetimes.groups == BEFORE)].sum()
+        both = days[here].sum()
+        (beside if both > 0 and old / both >= ALL_AT_ONCE else at_once).append(site)
+    return tuple(at_once), tuple(beside)
