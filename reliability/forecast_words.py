@@ -89,8 +89,11 @@ def weekly(document: Document, name: str) -> str:
     if not means:
         return ""
     low, high = min(band[0] for band in bands), max(band[1] for band in bands)
+    digits = 0 if max(means) >= 20 else 1
+    least, most = number(min(means), digits), number(max(means), digits)
+    expected = f"about {most}" if least == most else f"from {least} to {most}"
     return (
-        f"{plural(name).capitalize()} failing a week: from {about(min(means))} to {about(max(means))} expected; "
+        f"{plural(name).capitalize()} failing a week: {expected} expected; "
         f"in 80 of 100 weeks between {number(low)} and {number(high)}."
     )
 
