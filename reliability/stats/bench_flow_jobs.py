@@ -88,7 +88,8 @@ def arrivals_from_failures(
 
     came, of: how many of its failures brought a module in so far; the share of a replicate is drawn from
     Beta(came + 1/2, of - came + 1/2) (Jeffreys 1946), so that few records leave it uncertain. Each failure comes on
-    any day of its week alike. Raises InvalidArgument.
+    any day of its week alike. Replicates take the draws in their order, so that modes drawn together stay together.
+    Raises InvalidArgument.
     """
     weekly = np.asarray(weekly_failures)
     if weekly.ndim != 2 or not weekly.size or (weekly < 0).any() or (weekly != np.floor(weekly)).any():
@@ -96,8 +97,7 @@ def arrivals_from_failures(
     if not 0 <= came <= of or not math.isfinite(of):
         raise InvalidArgument(f"{came:g} of {of:g} failures cannot have brought a module in.")
     _refuse_replicates(replicates)
-    chosen = (np.arange(replicates) + rng.random()) * weekly.shape[0] / replicates
-    counts = weekly[rng.permutation(np.minimum(chosen.astype(np.int64), weekly.shape[0] - 1))].astype(np.int64)
+    counts = weekly[np.arange(replicates) * weekly.shape[0] // replicates].astype(np.int64)
     share = rng.beta(came + 0.5, of - came + 0.5, replicates)
     coming = rng.binomial(counts, share[:, None])
     days = np.empty((replicates, weekly.shape[1], WEEK), dtype=np.int64)

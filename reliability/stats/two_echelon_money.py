@@ -124,10 +124,20 @@ def marginal_analysis(parts: Sequence[StockedPart], budget: float) -> BuyingCurv
     return BuyingCurve(start, start_owed, tuple(steps), plans, max(budget - spent, 0.0))
 
 
+def best_split(part: StockedPart, pieces: int) -> StockPlan:
+    """The split of so many pieces over depot and sites, on top of what stays where it is, with the least owed.
+
+    At most 400 pieces. Raises InvalidArgument.
+    """
+    if pieces != int(pieces) or not 0 <= pieces <= MOST_PIECES:
+        raise InvalidArgument(f"{pieces:g} pieces are to be split; give a whole number from 0 to {MOST_PIECES}.")
+    return _Ladder(part, math.inf, least=int(pieces)).plan(int(pieces))
+
+
 class _Ladder:
     """One part: the least owed for each number of further pieces, and the corners of its convex hull."""
 
-    def __init__(self, part: StockedPart, budget: float) -> None:
+    def __init__(self, part: StockedPart, budget: float, *, least: int = 0) -> None:
         self.cost = float(part.unit_cost)
         if not (math.isfinite(self.cost) and self.cost > 0):
             raise InvalidArgument(f"{part.name} costs {self.cost:g}; give a price above 0.")
@@ -144,7 +154,8 @@ class _Ladder:
         order = np.argsort([world.depot + world.direct.sum() for world in self.worlds], kind="stable")
         middle = (np.arange(min(LEVELS, order.size)) + 0.5) / min(LEVELS, order.size)
         self._search = [self.worlds[order[int(place * order.size)]] for place in middle]
-        self.most = int(min(MOST_PIECES, budget // self.cost, self._useful()))
+        affordable = budget // self.cost if math.isfinite(budget) else MOST_PIECES
+        self.most = max(int(min(MOST_PIECES, affordable, self._useful())), least)
         self._owed, self._gains = self._tables()
         self._at_depot = self._best_split()
         self.corners = self._hull()
