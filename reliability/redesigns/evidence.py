@@ -1,0 +1,155 @@
+"""What the records say of old and new parts, as plain values: ratio of lives, tests, means, single failure modes.
+
+The figures that decide come from parts watched over the same dates at the same sites; those from all history stand
+beside them and are named, since water, season and habits change with the calendar.
+"""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from reliability.life_answer import finite
+from reliability.redesigns.compared import AFTER, BEFORE, Compared
+from reliability.stats.difference import counted_when_found, logrank, restricted_mean_difference
+from reliability.stats.errors import StatisticsError
+from reliability.stats.life_ratio import LifeRatio, Ratio, life_ratio
+from reliability.stats.lifetimes import Lifetimes
+
+FEWEST_SITES_LEFT_OUT = 3
+TESTS = (
+    ("site", "by site", 0, 0),
+    ("position", "by position", 0, 0),
+    ("site", "by site, early failures weigh more", 1, 0),
+    ("site", "by site, late failures weigh more", 0, 1),
+    ("", "not stratified", 0, 0),
+)
+
+
+def evidence_of(lives: Compared, confidence: float) -> dict[str, Any]:
+    """Tests, restricted means and life ratios of one comparison; what cannot be told is None, with its reason."""
+    notes: list[str] = []
+    return {
+        "tests": tests_of(lives, notes),
+        "restricted_mean": restricted_mean_of(lives, confidence, notes),
+        "ratio": ratio_of(lives, confidence, notes),
+        "notes": list(dict.fromkeys(notes)),
+    }
+
+
+def both_sides(lives: Compared) -> tuple[Lifetimes, Lifetimes] | None:
+    before, after = lives.side(BEFORE), lives.side(AFTER)
+    return None if before is None or after is None else (before, after)
+
+
+def strata_of(lives: Compared, strata: str) -> NDArray[Any] | None:
+    """Labels by site, or by position at a site."""
+    assert lives.lifetimes is not None
+    if strata == "position":
+        return lives.positions * 10_000 + lives.lifetimes.site_codes
+    return lives.lifetimes.site_codes if strata == "site" else None
+
+
+def tests_of(lives: Compared, notes: list[str]) -> list[dict[str, Any]]:
+    """Log-rank tests; z above 0: the old parts fail sooner."""
+    found = []
+    for strata, name, rho, gamma in TESTS:
+        row: dict[str, Any] = {"strata": name, "rho": rho, "gamma": gamma, "z": None, "p": None, "information": None}
+        if both_sides(lives) is not None:
+            try:
+                assert lives.lifetimes is not None
+                # labels sort as after, before: the first group is the new one, so its z is turned round
+                test = logrank(
+                    counted_when_found(lives.lifetimes), strata=strata_of(lives, strata), rho=rho, gamma=gamma
+                )
+                row.update(z=finite(-test.z), p=finite(test.p_value), information=finite(test.variance))
+                row["excess"] = finite(-float(test.score[0]))
+            except StatisticsError as error:
+                notes.append(str(error))
+        found.append(row)
+    return found
+
+
+def restricted_mean_of(lives: Compared, confidence: float, notes: list[str]) -> dict[str, Any] | None:
+    """Mean life up to an age that both sides have reached: new less old."""
+    sides = both_sides(lives)
+    if sides is None:
+        return None
+    before, after = (counted_when_found(side) for side in sides)
+    horizon = min(float(side.durations.max()) for side in (before, after))
+    common = set(before.site_labels.tolist()) | set(after.site_labels.tolist())
+    interval = "sites" if len(common) >= FEWEST_SITES_LEFT_OUT else "log-log"
+    for kind in dict.fromkeys((interval, "log-log")):
+        try:
+            found = restricted_mean_difference(before, after, horizon, confidence, interval=kind, minimum_at_risk=5)
+        except StatisticsError as error:
+            notes.append(f"Restricted mean: {error}")
+            continue
+        return {
+            "horizon": finite(found.horizon),
+            "from": finite(found.given_survival_to),
+            "before": finite(found.first.estimate),
+            "after": finite(found.second.estimate),
+            "difference": {
+                "estimate": finite(found.estimate),
+                "lower": finite(found.lower),
+                "upper": finite(found.upper),
+            },
+            "interval": kind,
+            "p": finite(found.p_value),
+        }
+    return None
+
+
+def ratio_of(lives: Compared, confidence: float, notes: list[str]) -> dict[str, Any] | None:
+    """Life of the new parts over that of the old: with sites that differ, and beside it under other assumptions."""
+    sides = both_sides(lives)
+    if sides is None:
+        return None
+    before, after = (counted_when_found(side) for side in sides)
+    places = _places(lives)
+    ways: dict[str, dict[str, Any]] = {
+        "sites differ": {},
+        "positions differ": {"positions": places},
+        "one shape for both": {"common_shape": True},
+        "lives independent": {"sites": (np.zeros(len(before)), np.zeros(len(after)))},
+    }
+    answer: dict[str, Any] = {}
+    for name, how in ways.items():
+        try:
+            answer[name] = told_ratio(life_ratio(before, after, confidence_level=confidence, **how))
+        except StatisticsError as error:
+            notes.append(str(error))
+            answer[name] = None
+    return answer if answer["sites differ"] or answer["one shape for both"] else None
+
+
+def _places(lives: Compared) -> tuple[NDArray[Any], NDArray[Any]]:
+    assert lives.lifetimes is not None
+    groups = lives.lifetimes.groups
+    return lives.positions[groups == BEFORE], lives.positions[groups == AFTER]
+
+
+def told_ratio(found: LifeRatio) -> dict[str, Any]:
+    return {
+        "b10": _limits(found.b10),
+        "median": _limits(found.median),
+        "shapes": [finite(found.before_shape), finite(found.after_shape)],
+        "spread": finite(found.spread),
+        "clusters": found.clusters,
+        "method": found.median.method,
+    }
+
+
+def _limits(ratio: Ratio) -> dict[str, Any]:
+    answer: dict[str, Any] = {
+        "estimate": finite(ratio.estimate),
+        "lower": finite(ratio.lower),
+        "upper": finite(ratio.upper),
+    }
+    ends = (("lower", ratio.lower_unbounded), ("upper", ratio.upper_unbounded))
+    if unbounded := [name for name, is_open in ends if is_open]:
+        answer["unbounded"] = unbounded
+    return answer
