@@ -68,14 +68,18 @@ def span(ends: list[int]) -> str:
 
 
 def other_bands(document: dict[str, Any], measure: str = "failures") -> str:
-    """The 50 and 95 % bands."""
-    hits = document["measures"][measure]["hits"]
+    """The 50 and 95 % bands, and the PIT, for which bands of whole numbers hold no more than they promise."""
+    hits, pit = document["measures"][measure]["hits"], document["measures"][measure]["pit80"]
     others = {band: found for band, found in hits.items() if band != MAIN_BAND}
     told = [
         f"the {100 * float(band):.0f}\u00a0% band held {number(found['hits'])} ({span(found['ordinary'])} is ordinary)"
         for band, found in others.items()
     ]
-    return f"Of the same {quarters(hits[MAIN_BAND]['of'])}, {' and '.join(told)}."
+    middle = f"{number(pit['hits'])} lay in the middle 80\u00a0% ({span(pit['ordinary'])} is ordinary)"
+    return (
+        f"Of the same {quarters(pit['of'])}, {' and '.join(told)}. With the edges of the bands shared out by lot "
+        f"(randomised PIT), {middle}."
+    )
 
 
 def bias(document: dict[str, Any], measure: str = "failures") -> str:
