@@ -9,7 +9,7 @@ Figure = dict[str, Any]
 BANDS = [("0.95", "fan-95", 0.62), ("0.8", "fan-80", 0.62), ("0.5", "fan-50", 0.62)]  # widest below
 
 
-def backtest_figure(summed: dict[str, Any], unit: str) -> Figure:
+def backtest_figure(summed: dict[str, Any], title: str) -> Figure:
     """One column a quarter: bands of 50, 80 and 95 in 100, the expected count as a line, the actual one as a mark."""
     rows = summed["quarters"]
     names = [quarter_name(row["from"]) for row in rows]
@@ -47,7 +47,7 @@ def backtest_figure(summed: dict[str, Any], unit: str) -> Figure:
             "ticktext": [short_name(row["from"]) for row in rows],
             "tickangle": 0,
         },
-        "yaxis": {"title": f"{unit.capitalize()} in 13 weeks", "rangemode": "tozero"},
+        "yaxis": {"title": f"{title} in 13 weeks", "rangemode": "tozero"},
         "barmode": "overlay",
         "showlegend": True,
     }

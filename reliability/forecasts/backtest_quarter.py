@@ -32,6 +32,7 @@ BANDS = (0.5, 0.8, 0.95)
 LEAST_SHOWN = 1e-9  # probabilities below it are not kept
 NOTHING_RAN = "no part was known to run"
 NO_LIFE = "no life was on record"
+ENDED = ("failed", "worn", "withdrawn", "not known")  # lives after which another part goes in
 
 
 @dataclass(frozen=True)
@@ -86,24 +87,42 @@ class Stand:
 
 @dataclass(frozen=True)
 class Measure:
-    """What is forecast and then happens; `unit` is one of it and `units` several, in words."""
+    """What is forecast and then happens; `units` names several, `came` says that they did: 12 failures happened."""
 
-    unit: str
+    title: str
     units: str
+    came: str
     forecast: Callable[[Stand], CountDistribution]
     actual: Callable[[Stand], int]
     rivals: Mapping[str, Callable[[Stand], CountDistribution | None]]
 
 
+def before(events: Callable[[Happened], int]) -> Callable[[Stand], CountDistribution | None]:
+    """The rival that copies the quarter before."""
+    return lambda stand: same_as_last_quarter(events(stand.before), stand.before, stand.first_record)
+
+
 MEASURES = {
     "failures": Measure(
-        unit="failure",
+        title="Failures",
         units="failures",
+        came="happened",
         forecast=lambda stand: stand.forecast.failures,
         actual=lambda stand: stand.happened.failures,
         rivals={
             "constant_rate": lambda stand: stand.rate("failed"),
-            "last_quarter": lambda stand: same_as_last_quarter(stand.before.failures, stand.before, stand.first_record),
+            "last_quarter": before(lambda happened: happened.failures),
+        },
+    ),
+    "parts_used": Measure(
+        title="Parts used",
+        units="parts",
+        came="were used",
+        forecast=lambda stand: stand.forecast.parts_used,
+        actual=lambda stand: stand.happened.parts_used,
+        rivals={
+            "constant_rate": lambda stand: stand.rate(*ENDED),
+            "last_quarter": before(lambda happened: happened.parts_used),
         },
     ),
 }

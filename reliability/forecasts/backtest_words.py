@@ -84,12 +84,11 @@ def other_bands(document: dict[str, Any], measure: str = "failures") -> str:
 
 def bias(document: dict[str, Any], measure: str = "failures") -> str:
     """Too many or too few over all quarters, with the band of the sum."""
-    found, units = document["measures"][measure]["bias"], MEASURES[measure].units
+    found, told = document["measures"][measure]["bias"], MEASURES[measure]
     low, high = found["bands"]["0.95"]
     actual, expected = found["actual"], found["expected"]
-    said = (
-        f"{number(actual)} {units} happened where {number(expected, 0 if expected >= 20 else 1)} were expected in all"
-    )
+    hoped = number(expected, 0 if expected >= 20 else 1)
+    said = f"{number(actual)} {told.units} {told.came} where {hoped} were expected in all"
     if expected >= ENOUGH_FOR_SHARES and round(100 * abs(actual / expected - 1)):
         said += f", {100 * abs(actual / expected - 1):.0f}\u00a0% {'more' if actual > expected else 'fewer'}"
     verdict = f"{span([low, high])} would be ordinary if each quarter missed by itself"
@@ -135,7 +134,9 @@ def miss(value: float) -> str:
 
 
 def came_later(document: dict[str, Any], measure: str = "failures") -> str:
-    """Failures no forecast could count on; empty if there were none."""
+    """Failures no forecast could count on; empty if there were none, or another measure is told."""
+    if measure != "failures":
+        return ""
     rows = document["measures"][measure]["quarters"]
     count = sum(row["in_modules_that_came_later"] for row in rows)
     if not count:

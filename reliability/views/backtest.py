@@ -40,7 +40,7 @@ def backtest(request: Any) -> HttpResponseBase:
     if document is not None and request.GET.get("as") == "json":
         return JsonResponse(document)
     if document is not None and request.GET.get("as") == "csv":
-        return quarters_file(document)
+        return quarters_file(document, form.cleaned_data["measure"])
     return render(request, "forecast/backtest.html", page(request, form, chosen, document, QuartersForm()))
 
 
@@ -61,7 +61,7 @@ def begin(request: Any, form: BacktestForm, chosen: Component) -> HttpResponse:
         arguments = {"component": chosen.code, "quarters": asked.cleaned_data["quarters"]}
         enqueue(ASKED, f"Judging past forecasts: {chosen.title}", arguments, request.user)
         messages.success(request, "Past forecasts are being judged in the background. You may leave this page.")
-    return redirect(f"{reverse('backtest')}?component={chosen.code}")
+    return redirect(f"{reverse('backtest')}?component={chosen.code}&measure={form.cleaned_data['measure']}")
 
 
 def works_for(request: Any, chosen: Component) -> list[Work]:
@@ -80,7 +80,7 @@ def page(
     request: Any, form: BacktestForm, chosen: Component, document: dict[str, Any] | None, asked: QuartersForm
 ) -> dict[str, Any]:
     """The frame, the work on its way or gone wrong, and the answer."""
-    works = works_for(request, chosen)
+    works, measure = works_for(request, chosen), form.cleaned_data["measure"]
     running = on_its_way(works)
     context = {
         **frame(),
@@ -89,8 +89,8 @@ def page(
         "quarters_form": asked,
         "document": document,
         "gone_wrong": gone_wrong(works, document),
-        "here": f"{reverse('backtest')}?component={chosen.code}",
-        "overview": overview(request),
+        "here": f"{reverse('backtest')}?component={chosen.code}&measure={measure}",
+        "overview": overview(request, measure),
     }
     if running is not None:
         context |= {
@@ -98,7 +98,7 @@ def page(
             "work_url": context["here"],
             "cancel_url": reverse("cancel_work", args=[running.pk]),
         }
-    return context | (answer(document) if document else {})
+    return context | (answer(document, measure) if document else {})
 
 
 def gone_wrong(works: list[Work], document: dict[str, Any] | None) -> Work | None:
@@ -109,7 +109,7 @@ def gone_wrong(works: list[Work], document: dict[str, Any] | None) -> Work | Non
     return None if document is not None and last.made_at < document["counted_at"] else last
 
 
-def answer(document: dict[str, Any], measure: str = "failures") -> dict[str, Any]:
+def answer(document: dict[str, Any], measure: str) -> dict[str, Any]:
     """Sentences, picture and table of one measure."""
     from reliability.charts.backtest import backtest_figure
     from reliability.forecasts import backtest_words as words
@@ -124,7 +124,7 @@ def answer(document: dict[str, Any], measure: str = "failures") -> dict[str, Any
         "chart": {
             "id": "backtest",
             "sentence": words.bias(document, measure),
-            "figure": backtest_figure(summed, MEASURES[measure].units),
+            "figure": backtest_figure(summed, MEASURES[measure].title),
         },
         "other_bands": words.other_bands(document, measure),
         "rivals": words.rivals(document, measure),
@@ -170,7 +170,7 @@ def rival_cell(rival: dict[str, Any] | None) -> Any:
     return {"text": about(rival["expected"]), "sub": f"missed by {about(rival['crps'])}"}
 
 
-def overview(request: Any) -> dict[str, Any]:
+def overview(request: Any, measure: str) -> dict[str, Any]:
     """Every component in one line, as far as it was judged."""
     from reliability.forecast_words import about
     from reliability.forecasts.backtest import latest
@@ -187,11 +187,14 @@ def overview(request: Any) -> dict[str, Any]:
     ]
     rows = []
     for component in request.seen(Component):
-        document, name = latest(component), {"text": component.title, "url": f"?component={component.code}"}
+        document, name = (
+            latest(component),
+            {"text": component.title, "url": f"?component={component.code}&measure={measure}"},
+        )
         if document is None or not document["judged"]:
             rows.append([{**name, "sub": "not judged yet"}, *([None] * 6)])
             continue
-        found = document["measures"]["failures"]
+        found = document["measures"][measure]
         hits, rivals = found["hits"]["0.8"], found["rivals"]
         rows.append(
             [
@@ -206,7 +209,7 @@ def overview(request: Any) -> dict[str, Any]:
     return {"columns": columns, "rows": rows}
 
 
-def quarters_file(document: dict[str, Any], measure: str = "failures") -> HttpResponseBase:
+def quarters_file(document: dict[str, Any], measure: str) -> HttpResponseBase:
     """One line a quarter."""
     rows = document["measures"][measure]["quarters"] if document["judged"] else []
     bands, rivals = document["bands"], ("constant_rate", "last_quarter")
@@ -222,4 +225,4 @@ def quarters_file(document: dict[str, Any], measure: str = "failures") -> HttpRe
             found = row["rivals"][rival]
             line += ["", ""] if found is None else [round(found["expected"], 3), round(found["crps"], 4)]
         lines.append(line)
-    return as_csv(f"past forecasts {document['component']}", head, lines)
+    return as_csv(f"past forecasts {document['component']} {measure}", head, lines)

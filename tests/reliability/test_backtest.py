@@ -69,6 +69,19 @@ def test_a_quarter_is_judged_by_what_happened_in_it(fleet: SmallFleet) -> None:
 
 
 @pytest.mark.django_db
+def test_parts_used_are_judged_by_what_went_in(fleet: SmallFleet) -> None:
+    """Every nut of this fleet fails and is followed in a position of its own, so nothing went in after another."""
+    assert judge_quarter(Stand(fleet.component, QUARTER))["measures"]["parts_used"]["actual"] == 0
+    renewed = QUARTER + dt.timedelta(days=3)
+    old = fleet.n1.fittings.filter(removed_on__lt=QUARTER).first()
+    Fitting.objects.create(code="NEXT", module=old.module, position=old.position, part=fleet.n2, fitted_on=renewed)
+    rebuild_clocks()
+    found = judge_quarter(Stand(fleet.component, QUARTER))["measures"]["parts_used"]
+    assert found["actual"] == 1
+    assert found["expected"] > 10
+
+
+@pytest.mark.django_db
 def test_the_rivals_are_the_plain_reckonings(fleet: SmallFleet) -> None:
     """Constant rate by hand: failures so far by days lived so far, times the parts and the 91 days."""
     before = QUARTER - dt.timedelta(days=1)

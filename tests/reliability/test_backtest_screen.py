@@ -36,8 +36,6 @@ def quarter(
     """A judged quarter: our forecast and both rivals Poisson. At a mean of 20 the 80 % band (14 to 26) promises 86 %:
     of eight such bands 6 to 8 hits are ordinary.
     """
-    ours = poisson_count(mean)
-    rivals = {"constant_rate": poisson_count(rate), "last_quarter": None if last is None else poisson_count(last)}
     return {
         "from": begin,
         "until": begin,
@@ -45,14 +43,21 @@ def quarter(
         "positions": 50,
         "in_modules_that_came_later": 0,
         "measures": {
-            "failures": {
-                **scored(ours, actual),
-                "actual": actual,
-                "pit": 0.5,
-                "pmf": kept_part(ours),
-                "rivals": {key: None if each is None else scored(each, actual) for key, each in rivals.items()},
-            }
+            "failures": measured(actual, mean, rate, last),
+            "parts_used": measured(2 * actual, 2 * mean, 2 * rate, last),
         },
+    }
+
+
+def measured(actual: int, mean: float, rate: float, last: float | None) -> dict[str, Any]:
+    ours = poisson_count(mean)
+    rivals = {"constant_rate": poisson_count(rate), "last_quarter": None if last is None else poisson_count(last)}
+    return {
+        **scored(ours, actual),
+        "actual": actual,
+        "pit": 0.5,
+        "pmf": kept_part(ours),
+        "rivals": {key: None if each is None else scored(each, actual) for key, each in rivals.items()},
     }
 
 
@@ -95,6 +100,16 @@ def test_the_page_says_hits_bias_and_rivals_and_draws_them(manager: Client, nut:
     assert "They do not certify that any part is safe" in text
     assert "Oct–Dec 2024" in text
     assert page.context["chart"]["figure"]["data"][-1]["y"] == [20, 18, 23, 25, 15, 21, 27, 19]
+
+
+def test_parts_used_are_judged_alike(manager: Client, nut: Component) -> None:
+    good(nut)
+    page = manager.get("/forecast/backtest/?component=NUT&measure=parts_used")
+    assert "336 parts were used where 320 were expected in all" in text_of(page)
+    assert page.context["chart"]["figure"]["layout"]["yaxis"]["title"] == "Parts used in 13 weeks"
+    file = manager.get("/forecast/backtest/?component=NUT&measure=parts_used&as=csv")
+    assert b"".join(file.streaming_content).decode("utf-8-sig").splitlines()[1].split(",")[4] == "40"
+    assert manager.get("/forecast/backtest/?measure=hats").status_code == 422
 
 
 def test_one_line_for_the_forecast_screen(nut: Component) -> None:
@@ -154,7 +169,7 @@ def test_it_is_begun_once_followed_and_stopped(manager: Client, nut: Component) 
     assert "were not judged yet" in text_of(manager.get("/forecast/backtest/?component=NUT"))
     for _ in range(2):
         reply = manager.post("/forecast/backtest/?component=NUT", {"quarters": "4"})
-        assert (reply.status_code, reply["Location"]) == (302, "/forecast/backtest/?component=NUT")
+        assert (reply.status_code, reply["Location"]) == (302, "/forecast/backtest/?component=NUT&measure=failures")
     work = Work.objects.get()
     assert (work.kind, work.arguments) == ("backtest", {"component": "NUT", "quarters": 4})
     text = text_of(manager.get("/forecast/backtest/?component=NUT"))

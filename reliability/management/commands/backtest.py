@@ -57,7 +57,8 @@ def lines_of(document: dict[str, Any]) -> list[str]:
             f"{row['from']:<14}{row['actual']:>9}{about(row['expected']):>10}{ends}{about(row['crps']):>11}{mark}"
         )
     said = [words.bias(document), words.other_bands(document), *words.rivals(document)]
-    return [*first, *table, *said, *filter(None, (words.came_later(document), words.missing(document)))]
+    used = [f"Parts used: {words.bias(document, 'parts_used')} {words.line(document, 'parts_used')['sentence']}"]
+    return [*first, *table, *said, *used, *filter(None, (words.came_later(document), words.missing(document)))]
 
 
 def quarters(text: str) -> int:
