@@ -49,10 +49,7 @@ def change(document: Document, base: Document, difference: Document, what_if: Wh
     _, end = days_of(document)
     said = assumed(what_if, document["clock"])
     words = f"{said[:1].upper()}{said[1:]}: {fewer(difference)} {plural(name)} failing by {long_day(end)}."
-    planned = document["planned"]["mean"]
-    if planned >= 0.05:
-        low, high = document["planned"]["bands"]["0.8"]
-        words += f" About {about(planned)} would be changed while they still work ({between([low, high])})."
+    words += planned_instead(document["planned"], base["planned"])
     used, had = document["total"]["parts_used"], base["total"]["parts_used"]
     more = plan_for(used) - plan_for(had)
     if more:
@@ -61,6 +58,17 @@ def change(document: Document, base: Document, difference: Document, what_if: Wh
     else:
         words += f" The {number(plan_for(used))} parts that are enough in {service_of(used)} stay the same."
     return words
+
+
+def planned_instead(planned: Document, before: Document) -> str:
+    """Working parts that would be changed, where that is another number than now; empty otherwise."""
+    if abs(planned["mean"] - before["mean"]) < 0.5:
+        return ""
+    instead = f" instead of {about(before['mean'])}" if before["mean"] >= 0.05 else ""
+    return (
+        f" About {about(planned['mean'])} would be changed while they still work "
+        f"({between(planned['bands']['0.8'])}){instead}."
+    )
 
 
 def of_kept(question: Document) -> WhatIf:

@@ -9,6 +9,7 @@ from fleet.formats import counted, long_day, number, rounded
 from reliability.forecasts.horizon import WEEK, WEEKS, next_quarter
 
 Document = dict[str, Any]
+USUAL_LEVEL = "0.95"
 
 
 def about(mean: float) -> str:
@@ -24,12 +25,17 @@ def between(band: list[Any]) -> str:
 
 def plan_for(told: Document) -> int:
     """The quantity that is enough at the service level asked for."""
-    return int(next(iter(told["plan_for"].values())))
+    return int(told["plan_for"][_level_of(told)])
 
 
 def service_of(told: Document) -> str:
     """`95 of 100`"""
-    return out_of(float(next(iter(told["plan_for"]))))
+    return out_of(float(_level_of(told)))
+
+
+def _level_of(told: Document) -> str:
+    """The level asked for stands beside the usual one, if it is another."""
+    return next((level for level in told["plan_for"] if level != USUAL_LEVEL), USUAL_LEVEL)
 
 
 def out_of(share: float) -> str:

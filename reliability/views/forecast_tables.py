@@ -137,7 +137,7 @@ def compared(answer: Answer) -> Document | None:
         return None
     base, changed, difference = answer.documents[answer.chosen.code], answer.changed, answer.difference
     columns = [
-        {"key": "what", "label": ""},
+        {"key": "what", "label": "Count"},
         {"key": "base", "label": "Base case", "numeric": True},
         {"key": "changed", "label": "With this", "numeric": True},
         {"key": "difference", "label": "Difference", "numeric": True},
