@@ -6,8 +6,9 @@ from typing import Any
 
 from django.db import models
 from django.http import Http404
+from django.urls import reverse
 
-from fleet.models import Finding, Fitting, Module, Placement, Reading, Stop, Visit
+from fleet.models import BenchHours, BenchJob, Finding, Fitting, Module, Placement, Reading, StockMove, Stop, Visit
 
 ENTERED: dict[str, type[models.Model]] = {
     "visit": Visit,
@@ -18,6 +19,9 @@ ENTERED: dict[str, type[models.Model]] = {
     "placement": Placement,
 }
 DOUBTED = {**ENTERED, "module": Module}
+# Of stores and the bench: corrected and struck out the same way, on pages of their own.
+STOCKED: dict[str, type[models.Model]] = {"move": StockMove, "job": BenchJob, "hours": BenchHours}
+CORRECTED = {**ENTERED, **STOCKED}
 
 
 def kind_of(record: models.Model) -> str:
@@ -28,6 +32,17 @@ def module_of(record: Any) -> Module:
     if isinstance(record, Module):
         return record
     return record.visit.module if isinstance(record, Finding) else record.module
+
+
+def home_of(record: Any) -> tuple[str, str]:
+    """The words and the address of the page that a record is shown on."""
+    if isinstance(record, StockMove):
+        return record.store.title, reverse("store", args=[record.store.code])
+    if isinstance(record, BenchJob | BenchHours):
+        job = record.job if isinstance(record, BenchHours) else record
+        return f"{job.module.code} on the bench", reverse("bench_job", args=[job.code])
+    module = module_of(record)
+    return module.code, reverse("module", args=[module.code])
 
 
 def seen_record(request: Any, kind: str, pk: int, *, kinds: dict[str, type[models.Model]]) -> Any:

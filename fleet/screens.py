@@ -8,7 +8,7 @@ from typing import Any
 from django.http import HttpRequest
 from django.urls import NoReverseMatch, reverse
 
-from fleet.rights import CATALOGUE, LIFE, LOG, PEOPLE, SEE, may
+from fleet.rights import BENCH, CATALOGUE, LIFE, LOG, PEOPLE, SEE, STORES, may
 
 
 @dataclass(frozen=True)
@@ -23,6 +23,8 @@ SCREENS = [
     Screen("Sites", "sites", SEE),
     Screen("Modules", "modules", SEE),
     Screen("Log", "log", LOG),
+    Screen("Bench", "bench", BENCH),
+    Screen("Stores", "stores", STORES),
     Screen("Life", "life", LIFE),
     Screen("Forecast", "forecast", LIFE),
 ]

@@ -8,7 +8,19 @@ from typing import Any, ClassVar
 from django import forms
 
 from fleet.forms.record import CodeInput, DayInput, InstantInput
-from fleet.models import FailureMode, Fitting, FoundBy, FoundKind, Left, Part, Person, Position, RemovalReason, Site
+from fleet.models import (
+    FailureMode,
+    Fitting,
+    FoundBy,
+    FoundKind,
+    Left,
+    Outcome,
+    Part,
+    Person,
+    Position,
+    RemovalReason,
+    Site,
+)
 from fleet.models.zones import zone
 
 
@@ -186,12 +198,31 @@ class CorrectPlacement(CorrectForm):
         return {"site": self.record.site.code}
 
 
+class CorrectJob(CorrectForm):
+    """The record's own “reason” is why it came; the form's is why it is corrected."""
+
+    names = ("received_on", "started_on", "finished_on", "outcome", "note")
+    received_on = DayInput(label="Came on")
+    started_on = DayInput(required=False, label="Work began on")
+    finished_on = DayInput(required=False, label="Finished on", help_text="Empty: the job is open.")
+    outcome = forms.ChoiceField(choices=[("", "open"), *Outcome.choices], required=False)
+    note = forms.CharField(max_length=4000, required=False, widget=forms.Textarea(attrs={"rows": 3}))
+
+
+class CorrectHours(CorrectForm):
+    names = ("day", "hours")
+    day = DayInput()
+    hours = forms.FloatField(min_value=0, max_value=24)
+
+
 CORRECT_FORMS: dict[str, type[CorrectForm]] = {
     "visit": CorrectVisit,
     "fitting": CorrectFitting,
     "finding": CorrectFinding,
     "stop": CorrectStop,
     "placement": CorrectPlacement,
+    "job": CorrectJob,
+    "hours": CorrectHours,
 }
 
 

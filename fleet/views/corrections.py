@@ -8,19 +8,18 @@ from django.contrib import messages
 from django.core.exceptions import PermissionDenied
 from django.http import Http404, HttpResponse
 from django.shortcuts import redirect, render
-from django.urls import reverse
 
 from fleet.actions.checks_rights import entries_behind
 from fleet.actions.errors import RecordError
 from fleet.forms.correct import CORRECT_FORMS, StrikeOutForm
 from fleet.forms.errors import add_record_error
-from fleet.records_by_kind import ENTERED, module_of, seen_record
+from fleet.records_by_kind import CORRECTED, home_of, seen_record
 from fleet.rights import LOG, may_correct, needs
 
 
 def opened(request: Any, kind: str, pk: int) -> Any:
     """The record, if the person may see and correct it."""
-    record = seen_record(request, kind, pk, kinds=ENTERED)
+    record = seen_record(request, kind, pk, kinds=CORRECTED)
     behind = [*entries_behind(record, set()), *(entries_behind(record, {"reason"}) if kind == "fitting" else [])]
     if not any(may_correct(request.user, entry) for entry in behind):
         raise PermissionDenied
@@ -28,8 +27,8 @@ def opened(request: Any, kind: str, pk: int) -> Any:
 
 
 def crumbs_of(record: Any) -> list[dict[str, str]]:
-    module = module_of(record)
-    return [{"name": module.code, "url": reverse("module", args=[module.code])}]
+    name, url = home_of(record)
+    return [{"name": name, "url": url}]
 
 
 @needs(LOG)
@@ -50,7 +49,7 @@ def correct_record(request: Any, kind: str, pk: int) -> HttpResponse:
             add_record_error(form, error)
         else:
             messages.success(request, f"The {kind} is corrected; its history keeps what stood before.")
-            return redirect("module", tag=module_of(record).code)
+            return redirect(home_of(record)[1])
     return page(request, form, record, kind, title=f"Correct a {kind}", submit="Store the correction")
 
 
@@ -67,17 +66,17 @@ def strike_out_record(request: Any, kind: str, pk: int) -> HttpResponse:
             add_record_error(form, error)
         else:
             messages.success(request, f"The {kind} is struck out. It stays readable and leaves every statistic.")
-            return redirect("module", tag=module_of(record).code)
+            return redirect(home_of(record)[1])
     return page(request, form, record, kind, title=f"Strike out a {kind}", submit="Strike it out")
 
 
 def page(request: Any, form: Any, record: Any, kind: str, *, title: str, submit: str) -> HttpResponse:
     context = {
         "title": title,
-        "lead": f"Of module {module_of(record).code}: {record}.",
+        "lead": f"Of {home_of(record)[0]}: {record}.",
         "form": form,
         "submit": submit,
         "crumbs": crumbs_of(record),
-        "cancel_url": reverse("module", args=[module_of(record).code]),
+        "cancel_url": home_of(record)[1],
     }
     return render(request, "list/edit.html", context, status=422 if form.is_bound else 200)

@@ -4,13 +4,14 @@ from __future__ import annotations
 
 from typing import Any
 
+from django.db.models import Q
 from django.http import HttpResponse
 from django.shortcuts import redirect, render
 from django.urls import reverse
 
 from fleet.forms.filters import folded, module_words
-from fleet.models import Module, Part, Site
-from fleet.rights import CATALOGUE, SEE, may, needs
+from fleet.models import BenchJob, Module, Part, Site, Store, SupplyOrder
+from fleet.rights import BENCH, CATALOGUE, SEE, STORES, may, needs
 
 MOST = 20
 
@@ -63,7 +64,43 @@ def found(request: Any, words: str) -> list[dict[str, Any]]:
                 ],
             }
         )
+    groups += stocked(request, words)
     for group in groups:
         group["more_than_shown"] = len(group["rows"]) > MOST
         group["rows"] = group["rows"][:MOST]
     return [group for group in groups if group["rows"]]
+
+
+def stocked(request: Any, words: str) -> list[dict[str, Any]]:
+    """Stores, supply orders and open bench jobs, as far as the person may see them."""
+    code = words.upper()
+    stores = folded(request.seen(Store), "folded", words) if may(request.user, STORES) else request.seen(Store).none()
+    jobs = request.seen(BenchJob).open() if may(request.user, BENCH) else request.seen(BenchJob).none()
+    orders = request.seen(SupplyOrder).filter(Q(code__contains=code) | Q(supplier__icontains=words))
+    of_module = jobs.filter(Q(code__contains=code) | Q(module__code__contains=code)).select_related("module")
+    return [
+        {
+            "name": "Stores",
+            "all_url": reverse("stores"),
+            "rows": [
+                {"name": each.title, "url": reverse("store", args=[each.code]), "more": each.code}
+                for each in stores.order_by("code_order")[: MOST + 1]
+            ],
+        },
+        {
+            "name": "Supply orders",
+            "all_url": f"{reverse('supply')}?order={words}",
+            "rows": [
+                {"name": each.code, "url": reverse("supply_order", args=[each.code]), "more": each.supplier}
+                for each in orders.order_by("-ordered_on", "code_order")[: MOST + 1]
+            ],
+        },
+        {
+            "name": "On the bench",
+            "all_url": f"{reverse('bench_jobs')}?module={words}",
+            "rows": [
+                {"name": each.module.code, "url": reverse("bench_job", args=[each.code]), "more": each.stage}
+                for each in of_module.order_by("module__code_order")[: MOST + 1]
+            ],
+        },
+    ]

@@ -10,7 +10,22 @@ from typing import Any
 
 from django.urls import URLPattern, URLResolver, get_resolver
 
-from fleet.models import Finding, LooksWrong, Person, Reading, Redesign, Role, RolloutStep, Stop, Visit, Work
+from fleet.models import (
+    BenchHours,
+    BenchJob,
+    Finding,
+    LooksWrong,
+    Person,
+    Reading,
+    Redesign,
+    Role,
+    RolloutStep,
+    Stop,
+    SupplyLine,
+    SupplyOrder,
+    Visit,
+    Work,
+)
 from tests import factories as make
 from tests.reliability.kept_forecasts import make_kept_forecast
 
@@ -19,6 +34,9 @@ NOT_OURS = {"static"}
 
 
 KINDS = ("visit", "fitting", "finding", "stop", "reading", "placement")
+# Corrected and struck out at the same addresses, but nobody marks them as looking wrong.
+STOCKED = ("move", "job", "hours")
+STAYS = {("correct_record", "reading"), ("correct_record", "move")}  # struck out and entered again
 
 
 @dataclass(frozen=True)
@@ -69,14 +87,23 @@ class Place:
         self.kept = make_kept_forecast(component=carriage.nuts, made_by=carriage.manager, sites=[self.site])
         self.work = Work.objects.create(kind="import_records", person=carriage.manager)
 
+        self.store = make.make_store(code=f"WEIR-SHELF-{make.number()}", site=self.site)
+        self.move = make.stock(self.store, carriage.n1, 5)
+        self.order = SupplyOrder.objects.create(code=f"SO-{make.number()}", ordered_on=at.date())
+        self.line = SupplyLine.objects.create(order=self.order, part=carriage.n1, quantity=3)
+        self.job = BenchJob.objects.create(
+            code=f"J-{make.number()}", module=self.module, depot=self.site, received_on=at.date()
+        )
+        self.hours = BenchHours.objects.create(job=self.job, person=carriage.manager, day=at.date(), hours=1)
+
     def record(self, kind: str) -> Any:
         return getattr(self, kind)
 
     def addresses(self, route: Route) -> Iterator[str]:
         """Every address of a route at this place; a new sort of address has to be added here."""
         if "kind" in route.names:
-            for kind in KINDS:
-                if (route.name, kind) != ("correct_record", "reading"):  # readings are struck out and entered again
+            for kind in KINDS if route.name == "say_looks_wrong" else (*KINDS, *STOCKED):
+                if (route.name, kind) not in STAYS:
                     yield self.fill(route, kind=kind, pk=self.record(kind).pk)
         else:
             yield self.fill(route)
@@ -93,6 +120,9 @@ class Place:
             "catalogue/components": carriage.nuts.code,
             "catalogue/types": carriage.type.code,
             "people/": carriage.crew.code,
+            "stores/": self.store.code,
+            "supply/": self.order.code,
+            "bench/jobs/": self.job.code,
             "redesigns/": self.redesign.code,
             "forecast/planned-replacement/": carriage.nuts.code,
         }
@@ -101,6 +131,7 @@ class Place:
             "code": next((code for start, code in codes.items() if route.pattern.startswith(start)), None),
             "mode": carriage.worn.code,
             "position": carriage.nut.code,
+            "part": carriage.n1.code,
             "pk": self.key_of(route),
             "work_id": self.work.pk,
             "uidb64": "MQ",

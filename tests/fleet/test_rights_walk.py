@@ -11,7 +11,15 @@ from tests.fleet.rights_world import WHO, Place, Route, make_who, routes
 
 pytestmark = pytest.mark.django_db
 # Addresses whose object is the catalogue's, a person or a work: not bound to a site.
-NOT_OF_A_SITE = ("catalogue/", "people/", "work/", "password/", "redesigns/", "forecast/planned-replacement/")
+NOT_OF_A_SITE = (
+    "catalogue/",
+    "people/",
+    "work/",
+    "password/",
+    "redesigns/",
+    "forecast/planned-replacement/",
+    "supply/",
+)
 FINE = {200, 302, 304, 405, 422}
 ALL = list(routes())
 
