@@ -129,7 +129,7 @@ class LognormalMeanCurve:
     def at(self, psi: float, free: float) -> CurvePoint:
         steepness = math.exp(free)
         straight, half = -steepness * (psi - self.log_reference), 0.5 / steepness
-        return free, straight + half, 1.0, straight - half, 0.0, straight + half, 0.0, -steepness
+        return free, straight + half, 1.0, straight - half, 0.0, straight + half, 0.0, -steepness, -steepness
 
 
 def fit_lognormal(lifetimes: Lifetimes) -> LognormalFit:

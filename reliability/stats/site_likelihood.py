@@ -22,7 +22,7 @@ from reliability.stats.weibull_likelihood import LARGEST_LOG_HAZARD, reference_l
 
 SMALLEST_SPREAD, LARGEST_SPREAD = 1e-4, 30.0
 COARSE_STEP = 0.3
-# log posterior this far below its top adds nothing to the last digits
+# log posterior this far below its top adds nothing to the digits that count
 NEGLIGIBLE = 16.0
 
 
@@ -35,14 +35,16 @@ class SpreadNodes:
 
 
 def spread_nodes(prior_mean: float, lowest: float, highest: float, step: float) -> SpreadNodes:
-    """Trapezoid in log nu under an exponential prior; the lowest node carries the prior mass below it as well."""
+    """Trapezoid in log nu under an exponential prior; the lowest node carries the prior mass below it as well.
+
+    However small the spread, the likelihood then no longer changes: so little is lost below a node near that.
+    """
     count = max(8, math.ceil(math.log(highest / lowest) / step) + 1)
     logs = np.linspace(math.log(lowest), math.log(highest), count)
     spreads = np.exp(logs)
     masses = spreads / prior_mean * np.exp(-spreads / prior_mean) * (logs[1] - logs[0])
     masses[[0, -1]] *= 0.5
-    if lowest <= SMALLEST_SPREAD:
-        masses[0] += -math.expm1(-lowest / prior_mean)
+    masses[0] += -math.expm1(-lowest / prior_mean)
     return SpreadNodes(spreads, np.log(masses))
 
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -19,7 +19,11 @@ if TYPE_CHECKING:
 OUTWARD = np.array([-60.0, -30.0, -16.0, -11.0, -8.0, -6.5, -5.0, -3.0, 0.0, 3.0, 4.0, 5.0, 6.0, 7.0, 8.0, 12.0, 20.0])
 # where the integrand has fallen by exp(-17) the rest is below 1e-7 of it
 DEPTH = 17.0
-STEP, MOST_NODES = 0.6, 200
+# even steps in standard deviations, and at most in u, since functions of exp(u) need so many however wide they are
+STEP, WIDEST_STEP, FEWEST_NODES, MOST_NODES = 0.85, 0.6, 16, 200
+# nodes laid for another shape and level serve while the integrand still falls so far at both ends and its step there
+# is not much wider than it would be
+STILL_DEEP, STILL_CLOSE = 12.0, 1.3
 MODE_STEPS = 40
 # rows a site from which sums of powers are cheaper than the rows themselves
 MANY_ROWS = 12
@@ -47,6 +51,8 @@ class SiteIntervals:
     concerned: BoolArray
     first_row: IntArray
     site: NDArray[np.int64]  # position among the concerned sites of each row
+    # the spreads last asked for and the nodes laid for them: near evaluations share them
+    laid: list[tuple[FloatArray, FloatArray]] = field(default_factory=list, repr=False)
 
 
 def site_intervals(lifetimes: Lifetimes, log_reference: float) -> SiteIntervals:
@@ -113,16 +119,41 @@ def _integrals(
     precision = 1.0 / spreads[None, :]
     power = sums.failures[intervals.concerned][:, None] + precision
     rate = sums.hazard[intervals.concerned][:, None] + precision
-    u = _nodes(intervals, shape, level, power, rate)
-    z = np.exp(u)
-    rows = _row_sums(intervals, shape, level, u)
-    logs = power[..., None] * u - rate[..., None] * z + rows[0]
+    found = None
+    for known, laid in intervals.laid:
+        if known is spreads:
+            u = laid
+            found = _at_nodes(intervals, shape, level, power, rate, u)
+    if found is None:
+        u = _nodes(intervals, shape, level, power, rate)
+        intervals.laid[:] = [(spreads, u)]
+        z = np.exp(u)
+        rows = _row_sums(intervals, shape, level, u)
+        found = z, rows, power[..., None] * u - rate[..., None] * z + rows[0]
+    z, rows, logs = found
     highest = logs.max(axis=-1, keepdims=True)
     shares = np.exp(logs - highest)
     total = shares.sum(axis=-1, keepdims=True)
     norm = precision * np.log(precision) - special.gammaln(precision)
     value = (highest + np.log(total))[..., 0] + np.log(u[..., 1] - u[..., 0]) + norm
     return z, rows, shares / total, value
+
+
+def _at_nodes(
+    intervals: SiteIntervals, shape: float, level: float, power: FloatArray, rate: FloatArray, u: FloatArray
+) -> tuple[FloatArray, FloatArray, FloatArray] | None:
+    """z, the rows' terms and the log integrand at nodes laid before; None where they no longer hold it all."""
+    z = np.exp(u)
+    rows = _row_sums(intervals, shape, level, u)
+    logs = power[..., None] * u - rate[..., None] * z + rows[0]
+    highest = logs.max(axis=-1)
+    ends = np.maximum(logs[..., 0], logs[..., -1])
+    if not (highest - ends > STILL_DEEP).all():
+        return None
+    top = np.argmax(logs, axis=-1)[..., None]
+    bend = np.take_along_axis(rows[5] - rate[..., None] * z, top, axis=-1)[..., 0]
+    steps = (u[..., 1] - u[..., 0]) * np.sqrt(np.maximum(-bend, 0.0))
+    return (z, rows, logs) if bool((steps < STILL_CLOSE).all()) else None
 
 
 def _nodes(intervals: SiteIntervals, shape: float, level: float, power: FloatArray, rate: FloatArray) -> FloatArray:
@@ -142,8 +173,8 @@ def _nodes(intervals: SiteIntervals, shape: float, level: float, power: FloatArr
     first = np.maximum(np.argmax(inside, axis=-1) - 1, 0)
     last = np.minimum(count - np.argmax(inside[..., ::-1], axis=-1), count - 1)
     low, high = (np.take_along_axis(u, at[..., None], axis=-1) for at in (first, last))
-    steps = (high - low)[..., 0] / (STEP * np.minimum(width, 1.0))
-    nodes = int(min(max(np.ceil(steps.max()), 24), MOST_NODES))
+    steps = (high - low)[..., 0] / np.minimum(STEP * width, WIDEST_STEP)
+    nodes = int(min(max(np.ceil(steps.max()), FEWEST_NODES), MOST_NODES))
     return low + (high - low) * np.linspace(0.0, 1.0, nodes + 1)
 
 

@@ -31,6 +31,8 @@ from reliability.stats.weibull_likelihood import weibull_likelihood
 # beyond these the sites explain everything and the shape nothing
 LARGEST_SHAPE = 500.0
 MOST_STEPS = 60
+# shapes tried first; all of the grid only where the search from these fails
+FIRST_STARTS = 3
 
 
 @dataclass(frozen=True, eq=False, kw_only=True)
@@ -90,9 +92,12 @@ def fit_weibull_with_site_spread(lifetimes: Lifetimes, *, spread_prior: float = 
     """
     refuse_unbounded_shape(lifetimes)
     likelihood = site_likelihood(lifetimes, spread_prior)
-    top = _search(likelihood, _start_point(lifetimes, likelihood))
+    points = _start_points(lifetimes)
+    top = _search(likelihood, _highest(likelihood, points[:FIRST_STARTS]))
+    if not top.converged:
+        top = _search(likelihood, _highest(likelihood, points))
     _refuse_unsettled(top)
-    likelihood = _refined(likelihood, top)
+    likelihood = _refined(likelihood, top, points[0])
     top = _search(likelihood, (float(top.point[0]), float(top.point[1])))
     _refuse_unsettled(top)
     covariance = parameter_covariance(top.hessian)
@@ -120,6 +125,10 @@ def _by_label(lifetimes: Lifetimes, multipliers: FloatArray) -> dict[Any, float]
     return dict(zip(lifetimes.site_labels.tolist(), multipliers.tolist(), strict=True))
 
 
+def _highest(likelihood: SiteLikelihood, points: list[tuple[float, float]]) -> tuple[float, float]:
+    return max(points, key=lambda point: likelihood(*point)[0])
+
+
 def _search(likelihood: SiteLikelihood, start: tuple[float, float]) -> Maximum:
     lower, upper = zip((LOG_SHAPE_LIMITS[0], math.log(LARGEST_SHAPE)), LEVEL_LIMITS, strict=True)
     return maximise_plane(likelihood, start, lower, upper, LARGEST_STEP, MOST_STEPS)
@@ -136,19 +145,26 @@ def _refuse_unsettled(top: Maximum) -> None:
         )
 
 
-def _start_point(lifetimes: Lifetimes, likelihood: SiteLikelihood) -> tuple[float, float]:
-    """The best of a grid of shapes, each with the level that independent lives would have."""
+def _start_points(lifetimes: Lifetimes) -> list[tuple[float, float]]:
+    """A grid of shapes, each with the level that independent lives would have; the likeliest such shape first, then
+    the steeper ones: sites that differ hide a steeper shape."""
     independent = weibull_likelihood(lifetimes)
     points = [(math.log(shape), independent.best_level(shape)) for shape in START_SHAPES]
-    return max(points, key=lambda point: likelihood(*point)[0])
+    best = int(np.argmax([independent(*point)[0] for point in points]))
+    return points[best:] + points[:best]
 
 
-def _refined(likelihood: SiteLikelihood, top: Maximum) -> SiteLikelihood:
-    """The same with nodes of nu laid closely where the posterior is: many sites make it narrow."""
-    shares = likelihood.spread_shares(float(top.point[0]), float(top.point[1]))
+def _refined(likelihood: SiteLikelihood, top: Maximum, alike: tuple[float, float]) -> SiteLikelihood:
+    """The same with nodes of nu laid closely where the posterior is: many sites make it narrow.
+
+    It must also hold where sites were alike, at the point of independent lives: the lower limits lie that way.
+    """
+    points = ((float(top.point[0]), float(top.point[1])), alike)
+    at_top, at_alike = (likelihood.spread_shares(*point) for point in points)
     spreads = likelihood.nodes.spreads
-    inside = np.flatnonzero(shares > math.exp(-NEGLIGIBLE))
-    low, high = max(int(inside[0]) - 1, 0), min(int(inside[-1]) + 1, spreads.size - 1)
+    below = (at_top > math.exp(-NEGLIGIBLE)) | (at_alike > math.exp(-NEGLIGIBLE))
+    low = max(int(np.flatnonzero(below)[0]) - 1, 0)
+    high = min(int(np.flatnonzero(at_top > math.exp(-NEGLIGIBLE))[-1]) + 1, spreads.size - 1)
     sites = likelihood.failures.size
     step = min(0.4, math.sqrt(2.0 / sites))
     nodes = spread_nodes(likelihood.prior_mean, float(spreads[low]), float(spreads[high]), step)

@@ -29,7 +29,7 @@ class ShapeCurve:
         return level
 
     def at(self, psi: float, free: float) -> CurvePoint:
-        return psi, free, 0.0, 1.0, 0.0, 0.0, 1.0, 0.0
+        return psi, free, 0.0, 1.0, 0.0, 0.0, 1.0, 0.0, 0.0
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -59,7 +59,7 @@ class QuantileCurve(_LevelFromShape):
     def at(self, psi: float, free: float) -> CurvePoint:
         shape = math.exp(free)
         turn = -shape * (psi - self.log_reference)
-        return free, self.log_hazard + turn, 1.0, turn, 0.0, turn, 0.0, -shape
+        return free, self.log_hazard + turn, 1.0, turn, 0.0, turn, 0.0, -shape, -shape
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -76,7 +76,7 @@ class SurvivalCurve(_LevelFromShape):
 
     def at(self, psi: float, free: float) -> CurvePoint:
         turn = -math.exp(free) * (self.log_age - self.log_reference)
-        return free, psi + turn, 1.0, turn, 0.0, turn, 0.0, 1.0
+        return free, psi + turn, 1.0, turn, 0.0, turn, 0.0, 1.0, 0.0
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -98,4 +98,4 @@ class MeanCurve(_LevelFromShape):
         turn = level - float(special.digamma(1.0 + short))
         # the second derivative of log Gamma is the Hurwitz zeta function with exponent 2
         bend = turn + float(special.zeta(2.0, 1.0 + short)) * short
-        return free, level, 1.0, turn, 0.0, bend, 0.0, -shape
+        return free, level, 1.0, turn, 0.0, bend, 0.0, -shape, -shape
