@@ -14,13 +14,12 @@ from typing import TYPE_CHECKING, Any
 
 from fleet.models import Component
 from reliability.forecasts.horizon import WEEK, WEEKS
+from reliability.forecasts.learned import learned
 from reliability.kept import kept
-from reliability.lifetimes_from_fleet import lives
 from reliability.running_parts import RunningRow, running_parts
 
 if TYPE_CHECKING:
-    from reliability.stats.life_posterior import LifePosterior
-    from reliability.stats.lifetimes import Lifetimes
+    from reliability.stats.kept_draws import KeptDraws
     from reliability.stats.replacement_posterior import ReplacementCosts
 
 DRAWS = 200
@@ -79,13 +78,12 @@ def replacement_document(question: ReplacementQuestion) -> dict[str, Any]:
     }
     if not part or document["use_a_day"] <= 0:
         return document
-    found = lives(question.component, by="part", as_of=question.as_of)
-    document["failures_seen"] = found.count("failed", group=part)
-    if not document["failures_seen"] or found.lifetimes is None:
+    design = learned(question.component, question.as_of).designs.get(part)
+    document["failures_seen"] = design.failures if design is not None else 0
+    if design is None or not design.failures:
         return document
-    posterior = _posterior(found.lifetimes.subset(found.lifetimes.groups == part), question.component)
     pace = document["use_a_day"] / document["positions"]
-    return {**document, "told": _told(question, posterior, dict(use[part]), pace)}
+    return {**document, "told": _told(question, design.life, dict(use[part]), pace)}
 
 
 def positions_by_design(rows: list[RunningRow]) -> dict[str, int]:
@@ -96,29 +94,17 @@ def positions_by_design(rows: list[RunningRow]) -> dict[str, int]:
     return dict(counts)
 
 
-def _posterior(lifetimes: Lifetimes, component: Component) -> LifePosterior:
-    from reliability.stats.life_posterior import life_posterior
-
-    return life_posterior(
-        lifetimes,
-        site_spread=len(lifetimes.site_labels) > 1,
-        rounded_up_to=1.0 if component.clock == "days" else 0.0,
-    )
-
-
-def _told(
-    question: ReplacementQuestion, posterior: LifePosterior, use: dict[str, float], pace: float
-) -> dict[str, Any]:
+def _told(question: ReplacementQuestion, life: KeptDraws, use: dict[str, float], pace: float) -> dict[str, Any]:
     import numpy as np
 
     from reliability.stats.replacement_posterior import replacement_costs
 
     every = question.visit_every_days
     found = replacement_costs(
-        posterior.draws(DRAWS, np.random.default_rng(0)),
+        life.draws(DRAWS, np.random.default_rng(0)),
         question.planned_cost,
         question.failure_cost,
-        sites={site: amount for site, amount in use.items() if amount > 0} if posterior.has_spread else None,
+        sites={site: amount for site, amount in use.items() if amount > 0} if life.has_spread else None,
         visit_interval=None if every is None else every * pace,
         flat_within=FLAT_WITHIN,
     )
