@@ -13,13 +13,12 @@ import numpy as np
 from reliability.life_answer import finite
 from reliability.redesigns.compared import AFTER, BEFORE, Compared
 from reliability.redesigns.evidence import strata_of
-from reliability.stats.competing import cumulative_incidence
-from reliability.stats.difference import counted_when_found, logrank
+from reliability.stats.difference import counted_when_found
+from reliability.stats.difference_modes import ModeComparison, compare_modes
 from reliability.stats.errors import StatisticsError
 from reliability.stats.kaplan_meier import kaplan_meier
 from reliability.stats.lifetimes import Lifetimes
 
-NOT_NAMED = ""
 AT_RISK = 5  # the shares are told at the greatest age that so many of each side have reached
 ORDINARY = 1.96
 
@@ -30,20 +29,17 @@ def single_modes(lives: Compared, names: dict[str, str], confidence: float) -> d
     if before is None or after is None or lives.lifetimes is None:
         return {"age": None, "rows": []}
     age = common_age(before, after)
-    found = sorted({str(mode) for mode in lives.modes[lives.lifetimes.observed].tolist()})
-    sides = {side: _incidence(lives, side, confidence) for side in (BEFORE, AFTER)}
-    rows = []
-    for mode in found:
-        row: dict[str, Any] = {"mode": mode or None, "name": names.get(mode, mode) if mode else "not named"}
-        for side, known in sides.items():
-            row[side] = _share(known, mode, age)
-            row[f"{side}_failures"] = int(
-                ((lives.modes == mode) & lives.lifetimes.observed & (lives.lifetimes.groups == side)).sum()
-            )
-        row["z"] = _alone(lives, mode)
-        row["change"] = _change(row["z"])
-        rows.append(row)
-    return {"age": finite(age), "rows": rows}
+    try:
+        found = compare_modes(
+            counted_when_found(lives.lifetimes),
+            lives.modes,
+            age,
+            strata=strata_of(lives, "site"),
+            confidence_level=confidence,
+        )
+    except StatisticsError:
+        return {"age": None, "rows": []}
+    return {"age": finite(age), "rows": [told(each, names) for each in found]}
 
 
 def common_age(before: Lifetimes, after: Lifetimes) -> float:
@@ -59,41 +55,27 @@ def common_age(before: Lifetimes, after: Lifetimes) -> float:
     return reached if middle is None else min(reached, float(middle))
 
 
-def _incidence(lives: Compared, side: str, confidence: float) -> Any:
-    assert lives.lifetimes is not None
-    chosen = lives.lifetimes.groups == side
-    try:
-        return cumulative_incidence(
-            counted_when_found(lives.lifetimes.subset(chosen)), lives.modes[chosen], confidence, minimum_at_risk=AT_RISK
-        )
-    except StatisticsError:
-        return None
+def told(found: ModeComparison, names: dict[str, str]) -> dict[str, Any]:
+    """z above 0: rarer with the new part."""
+    mode = str(found.mode)
+    sides = {str(label): place for place, label in enumerate(found.groups.tolist())}
+    # labels sort as after, before: the first group is the new one, so its z is turned round
+    z = finite(-found.test.z) if found.test is not None else None
+    row: dict[str, Any] = {"mode": mode or None, "name": names.get(mode, mode) if mode else "not named", "z": z}
+    for side in (BEFORE, AFTER):
+        place = sides[side]
+        known = bool(found.known[place])
+        row[f"{side}_failures"] = int(found.failures[place])
+        row[side] = {
+            "estimate": finite(float(found.incidence[place])) if known else None,
+            "lower": finite(float(found.lower[place])) if known else None,
+            "upper": finite(float(found.upper[place])) if known else None,
+        }
+    row["change"] = change_of(z)
+    return row
 
 
-def _share(known: Any, mode: str, age: float) -> dict[str, float | None]:
-    if known is None:
-        return {"estimate": None, "lower": None, "upper": None}
-    if mode not in known.modes:
-        return {"estimate": 0.0, "lower": 0.0, "upper": None}
-    try:
-        lower, upper = known.band_at(mode, age)
-        estimate = known.incidence_at(mode, age)
-    except StatisticsError:
-        return {"estimate": None, "lower": None, "upper": None}
-    return {"estimate": finite(float(estimate)), "lower": finite(float(lower)), "upper": finite(float(upper))}
-
-
-def _alone(lives: Compared, mode: str) -> float | None:
-    """Z by site as if only this mode acted; above 0: rarer with the new part."""
-    only = lives.if_only([mode])
-    assert only.lifetimes is not None
-    try:
-        return finite(-logrank(counted_when_found(only.lifetimes), strata=strata_of(only, "site")).z)
-    except StatisticsError:
-        return None
-
-
-def _change(z: float | None) -> str:
+def change_of(z: float | None) -> str:
     """One look at one mode: it names what to look into and is no verdict."""
     if z is None:
         return "we cannot tell"

@@ -8,12 +8,16 @@ from typing import Any
 import numpy as np
 
 from reliability.life_answer import finite
-from reliability.redesigns.compared import AFTER, Compared
+from reliability.redesigns.compared import AFTER, BEFORE, Compared
 from reliability.redesigns.evidence import strata_of
 from reliability.stats.difference import counted_when_found
 from reliability.stats.sequential import Look, planned_information, sequential_boundary, take_look, verdict
+from reliability.stats.sequential_outlook import extra_modules, information_a_week, outlook
 
 WEEK = 7
+LATELY = 13  # weeks whose failures say the present pace
+AHEAD = 104  # weeks looked ahead
+CHANCE = 0.8
 MOST_LOOKS = 60
 USUAL_SHAPE = 2.0  # of the old parts while hardly one has failed
 
@@ -44,6 +48,62 @@ def _look(lives: Compared, on: dt.date) -> Look | None:
         positions=lives.positions,
         label=on.isoformat(),
     )
+
+
+def ahead_of(
+    lives: Compared, verdict: dict[str, Any], effects: Any, positions_a_module: float, by_week: int = 26
+) -> dict[str, Any] | None:
+    """How long until it is clear at the present pace, and how many more modules would make it so by a date.
+
+    None where the verdict stands already, or where nothing is gained at the present pace.
+    """
+    now = _now(lives)
+    if verdict["final"] or not now or lives.lifetimes is None:
+        return None
+    failures, share, rate = _pace(lives)
+    weekly = float(information_a_week(failures, share))
+    answer: dict[str, Any] = {
+        "failures_a_week": finite(failures),
+        "new_share": finite(share),
+        "information_a_week": finite(weekly),
+        "weeks": None,
+        "weeks_sure": None,
+        "clear_in": {},
+        "by_week": by_week,
+        "extra_modules": None,
+        "looked_ahead": AHEAD,
+    }
+    if weekly <= 0:
+        return answer
+    ahead = outlook(now[0], verdict["planned"], weekly_information=weekly, effects=effects, weeks=AHEAD)
+    answer["weeks"], answer["weeks_sure"] = ahead.weeks(0.5), ahead.weeks(CHANCE)
+    answer["clear_in"] = {str(week): ahead.clear_by(week) for week in (13, 26, 52, AHEAD)}
+    a_module = rate * positions_a_module * (1.0 - share)
+    if a_module > 0 and share < 0.5:
+        answer["extra_modules"] = extra_modules(
+            now[0],
+            verdict["planned"],
+            weekly_information=weekly,
+            information_a_module=a_module,
+            effects=effects,
+            by_week=by_week,
+            chance=CHANCE,
+        )
+    return answer
+
+
+def _pace(lives: Compared) -> tuple[float, float, float]:
+    """Failures a week of late, the share of new parts among those running now, failures a week of one part."""
+    assert lives.lifetimes is not None
+    today = lives.as_of.toordinal()
+    since = max(min(day.toordinal() for day in lives.starts.values()), today - LATELY * WEEK)
+    weeks = max((today - since) / WEEK, 1.0)
+    failures = float((lives.lifetimes.observed & (lives.ended > since)).sum()) / weeks
+    running = lives.states == "running"
+    new = running & (lives.lifetimes.groups == AFTER)
+    old = running & (lives.lifetimes.groups == BEFORE)
+    both = float(new.sum() + old.sum())
+    return failures, float(new.sum()) / both if both else 0.0, failures / both if both else 0.0
 
 
 def verdict_of(

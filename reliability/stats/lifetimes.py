@@ -170,6 +170,12 @@ class Lifetimes:
         _check_rows(columns)
         return self._trusted(columns)
 
+    def with_groups(self, groups: ArrayLike) -> Self:
+        """The same rows with other groups, shape (n,)."""
+        columns = self._columns()
+        columns["groups"] = _labels(groups, "groups", len(self))
+        return self._trusted(columns)
+
     def withdrawn_where(self, mask: ArrayLike) -> Self:
         """The same lives with the failures where mask is True counted as withdrawn at their durations."""
         columns = self._columns()

@@ -1,0 +1,150 @@
+"""The evidence on one component of a redesign as one document: for the page, the print, the files and the command."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+
+from fleet.models import FailureMode
+from reliability.fleet_lives import FleetLives
+from reliability.kept import kept
+from reliability.life_answer import document_of, finite
+from reliability.redesigns.candidates import candidates_of, rigs_of
+from reliability.redesigns.comparability import Comparability, comparability
+from reliability.redesigns.compared import AFTER, BEFORE, Compared, all_history, at_the_same_time
+from reliability.redesigns.evidence import both_sides, evidence_of
+from reliability.redesigns.few import FEW, few_failures_of
+from reliability.redesigns.fitting_faults import fitting_faults
+from reliability.redesigns.question import RedesignQuestion
+from reliability.redesigns.single_modes import single_modes
+from reliability.redesigns.watching import ahead_of, verdict_of
+from reliability.stats.difference import counted_when_found
+from reliability.stats.errors import StatisticsError
+from reliability.stats.life_ratio_posterior import LifeRatioPosterior, life_ratio_posterior
+from reliability.stats.weibull_fit import fit_weibull
+
+
+def kept_redesign(question: RedesignQuestion) -> dict[str, Any]:
+    """Read where it was computed before from the same data."""
+    found: dict[str, Any] = kept("redesign", question.asked(), lambda: redesign_document(question))
+    return found
+
+
+def redesign_document(question: RedesignQuestion) -> dict[str, Any]:
+    """Numbers are finite; what cannot be told is None, with its reason among the notes."""
+    choices: dict[str, Any] = {
+        "as_of": question.as_of,
+        "sites": list(question.sites) if question.sites is not None else None,
+    }
+    everything = all_history(question.component, question.new, question.old, **choices)
+    beside = at_the_same_time(question.component, question.new, question.old, not_before=question.not_before, **choices)
+    alike = comparability(everything, beside)
+    if question.modes:
+        everything, beside = everything.if_only(question.modes), beside.if_only(question.modes)
+    names = {mode.code: mode.title for mode in FailureMode.objects.filter(component=question.component)}
+    posterior, reason = _posterior(beside)
+    chances = None
+    if posterior is not None:
+        chances = {"longer": posterior.probability(), "hope": posterior.probability(question.hope)}
+    shape = _old_shape(everything)
+    verdict, path = verdict_of(beside, question.hope, shape, chances["longer"] if chances else None)
+    history = _curves(everything, question)
+    return {
+        **question.asked(),
+        "component_name": question.component.title,
+        "clock": everything.clock,
+        "mode_names": [names.get(code, code) for code in question.modes],
+        "verdict": verdict,
+        "path": path,
+        "chances": chances,
+        "chances_missing": reason,
+        "ahead": None if posterior is None else ahead_of(beside, verdict, posterior.effects(), _a_module(beside)),
+        "same_dates": {**evidence_of(beside, question.confidence), "curves": _curves(beside, question)},
+        "all_history": {**evidence_of(everything, question.confidence), "curves": history},
+        "starts": {site: day.isoformat() for site, day in sorted(beside.starts.items())},
+        "comparability": _told(alike),
+        "modes": {"age": None, "rows": []} if question.modes else single_modes(beside, names, question.confidence),
+        "fitting_faults": fitting_faults(everything, question.confidence),
+        "candidates": candidates_of(question, choices),
+        "rigs": rigs_of(question, choices),
+        "few": few_failures_of(everything, question.confidence, _target(history, question.hope), shape),
+        "left_out": [{"reason": reason, "count": count} for reason, count in sorted(everything.left_out.items())],
+    }
+
+
+def _curves(lives: Compared, question: RedesignQuestion) -> dict[str, Any] | None:
+    """Both sides as a document of lives: curves with bands, numbers at risk, B10, median, mean, shape."""
+    if lives.lifetimes is None:
+        return None
+    labels = {BEFORE: " and ".join(question.old), AFTER: " and ".join(question.new)}
+    named = np.array([labels[side] for side in lives.lifetimes.groups.tolist()])
+    found = FleetLives(
+        component=question.component.code,
+        clock=lives.clock,
+        as_of=question.as_of,
+        by="part",
+        lifetimes=lives.lifetimes.with_groups(named),
+        states=lives.states,
+        component_name=question.component.title,
+        modes=question.modes,
+        groups=tuple(labels[side] for side in (BEFORE, AFTER) if (lives.lifetimes.groups == side).any()),
+    )
+    return document_of(found, question.confidence)
+
+
+def _posterior(lives: Compared) -> tuple[LifeRatioPosterior | None, str]:
+    """Before records exist on both sides no probability is told."""
+    sides = both_sides(lives)
+    if sides is None:
+        return None, "No old and new part have yet run over the same dates at one site."
+    try:
+        return life_ratio_posterior(*(counted_when_found(side) for side in sides)), ""
+    except StatisticsError as error:
+        return None, str(error)
+
+
+def _old_shape(lives: Compared) -> float | None:
+    old = lives.side(BEFORE)
+    if old is None or old.failures < FEW:
+        return None
+    try:
+        return float(fit_weibull(old).shape)
+    except StatisticsError:
+        return None
+
+
+def _target(history: dict[str, Any] | None, hope: float) -> float | None:
+    """The B10 life hoped for: that of the old parts times the hope."""
+    groups = history["groups"] if history else []
+    old = groups[0]["b10"] if groups else None
+    return None if old is None or old["estimate"] is None else float(old["estimate"]) * hope
+
+
+def _a_module(lives: Compared) -> float:
+    """Positions of such a part in a module."""
+    if not len(lives.modules):
+        return 1.0
+    pairs = np.unique(np.column_stack([lives.modules, lives.positions]), axis=0)
+    return float(len(pairs) / len(np.unique(lives.modules)))
+
+
+def _told(alike: Comparability) -> dict[str, Any]:
+    return {
+        "mixes": [
+            {
+                "name": mix.name,
+                "of": mix.of,
+                "overlap": finite(mix.overlap),
+                "rows": [
+                    {"label": label, "before": before, "after": after}
+                    for label, before, after in zip(mix.labels, mix.before, mix.after, strict=True)
+                ],
+            }
+            for mix in alike.mixes
+        ],
+        "duty": {"clock": alike.duty.clock, "before": finite(alike.duty.before), "after": finite(alike.duty.after)},
+        "unlike_duty": alike.duty.unlike,
+        "all_at_once": list(alike.all_at_once),
+        "beside": list(alike.concurrent_sites),
+    }
