@@ -269,15 +269,25 @@ class Replacements:
         return best if counts[best] >= FEWEST_LATELY else chain[-1]
 
 
+FITTED_KNOWN = ("fitted_known_on", "fitted_visit__known_on", "fitted_on")
+REMOVED_KNOWN = ("removed_known_on", "removed_visit__known_on", "removed_on")
+
+
+def known_ended(fittings: Any, known_on: dt.date | None) -> Any:
+    """Those of which both ends had reached the book by the day; all where no day is given."""
+    if known_on is None:
+        return fittings
+    both = fittings.annotate(fitted_known=Coalesce(*FITTED_KNOWN), removed_known=Coalesce(*REMOVED_KNOWN))
+    return both.filter(Q(fitted_known=None) | Q(fitted_known__lte=known_on), removed_known__lte=known_on)
+
+
 def _known_by(fittings: Any, known_on: dt.date) -> Any:
     """Fittings that had reached the book by the day, and the site at which the module last served by then."""
-    fitted_known = Coalesce("fitted_known_on", "fitted_visit__known_on", "fitted_on")
-    removed_known = Coalesce("removed_known_on", "removed_visit__known_on", "removed_on")
     until = Case(When(removed_known__lte=known_on, then="removed_on"), default=known_on, output_field=DateField())
     served = Placement.objects.standing().exclude(site__kind=SiteKind.DEPOT).order_by("-from_on", "-pk")
     here = served.filter(module=OuterRef("module_id"), from_on__lte=OuterRef("until")).values("site__code")[:1]
     return (
-        fittings.annotate(fitted_known=fitted_known, removed_known=removed_known)
+        fittings.annotate(fitted_known=Coalesce(*FITTED_KNOWN), removed_known=Coalesce(*REMOVED_KNOWN))
         .filter(Q(fitted_known=None) | Q(fitted_known__lte=known_on))
         .annotate(until=until)
         .annotate(site_then=Subquery(here))

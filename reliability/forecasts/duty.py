@@ -5,14 +5,16 @@ from __future__ import annotations
 import datetime as dt
 import math
 from collections import defaultdict
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from itertools import pairwise
 from typing import Any
 
 from django.db.models import Q
+from django.utils import timezone
 
 from fleet.models import ClockPoint, Placement, SiteKind
+from reliability.lives_as_known import modules_as_known
 
 QUARTER, QUARTERS, LOOK_BACK = 91, 8, 90
 YEAR, MOST_YEARS, STEP, STEPS = 364, 2, 28, 13  # whole weeks
@@ -48,7 +50,7 @@ class Duty:
         return math.exp(self.season[left] * (1.0 - share) + self.season[right] * share)
 
 
-def duty(clock: str, as_of: dt.date) -> Duty:
+def duty(clock: str, as_of: dt.date, known_on: dt.date | None = None) -> Duty:
     """Expected is what the forecast expects: the use a day of the ninety days before, times the season's factor.
 
     The season counts where the same quarters of two years tell each quarter's use from the ninety days before better
@@ -58,7 +60,7 @@ def duty(clock: str, as_of: dt.date) -> Duty:
 
     if clock == "days":
         return Duty(0.0, 0.0, [])
-    uses = _Uses(clock, as_of)
+    uses = _Uses(clock, as_of, known_on)
     found = {number: uses.over(-QUARTER * number, QUARTER) for number in range(1, QUARTERS + 1)}
     season = _season(uses, _logs(found))
     rows = _rows(found, season=bool(season))
@@ -113,7 +115,7 @@ def _rows(found: dict[int, Totals], *, season: bool) -> list[tuple[float, float,
 class _Uses:
     """Counts of a sample of modules, spread over the fleet, with the days on which they were read."""
 
-    def __init__(self, clock: str, as_of: dt.date) -> None:
+    def __init__(self, clock: str, as_of: dt.date, known_on: dt.date | None) -> None:
         import numpy as np
 
         self.today = as_of.toordinal()
@@ -125,10 +127,8 @@ class _Uses:
         )
         modules = list(self.sites)[:: max(1, -(-len(self.sites) // MOST_MODULES))]
         since = self.today - max(QUARTER * QUARTERS, YEAR * MOST_YEARS) - LOOK_BACK - 30
-        points = ClockPoint.objects.filter(module__in=modules, day__gte=since, day__lte=self.today)
         knots: dict[int, list[tuple[float, float, bool]]] = defaultdict(list)
-        columns = ("module_id", "day", clock, f"{clock}_read")
-        for module, day, value, read in points.order_by("module_id", "day").values_list(*columns):
+        for module, day, value, read in _points(clock, modules, since, self.today, known_on):
             if value is not None:
                 knots[module].append((day, value, read))
         self.knots = {
@@ -159,6 +159,21 @@ class _Uses:
                 total[0] += after - now
                 total[1] += (now - before) * days / LOOK_BACK
         return {site: (use, hoped) for site, (use, hoped) in totals.items()} if modules >= FEWEST_MODULES else {}
+
+
+def _points(
+    clock: str, modules: list[int], since: float, until: float, known_on: dt.date | None
+) -> Iterator[tuple[int, float, float | None, bool]]:
+    """Module, day, count and whether it was read, in order; of the past as the clocks were by then."""
+    if known_on is None or known_on >= timezone.localdate():
+        points = ClockPoint.objects.filter(module__in=modules, day__gte=since, day__lte=until)
+        columns = ("module_id", "day", clock, f"{clock}_read")
+        yield from points.order_by("module_id", "day").values_list(*columns)
+        return
+    for loaded, clocks in modules_as_known(modules, known_on):
+        for knot in clocks.knots:
+            if since <= knot.day <= until:
+                yield loaded.record.module, knot.day, getattr(knot, clock), getattr(knot, f"{clock}_read")
 
 
 def _read_in(read: Any, edges: Sequence[float]) -> bool:

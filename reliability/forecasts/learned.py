@@ -96,7 +96,7 @@ def _learn(
             "Enter the days between visits of the site."
         )
     by_chance = sum(out.by_part.values())
-    how, use = standing(as_of, known_on), duty(component.clock, as_of)
+    how, use = standing(as_of, known_on), duty(component.clock, as_of, known_on)
     return {
         "failures": found.count("failed"),
         "designs": designs,

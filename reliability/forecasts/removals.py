@@ -4,15 +4,16 @@ from __future__ import annotations
 
 import datetime as dt
 from collections import Counter, defaultdict
-from collections.abc import Iterable
+from collections.abc import Iterable, Iterator
 from dataclasses import dataclass
 from typing import Any, NamedTuple
 
 from django.db.models import F, Q
-from django.db.models.functions import Coalesce
+from django.utils import timezone
 
 from fleet.models import Component, Fitting, RemovalReason, SiteKind
-from reliability.running_parts import NO_PLACE
+from reliability.lives_as_known import modules_as_known
+from reliability.running_parts import NO_PLACE, known_ended
 
 LATELY = dt.timedelta(days=400)  # planned removals that show a rule
 IN_FORCE = dt.timedelta(days=200)  # one at least must be as recent as this
@@ -48,32 +49,45 @@ CHANCE = [RemovalReason.TAKEN_WITH_ANOTHER, RemovalReason.MODULE_WITHDRAWN, Remo
 def removals(component: Component, as_of: dt.date, known_on: dt.date | None) -> Removals:
     """Of field sites, up to the day and as far as it was known."""
     clock = component.clock
-    known = Coalesce("removed_known_on", "removed_visit__known_on", "removed_on")
-    ended = (
+    ended = known_ended(
         Fitting.objects.standing()
         .filter(part__component=component, removed_on__lte=as_of)
-        .exclude(clock__site__kind=SiteKind.RIG)
-        .annotate(known=known)
+        .exclude(clock__site__kind=SiteKind.RIG),
+        known_on,
     )
-    if known_on is not None:
-        ended = ended.filter(known__lte=known_on)
     by_part: Counter[str] = Counter(ended.filter(reason__in=CHANCE).values_list("part__code", flat=True))
     recent = ended.filter(removed_on__gt=as_of - LATELY)
     upgrades = Counter(recent.filter(reason=RemovalReason.UPGRADE).values_list("part__code", flat=True))
-    rules = _rules(recent, clock, as_of)
+    rules = _rules(recent, clock, as_of, known_on)
     planned = ended.filter(reason=RemovalReason.PLANNED)
     for part, site in planned.values_list("part__code", "clock__site__code"):
         by_part[part] += (site or NO_PLACE) not in rules
     return Removals(dict(by_part), dict(upgrades), rules)
 
 
-def _rules(recent: Any, clock: str, as_of: dt.date) -> dict[str, Rule]:
-    own = F(f"clock__{clock}_at_end") - F(f"clock__{clock}_at_fit") + F("age_at_fit")
-    days = F("clock__days_at_end") - F("clock__days_at_fit")
-    rows = recent.annotate(own=own, days=days).values_list("reason", "clock__site__code", "removed_on", "own", "days")
+def _ended_at_ages(recent: Any, clock: str, known_on: dt.date | None) -> Iterator[tuple[Any, ...]]:
+    """Reason, site, day, and age on the component's clock and in days; of the past as the clocks were by then."""
+    rows = recent.filter(~Q(fitted_on=None))
+    if known_on is None or known_on >= timezone.localdate():
+        own = F(f"clock__{clock}_at_end") - F(f"clock__{clock}_at_fit") + F("age_at_fit")
+        days = F("clock__days_at_end") - F("clock__days_at_fit")
+        columns = ("reason", "clock__site__code", "removed_on", "own", "days")
+        yield from rows.annotate(own=own, days=days).values_list(*columns)
+        return
+    modules = set(rows.values_list("module_id", flat=True))
+    spans = {span.fitting_id: span for _, clocks in modules_as_known(modules, known_on) for span in clocks.spans}
+    for pk, reason, site, day, before in rows.values_list(
+        "pk", "reason", "clock__site__code", "removed_on", "age_at_fit"
+    ):
+        begin, end = (getattr(spans[pk], f"{clock}_at_{which}") for which in ("fit", "end"))
+        own_age = None if begin is None or end is None else end - begin + before
+        yield reason, site, day, own_age, spans[pk].days_at_end - spans[pk].days_at_fit
+
+
+def _rules(recent: Any, clock: str, as_of: dt.date, known_on: dt.date | None) -> dict[str, Rule]:
     planned: dict[str, list[_Planned]] = defaultdict(list)
     others: dict[str, list[_Planned]] = defaultdict(list)
-    for reason, site, *found in rows.filter(~Q(fitted_on=None)):
+    for reason, site, *found in _ended_at_ages(recent, clock, known_on):
         (planned if reason == RemovalReason.PLANNED else others)[site or NO_PLACE].append(_Planned(site, *found))
     rules = {}
     for site, seen in planned.items():

@@ -9,6 +9,7 @@ from dataclasses import dataclass
 from django.db.models import Q
 
 from fleet.models import FAILURE_REASONS, Fitting, Placement, SiteKind, Stop
+from reliability.running_parts import known_ended
 
 STOPS_SINCE = dt.timedelta(days=365)
 MOST_STOPS, MOST_MODULES = 4000, 500
@@ -91,7 +92,7 @@ def stop_shares(component_pk: int, as_of: dt.date, known_on: dt.date | None) -> 
         removed_on__gt=as_of - STOPS_SINCE - dt.timedelta(days=30),
         module__in=list(spans)[:MOST_MODULES],
     )
-    for module, day in fittings.values_list("module_id", "removed_on"):
+    for module, day in known_ended(fittings, known_on).values_list("module_id", "removed_on"):
         removed[module].append(day)
     known = list(spans)[:MOST_MODULES]
     whole = sum(len(spans[module]) for module in known)

@@ -11,6 +11,7 @@ from django.db.models import Q
 from django.db.models.functions import Coalesce
 
 from fleet.models import FAILURE_REASONS, Component, Fitting, RemovalReason, SiteKind
+from reliability.running_parts import known_ended
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -48,6 +49,11 @@ def triggers(component: Component, as_of: dt.date, known_on: dt.date | None) -> 
         caused_by__isnull=False,
         caused_by__reason__in=FAILURE_REASONS,
     )
+    if known_on is not None:  # the cause, too
+        cause_known = Coalesce(
+            "caused_by__removed_known_on", "caused_by__removed_visit__known_on", "caused_by__removed_on"
+        )
+        taken = taken.annotate(cause_known=cause_known).filter(cause_known__lte=known_on)
     by_cause: Counter[tuple[int, int]] = Counter(
         taken.exclude(caused_by__part__component=component).values_list("caused_by__part__component", "caused_by")
     )
@@ -67,10 +73,7 @@ def triggers(component: Component, as_of: dt.date, known_on: dt.date | None) -> 
 
 def _ended(as_of: dt.date, known_on: dt.date | None) -> Any:
     ended = Fitting.objects.standing().filter(~Q(clock__site__kind=SiteKind.RIG), removed_on__lte=as_of)
-    if known_on is None:
-        return ended
-    known = Coalesce("removed_known_on", "removed_visit__known_on", "removed_on")
-    return ended.annotate(known=known).filter(known__lte=known_on)
+    return known_ended(ended, known_on)
 
 
 def parts_taken(trigger: Trigger, failures: Sequence[float], share: float = 1.0) -> Any:

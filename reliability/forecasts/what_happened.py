@@ -22,7 +22,7 @@ from django.db.models.functions import Coalesce
 
 from fleet.models import FAILURE_REASONS, Component, Fitting, Placement, SiteKind
 from reliability.forecasts.horizon import WEEK, week_starts
-from reliability.running_parts import NO_PLACE
+from reliability.running_parts import FITTED_KNOWN, NO_PLACE, known_ended
 
 
 class HappenedRow(NamedTuple):
@@ -117,10 +117,8 @@ def failed(component: Component | None, begin: dt.date, end: dt.date, known_on: 
     )
     if component is not None:
         fittings = fittings.filter(part__component=component)
-    if known_on is not None:
-        known = Coalesce("removed_known_on", "removed_visit__known_on", "removed_on")
-        fittings = fittings.annotate(known=known).filter(known__lte=known_on)
-    return fittings.annotate(day=Coalesce("failed_on", "removed_on"), place=F("clock__site__code")).order_by()
+    known = known_ended(fittings, known_on)
+    return known.annotate(day=Coalesce("failed_on", "removed_on"), place=F("clock__site__code")).order_by()
 
 
 def used(component: Component, begin: dt.date, end: dt.date, known_on: dt.date | None = None) -> Any:
@@ -145,8 +143,7 @@ def used(component: Component, begin: dt.date, end: dt.date, known_on: dt.date |
         .filter(Q(kind=None) | ~Q(kind=SiteKind.RIG))
     )
     if known_on is not None:
-        known = Coalesce("fitted_known_on", "fitted_visit__known_on", "fitted_on")
-        fittings = fittings.annotate(known=known).filter(known__lte=known_on)
+        fittings = fittings.annotate(known=Coalesce(*FITTED_KNOWN)).filter(known__lte=known_on)
     return fittings.annotate(day=F("fitted_on"), place=Subquery(served.values("site__code")[:1])).order_by()
 
 

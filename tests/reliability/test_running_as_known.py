@@ -2,13 +2,18 @@
 
 from __future__ import annotations
 
+import datetime as dt
 import random
 from typing import Any
 
 import pytest
 
 from fleet.actions.rebuild_clocks import rebuild_clocks
-from fleet.models import Fitting, Part, Placement, Reading, Stop, Visit
+from fleet.models import Component, Fitting, Part, Placement, Reading, Stop, Visit
+from reliability.forecasts.duty import duty
+from reliability.forecasts.learned import _learn
+from reliability.forecasts.next_quarter import forecast_document, question_of
+from reliability.forecasts.taken_along import triggers
 from reliability.lives_as_known import shared_records
 from reliability.running_parts import Replacements, RunningParts, RunningRow, running_parts
 from tests.reliability.small_fleet import SmallFleet, day, instant, rows_of
@@ -169,3 +174,61 @@ def test_shared_records_give_the_same_and_end_with_the_block(fleet: SmallFleet) 
         assert ages(fleet, known_on=201) == [60.0]  # another day is loaded anew
     assert ages(fleet) == [60.0]
     assert Part.objects.count() == 2
+
+
+@pytest.mark.parametrize("clock", ["days", "strokes"])
+@pytest.mark.parametrize("seed", range(2))
+def test_nothing_learned_later_leaks_into_a_forecast(seed: int, clock: str) -> None:
+    """The same for all that a forecast reads: lives, visits, stops, use and its season, removals for other reasons."""
+    rng, fleet = random.Random(40 + seed), SmallFleet(clock)
+    write_fleet(fleet, [tell_module(rng, f"M-{number}") for number in range(24)])
+    for number, reading in enumerate(Reading.objects.order_by("pk")):
+        if number % 4 == 0:
+            Reading.objects.filter(pk=reading.pk).update(known_on=reading.known_on + dt.timedelta(days=20))
+    Stop.objects.filter(pk__in=list(Stop.objects.order_by("pk").values_list("pk", flat=True)[::3])).update(
+        known_on=day(230)
+    )
+    everything = forecast_then(fleet)
+    forget_later(AS_OF)
+    assert forecast_then(fleet) == everything
+
+
+def test_a_cause_learned_of_later_took_nothing_along_yet(fleet: SmallFleet) -> None:
+    screw = Part.objects.create(code="S1", component=Component.objects.create(code="SCREW", clock="days"))
+    site = fleet.site()
+    for number in range(4):
+        module = fleet.module(f"M-{number}", site)
+        cause = fleet.fit(module, 10, 190, "failed", part=screw, known=190 if number else 205)
+        fleet.fit(module, 10, 190, "taken with another", known=190, caused_by=cause)
+        fleet.fit(module, 10, 190, "taken with another", known=190, caused_by=cause)
+    rebuild_clocks()
+    (then_known,) = triggers(fleet.component, day(AS_OF), day(AS_OF))
+    (now_known,) = triggers(fleet.component, day(AS_OF), None)
+    assert (then_known.taken, now_known.taken) == ([0, 3], [0, 4])
+
+
+def forecast_then(fleet: SmallFleet) -> Any:
+    rebuild_clocks()
+    asked = question_of(fleet.component, begin=day(AS_OF + 1), days=28, as_of=day(AS_OF), known_on=day(AS_OF))
+    return _learn(fleet.component, day(AS_OF), day(AS_OF)), forecast_document(asked)
+
+
+def test_use_is_learned_from_the_readings_known_by_then() -> None:
+    """Readings every week; those of the last eleven weeks before the day came in after it."""
+    fleet, rng = SmallFleet("strokes"), random.Random(8)
+    for place in range(3):
+        site = fleet.site(f"S{place}")
+        for number in range(3):
+            module = fleet.module(f"M-{place}-{number}", site)
+            strokes = 0
+            for week in range(130):
+                at = 7 * week + 3
+                late = 820 < at <= 900
+                fleet.read(module, at + 0.5, known=905 if late else at, strokes=strokes)
+                strokes += round(rng.uniform(2000, 2400) * (3 if late else 1))
+    rebuild_clocks()
+    then_known = duty("strokes", day(900), day(900))
+    assert then_known != duty("strokes", day(900), day(905))
+    Reading.objects.filter(known_on__gt=day(900)).delete()
+    rebuild_clocks()
+    assert duty("strokes", day(900), day(900)) == then_known
