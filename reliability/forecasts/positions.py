@@ -14,7 +14,7 @@ from reliability.forecasts.question import Question
 from reliability.running_parts import RunningRow
 
 AGE_CELLS = 60  # ages are told apart to this share of the typical life
-PACE_STEP = 0.12  # paces are told apart to this share
+PACE_STEP = 0.25  # paces are told apart to this share
 NEVER = math.inf
 
 
@@ -151,4 +151,5 @@ def _visited(place: Place, row: RunningRow, question: Question, learned: Learned
         upcoming = math.ceil(every / 2)
     while upcoming <= 0:
         upcoming += every
-    return place._replace(every=max(every, upcoming), next=upcoming)
+    # at noon, so that a visit on a Monday belongs to the week it begins
+    return place._replace(every=max(every, upcoming + 0.5), next=upcoming + 0.5)

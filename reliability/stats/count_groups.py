@@ -50,20 +50,29 @@ class BlockTails:
         self._block, self._rows, self._grid = block, block.rows, block.grid
         on_lattice = isinstance(block.grid, VisitGrid)
         self._transform = Transform(block.grid.places, 0.0 if on_lattice else 0.5)
-        self._new, self._new_by = block.grid.new(fitted, block.rows.classes, duty)
-        self._next = None if following is None else block.grid.new(following, block.rows.classes, duty)
+        self._distinct, which = block.rows.classes.distinct_from_new()
+        self._classes = block.rows.classes.take(self._distinct)
+        self._class_index = which[block.rows.class_index]
+        own = duty[:, self._distinct]
+        self._new, self._new_by = block.grid.new(fitted.take(self._distinct), self._classes, own)
+        later = None if following is None else following.take(self._distinct)
+        self._next = None if later is None else block.grid.new(later, self._classes, own)
+        self._failures: list[FloatArray] = []
         self._running = np.flatnonzero(np.isnan(block.rows.start) | on_lattice)
         self._fresh = np.flatnonzero(~np.isnan(block.rows.start) & (not on_lattice))
         running = block.grid.running(hazards, block.rows, self._running, duty)
         self._ends, self._planned, self._planned_place = running
-        self._spans = block.places()
+        self._spans = [(begin[self._distinct], end[self._distinct]) for begin, end in block.places()]
 
     def targets(self, kind: str, count: int) -> list[FloatArray]:
         """Tails P(N >= k), k = 1 .., (draws, rows, orders), of each of the first `count` targets."""
+        if kind == "parts" and self._failures and self._ends.removed is None and not self._any_planned:
+            # only what stopped modules get comes on top
+            return [self._with_extra(kind, tails, number) for number, tails in enumerate(self._failures[:count])]
         kernel = self._kernel(self._new, self._new_by, kind)
         whole = kernel.tails()
         following = None if self._next is None else self._kernel(*self._next, kind)
-        if following is not None and (self._rows.classes.switch_at <= 0).all():
+        if following is not None and (self._classes.switch_at <= 0).all():
             # every part fitted from now on is of the next design: nothing to switch within the horizon
             kernel, whole, following = following, following.tails(), None
         known: dict[int, FloatArray] = {}
@@ -74,7 +83,14 @@ class BlockTails:
             else:
                 remaining = self._windowed(kernel, whole, begin, end, known)
             found.append(remaining)
-        return self._rows_tails(kind, found)
+        tails = self._rows_tails(kind, found)
+        if kind == "failures":
+            self._failures = tails
+        return [self._with_extra(kind, each, number) for number, each in enumerate(tails)]
+
+    @property
+    def _any_planned(self) -> bool:
+        return self._planned is not None or self._ends.planned is not None or self._new.planned is not None
 
     def _kernel(self, masses: Ends, shares: Ends, kind: str) -> FromNew:
         counted_by = shares.split(kind, self._block.taken_share)[0]
@@ -97,7 +113,7 @@ class BlockTails:
         self, kernel: FromNew, whole: FloatArray, following: FromNew, begin: IntArray, end: IntArray
     ) -> FloatArray:
         """Remaining tails where parts fitted after the switch live by the next design."""
-        classes = self._rows.classes
+        classes = self._classes
         switch = np.rint(self._grid.place_of(np.minimum(classes.switch_at, classes.horizon), classes))
         next_whole = following.tails()
         orders = max(whole.shape[2], next_whole.shape[2]) + 1
@@ -111,48 +127,73 @@ class BlockTails:
         return mixed
 
     def _rows_tails(self, kind: str, remaining: list[FloatArray]) -> list[FloatArray]:
-        """Tails of all rows: running parts by one product for all targets, then the others."""
+        """Tails of all rows: running parts by one product for all targets, then the others.
+
+        An end in a cell is followed by what remains, one order less where it is counted inside the target: a product
+        over all cells, and one over those few inside.
+        """
         counted, silent = self._ends.split(kind, self._block.taken_share)
-        masses = counted if silent is None else np.concatenate([counted, silent], axis=2)
-        follow = [self._follow(found, number, silent is not None) for number, found in enumerate(remaining)]
-        products = self._by_class_product(masses, np.concatenate(follow, axis=3))
-        tails, used = [], 0
+        ends = counted if silent is None else counted + silent
+        edges = np.cumsum([0, *(found.shape[2] - 1 for found in remaining)])
+        beyond = np.zeros((counted.shape[0], len(self._classes), counted.shape[2], edges[-1]))
+        inside = [
+            self._follow(found, number, beyond[..., edges[number] : edges[number + 1]])
+            for number, found in enumerate(remaining)
+        ]
+        products = self._by_class_product(ends, beyond)
+        tails = []
         for number, found in enumerate(remaining):
-            orders = found.shape[2] - 1
-            rows = np.zeros((found.shape[0], len(self._rows), orders))
-            rows[:, self._running] = products[..., used : used + orders]
-            used += orders
+            cells, follow = inside[number]
+            own = products[..., edges[number] : edges[number + 1]]
+            if cells.size:
+                own = own + self._by_class_product(counted[..., cells], follow)
+            rows = np.zeros((own.shape[0], len(self._rows), own.shape[2]))
+            rows[:, self._running] = own
             if self._planned is not None:
                 rows[:, self._running] += self._planned_part(kind, found, number)
             if self._fresh.size:
                 place = self._start_place(self._fresh)
                 rows[:, self._fresh] = self._read(found, self._fresh, self._spans[number][1], place)[..., 1:]
-            tails.append(self._with_extra(kind, rows, number))
+            tails.append(rows)
         return tails
 
-    def _follow(self, remaining: FloatArray, number: int, with_silent: bool) -> FloatArray:
-        """What follows an end in each cell: (draws, classes, cells (twice with silent ends), orders - 1)."""
+    def _follow(self, remaining: FloatArray, number: int, beyond: FloatArray) -> tuple[IntArray, FloatArray]:
+        """Fills `beyond` (draws, classes, cells, orders - 1) with what follows an end that is not counted.
+
+        Returns the cells in which ends count, and what these add: (draws, classes, those cells, orders - 1).
+        """
         begin, end = self._spans[number]
         at = self._grid.at
-        halves = 2 if with_silent else 1
-        draws, classes, orders, _ = remaining.shape
-        follow = np.zeros((draws, classes, halves * at.size, orders - 1))
         spans = np.stack([self._widths(begin, end), end])
-        for width, stop in np.unique(spans[:, end > begin], axis=1).T.tolist():
+        settings = np.unique(spans[:, end > begin], axis=1).T.tolist()
+        counting = [self._transform.up_to(width) for width, _ in settings]
+        reach = np.zeros(at.size, dtype=bool)
+        for (_, stop), share in zip(settings, counting, strict=True):
+            reach |= (stop >= at) & (share[np.maximum(stop - at, 0)] > 0)
+        inside = np.flatnonzero(reach)
+        more = np.zeros((*beyond.shape[:2], inside.size, beyond.shape[3]))
+        for (width, stop), share in zip(settings, counting, strict=True):
             same = np.flatnonzero((spans[0] == width) & (spans[1] == stop) & (end > begin))
-            cells = np.flatnonzero(stop - at >= 0)
-            left = stop - at[cells]
-            reached = remaining[:, same][..., left].swapaxes(2, 3)
-            inside = self._transform.up_to(width)[left][:, None]
-            value = reached[..., :-1] * inside + reached[..., 1:] * (1.0 - inside)
-            follow[np.ix_(range(draws), same, cells)] = value
-            if with_silent:
-                follow[np.ix_(range(draws), same, cells + at.size)] = reached[..., 1:]
-        return follow
+            same = slice(None) if same.size == len(self._classes) else same
+            cells = int(np.count_nonzero(at <= stop))  # places rise: the first ones
+            reached = remaining[:, same][..., stop - at[:cells]].swapaxes(2, 3)
+            beyond[:, same, :cells] = reached[..., 1:]
+            few = inside[inside < cells]
+            near = reached[:, :, few]
+            more[:, same, : few.size] = (near[..., :-1] - near[..., 1:]) * share[stop - at[few]][:, None]
+        return inside, more
 
     def _by_class_product(self, masses: FloatArray, follow: FloatArray) -> FloatArray:
         """masses (draws, rows, cells) times follow (draws, classes, cells, columns) of each row's class."""
-        index = self._rows.class_index[self._running]
+        index = self._class_index[self._running]
+        if (np.diff(index) < 0).any():
+            order = np.argsort(index, kind="stable")
+            product = np.empty((*masses.shape[:2], follow.shape[3]))
+            product[:, order] = self._sorted_product(masses[:, order], follow, index[order])
+            return product
+        return self._sorted_product(masses, follow, index)
+
+    def _sorted_product(self, masses: FloatArray, follow: FloatArray, index: IntArray) -> FloatArray:
         classes = follow.shape[1]
         counts = np.bincount(index, minlength=classes)
         most = int(counts.max(initial=0))
@@ -172,7 +213,7 @@ class BlockTails:
 
     def _planned_part(self, kind: str, remaining: FloatArray, number: int) -> FloatArray:
         """What follows the planned replacement of the running part, weighted by its chance."""
-        begin, end = (edge[self._rows.class_index[self._running]] for edge in self._spans[number])
+        begin, end = (edge[self._class_index[self._running]] for edge in self._spans[number])
         read = self._read(remaining, self._running, self._spans[number][1], self._planned_place)
         left = end - self._planned_place
         inside = (left <= self._widths(begin, end))[..., None] & (kind != "failures")
@@ -180,7 +221,7 @@ class BlockTails:
 
     def _read(self, remaining: FloatArray, rows: IntArray, end: IntArray, start: FloatArray) -> FloatArray:
         """remaining at real places end - start, 0 before the start: start (rows,) or (draws, rows)."""
-        which = self._rows.class_index[rows]
+        which = self._class_index[rows]
         place = np.broadcast_to(end[which] - start, (remaining.shape[0], rows.size))
         inside = np.clip(place, 0.0, remaining.shape[3] - 1.0)
         left = np.minimum(np.floor(inside).astype(np.int64), remaining.shape[3] - 2)
@@ -199,7 +240,7 @@ class BlockTails:
         if kind == "failures" or not relevant.any():
             return tails
         place = self._start_place(np.arange(len(self._rows)))
-        low, high = (edge[self._rows.class_index] for edge in self._spans[number])
+        low, high = (edge[self._class_index] for edge in self._spans[number])
         used = relevant & (place <= high) & ((place > low) | (low == 0)) & (high > 0)
         longer = np.concatenate([tails, np.zeros_like(tails[..., :1])], axis=2)
         longer[:, used, 1:] = tails[:, used]

@@ -19,7 +19,9 @@ FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
 
 MOST_RENEWALS = 300
-_TAIL_LEFT = 1e-9
+_TAIL_LEFT = 1e-7  # of a position over the horizon; a million of them then miss a tenth of a part
+_WINDOW_LEFT = 1e-6  # of a position within a window
+_SHORT = 10  # places of a window up to which its few terms are summed directly
 
 
 class Transform:
@@ -57,13 +59,14 @@ class FromNew:
         self, transform: Transform, counted: FloatArray, silent: FloatArray | None, counted_by: FloatArray
     ) -> None:
         self._transform = transform
+        self._plain = counted, silent
         self._counted = transform.forward(counted)
         self._silent = None if silent is None else transform.forward(silent)
         self._first = transform.forward(counted_by)
         self._counted_by = counted_by
 
     def tails(self) -> FloatArray:
-        """P(N >= k) for k = 0, 1, ... up to where no draw has 1e-9 left: (draws, classes, K + 1, places)."""
+        """P(N >= k) for k = 0, 1, ... up to where no draw has 1e-7 left: (draws, classes, K + 1, places)."""
         spectrum = self._first
         if self._silent is None:
             current, step = self._counted_by, self._counted
@@ -89,6 +92,8 @@ class FromNew:
 
         whole: this design's plain tails (or any array with enough orders); next_tails: the other design's window tails.
         """
+        if next_tails is None:
+            return self._plain_window_tails(whole, width)
         transform = self._transform
         silent = np.zeros_like(self._counted) if self._silent is None else self._silent
         every = 1.0 / (1.0 - self._counted - silent)
@@ -99,15 +104,12 @@ class FromNew:
         found[0][..., 0] = 1.0 - transform.tie
         for order in range(1, whole.shape[2]):
             counted_part = self._counted * transform.forward(found[-1] * inside)
-            if next_tails is None:
-                near = whole[:, :, order]
-            else:
-                following = next_tails[:, :, min(order, next_tails.shape[2] - 1)] * (order < next_tails.shape[2])
-                near = following * known_mask
-                if next_until < width:
-                    source = transform.back(counted_part + silent * transform.forward(near))
-                    fitted_before = transform.forward(source * (1.0 - known_mask))
-                    near = near + transform.back(fitted_before / (1.0 - silent))
+            following = next_tails[:, :, min(order, next_tails.shape[2] - 1)] * (order < next_tails.shape[2])
+            near = following * known_mask
+            if next_until < width:
+                source = transform.back(counted_part + silent * transform.forward(near))
+                fitted_before = transform.forward(source * (1.0 - known_mask))
+                near = near + transform.back(fitted_before / (1.0 - silent))
             near = near * (1.0 - beyond_mask)
             source = counted_part + silent * transform.forward(near * inside)
             if next_until > width:
@@ -116,6 +118,43 @@ class FromNew:
             found.append(np.clip(near + far, 0.0, 1.0))
         return np.stack(found, axis=2)
 
+    def _plain_window_tails(self, whole: FloatArray, width: int) -> FloatArray:
+        """Window tails of one design, all orders at once: within the window they are the plain tails."""
+        transform = self._transform
+        every = 1.0 / (1.0 - (self._counted if self._silent is None else self._counted + self._silent))
+        inside = transform.up_to(width)
+        near = whole * inside
+        near[:, :, 0] = inside
+        near[:, :, 0, 0] *= 1.0 - transform.tie
+        source = self._short_source(near, width) if width <= _SHORT else self._source(near)
+        source *= 1.0 - inside
+        found = np.empty_like(whole)
+        found[:, :, 0] = 1.0
+        # a cell centred on the very end lies half beyond it
+        found[:, :, 0, 0] = 1.0 - transform.tie
+        far = transform.back(transform.forward(source) * every[:, :, None])
+        np.clip(near[:, :, 1:] + far, 0.0, 1.0, out=found[:, :, 1:])
+        return found
+
+    def _source(self, near: FloatArray) -> FloatArray:
+        """c * (one order less within the window) + s * (the same order within it), orders 1 and up."""
+        spectra = self._transform.forward(near)
+        source = self._counted[:, :, None] * spectra[:, :, :-1]
+        if self._silent is not None:
+            source += self._silent[:, :, None] * spectra[:, :, 1:]
+        return self._transform.back(source)
+
+    def _short_source(self, near: FloatArray, width: int) -> FloatArray:
+        """The same for a window of few places, term by term."""
+        counted, silent = self._plain
+        source = np.zeros_like(near[:, :, 1:])
+        for place in range(width + 1):
+            size = source.shape[3] - place
+            source[..., place:] += counted[:, :, None, :size] * near[:, :, :-1, place : place + 1]
+            if silent is not None and place > 0:
+                source[..., place:] += silent[:, :, None, :size] * near[:, :, 1:, place : place + 1]
+        return source
+
     def _enough(self, whole: FloatArray, width: int) -> int:
         # one more than for a new part: the running one may be about to fail
         return _orders(whole[:, :, :, min(width, whole.shape[3] - 1)]) + 1
@@ -123,7 +162,7 @@ class FromNew:
 
 def _orders(tails: FloatArray) -> int:
     """How many orders (0 included) carry weight in tails (draws, classes, orders)."""
-    alive = tails.max(axis=(0, 1), initial=0.0) > _TAIL_LEFT
+    alive = tails.max(axis=(0, 1), initial=0.0) > _WINDOW_LEFT
     return max(int(np.count_nonzero(alive)), 2)
 
 

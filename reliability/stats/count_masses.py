@@ -29,6 +29,13 @@ class Hazards:
     scale: FloatArray | None = None  # with deviation: medians of lognormal draws, whose deviation is above 0
     deviation: FloatArray | None = None
 
+    def take(self, chosen: IntArray) -> Hazards:
+        """Those of the chosen classes."""
+        scale = None if self.scale is None else self.scale[:, chosen]
+        deviation = None if self.deviation is None else self.deviation[:, chosen]
+        columns = (self.shape[:, chosen], self.rate[:, chosen], self.early[:, chosen], self.early_until[chosen])
+        return Hazards(*columns, scale, deviation)
+
     def cumulative(self, ages: FloatArray, classes: IntArray | slice = slice(None)) -> FloatArray:
         """-log S at ages (draws or 1, x, n), x matching the rates of `classes`: (draws, x, n)."""
         rate = self.rate[:, classes][:, :, None]

@@ -42,6 +42,11 @@ class Classes:
     def __len__(self) -> int:
         return int(self.site.size)
 
+    def distinct_from_new(self) -> tuple[IntArray, IntArray]:
+        """First of each set of classes alike in all that matters once a new part is in, and each class's set."""
+        columns = [getattr(self, item.name) for item in fields(Classes) if item.name not in ("running", "join_at")]
+        return _distinct(columns, len(self))
+
     def take(self, chosen: NDArray[Any]) -> Classes:
         """The classes at these indices (or where this is True)."""
         return Classes(**{item.name: getattr(self, item.name)[chosen] for item in fields(Classes)})

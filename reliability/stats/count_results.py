@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from functools import cached_property
 from typing import Any
 
@@ -68,10 +68,10 @@ class Counts:
 
 @dataclass(frozen=True)
 class CountForecast(Counts):
-    """Totals, each group's (and each second label's), and each window's (edges as given) counts."""
+    """Totals, each group's (and each further label's), and each window's (edges as given) counts."""
 
     by_group: dict[Any, Counts]
     by_window: tuple[Counts, ...]
     windows: tuple[tuple[float, float], ...]
     draws: int
-    by_also: dict[Any, Counts] = field(default_factory=dict)
+    by_also: tuple[dict[Any, Counts], ...] = ()

@@ -19,8 +19,8 @@ FloatArray = NDArray[np.float64]
 class Plan:
     """What is asked of a count.
 
-    grouped: the target that the groups speak of (0 all that is counted, then its windows); groupings: 1, or 2 where
-    the labels of positions are pairs; windows: what the windows are called; parts_by_window: whether parts used are
+    grouped: the target that the groups speak of (0 all that is counted, then its windows); groupings: how many,
+    where labels of positions are tuples; windows: what the windows are called; parts_by_window: whether parts used are
     counted in each window too.
     """
 
@@ -75,7 +75,7 @@ class Tallies:
             _counts({kind: pmfs[1 + n][-1] for kind, pmfs in found.items() if 1 + n < len(pmfs)})
             for n in range(len(self._plan.windows))
         ]
-        groups: list[dict[Any, Counts]] = [{}, {}]
+        groups: list[dict[Any, Counts]] = [{} for _ in range(self._plan.groupings)]
         if rows.group_labels != [None]:
             for grouping, label, line in self._lines:
                 pmfs = {kind: pmfs[self._plan.grouped][line] for kind, pmfs in found.items()}
@@ -85,7 +85,7 @@ class Tallies:
             total.parts_used,
             total.planned,
             by_group=groups[0],
-            by_also=groups[1],
+            by_also=tuple(groups[1:]),
             by_window=tuple(by_window),
             windows=self._plan.windows,
             draws=draws,

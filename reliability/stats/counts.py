@@ -31,7 +31,7 @@ IntArray = NDArray[np.int64]
 
 __all__ = ["CountDistribution", "CountForecast", "Counts", "calibrated_prediction", "forecast_counts"]
 
-LEAST_CELLS = 24
+LEAST_CELLS = 12
 MOST_CELLS = 512
 FEW_ROWS = 40
 MANY_RENEWALS = 75.0
@@ -60,7 +60,7 @@ def forecast_counts(
     refit_delay: float = 0.0,
     cells: int | None = None,
     group_window: int | None = None,
-    also_groups: Sequence[Any] | None = None,
+    also_groups: Sequence[Sequence[Any]] = (),
     stretch: tuple[int, int] | None = None,
     parts_by_window: bool = True,
     taken_share: float = 0.0,
@@ -87,8 +87,9 @@ def forecast_counts(
     the day and parts begin with the next. draws: of the posterior. cells: steps of the grid (chosen from the lives
     if None).
     group_window: by_group speaks of this window (0 the first) instead of the whole horizon.
-    also_groups: second labels, answered in by_also. stretch: (first, last) edge of windows; totals, groups and windows
-    speak of what lies between them, in one pass. parts_by_window: False leaves the windows' parts_used at failures.
+    also_groups: further labels of every position, answered in by_also. stretch: (first, last) edge of windows; totals,
+    groups and windows speak of what lies between them, in one pass. parts_by_window: False leaves the windows'
+    parts_used at failures.
     taken_share: share of the other removals that parts_used leaves out, because they are counted elsewhere.
     join_at: the position is there, and its part ages, only from then on.
     designs, next_designs, later_designs: with one posterior a design (a mapping), the label of the design that runs at
@@ -104,12 +105,12 @@ def forecast_counts(
     later = next_posterior if later_designs is None else later_designs
     roles = roles_of(posterior, designs, next_designs, later, switch_at is not None)
     needs_sites = _needs_sites(roles, duty_spread, sites, ages)
-    pairs = groups if also_groups is None else _pairs(groups, also_groups)
+    labels = _label_tuples(groups, also_groups) if also_groups else groups
     rows = group_positions(
         ages,
         horizons,
         sites=sites if needs_sites else None,
-        groups=pairs,
+        groups=labels,
         weights=weights,
         columns={
             "down_until": down_until,
@@ -135,7 +136,7 @@ def forecast_counts(
     spans = _spans(edges, stretch)
     plan = Plan(
         grouped=0 if group_window is None else group_window + 1,
-        groupings=1 if also_groups is None else 2,
+        groupings=1 + len(also_groups),
         windows=() if windows is None else _told_windows(windows, stretch),
         parts_by_window=parts_by_window,
     )
@@ -212,10 +213,10 @@ def _told_windows(windows: Sequence[float], stretch: tuple[int, int] | None) -> 
     return told if stretch is None else told[stretch[0] : stretch[1]]
 
 
-def _pairs(groups: Sequence[Any] | None, also: Sequence[Any]) -> list[tuple[Any, Any]]:
-    if groups is None or len(groups) != len(also):
-        raise InvalidArgument("also_groups needs groups, with as many labels.")
-    return list(zip(groups, also, strict=True))
+def _label_tuples(groups: Sequence[Any] | None, also: Sequence[Sequence[Any]]) -> list[tuple[Any, ...]]:
+    if groups is None or any(len(labels) != len(groups) for labels in also):
+        raise InvalidArgument("also_groups needs groups, with as many labels in each.")
+    return list(zip(groups, *also, strict=True))
 
 
 def _blocks(

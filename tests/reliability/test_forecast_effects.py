@@ -76,7 +76,7 @@ def test_the_interval_between_visits_is_learned_where_nobody_entered_it() -> Non
         for at in range(AS_OF - 5 - 21 * 9, AS_OF, 21):
             fleet.visit(module, at)
     found = positions(fleet)
-    assert {(place.every, place.next) for place in found.places} == {(21.0, 16.0)}
+    assert {(place.every, place.next) for place in found.places} == {(21.0, 16.5)}
 
 
 def test_a_rule_of_planned_replacement_is_seen_and_counted_apart() -> None:

@@ -51,6 +51,19 @@ def test_one_design_as_a_mapping_is_the_same_as_alone() -> None:
     assert mapped.failures.pmf == pytest.approx(alone.failures.pmf, abs=1e-5)
 
 
+def test_designs_that_cross_are_each_followed_by_their_own() -> None:
+    """One becomes the other and the other the one: each half must equal its own count."""
+    now = ["N2" if number % 2 else "N3" for number in range(POSITIONS)]
+    after = ["N3" if name == "N2" else "N2" for name in now]
+    settings: dict[str, Any] = {"draws": 1, "groups": now, "sites": SITES}
+    lives = {name: DESIGNS[name] for name in ("N2", "N3")}
+    both = forecast_counts(lives, AGES, 91.0, designs=now, next_designs=after, **settings)
+    for name, other in (("N2", "N3"), ("N3", "N2")):
+        mine = AGES[[each == name for each in now]]
+        alone = forecast_counts(lives[name], mine, 91.0, draws=1, next_posterior=lives[other], switch_at=0.0)
+        assert both.by_group[name].failures.mean == pytest.approx(alone.failures.mean, rel=3e-3)
+
+
 def test_shared_draws_make_a_total_wider_than_independent_parts() -> None:
     """Two halves of one fleet under the same uncertain duty: their sum is not the sum of independent counts."""
     shared: dict[str, Any] = {"draws": 200, "duty_spread": 0.3}

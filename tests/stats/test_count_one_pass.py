@@ -24,7 +24,7 @@ def count(**asked: Any) -> CountForecast:
 
 
 def test_a_stretch_its_weeks_sites_and_types_in_one_pass() -> None:
-    one = count(groups=SITES, also_groups=TYPES, windows=[0, 35, 42, 49, 126], stretch=(1, 4))
+    one = count(groups=SITES, also_groups=[TYPES], windows=[0, 35, 42, 49, 126], stretch=(1, 4))
     whole = count(groups=SITES, windows=[0, 35, 126], group_window=1)
     kinds = count(groups=TYPES, windows=[0, 35, 126], group_window=1)
     weeks = count(windows=[0, 35, 42, 49, 126])
@@ -33,7 +33,7 @@ def test_a_stretch_its_weeks_sites_and_types_in_one_pass() -> None:
     for site, counts in whole.by_group.items():
         assert one.by_group[site].failures.mean == pytest.approx(counts.failures.mean, rel=2e-3)
     for kind, counts in kinds.by_group.items():
-        assert one.by_also[kind].parts_used.mean == pytest.approx(counts.parts_used.mean, rel=2e-3)
+        assert one.by_also[0][kind].parts_used.mean == pytest.approx(counts.parts_used.mean, rel=2e-3)
     assert one.windows == ((35.0, 42.0), (42.0, 49.0), (49.0, 126.0))
     for week, same in zip(one.by_window, weeks.by_window[1:], strict=True):
         assert week.failures.mean == pytest.approx(same.failures.mean, rel=2e-3)
@@ -48,7 +48,7 @@ def test_removals_counted_elsewhere_leave_the_failures_alone() -> None:
 
 
 @pytest.mark.parametrize(
-    "wrong", [{"stretch": (2, 2), "windows": [0, 1, 2, 3]}, {"also_groups": TYPES}, {"taken_share": 1.5}]
+    "wrong", [{"stretch": (2, 2), "windows": [0, 1, 2, 3]}, {"also_groups": [TYPES]}, {"taken_share": 1.5}]
 )
 def test_what_makes_no_sense_is_refused(wrong: dict[str, Any]) -> None:
     with pytest.raises(InvalidArgument):
