@@ -140,6 +140,14 @@ def test_renewal_trend_against_loops():
     assert result.statistic == pytest.approx(by_hand(rounded, np.floor(ages), strata))
 
 
+def test_a_part_that_enters_at_the_age_of_a_failure_is_not_yet_at_risk():
+    events, starts, ends = [[4, 9], [7], [6]], [0, 3, 0], [12, 9, 10]
+    ages = np.array([0.0, 4.0, 0.0])  # the second enters at 4, the age at which the first part failed
+    histories = Histories("abc", events, starts, ends)
+    result = renewal_trend(histories, entry_ages=ages)
+    assert result.statistic == pytest.approx(by_hand(histories, ages, [1, 1, 1]))
+
+
 def test_young_fleets_of_wearing_parts_have_no_trend():
     """Laplace takes nearly every one for worsening; the renewal test rejects at its rate."""
     rejected = {"renewal": 0, "laplace": 0, "lewis": 0}
