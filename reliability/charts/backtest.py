@@ -25,7 +25,7 @@ def backtest_figure(summed: dict[str, Any], title: str) -> Figure:
             "name": "expected",
             "x": names,
             "y": [row["expected"] for row in rows],
-            "marker": {"symbol": "line-ew-open", "size": 26, "color": "var(--blue)", "line": {"width": 2.2}},
+            "marker": {"symbol": "line-ew-open", "size": 18, "color": "var(--blue)", "line": {"width": 2.2}},
             "hovertemplate": "%{x}: %{y:.1f} expected<extra></extra>",
         }
     )
@@ -83,4 +83,4 @@ def quarter_name(begin: str) -> str:
 def short_name(begin: str) -> str:
     """Two lines that fit below a column on a phone."""
     day = dt.date.fromisoformat(begin)
-    return f"Q{(day.month + 2) // 3}<br>{day.year}"
+    return f"Q{(day.month + 2) // 3}<br>’{day.year % 100:02d}"
