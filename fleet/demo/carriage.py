@@ -7,11 +7,14 @@ import random
 from dataclasses import dataclass, field
 from typing import Any
 
-from fleet.demo.catalogue import BAD_LOT, BAD_LOT_SHARE_OF_LIFE, DESIGNS, MODES, POSITIONS
+from fleet.demo.bench import Bench, Planned
+from fleet.demo.catalogue import BAD_LOT, BAD_LOT_SHARE_OF_LIFE, COMPONENTS, DESIGNS, MODES, POSITIONS
 from fleet.demo.places import PLACES, Place
 from fleet.demo.sheets import Sheets
 
 COMPONENT_OF = dict(POSITIONS)
+COMPONENT_NAMES = {str(row["component"]): str(row["name"]) for row in COMPONENTS}
+MODE_NAMES = {mode: name for _, mode, name, *_ in MODES}
 STROKE_CLOCK = {"NUT", "SCREW", "ROLLER"}
 COLD_MONTHS = {12, 1, 2}
 SEASON = [0.7, 0.7, 0.85, 1.0, 1.2, 1.35, 1.4, 1.35, 1.15, 1.0, 0.8, 0.7]  # algae make the brushes run more
@@ -30,6 +33,8 @@ class Fitted:
     row: dict[str, Any]
     fitted_wrongly: bool = False
     dead_since: dt.date | None = None  # failed, and nobody has seen it yet
+    mode: str = ""  # how it failed, once that is settled
+    found_on: dt.date | None = None  # when a crew saw it, and left it in for the bench
 
 
 @dataclass
@@ -57,6 +62,7 @@ class Carriage:
     begin: dt.date
     calendar: Calendar
     sheets: Sheets
+    bench: Bench
     dice: random.Random
     records_from: dt.date | None = None
     strokes: float = 0
@@ -65,6 +71,9 @@ class Carriage:
     fitted: dict[str, Fitted] = field(default_factory=dict)
     waiting_until: dt.date | None = None  # stopped, the crew comes then
     stop: dict[str, Any] | None = None
+    sent_by: dict[str, Any] | None = None  # the visit that sent it to the bench
+    comes_on: dt.date | None = None  # when it gets to the depot
+    job: Planned | None = None
     depot_until: dt.date | None = None
     placement: dict[str, Any] | None = None
     next_visit: dt.date | None = None
@@ -132,9 +141,12 @@ class Carriage:
     # -- days ----------------------------------------------------------------------------------------
 
     def live_day(self, day: dt.date) -> None:
+        if self.comes_on is not None:
+            if day >= self.comes_on:
+                self.come_to_depot(day)
+            return
         if self.depot_until is not None:
-            if day >= self.depot_until:
-                self.come_back(day)
+            self.live_at_depot(day)
             return
         if self.waiting_until is not None:
             if day >= self.waiting_until:
@@ -168,7 +180,7 @@ class Carriage:
         """A bowed screw stops the carriage and takes rollers with it."""
         self.fitted["SCREW"].left = 0
         self.fitted["SCREW"].dead_since = day
-        self.fitted["SCREW"].row["mode"] = "BOWED"
+        self.fitted["SCREW"].mode = "BOWED"
         self.stand_still(day)
 
     def stand_still(self, day: dt.date) -> None:
@@ -208,12 +220,13 @@ class Carriage:
         for part in list(self.fitted.values()):
             component = COMPONENT_OF[part.position]
             if part.dead_since is not None:
-                mode = part.row.get("mode") or self.mode_of(part)
+                part.mode = part.mode or self.mode_of(part)
+                if (component, part.mode) in bench_modes:  # mended on the bench, and left in until then
+                    self.sheets.found_failed(visit, part)
+                    goes = True
+                    continue
                 reason = "not known" if self.dice.random() < 0.012 else "failed"
-                self.sheets.remove(self, part, visit, reason, mode, known)
-                goes = goes or (component, mode) in bench_modes
-                if mode == "BOWED":
-                    self.take_rollers(part, visit, day, known)
+                self.sheets.remove(self, part, visit, reason, part.mode, known)
             elif component == "NUT" and self.nut_comes_out(part, day, called):
                 self.sheets.remove(self, part, visit, self.nut_reason(part, day), None, known)
             else:
@@ -227,14 +240,6 @@ class Carriage:
 
     def no_spare_at_the_end(self, day: dt.date) -> bool:
         return day > self.calendar.end - dt.timedelta(days=9) and self.dice.random() < 0.2
-
-    def take_rollers(self, cause: Fitted, visit: dict[str, Any], day: dt.date, known: dt.date) -> None:
-        rollers = [
-            part for part in self.fitted.values() if COMPONENT_OF[part.position] == "ROLLER" and not part.dead_since
-        ]
-        for part in self.dice.sample(rollers, k=self.dice.randrange(1, len(rollers) + 1)) if rollers else []:
-            self.sheets.remove(self, part, visit, "taken with another", None, known, caused_by=cause.code)
-            self.fit(part.position, "CR-1", day, visit["visit"], known)
 
     def nut_comes_out(self, nut: Fitted, day: dt.date, called: bool) -> bool:
         planned = self.place.planned_age and (day - nut.since).days >= self.place.planned_age
@@ -254,19 +259,52 @@ class Carriage:
     # -- the bench -----------------------------------------------------------------------------------
 
     def go_to_bench(self, day: dt.date, visit: dict[str, Any]) -> None:
-        """Off to a depot; the bad lot of seals put the bench behind."""
+        """It stands still until somebody has brought it to the depot."""
         visit["left"] = "to bench"
-        behind = (
-            self.calendar.bad_lot_from + dt.timedelta(days=60) <= day < self.calendar.bad_lot_to + dt.timedelta(150)
-        )
-        stay = self.dice.randrange(30, 85) if behind else self.dice.randrange(6, 26)
-        if self.stop is not None:
-            self.sheets.end_stop(self.stop, visit)
-            self.stop = None
+        self.stop = self.stop or self.sheets.stop_of(self, visit)
+        self.sent_by, self.comes_on = visit, day + dt.timedelta(days=self.dice.randrange(1, 4))
+
+    def come_to_depot(self, day: dt.date) -> None:
+        self.comes_on = None
+        self.sheets.end_stop_on(self.stop, day)
+        self.stop = None
         depot = DEPOTS[0 if int(self.tag[-1]) % 2 else 1]
         self.sheets.end_place(self.placement, day)
         self.placement = self.sheets.place(self, depot.code, day, bay="")
-        self.depot_until = day + dt.timedelta(days=stay)
+        dead = [part for part in self.fitted.values() if part.dead_since is not None]
+        reason = ", ".join(f"{COMPONENT_NAMES[COMPONENT_OF[part.position]]}: {MODE_NAMES[part.mode]}" for part in dead)
+        self.job = self.bench.take_in(self.tag, depot.code, day, [COMPONENT_OF[part.position] for part in dead], reason)
+        self.depot_until = self.job.finished_on + dt.timedelta(days=self.dice.randrange(1, 10))
+
+    def live_at_depot(self, day: dt.date) -> None:
+        """Its dead parts are changed on the last day of the work; then it waits in the pool."""
+        assert self.depot_until is not None
+        if self.job is not None and day >= self.job.finished_on:
+            self.mend(self.job, day)
+            self.job = None
+        if day >= self.depot_until:
+            self.come_back(day)
+
+    def mend(self, job: Planned, day: dt.date) -> None:
+        for part in [part for part in self.fitted.values() if part.dead_since is not None]:
+            reason = "not known" if self.dice.random() < 0.012 else "failed"
+            self.sheets.remove_on_bench(self, part, job.code, day, reason)
+            self.fit_on_bench(part, job, day)
+            if part.mode == "BOWED":
+                self.take_rollers(part, job, day)
+
+    def take_rollers(self, cause: Fitted, job: Planned, day: dt.date) -> None:
+        """A bowed screw broke some of the rollers beside it."""
+        rollers = [
+            part for part in self.fitted.values() if COMPONENT_OF[part.position] == "ROLLER" and not part.dead_since
+        ]
+        for part in self.dice.sample(rollers, k=self.dice.randrange(1, len(rollers) + 1)) if rollers else []:
+            self.sheets.remove_on_bench(self, part, job.code, day, "taken with another", caused_by=cause.code)
+            self.fit_on_bench(part, job, day)
+
+    def fit_on_bench(self, part: Fitted, job: Planned, day: dt.date) -> None:
+        self.fit(part.position, self.replacement(COMPONENT_OF[part.position], day), day, visit=None)
+        self.sheets.belongs_to(self.fitted[part.position].row, job.code)
 
     def come_back(self, day: dt.date) -> None:
         self.depot_until = None

@@ -104,17 +104,27 @@ def part(code: str, component: str, name: str, cost: float, lead: int, pack: int
 
 
 PARTS: list[Row] = [
-    part("DN-1", "NUT", "drive nut, cast", 31.5, 28, 5, state="ended"),
-    part("DN-2", "NUT", "drive nut, long thread", 38.0, 28, 5, supersedes="DN-1"),
-    part("DN-3", "NUT", "drive nut with wiper lip", 44.0, 35, 5, supersedes="DN-2"),
-    part("LS-1", "SCREW", "lead screw", 212.0, 56, 1, state="ended"),
-    part("LS-2", "SCREW", "lead screw, hardened", 248.0, 56, 1, supersedes="LS-1"),
-    part("LB-1", "LOWBRG", "lower thrust bearing", 64.0, 42, 2, supplier="Quill & Anvil"),
-    part("UB-1", "UPBRG", "upper bearing", 41.0, 42, 2, supplier="Quill & Anvil"),
-    part("SS-1", "SEAL", "shaft seal", 17.5, 21, 10, supplier="Tidewrack Seals", state="ended"),
-    part("SS-2", "SEAL", "shaft seal, double lip", 22.0, 21, 10, supplier="Tidewrack Seals", supersedes="SS-1"),
-    part("CR-1", "ROLLER", "carriage roller", 12.8, 14, 10),
-    part("CP-1", "COUPL", "jaw coupling", 27.0, 14, 2, supplier="Quill & Anvil"),
+    part("DN-1", "NUT", "drive nut, cast", 31.5, 28, 5, state="ended", minimum=0),
+    part("DN-2", "NUT", "drive nut, long thread", 38.0, 28, 5, supersedes="DN-1", minimum=20),
+    part("DN-3", "NUT", "drive nut with wiper lip", 44.0, 35, 5, supersedes="DN-2", minimum=40),
+    part("LS-1", "SCREW", "lead screw", 212.0, 56, 1, state="ended", minimum=0),
+    part("LS-2", "SCREW", "lead screw, hardened", 248.0, 56, 1, supersedes="LS-1", minimum=8),
+    part("LB-1", "LOWBRG", "lower thrust bearing", 64.0, 42, 2, supplier="Quill & Anvil", minimum=10),
+    part("UB-1", "UPBRG", "upper bearing", 41.0, 42, 2, supplier="Quill & Anvil", minimum=2),
+    part("SS-1", "SEAL", "shaft seal", 17.5, 21, 10, supplier="Tidewrack Seals", state="ended", minimum=0),
+    part(
+        "SS-2",
+        "SEAL",
+        "shaft seal, double lip",
+        22.0,
+        21,
+        10,
+        supplier="Tidewrack Seals",
+        supersedes="SS-1",
+        minimum=20,
+    ),
+    part("CR-1", "ROLLER", "carriage roller", 12.8, 14, 10, minimum=40),
+    part("CP-1", "COUPL", "jaw coupling", 27.0, 14, 2, supplier="Quill & Anvil", minimum=8),
 ]
 
 

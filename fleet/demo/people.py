@@ -23,6 +23,7 @@ PEOPLE: list[DemoPerson] = [
     DemoPerson("SVEN", "Sven Aldous", "crew", "TERN SALTGRASS MILL-E MILL-W", "sand-in-thread-95"),
     DemoPerson("LUCA", "Luca Penrow", "crew", "BRACK FERNBECK LARCH", "trout-at-dawn-52"),
     DemoPerson("GRETA", "Greta Munday", "bench", "DEPOT-N DEPOT-S", "vice-and-reamer-30"),
+    DemoPerson("WILF", "Wilf Danby", "bench", "DEPOT-N DEPOT-S", "scraper-and-shim-86"),
     DemoPerson("PILAR", "Pilar Voss", "contact", "TERN SALTGRASS", "tide-table-page-74"),
 ]
 

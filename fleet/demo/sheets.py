@@ -23,6 +23,7 @@ class Sheets:
         self.dice = dice
         self.rows: dict[str, list[Row]] = defaultdict(list)
         self.numbers: dict[str, int] = defaultdict(int)
+        self.fitted_on_bench: dict[str, str] = {}  # fitting → job
 
     def number(self, prefix: str) -> str:
         self.numbers[prefix] += 1
@@ -110,6 +111,41 @@ class Sheets:
             "removed_visit": visit["visit"],
             "removed_known_on": known if known != visit["day"] else "",
         }
+
+    def found_failed(self, visit: Row, part: Fitted) -> None:
+        """Seen, and left in until the bench takes it out."""
+        row = {"visit": visit["visit"], "position": part.position, "finding": "failed", "mode": part.mode}
+        self.add("findings", row)
+        part.found_on = visit["day"]
+
+    def remove_on_bench(
+        self, module: Carriage, part: Fitted, job: str, day: dt.date, reason: str, caused_by: str = ""
+    ) -> None:
+        failed = reason == "failed"
+        reported = module.place.reports_at_once is not False
+        part.row |= {
+            "removed_on": day,
+            "reason": reason,
+            "mode": part.mode if failed else "",
+            "failed_on": (part.dead_since if reported else part.found_on) if failed else "",
+            "found_by": ("when needed" if reported else "planned visit") if failed else "",
+            "caused_by": caused_by,
+            "job": job,
+        }
+
+    def belongs_to(self, row: Row, job: str) -> None:
+        row["job"] = self.fitted_on_bench[row["fitting"]] = job
+
+    def stop_of(self, module: Carriage, visit: Row) -> Row:
+        """Nobody had reported it: it stands still since the visit that sent it away."""
+        row = {"module": module.tag, "stopped_at": visit["happened_at"], "running_at": ""}
+        return self.add("stops", row | {"reported_by": module.place.crew, "visit": visit["visit"]})
+
+    @staticmethod
+    def end_stop_on(stop: Row | None, day: dt.date) -> None:
+        """It came to the depot, where nothing stands still."""
+        if stop is not None:
+            stop["running_at"] = max(stop["stopped_at"], dt.datetime.combine(day, dt.time()))
 
     def reading(self, module: Carriage, visit: Row) -> None:
         row: Row = {

@@ -6,7 +6,8 @@ import datetime as dt
 import random
 from typing import Any
 
-from fleet.demo import catalogue, people, places
+from fleet.demo import catalogue, people, places, supply
+from fleet.demo.bench import Bench
 from fleet.demo.carriage import Calendar, Carriage
 from fleet.demo.places import PLACES, Place
 from fleet.demo.sheets import Sheets
@@ -39,7 +40,8 @@ def tell(*, modules: int = 320, years: float = 3, seed: int = 7, until: dt.date)
     dice = random.Random(seed)
     days = calendar(years, until)
     sheets = Sheets(dice)
-    fleet = []
+    bench = Bench(begin=days.begin, end=days.end, modules=modules, dice=random.Random(dice.random()))
+    fleet: list[Carriage] = []
     span = (days.end - days.begin).days
     bays: dict[str, int] = {}
     for number, home in enumerate(homes(modules), start=1):
@@ -47,20 +49,32 @@ def tell(*, modules: int = 320, years: float = 3, seed: int = 7, until: dt.date)
         begin = days.begin + dt.timedelta(days=int(span * 0.55 * dice.random() ** 1.6))
         bay = f"{'ABCDEFGH'[(bays[home.code] - 1) // 8 % 8]}-{(bays[home.code] - 1) % 8 + 1:02d}"
         kind = "BC36" if dice.random() < 0.4 else "BC20"
-        fleet.append(Carriage(f"BC-{number:04d}", kind, home, bay, begin, days, sheets, random.Random(dice.random())))
-    for number, carriage in enumerate(fleet):
-        carriage.stands_at_the_end = number % 90 == 40 and carriage.place.reports_at_once is True
-        day = carriage.begin + dt.timedelta(days=1)
-        while day <= days.end:
-            carriage.live_day(day)
-            day += dt.timedelta(days=1)
+        own = random.Random(dice.random())
+        fleet.append(Carriage(f"BC-{number:04d}", kind, home, bay, begin, days, sheets, bench, own))
+        fleet[-1].stands_at_the_end = number % 90 == 41 and home.reports_at_once is True
+    live(fleet, days)
     first_day = records_began(days)
     tables: Tables = catalogue.rows() | places.rows(first_day) | people.rows() | dict(sheets.rows)
     tables["modules"] = [{"module": each.tag, "type": each.kind, "built_on": each.begin} for each in fleet]
+    tables |= bench.write_down()
     drop_what_was_not_written(tables, fleet, first_day, dice)
+    tables |= supply.rows(
+        tables, sheets.fitted_on_bench, begin=days.begin, end=days.end,
+        late=(days.bad_lot_from, days.bad_lot_to), dice=random.Random(dice.random()),
+    )  # fmt: skip
     for visit in tables["visits"]:
         del visit["day"]
     return tables
+
+
+def live(fleet: list[Carriage], days: Calendar) -> None:
+    """Day by day for all of them: they meet at the bench, which takes them in the order in which they come."""
+    day = days.begin
+    while day <= days.end:
+        for carriage in fleet:
+            if day > carriage.begin:
+                carriage.live_day(day)
+        day += dt.timedelta(days=1)
 
 
 def records_began(days: Calendar) -> dict[str, object]:
