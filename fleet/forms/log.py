@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import datetime as dt
 import uuid
+from collections.abc import Sequence
 from typing import Any
 
 from django import forms
@@ -11,13 +12,13 @@ from django.core.exceptions import ValidationError
 
 from fleet.actions.errors import CounterWentBack, RecordError
 from fleet.formats import long_day
-from fleet.forms.choosing import TileField
+from fleet.forms.choosing import PickField, TileField
 from fleet.forms.counter import CounterForm
 from fleet.forms.errors import add_record_error
 from fleet.forms.instants import DayField, SiteTimeForm, TimeOfDayField, instant_of
 from fleet.forms.log_choices import LogChoices
 from fleet.forms.log_position import REMOVALS, PositionForm
-from fleet.models import FAILURE_REASONS, Left
+from fleet.models import FAILURE_REASONS, Left, Store
 
 LEFT = [
     (Left.RUNNING.value, "Running"),
@@ -25,6 +26,7 @@ LEFT = [
     (Left.TO_BENCH.value, "To the bench"),
 ]
 NO_SPARE = "no spare"
+NO_STORE = "none"
 # Where an action names a field by another word than the form does.
 FIELD_WORDS = {
     "happened_at": "time",
@@ -66,8 +68,13 @@ class VisitForm(SiteTimeForm, CounterForm):
         max_length=4000, required=False, widget=forms.Textarea(attrs={"rows": 3}), label="Note on the visit"
     )
 
-    def __init__(self, *args: Any, **kwargs: Any) -> None:
+    def __init__(self, *args: Any, stores: Sequence[Store] = (), **kwargs: Any) -> None:
         super().__init__(*args, **kwargs)
+        if stores:
+            self.fields["issue_from"] = PickField(
+                [(store, store.title) for store in stores], nothing="Not from a store", nothing_value=NO_STORE,
+                required=False, widget=forms.RadioSelect, initial=stores[0], label="New parts come from",
+            )  # fmt: skip
         self.fields["stood_day"].zone = self.zone
         self.fields["entry_key"].initial = uuid.uuid4()
 
@@ -103,7 +110,7 @@ class LogSheet:
         self.choices = choices
         zone = choices.standing.zone
         self.no_spare = bool(data) and data.get("finish") == NO_SPARE
-        self.visit = VisitForm(data, zone=zone)
+        self.visit = VisitForm(data, zone=zone, stores=choices.stores)
         self.positions = [
             PositionForm(each, [other for other in choices.positions if other is not each], zone, data)
             for each in choices.positions
@@ -149,7 +156,7 @@ class LogSheet:
             self.visit.add_error(None, "Nothing is said yet. Choose a position, or tick “All well”.")
 
     def entry(self, person: Any) -> dict[str, Any]:
-        """The arguments of `record_visit`."""
+        """The arguments of `log_visit`."""
         said = self.visit.cleaned_data
         left = Left.STOPPED if self.no_spare and said["left"] == Left.RUNNING else said["left"]
         said_at = [form for form in self.positions if form.outcome_said]
@@ -168,6 +175,7 @@ class LogSheet:
             "findings": [form.finding() for form in said_at if not form.changes_part],
             "stopped_at": said["stopped_at"],
             "entry_key": said["entry_key"],
+            "issue_from": said.get("issue_from"),
         }
 
     def add_error(self, error: RecordError) -> None:

@@ -7,7 +7,23 @@ from collections import Counter, defaultdict
 from collections.abc import Iterable
 from dataclasses import dataclass, field
 
-from fleet.models import Component, FailureMode, Finding, Fitting, FoundKind, Module, Part, PartState, Position
+from django.db.models import Sum
+
+from fleet.models import (
+    Component,
+    Condition,
+    FailureMode,
+    Finding,
+    Fitting,
+    FoundKind,
+    Module,
+    Part,
+    PartState,
+    Person,
+    Position,
+    StockBalance,
+    Store,
+)
 from fleet.module_place import Seen, Standing, standing_of
 from fleet.position_names import position_names
 
@@ -24,6 +40,7 @@ class PositionChoices:
     modes: list[FailureMode]
     parts: list[Part]
     likely: Part | None
+    carried: dict[int, int] = field(default_factory=dict)  # new parts in the person's own stores, by part
     failed_on: dt.date | None = None  # the day on which an earlier visit found the part failed and left it in
 
     @property
@@ -36,6 +53,7 @@ class LogChoices:
     module: Module
     standing: Standing
     positions: list[PositionChoices] = field(default_factory=list)
+    stores: list[Store] = field(default_factory=list)  # what the person carries along
 
     @property
     def counts_hours(self) -> bool:
@@ -44,7 +62,7 @@ class LogChoices:
         return any(each.component.clock == "hours" for each in self.positions) or bool(last and last.hours is not None)
 
 
-def log_choices(seen: Seen, module: Module) -> LogChoices:
+def log_choices(seen: Seen, module: Module, person: Person | None = None) -> LogChoices:
     positions = list(
         seen(Position).filter(type=module.type_id).select_related("component").order_by("order", "code_order")
     )
@@ -63,6 +81,8 @@ def log_choices(seen: Seen, module: Module) -> LogChoices:
     parts = parts_by_component(seen, module, components)
     likely = Likely(seen, module, parts)
     failed = days_found_failed(seen, module, fitted.values())
+    stores = list(seen(Store).own_of(person).order_by("code_order")) if person is not None else []
+    carried = carried_parts(seen, stores)
     return LogChoices(
         module,
         standing_of(seen, module),
@@ -74,11 +94,21 @@ def log_choices(seen: Seen, module: Module) -> LogChoices:
                 modes[position.component_id],
                 parts[position.component_id],
                 likely.part(position.component_id, fitted.get(position.pk)),
+                carried,
                 failed.get(position.pk),
             )
             for position in positions
         ],
+        stores,
     )
+
+
+def carried_parts(seen: Seen, stores: list[Store]) -> dict[int, int]:
+    """How many of each part lie in these stores, new."""
+    if not stores:
+        return {}
+    rows = seen(StockBalance).filter(store__in=stores, condition=Condition.NEW, on_hand__gt=0).order_by()
+    return dict(rows.values_list("part").annotate(n=Sum("on_hand")))
 
 
 def often_seen(seen: Seen, modes: dict[int, list[FailureMode]]) -> Counter[int]:

@@ -88,7 +88,7 @@ class PositionForm(forms.Form):
             label="Which part took it along?",
         )
         fields["part"] = PickField(
-            [(part, part_words(part)) for part in choices.parts],
+            [(part, part_words(part, choices.carried.get(part.pk))) for part in choices.parts],
             nothing="Nothing, left empty",
             required=False,
             initial=choices.likely,
@@ -191,6 +191,7 @@ class PositionForm(forms.Form):
         return FindingEntry(position=self.position, finding=kind, mode=mode, note=said["note"])
 
 
-def part_words(part: Any) -> str:
-    """`N3 nut with wiper lip`, and its state where it is not the current one."""
-    return part.title if part.state == "current" else f"{part.title} ({part.state})"
+def part_words(part: Any, carried: int | None = None) -> str:
+    """`N3 nut with wiper lip`, its state where it is not the current one, and how many the person carries along."""
+    said = part.title if part.state == "current" else f"{part.title} ({part.state})"
+    return f"{said}: {carried} with you" if carried else said

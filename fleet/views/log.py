@@ -14,7 +14,8 @@ from django.utils import timezone
 from django.views.decorators.cache import never_cache
 
 from fleet.actions.errors import RecordError
-from fleet.actions.record_visit import record_visit
+from fleet.actions.log_visit import LoggedVisit
+from fleet.actions.log_visit import log_visit as log_and_issue
 from fleet.formats import moment
 from fleet.forms.log import LogSheet
 from fleet.forms.log_choices import log_choices
@@ -66,14 +67,15 @@ def recent(request: Any, modules: QuerySet[Any]) -> list[Any]:
 @never_cache
 def log_visit(request: Any, tag: str) -> HttpResponse:
     module = seen_module(request, tag)
-    sheet = LogSheet(log_choices(request.seen, module), request.POST if request.method == "POST" else None)
+    choices = log_choices(request.seen, module, request.user)
+    sheet = LogSheet(choices, request.POST if request.method == "POST" else None)
     if request.method == "POST" and sheet.is_valid():
         try:
-            visit = record_visit(by=request.user, module=module, **sheet.entry(request.user))
+            logged = log_and_issue(by=request.user, module=module, **sheet.entry(request.user))
         except RecordError as error:
             sheet.add_error(error)
         else:
-            tell(request, sheet, visit)
+            tell(request, sheet, logged)
             return redirect("module", tag=module.code)
     context = {
         "module": module,
@@ -84,8 +86,9 @@ def log_visit(request: Any, tag: str) -> HttpResponse:
     return render(request, "log/visit.html", context, status=422 if request.method == "POST" else 200)
 
 
-def tell(request: Any, sheet: LogSheet, visit: Visit) -> None:
+def tell(request: Any, sheet: LogSheet, logged: LoggedVisit) -> None:
     """What stands in the book now; a second sending of the same entry is told as such."""
+    visit = logged.visit
     if timezone.now() - visit.entered_at > JUST_NOW:
         entered = moment(visit.entered_at.astimezone(sheet.choices.standing.zone))
         messages.info(request, f"This entry was recorded already, on {entered}. Nothing was added.")
@@ -93,6 +96,19 @@ def tell(request: Any, sheet: LogSheet, visit: Visit) -> None:
     done = [outcome_words(form, no_spare=sheet.no_spare) for form in sheet.positions if form.outcome_said]
     what = "; ".join(done) or ("all well" if sheet.visit.cleaned_data["all_well"] else "a visit")
     messages.success(request, f"Recorded: {what}; {LEFT_WORDS.get(visit.left, 'visited')}.")
+    tell_stock(request, logged)
+
+
+def tell_stock(request: Any, logged: LoggedVisit) -> None:
+    """What left the crew's own store, and what the book did not know to be there."""
+    taken = ", ".join(move.part.code for move in logged.issued)
+    if taken:
+        messages.info(request, f"Taken off {logged.issued[0].store.title}: {taken}.")
+    short = ", ".join(part.code for part in logged.short)
+    if short:
+        messages.warning(
+            request, f"On record you carry none of {short}, so nothing was taken off. Have your store counted."
+        )
 
 
 def outcome_words(form: PositionForm, *, no_spare: bool) -> str:
