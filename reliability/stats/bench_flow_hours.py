@@ -87,7 +87,8 @@ def hours_to_target(
     """Hours a week that bring the backlog to at most `target` modules by a day (the last one if None).
 
     hours_by_day: the calendar, whose days are all longer or shorter by one factor; places as in simulate_bench: more
-    hours are longer days or shifts of as many people. Raises InvalidArgument.
+    hours are longer days or shifts of as many people. Failures come as if every module ran, which errs towards more
+    hours. Raises InvalidArgument.
     """
     hours = np.asarray(hours_by_day, dtype=np.float64)
     if hours.ndim != 1 or not hours.size or not np.isfinite(hours).all() or (hours < 0).any():

@@ -14,7 +14,7 @@ from scipy import stats
 from reliability.stats.errors import InvalidArgument
 from reliability.stats.stocking import expected_backorders
 from reliability.stats.two_echelon import backorders_by_moments, two_echelon_backorders
-from reliability.stats.two_echelon_money import StockedPart, marginal_analysis
+from reliability.stats.two_echelon_money import StockedPart, best_split, marginal_analysis
 from tests.stats.stock_reference import check
 
 TWO_OUTLETS = {"depot_time": 14, "ship_time": 2}
@@ -174,6 +174,17 @@ def test_every_corner_is_the_best_of_all_splits():
         assert step.money == 40.0 * pieces
     assert pieces >= 5
     assert curve.start_backorders == pytest.approx(least_owed(part, 0))
+
+
+def test_the_best_split_of_a_number_that_is_no_corner():
+    for pieces in range(7):
+        plan = best_split(nut(), pieces)
+        assert plan.pieces == pieces
+        assert plan.backorders == pytest.approx(least_owed(nut(), pieces), abs=1e-9)
+    assert best_split(nut(demand=[0.0, 0.0]), 5).pieces == 5
+    for pieces in (-1, 0.5, 401):
+        with pytest.raises(InvalidArgument, match="to be split"):
+            best_split(nut(), pieces)
 
 
 def test_two_parts_share_the_money_best_at_each_corner():
