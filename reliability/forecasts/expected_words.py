@@ -74,9 +74,10 @@ def note(now: Now, today: dt.date) -> str:
         "figures together, if every forecast were right. Each forecast is the one of the evening before the week or "
         "the quarter began."
     )
-    fresh = ""
-    if (today - now.until).days > STALE_DAYS:
-        fresh = f" Counted up to {long_day(now.until)}: the background worker has not run since."
+    fresh = "" if now.until >= today else f" Counted up to {long_day(now.until)}"
+    if fresh:
+        late = (today - now.until).days > STALE_DAYS
+        fresh += ": the background worker has not run since." if late else "; today is counted by the next round."
     missing = f" {counted(now.missing, 'component')} could not be compared." if now.missing else ""
     return f"{rule}{fresh}{missing}"
 

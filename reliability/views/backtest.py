@@ -16,6 +16,7 @@ from fleet.models import Component, Work, WorkState
 from fleet.rights import LIFE, needs
 from fleet.views.listing import as_csv
 from fleet.work import enqueue
+from fleet.work.enqueue import ask_to_cancel
 from reliability.forms.backtest import BacktestForm, QuartersForm
 
 MOST_WORKS = 20
@@ -33,7 +34,7 @@ def backtest(request: Any) -> HttpResponseBase:
     if chosen is None:
         return render(request, "forecast/backtest.html", {**frame(), "form": form})
     if request.method == "POST":
-        return begin(request, form, chosen)
+        return stop(request, form, chosen) if "stop" in request.GET else begin(request, form, chosen)
     from reliability.forecasts.backtest import latest
 
     document = latest(chosen)
@@ -61,7 +62,19 @@ def begin(request: Any, form: BacktestForm, chosen: Component) -> HttpResponse:
         arguments = {"component": chosen.code, "quarters": asked.cleaned_data["quarters"]}
         enqueue(ASKED, f"Judging past forecasts: {chosen.title}", arguments, request.user)
         messages.success(request, "Past forecasts are being judged in the background. You may leave this page.")
-    return redirect(f"{reverse('backtest')}?component={chosen.code}&measure={form.cleaned_data['measure']}")
+    return redirect(here(form, chosen))
+
+
+def stop(request: Any, form: BacktestForm, chosen: Component) -> HttpResponse:
+    """What is on its way ends at its next step; quarters that were judged stay."""
+    running = on_its_way(works_for(request, chosen))
+    if running is not None:
+        ask_to_cancel(running)
+    return redirect(here(form, chosen))
+
+
+def here(form: BacktestForm, chosen: Component) -> str:
+    return f"{reverse('backtest')}?component={chosen.code}&measure={form.cleaned_data['measure']}"
 
 
 def works_for(request: Any, chosen: Component) -> list[Work]:
@@ -89,14 +102,14 @@ def page(
         "quarters_form": asked,
         "document": document,
         "gone_wrong": gone_wrong(works, document),
-        "here": f"{reverse('backtest')}?component={chosen.code}&measure={measure}",
+        "here": here(form, chosen),
         "overview": overview(request, measure),
     }
     if running is not None:
         context |= {
             "work": running,
             "work_url": context["here"],
-            "cancel_url": reverse("cancel_work", args=[running.pk]),
+            "cancel_url": f"{context['here']}&stop=1",
         }
     return context | (answer(document, measure) if document else {})
 

@@ -175,7 +175,9 @@ def test_it_is_begun_once_followed_and_stopped(manager: Client, nut: Component) 
     text = text_of(manager.get("/forecast/backtest/?component=NUT"))
     assert "Stop it" in text
     assert 'hx-trigger="every 2s"' in text
-    manager.post(f"/work/{work.pk}/cancel/")
+    stop = manager.post("/forecast/backtest/?component=NUT&measure=failures&stop=1")
+    assert stop["Location"] == "/forecast/backtest/?component=NUT&measure=failures"
+    assert 'action="/forecast/backtest/?component=NUT&amp;measure=failures&amp;stop=1"' in text
     text = text_of(manager.get("/forecast/backtest/?component=NUT"))
     assert "came to no end. Stopped before it began." in text
     assert "Stop it" not in text

@@ -188,7 +188,12 @@ def test_it_says_when_nothing_is_kept_and_when_the_worker_stood_still(client: Cl
     keep("NUT", 3.0, 5.0, until=dt.date(2025, 5, 8))
     text = page(client, make_manager())
     assert "Counted up to 8\u00a0May 2025: the background worker has not run since." in text
-    assert fleet.component.code == "NUT"
+    now = expected_now([fleet.component])
+    assert now is not None
+    assert (
+        "Counted up to 8\u00a0May 2025; today is counted by the next round." in told(now, dt.date(2025, 5, 9))["note"]
+    )
+    assert "Counted up to" not in told(now, dt.date(2025, 5, 8))["note"]
 
 
 def test_a_component_that_cannot_be_compared_is_counted_as_missing() -> None:
