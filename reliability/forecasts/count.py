@@ -19,7 +19,8 @@ if TYPE_CHECKING:
     from reliability.stats.count_simulation import SimulatedCounts
 
 FEW_FAILURES = 20
-MANY_DRAWS, SOME_DRAWS, FEW_DRAWS = 400, 200, 100
+MANY_FAILURES = 200
+MANY_DRAWS, SOME_DRAWS, FEW_DRAWS, FEWEST_DRAWS = 400, 200, 100, 50
 LABELS = ("site", "type", "part", "needed")
 SIMULATED = 600_000  # draws times positions
 FEWEST_SIMULATED, MOST_SIMULATED = 200, 2000
@@ -88,7 +89,10 @@ def draws_for(learned: Learned, positions: Positions) -> int:
     if learned.failures < FEW_FAILURES:
         return MANY_DRAWS
     labels = {learned.label(name) for place in positions.places for name in (place.part, place.needed)}
-    return SOME_DRAWS if min(learned.design(label).failures for label in labels) < FEW_FAILURES else FEW_DRAWS
+    least = min(learned.design(label).failures for label in labels)
+    if least < FEW_FAILURES:
+        return SOME_DRAWS
+    return FEW_DRAWS if least < MANY_FAILURES else FEWEST_DRAWS
 
 
 def settings_of(question: Question, learned: Learned, positions: Positions) -> dict[str, Any]:

@@ -15,6 +15,7 @@ from reliability.running_parts import RunningRow
 
 AGE_CELLS = 60  # ages are told apart to this share of the typical life
 PACE_STEP = 0.25  # paces are told apart to this share
+AGE_DRAWS = 40
 NEVER = math.inf
 
 
@@ -61,8 +62,12 @@ def positions_of(rows: Iterable[RunningRow], question: Question, learned: Learne
     import numpy as np
 
     found: dict[Place, list[tuple[float, float, float]]] = defaultdict(list)
+    spread_ages: dict[tuple[str, float], list[tuple[float, float]]] = {}
     for row in rows:
-        for place, age, weight in _spread(row, question, learned):
+        if row.least and (row.part, row.age) not in spread_ages:
+            spread_ages[row.part, row.age] = _ages_at_least(row, learned)
+        aged = spread_ages[row.part, row.age] if row.least else [(row.age, 1.0)]
+        for place, age, weight in _spread(row, aged, question, learned):
             if place.pace > 0 and place.leaves > 0:
                 step = round(math.log(place.pace) / PACE_STEP)
                 found[place._replace(pace=float(step))].append((age, weight, place.pace))
@@ -85,7 +90,9 @@ def positions_of(rows: Iterable[RunningRow], question: Question, learned: Learne
     return Positions(np.array(ages), horizons, np.array(weights), places)
 
 
-def _spread(row: RunningRow, question: Question, learned: Learned) -> Iterator[tuple[Place, float, float]]:
+def _spread(
+    row: RunningRow, ages: list[tuple[float, float]], question: Question, learned: Learned
+) -> Iterator[tuple[Place, float, float]]:
     """A row as one or more: ages that are known only at least, and a module that stands still, may go several ways."""
     days = question.component.clock == "days"
     use = 1.0 if days else question.what_if.duty * learned.duty.factor(question.span)
@@ -105,7 +112,7 @@ def _spread(row: RunningRow, question: Question, learned: Learned) -> Iterator[t
         leaves=row.leaves - shift,
     )
     place = _visited(place, row, question, learned)
-    for age, share in _ages(row, learned, pace):
+    for age, share in ages:
         aged = age if row.joins > 0 else max(age + shift * pace, 0.0)
         left = learned.standing.days_left(row.stopped) - shift if row.stopped >= 0 else 0.0
         if left <= 0:
@@ -117,12 +124,14 @@ def _spread(row: RunningRow, question: Question, learned: Learned) -> Iterator[t
         yield place._replace(joins=left), age, row.count * share * (1.0 - learned.stop_share)
 
 
-def _ages(row: RunningRow, learned: Learned, pace: float) -> list[tuple[float, float]]:
+def _ages_at_least(row: RunningRow, learned: Learned) -> list[tuple[float, float]]:
+    """Ages and their shares for a part that may have been there for longer than anybody wrote down."""
+    import numpy as np
+
     from reliability.stats.count_compound import ages_at_least
 
-    if not row.least:
-        return [(row.age, 1.0)]
-    ages, weights = ages_at_least(learned.design(row.part).life.drawn, row.age)
+    drawn = learned.design(row.part).life.draws(AGE_DRAWS, np.random.default_rng(0))
+    ages, weights = ages_at_least(drawn, row.age)
     return list(zip(ages.tolist(), weights.tolist(), strict=True))
 
 

@@ -66,6 +66,8 @@ class BlockTails:
 
     def targets(self, kind: str, count: int) -> list[FloatArray]:
         """Tails P(N >= k), k = 1 .., (draws, rows, orders), of each of the first `count` targets."""
+        if kind == "planned" and not self._any_planned and not (self._rows.extra == 2).any():
+            return [np.zeros((self._new.failed.shape[0], len(self._rows), 1)) for _ in range(count)]
         if kind == "parts" and self._failures and self._ends.removed is None and not self._any_planned:
             # only what stopped modules get comes on top
             return [self._with_extra(kind, tails, number) for number, tails in enumerate(self._failures[:count])]

@@ -230,9 +230,12 @@ def _blocks(
     classes = rows.classes
     at_visits = classes.visit_every > 0
     blocks = []
-    if (~at_visits).any():
-        number = cells or _cell_count(float(classes.horizon[~at_visits].max()), sharpness, edges)
-        blocks.append(Block(MidpointGrid(number, refit_delay), rows.of_classes(~at_visits), spans, taken_share))
+    # those without planned replacement apart: they need no count of planned ones
+    for planned in (False, True):
+        some = ~at_visits & (np.isfinite(classes.replace_at) == planned)
+        if some.any():
+            number = cells or _cell_count(float(classes.horizon[some].max()), sharpness, edges)
+            blocks.append(Block(MidpointGrid(number, refit_delay), rows.of_classes(some), spans, taken_share))
     if at_visits.any():
         some = rows.of_classes(at_visits)
         seen = (some.classes.horizon - some.classes.visit_next) / some.classes.visit_every
