@@ -7,6 +7,7 @@ python -m tests.benchmarks.bench_calibration [--fleets 600] [--case NAME ...] [-
 from __future__ import annotations
 
 import argparse
+import sys
 import time
 from collections.abc import Iterable
 from dataclasses import dataclass, field
@@ -152,19 +153,25 @@ def score(case: Case, fleets: int, seed: int) -> Scores:
     return scores
 
 
-def lines(name: str, scores: Scores, seconds: float) -> Iterable[str]:
-    """The table's lines of one case."""
+TITLE = (
+    "| case | where | PIT80 | low | high | actual | median | 80 % width | CRPS | rival's CRPS is |\n"
+    "|---|---|---|---|---|---|---|---|---|---|"
+)
+
+
+def lines(name: str, scores: Scores) -> Iterable[str]:
+    """The table's lines of one case, as Markdown; PIT80 with its standard error."""
     for scope in SCOPES:
         pit = np.array(scores.pit[scope])
         inside = np.mean((pit > 0.1) & (pit < 0.9))
+        error = np.sqrt(inside * (1.0 - inside) / pit.size)
         ratio = np.mean(scores.rival[scope]) / max(np.mean(scores.crps[scope]), 1e-12)
-        title = name if scope == "all" else ""
+        actual, median = np.mean(scores.actual[scope]), np.mean(scores.expected[scope])
         yield (
-            f"{title:30} {scope:9} PIT80 {inside:.3f} ({np.mean(pit <= 0.1):.3f} low, {np.mean(pit >= 0.9):.3f} high) "
-            f"actual {np.mean(scores.actual[scope]):7.2f} forecast {np.mean(scores.expected[scope]):7.2f} "
-            f"width {np.mean(scores.width[scope]):6.1f} CRPS {np.mean(scores.crps[scope]):6.3f} rival x{ratio:.2f}"
+            f"| {name if scope == 'all' else ''} | {scope} | {inside:.3f} ± {error:.3f} | {np.mean(pit <= 0.1):.3f} "
+            f"| {np.mean(pit >= 0.9):.3f} | {actual:.2f} | {median:.2f} "
+            f"| {np.mean(scores.width[scope]):.1f} | {np.mean(scores.crps[scope]):.3f} | {ratio:.2f} times |"
         )
-    yield f"{'':30} {len(scores.pit['all'])} fleets, {1000 * seconds / len(scores.pit['all']):.0f} ms each"
 
 
 def main() -> None:
@@ -176,11 +183,13 @@ def main() -> None:
     parser.add_argument("--seed", type=int, default=1)
     chosen = parser.parse_args()
     every = CASES | FURTHER
+    print(TITLE, flush=True)
     for name in chosen.case or (FURTHER if chosen.further else CASES):
         started = time.perf_counter()
         scores = score(every[name], chosen.fleets, chosen.seed)
-        for line in lines(name, scores, time.perf_counter() - started):
-            print(line, flush=True)
+        print("\n".join(lines(name, scores)), flush=True)
+        each = 1000 * (time.perf_counter() - started) / chosen.fleets
+        print(f"{name}: {chosen.fleets} fleets, {each:.0f} ms each", file=sys.stderr, flush=True)
 
 
 if __name__ == "__main__":
