@@ -48,13 +48,17 @@ def turn_round(found: Backlog) -> str:
     weeks = SOON // 7
     last = min(SOON, found.course.days)
     middle, low, high = (found.course.turn_round(p, 0, last) for p in (0.5, 0.1, 0.9))
-    if low is None:
+    if not found.course.received.values[:, last].any():
         return ""
     who = f"A module received in the next {weeks} weeks"
-    if middle is None:
+    if low is None or middle is None:
         return f"{who} is more likely than not still unfinished after the {number(found.course.days)} days looked at."
-    upper = f"longer than the {number(found.course.days)} days looked at" if high is None else number(high, 0)
-    return f"{who} is finished after about {number(middle, 0)} days (80 of 100 cases: {number(low, 0)} to {upper})."
+    after = "within a day" if middle < 1 else f"after about {counted(round(middle), 'day')}"
+    if high is None:
+        spread = f"{counted(round(low), 'day')} to longer than the {number(found.course.days)} looked at"
+    else:
+        spread = f"{number(low, 0)} to {counted(round(high), 'day')}"
+    return f"{who} is finished {after} (80 of 100 cases: {spread})."
 
 
 def ready(found: Backlog) -> str:
@@ -111,7 +115,8 @@ def change_sentence(told: dict[str, Any], found: Backlog) -> str:
 
 
 def _about(value: float) -> str:
-    return number(value, 0 if abs(value) >= 10 else 1)
+    tenths = round(value, 1)
+    return number(tenths, 0 if abs(value) >= 10 or tenths.is_integer() else 1)
 
 
 def _to(low: float, high: float) -> str:

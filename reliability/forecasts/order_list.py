@@ -284,9 +284,9 @@ def _cover(course: RunningOut) -> tuple[float | None, float | None, float | None
 
 def _left_over(shelf: Shelf, due: int, paths: DemandPaths, today: dt.date) -> tuple[float, int, int] | None:
     """Pieces still there when a superseded part goes out of use, if no more are ordered."""
-    if shelf.used_until is None:
+    if shelf.used_until is None or (shelf.used_until - today).days > paths.days:
         return None
-    day = int(np.clip((shelf.used_until - today).days, 0, paths.days))
+    day = max((shelf.used_until - today).days, 0)
     left = np.maximum(shelf.on_hand + due - paths.cumulative[:, day], 0)
     counts = CountDistribution(np.bincount(left) / left.size)
     return counts.mean, *counts.interval(0.8)
