@@ -16,6 +16,7 @@ import numpy as np
 from scipy.special import gammaln
 
 from reliability.stats.counts import CountForecast, forecast_counts
+from reliability.stats.kept_draws import KeptDraws
 from reliability.stats.life_posterior import life_posterior
 from reliability.stats.scoring import crps, randomised_pit
 from tests.benchmarks.calibration_fleets import NEW_SITE, Case, Fleet, make_fleet
@@ -97,16 +98,18 @@ class Scores:
 
 
 def forecast(case: Case, fleet: Fleet, rng: np.random.Generator) -> CountForecast:
-    """The forecast as the program makes it: early failures looked for, site spread, removals by their rate."""
+    """The forecast as the program makes it: early failures looked for, site spread, removals by their rate, and its
+    numbers of draws.
+    """
     posterior = life_posterior(fleet.records, site_spread=True, rounded_up_to=1.0)
     unplanned = 0.0 if np.isfinite(case.replace_at) else fleet.removals / fleet.observed_time
     return forecast_counts(
-        posterior,
+        KeptDraws.of(posterior, 400, rng),
         fleet.ages,
         fleet.horizons,
         sites=fleet.sites,
         groups=fleet.sites,
-        draws=100 if fleet.records.failures >= 20 else 400,
+        draws=400 if fleet.records.failures < 20 else 100 if fleet.records.failures < 200 else 50,
         rng=rng,
         other_removals=unplanned,
         visits=fleet.visits,
