@@ -24,7 +24,7 @@ def backtest_figure(summed: dict[str, Any], title: str) -> Figure:
             "mode": "markers",
             "name": "expected",
             "x": names,
-            "y": [row["expected"] for row in rows],
+            "y": [row["hoped"] for row in rows],
             "marker": {"symbol": "line-ew-open", "size": 18, "color": "var(--blue)", "line": {"width": 2.2}},
             "hovertemplate": "%{x}: %{y:.1f} expected<extra></extra>",
         }

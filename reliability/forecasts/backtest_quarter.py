@@ -173,6 +173,8 @@ def judged(name: str, measure: Measure, stand: Stand) -> dict[str, Any]:
     rng = np.random.default_rng(int.from_bytes(seed, "big"))
     return {
         **scored(distribution, actual),
+        "median": distribution.quantile(0.5),
+        "failures_known": stand.forecast.found.count("failed"),
         "actual": actual,
         "pit": float(randomised_pit(distribution.pmf, actual, rng)),
         "pmf": kept_part(distribution),

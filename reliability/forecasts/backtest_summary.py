@@ -18,7 +18,7 @@ Quarter = dict[str, Any]
 def summed_up(name: str, quarters: list[Quarter]) -> dict[str, Any]:
     """Everything that is said of one measure, with its quarters in the order of time."""
     rows = [row_of(each, name) for each in quarters]
-    shown = [{key: value for key, value in row.items() if key != "pmf"} for row in rows]
+    shown = [{**{key: value for key, value in row.items() if key != "pmf"}, "hoped": hoped(row)} for row in rows]
     middle = [PIT_MIDDLE[0] < row["pit"] < PIT_MIDDLE[1] for row in rows]
     return {
         "quarters": shown,
@@ -34,6 +34,11 @@ def row_of(quarter: Quarter, name: str) -> dict[str, Any]:
     """The measure's figures with the quarter's days."""
     days = {key: quarter[key] for key in ("from", "until", "as_of", "positions", "in_modules_that_came_later")}
     return {**days, **quarter["measures"][name]}
+
+
+def hoped(row: dict[str, Any]) -> float:
+    """What to show as expected: where no failure was known the middle one, for the mean rests on the prior alone."""
+    return row["expected"] if row["failures_known"] else row["median"]
 
 
 def hits(rows: list[dict[str, Any]]) -> dict[str, Any]:
@@ -59,6 +64,8 @@ def bias(rows: list[dict[str, Any]]) -> dict[str, Any]:
     return {
         "actual": sum(row["actual"] for row in rows),
         "expected": sum(row["expected"] for row in rows),
+        "median": total.quantile(0.5),
+        "none_known": all(row["failures_known"] == 0 for row in rows),
         "bands": {"0.95": list(total.interval(0.95))},
     }
 

@@ -34,7 +34,7 @@ def judgement(found: dict[str, Any]) -> str:
     """What hits outside the ordinary mean; empty within."""
     low, high = found["ordinary"]
     if found["hits"] < low:
-        return "The bands were too narrow: take the forecast as less sure than it says."
+        return "So few come to a right forecast in less than one case of ten: take this one as less sure than it says."
     return "The bands were wider than they had to be." if found["hits"] > high else ""
 
 
@@ -86,8 +86,10 @@ def bias(document: dict[str, Any], measure: str = "failures") -> str:
     """Too many or too few over all quarters, with the band of the sum."""
     found, told = document["measures"][measure]["bias"], MEASURES[measure]
     low, high = found["bands"]["0.95"]
-    actual, expected = found["actual"], found["expected"]
-    hoped = number(expected, 0 if expected >= 20 else 1)
+    actual = found["actual"]
+    # where no failure had been seen, a mean would rest on the prior alone
+    expected = float(found["median"]) if found["none_known"] else found["expected"]
+    hoped = number(expected, 0 if expected >= 20 or found["none_known"] else 1)
     said = f"{number(actual)} {told.units} {told.came} where {hoped} were expected in all"
     if expected >= ENOUGH_FOR_SHARES and round(100 * abs(actual / expected - 1)):
         said += f", {100 * abs(actual / expected - 1):.0f}\u00a0% {'more' if actual > expected else 'fewer'}"

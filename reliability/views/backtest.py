@@ -166,7 +166,7 @@ def quarters_table(summed: dict[str, Any]) -> dict[str, Any]:
         cells: list[Any] = [
             {"text": quarter_name(row["from"]), "sub": f"from {short_day(dt.date.fromisoformat(row['from']))}"},
             {"text": row["actual"], "sub": outside},
-            about(row["expected"]),
+            {"text": about(row["hoped"]), "sub": "" if row["failures_known"] else "none failed yet"},
             *(between(row["bands"][band]) for band in summed["hits"]),
             about(row["crps"]),
             *(rival_cell(row["rivals"][rival]) for rival in ("constant_rate", "last_quarter")),
@@ -214,7 +214,7 @@ def overview(request: Any, measure: str) -> dict[str, Any]:
                 name,
                 {"text": f"{hits['hits']} of {hits['of']}", "sub": f"{span(hits['ordinary'])} is ordinary"},
                 found["bias"]["actual"],
-                about(found["bias"]["expected"]),
+                about(found["bias"]["median"] if found["bias"]["none_known"] else found["bias"]["expected"]),
                 about(found["crps"]),
                 *(about(rivals[each]["crps"]) if rivals[each] else None for each in ("constant_rate", "last_quarter")),
             ]

@@ -49,12 +49,14 @@ def quarter(
     }
 
 
-def measured(actual: int, mean: float, rate: float, last: float | None) -> dict[str, Any]:
+def measured(actual: int, mean: float, rate: float, last: float | None, known: int = 9) -> dict[str, Any]:
     ours = poisson_count(mean)
     rivals = {"constant_rate": poisson_count(rate), "last_quarter": None if last is None else poisson_count(last)}
     return {
         **scored(ours, actual),
         "actual": actual,
+        "median": ours.quantile(0.5),
+        "failures_known": known,
         "pit": 0.5,
         "pmf": kept_part(ours),
         "rivals": {key: None if each is None else scored(each, actual) for key, each in rivals.items()},
@@ -124,10 +126,21 @@ def test_too_few_hits_say_that_the_bands_were_too_narrow(nut: Component) -> None
     document = keep_document(nut, [quarter(begin, 40) for begin in BEGINS])
     line = words.line(document)
     assert "none of the actual figures lay within" in line["sentence"]
-    assert "too narrow" in line["note"]
+    assert "less sure than it says" in line["note"]
     assert words.bias(document).endswith("The forecasts ran too low.")
     low = keep_document(nut, [quarter(begin, 3) for begin in BEGINS])
     assert words.bias(low).endswith("The forecasts ran too high.")
+
+
+def test_without_a_failure_known_the_middle_stands_for_the_mean(manager: Client, nut: Component) -> None:
+    quarters = [quarter(begin, 0) for begin in BEGINS]
+    for each in quarters:
+        each["measures"]["failures"] = measured(0, 0.6, 0.0, 0.0, known=0)
+    document = keep_document(nut, quarters)
+    assert words.bias(document).startswith("0 failures happened where 5 were expected in all;")
+    page = manager.get("/forecast/backtest/")
+    assert "none failed yet" in text_of(page)
+    assert page.context["chart"]["figure"]["data"][-2]["y"] == [0] * 8
 
 
 def test_a_young_book_says_how_many_quarters_there_are(manager: Client, nut: Component) -> None:

@@ -54,7 +54,7 @@ def lines_of(document: dict[str, Any]) -> list[str]:
         ends = "".join(f"{between(row['bands'][band]).replace(' to ', '–'):>11}" for band in document["bands"])
         mark = "" if row["held"]["0.8"] else "   outside the 80 % band"
         table.append(
-            f"{row['from']:<14}{row['actual']:>9}{about(row['expected']):>10}{ends}{about(row['crps']):>11}{mark}"
+            f"{row['from']:<14}{row['actual']:>9}{about(row['hoped']):>10}{ends}{about(row['crps']):>11}{mark}"
         )
     said = [words.bias(document), words.other_bands(document), *words.rivals(document)]
     used = [f"Parts used: {words.bias(document, 'parts_used')} {words.line(document, 'parts_used')['sentence']}"]
