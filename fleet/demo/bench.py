@@ -87,11 +87,11 @@ class Bench:
         """The days on which the bench finds time for it."""
         worked, day = [], first
         while hours > 1e-9:
-            some = min(self.left_on(day), hours, MOST_A_DAY)
-            if some > 0.05 or (some > 0 and some == hours):
+            some = int(4 * min(self.left_on(day), hours, MOST_A_DAY)) / 4  # written down by the quarter of an hour
+            if some:
                 self.left[day] -= some
                 hours -= some
-                worked.append((day, round(some, 2)))
+                worked.append((day, some))
             day += dt.timedelta(days=1)
         return worked
 

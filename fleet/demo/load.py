@@ -9,6 +9,7 @@ from pathlib import Path
 from typing import Any
 
 from fleet.demo.people import give_passwords
+from fleet.demo.redesigns import add_redesigns
 from fleet.demo.story import Tables, tell
 from fleet.history import writing
 from fleet.models import Book, DataVersion, Module, Person, Site, Visit, Work, WorkState
@@ -42,6 +43,7 @@ def load_demo(*, modules: int, years: float, seed: int, until: dt.date) -> dict[
         give_passwords()
         settle_book()
         mark_doubts()
+        add_redesigns(until)
     return dict(work.result)
 
 

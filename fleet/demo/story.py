@@ -23,7 +23,7 @@ def calendar(years: float, until: dt.date) -> Calendar:
     def at(share: float) -> dt.date:
         return begin + dt.timedelta(days=round(span * share))
 
-    return Calendar(begin, until, at(0.62), at(0.45), at(0.66), at(0.36), at(0.46), at(0.55))
+    return Calendar(begin, until, at(0.84), at(0.45), at(0.66), at(0.36), at(0.46), at(0.55))
 
 
 def homes(modules: int) -> list[Place]:

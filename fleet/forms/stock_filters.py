@@ -7,6 +7,7 @@ from typing import Any
 import django_filters
 from django import forms
 from django.db.models import F, Q, QuerySet
+from django.utils import timezone
 
 from fleet.forms.filters import SeenChoice, folded
 from fleet.models import BenchJob, Component, MoveKind, Outcome, Part, Site, Stage, StockMove, SupplyLine
@@ -64,7 +65,10 @@ class SupplyFilter(django_filters.FilterSet):
     order = django_filters.CharFilter(label="Order or supplier", method="words")
     part = django_filters.CharFilter(label="Part number", method="of_part")
     shows = django_filters.ChoiceFilter(
-        label="Which", method="which", empty_label="all", choices=[("open", "still to come"), ("late", "overdue")]
+        label="Which",
+        method="which",
+        empty_label="still to come",
+        choices=[("late", "overdue"), ("every", "all lines")],
     )
 
     class Meta:
@@ -78,10 +82,11 @@ class SupplyFilter(django_filters.FilterSet):
         return rows.filter(part__code=clean_code(value))
 
     def which(self, rows: QuerySet[Any], name: str, value: str) -> QuerySet[Any]:
-        from django.utils import timezone
+        return rows.filter(due__gt=0, due_on__lt=timezone.localdate()) if value == "late" else rows
 
-        rows = rows.filter(due__gt=0)
-        return rows.filter(due_on__lt=timezone.localdate()) if value == "late" else rows
+    def filter_queryset(self, queryset: QuerySet[Any]) -> QuerySet[Any]:
+        rows = super().filter_queryset(queryset)
+        return rows if self.form.cleaned_data.get("shows") else rows.filter(due__gt=0)
 
 
 class DeliveryFilter(django_filters.FilterSet):

@@ -17,7 +17,7 @@ from fleet.actions.errors import RecordError
 from fleet.actions.set_capacity import set_capacity
 from fleet.actions.take_in_module import take_in_module
 from fleet.bench import hours_available, hours_booked, monday_of, on_the_way, pool, with_hours
-from fleet.formats import counted, number
+from fleet.formats import counted, long_day, number, short_day
 from fleet.forms.bench import CapacityForm, TakeInForm
 from fleet.forms.errors import add_record_error
 from fleet.forms.stock_filters import JobFilter
@@ -90,15 +90,15 @@ def week_row(week: dt.date, booked: float, there: float | None, now: dt.date) ->
     share: Any = "–"
     if there:
         share = {"text": f"{number(100 * booked / there, 0)} %", "kind": "late" if booked > there else ""}
-    name: Any = {"text": f"{week:%Y-%m-%d}", "strong": week == now, "sub": "this week" if week == now else ""}
-    hours = "not set" if there is None else ("closed" if there == 0 else number(there))
-    return [name, number(booked) if booked or week <= now else "–", hours, share if week <= now else "–"]
+    name: Any = {"text": short_day(week, now.year), "strong": week == now, "sub": "this week" if week == now else ""}
+    hours = "not set" if there is None else ("closed" if there == 0 else number(there, 1))
+    return [name, number(booked, 1) if booked or week <= now else "–", hours, share if week <= now else "–"]
 
 
 def bench_sentence(jobs: list[Any], weeks: dict[str, Any], ready: int) -> str:
     booked, there = next((b, t) for week, b, t in weeks["rows"] if week == weeks["now"])
-    hours = f"{number(booked)} hours are booked this week"
-    hours += f" of {number(there)} there are" if there is not None else ", and nobody has set how many there are"
+    hours = f"{number(booked, 1)} hours are booked this week"
+    hours += f" of {number(there, 1)} there are" if there is not None else ", and nobody has set how many there are"
     in_pool = f"{number(ready)} {'is' if ready == 1 else 'are'} ready in the pool" if ready else "the pool is empty"
     if not jobs:
         return f"Nothing is on the bench; {in_pool}. {hours}."
@@ -218,7 +218,7 @@ def capacity(request: Any) -> HttpResponse:
     context = {
         "form": form,
         "columns": [{"label": "Week of"}, {"label": "Hours", "numeric": True}, {"label": "Note"}],
-        "rows": [[f"{row.week:%Y-%m-%d}", "closed" if row.hours == 0 else row.hours, row.note] for row in rows],
+        "rows": [[long_day(row.week), "closed" if row.hours == 0 else row.hours, row.note] for row in rows],
         "crumbs": CRUMBS,
     }
     return render(request, "bench/capacity.html", context, status=422 if form.is_bound else 200)

@@ -42,6 +42,10 @@ def what_for(move: Any) -> Any:
     return None
 
 
+def part_cell(move: Any) -> dict[str, Any]:
+    return {"text": move.part.code.replace("-", "\u2011"), "sub": "used" if move.condition == "used" else ""}
+
+
 class MoveLines:
     """The ledger's columns; at one store, quantities are signed as that store sees them."""
 
@@ -69,7 +73,7 @@ class MoveLines:
             Column("day", "Day", lambda m: m.happened_on, sort=("happened_on",)),
             Column("store", "Store", lambda m: m.store.title, plain=lambda m: m.store.code,
                    sort=("store__code_order",)),
-            Column("part", "Part", lambda m: m.part.code, sort=("part__code_order",)),
+            Column("part", "Part", part_cell, plain=lambda m: m.part.code, sort=("part__code_order",)),
             Column("quantity", "Pieces", lambda m: signed(self.quantity(m)), plain=lambda m: m.quantity,
                    sort=("quantity",), numeric=True),
             Column("kind", "Kind", lambda m: m.kind, sort=("kind",)),
@@ -83,8 +87,8 @@ class MoveLines:
         ]  # fmt: skip
 
     def shown(self) -> list[Column]:
-        """On a store's own page the store is the page."""
-        return [column for column in self.columns() if column.key != "store"]
+        """On a store's own page the store is the page; a used part says so beside its number."""
+        return [column for column in self.columns() if column.key not in {"store", "condition"}]
 
     def heads(self) -> list[dict[str, Any]]:
         return [{"label": column.label, "numeric": column.numeric} for column in self.shown()]

@@ -15,7 +15,7 @@ from django.utils import timezone
 from fleet.formats import counted, long_day, number
 from fleet.forms.stock_filters import StockFilter
 from fleet.forms.stores import StoreForm
-from fleet.models import Book, Part, StockBalance, StockMove, Store, SupplyLine
+from fleet.models import Book, Part, SiteKind, StockBalance, StockMove, Store, SupplyLine
 from fleet.rights import CATALOGUE, COSTS, ISSUE, STOCK, STORES, may, needs
 from fleet.stock import kept_parts, with_stock
 from fleet.views.listing import Column, Listing
@@ -23,7 +23,7 @@ from fleet.views.saving import save_form
 from fleet.views.stock_moves import JOINS, move_lines
 
 CRUMBS = [{"name": "Stores", "url": "/stores/"}]
-LATEST = 25
+LATEST = 15
 
 
 def moves_of(part: Any) -> dict[str, Any]:
@@ -39,12 +39,29 @@ def on_hand_cell(part: Any) -> dict[str, Any]:
     }
 
 
-def where(part: Any) -> str:
-    """`Depot shelf 12 · Van of Sven 3`"""
-    found: dict[str, int] = defaultdict(int)
+def by_store(part: Any) -> dict[Any, int]:
+    found: dict[Any, int] = defaultdict(int)
     for balance in part.here:
-        found[balance.store.title] += balance.on_hand
-    return " · ".join(f"{name} {number(count)}" for name, count in found.items() if count)
+        found[balance.store] += balance.on_hand
+    return {store: count for store, count in found.items() if count}
+
+
+def where(part: Any) -> str:
+    """Depots by name, the rest together: `North depot shelf 52 · at sites 21 · carried 26`."""
+    named, at_sites, carried = [], 0, 0
+    for store, count in by_store(part).items():
+        if store.person_id is not None:
+            carried += count
+        elif store.site is not None and store.site.kind != SiteKind.DEPOT:
+            at_sites += count
+        else:
+            named.append(f"{store.title} {number(count)}")
+    rest = [f"{words} {number(count)}" for words, count in (("at sites", at_sites), ("carried", carried)) if count]
+    return " · ".join([*named, *rest])
+
+
+def where_in_file(part: Any) -> str:
+    return " ".join(f"{store.code}:{count}" for store, count in by_store(part).items())
 
 
 def due_cell(part: Any) -> dict[str, Any]:
@@ -58,7 +75,7 @@ def next_cell(part: Any) -> Any:
 
 PART = Column("part", "Part", moves_of, plain=lambda part: part.code, sort=("code_order",))
 ON_HAND = Column("on_hand", "On hand", on_hand_cell, plain=lambda part: part.on_hand, sort=("on_hand",), numeric=True)
-WHERE = Column("where", "Where", where)
+WHERE = Column("where", "Where", where, plain=where_in_file)
 DUE = [
     Column("due", "Due", due_cell, plain=lambda part: part.due, sort=("due",), numeric=True),
     Column("next_due", "Next delivery", next_cell, plain=lambda part: part.next_due, sort=("next_due",), numeric=True),
@@ -93,7 +110,7 @@ def stock_list(*, orders: bool) -> Listing:
 def stores(request: Any) -> HttpResponse:
     balances = request.seen(StockBalance)
     shelves = Prefetch(
-        "balances", queryset=balances.select_related("store").order_by("store__code_order"), to_attr="here"
+        "balances", queryset=balances.select_related("store__site").order_by("store__code_order"), to_attr="here"
     )
     parts = with_stock(request.seen(Part), balances, request.seen(SupplyLine)).prefetch_related(shelves)
     orders = may(request.user, STOCK)

@@ -5,7 +5,6 @@ from __future__ import annotations
 from typing import Any
 
 from django.contrib import messages
-from django.db.models import Case, IntegerField, Value, When
 from django.http import Http404, HttpResponse
 from django.shortcuts import get_object_or_404, redirect, render
 from django.urls import reverse
@@ -53,21 +52,20 @@ LINES = Listing(
         Column("received", "Came", lambda line: line.received, sort=("received",), numeric=True),
         Column("due", "Still to come", lambda line: line.due if line.due > 0 else "–",
                plain=lambda line: max(0, line.due), sort=("due",), numeric=True),
-        Column("due_on", "Due on", due_on_cell, plain=lambda line: line.due_on, sort=("closed", "due_on"),
+        Column("due_on", "Due on", due_on_cell, plain=lambda line: line.due_on, sort=("due_on",),
                numeric=True),
     ],
     what="order lines",
     caption="Supply orders",
     sort="due_on",
-    empty_state="Nothing was ordered yet.",
-    empty_remedy="Place the first order, or bring in supply.csv.",
+    empty_state="Nothing is on its way.",
+    empty_remedy="Order parts, or choose “all lines” to see what came.",
 )  # fmt: skip
 
 
 @needs(STOCK)
 def supply(request: Any) -> HttpResponse:
-    closed = Case(When(due__gt=0, then=Value(0)), default=Value(1), output_field=IntegerField())
-    rows = request.seen(SupplyLine).standing().with_received().annotate(closed=closed).select_related("order", "part")
+    rows = request.seen(SupplyLine).standing().with_received().select_related("order", "part")
     actions = [
         {"name": "Order parts", "url": reverse("new_supply_order")},
         {"name": "Lead times so far", "url": reverse("deliveries"), "quiet": True},
