@@ -102,6 +102,8 @@ def superseded(line: OrderLine) -> str:
     if not line.superseded_by:
         return ""
     told = f"{line.superseded_by} replaces this part"
+    if line.use_mean == 0:
+        return f"{told} and no position takes it any more: use what is there elsewhere, or scrap it."
     if line.left_over is None:
         return f"{told}: use up what is there before ordering more."
     mean, low, high = line.left_over

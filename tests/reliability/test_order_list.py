@@ -268,4 +268,6 @@ def test_words_for_lead_times_known_badly_and_parts_replaced() -> None:
     over = [plain(each) for each in reasons(told(superseded_by="N4", left_over=(12.3, 6, 19)), TODAY)]
     assert any("about 12 will be left over by then (80 of 100 cases: 6 to 19)" in each for each in over)
     assert any("use up what is there" in each for each in reasons(told(superseded_by="N4"), TODAY))
+    idle = reasons(told(superseded_by="N4", use_mean=0.0, quantity=0, order_up_to=0), TODAY)
+    assert "N4 replaces this part and no position takes it any more: use what is there elsewhere, or scrap it." in idle
     assert any("used up by then" in each for each in reasons(told(superseded_by="N4", left_over=(0.0, 0, 0)), TODAY))

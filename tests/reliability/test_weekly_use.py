@@ -39,3 +39,10 @@ def test_the_same_seed_gives_the_same_weeks_and_parts_their_own() -> None:
     assert (first["A"] == again["A"]).all()
     assert (first["A"] != first["B"]).any()
     assert first["A"].shape == (50, 2)
+
+
+def test_of_a_part_that_no_position_takes_none_is_used() -> None:
+    found = weekly_use({"N3": CountDistribution(np.array([0.0, 1.0]))}, [1.0, 1.0], idle=["N2"], draws=9)
+    assert found["N2"].shape == (9, 2)
+    assert not found["N2"].any()
+    assert (found["N3"].sum(axis=1) == 1).all()
