@@ -124,7 +124,9 @@ def settings_of(question: Question, learned: Learned, positions: Positions) -> d
     return settings
 
 
-def simulate(question: Question, learned: Learned, positions: Positions) -> SimulatedCounts:
+def simulate(
+    question: Question, learned: Learned, positions: Positions, *, draws: int | None = None
+) -> SimulatedCounts:
     """The same question by plain simulation; the same seed gives every position the same luck in every what-if."""
     import numpy as np
 
@@ -146,7 +148,7 @@ def simulate(question: Question, learned: Learned, positions: Positions) -> Simu
         settings.setdefault("later_designs", [learned.label(assumed.superseding or "")] * len(single))
         settings.setdefault("switch_at", 0.0)
     windows, _ = edges_of(question)
-    draws = int(np.clip(SIMULATED / max(len(single), 1), FEWEST_SIMULATED, MOST_SIMULATED))
+    draws = draws or int(np.clip(SIMULATED / max(len(single), 1), FEWEST_SIMULATED, MOST_SIMULATED))
     return simulate_counts(
         designs_of(question, learned, positions),
         single.ages,
@@ -156,6 +158,7 @@ def simulate(question: Question, learned: Learned, positions: Positions) -> Simu
         draws=draws,
         rng=np.random.default_rng(question.seed("simulated")),
         retrofit=retrofit,
+        taken_share=learned.taken_share,
         **settings,
     )
 

@@ -74,7 +74,7 @@ def learned(component: Component, as_of: dt.date, known_on: dt.date | None = Non
     if known_on is not None or as_of != timezone.localdate():
         return from_told(_learn(component, as_of, known_on))
     asked = {"component": component.code, "as_of": as_of}
-    return from_told(kept(f"learned {component.code}", asked, lambda: _learn(component, as_of, known_on)))
+    return from_told(kept("learned", asked, lambda: _learn(component, as_of, known_on)))
 
 
 def learned_from(found: FleetLives, component: Component, as_of: dt.date, known_on: dt.date | None) -> Learned:

@@ -17,22 +17,21 @@ IntArray = NDArray[np.int64]
 
 
 class Luck:
-    """Two standard exponential variates for the k-th life of every draw and position, the same whenever asked."""
+    """Three standard exponential variates for the k-th life of every draw and position, the same whenever asked."""
 
     def __init__(self, rng: np.random.Generator, size: tuple[int, int]) -> None:
         self._rng, self._size = rng, size
-        self._tables: list[tuple[FloatArray, FloatArray]] = []
+        self._tables: list[FloatArray] = []
 
-    def of(self, life: IntArray, draw: IntArray, position: IntArray) -> tuple[FloatArray, FloatArray]:
-        """Variates for life number `life` of each of these (n,): for the failure, and for a removal otherwise."""
+    def of(self, life: IntArray, draw: IntArray, position: IntArray) -> FloatArray:
+        """For life number `life` of each of these (n,): for the failure, a removal, and who counts it, (3, n)."""
         while len(self._tables) <= life.max(initial=0):
-            self._tables.append((self._rng.exponential(size=self._size), self._rng.exponential(size=self._size)))
-        first, second = np.empty(life.shape), np.empty(life.shape)
+            self._tables.append(self._rng.exponential(size=(3, *self._size)))
+        found = np.empty((3, *life.shape))
         for number in np.unique(life).tolist():
             same = np.flatnonzero(life == number)
-            for out, table in zip((first, second), self._tables[number], strict=True):
-                out[same] = table[draw[same], position[same]]
-        return first, second
+            found[:, same] = self._tables[number][:, draw[same], position[same]]
+        return found
 
 
 @dataclass(frozen=True, eq=False)

@@ -74,6 +74,7 @@ def simulate_counts(
     later_designs: Sequence[Any] | None = None,
     stretch: tuple[float, float] = (0.0, 1.0),
     retrofit: Retrofit | None = None,
+    taken_share: float = 0.0,
 ) -> SimulatedCounts:
     """One simulated horizon for each posterior draw; arguments as in `forecast_counts` (no weights). Units of the
     lives.
@@ -106,6 +107,7 @@ def simulate_counts(
         switch_at=column(np.inf if switch_at is None else switch_at),
         visits=None if visits is None else (column(visits[0]), column(visits[1])),
         refit_delay=refit_delay,
+        taken_share=taken_share,
         luck=Luck(for_luck, (draws, count)),
         order=for_order.permutation(count),
     )
@@ -137,6 +139,7 @@ class _Fleet:
     switch_at: FloatArray
     visits: tuple[FloatArray, FloatArray] | None
     refit_delay: float
+    taken_share: float
     luck: Luck
     order: IntArray
 
@@ -154,7 +157,7 @@ class _Fleet:
             known_good = np.maximum(upcoming - every, -current / self.duty)
             earlier = ~fresh & (self.join_at == 0)
             now = np.where(earlier, known_good, now)
-            current = np.where(earlier, current + known_good * self.duty, current)
+            current = np.where(earlier, np.maximum(current + known_good * self.duty, 0.0), current)
         design = np.where(fresh, 1, 0) + np.zeros(size, dtype=np.int64)
         state = _State(now, current, design, np.zeros(size, dtype=np.int64))
         self._draw_ends(state, np.ones(size, dtype=bool))
@@ -165,7 +168,7 @@ class _Fleet:
 
     def _until(self, state: _State, limit: FloatArray, tally: _Tally) -> None:
         while (here := state.end <= limit).any():
-            tally.count(state.end, here, state.failed, state.planned)
+            tally.count(state.end, here, state.failed, state.planned, state.elsewhere)
             now = state.end + self.refit_delay
             self._renew(state, here, np.where(here, now, 0.0), np.where(now > self.switch_at, 2, 1))
 
@@ -186,7 +189,8 @@ class _Fleet:
         steps = round((until - retrofit.start) / retrofit.step)
         due = np.floor(retrofit.each * steps + 1e-9) - np.floor(retrofit.each * (steps - 1) + 1e-9)
         chosen = old & (place <= due)
-        tally.count(np.broadcast_to(at, old.shape), chosen, np.zeros_like(old), chosen)
+        nothing = np.zeros_like(old)
+        tally.count(np.broadcast_to(at, old.shape), chosen, nothing, chosen, nothing)
         self._renew(state, chosen, np.broadcast_to(at, old.shape), np.full(old.shape, 2))
 
     def _draw_ends(self, state: _State, where: BoolArray) -> None:
@@ -194,7 +198,7 @@ class _Fleet:
         draw, position = np.nonzero(where)
         now, age = state.now[draw, position], state.age[draw, position]
         duty = self.duty[draw, position]
-        first, second = self.luck.of(state.life[draw, position], draw, position)
+        first, second, third = self.luck.of(state.life[draw, position], draw, position)
         final = self.lives.end(state.design[draw, position], age, first, draw, position)
         failing = now + (final - age) / duty
         with np.errstate(divide="ignore"):
@@ -213,6 +217,8 @@ class _Fleet:
             end = seen
         state.end[draw, position] = end
         state.failed[draw, position], state.planned[draw, position] = failed, planned
+        # removals that are counted with what caused them
+        state.elsewhere[draw, position] = ~failed & ~planned & (-np.expm1(-third) < self.taken_share)
 
 
 class _State:
@@ -221,7 +227,7 @@ class _State:
     def __init__(self, now: FloatArray, age: FloatArray, design: IntArray, life: IntArray) -> None:
         self.now, self.age, self.design, self.life = now, age, design, life
         self.end = np.full(now.shape, np.inf)
-        self.failed, self.planned = np.zeros(now.shape, dtype=bool), np.zeros(now.shape, dtype=bool)
+        self.failed, self.planned, self.elsewhere = (np.zeros(now.shape, dtype=bool) for _ in range(3))
 
 
 def _steps(retrofit: Retrofit | None) -> list[float]:
@@ -244,9 +250,11 @@ class _Tally:
     def count_used(self, at: FloatArray, used: BoolArray) -> None:
         self.used += self._inside(at, used)
 
-    def count(self, end: FloatArray, here: BoolArray, failed: BoolArray, planned: BoolArray) -> None:
+    def count(
+        self, end: FloatArray, here: BoolArray, failed: BoolArray, planned: BoolArray, elsewhere: BoolArray
+    ) -> None:
         counted = self._inside(end, here)
-        self.used += counted
+        self.used += counted & ~elsewhere
         self.failed += counted & failed
         self.planned += counted & planned
         draw, position = np.nonzero(here & failed)

@@ -24,6 +24,7 @@ CASES: dict[str, dict[str, Any]] = {
     "joining": {"join_at": JOIN},
     "joining, planned, removed": {"join_at": JOIN, "replace_at": 70.0, "other_removals": 0.004},
     "joining, visits at some": {"join_at": JOIN, "visits": VISITS},
+    "removals half counted elsewhere": {"other_removals": 0.01, "taken_share": 0.5},
     "a third from a day on": {"windows": [0, 35, 91], "later_designs": ["N3"] * POSITIONS, "switch_at": 35.0},
     "stopped now": {"down_until": np.where(np.arange(POSITIONS) % 4 == 0, 12.0, 0.0)},
 }
