@@ -13,6 +13,7 @@ from django.utils import timezone
 from fleet.formats import long_day
 from fleet.life_lines import NARROW, WIDE, LifeHistory, Strip, life_lines
 from fleet.models import (
+    BenchJob,
     Finding,
     Fitting,
     LooksWrong,
@@ -26,11 +27,11 @@ from fleet.models import (
     Visit,
 )
 from fleet.module_clock import Age, ModuleClock
-from fleet.module_past import SeenStay, bars_of, day_number, seen_stay, shades_of, windows_of
+from fleet.module_past import SeenStay, bars_of, day_number, job_words, seen_stay, shades_of, windows_of
 from fleet.module_place import Seen, Standing, standing_of
 from fleet.part_ranks import part_ranks
 from fleet.position_names import position_names
-from fleet.rights import CORRECT, LOG, may
+from fleet.rights import BENCH, CORRECT, LOG, may
 
 VISITS_A_PAGE = 12
 READINGS_SHOWN = 30
@@ -81,6 +82,7 @@ class ModulePage:
         self.stops = list(
             seen(Stop).filter(module=module).select_related("reported_by", "site").order_by("-stopped_at", "-id")
         )
+        self.jobs = list(seen(BenchJob).standing().filter(module=module).order_by("received_on", "id"))
         self.read_fittings()
         self.clock = ModuleClock(module, self.now)
         self.visits = self.read_visits(page)
@@ -218,7 +220,9 @@ class ModulePage:
                 for position in self.positions
             ],
             shades=list(
-                shades_of([each for each in self.stops if not each.struck_out], self.stays, self.zone, self.now)
+                shades_of(
+                    [each for each in self.stops if not each.struck_out], self.stays, self.zone, self.now, self.jobs
+                )
             ),
             visits=[(day.toordinal() + 0.5, f"visit, {long_day(day)}") for (day,) in visits],
             counter=self.clock.curve(self.counter_clock, self.windows),
@@ -268,6 +272,13 @@ class ModulePage:
 
     def stay_lines(self) -> list[dict[str, Any]]:
         return [self.line_of("placement", stay) for stay in reversed(self.stays)]
+
+    @property
+    def may_open_jobs(self) -> bool:
+        return may(self.person, BENCH)
+
+    def job_lines(self) -> list[dict[str, Any]]:
+        return [{"job": job, "words": job_words(job)} for job in reversed(self.jobs)]
 
     def stop_lines(self) -> list[dict[str, Any]]:
         return [self.line_of("stop", stop) for stop in self.stops]

@@ -10,7 +10,7 @@ from zoneinfo import ZoneInfo
 
 from fleet.formats import long_day, moment
 from fleet.life_lines import CUT, FAILED, RUNNING, WITHDRAWN, Bar, Shade
-from fleet.models import FAILURE_REASONS, Fitting, Placement, SiteKind, Stop
+from fleet.models import FAILURE_REASONS, BenchJob, Fitting, Placement, SiteKind, Stop
 
 
 @dataclass(frozen=True)
@@ -124,7 +124,17 @@ def day_number(instant: dt.datetime, zone: ZoneInfo) -> float:
     return local.toordinal() + (local.hour * 60 + local.minute) / 1440
 
 
-def shades_of(stops: Iterable[Stop], stays: Sequence[Placement], zone: ZoneInfo, now: float) -> Iterator[Shade]:
+def job_words(job: BenchJob) -> str:
+    """`10 November 2026 to 20 November 2026: ready`"""
+    begun = long_day(job.received_on)
+    if job.finished_on is None:
+        return f"since {begun}: {job.stage}"
+    return f"{begun} to {long_day(job.finished_on)}: {job.outcome}"
+
+
+def shades_of(
+    stops: Iterable[Stop], stays: Sequence[Placement], zone: ZoneInfo, now: float, jobs: Sequence[BenchJob] = ()
+) -> Iterator[Shade]:
     for stop in stops:
         end = day_number(stop.running_at, zone) if stop.running_at else now
         until = moment(stop.running_at.astimezone(zone)) if stop.running_at else "now"
@@ -135,6 +145,9 @@ def shades_of(stops: Iterable[Stop], stays: Sequence[Placement], zone: ZoneInfo,
             end = stay.to_on.toordinal() if stay.to_on else now
             until = long_day(stay.to_on) if stay.to_on else "now"
             words = f"at {stay.site.title} from {long_day(stay.from_on)} to {until}"
+            last = stay.to_on or dt.date.max
+            during = [job for job in jobs if job.depot_id == stay.site_id and stay.from_on <= job.received_on <= last]
+            words += "".join(f"; on the bench {job_words(job)}" for job in during)
             yield Shade("away", stay.from_on.toordinal(), end, words)
 
 
