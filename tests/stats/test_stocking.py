@@ -255,6 +255,8 @@ def test_running_out_by_hand():
     assert found.chance_by_day.tolist() == [0, 0, 0, 0, 0, 0.5, 0.5, 0.5]
     assert found.chance_by(5) == 0.5
     assert found.chance_before([6, 4]) == 0.5
+    # what comes on the day itself is in time
+    assert found.chance_before(5) == 0
     assert found.day_over(0.05) == 5
     assert found.day_over(0.5) is None
     assert (found.day_quantile(0.5), found.day_quantile(0.6)) == (5, None)
