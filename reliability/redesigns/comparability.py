@@ -129,13 +129,17 @@ def _lots(lives: Compared) -> Mix:
     return _shared("lot", "parts", sides, lambda label: label)
 
 
-def _duty(lives: Compared, days: NDArray[np.float64]) -> Duty:
-    """Strokes a day (hours, where the life is counted in them)."""
+def duties_of(lives: Compared) -> tuple[str, NDArray[np.float64]]:
+    """Strokes a day of each life's module (hours, where the life is counted in them); NaN where not known."""
     clock = "hours" if lives.clock == "hours" else "strokes"
+    duties = module_duties(asked_of(lives.component, clock=lives.clock, as_of=lives.as_of), clock)
+    return clock, np.array([duties[str(m)].a_day if str(m) in duties else np.nan for m in lives.modules.tolist()])
+
+
+def _duty(lives: Compared, days: NDArray[np.float64]) -> Duty:
+    clock, a_day = duties_of(lives)
     found: dict[str, float | None] = {BEFORE: None, AFTER: None}
     if lives.lifetimes is not None:
-        duties = module_duties(asked_of(lives.component, clock=lives.clock, as_of=lives.as_of), clock)
-        a_day = np.array([duties[str(m)].a_day if str(m) in duties else np.nan for m in lives.modules.tolist()])
         for side in found:
             chosen = (lives.lifetimes.groups == side) & ~np.isnan(a_day) & (days > 0)
             if chosen.any():

@@ -109,7 +109,8 @@ def at_the_same_time(
 ) -> Compared:
     """Only sites with a new part, each from its first day on (or from `not_before`, where that is later)."""
     first = first_fitted(component.code, list(new), choices["as_of"])
-    starts = {site: max(day, not_before) if not_before else day for site, day in first.items()}
+    fields = set(Site.objects.filter(kind=SiteKind.FIELD).values_list("pk", flat=True))
+    starts = {site: max(day, not_before or day) for site, day in first.items() if site in fields}
     return _compared(component, new, old, starts, choices)
 
 

@@ -11,9 +11,9 @@ from reliability.fleet_lives import FleetLives
 from reliability.kept import kept
 from reliability.life_answer import document_of, finite
 from reliability.redesigns.candidates import candidates_of, rigs_of
-from reliability.redesigns.comparability import Comparability, comparability
+from reliability.redesigns.comparability import Comparability, comparability, duties_of
 from reliability.redesigns.compared import AFTER, BEFORE, Compared, all_history, at_the_same_time
-from reliability.redesigns.evidence import both_sides, evidence_of
+from reliability.redesigns.evidence import at_like_duty, both_sides, evidence_of
 from reliability.redesigns.few import FEW, few_failures_of
 from reliability.redesigns.fitting_faults import fitting_faults
 from reliability.redesigns.question import RedesignQuestion
@@ -60,11 +60,15 @@ def redesign_document(question: RedesignQuestion) -> dict[str, Any]:
         "chances": chances,
         "chances_missing": reason,
         "ahead": None if posterior is None else ahead_of(beside, verdict, posterior.effects(), _a_module(beside)),
-        "same_dates": {**evidence_of(beside, question.confidence), "curves": _curves(beside, question)},
+        "same_dates": {
+            **evidence_of(beside, question.confidence),
+            "at_like_duty": _at_like_duty(beside, alike, question.confidence),
+            "curves": _curves(beside, question),
+        },
         "all_history": {**evidence_of(everything, question.confidence), "curves": history},
         "starts": {site: day.isoformat() for site, day in sorted(beside.starts.items())},
         "comparability": _told(alike),
-        "modes": {"age": None, "rows": []} if question.modes else single_modes(beside, names, question.confidence),
+        "by_mode": {"age": None, "rows": []} if question.modes else single_modes(beside, names, question.confidence),
         "fitting_faults": fitting_faults(everything, question.confidence),
         "candidates": candidates_of(question, choices),
         "rigs": rigs_of(question, choices),
@@ -91,6 +95,13 @@ def _curves(lives: Compared, question: RedesignQuestion) -> dict[str, Any] | Non
         groups=tuple(labels[side] for side in (BEFORE, AFTER) if (lives.lifetimes.groups == side).any()),
     )
     return document_of(found, question.confidence)
+
+
+def _at_like_duty(lives: Compared, alike: Comparability, confidence: float) -> dict[str, Any] | None:
+    """Asked only where it may matter: lives counted in days under unlike use."""
+    if lives.clock != "days" or not alike.duty.unlike or lives.lifetimes is None:
+        return None
+    return at_like_duty(lives, duties_of(lives)[1], confidence)
 
 
 def _posterior(lives: Compared) -> tuple[LifeRatioPosterior | None, str]:

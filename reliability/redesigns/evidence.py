@@ -16,9 +16,11 @@ from reliability.redesigns.compared import AFTER, BEFORE, Compared
 from reliability.stats.difference import counted_when_found, logrank, restricted_mean_difference
 from reliability.stats.errors import StatisticsError
 from reliability.stats.life_ratio import LifeRatio, Ratio, life_ratio
+from reliability.stats.life_regression import fit_weibull_regression
 from reliability.stats.lifetimes import Lifetimes
 
 FEWEST_SITES_LEFT_OUT = 3
+EARLIER = 0.75  # of the last age, where some site did not get that far
 TESTS = (
     ("site", "by site", 0, 0),
     ("position", "by position", 0, 0),
@@ -78,14 +80,15 @@ def restricted_mean_of(lives: Compared, confidence: float, notes: list[str]) -> 
     if sides is None:
         return None
     before, after = (counted_when_found(side) for side in sides)
-    horizon = min(float(side.durations.max()) for side in (before, after))
+    last = min(float(side.durations.max()) for side in (before, after))
     common = set(before.site_labels.tolist()) | set(after.site_labels.tolist())
+    reason = ""
     interval = "sites" if len(common) >= FEWEST_SITES_LEFT_OUT else "log-log"
-    for kind in dict.fromkeys((interval, "log-log")):
+    for kind, horizon in ((interval, last), (interval, EARLIER * last), ("log-log", last)):
         try:
             found = restricted_mean_difference(before, after, horizon, confidence, interval=kind, minimum_at_risk=5)
         except StatisticsError as error:
-            notes.append(f"Restricted mean: {error}")
+            reason = str(error)
             continue
         return {
             "horizon": finite(found.horizon),
@@ -100,6 +103,7 @@ def restricted_mean_of(lives: Compared, confidence: float, notes: list[str]) -> 
             "interval": kind,
             "p": finite(found.p_value),
         }
+    notes.append(f"Restricted mean: {reason}")
     return None
 
 
@@ -124,6 +128,32 @@ def ratio_of(lives: Compared, confidence: float, notes: list[str]) -> dict[str, 
             notes.append(str(error))
             answer[name] = None
     return answer if answer["sites differ"] or answer["one shape for both"] else None
+
+
+def at_like_duty(lives: Compared, a_day: NDArray[np.float64], confidence: float) -> dict[str, Any] | None:
+    """Life ratio of new over old at equal use a day, by accelerated-life regression; None where it cannot be told.
+
+    a_day: use of each life's module, NaN where no counter says so.
+    """
+    if lives.lifetimes is None or both_sides(lives) is None:
+        return None
+    known = ~np.isnan(a_day) & (a_day > 0)
+    if not known.any():
+        return None
+    kept = counted_when_found(lives.lifetimes.subset(known))
+    covariates = {"new": (kept.groups == AFTER).astype(float), "duty": np.log(a_day[known])}
+    sites = len(kept.site_labels) >= FEWEST_SITES_LEFT_OUT + 2
+    try:
+        fit = fit_weibull_regression(kept, covariates)
+        found = fit.life_ratio("new", confidence_level=confidence, method="sites" if sites else "likelihood-ratio")
+    except StatisticsError:
+        return None
+    return {
+        "estimate": finite(found.estimate),
+        "lower": finite(found.lower),
+        "upper": finite(found.upper),
+        "method": found.method,
+    }
 
 
 def _places(lives: Compared) -> tuple[NDArray[Any], NDArray[Any]]:

@@ -10,6 +10,7 @@ from typing import Any
 
 import numpy as np
 
+from fleet.formats import rounded
 from reliability.life_answer import finite
 from reliability.redesigns.compared import AFTER, BEFORE, Compared
 from reliability.redesigns.evidence import strata_of
@@ -28,7 +29,7 @@ def single_modes(lives: Compared, names: dict[str, str], confidence: float) -> d
     before, after = lives.side(BEFORE), lives.side(AFTER)
     if before is None or after is None or lives.lifetimes is None:
         return {"age": None, "rows": []}
-    age = common_age(before, after)
+    age = float(rounded(common_age(before, after)))
     try:
         found = compare_modes(
             counted_when_found(lives.lifetimes),

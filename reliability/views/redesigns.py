@@ -2,15 +2,19 @@
 
 from __future__ import annotations
 
+import datetime as dt
 from typing import Any
 
-from django.http import HttpResponse
+from django.http import HttpResponse, JsonResponse
 from django.shortcuts import get_object_or_404, render
 from django.urls import reverse
+from django.utils import timezone
 
-from fleet.models import Redesign
-from fleet.rights import LIFE, needs
-from fleet.views.listing import Column, Listing
+from fleet.models import Redesign, RedesignChange
+from fleet.rights import COSTS, LIFE, may, needs
+from fleet.rollout import by_site
+from fleet.views.listing import Column, Listing, as_csv
+from reliability.forms.redesign import EvidenceForm
 
 CRUMBS = [{"name": "Redesigns", "url": "/redesigns/"}]
 
@@ -49,9 +53,175 @@ def redesigns(request: Any) -> HttpResponse:
 
 @needs(LIFE)
 def redesign(request: Any, code: str) -> HttpResponse:
+    """The evidence on one component of a redesign."""
+    record, form, line = asked_for(request, code)
+    if line is None or not form.is_valid():
+        context = {"redesign": record, "form": form, "crumbs": CRUMBS, "actions": actions_of(record)}
+        return render(request, "redesigns/page.html", context, status=200 if form.is_valid() else 422)
+    document = seen_document(request, record, form, line)
+    kind = request.GET.get("as")
+    if kind == "json":
+        return JsonResponse(document, json_dumps_params={"ensure_ascii": False})
+    if kind == "csv":
+        from reliability.redesign_files import HEAD, lines
+
+        return as_csv(f"redesign {record.code}", HEAD, lines(document))  # type: ignore[return-value]
+    return render(request, "redesigns/page.html", context_of(request, record, form, line, document))
+
+
+@needs(LIFE)
+def redesign_print(request: Any, code: str) -> HttpResponse:
+    """Two sheets for a meeting: one for who decides, one for the engineer who checks."""
+    record, form, line = asked_for(request, code)
+    if line is None or not form.is_valid():
+        return redesign(request, code)
+    document = seen_document(request, record, form, line)
+    context = context_of(request, record, form, line, document)
+    context |= {"money": money_context(request, record, line, document), "printed_on": timezone.localdate()}
+    return render(request, "redesigns/print.html", context)
+
+
+@needs(LIFE)
+def redesign_money(request: Any, code: str) -> HttpResponse:
+    """Whether it pays; counted apart, since it takes longer than the evidence."""
+    record, form, line = asked_for(request, code)
+    context: dict[str, Any] = {"redesign": record, "crumbs": [*CRUMBS, crumb_of(record)]}
+    if line is not None and form.is_valid():
+        document = seen_document(request, record, form, line)
+        context["money"] = money_context(request, record, line, document)
+    template = "redesigns/money.html" if request.htmx else "redesigns/money_page.html"
+    return render(request, template, context)
+
+
+def asked_for(request: Any, code: str) -> tuple[Redesign, EvidenceForm, RedesignChange | None]:
     record = get_object_or_404(request.seen(Redesign), code=code.upper())
-    actions = [
+    lines = list(record.changes.select_related("new_part__component").prefetch_related("replaces"))
+    form = EvidenceForm(request.GET, request=request, lines=lines)
+    return record, form, form.line() if lines and form.is_valid() else None
+
+
+def question_of(record: Redesign, form: EvidenceForm, line: RedesignChange) -> Any:
+    from reliability.redesigns.question import RedesignQuestion
+
+    return RedesignQuestion(
+        component=line.new_part.component,
+        new=(line.new_part.code,),
+        old=tuple(part.code for part in line.replaces.all()),
+        as_of=form.as_of_day(),
+        hope=record.hope,
+        not_before=record.starts_on,
+        modes=tuple(mode.code for mode in form.cleaned_data["mode"]),
+        also=tuple(part.code for part in form.cleaned_data["also"]),
+    )
+
+
+def seen_document(request: Any, record: Redesign, form: EvidenceForm, line: RedesignChange) -> dict[str, Any]:
+    """Estimates come from everywhere; by name a person sees only their own sites."""
+    from fleet.models import Site
+    from reliability.redesigns.document import kept_redesign
+    from reliability.redesigns.seen import only_sites
+
+    document = kept_redesign(question_of(record, form, line))
+    if request.user.all_sites:
+        return document
+    return only_sites(document, set(request.seen(Site).values_list("code", flat=True)))
+
+
+def context_of(
+    request: Any, record: Redesign, form: EvidenceForm, line: RedesignChange, document: dict[str, Any]
+) -> dict[str, Any]:
+    from reliability.redesign_page import page_of
+
+    address = request.GET.copy()
+    address.pop("as", None)
+    query = f"?{address.urlencode()}" if address else ""
+    join = "&" if query else "?"
+    sheets = reverse("redesign_print", args=[record.code])
+    return {
+        "redesign": record,
+        "line": line,
+        "form": form,
+        "document": document,
+        "as_of": dt.date.fromisoformat(document["as_of"]),
+        "crumbs": CRUMBS,
+        "actions": [
+            *actions_of(record),
+            {
+                "name": "Two sheets for a meeting",
+                "url": sheets + query,
+                "quiet": True,
+            },
+        ],
+        "money_url": reverse("redesign_money", args=[record.code]) + query,
+        "back": reverse("redesign", args=[record.code]) + query,
+        "exports": [{"name": "CSV", "url": f"{query}{join}as=csv"}, {"name": "JSON", "url": f"{query}{join}as=json"}],
+        "rollout": progress_of(request, record),
+        **page_of(document),
+    }
+
+
+def actions_of(record: Redesign) -> list[dict[str, Any]]:
+    return [
         {"name": "Rollout", "url": reverse("rollout", args=[record.code]), "quiet": True},
         {"name": "Change", "url": reverse("edit_redesign", args=[record.code]), "quiet": True},
     ]
-    return render(request, "redesigns/page.html", {"redesign": record, "crumbs": CRUMBS, "actions": actions})
+
+
+def crumb_of(record: Redesign) -> dict[str, str]:
+    return {"name": record.title, "url": reverse("redesign", args=[record.code])}
+
+
+def progress_of(request: Any, record: Redesign) -> dict[str, Any] | None:
+    """Modules planned and done, by site."""
+    from fleet.views.redesigns import steps_of
+
+    rows = steps_of(request, record)
+    if not rows:
+        return None
+    sites = by_site(((step.now_site or "no place", step.planned_on, done) for step, done in rows), timezone.localdate())
+    return {"sites": sites, "modules": len(rows), "done": sum(done.done for _, done in rows)}
+
+
+def money_context(
+    request: Any, record: Redesign, line: RedesignChange, document: dict[str, Any]
+) -> dict[str, Any] | None:
+    """Costs, failures and money with and without; None for those who may not see costs."""
+    from fleet.models import Book
+    from reliability.redesign_money import money_page
+    from reliability.redesign_words import main_ratio
+    from reliability.redesigns.money import Costs, kept_money
+    from reliability.redesigns.plan_left import plan_left
+
+    if not may(request.user, COSTS):
+        return None
+    book, old = Book.load(), newest_old(line)
+    costs = Costs(
+        old_part=float(old.unit_cost or 0),
+        new_part=float(line.new_part.unit_cost or 0),
+        visits_a_failure=record.visits_a_failure,
+        visit=float(book.visit_cost),
+        bench_hours_a_failure=record.bench_hours_a_failure,
+        bench_hour=float(book.bench_hour_cost),
+        stop_days_a_failure=record.stop_days_a_failure,
+        stop_day=float(book.stop_cost_per_day),
+        module=float(record.cost_a_module or 0),
+    )
+    ratio = main_ratio(document["same_dates"])
+    lower = ratio["median"]["lower"] if ratio else None
+    found = kept_money(
+        line.new_part.component,
+        line.new_part.code,
+        old.code,
+        as_of=dt.date.fromisoformat(document["as_of"]),
+        costs=costs,
+        plan=plan_left(record),
+        lower_ratio=lower,
+    )
+    return money_page(found, costs, book.currency, record)
+
+
+def newest_old(line: RedesignChange) -> Any:
+    """The design that would go in without the new one: the last of those replaced."""
+    old = list(line.replaces.all())
+    superseded = {part.supersedes_id for part in old}
+    return next((part for part in reversed(old) if part.pk not in superseded), old[-1])

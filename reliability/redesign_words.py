@@ -1,0 +1,228 @@
+"""What the evidence on a redesign says, in the words of a meeting: verdict, ratio, chances, what would change it."""
+
+from __future__ import annotations
+
+import datetime as dt
+from typing import Any
+
+from fleet.formats import counted, long_day, number, percent, rounded
+from reliability.wording import age, plural, sure
+
+Document = dict[str, Any]
+NEARLY_SURE = 0.995
+ONE_LOT = 0.8
+
+VERDICTS = {
+    "clear": "Clear: {new} live longer than {old}.",
+    "likely": "Likely: {new} probably live longer than {old}.",
+    "shorter": "Shorter: {new} do not live as long as {old}.",
+    "not yet shown": "Not yet shown: the records do not tell {new} from {old}.",
+}
+MEANINGS = (
+    (
+        "Clear",
+        "The new part lives longer: the evidence has reached the O’Brien–Fleming boundary, between sites and within "
+        "positions. Were there no difference, this would be said of at most 1 rollout in 40, however often one looks.",
+    ),
+    ("Likely", "The chance that the new part lives longer is above 90 in 100, but it is not clear yet."),
+    ("Shorter", "The mirror of clear: the new part lives shorter."),
+    ("Not yet shown", "Neither. More time or more modules are needed, or there is no difference to be seen."),
+)
+ASSUMED = {
+    "sites differ": "sites differ (stands first)",
+    "positions differ": "positions differ too",
+    "one shape for both": "one shape for old and new is assumed",
+    "lives independent": "sites alike is assumed",
+}
+
+
+def names_of(document: Document) -> dict[str, str]:
+    noun = plural(document["component_name"] or document["component"])
+    return {"new": f"the {listed(document['new'])} {noun}", "old": listed(document["old"])}
+
+
+def listed(names: list[str]) -> str:
+    return names[0] if len(names) == 1 else f"{', '.join(names[:-1])} and {names[-1]}"
+
+
+def lead(document: Document) -> str:
+    """Verdict, ratio and chances: the first thing that is read."""
+    told = VERDICTS[document["verdict"]["phrase"]].format(**names_of(document))
+    if document["modes"]:
+        told = f"If only {listed(document['mode_names'])} acted. {told}"
+    return " ".join(filter(None, (told, ratio_sentence(document), chance_sentence(document))))
+
+
+def main_ratio(found: dict[str, Any]) -> dict[str, Any] | None:
+    """The ratio where sites differ, else under one shape: the first that the records give."""
+    ratio = found["ratio"] or {}
+    return next((ratio[way] for way in ("sites differ", "one shape for both") if ratio.get(way)), None)
+
+
+def ratio_sentence(document: Document) -> str:
+    found = main_ratio(document["same_dates"])
+    if found is None:
+        return "How many times as long they last cannot be told yet."
+    median = found["median"]
+    where = "At the same sites over the same dates" if found["clusters"] else "Over the same dates"
+    times = f"{number(median['estimate'], 2)} times as long"
+    return f"{where} the life by which half have failed is {times}{limits_words(median, document['confidence'])}."
+
+
+def limits_words(ratio: dict[str, Any], confidence: float) -> str:
+    lower, upper = ratio["lower"], ratio["upper"]
+    if lower and upper is not None:
+        return f" ({sure(confidence)} it lies between {number(lower, 2)} and {number(upper, 2)})"
+    if lower:
+        return f" ({sure(confidence)} it is at least {number(lower, 2)}; the records give no upper limit)"
+    if upper is not None:
+        return f" ({sure(confidence)} it is at most {number(upper, 2)})"
+    return ", but the records bound it on neither side"
+
+
+def chance_sentence(document: Document) -> str:
+    chances = document["chances"]
+    if chances is None:
+        return "Before old and new parts have failed side by side no chance is told."
+    hope = f"that they reach the hope of {number(document['hope'], 2)} times as long is {in_hundred(chances['hope'])}"
+    return f"The chance that they live longer is {in_hundred(chances['longer'])}, {hope}."
+
+
+def in_hundred(chance: float) -> str:
+    if chance > NEARLY_SURE:
+        return "above 99 in 100"
+    if chance < 1.0 - NEARLY_SURE:
+        return "below 1 in 100"
+    return f"{round(100 * chance)} in 100"
+
+
+def strength(document: Document) -> str:
+    """Where the evidence stands against its boundary, and since when."""
+    found = document["verdict"]
+    if found["boundary"] is None:
+        return "No failure has yet happened while old and new parts ran side by side, so there is nothing to weigh."
+    within = "" if found["position_z"] is None else f" and within positions {number(found['position_z'], 2)}"
+    needed = f"{number(found['boundary'], 2)} was needed with {percent(min(found['share'], 1.0))}"
+    stands = f"Log-rank Z by site {number(found['z'], 2)}{within}; {needed} of the planned information."
+    if found["decided_at"]:
+        day = dt.date.fromisoformat(found["decided_at"])
+        return f"{stands} Decided by what was known of {long_day(day)}; what came later does not change it."
+    return f"{stands} It is looked at again with every entry."
+
+
+def ahead(document: Document) -> str:
+    """What would change the verdict."""
+    found = document["ahead"]
+    if document["verdict"]["final"]:
+        return "Nothing more has to be seen."
+    if found is None:
+        return "How long to watch on cannot be told before both have failed side by side."
+    if not found["information_a_week"]:
+        return "At the present pace nothing is learned: no old part runs beside the new ones any more, or none fails."
+    longest = found["looked_ahead"]
+    if found["weeks"] is None:
+        chance = in_hundred(found["clear_in"][str(longest)])
+        told = f"At the present pace the chance that it is called clear within {longest} weeks is {chance}."
+    else:
+        told = f"At the present pace it is as likely as not clear within {counted(found['weeks'], 'week')}"
+        sure_in = found["weeks_sure"]
+        told += f", and in 80 of 100 cases within {counted(sure_in, 'week')}." if sure_in else "."
+    extra = found["extra_modules"]
+    if extra:
+        modules = counted(extra, "more module", "more modules")
+        told += f" {modules} upgraded now would make it clear within {found['by_week']} weeks in 80 of 100 cases."
+    return told
+
+
+def few_sentence(document: Document) -> str:
+    found = document["few"]
+    noun = plural(document["component_name"] or document["component"])
+    failed = {0: "No failures"}.get(found["failures"], counted(found["failures"], "failure"))
+    used = f"{number(found['parts'])} {noun} and {age(found['exposure'], document['clock'])}"
+    told = f"{failed} in {used}"
+    if document["clock"] != "days":
+        told += f" ({number(rounded(found['part_years']))} part-years)"
+    if found["years_a_failure"] and found["years_a_failure"] >= 1:
+        rate = number(rounded(found["years_a_failure"], 2))
+        return f"{told}: at {percent(found['confidence'])} confidence fewer than 1 in {rate} a year."
+    return f"{told}: too little yet to bound how many fail a year below one each."
+
+
+def warnings(document: Document) -> list[str]:
+    """What stands against the comparison, in words."""
+    alike, told = document["comparability"], []
+    sides = f"{listed(document['new'])} and {listed(document['old'])}"
+    for mix in alike["mixes"]:
+        if mix["name"] in ("site", "season") and mix["overlap"] is not None and mix["overlap"] < 0.5:
+            where = "at the same sites" if mix["name"] == "site" else "in the same seasons"
+            told.append(
+                f"{sides} hardly ran {where}: their shares overlap to {percent(mix['overlap'])}. "
+                "Only what ran side by side decides here."
+            )
+    if alike["all_at_once"]:
+        told.append(
+            f"At {listed(alike['all_at_once'])} hardly an old part ran beside the new ones: switched all at once, such "
+            "a site cannot tell the new part from a change of water, season or habits."
+        )
+    if alike["unlike_duty"]:
+        told.append(duty_words(document))
+    lots = next(mix for mix in alike["mixes"] if mix["name"] == "lot")
+    largest = max(lots["rows"], key=lambda row: row["after"], default=None)
+    if largest and largest["after"] > ONE_LOT and largest["label"] != "no lot":
+        told.append(
+            f"{percent(largest['after'])} of the new parts are of lot {largest['label']}: a good lot looks like a good "
+            "design."
+        )
+    return told
+
+
+def duty_words(document: Document) -> str:
+    duty = document["comparability"]["duty"]
+    a_day = f"{number(rounded(duty['after']))} and {number(rounded(duty['before']))} {duty['clock']} a day"
+    if document["clock"] != "days":
+        return f"New and old parts ran {a_day}; their lives are counted in {document['clock']}, which allows for that."
+    adjusted = document["same_dates"].get("at_like_duty")
+    told = f"New and old parts ran {a_day}, and their lives are counted in days."
+    if not adjusted:
+        return f"{told} What the difference in duty does cannot be told apart from the design yet."
+    ratio = f"{number(adjusted['estimate'], 2)} times as long{limits_words(adjusted, document['confidence'])}"
+    return f"{told} At like duty (regression on {duty['clock']} a day) they last {ratio}."
+
+
+def faults_sentence(document: Document) -> str:
+    found = document["fitting_faults"]
+    told = []
+    for side, names in (("after", document["new"]), ("before", document["old"])):
+        each = found[side]
+        if not each["parts"]:
+            continue
+        limits = f"{percent(each['lower'], 1)} to {percent(each['upper'], 1)}"
+        told.append(f"{each['failed']} of {number(each['parts'])} {listed(names)} ({limits})")
+    if not told:
+        return "No part has been watched through its first days yet."
+    return f"In the first {found['days']} days after fitting failed {' and '.join(told)}."
+
+
+def money_sentence(told: dict[str, Any], currency: str) -> str:
+    first = told["quarters"][0]
+    failures, money, paid = first["failures_avoided"], first["money_saved"], told["break_even"]
+    start = (
+        f"In the next 13 weeks it avoids about {number(round(failures['mean']))} failures "
+        f"({in_band(failures, 1)} in 80 of 100 cases) and saves about {number(rounded(money['mean'], 2))} {currency} "
+        f"({in_band(money, 2)})."
+    )
+    if not told["rollout_cost"]:
+        return f"{start} Nothing more has to be spent on its rollout."
+    cost = f"{number(rounded(told['rollout_cost'], 3))} {currency}"
+    if paid["estimate"] is None:
+        within = f"within {13 * paid['quarters']} weeks in only {in_hundred(paid['chance'])} cases"
+        return f"{start} The {cost} for what is left of the rollout come back {within}."
+    ends = [long_day(dt.date.fromisoformat(paid[end])) if paid[end] else "later" for end in ("lower", "upper")]
+    day = long_day(dt.date.fromisoformat(paid["estimate"]))
+    return f"{start} The {cost} for what is left of the rollout are back by about {day} ({ends[0]} to {ends[1]})."
+
+
+def in_band(band: dict[str, Any], figures: int) -> str:
+    """Whole failures; money to two figures."""
+    write = (lambda value: number(round(value))) if figures == 1 else (lambda value: number(rounded(value, figures)))
+    return f"{write(band['lower'])} to {write(band['upper'])}"
