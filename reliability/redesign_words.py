@@ -206,11 +206,7 @@ def faults_sentence(document: Document) -> str:
 def money_sentence(told: dict[str, Any], currency: str) -> str:
     first = told["quarters"][0]
     failures, money, paid = first["failures_avoided"], first["money_saved"], told["break_even"]
-    start = (
-        f"In the next 13 weeks it avoids about {number(round(failures['mean']))} failures "
-        f"({in_band(failures, 1)} in 80 of 100 cases) and saves about {number(rounded(money['mean'], 2))} {currency} "
-        f"({in_band(money, 2)})."
-    )
+    start = f"In the next 13 weeks {more_or_less(failures)}, and {money_words(money, currency)}."
     if not told["rollout_cost"]:
         return f"{start} Nothing more has to be spent on its rollout."
     cost = f"{number(rounded(told['rollout_cost'], 3))} {currency}"
@@ -220,6 +216,19 @@ def money_sentence(told: dict[str, Any], currency: str) -> str:
     ends = [long_day(dt.date.fromisoformat(paid[end])) if paid[end] else "later" for end in ("lower", "upper")]
     day = long_day(dt.date.fromisoformat(paid["estimate"]))
     return f"{start} The {cost} for what is left of the rollout are back by about {day} ({ends[0]} to {ends[1]})."
+
+
+def more_or_less(band: dict[str, Any]) -> str:
+    """Failures avoided, or those it brings on top."""
+    count = number(abs(round(band["mean"])))
+    verb = f"it avoids about {count} failures" if band["mean"] >= 0 else f"it brings about {count} more failures"
+    return f"{verb} ({in_band(band, 1)} avoided in 80 of 100 cases)"
+
+
+def money_words(band: dict[str, Any], currency: str) -> str:
+    amount = number(rounded(abs(band["mean"]), 2))
+    verb = "saves" if band["mean"] >= 0 else "costs"
+    return f"{verb} about {amount} {currency} ({in_band(band, 2)} saved)"
 
 
 def in_band(band: dict[str, Any], figures: int) -> str:
