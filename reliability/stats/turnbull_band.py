@@ -54,10 +54,11 @@ def turnbull_band(
 
     With five sites or more whole sites are drawn again, else lives; standard error of log(-log S) over the draws times
     Student's t, as in `site_bootstrap_band`. It stands where looks come at ages that parts share, as at visits: the
-    estimate then settles as fast as Kaplan–Meier's. In simulations with 16 sites, 12 parts each, looked at every quarter
-    of the scale, it held 93 to 98 % for spreads 0, 0.5 and 1 (to 100 % in the far tail). Where each part is looked at once, at an age of its own, the
-    estimate settles only with the cube root of the number of lives and drawing again does not give its spread (Sen,
-    Banerjee & Woodroofe, Annals of Statistics 38 (2010) 1953-1977): that is refused with UndefinedEstimate.
+    estimate then settles as fast as Kaplan–Meier's. In simulations with 16 sites, 12 parts each, looked at every
+    quarter of the scale, it held 93 to 98 % for spreads 0, 0.5 and 1 (to 100 % in the far tail). Where each part is
+    looked at once, at an age of its own, the estimate settles only with the cube root of the number of lives and
+    drawing again does not give its spread (Sen, Banerjee & Woodroofe, Annals of Statistics 38 (2010) 1953-1977): that
+    is refused with UndefinedEstimate.
     Raises TooFewFailures below two, InvalidArgument, else as `turnbull`. rng=None draws the same every time.
     """
     if not 0.0 < confidence_level < 1.0 or replicates < LEAST_REPLICATES:
