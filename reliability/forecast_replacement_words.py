@@ -81,6 +81,24 @@ def flat(document: Document) -> str:
     )
 
 
+def beyond(document: Document) -> str:
+    """A warning where the best age is one that no part has reached: the curve there is an extrapolation."""
+    told, clock = document["told"], document["clock"]
+    if told is None or told["age"] is None or told["age"] <= document["oldest"]:
+        return ""
+    return (
+        f"The oldest part in service is {age(document['oldest'], clock)} old. What is said of greater ages is "
+        "extrapolated from the fitted life; nobody has seen it."
+    )
+
+
+def age_in_forecast(document: Document) -> float:
+    """The age at which a part is really changed: at visits, half an interval later on the mean."""
+    told = document["told"]
+    every = document["visit_every_days"]
+    return float(told["age"] + (0.0 if every is None else every * told["pace"] / 2.0))
+
+
 def at_visits(document: Document) -> str:
     every = document["visit_every_days"]
     if every is None:
@@ -89,13 +107,14 @@ def at_visits(document: Document) -> str:
     return f"Planned replacement only at a visit {days}, at the first one at which a part is that old."
 
 
-def would_mean(planned: Document, base: Document) -> str:
-    """Planned parts and failures of the next quarter, from the forecast."""
+def would_mean(planned: Document, base: Document, at: str) -> str:
+    """Planned parts and failures of the next quarter, from the forecast; `at` is the age that was counted with."""
     changed, failures, before = planned["planned"], planned["total"], base["total"]
     return (
         f"Next quarter it would mean about {about(changed['mean'])} planned replacements "
         f"({between(changed['bands']['0.8'])} in 80 of 100 quarters) and {about(failures['mean'])} failures "
-        f"({between(failures['bands']['0.8'])}) instead of {about(before['mean'])} ({between(before['bands']['0.8'])})."
+        f"({between(failures['bands']['0.8'])}) instead of {about(before['mean'])} ({between(before['bands']['0.8'])})"
+        f"{at}."
     )
 
 

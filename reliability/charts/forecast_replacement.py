@@ -74,8 +74,9 @@ def cost_figure(document: Document, currency: str) -> Figure:
         )
     # what costs a multiple of failures alone is of no interest, and would flatten the rest
     top = 1.6 * max(never, told["never_band"][1], min(curve["upper"]))
+    shown = min(last, max(2.5 * (told["age"] or last), 1.5 * document["oldest"]))
     layout = {
-        "xaxis": {"title": f"Age, {document['clock']}", "rangemode": "tozero", "tickformat": ",.0f"},
+        "xaxis": {"title": f"Age, {document['clock']}", "range": [0, shown], "tickformat": ",.0f"},
         "yaxis": {"title": f"{currency} a quarter", "range": [0, top], "tickformat": ",.0f"},
         "showlegend": True,
     }

@@ -74,6 +74,7 @@ def replacement_document(question: ReplacementQuestion) -> dict[str, Any]:
         "positions": counts.get(part, 0) if part else 0,
         "failures_seen": 0,
         "use_a_day": sum(use[part].values()) if part else 0.0,
+        "oldest": max((row.age for row in running.rows), default=0.0),
         "told": None,
     }
     if not part or document["use_a_day"] <= 0:

@@ -156,6 +156,7 @@ def answer(component: Component, document: Document, currency: str) -> Document:
         "lead": words.lead(document, component.title, currency),
         "flat": words.flat(document),
         "at_visits": words.at_visits(document),
+        "warnings": [each for each in [words.beyond(document)] if each],
         "would_mean": would_mean(component, document),
     }
     if told is not None:
@@ -180,12 +181,13 @@ def would_mean(component: Component, document: Document) -> str:
     told = document["told"]
     if told is None or told["age"] is None:
         return ""
-    asked = {"sites": document["sites"]}
+    asked, at = {"sites": document["sites"]}, words.age_in_forecast(document)
     try:
-        planned = kept_forecast(question_of(component, what_if=WhatIf(replace_at=told["age"]), **asked))
+        planned = kept_forecast(question_of(component, what_if=WhatIf(replace_at=at), **asked))
     except QuestionRefused as error:
         return str(error)
-    return words.would_mean(planned, kept_forecast(question_of(component, **asked)))
+    later = "" if at == told["age"] else f", counted as if changed at {words.age(at, document['clock'])}"
+    return words.would_mean(planned, kept_forecast(question_of(component, **asked)), later)
 
 
 def curve_file(document: Document, currency: str) -> HttpResponse:

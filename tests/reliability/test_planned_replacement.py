@@ -3,10 +3,12 @@
 from __future__ import annotations
 
 import datetime as dt
+from collections.abc import Iterator
 from decimal import Decimal
 from typing import Any
 
 import pytest
+import time_machine
 from django.test import Client
 from django.utils import timezone
 
@@ -22,6 +24,12 @@ from tests.reliability.test_forecast import AS_OF, SCALE, SHAPE, lived_fleet
 pytestmark = pytest.mark.django_db
 DAY = dt.timedelta(days=1)
 PAGE = "/forecast/planned-replacement/NUT/"
+
+
+@pytest.fixture(autouse=True)
+def _the_day_up_to_which_the_fleet_lived() -> Iterator[None]:
+    with time_machine.travel(dt.datetime.combine(day(AS_OF), dt.time(12), dt.UTC), tick=False):
+        yield
 
 
 @pytest.fixture
@@ -115,6 +123,7 @@ def told(**changes: Any) -> dict[str, Any]:
         "positions": 60,
         "failures_seen": 50,
         "visit_every_days": None,
+        "oldest": 130.0,
         "told": figures,
     }
 
@@ -140,6 +149,17 @@ def test_what_is_not_shown_and_what_cannot_pay_are_told_apart() -> None:
     assert "fails no sooner than a new one" in cannot
 
 
+def test_an_age_that_nobody_has_seen_is_called_extrapolated() -> None:
+    assert words.beyond(told()) == ""
+    assert plain(words.beyond(told(age=140.0))).startswith("The oldest part in service is 130 days old.")
+
+
+def test_at_visits_the_forecast_counts_half_an_interval_later() -> None:
+    at_visits = {**told(pace=2.0), "visit_every_days": 14}
+    assert words.age_in_forecast(told(pace=2.0)) == 45.2
+    assert words.age_in_forecast(at_visits) == 45.2 + 14.0
+
+
 # --- the page ---
 
 
@@ -149,6 +169,7 @@ def test_the_page_shows_curve_flat_region_counts_and_caution(manager: Client) ->
     assert 'data-chart="cost"' in page
     assert "It does not certify that a part is safe until that age" in page
     assert "failures of N2 on record" in page
+    assert "Next quarter it would mean about" in page
     answer = manager.get(f"{PAGE}?planned_cost=40&failure_cost=400&as=json").json()
     assert answer["component"] == "NUT"
     lines = b"".join(manager.get(f"{PAGE}?planned_cost=40&failure_cost=400&as=csv").streaming_content).decode()
