@@ -27,6 +27,8 @@ ENOUGH = (0.5, 0.8, 0.95)
 WEEK = 7
 REPLICATES = 2000
 FOR_HOURS = 600  # replicates in the search for the hours that hold the target
+FEWEST = 200
+JOBS = 1_200_000  # in all replicates together: a bench of hundreds of jobs a week takes fewer replicates
 SOON = 28  # days: turn-round is told of what is received in them
 
 
@@ -158,9 +160,10 @@ class Backlog:
 
 
 def backlog(
-    bench: Bench, *, change: Change | None = None, replicates: int = REPLICATES, with_needed: bool = True
+    bench: Bench, *, change: Change | None = None, replicates: int | None = None, with_needed: bool = True
 ) -> Backlog:
-    """The bench's coming weeks, as planned or with a change."""
+    """The bench's coming weeks, as planned or with a change; replicates: as many as fit if None."""
+    replicates = replicates or replicates_for(bench)
     bench = bench if change is None else changed(bench, change)
     hours = hours_by_day(bench.hours, bench.today, bench.days)
     if change is not None:
@@ -181,8 +184,24 @@ def backlog(
     )
 
 
-def what_a_change_does(bench: Bench, change: Change, *, replicates: int = REPLICATES) -> dict[str, Any]:
+def replicates_for(bench: Bench) -> int:
+    """2,000, or as many as keep a large bench quick."""
+    coming = sum(
+        (
+            0.0
+            if kind.weekly_failures is None
+            else float(kind.weekly_failures.mean()) * min(kind.came / max(kind.of, 1), 1)
+        )
+        + kind.planned_a_week
+        for kind in bench.kinds
+    )
+    jobs = len(bench.jobs) + coming * bench.days / WEEK
+    return int(np.clip(JOBS / max(jobs, 1.0), FEWEST, REPLICATES))
+
+
+def what_a_change_does(bench: Bench, change: Change, *, replicates: int | None = None) -> dict[str, Any]:
     """The change minus the plan, week by week, on the same jobs: the bands are of the difference itself."""
+    replicates = replicates or replicates_for(bench)
     base, other = (
         backlog(bench, change=each, replicates=replicates, with_needed=False).course for each in (None, change)
     )
@@ -324,13 +343,14 @@ def _needed(bench: Bench, times: dict[str, RecordedTimes], hours: NDArray[np.flo
     if not 1 <= by_day <= bench.days or not hours[:by_day].sum() > 0:
         return None
     short = replace(bench, days=by_day)
+    few = min(FOR_HOURS, replicates_for(short))
     return hours_to_target(
         [open_job(job, bench.today) for job in bench.jobs],
-        [sort_of(kind, times[kind.kind], short, FOR_HOURS) for kind in bench.kinds],
+        [sort_of(kind, times[kind.kind], short, few) for kind in bench.kinds],
         hours[:by_day],
         target=bench.target,
         places=bench.hours.people,
-        replicates=FOR_HOURS,
+        replicates=few,
         seed=bench.seed,
     )
 

@@ -7,8 +7,8 @@ piece owed at a site is a module waiting there. The depot is resupplied by the s
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from collections.abc import Collection, Mapping, Sequence
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -120,12 +120,20 @@ class StockPlaces:
 
 
 def stock_places(
-    parts: Sequence[PlacedPart], ship_days: Mapping[str, float], budget: float, *, depot: str = "depot"
+    parts: Sequence[PlacedPart],
+    ship_days: Mapping[str, float],
+    budget: float,
+    *,
+    depot: str = "depot",
+    stores: Collection[str] | None = None,
 ) -> StockPlaces:
-    """ship_days: from the depot to each site that keeps stock. Use at sites not in it is left out by the caller."""
+    """ship_days: from the depot to each site; use elsewhere is not counted. stores: the sites that can keep spares, all
+    of them if None; the others are served by the depot.
+    """
     sites = tuple(sorted(ship_days))
     ship = np.array([ship_days[site] for site in sites], dtype=np.float64)
-    stocked = {part.part: _stocked(part, sites, ship) for part in parts}
+    keep = np.array([stores is None or site in stores for site in sites], dtype=bool)
+    stocked = {part.part: _stocked(part, sites, ship, keep) for part in parts}
     found = marginal_analysis(list(stocked.values()), budget)
     names = {part.part: part.name for part in parts}
     return StockPlaces(
@@ -147,7 +155,9 @@ def level_spread_of(total: CountDistribution) -> float:
     return math.sqrt(max(total.standard_deviation**2 - total.mean, 0.0)) / total.mean
 
 
-def _stocked(part: PlacedPart, sites: tuple[str, ...], ship: NDArray[np.float64]) -> StockedPart:
+def _stocked(
+    part: PlacedPart, sites: tuple[str, ...], ship: NDArray[np.float64], keep: NDArray[np.bool_]
+) -> StockedPart:
     use = np.array([part.use_a_day.get(site, 0.0) for site in sites])
     kept = part.at_sites or {}
     return StockedPart(
@@ -158,6 +168,7 @@ def _stocked(part: PlacedPart, sites: tuple[str, ...], ship: NDArray[np.float64]
         unit_cost=part.unit_cost,
         depot_stock=part.at_depot,
         site_stock=[kept.get(site, 0) for site in sites],
+        may_keep=keep,
     )
 
 
@@ -196,9 +207,7 @@ def _moves(
         now = found.start[part.part]
         if not 0 < now.pieces <= 400:
             continue
-        empty = stocked[part.part]
-        free = StockedPart(empty.name, empty.demand, empty.depot_time, empty.ship_time, empty.unit_cost)
-        best = best_split(free, now.pieces)
+        best = best_split(replace(stocked[part.part], depot_stock=0, site_stock=None), now.pieces)
         if now.backorders - best.backorders > max(0.05 * now.backorders, 0.01):
             changes = _changes(now, best, sites, depot)
             moves.append(Better(part.part, part.name, now.backorders, best.backorders, changes))

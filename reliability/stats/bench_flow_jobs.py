@@ -23,6 +23,7 @@ IntArray = NDArray[np.int64]
 BoolArray = NDArray[np.bool_]
 
 WEEK = 7
+MOST_JOBS = 20_000_000  # in all replicates together: some gigabytes
 _JUST_NOW = 1e-9  # days: what is there today came before what comes
 
 
@@ -118,6 +119,11 @@ def draw_jobs(queue: Sequence[OpenJob], sorts: Sequence[JobSort], days: int, rep
     missing = sorted({job.sort for job in queue} - set(names))
     if missing:
         raise InvalidArgument(f"Open jobs are of sort {missing[0]}, of which no hours are given.")
+    expected = replicates * (len(queue) + sum(_expected(sort) for sort in sorts))
+    if expected > MOST_JOBS:
+        raise InvalidArgument(
+            f"{expected:,.0f} jobs would be simulated; at most {MOST_JOBS:,} can be. Ask for fewer replicates or days."
+        )
     columns = [_coming(sort, days, replicates, seed) for sort in sorts]
     columns += _there(queue, {sort.name: sort for sort in sorts}, replicates, seed)
     if not columns:
@@ -219,6 +225,13 @@ def _column(
         np.full(size, from_pool),
         np.zeros(size) if fate is None else fate,
     )
+
+
+def _expected(sort: JobSort) -> float:
+    """Jobs of a sort in one replicate."""
+    given = np.asarray(sort.arrivals, dtype=np.float64)
+    total = float(given.sum()) / (given.shape[0] if given.ndim == 2 and given.shape[0] else 1)
+    return total if math.isfinite(total) else 0.0
 
 
 def _counts(sort: JobSort, days: int, replicates: int, rng: np.random.Generator) -> IntArray:

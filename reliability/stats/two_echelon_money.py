@@ -32,7 +32,8 @@ LEVELS = 5  # of uncertain demand in the search; the curve's figures use all tha
 class StockedPart:
     """One part: demand a unit of time at each site, (sites,), or in each of several draws of its level, (draws, sites).
 
-    Times in the unit of demand. depot_stock and site_stock: what is kept already and stays where it is.
+    Times in the unit of demand. depot_stock and site_stock: what is kept already and stays where it is. may_keep:
+    whether a site can keep any; one that cannot is served by the depot.
     """
 
     name: str
@@ -42,6 +43,7 @@ class StockedPart:
     unit_cost: float
     depot_stock: int = 0
     site_stock: ArrayLike | None = None
+    may_keep: ArrayLike = True
 
 
 @dataclass(frozen=True)
@@ -131,31 +133,29 @@ def best_split(part: StockedPart, pieces: int) -> StockPlan:
     """
     if pieces != int(pieces) or not 0 <= pieces <= MOST_PIECES:
         raise InvalidArgument(f"{pieces:g} pieces are to be split; give a whole number from 0 to {MOST_PIECES}.")
-    return _Ladder(part, math.inf, least=int(pieces)).plan(int(pieces))
+    return _Ladder(part, math.inf).plan(int(pieces))
 
 
 class _Ladder:
     """One part: the least owed for each number of further pieces, and the corners of its convex hull."""
 
-    def __init__(self, part: StockedPart, budget: float, *, least: int = 0) -> None:
+    def __init__(self, part: StockedPart, budget: float) -> None:
         self.cost = float(part.unit_cost)
         if not (math.isfinite(self.cost) and self.cost > 0):
             raise InvalidArgument(f"{part.name} costs {self.cost:g}; give a price above 0.")
         demand = np.atleast_2d(np.asarray(part.demand, dtype=np.float64))
         self.worlds = [Pipelines(each, part.depot_time, part.ship_time) for each in demand]
-        sites = demand.shape[1]
-        kept = np.zeros(sites) if part.site_stock is None else np.asarray(part.site_stock, dtype=np.float64)
-        if kept.shape != (sites,):
-            raise InvalidArgument(f"{part.name}: stock is given for {kept.size} sites and demand for {sites}.")
-        refuse_stock(kept, "stock at a site")
-        refuse_stock(np.asarray(part.depot_stock, dtype=np.float64), "stock at the depot")
-        self.depot, self.sites = int(part.depot_stock), kept.astype(np.int64)
+        self.depot, self.sites = int(part.depot_stock), _stock_of(part, demand.shape[1])
+        self.may_keep = np.broadcast_to(np.asarray(part.may_keep, dtype=bool), self.sites.shape)
         # levels of demand in order, a few of them for the search
         order = np.argsort([world.depot + world.direct.sum() for world in self.worlds], kind="stable")
         middle = (np.arange(min(LEVELS, order.size)) + 0.5) / min(LEVELS, order.size)
         self._search = [self.worlds[order[int(place * order.size)]] for place in middle]
+        at_sites, at_depot = self._useful()
         affordable = budget // self.cost if math.isfinite(budget) else MOST_PIECES
-        self.most = max(int(min(MOST_PIECES, affordable, self._useful())), least)
+        self.most = int(min(MOST_PIECES, affordable, at_sites.sum() + at_depot))
+        self._columns = int(min(self.most, at_sites.max(initial=0)))
+        self._deepest = int(min(self.most, at_depot))
         self._owed, self._gains = self._tables()
         self._at_depot = self._best_split()
         self.corners = self._hull()
@@ -166,9 +166,11 @@ class _Ladder:
         return (self.least[here] - self.least[there]) / ((there - here) * self.cost)
 
     def plan(self, pieces: int) -> StockPlan:
-        """The best split of so many further pieces, with its figures over all draws."""
-        extra = int(self._at_depot[pieces])
-        sites = self.sites + self._chosen(extra, pieces - extra)
+        """The best split of so many further pieces, with its figures over all draws; useless ones lie at the depot."""
+        useful = min(pieces, self.most)
+        extra = int(self._at_depot[useful])
+        chosen = self._chosen(extra, useful - extra)
+        sites, extra = self.sites + chosen, pieces - int(chosen.sum())
         owed = []
         for world in self.worlds:
             mean, variance = self._moments(world, self.depot + extra)
@@ -176,13 +178,15 @@ class _Ladder:
         lower, upper = np.quantile(owed, [0.1, 0.9])
         return StockPlan(self.depot + extra, tuple(map(int, sites)), float(np.mean(owed)), float(lower), float(upper))
 
-    def _useful(self) -> float:
-        """Pieces beyond which hardly anything can be owed: five deviations at each site were the depot empty."""
-        reached = np.zeros(self.sites.size)
+    def _useful(self) -> tuple[IntArray, int]:
+        """Further pieces at each site and at the depot beyond which hardly anything can be owed: five deviations."""
+        reached, deepest = np.zeros(self.sites.size), 0.0
         for world in self._search:
             mean, variance = self._moments(world, self.depot)
             reached = np.maximum(reached, mean + 5.0 * np.sqrt(variance) + 3.0)
-        return float(np.ceil(np.maximum(reached - self.sites, 0.0)).sum())
+            deepest = max(deepest, world.depot + 5.0 * math.sqrt(world.depot) + 3.0)
+        at_sites = np.ceil(np.maximum(reached - self.sites, 0.0)).astype(np.int64) * self.may_keep
+        return at_sites, math.ceil(max(deepest - self.depot, 0.0))
 
     @staticmethod
     def _moments(world: Pipelines, depot_stock: int) -> tuple[FloatArray, FloatArray]:
@@ -191,30 +195,33 @@ class _Ladder:
         return pipeline, pipeline + world.share**2 * (variance - mean)
 
     def _tables(self) -> tuple[FloatArray, FloatArray]:
-        """For 0 ... most more at the depot: what is owed with none more at the sites (m + 1,), and what each further
-        piece at each site saves (m + 1, sites, most).
+        """For 0 ... deepest more at the depot: what is owed with none more at the sites, (deepest + 1,), and what each
+        further piece at each site saves, (deepest + 1, sites, columns); less than nothing where none may be kept.
         """
-        number = self.most + 1
+        number = self._deepest + 1
         owed = np.zeros(number)
-        gains = np.zeros((number, self.sites.size, self.most))
-        counts = np.arange(int(self.sites.max(initial=0)) + self.most)
-        picked = self.sites[:, None] + np.arange(self.most)
+        gains = np.zeros((number, self.sites.size, self._columns))
+        counts = np.arange(int(self.sites.max(initial=0)) + self._columns)
+        picked = self.sites[:, None] + np.arange(self._columns)
         for world in self._search:
             moments = [self._moments(world, self.depot + extra) for extra in range(number)]
             mean, variance = (np.array([each[index] for each in moments]) for index in (0, 1))
             owed += backorders_by_moments(mean, variance, self.sites).sum(axis=1)
-            if self.most:
+            if self._columns:
                 above = 1.0 - np.cumsum(_pmf(mean[:, :, None], variance[:, :, None], counts), axis=2)
                 gains += np.maximum(np.take_along_axis(above, picked[None], axis=2), 0.0)
+        gains[:, ~self.may_keep] = -len(self._search)
         return owed / len(self._search), gains / len(self._search)
 
     def _best_split(self) -> IntArray:
         """Of 0 ... most further pieces, how many go to the depot; sets `least`, what is then owed."""
-        number = self.most + 1
+        number = self._deepest + 1
         falling = -np.sort(-self._gains.reshape(number, -1), axis=1)[:, : self.most]
         owed = self._owed[:, None] - np.concatenate([np.zeros((number, 1)), np.cumsum(falling, axis=1)], axis=1)
-        extra, pieces = np.arange(number)[:, None], np.arange(number)[None, :]
-        table = np.where(extra <= pieces, owed[extra, np.maximum(pieces - extra, 0)], np.inf)
+        extra, pieces = np.arange(number)[:, None], np.arange(self.most + 1)[None, :]
+        at_sites = pieces - extra
+        possible = (at_sites >= 0) & (at_sites < owed.shape[1])
+        table = np.where(possible, owed[extra, np.clip(at_sites, 0, owed.shape[1] - 1)], np.inf)
         best = table.argmin(axis=0)
         self.least = np.maximum(np.minimum.accumulate(table[best, pieces[0]]), 0.0)
         return best
@@ -224,7 +231,7 @@ class _Ladder:
         if not pieces:
             return np.zeros(self.sites.size, dtype=np.int64)
         order = np.argsort(-self._gains[extra], axis=None, kind="stable")[:pieces]
-        return np.bincount(order // self.most, minlength=self.sites.size)
+        return np.bincount(order // self._columns, minlength=self.sites.size)
 
     def _hull(self) -> list[int]:
         """Corners of the lower convex hull of what is owed, from 0 further pieces to where nothing is left to gain."""
@@ -241,6 +248,17 @@ class _Ladder:
         while len(corners) >= 2 and self.least[corners[-2]] - self.least[corners[-1]] <= 1e-12:
             corners.pop()
         return corners
+
+
+def _stock_of(part: StockedPart, sites: int) -> IntArray:
+    kept = np.zeros(sites) if part.site_stock is None else np.asarray(part.site_stock, dtype=np.float64)
+    if kept.shape != (sites,):
+        raise InvalidArgument(f"{part.name}: stock is given for {kept.size} sites and demand for {sites}.")
+    refuse_stock(kept, "stock at a site")
+    refuse_stock(np.asarray(part.depot_stock, dtype=np.float64), "stock at the depot")
+    if np.shape(part.may_keep) not in ((), (sites,)):
+        raise InvalidArgument(f"{part.name}: may_keep must be one answer, or one for each of the {sites} sites.")
+    return kept.astype(np.int64)
 
 
 def _pmf(mean: FloatArray, variance: FloatArray, counts: IntArray) -> FloatArray:

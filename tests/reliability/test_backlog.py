@@ -19,6 +19,7 @@ from reliability.forecasts.backlog import (
     backlog,
     hours_by_day,
     planned_by_day,
+    replicates_for,
     what_a_change_does,
 )
 from reliability.stats.errors import InvalidArgument
@@ -140,6 +141,13 @@ def test_a_target_beyond_the_days_asks_for_no_hours() -> None:
 def test_failures_drawn_for_too_few_weeks_are_refused() -> None:
     with pytest.raises(InvalidArgument, match="drawn for 4 weeks; 91 days at the bench take 13"):
         backlog(bench(kinds=(seals(weekly_failures=failures(12.0, 4)),)), replicates=10)
+
+
+def test_a_large_bench_takes_fewer_replicates() -> None:
+    assert replicates_for(bench()) == 2000
+    large = bench(kinds=(seals(weekly_failures=failures(240.0)),), hours=Hours(800.0, people=20))
+    assert 600 < replicates_for(large) < 900
+    assert backlog(large, with_needed=False).course.replicates == replicates_for(large)
 
 
 # what-ifs

@@ -88,6 +88,12 @@ def test_stock_in_the_wrong_place_is_seen() -> None:
     assert "without buying any" in place_words.move(move)
 
 
+def test_a_site_without_a_store_keeps_none() -> None:
+    found = stock_places([nuts()], SHIP, 300.0, stores={"K-2"})
+    assert {place for step in found.curve for place, pieces in step.changes if pieces > 0} <= {"depot", "K-2"}
+    assert found.curve[-1].waiting.mean < found.now.mean
+
+
 def test_words_and_document() -> None:
     found = stock_places([nuts(at_sites={"K-2": 5}, level_spread=0.3)], SHIP, 60.0, depot="WEIR-DEPOT")
     told = [plain(sentence) for sentence in place_words.sentences(found, "EUR")]

@@ -318,6 +318,7 @@ def test_jobs_without_work_are_done_when_they_come():
         {"queue": [OpenJob("nut", waited_for_parts=1.0)]},
         {"queue": [OpenJob("nut", days_here=math.inf)]},
         {"sorts": [nothing_comes(7), nothing_comes(7)]},
+        {"sorts": [nothing_comes(7, arrivals=np.full(7, 1e6))]},
         {"sorts": [nothing_comes(7, arrivals=[-1.0] * 7)]},
         {"sorts": [nothing_comes(7, arrivals=np.full((3, 7), 1.0))]},
         {"sorts": [nothing_comes(7, arrivals=np.full((1, 7), 0.5))]},

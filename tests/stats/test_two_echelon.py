@@ -224,6 +224,35 @@ def test_uncertain_demand_shows_its_spread_and_owes_more_on_average():
     assert spread.lower < certain.backorders < spread.backorders < spread.upper
 
 
+def test_a_site_that_cannot_keep_any_is_served_by_the_depot():
+    curve = marginal_analysis([nut(may_keep=[False, True])], 400.0)
+    assert curve.steps[-1].plan.site_stock[0] == 0
+    assert curve.steps[-1].plan.depot_stock > 0
+    best = min(two_echelon_backorders([0.1, 0.02], [0, b], 10 - b, depot_time=14, ship_time=2).total for b in range(11))
+    assert best_split(nut(may_keep=[False, True]), 10).backorders == pytest.approx(best)
+    nowhere = best_split(nut(may_keep=False), 30)
+    assert (nowhere.depot_stock, nowhere.site_stock) == (30, (0, 0))
+    with pytest.raises(InvalidArgument, match="may_keep"):
+        best_split(nut(may_keep=[True, True, False]), 3)
+
+
+def test_many_sites_and_much_stock_stay_quick_and_right():
+    rng = np.random.default_rng(1)
+    use = rng.gamma(1.0, 0.03, 150)
+    part = nut(demand=use, depot_time=30.0, ship_time=3.0, unit_cost=1.0)
+    curve = marginal_analysis([part], 200.0)
+    last = curve.steps[-1]
+    told = two_echelon_backorders(use, last.plan.site_stock, last.plan.depot_stock, depot_time=30, ship_time=3)
+    assert last.backorders == pytest.approx(told.total)
+    # no single move makes it better
+    stock = np.array(last.plan.site_stock)
+    for site in rng.choice(150, 12, replace=False):
+        more = stock.copy()
+        more[site] += 1
+        moved = two_echelon_backorders(use, more, last.plan.depot_stock - 1, depot_time=30, ship_time=3)
+        assert moved.total >= told.total - 1e-9
+
+
 def test_a_part_too_dear_is_left_and_others_go_on():
     curve = marginal_analysis([nut(name="SCREW", unit_cost=500.0, demand=[1.0, 1.0]), nut()], 120.0)
     assert {step.part for step in curve.steps} == {"NUT"}
