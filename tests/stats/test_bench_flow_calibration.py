@@ -8,7 +8,7 @@ import pytest
 from reliability.stats.bench_flow import JobSort, OpenJob, arrivals_from_failures, learned_times, simulate_bench
 from tests.stats.slow_bench import slow_bench
 
-DAYS, TRIALS = 42, 200
+DAYS, TRIALS, REPLICATES = 42, 160, 120
 CALENDAR = [8.0, 8.0, 8.0, 8.0, 8.0, 0.0, 0.0] * 6
 
 
@@ -34,18 +34,18 @@ def test_bands_hold_at_their_rate(recorded: int) -> None:
         of = 30
         came = rng.binomial(of, share)
         drawn = rng.poisson(rng.gamma(25.0, 0.4, (300, 1)), (300, 6))
-        arrivals = arrivals_from_failures(drawn, came, of, 300, rng)
+        arrivals = arrivals_from_failures(drawn, came, of, REPLICATES, rng)
         times = learned_times(rng.lognormal(middle, spread, recorded), typical=6.0)
         sort = JobSort("nut", arrivals, times)
         queue = [OpenJob("nut", days_here=1.0) for _ in range(8)]
-        found = simulate_bench(queue, [sort], CALENDAR, replicates=300, seed=trial)
+        found = simulate_bench(queue, [sort], CALENDAR, replicates=REPLICATES, seed=trial)
         left, worked = truth(rng, level, share, middle, spread)
         course = found.modules.values[:, -1]
         # counts tie, so the rank is drawn within the tie
         modules.append((course < left).mean() + rng.random() * (course == left).mean())
-        total = np.bincount(found.replicate, found.hours, 300)
+        total = np.bincount(found.replicate, found.hours, REPLICATES)
         hours.append((total < worked).mean())
     for ranks in (np.array(modules), np.array(hours)):
-        # 200 trials: the error of a share of 0.8 is 0.028
-        assert ((ranks > 0.1) & (ranks < 0.9)).mean() == pytest.approx(0.8, abs=0.085)
+        # 160 trials: the error of a share of 0.8 is 0.032
+        assert ((ranks > 0.1) & (ranks < 0.9)).mean() == pytest.approx(0.8, abs=0.095)
         assert ranks.mean() == pytest.approx(0.5, abs=0.07)
