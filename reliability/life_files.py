@@ -27,6 +27,17 @@ GROUP_HEAD = [
 CURVE_HEAD = ["component", "clock", "group", "age", "survival", "lower", "upper", "at_risk", "failures", "method"]
 CURVE_COLUMNS = ("age", "survival", "lower", "upper", "at_risk", "failures")
 
+LINE_HEAD = ["component", "clock", "group", "age", "survival", "lower", "upper", "seen_to", "band"]
+LINE_COLUMNS = ("age", "survival", "lower", "upper")
+
+
+def line_lines(document: Document) -> Iterator[list[Any]]:
+    """The fitted lines of the Weibull plot; its points are the curves."""
+    for group in document["groups"]:
+        line = group["fitted"]
+        for row in zip(*(line[name] for name in LINE_COLUMNS), strict=True) if line else ():
+            yield [document["component"], document["clock"], group["group"], *row, line["seen_to"], line["band"]]
+
 
 def group_lines(document: Document) -> Iterator[list[Any]]:
     for group in document["groups"]:

@@ -120,8 +120,8 @@ def sentence(data: Data) -> str:
     rates = [family["false_discovery_rate"] for family in data["families"] if named(family)]
     if rates:
         told.append(
-            f"{sure(data['confidence'])[:1].upper()}{sure(data['confidence'])[1:]} of each range; at most "
-            f"{percent(max(rates))} of such namings are expected to be false."
+            f"{sure(data['confidence'])[:1].upper()}{sure(data['confidence'])[1:]} of each range; of such "
+            f"namings {percent(max(rates))} or fewer are expected to be false."
         )
     return " ".join(each for each in told if each)
 
@@ -146,7 +146,7 @@ def named(family: Data) -> list[Data]:
 
 def _family_words(family: Data, *, several: bool) -> str:
     rows = named(family)
-    of = f"of {family['group']} " if several and family["group"] != "all" else ""
+    of = f"of {family['group']}: " if several and family["group"] != "all" else ""
     more = f" and {number(len(rows) - NAMED)} more" if len(rows) > NAMED else ""
     return f"{of}{joined([_row_words(row) for row in rows[:NAMED]])}{more}"
 
@@ -218,7 +218,7 @@ def _table(data: Data, family: Data) -> Data:
         [
             row["label"],
             {"estimate": row["multiplier"], "digits": 2},
-            {"text": "stands out", "kind": "late"} if row["stands_out"] else "as others",
+            {"text": "stands out", "kind": "late"} if row["stands_out"] else "not shown to",
             row["failures"],
             row["expected"],
             row["lives"],

@@ -12,7 +12,7 @@ def stand_outs_figure(data: dict[str, Any], family: dict[str, Any]) -> Figure:
     rows = family["rows"][:MOST_ROWS][::-1]
     highest = max((row["multiplier"]["upper"] for row in rows), default=1.0)
     traces = [
-        dots([row for row in rows if not row["stands_out"]], "as the others", "var(--ink)", "circle-open"),
+        dots([row for row in rows if not row["stands_out"]], "not shown to stand out", "var(--ink)", "circle-open"),
         dots([row for row in rows if row["stands_out"]], "stands out", "var(--amber)", "diamond"),
     ]
     return {

@@ -20,6 +20,7 @@ from reliability.charts.groups import MOST_GROUPS
 from reliability.forms.life import GROUPINGS, Choices, LifeForm
 from reliability.life_panels import PANELS, Panel
 
+FILES = ("csv", "curve.csv", "line.csv")
 NO_COMPONENT = {
     "state": "No component is in the book yet.",
     "remedy": "A component is a sort of part, such as a drive nut. Enter one, or bring in records from files.",
@@ -40,8 +41,8 @@ def life(request: Any) -> HttpResponse:
     kind = request.GET.get("as")
     if kind == "json":
         return JsonResponse(everything(request, choices, form), json_dumps_params={"ensure_ascii": False})
-    if kind in ("csv", "curve.csv"):
-        return as_file(component, seen_document(request, choices, form), curve=kind == "curve.csv")
+    if kind in FILES:
+        return as_file(component, seen_document(request, choices, form), kind)
     document = seen_document(request, choices, form, most=MOST_GROUPS)
     return render(request, "life/page.html", context_of(request, choices, form, document))
 
@@ -91,12 +92,14 @@ def with_own_warnings(request: Any, choices: Choices, document: dict[str, Any]) 
     return {**document, "warnings": warnings}
 
 
-def as_file(component: Component, document: dict[str, Any], *, curve: bool) -> Any:
-    from reliability.life_files import CURVE_HEAD, GROUP_HEAD, curve_lines, group_lines
+def as_file(component: Component, document: dict[str, Any], kind: str) -> Any:
+    from reliability.life_files import CURVE_HEAD, GROUP_HEAD, LINE_HEAD, curve_lines, group_lines, line_lines
 
     name = f"life {component.code}"
-    if curve:
+    if kind == "curve.csv":
         return as_csv(f"{name} curve", CURVE_HEAD, curve_lines(document))
+    if kind == "line.csv":
+        return as_csv(f"{name} line", LINE_HEAD, line_lines(document))
     return as_csv(name, GROUP_HEAD, group_lines(document))
 
 
@@ -127,7 +130,10 @@ def context_of(request: Any, choices: Choices, form: LifeForm, document: dict[st
     }
     if document["groups"]:
         context |= page_of(document, looks_of(choices), names_of(choices, document), request.GET.get("sort", ""))
-        context["survival"]["csv_url"] = file_address(request, "curve.csv")
+        if context["survival"]:
+            context["survival"]["csv_url"] = file_address(request, "curve.csv")
+        if context["plot"]:
+            context["plot"]["csv_url"] = file_address(request, "line.csv")
     return context
 
 

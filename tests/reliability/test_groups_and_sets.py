@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import json
 from collections.abc import Iterator
 from dataclasses import replace
 from typing import Any
@@ -118,7 +117,7 @@ def test_the_question_is_answered_from_indexes(fleet: SmallFleet, asked: str) ->
         if connection.vendor == "postgresql":
             cursor.execute("SET LOCAL enable_seqscan = off")  # so small a fleet would be read whole
             cursor.execute("EXPLAIN (ANALYZE, FORMAT JSON) " + sql, parameters)
-            nodes = list(nodes_of(json.loads(cursor.fetchone()[0])[0]["Plan"]))
+            nodes = list(nodes_of(cursor.fetchone()[0][0]["Plan"]))
         else:
             cursor.execute("EXPLAIN QUERY PLAN " + sql, parameters)
             nodes = [str(row) for row in cursor.fetchall()]

@@ -93,6 +93,8 @@ def test_few_failures_show_bounds_for_assumed_shapes_and_no_fit(fleet: SmallFlee
     if failures == 0:  # (sum of squares / -log 0.05)^(1/2) (-log 0.9)^(1/2): all 20 ran 400 days
         expected = math.sqrt(20 * 400**2 / -math.log(0.05)) * math.sqrt(-math.log(0.9))
         assert bounds[2]["b10_lower"] == pytest.approx(expected)
+    # run to twice the age: log 0.05 / (2^shape log 0.9) = 14.2 without wear, 7.1 at shape 2
+    assert [bounds[place]["parts_to_twice"] for place in (0, 2)] == [15, 8]
     assert group["few_failures"]["parts_for_nine_in_ten"] == 29  # log 0.05 / log 0.9 = 28.4, common practice
 
 

@@ -10,6 +10,7 @@ import pytest
 from django.core.management import CommandError, call_command
 
 from fleet.actions.rebuild_clocks import rebuild_clocks
+from reliability.life_panels import PANELS
 from tests.reliability.small_fleet import SmallFleet, day
 
 pytestmark = pytest.mark.django_db
@@ -47,6 +48,8 @@ def test_json_is_one_document() -> None:
     assert (document["component"], document["as_of"], document["confidence"]) == ("NUT", "2024-03-01", 0.95)
     assert document["left_out"] == [{"reason": "fitting day not known", "count": 1}]
     assert document["groups"][0]["failures"] == 14  # those of 20 to 59 days
+    for panel in PANELS:
+        assert document[panel.key]["sentence"]
 
 
 def test_a_narrower_confidence_gives_a_narrower_interval() -> None:

@@ -109,6 +109,9 @@ def test_table_and_file_hold_the_document(nuts: Nuts, ines: Client) -> None:
     curve = lines_of(ask(ines, **{"as": "curve.csv"}))
     told = [float(row["survival"]) for row in curve if row["group"] == "N1"]
     assert told == pytest.approx(document["groups"][0]["curve"]["survival"])
+    line = lines_of(ask(ines, **{"as": "line.csv"}))
+    first = document["groups"][0]["fitted"]
+    assert [float(row["survival"]) for row in line if row["group"] == "N1"] == pytest.approx(first["survival"])
     whole = ask(ines, **{"as": "json"}).json()
     assert {key: whole[key] for key in document} == document
     assert {panel.key for panel in PANELS} <= set(whole)
