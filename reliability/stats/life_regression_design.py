@@ -46,7 +46,7 @@ def design_of(
     if constant.any():
         which = tuple(label for label, same in zip(labels, constant, strict=True) if same)
         raise CollinearCovariates(
-            f"{_listed(which)} the same for all lives, so no effect can be seen. Leave out, or choose more lives.",
+            f"{_listed(which)} the same for all lives, so no effect can be seen. Leave it out, or choose more lives.",
             names=which,
         )
     scaled = (table - middle) / spread
@@ -69,7 +69,7 @@ def _table(
         columns = [_numbers(values, label) for label, values in zip(labels, covariates.values(), strict=True)]
         wrong = [label for label, column in zip(labels, columns, strict=True) if column.shape != (len(lifetimes),)]
         if wrong:
-            raise InvalidArgument(f"{wrong[0]} must have one value for each of {len(lifetimes)} lives.")
+            raise InvalidArgument(f"The covariate {wrong[0]} must have one value for each of {len(lifetimes)} lives.")
         table = np.column_stack(columns) if columns else np.zeros((len(lifetimes), 0))
     else:
         table = _numbers(covariates, "the covariates")
@@ -97,7 +97,7 @@ def _table(
 def _numbers(values: ArrayLike, name: str) -> FloatArray:
     array = np.asarray(values)
     if array.dtype.kind not in "biuf":
-        raise InvalidArgument(f"{name} must be numbers; give a factor as columns of 0 and 1.")
+        raise InvalidArgument(f"The values of {name} must be numbers; give a factor as columns of 0 and 1.")
     return array.astype(float)
 
 
@@ -108,8 +108,8 @@ def _refuse_dependent(scaled: FloatArray, labels: tuple[str, ...]) -> None:
         shares = np.abs(vectors[small]).max(axis=0)
         which = tuple(label for label, share in zip(labels, shares, strict=True) if share > 1e-4)
         raise CollinearCovariates(
-            f"{', '.join(which)} follow from one another in these lives, so their effects cannot be told apart. "
-            "Leave out one of them.",
+            f"The covariates {', '.join(which)} follow from one another in these lives, so their "
+            "effects cannot be told apart. Leave out one of them.",
             names=which,
         )
 
@@ -147,4 +147,4 @@ def refuse_separation(lifetimes: Lifetimes, design: Design) -> None:
 
 
 def _listed(names: tuple[str, ...]) -> str:
-    return f"{names[0]} is" if len(names) == 1 else f"{', '.join(names)} are"
+    return f"The covariate {names[0]} is" if len(names) == 1 else f"The covariates {', '.join(names)} are"

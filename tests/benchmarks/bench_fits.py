@@ -15,6 +15,7 @@ sys.path.insert(0, str(Path(__file__).resolve().parents[2]))
 from reliability.stats.kaplan_meier import kaplan_meier
 from reliability.stats.lifetimes import Lifetimes
 from reliability.stats.other_fits import fit_lognormal
+from reliability.stats.posterior import weibull_posterior
 from reliability.stats.turnbull import turnbull
 from reliability.stats.weibull_fit import fit_weibull
 
@@ -105,6 +106,7 @@ def grouped_rows(rng: np.random.Generator) -> None:
         ("group 100,000 lives", lambda: whole.grouped()),
         ("Weibull fit", lambda: fit_weibull(lives)),
         (f"{len(QUANTITIES)} likelihood-ratio intervals", lambda: [fit.interval(quantity) for quantity in QUANTITIES]),
+        ("posterior grid", lambda: weibull_posterior(lives)),
         ("lognormal fit", lambda: fit_lognormal(lives)),
         ("Kaplan–Meier", lambda: kaplan_meier(lives)),
         ("Weibull fit between looks", lambda: fit_weibull(few)),

@@ -277,7 +277,7 @@ def test_units_do_not_matter(factor):
 
 def test_columns_that_cannot_be_told_apart_are_named():
     lives, covariates = lives_with_duty(np.random.default_rng(12), 50)
-    with pytest.raises(CollinearCovariates, match="water is the same for all lives") as refused:
+    with pytest.raises(CollinearCovariates, match="The covariate water is the same for all lives") as refused:
         fit_weibull_regression(lives, {**covariates, "water": np.full(50, 7.0)})
     assert refused.value.names == ("water",)
     doubled = {**covariates, "strokes": 3.0 * covariates["duty"] + 1.0}
