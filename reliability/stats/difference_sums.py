@@ -34,19 +34,23 @@ def risk_sets(lifetimes: Lifetimes, groups: IntArray, count: int, strata: IntArr
     # one number for stratum and age; searchsorted left: the first failure age at or after the duration
     at_failure = strata[failed] * width + np.searchsorted(distinct, ages[failed])
     keys, row = np.unique(at_failure, return_inverse=True)
-    failures = np.zeros((keys.size, count))
-    np.add.at(failures, (row, groups[failed]), weights[failed])
+    failures = _table(row, groups[failed], weights[failed], keys.size, count)
     # at risk up to the last failure age that is not beyond the duration, after the last that is not beyond the entry
     leaves = strata * width + np.searchsorted(distinct, ages, side="right")
     enters = strata * width + np.searchsorted(distinct, lifetimes.entries, side="right")
     # a life is in the rows whose key lies in [enters, leaves)
-    change = np.zeros((keys.size + 1, count))
-    np.add.at(change, (np.searchsorted(keys, enters), groups), weights)
-    np.add.at(change, (np.searchsorted(keys, leaves), groups), -weights)
-    at_risk = np.cumsum(change, axis=0)[:-1]
+    entered = _table(np.searchsorted(keys, enters), groups, weights, keys.size + 1, count)
+    left = _table(np.searchsorted(keys, leaves), groups, weights, keys.size + 1, count)
+    at_risk = np.cumsum(entered - left, axis=0)[:-1]
     # sums of weights up and down may leave dust where nobody is at risk
     at_risk = np.maximum(np.where(at_risk < 1e-9 * weights.max(), 0.0, at_risk), failures)
     return RiskSets(keys // width, distinct[keys % width], failures, at_risk)
+
+
+def _table(rows: IntArray, groups: IntArray, weights: FloatArray, height: int, width: int) -> FloatArray:
+    """Weights added up by row and group, shape (height, width)."""
+    flat = np.bincount(rows * width + groups, weights=weights, minlength=height * width)
+    return flat.astype(np.float64, copy=False).reshape(height, width)
 
 
 def age_weights(sets: RiskSets, weighting: str, rho: float, gamma: float) -> FloatArray:

@@ -17,7 +17,9 @@ SMALLEST_SPREAD, LARGEST_SPREAD, SPREAD_STEP = 1e-3, 30.0, 0.45
 
 @dataclass(frozen=True, eq=False)
 class GroupRows:
-    """One group's rows without intervals: log ages less the reference, weights with a minus for entries."""
+    """One group's rows without intervals, sorted by cluster: log ages less the reference, weights with a minus for
+    entries.
+    """
 
     log_ages: FloatArray
     signed_weights: FloatArray
@@ -36,10 +38,9 @@ class GroupRows:
 
     def hazards(self, shapes: FloatArray, levels: FloatArray, count: int) -> FloatArray:
         """Cumulative hazard of each cluster for many (shape, level), shape (draws, count)."""
-        order = np.argsort(self.clusters, kind="stable")
-        powers = np.minimum(shapes[:, None] * self.log_ages[order] + levels[:, None], LARGEST_LOG_HAZARD)
-        rows = np.exp(powers) * self.signed_weights[order]
-        present, first = np.unique(self.clusters[order], return_index=True)
+        powers = np.minimum(shapes[:, None] * self.log_ages + levels[:, None], LARGEST_LOG_HAZARD)
+        rows = np.exp(powers) * self.signed_weights
+        present, first = np.unique(self.clusters, return_index=True)
         sums = np.zeros((shapes.size, count))
         sums[:, present] = np.maximum(np.add.reduceat(rows, first, axis=1), 0.0)
         return sums
@@ -51,13 +52,15 @@ def group_rows(lifetimes: Lifetimes, clusters: IntArray, log_reference: float) -
     signed = np.concatenate([lifetimes.weights, -lifetimes.weights[late]])
     where = np.concatenate([clusters, clusters[late]])
     # rows of one cluster and age are added: a site has few distinct days
-    key, inverse = np.unique(np.stack([where.astype(float), ages]), axis=1, return_inverse=True)
+    order = np.lexsort((ages, where))
+    ages, signed, where = ages[order], signed[order], where[order]
+    first = np.flatnonzero(np.append(True, (np.diff(ages) != 0.0) | (np.diff(where) != 0)))
     exact = lifetimes.observed
     logs = np.log(lifetimes.durations[exact]) - log_reference
     return GroupRows(
-        log_ages=np.log(key[1]) - log_reference,
-        signed_weights=np.bincount(inverse.ravel(), weights=signed),
-        clusters=key[0].astype(np.int64),
+        log_ages=np.log(ages[first]) - log_reference,
+        signed_weights=np.add.reduceat(signed, first),
+        clusters=where[first],
         failures=lifetimes.failures,
         sum_log_exact=float(lifetimes.weights[exact] @ logs),
     )

@@ -18,8 +18,8 @@ LOG_SHAPE_PRIOR = (math.log(2.0), 1.0)
 # half a failure's worth of knowledge about the level of each group; without it no failures would say nothing
 PRIOR_FAILURES = 0.5
 DRAWS, FEWEST_EFFECTIVE = 3000, 400
-# rows x draws held at once
-CHUNK = 4_000_000
+# rows x draws held at once, and in all: with so many rows the posterior is nearly normal and needs few draws
+CHUNK, MOST_WORK, FEWEST_DRAWS = 4_000_000, 30_000_000, 400
 TAIL_FREEDOM = 5.0
 
 
@@ -161,19 +161,21 @@ def _sampled(posterior: _Posterior, draws: int, rng: np.random.Generator) -> tup
     box = np.array([6.0, 600.0, 6.0, 600.0])
     top = maximise(posterior, start, -box, box, np.array([0.5, 2.0, 0.5, 2.0]))
     centre, spread = top.point, _spread_of(top.hessian)
+    rows = sum(group.log_ages.size for group in posterior.likelihood.groups)
+    tried = min(draws, max(FEWEST_DRAWS, MOST_WORK // max(rows, 1)))
     for _ in range(6):
         root = np.linalg.cholesky(spread)
-        normal = rng.standard_normal((draws, 4))
-        stretch = np.sqrt(TAIL_FREEDOM / rng.chisquare(TAIL_FREEDOM, draws))
+        normal = rng.standard_normal((tried, 4))
+        stretch = np.sqrt(TAIL_FREEDOM / rng.chisquare(TAIL_FREEDOM, tried))
         points = centre + (normal * stretch[:, None]) @ root.T
         distance = (normal**2).sum(axis=1) * stretch**2
         logs = posterior.values(points) + 0.5 * (TAIL_FREEDOM + 4.0) * np.log1p(distance / TAIL_FREEDOM)
         weights = np.exp(logs - logs.max())
         weights /= weights.sum()
         effective = 1.0 / float((weights**2).sum())
-        if effective >= FEWEST_EFFECTIVE * draws / DRAWS:
+        if effective >= FEWEST_EFFECTIVE * tried / DRAWS:
             places = (np.arange(draws) + rng.random()) / draws
-            chosen = np.minimum(np.searchsorted(np.cumsum(weights), places), draws - 1)
+            chosen = np.minimum(np.searchsorted(np.cumsum(weights), places), tried - 1)
             return points[chosen], effective
         # move and widen towards where the weights are
         centre = weights @ points

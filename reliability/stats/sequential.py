@@ -108,8 +108,17 @@ def _concurrent(
 
 
 def _score(lifetimes: Lifetimes | None, new: BoolArray, strata: IntArray) -> tuple[float, float]:
-    if lifetimes is None or not lifetimes.observed.any() or new.all() or not new.any():
+    if lifetimes is None:
         return 0.0, 0.0
+    # strata with one kind of part, or without a failure, add nothing: most positions, while a rollout is young
+    if strata.max() > 4 * strata.size:
+        strata = np.unique(strata, return_inverse=True)[1]
+    held = [np.bincount(strata, weights=which) > 0.0 for which in (new, ~new, lifetimes.observed)]
+    kept = np.logical_and.reduce(held)[strata]
+    if not kept.any():
+        return 0.0, 0.0
+    if not kept.all():
+        lifetimes, new, strata = lifetimes.subset(kept), new[kept], strata[kept]
     sets = risk_sets(lifetimes, new.astype(np.int64), 2, strata)
     observed, expected, covariance = weighted_sums(sets, age_weights(sets, "fleming-harrington", 0.0, 0.0))
     return float(observed[0] - expected[0]), max(float(covariance[0, 0]), 0.0)

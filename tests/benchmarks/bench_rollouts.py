@@ -143,6 +143,16 @@ def false_verdicts(rollout: Rollout, count: int, planned: float) -> None:
     )
 
 
+def true_verdicts(rollout: Rollout, count: int, planned: float) -> None:
+    """How often a part that lives as long as hoped for has been called clear within the weeks."""
+    weeks = []
+    for number in range(count):
+        found = verdict(looks(lived(np.random.default_rng([9, number]), rollout)), planned)
+        weeks += [found.decided_at] if found.phrase == "clear" else []
+    half = f"half of these by week {np.median(weeks):.0f}" if weeks else ""
+    print(f"{rollout.name:44s} clear {100 * len(weeks) / count:5.1f}  {half}", flush=True)
+
+
 def coverage(rollout: Rollout, count: int) -> None:
     truth = {
         share: rollout.factor * (-math.log1p(-share)) ** (1.0 / rollout.new_shape - 1.0 / SHAPE) for share in (0.1, 0.5)
@@ -202,6 +212,9 @@ def main() -> None:
     print(f"{count} rollouts each, 26 weekly looks; per cent of rollouts without any difference")
     for rollout in NULLS:
         false_verdicts(rollout, count, planned)
+    print(f"\n{count} rollouts each, the new part lives 1.3 times as long, as hoped")
+    for rollout in (*NULLS[:4:3], NULLS[1], NULLS[2]):
+        true_verdicts(replace(rollout, factor=1.3), count, planned)
     print(f"\n{count} rollouts each; per cent of 95 % intervals of the life ratio that hold the truth")
     for rollout in COVERED:
         coverage(rollout, count)
