@@ -107,7 +107,7 @@ def weekly_chart(request: Any, document: Document, base: Document | None, chosen
     query["component"], query["as"] = chosen.code, "weeks.csv"
     return {
         "id": "weekly",
-        "sentence": words.weekly(document, chosen.title),
+        "sentence": ("As assumed: " if base is not None else "") + words.weekly(document, chosen.title),
         "figure": weekly_figure(document, base),
         **weekly_table(document, base),
         "caption": f"{chosen.title}, failures by week",
