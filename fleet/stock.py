@@ -10,6 +10,7 @@ from django.db.models import F, IntegerField, Min, OuterRef, Q, QuerySet, Subque
 from django.db.models.functions import Coalesce, Greatest
 
 from fleet.models import Condition, Part, StockBalance, Store
+from fleet.rights import STOCK, may
 
 
 def counted_of(rows: QuerySet[Any], measure: str) -> Any:
@@ -96,3 +97,8 @@ def due_of(lines: QuerySet[Any]) -> dict[int, int]:
     for part, due in lines.open().values_list("part_id", "due"):  # type: ignore[attr-defined]
         found[part] = found.get(part, 0) + due
     return found
+
+
+def sees_all_stock(person: Any) -> bool:
+    """A minimum is the whole book's: who sees some of the stores cannot tell whether it is reached."""
+    return bool(person.all_sites and may(person, STOCK))

@@ -13,6 +13,7 @@ from django.utils import timezone
 from fleet.formats import counted
 from fleet.models import FAILURE_REASONS, Fitting, LooksWrong, Module, ModuleState, Site, SiteKind, Stop
 from fleet.rights import CATALOGUE, CORRECT, LOG, may
+from fleet.today_stock import stock_today
 
 MOST = 12  # lines shown before “all of them”
 VISITS_WITHIN_DAYS = 7
@@ -119,4 +120,5 @@ def records_today(request: Any) -> dict[str, Any]:
         "lead": sentence(request, stopped["stop_count"], len(marks)),
         "failures": failures_by_week(request, today),
         "may_log": may(request.user, LOG),
+        **stock_today(request, today),
     }

@@ -42,6 +42,27 @@ class StockFilter(django_filters.FilterSet):
         return rows if self.form.cleaned_data.get("shows") else kept_parts(rows)
 
 
+class SeenStockFilter(django_filters.FilterSet):
+    """For those who see some of the stores: what lies there, or any part."""
+
+    q = django_filters.CharFilter(label="Number or name", field_name="folded", method=folded)
+    component = SeenChoice(Component, field_name="component", label="Component")
+    shows = django_filters.ChoiceFilter(
+        label="Which", method="which", empty_label="what lies here", choices=[("every", "every part")]
+    )
+
+    class Meta:
+        model = Part
+        fields: list[str] = []
+
+    def which(self, rows: QuerySet[Any], name: str, value: str) -> QuerySet[Any]:
+        return rows
+
+    def filter_queryset(self, queryset: QuerySet[Any]) -> QuerySet[Any]:
+        rows = super().filter_queryset(queryset)
+        return rows if self.form.cleaned_data.get("shows") else rows.exclude(on_hand=0)
+
+
 class MoveFilter(django_filters.FilterSet):
     store = django_filters.CharFilter(label="Store code", method="at_store")
     part = django_filters.CharFilter(label="Part number", method="of_part")

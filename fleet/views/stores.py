@@ -6,24 +6,25 @@ from collections import defaultdict
 from decimal import Decimal
 from typing import Any
 
-from django.db.models import Prefetch
+from django.db.models import BooleanField, Prefetch, Value
 from django.http import HttpResponse
 from django.shortcuts import get_object_or_404, render
 from django.urls import reverse
 from django.utils import timezone
 
 from fleet.formats import counted, long_day, number
-from fleet.forms.stock_filters import StockFilter
+from fleet.forms.stock_filters import SeenStockFilter, StockFilter
 from fleet.forms.stores import StoreForm
 from fleet.models import Book, Part, SiteKind, StockBalance, StockMove, Store, SupplyLine
 from fleet.rights import CATALOGUE, COSTS, ISSUE, STOCK, STORES, may, needs
-from fleet.stock import kept_parts, with_stock
+from fleet.stock import kept_parts, sees_all_stock, with_stock
 from fleet.views.listing import Column, Listing
 from fleet.views.saving import save_form
 from fleet.views.stock_moves import JOINS, move_lines
 
 CRUMBS = [{"name": "Stores", "url": "/stores/"}]
 LATEST = 15
+NOTHING = "Nothing lies in a store of yours yet."
 
 
 def moves_of(part: Any) -> dict[str, Any]:
@@ -31,7 +32,7 @@ def moves_of(part: Any) -> dict[str, Any]:
 
 
 def on_hand_cell(part: Any) -> dict[str, Any]:
-    short = part.on_hand < part.minimum or part.on_hand < 0
+    short = part.on_hand < 0 or (part.whole and part.on_hand < part.minimum)
     return {
         "text": number(part.on_hand),
         "kind": "late" if short else "",
@@ -93,13 +94,13 @@ LIMITS = [
 ]
 
 
-def stock_list(*, orders: bool) -> Listing:
-    """What is short comes first."""
+def stock_list(*, orders: bool, whole: bool) -> Listing:
+    """What is short comes first, for those who see all of it."""
     return Listing(
-        columns=[PART, ON_HAND, WHERE, *(DUE if orders else []), *LIMITS],
+        columns=[PART, ON_HAND, WHERE, *(DUE if orders else []), *(LIMITS if whole else [])],
         what="parts",
         caption="Stock",
-        sort="-missing",
+        sort="-missing" if whole else "part",
         template="stores/page.html",
         empty_state="No part lies in a store of yours.",
         empty_remedy="A planner or manager receives the first ones, or brings in stores.csv and moves.csv.",
@@ -113,22 +114,27 @@ def stores(request: Any) -> HttpResponse:
         "balances", queryset=balances.select_related("store__site").order_by("store__code_order"), to_attr="here"
     )
     parts = with_stock(request.seen(Part), balances, request.seen(SupplyLine)).prefetch_related(shelves)
-    orders = may(request.user, STOCK)
+    whole = sees_all_stock(request.user)
+    parts = parts.annotate(whole=Value(whole, output_field=BooleanField()))
     context = {
         "title": "Stores",
         "stores": request.seen(Store).order_by("code_order"),
-        "lead": stock_sentence(parts),
+        "lead": stock_sentence(parts, whole=whole),
         "actions": stock_actions(request),
     }
-    return stock_list(orders=orders).answer(request, parts, StockFilter, **context)
+    listing = stock_list(orders=may(request.user, STOCK), whole=whole)
+    return listing.answer(request, parts, StockFilter if whole else SeenStockFilter, **context)
 
 
-def stock_sentence(parts: Any) -> str:
+def stock_sentence(parts: Any, *, whole: bool) -> str:
+    if not whole:
+        held = parts.filter(on_hand__gt=0).count()
+        return f"{counted(held, 'part lies', 'parts lie')} in the stores that you see." if held else NOTHING
     kept = kept_parts(parts)
     short = list(kept.filter(missing__gt=0).order_by("-missing").values_list("code", flat=True)[:4])
     count = kept.filter(missing__gt=0).count()
     if not kept.exists():
-        return "Nothing lies in a store of yours yet."
+        return NOTHING
     if not count:
         return "Every part lies at its minimum or above."
     more = f" and {number(count - 3)} more" if count > 3 else ""

@@ -19,7 +19,7 @@ from fleet.formats import counted, long_day, number
 from fleet.forms.errors import add_record_error
 from fleet.forms.stock_filters import DeliveryFilter, SupplyFilter
 from fleet.forms.supply import CallOffForm, DeliveryForm, LineForm, OrderSheet
-from fleet.models import Part, StockMove, Store, SupplyLine, SupplyOrder
+from fleet.models import Part, SiteKind, StockMove, Store, SupplyLine, SupplyOrder
 from fleet.rights import STOCK, needs
 from fleet.stock import days_of, lead_times
 from fleet.views.listing import Column, Listing
@@ -169,7 +169,7 @@ def supply_order(request: Any, code: str) -> HttpResponse:
             "part__code_order")
     )  # fmt: skip
     coming = [line for line in lines if line.due > 0]
-    stores = request.seen(Store).order_by("person", "code_order")
+    stores = sorted(request.seen(Store).select_related("site").order_by("code_order"), key=shelves_first)
     form = DeliveryForm(request.POST if request.method == "POST" else None, lines=coming, stores=stores)
     if request.method == "POST" and form.is_valid():
         try:
@@ -193,6 +193,11 @@ def supply_order(request: Any, code: str) -> HttpResponse:
         "crumbs": IN_ORDERS,
     }
     return render(request, "supply/order.html", context, status=422 if form.is_bound else 200)
+
+
+def shelves_first(store: Store) -> tuple[bool, bool]:
+    """Deliveries go to a depot, seldom to a box at a site or into a van."""
+    return (store.person_id is not None, store.site is None or store.site.kind != SiteKind.DEPOT)
 
 
 def order_sentence(lines: list[Any]) -> str:

@@ -203,6 +203,8 @@ def test_a_crew_sees_its_van_and_no_orders(weir: Carriage, shelf: Store, van: St
     assert "Van of Rosa" in page
     assert "Depot shelf" not in page
     assert "Next delivery" not in page
+    assert "Minimum" not in page  # the whole book's: no matter for one van
+    assert "1\u00a0part lies in the stores that you see." in page
     assert client.get("/stores/SHELF/").status_code == 404
     for address in ("/supply/", "/supply/new/", "/stores/VAN-R/receive/", "/stores/VAN-R/count/"):
         assert client.get(address).status_code == 403, address
