@@ -59,6 +59,7 @@ class Learned:
     stop_share: float
     duty: Duty
     triggers: list[Trigger]
+    unvisited: list[str] = field(default_factory=list)  # sites of which nobody knows how often crews come
     warnings: list[str] = field(default_factory=list)
 
     def design(self, part: str) -> Design:
@@ -90,11 +91,6 @@ def _learn(
     visits, without = visiting(as_of, known_on)
     taken = triggers(component, as_of, known_on)
     designs, warnings = _designs(found, component, out)
-    if without and component.clock:
-        warnings.append(
-            f"How often crews come to {', '.join(without)} is not known: failures there count as found at once. "
-            "Enter the days between visits of the site."
-        )
     by_chance = sum(out.by_part.values())
     how, use = standing(as_of, known_on), duty(component.clock, as_of, known_on)
     return {
@@ -107,6 +103,7 @@ def _learn(
         "stop_share": stop_shares(component.pk, as_of, known_on),
         "duty": [use.common, use.own, use.season],
         "triggers": [each.told() for each in taken],
+        "unvisited": without,
         "warnings": warnings,
     }
 
@@ -134,6 +131,7 @@ def from_told(told: Mapping[str, Any]) -> Learned:
         stop_share=told["stop_share"],
         duty=Duty(*told["duty"]),
         triggers=[Trigger(**each) for each in told["triggers"]],
+        unvisited=list(told["unvisited"]),
         warnings=list(told["warnings"]),
     )
 

@@ -60,7 +60,7 @@ def written(
         "age_profile": age_profile([row for row in running.rows if row.joins == 0]),
         "follows": sorted({(row.part, row.needed) for row in running.rows}),
         "left_out": [{"reason": reason, "count": count} for reason, count in running.left_out],
-        "warnings": [*running.notes, *learned.warnings, *tally.warnings],
+        "warnings": [*running.notes, *unvisited(question, learned), *learned.warnings, *tally.warnings],
     }
 
 
@@ -75,4 +75,15 @@ def age_profile(rows: Iterable[RunningRow]) -> list[dict[str, Any]]:
     return [
         {"part": part, "age_from": band * step, "age_to": (band + 1) * step, "count": count}
         for (part, band), count in sorted(counts.items())
+    ]
+
+
+def unvisited(question: Question, learned: Learned) -> list[str]:
+    """A warning that names sites among those asked for, and no others: a person may see some sites only."""
+    sites = [site for site in learned.unvisited if question.sites is None or site in question.sites]
+    if not sites:
+        return []
+    return [
+        f"How often crews come to {', '.join(sites)} is not known: failures there count as found at once. "
+        "Enter the days between visits of the site."
     ]
