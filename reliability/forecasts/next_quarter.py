@@ -21,6 +21,7 @@ from reliability.forecasts.positions import positions_of
 from reliability.forecasts.question import Question, question_of
 from reliability.forecasts.taken_along import Trigger, parts_taken
 from reliability.forecasts.written import written
+from reliability.kept import kept
 from reliability.life_errors import NothingNamed
 from reliability.lifetimes_from_fleet import lives
 from reliability.running_parts import RunningParts, running_parts
@@ -160,19 +161,29 @@ def _add_taken(tally: Tally, trigger: Trigger, question: Question) -> None:
     )
     if question.component.clock != "days":
         other = replace(other, what_if=replace(other.what_if, duty=question.what_if.duty))
-    failing = tallied(other, running_now(other), learned(other.component, other.as_of, other.known_on))
+    failing = kept("forecast triggers", other.asked(), lambda: _failing(other))
 
-    def more(counts: Counts, failures: Any, share: float) -> Counts:
-        taken = CountDistribution(parts_taken(trigger, failures.pmf, share))
+    def more(counts: Counts, failures: list[float], share: float) -> Counts:
+        taken = CountDistribution(parts_taken(trigger, failures, share))
         return Counts(counts.failures, add_up([counts.parts_used, taken]), counts.planned)
 
     whole = tally.total.failures.mean + 1e-9
-    tally.total = more(tally.total, failing.total.failures, 1.0)
+    tally.total = more(tally.total, failing["total"], 1.0)
     for grouping in ("site", "type"):
-        own, others = tally.groups[grouping], failing.groups[grouping]
-        own.update({label: more(own[label], others[label].failures, 1.0) for label in own if label in others})
+        own, others = tally.groups[grouping], failing[grouping]
+        own.update({label: more(own[label], others[label], 1.0) for label in own if label in others})
     for grouping in ("part", "needed"):
         own = tally.groups[grouping]
         # which design is hit goes by how many of them run
         for label, counts in own.items():
-            own[label] = more(counts, failing.total.failures, min(1.0, counts.failures.mean / whole))
+            own[label] = more(counts, failing["total"], min(1.0, counts.failures.mean / whole))
+
+
+def _failing(other: Question) -> dict[str, Any]:
+    """Probabilities of 0, 1, 2 ... failures of a component, in total and by site and type."""
+    tally = tallied(other, running_now(other), learned(other.component, other.as_of, other.known_on))
+    by_label = {
+        name: {str(label): counts.failures.pmf.tolist() for label, counts in tally.groups[name].items()}
+        for name in ("site", "type")
+    }
+    return {"total": tally.total.failures.pmf.tolist(), **by_label}

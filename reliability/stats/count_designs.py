@@ -14,6 +14,7 @@ from reliability.stats.count_positions import Classes
 from reliability.stats.errors import InvalidArgument
 from reliability.stats.posterior_draws import PosteriorDraws
 
+LEAST_SHAPE, SOON = 2.5, 1.3
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
 
@@ -127,5 +128,10 @@ class DesignDraws:
         shapes, scales = self.shapes[:, used], self.scales[:, used]
         hardest = self.rates[:, used].max(axis=2, initial=0.0) / self.levels[:, used]
         with np.errstate(over="ignore"):
-            sharp = np.maximum(shapes, 2.5) / scales * np.maximum(hardest, 1e-300) ** (1.0 / shapes)
+            # where new parts fail at once the first cells must be fine
+            sharp = (
+                np.where(shapes < SOON, 2.0 * LEAST_SHAPE, np.maximum(shapes, LEAST_SHAPE))
+                / scales
+                * np.maximum(hardest, 1e-300) ** (1.0 / shapes)
+            )
         return sharp.max(axis=1)

@@ -33,8 +33,10 @@ __all__ = ["CountDistribution", "CountForecast", "Counts", "calibrated_predictio
 
 LEAST_CELLS = 12
 MOST_CELLS = 512
+CELLS_A_SPREAD = 2.5  # cells within scale / shape; with twice as many no quantile moves
+CELLS_WITH_CHANGES = 5.0  # where positions leave, or designs change, between cells
 FEW_ROWS = 40
-MANY_RENEWALS = 75.0
+MANY_CELLS = 190.0
 _RARE_HAZARD = 0.25
 
 
@@ -128,7 +130,7 @@ def forecast_counts(
         raise InvalidArgument(f"refit_delay is {refit_delay:g}; it must be at least 0.")
     drawn = DesignDraws.drawn(roles.posteriors, draws, rng, rows.site_labels)
     duty = _duty_factors(duty_spread, draws, len(rows.site_labels), rng)
-    sharpness = drawn.sharpness(_used_designs(rows))
+    sharpness = _cells_a_time(rows) * drawn.sharpness(_used_designs(rows))
     if group_window is not None and not 0 <= group_window < len(edges) - 1:
         raise InvalidArgument(f"group_window is {group_window}; there are {len(edges) - 1} windows, counted from 0.")
     if not 0 <= taken_share <= 1:
@@ -191,6 +193,11 @@ def _duty_factors(spread: float | tuple[float, float], draws: int, sites: int, r
     return factors
 
 
+def _cells_a_time(rows: Rows) -> float:
+    changes = np.isfinite(rows.classes.leave_at).any() or np.isfinite(rows.classes.switch_at).any()
+    return CELLS_WITH_CHANGES if changes else CELLS_A_SPREAD
+
+
 def _used_designs(rows: Rows) -> IntArray:
     classes = rows.classes
     used = np.unique(np.concatenate([classes.running, classes.fitted, classes.later]))
@@ -245,8 +252,11 @@ def _blocks(
 
 
 def _cell_count(horizon: float, sharpness: float, edges: FloatArray) -> int:
-    """Cells fine against the spread of the lives (about scale / shape), with window edges between cells."""
-    least = int(np.clip(np.ceil(5.0 * horizon * sharpness), LEAST_CELLS, MOST_CELLS))
+    """Cells fine against the spread of the lives (about scale / shape), with window edges between cells.
+
+    sharpness: cells a unit of the clock.
+    """
+    least = int(np.clip(np.ceil(horizon * sharpness), LEAST_CELLS, MOST_CELLS))
     for number in range(least, MOST_CELLS + 1):
         if np.abs(edges * number - np.rint(edges * number)).max() < 1e-6:
             return number
@@ -260,12 +270,12 @@ def _chunks(rows: Rows, sharpness: FloatArray) -> list[tuple[IntArray, float]]:
     dozens of failures a position: slow to count, and too uncertain to need every one of them.
     """
     order = np.argsort(sharpness, kind="stable")
-    renewals = rows.classes.horizon.max(initial=0.0) * sharpness[order]
-    cells = np.clip(5.0 * renewals, LEAST_CELLS, MOST_CELLS)
+    wanted = rows.classes.horizon.max(initial=0.0) * sharpness[order]
+    cells = np.clip(wanted, LEAST_CELLS, MOST_CELLS)
     level = np.floor(1.5 * np.log2(cells / LEAST_CELLS)).astype(np.int64)
     chunks = []
     for start, stop in _runs(level):
-        thinning = 8 if renewals[start] > MANY_RENEWALS and stop - start >= 16 else 1
+        thinning = 8 if wanted[start] > MANY_CELLS and stop - start >= 16 else 1
         mine = order[start:stop][thinning // 2 :: thinning]
         work = max(len(rows), 12 * len(rows.classes), 1) * 2.0 * cells[stop - 1]
         size = int(np.clip(1.2e6 / work, 1, mine.size))
