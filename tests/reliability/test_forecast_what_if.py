@@ -208,3 +208,16 @@ def test_every_assumption_is_named() -> None:
         "use times 1.2, replaced as planned at 45 days, N4 from 1 February 2027 with 12 working ones changed a week"
     )
     assert words.assumed(WhatIf(), "days") == ""
+
+
+def test_the_worker_counts_at_the_books_service_level(manager: Client) -> None:
+    from fleet.models import Work
+    from reliability.forecasts.works import count_forecasts
+    from reliability.models import KeptResult
+
+    lived_fleet(6)
+    make_book(service_level=0.9)
+    count_forecasts(Work(), type("Silent", (), {"step": lambda *_: None})())
+    before = KeptResult.objects.filter(kind="forecast").count()
+    shown(manager, "component=NUT")
+    assert KeptResult.objects.filter(kind="forecast").count() == before == 1
