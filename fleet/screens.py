@@ -27,6 +27,7 @@ SCREENS = [
     Screen("Stores", "stores", STORES),
     Screen("Life", "life", LIFE),
     Screen("Forecast", "forecast", LIFE),
+    Screen("Redesigns", "redesigns", LIFE),
 ]
 OFFICE_SCREENS = [
     Screen("Catalogue", "catalogue", CATALOGUE),
