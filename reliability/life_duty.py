@@ -251,7 +251,11 @@ def _meaning(data: Data, ratio: Data) -> str:
 def page(data: Data, *, address: Any = None) -> Data:
     from reliability.charts.duty import duty_figure
 
-    main = main_stratum([each for each in own_effects(data) if each["line"]])
+    first = main_stratum(own_effects(data))
+    assert first is not None
+    of_main = [each for each in data["effects"] if each["group"] == first["group"]]
+    others = [each for each in data["effects"] if each["group"] != first["group"]]
+    main = first if first["line"] else None
     chart = None
     if main:
         chart = {
@@ -263,9 +267,12 @@ def page(data: Data, *, address: Any = None) -> Data:
         }
     return {
         "chart": chart,
-        "tables": [_effect_table(data)],
-        "more_tables": [_site_table(data)] if data["sites"] else [],
-        "more_title": "How hard each site works",
+        "tables": [_effect_table(data, of_main, f"What duty does to life, {parts_of(data, first['group'])}")],
+        "more_tables": [
+            *([_effect_table(data, others, "What duty does to life, the other designs")] if others else []),
+            *([_site_table(data)] if data["sites"] else []),
+        ],
+        "more_title": "How hard each site works" if not others else "The other designs, and how hard each site works",
         "notes": notes(data),
         "how": (
             "Weibull accelerated-life regression of log life on the module's mean strokes a day in service (log, base "
@@ -293,7 +300,7 @@ def notes(data: Data) -> list[str]:
     return told
 
 
-def _effect_table(data: Data) -> Data:
+def _effect_table(data: Data, effects: list[Data], caption: str) -> Data:
     columns = [
         {"key": "group", "label": "Parts"},
         {"key": "clock", "label": "Life counted in"},
@@ -302,14 +309,14 @@ def _effect_table(data: Data) -> Data:
         {"key": "range", "label": f"{data['unit'].capitalize()} a day, tenth to nine tenths", "numeric": True},
     ]
     rows = []
-    for each in data["effects"]:
+    for each in effects:
         shown: Data = {"text": f"cannot tell: {each.get('refused')}"}
         if each["ratio"]:
             shown = {"estimate": each["ratio"], "digits": 2}
         low, high = each.get("duty_low"), each.get("duty_high")
         between = None if low is None or high is None else f"{number(rounded(low))}–{number(rounded(high))}"
         rows.append([parts_of(data, each["group"]), each["clock"], shown, each["failures"], between])
-    return {"columns": columns, "rows": rows, "narrow": "stacked", "caption": "What duty does to life"}
+    return {"columns": columns, "rows": rows, "narrow": "stacked", "caption": caption}
 
 
 def _site_table(data: Data) -> Data:

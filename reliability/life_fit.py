@@ -179,10 +179,15 @@ def warnings(data: Data) -> list[str]:
 
 
 def page(data: Data, *, address: Any = None) -> Data:
+    main = main_stratum(data["groups"])
+    assert main is not None
+    rest = [group for group in data["groups"] if group is not main]
     return {
         "chart": None,
         "warnings": warnings(data),
-        "tables": [_table(data)],
+        "tables": [_table(data, [main])],
+        "more_tables": [_table(data, rest)] if rest else [],
+        "more_title": "The other designs",
         "notes": notes(data),
         "how": (
             "Maximum likelihood each; AICc: Hurvich & Tsai, Biometrika 76 (1989) 297–307; what a difference means: "
@@ -202,13 +207,20 @@ def notes(data: Data) -> list[str]:
             "AICc takes lives as independent; where sites differ it is surer than it should be. The figures here are "
             "of all lives as one population, those of the table above of a typical site."
         )
-    straight = [group for group in data["groups"] if group["bend"] and not group["bend"]["warn"]]
-    if straight and len(straight) == len(data["groups"]):
-        told.append("No bend away from the Weibull line can be shown.")
+    gaps = [
+        percent(group["bend"]["largest_gap"]) + (f" ({group['group']})" if group["group"] != "all" else "")
+        for group in data["groups"]
+        if group["bend"] and not group["bend"]["warn"] and group["bend"].get("largest_gap") is not None
+    ]
+    if gaps:
+        told.append(
+            f"A curve that is free to bend leaves the Weibull line by at most {joined(gaps)} of all parts: within "
+            "chance, or too little to matter."
+        )
     return told
 
 
-def _table(data: Data) -> Data:
+def _table(data: Data, groups: list[Data]) -> Data:
     columns = [
         {"key": "curve", "label": "Curve"},
         {"key": "difference", "label": "AICc above the best", "numeric": True, "digits": 1},
@@ -217,7 +229,7 @@ def _table(data: Data) -> Data:
         {"key": "median", "label": f"Median would be, {data['clock']}", "numeric": True},
     ]
     rows = []
-    for group in data["groups"]:
+    for group in groups:
         for row in group["fits"]:
             name = row["distribution"]
             head = WRITTEN[name] if group["group"] == "all" else f"{group['group']}, {WRITTEN[name]}"
