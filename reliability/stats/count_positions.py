@@ -18,6 +18,7 @@ MOST_EXACT_ROWS = 600  # beyond this many distinct rows the ages of large groups
 SMALL_GROUP = 60  # positions; smaller groups keep their ages, their generating functions may pass through zero
 MOST_HORIZONS = 24  # beyond this many, horizons of a site are moved to shared cells
 NODE_STEP = 0.12
+MANY_LABELS, TABLE = 50_000, 65_521
 NO_DESIGN = np.zeros(1, dtype=np.int64)
 COARSE_STEP = 0.2  # where failures are rare: four-point interpolation is then within half a per cent of their number
 
@@ -213,10 +214,31 @@ def _codes(name: str, labels: Sequence[Any] | None, count: int) -> tuple[IntArra
     if isinstance(labels, np.ndarray) and labels.dtype.kind in "iub":
         distinct, codes = np.unique(labels, return_inverse=True)
         return codes.astype(np.int64), distinct.tolist() or [None]
+    if isinstance(labels, np.ndarray) and labels.dtype.kind == "U" and count > MANY_LABELS:
+        found = _text_codes(np.ascontiguousarray(labels))
+        if found is not None:
+            return found
     listed = labels.tolist() if isinstance(labels, np.ndarray) else list(labels)
     known = {label: number for number, label in enumerate(dict.fromkeys(listed))}
     codes = np.fromiter(map(known.__getitem__, listed), dtype=np.int64, count=count)
     return codes, list(known) or [None]
+
+
+def _text_codes(labels: NDArray[np.str_]) -> tuple[IntArray, list[Any]] | None:
+    """The same for texts of one width, by a table of their remainders; None where two texts share a place in it."""
+    letters = labels.view(np.uint32).reshape(labels.size, -1)
+    key = np.zeros(labels.size, dtype=np.uint64)
+    for column in letters.T:
+        key = key * np.uint64(1_000_003) + column
+    place = (key % np.uint64(TABLE)).astype(np.int64)
+    first = np.full(TABLE, -1, dtype=np.int64)
+    first[place[::-1]] = np.arange(labels.size - 1, -1, -1)
+    leaders = np.sort(first[first >= 0])
+    code = np.empty(TABLE, dtype=np.int64)
+    code[place[leaders]] = np.arange(leaders.size)
+    codes = code[place]
+    names = labels[leaders]
+    return (codes, names.tolist()) if (names[codes] == labels).all() else None
 
 
 def _fresh_parts(

@@ -9,6 +9,7 @@ import pytest
 from scipy.integrate import quad
 
 from reliability.stats import count_positions
+from reliability.stats.count_positions import _text_codes
 from reliability.stats.counts import CountDistribution, CountForecast, forecast_counts
 from reliability.stats.errors import InvalidArgument
 from reliability.stats.lifetimes import Lifetimes
@@ -195,3 +196,12 @@ BAD: dict[str, Callable[[], CountForecast]] = {
 def test_refuses_in_words(name: str) -> None:
     with pytest.raises(InvalidArgument):
         BAD[name]()
+
+
+def test_texts_by_the_hundred_thousand_get_the_codes_that_few_get() -> None:
+    rng = np.random.default_rng(3)
+    labels = np.array([f"site {number}" for number in range(300)])[rng.integers(0, 300, 80_000)]
+    codes, names = _text_codes(labels)
+    known = {label: number for number, label in enumerate(dict.fromkeys(labels.tolist()))}
+    assert names == list(known)
+    assert codes.tolist() == [known[label] for label in labels.tolist()]
