@@ -108,5 +108,5 @@ def _share(
         return float(curve.incidence_at(mode, horizon)), float(lower), float(upper), True
     # none of those watched to the horizon failed by it: the upper limit of a share of which none is seen
     watched = float(number_at_risk(part, horizon))
-    upper = 1.0 - (0.5 - 0.5 * confidence_level) ** (1.0 / watched) if watched > 0.0 else 1.0
-    return 0.0, 0.0, upper, True
+    most = 1.0 - (0.5 - 0.5 * confidence_level) ** (1.0 / watched) if watched > 0.0 else 1.0
+    return 0.0, 0.0, float(most), True

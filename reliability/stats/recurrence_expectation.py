@@ -55,7 +55,7 @@ def renewal_expectation(
     counts as renewed since its own age 0. removals: rate at which parts are taken out for other reasons (planned, taken
     with another), which also makes them new. Errors fall with the square of the cell, (longest history) / cells.
     """
-    survival: Callable[[FloatArray], FloatArray] = getattr(fit, "survival", fit)
+    survival: Callable[[Any], Any] = getattr(fit, "survival", fit)
     count, end = len(histories), float(histories.ends.max())
     ages = np.broadcast_to(np.asarray(entry_ages, dtype=float), (count,))
     if (ages < 0.0).any():
@@ -77,7 +77,7 @@ def renewal_expectation(
 
 
 def _expected_from(
-    survival: Callable[[FloatArray], FloatArray], ages: FloatArray, step: float, cells: int, removals: float
+    survival: Callable[[Any], Any], ages: FloatArray, step: float, cells: int, removals: float
 ) -> FloatArray:
     """Expected failures by each half cell for parts of the given ages at the start, shape (A, 2 cells + 1)."""
     u = step * np.arange(2 * cells + 1)

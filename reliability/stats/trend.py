@@ -44,7 +44,7 @@ def laplace_trend(histories: Histories, *, truncated: str = "time") -> TrendTest
 
     Pooled over units, each with its own window (start, end] of length L and its own rate; "failure": each unit's window
     ends at its last failure, which is not counted. U above 0: worsening. It rejects nearly every young fleet of parts
-    that wear, with no trend of the units at all: see `renewal_trend`.
+    that wear, with no trend of the units at all: see `renewal_trend` and `lewis_robinson_trend`.
     Cox & Lewis, The Statistical Analysis of Series of Events (1966), chapter 3; Ascher & Feingold, Repairable Systems
     Reliability (1984). Raises TooFewFailures without a usable failure.
     """
@@ -80,28 +80,48 @@ def mil_hdbk_189_trend(histories: Histories, *, truncated: str = "time") -> Tren
 
 
 def lewis_robinson_trend(histories: Histories, *, truncated: str = "time") -> TrendTest:
-    """Lewis–Robinson test: Laplace's U over the coefficient of variation of the times between failures.
+    """Lewis–Robinson test within units, pooled: do the times between failures of the same unit grow shorter?
 
-    It allows for wear of the parts where each unit has many failures. With only a few each (less than about ten) it
-    still takes the youth of the fleet for a trend; `renewal_trend` does not.
-    Lewis & Robinson, in Reliability and Biometry (SIAM, 1974) 363-382.
-    Raises TooFewFailures with less than three complete gaps, UndefinedEstimate where all are equal.
+    Given its number of failures, a unit whose parts are renewed alike has its n complete gaps in any order, however
+    good or bad the unit and whatever the life of its parts. U = -sum over units of sum over j of (j - (n + 1) / 2) x
+    gap_j / mean gap, over the root of its permutation variance, normal. For one unit with many failures this is Lewis
+    and Robinson's statistic, Laplace's U over the coefficient of variation, times sqrt(n / (n + 1)); but unlike the
+    latter it does not take the youth of a fleet with few failures a unit for a trend.
+
+    A first gap that began before the observation is left out, and with truncated="failure" nothing changes: the
+    running gap is used by neither. Only units with two complete gaps tell anything.
+    Lewis & Robinson, in Reliability and Biometry (SIAM, 1974) 363-382; Kvaløy & Lindqvist, in Mathematical and
+    Statistical Methods in Reliability (World Scientific, 2003) 171-186 (exchangeable gaps).
+    Raises TooFewFailures where no unit has two complete gaps, UndefinedEstimate where all of a unit's are equal.
     """
-    plain = laplace_trend(histories, truncated=truncated)
+    if truncated not in TRUNCATED:
+        raise InvalidArgument(f"truncated is {truncated!r}; it must be time or failure.")
     complete = ~histories.is_first | (histories.starts[histories.event_units] == 0.0)
-    gaps, weights = histories.gaps[complete], histories.weights[histories.event_units][complete]
-    count = float(weights.sum())
-    if count < 3.0:
+    gaps, owners = histories.gaps[complete], histories.event_units[complete]
+    count = np.bincount(owners, minlength=len(histories))
+    kept = count[owners] >= 2
+    gaps, owners = gaps[kept], owners[kept]
+    if gaps.size == 0:
         raise TooFewFailures(
-            f"Only {count:g} times between failures are complete; the Lewis–Robinson test needs 3. Wait for more.",
-            failures=count,
-            needed=3,
+            "No unit has two complete times between failures, so they cannot be compared within units. Wait for more.",
+            failures=histories.failures,
+            needed=histories.failures + 1,
         )
-    mean = float(weights @ gaps) / count
-    variation = math.sqrt(float(weights @ (gaps - mean) ** 2) / (count - 1.0)) / mean
-    if variation < 1e-9:
+    first = np.append(True, np.diff(owners) > 0)
+    begin = np.flatnonzero(first)
+    sizes = count[owners[begin]].astype(float)
+    order = np.arange(gaps.size) - np.repeat(begin, sizes.astype(int))
+    means = np.add.reduceat(gaps, begin) / sizes
+    shares = gaps / np.repeat(np.where(means > 0.0, means, 1.0), sizes.astype(int))
+    weights = histories.weights[owners[begin]]
+    spread = np.add.reduceat((shares - 1.0) ** 2, begin) / (sizes - 1.0)
+    spread = np.where(spread > 1e-18, spread, 0.0)
+    variance = float(weights @ (sizes * (sizes**2 - 1.0) / 12.0 * spread))
+    if not variance > 0.0:
         raise UndefinedEstimate("All times between failures are equal, so chance has no part in them to test against.")
-    return _normal("Lewis–Robinson", plain.statistic / variation, histories, plain.failures, truncated)
+    centred = order - np.repeat(0.5 * (sizes - 1.0), sizes.astype(int))
+    score = -float(weights @ np.add.reduceat(centred * shares, begin))
+    return _normal("Lewis–Robinson", score / math.sqrt(variance), histories, float(weights @ sizes), truncated)
 
 
 def renewal_trend(histories: Histories, *, entry_ages: ArrayLike = 0, strata: Any = None) -> TrendTest:
@@ -112,7 +132,9 @@ def renewal_trend(histories: Histories, *, entry_ages: ArrayLike = 0, strata: An
     over its standard error, normal: the score test of a factor on the hazard in a modulated renewal process. Valid with
     few failures a unit, late starts and any ends. entry_ages: age of the part in place at the start of each unit's
     observation, scalar or shape (n,); NaN where unknown (that part is left out). strata (n,): units compared only with
-    their like (sites); units that differ for good look like worsening without them.
+    their like (sites). Units that differ for good otherwise look like worsening: bad ones are renewed more often. Left
+    within a stratum with variance 0.2 (0.5) of their hazards they raised the false alarms from 2.5 to 5 (15) %; where
+    units have two failures or more, `lewis_robinson_trend` is proof against it.
 
     Cox, in Stochastic Point Processes (Wiley, 1972) 55-66; Oakes & Cui, Biometrika 81 (1994) 83-90.
     Raises TooFewFailures without a usable failure, UndefinedEstimate where all parts were fitted at one age of their

@@ -149,7 +149,7 @@ def test_positions_are_followed_from_one_part_to_the_next(worked: WorkedFleet) -
     assert "cannot be shown" in data["sentence"]
     page = module.page(data)
     says = {row[0]: row[-1] for row in page["tables"][0]["rows"]}
-    assert says["Lewis–Robinson"].startswith("cannot tell: with fewer than ten failures")
+    assert says["Lewis–Robinson"] == "no trend shown"
     assert {row[0] for row in page["detail"][0]["rows"]} == {
         "modulated renewal",
         "Lewis–Robinson",
@@ -175,6 +175,19 @@ def test_worse_parts_in_older_positions_are_a_trend() -> None:
     data = ask("trend", as_of=day(400))
     assert data["tests"]["modulated renewal"]["p_value"] < 0.001
     assert "fail sooner than equally old parts in younger ones (P under 0.001" in plain(data["sentence"])
+    assert data["sentence"].endswith("it gets worse as positions grow older.")
+
+
+def test_positions_that_only_differ_are_not_called_worse() -> None:
+    """The first test alone takes bad positions, renewed more often, for older ones."""
+    worse = {"p_value": 0.001, "p_worsening": 0.0005, "p_improving": 0.9995}
+    level = {"p_value": 0.6, "p_worsening": 0.3, "p_improving": 0.7}
+    words = BY_NAME["trend"].load().test_words
+    assert "it gets worse" in words({"tests": {"modulated renewal": worse, "Lewis–Robinson": worse}})
+    for within in (level, {"refused": "too few"}):
+        told = words({"tests": {"modulated renewal": worse, "Lewis–Robinson": within}})
+        assert "it gets worse" not in told
+        assert "positions that differ for good would look the same" in told
 
 
 def test_with_chosen_parts_no_curve_is_drawn(worked: WorkedFleet) -> None:

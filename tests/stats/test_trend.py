@@ -83,11 +83,50 @@ def test_truncated_by_failure_the_last_one_only_ends_the_window():
     assert by_failure.failures == 2
 
 
-def test_lewis_robinson_divides_by_the_variation_of_complete_gaps():
-    histories = Histories("ab", [[3, 8, 9], [2, 12]], [0, 1], [10, 15])
-    gaps = [3, 5, 1, 10]  # the second unit's first gap began before its observation
-    variation = np.std(gaps, ddof=1) / np.mean(gaps)
-    assert lewis_robinson_trend(histories).statistic == pytest.approx(laplace_trend(histories).statistic / variation)
+def test_lewis_robinson_over_all_orders_of_each_units_gaps():
+    gaps = {"a": [3.0, 5.0, 1.0], "b": [4.0, 10.0], "c": [2.0]}
+    events = [np.cumsum(row) for row in gaps.values()]
+    result = lewis_robinson_trend(Histories("abc", events, 0, [10, 15, 9]))
+
+    def score(rows) -> float:
+        return -sum((place - (len(row) - 1) / 2) * gap / np.mean(row) for row in rows for place, gap in enumerate(row))
+
+    orders = [
+        score([one, other]) for one in itertools.permutations(gaps["a"]) for other in itertools.permutations(gaps["b"])
+    ]
+    assert np.mean(orders) == pytest.approx(0.0, abs=1e-12)
+    assert result.statistic == pytest.approx(score([gaps["a"], gaps["b"]]) / np.std(orders))
+    assert result.failures == 5
+
+
+def test_lewis_robinson_of_one_unit_is_laplace_over_the_variation_of_gaps():
+    gaps = np.random.default_rng(55).weibull(2.0, 40) * 10.0
+    histories = Histories("a", [np.cumsum(gaps)], 0, [gaps.sum()])
+    classical = laplace_trend(histories, truncated="failure").statistic / (gaps.std(ddof=1) / gaps.mean())
+    assert lewis_robinson_trend(histories).statistic == pytest.approx(classical * math.sqrt(40 / 41))
+
+
+def test_lewis_robinson_leaves_out_a_gap_that_began_before_the_observation():
+    late = lewis_robinson_trend(Histories("a", [[12, 14, 19, 20]], 10, 30))
+    assert late.statistic == pytest.approx(lewis_robinson_trend(Histories("a", [[2, 7, 8]], 0, 16)).statistic)
+
+
+def test_positions_that_differ_for_good_are_no_trend_within_units():
+    rejected = np.zeros(2)
+    runs = 300
+    for number in range(runs):
+        rng = np.random.default_rng([56, number])
+        scales = 60.0 * rng.gamma(2.0, 0.5, 50) ** -0.4
+        owners, times = [], []
+        for unit in range(50):
+            now = 0.0
+            while (now := now + scales[unit] * rng.weibull(2.5)) < 300.0:
+                owners.append(unit)
+                times.append(now)
+        histories = Histories.from_rows(range(50), 0, 300, owners, times)
+        result = lewis_robinson_trend(histories)
+        rejected += [result.p_worsening < 0.05, result.p_improving < 0.05]
+    assert (rejected / runs < 0.09).all()  # 5 % and three standard errors
 
 
 def test_part_lives_between_failures():
@@ -125,6 +164,11 @@ def young_fleet(rng, count=60, longest=110.0, shape=2.5):
     return simulated(rng, starts, ends, ages, shape=shape), ages
 
 
+def all_from_new(histories: Histories) -> Histories:
+    """As many positions with the same failures, watched from new."""
+    return Histories.from_rows(histories.units, 0, histories.ends, histories.event_units, histories.event_times)
+
+
 def test_renewal_trend_against_loops():
     rng = np.random.default_rng(52)
     histories, ages = young_fleet(rng, 25)
@@ -149,24 +193,21 @@ def test_a_part_that_enters_at_the_age_of_a_failure_is_not_yet_at_risk():
 
 
 def test_young_fleets_of_wearing_parts_have_no_trend():
-    """Laplace takes nearly every one for worsening; the renewal test rejects at its rate."""
+    """Laplace takes nearly every one for worsening; the others reject at their rate."""
     rejected = {"renewal": 0, "laplace": 0, "lewis": 0}
     runs = 300
     for number in range(runs):
         histories, ages = young_fleet(np.random.default_rng([53, number]))
         rejected["renewal"] += renewal_trend(histories, entry_ages=ages).p_value < 0.05
-        new = Histories.from_rows(  # as many positions, all from new, without the late ones
-            histories.units, 0, histories.ends, histories.event_units, histories.event_times
-        )
-        rejected["laplace"] += laplace_trend(new).p_value < 0.05
-        rejected["lewis"] += lewis_robinson_trend(new).p_value < 0.05
+        rejected["laplace"] += laplace_trend(all_from_new(histories)).p_value < 0.05
+        rejected["lewis"] += lewis_robinson_trend(histories).p_value < 0.05
     assert rejected["renewal"] / runs < 0.09
     assert rejected["laplace"] / runs > 0.6
-    assert rejected["lewis"] / runs > 0.6
+    assert rejected["lewis"] / runs < 0.09
 
 
 def test_positions_that_wear_out_parts_ever_faster_are_found():
-    found = 0
+    found = np.zeros(2)
     for number in range(40):
         rng = np.random.default_rng([54, number])
         owners, times = [], []
@@ -177,9 +218,8 @@ def test_positions_that_wear_out_parts_ever_faster_are_found():
                 times.append(now)
                 scale = max(0.85 * scale, 8.0)
         histories = Histories.from_rows(range(60), 0, 200, owners, times)
-        result = renewal_trend(histories)
-        found += result.p_worsening < 0.025
-    assert found > 35
+        found += [renewal_trend(histories).p_worsening < 0.025, lewis_robinson_trend(histories).p_worsening < 0.025]
+    assert (found > 35).all()
 
 
 class TestRefusals:
@@ -193,8 +233,8 @@ class TestRefusals:
             laplace_trend(Histories("a", [[4]], 0, 10), truncated="failure")
 
     def test_gaps_too_few_or_all_equal(self):
-        with pytest.raises(TooFewFailures, match="needs 3"):
-            lewis_robinson_trend(Histories("a", [[4, 6]], 0, 10))
+        with pytest.raises(TooFewFailures, match="two complete"):
+            lewis_robinson_trend(Histories("ab", [[4, 6], [8]], [1, 0], 10))
         with pytest.raises(UndefinedEstimate, match="equal"):
             lewis_robinson_trend(Histories("a", [[3, 6, 9]], 0, 10))
 
