@@ -20,9 +20,12 @@ from numpy.typing import ArrayLike, NDArray
 from scipy.special import gammainc, gammaln
 
 from reliability.stats.errors import InvalidArgument
-from reliability.stats.replacement_visits import best_visit_age
+from reliability.stats.replacement_posterior import ReplacementCosts, replacement_costs
+from reliability.stats.replacement_visits import best_visit_age, check_costs
 
 FloatArray = NDArray[np.float64]
+
+__all__ = ["BestAge", "ReplacementCosts", "best_age_of_life", "best_replacement_age", "cost_rates", "replacement_costs"]
 
 _HALVINGS = 200
 _LOG_Z = 700.0  # exp of it is the largest that floats hold
@@ -185,10 +188,3 @@ def _log_mean(shape: FloatArray) -> FloatArray:
 def _check_life(shape: float, scale: float) -> None:
     if not (isfinite(shape) and isfinite(scale) and shape > 0 and scale > 0):
         raise InvalidArgument(f"shape is {shape:g} and scale {scale:g}; both must be above 0.")
-
-
-def check_costs(planned_cost: float, failure_cost: float) -> None:
-    if not (isfinite(planned_cost) and isfinite(failure_cost) and planned_cost > 0 and failure_cost > 0):
-        raise InvalidArgument(
-            f"planned_cost is {planned_cost:g} and failure_cost {failure_cost:g}; both must be above 0."
-        )

@@ -18,8 +18,7 @@ from scipy.special import log_ndtr
 
 from reliability.stats.errors import InvalidArgument
 from reliability.stats.posterior_draws import PosteriorDraws
-from reliability.stats.replacement import check_costs
-from reliability.stats.replacement_visits import visit_cost_rates
+from reliability.stats.replacement_visits import check_costs, visit_cost_rates
 
 FloatArray = NDArray[np.float64]
 

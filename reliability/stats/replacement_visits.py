@@ -10,10 +10,12 @@ Applied Probability Models, ch. 5). The waits are cut into cells with the lives'
 from __future__ import annotations
 
 from collections.abc import Callable
-from math import ceil
+from math import ceil, isfinite
 
 import numpy as np
 from numpy.typing import NDArray
+
+from reliability.stats.errors import InvalidArgument
 
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
@@ -22,6 +24,13 @@ Survival = Callable[[FloatArray], FloatArray]
 FINE, COARSE = 64, 16  # cells of the wait, for one life and for many draws of it
 PLACES = 30  # cells times visits stay below so many times the cells: many visits need fewer cells each
 MOST_VISITS = 160  # with so many visits up to an age any wait is as likely
+
+
+def check_costs(planned_cost: float, failure_cost: float) -> None:
+    if not (isfinite(planned_cost) and isfinite(failure_cost) and planned_cost > 0 and failure_cost > 0):
+        raise InvalidArgument(
+            f"planned_cost is {planned_cost:g} and failure_cost {failure_cost:g}; both must be above 0."
+        )
 
 
 def best_visit_age(
