@@ -258,10 +258,10 @@ def page(data: Data, *, address: Any = None) -> Data:
             "Mean cumulative function with Lawless and Nadeau's robust variance (Technometrics 37 (1995) 158–168), the "
             "positions of a module taken together. Renewal: Cox, Renewal Theory (1962), with the fitted life of the "
             "same parts, each site with its own multiplier. First test: score test in a modulated renewal process (Cox "
-            "1972; Oakes & Cui, Biometrika 81 (1994) 83–90). Bad positions are renewed more often, "
-            "and would pass for older ones in it; the Lewis–Robinson test (1974), taken within positions, compares each "
-            "with itself alone. Laplace's test and that of MIL-HDBK-189 ask "
-            "against a constant rate: parts that wear fail it without any trend."
+            "1972; Oakes & Cui, Biometrika 81 (1994) 83–90). Bad positions are renewed more often, and would pass for "
+            "older ones in it; the Lewis–Robinson test (1974), taken within positions, compares each with itself "
+            "alone. Laplace's test and that of MIL-HDBK-189 ask against a constant rate: parts that wear fail it "
+            "without any trend."
         ),
     }
 
