@@ -118,7 +118,8 @@ def cumulative_incidence(
 
 def _mode_codes(lifetimes: Lifetimes, modes: ArrayLike) -> tuple[tuple[Any, ...], IntArray]:
     """The labels of modes that occur, in order, and each row's place among them (0 where it did not fail)."""
-    given = list(modes) if not isinstance(modes, np.ndarray) else modes.tolist()
+    labels: Any = modes
+    given: list[Any] = list(labels) if not isinstance(labels, np.ndarray) else labels.tolist()
     if len(given) != len(lifetimes):
         raise InvalidArgument(f"{len(given)} modes are given for {len(lifetimes)} rows; give one for each.")
     failed = [mode for mode, observed in zip(given, lifetimes.observed, strict=True) if observed]

@@ -61,14 +61,14 @@ class LifeFit:
         """The age by which the share `probability` has failed (0.1 gives B10); a float, or an array as given."""
         share = np.asarray(probability, dtype=float)
         if not ((share > 0.0) & (share < 1.0)).all():
-            raise InvalidArgument(f"The share failed is {probability}; it must lie between 0 and 1.")
+            raise InvalidArgument(f"The share failed is {share.tolist()}; it must lie between 0 and 1.")
         return plain_number(self._quantile(share))
 
     def survival(self, age: ArrayLike) -> Any:
         """S(age), the share still good at the age; a float, or an array as given."""
         ages = np.asarray(age, dtype=float)
         if not (ages >= 0.0).all():
-            raise InvalidArgument(f"The age is {age}; it must be at least 0.")
+            raise InvalidArgument(f"The age is {ages.tolist()}; it must be at least 0.")
         return plain_number(self._survival(ages))
 
     @property

@@ -126,7 +126,7 @@ class LifeRegression:
         """S(age) at these covariates; a float, or an array as given."""
         ages = np.asarray(age, dtype=float)
         if not (ages >= 0.0).all():
-            raise InvalidArgument(f"The age is {age}; it must be at least 0.")
+            raise InvalidArgument(f"The age is {ages.tolist()}; it must be at least 0.")
         centre = float(self._row(covariates) @ np.array(list(self.coefficients.values())))
         with np.errstate(divide="ignore", over="ignore", under="ignore"):
             z = (np.log(ages) - centre) / self.scale

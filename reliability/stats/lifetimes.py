@@ -12,7 +12,8 @@ from numpy.typing import ArrayLike, NDArray
 
 from reliability.stats.errors import InvalidLifetimes
 
-FloatArray = NDArray[np.float64]
+# of float64; numpy's own stubs take sums of weights for whole numbers, so more cannot be said
+FloatArray = NDArray[Any]
 BoolArray = NDArray[np.bool_]
 IntArray = NDArray[np.int64]
 
@@ -159,7 +160,8 @@ class Lifetimes:
         """The rows where mask (booleans or row numbers) says so. Raises InvalidLifetimes where none is left."""
         index = np.asarray(mask)
         columns = {name: _take(column, index) for name, column in self._columns().items()}
-        if columns["durations"].size == 0:
+        kept = columns["durations"]
+        if kept is None or kept.size == 0:
             raise InvalidLifetimes("No life is left after this choice. Choose fewer restrictions.")
         return self._trusted(columns)
 

@@ -94,17 +94,19 @@ class LognormalFit(LifeFit):
     def _curve(self, quantity: Quantity) -> tuple[Curve, Scale, tuple[float, float] | None]:
         kind, number = split_quantity(quantity)
         # the level is z at the reference age: solve for the age from the fitted pair
-        common = {"log_reference": self.mu + self._best[1] * self.shape, "free_limits": LOG_STEEPNESS_LIMITS}
+        log_reference, limits = self.mu + self._best[1] * self.shape, LOG_STEEPNESS_LIMITS
         if kind == "shape":
             return ShapeCurve(), SIGMA, LOG_STEEPNESS_LIMITS
         if kind == "scale":
-            return QuantileCurve(**common, log_hazard=0.0), LOG, None
+            return QuantileCurve(log_reference=log_reference, free_limits=limits, log_hazard=0.0), LOG, None
         if kind == "mean":
-            return LognormalMeanCurve(**common), LOG, None
+            return LognormalMeanCurve(log_reference=log_reference, free_limits=limits), LOG, None
         if kind == "quantile":
-            return QuantileCurve(**common, log_hazard=float(special.ndtri(number))), LOG, None
+            deviate = float(special.ndtri(number))
+            return QuantileCurve(log_reference=log_reference, free_limits=limits, log_hazard=deviate), LOG, None
         if kind == "survival":
-            return SurvivalCurve(**common, log_age=math.log(number)), NORMAL_SURVIVAL, None
+            curve = SurvivalCurve(log_reference=log_reference, free_limits=limits, log_age=math.log(number))
+            return curve, NORMAL_SURVIVAL, None
         raise unknown_quantity(quantity)
 
 

@@ -55,7 +55,8 @@ class Curve(Protocol):
     The value is psi, the quantity on a scale without ends (its log; log(-log S) for a survival).
     """
 
-    free_limits: tuple[float, float]
+    @property
+    def free_limits(self) -> tuple[float, float]: ...
 
     def value_of(self, x: float, y: float) -> float: ...
 

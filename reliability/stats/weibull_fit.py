@@ -203,17 +203,18 @@ def weibull_curve(
 ) -> tuple[Curve, Scale, tuple[float, float] | None]:
     """The curve of constant quantity, the way back from its psi, and how far psi may be searched."""
     kind, number = split_quantity(quantity)
-    common = {"log_reference": log_reference, "free_limits": log_shapes}
     if kind == "shape":
         return ShapeCurve(), LOG, log_shapes
     if kind == "scale":
-        return QuantileCurve(**common, log_hazard=0.0), LOG, None
+        return QuantileCurve(log_reference=log_reference, free_limits=log_shapes, log_hazard=0.0), LOG, None
     if kind == "mean":
-        return MeanCurve(**common), LOG, None
+        return MeanCurve(log_reference=log_reference, free_limits=log_shapes), LOG, None
     if kind == "quantile":
-        return QuantileCurve(**common, log_hazard=math.log(-math.log1p(-number))), LOG, None
+        log_hazard = math.log(-math.log1p(-number))
+        return QuantileCurve(log_reference=log_reference, free_limits=log_shapes, log_hazard=log_hazard), LOG, None
     if kind == "survival":
-        return SurvivalCurve(**common, log_age=math.log(number)), LOG_LOG_SURVIVAL, None
+        curve = SurvivalCurve(log_reference=log_reference, free_limits=log_shapes, log_age=math.log(number))
+        return curve, LOG_LOG_SURVIVAL, None
     raise unknown_quantity(quantity)
 
 

@@ -59,11 +59,13 @@ class WeibullLikelihood:
         sum0, sum1, sum2 = self._hazard_sums(shape, level)
         failures, tilt = self.exact_failures, shape * self.sum_log_exact
         value = failures * (log_shape + level) + tilt + self.constant - sum0
-        terms = (value, failures + tilt - sum1, failures - sum0, tilt - sum1 - sum2, -sum1, -sum0)
+        by_shape, by_level = failures + tilt - sum1, failures - sum0
+        shape_twice, both, level_twice = tilt - sum1 - sum2, -sum1, -sum0
         if self.intervals is not None:
             more = interval_terms(self.intervals, shape, level)
-            terms = tuple(a + b for a, b in zip(terms, more, strict=True))
-        return terms if math.isfinite(terms[0]) else (-math.inf, *terms[1:])
+            value, by_shape, by_level = value + more[0], by_shape + more[1], by_level + more[2]
+            shape_twice, both, level_twice = shape_twice + more[3], both + more[4], level_twice + more[5]
+        return value if math.isfinite(value) else -math.inf, by_shape, by_level, shape_twice, both, level_twice
 
     def _hazard_sums(self, shape: float, level: float) -> tuple[float, float, float]:
         """Sums over the signed terms of exp(w), exp(w) y and exp(w) y^2, y = shape x."""
@@ -106,7 +108,8 @@ def interval_terms(rows: IntervalRows, shape: float, level: float) -> PlaneTerms
     and 1 however short or early the interval: no difference of nearly equal numbers is taken.
     """
     weights = rows.weights
-    return tuple(float(term @ weights) for term in interval_row_terms(rows, shape, level))
+    a, b, c, d, e, f = (float(term @ weights) for term in interval_row_terms(rows, shape, level))
+    return a, b, c, d, e, f
 
 
 def interval_row_terms(
