@@ -3,11 +3,13 @@
 from __future__ import annotations
 
 import datetime as dt
+import io
 import uuid
 from collections.abc import Iterator
 from typing import Any
 
 import pytest
+from django.core.management import CommandError, call_command
 from django.utils import timezone
 
 from fleet.actions.count_stock import count_stock
@@ -216,6 +218,19 @@ def test_balances_are_made_again_from_the_ledger(weir: Carriage, shelf: Store, v
     assert wrong_balances() == {key: (7, 5), other: (1, 0)}
     assert rebuild_balances() == {key: (7, 5), other: (1, 0)}
     assert wrong_balances() == {}
+    assert lies(shelf, weir) == 5
+
+
+def test_the_command_tells_and_repairs(weir: Carriage, shelf: Store) -> None:
+    stock(shelf, weir.n1, 5)
+    out = io.StringIO()
+    call_command("check_stock", stdout=out)
+    assert "Every balance is what the moves add up to." in out.getvalue()
+    StockBalance.objects.filter(store=shelf).update(on_hand=7)
+    with pytest.raises(CommandError, match="1 balances differ"):
+        call_command("check_stock", "--json", stdout=out)
+    call_command("check_stock", "--repair", stdout=out)
+    assert f"DEPOT  {weir.n1.code} (new): 7 shown, 5 by the moves" in out.getvalue()
     assert lies(shelf, weir) == 5
 
 
