@@ -96,18 +96,27 @@ def design_lives(component: str, as_of: dt.date) -> dict[str, dict[str, Any]]:
 
 
 def learn(component: str, as_of: dt.date) -> dict[str, dict[str, Any]]:
-    from reliability.forecasts.learned import Learned
     from reliability.lifetimes_from_fleet import lives
 
     found = lives(component, by="part", as_of=as_of)
-    if found.lifetimes is None:
+    everything = found.lifetimes
+    if everything is None:
         return {}
-    learned = Learned(found)
-    designs = {part: drawn(learned.posterior(part), learned.failures(part)) for part in found.groups}
+    designs = {
+        part: drawn(posterior_of(everything.subset(everything.groups == part)), found.count("failed", group=part))
+        for part in found.groups
+    }
     if len(found.groups) == 1:
         return {**designs, "": designs[found.groups[0]]}
     # A name that no part has: the design without a life of its own borrows its component's.
-    return {**designs, "": drawn(learned.posterior(""), learned.failures())}
+    return {**designs, "": drawn(posterior_of(everything), found.count("failed"))}
+
+
+def posterior_of(lifetimes: Any) -> Any:
+    """With two or more sites they may differ."""
+    from reliability.stats.posterior import weibull_posterior
+
+    return weibull_posterior(lifetimes, site_spread=len(lifetimes.site_labels) > 1)
 
 
 def drawn(posterior: Any, failures: int) -> dict[str, Any]:
