@@ -215,22 +215,40 @@ def _series_sums(
     site, weights, count = intervals.site[short], intervals.rows.weights[short], intervals.first_row.size
     log_d, m, m_slope = log_difference[short], ratio[short], curl[short]
 
-    def by_site(values: FloatArray) -> FloatArray:
-        return np.bincount(site, weights=values, minlength=count)[:, None]
-
-    lives, slope = by_site(weights), by_site(weights * m)
-    total = np.zeros((6, *u.shape))
-    total[0] = lives * u + by_site(weights * log_d)
-    total[1], total[2], total[3] = slope, lives, by_site(weights * m_slope)
-    z = np.exp(u)
-    for power, factor in SERIES:
-        powered = weights * np.exp(power * log_d)
-        z_power = factor * z**power
-        plain, first = by_site(powered) * z_power, by_site(powered * m) * (power * z_power)
-        second = by_site(powered * (power**2 * m * m + power * m_slope)) * z_power
-        for index, term in enumerate((plain, first, power * plain, second, power * first, power**2 * plain)):
-            total[index] += term
+    # the rows are sorted by site
+    begins = np.flatnonzero(np.append(True, np.diff(site) > 0))
+    powers = np.array([power for power, _ in SERIES], dtype=float)[:, None]
+    factors = np.array([factor for _, factor in SERIES])
+    powered = weights * _powers_of(np.exp(log_d)[None])[0]
+    rows = np.concatenate(
+        [
+            powered,
+            powered * m,
+            powered * (powers**2 * m * m + powers * m_slope),
+            weights * np.stack([np.ones_like(m), log_d, m, m_slope]),
+        ]
+    )
+    sums = np.zeros((rows.shape[0], count))
+    sums[:, site[begins]] = np.add.reduceat(rows, begins, axis=1)
+    plain, first, second = sums[: 3 * len(SERIES)].reshape(3, len(SERIES), count)
+    lives, log_sum, slope, slope_twice = sums[3 * len(SERIES) :, :, None]
+    # coefficients (C, 6, powers) of the six terms times the powers of z (C, powers, ...): one product of matrices
+    terms = np.stack([plain, powers * first, powers * plain, second, powers**2 * first, powers**2 * plain])
+    total = np.moveaxis((terms.transpose(2, 0, 1) * factors) @ _powers_of(np.exp(u)), 1, 0)
+    total[0] += lives * u + log_sum
+    total[1] += slope
+    total[2] += lives
+    total[3] += slope_twice
     return total
+
+
+def _powers_of(z: FloatArray) -> FloatArray:
+    """z to the powers of the series, shape (C, powers, ...), by multiplying on."""
+    square = z * z
+    made = [z, square]
+    while len(made) < len(SERIES):
+        made.append(made[-1] * square)
+    return np.stack(made, axis=1)
 
 
 def _tops(
