@@ -86,7 +86,8 @@ def fit_weibull_with_site_spread(lifetimes: Lifetimes, *, spread_prior: float = 
     Hazards of site s are multiplied by z_s ~ Gamma with mean 1 and variance nu; nu has an exponential prior with mean
     `spread_prior`, over which the likelihood is averaged. shape and scale maximise that likelihood, and the
     likelihood-ratio intervals are taken on it: they speak of the typical site, z = 1. In simulations with 16 sites they
-    held the typical site's median at their rate (see the coverage benchmark), where independent lives did not.
+    held the typical site's median at their rate (see the coverage benchmark), where independent lives did not. For a
+    spread between modules, or positions, give their labels as `sites`: bad ones leave more lives in the records.
     Raises InvalidArgument without two sites, UndefinedEstimate where shape and spread cannot be told apart, else as
     `fit_weibull`.
     """
