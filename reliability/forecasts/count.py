@@ -30,13 +30,7 @@ MOST_POSITIONS = 20_000  # in a simulation
 def is_simulated(question: Question) -> bool:
     """Whether the exact count does not cover what is assumed."""
     assumed = question.what_if
-    return assumed.retrofit_a_week is not None or 0 < switch_day(question) < question.span
-
-
-def switch_day(question: Question) -> int:
-    """Days from the start of the count to the day from which the superseding part goes in; 0: from the start."""
-    begin = question.what_if.superseding_from
-    return 0 if begin is None else max((begin - question.start).days, 0)
+    return assumed.retrofit_a_week is not None or 0 < question.switch_day < question.span
 
 
 def edges_of(question: Question) -> tuple[list[int], tuple[int, int]]:
@@ -60,7 +54,7 @@ def count(question: Question, learned: Learned, positions: Positions) -> CountFo
     windows, stretch = edges_of(question)
     labels = [positions.column(name) for name in LABELS]
     return forecast_counts(
-        designs_of(question, learned, positions),
+        designs_of(learned),
         positions.ages,
         positions.horizons,
         weights=positions.weights,
@@ -76,12 +70,9 @@ def count(question: Question, learned: Learned, positions: Positions) -> CountFo
     )
 
 
-def designs_of(question: Question, learned: Learned, positions: Positions) -> dict[str, Any]:
-    """Draws of every design in play, the superseding one last whether it is in play or not."""
-    labels = {learned.label(name) for place in positions.places for name in (place.part, place.needed)}
-    assumed = question.what_if.superseding
-    ordered = sorted(labels - {assumed})
-    return {label: learned.design(label).life for label in [*ordered, *({learned.label(assumed)} if assumed else ())]}
+def designs_of(learned: Learned) -> dict[str, Any]:
+    """Draws of every design, in an order that no assumption changes: a what-if and its base case share them."""
+    return {label: design.life for label, design in sorted(learned.designs.items())}
 
 
 def draws_for(learned: Learned, positions: Positions) -> int:
@@ -100,8 +91,7 @@ def settings_of(question: Question, learned: Learned, positions: Positions) -> d
     import numpy as np
 
     assumed = question.what_if.superseding
-    at_once = assumed is not None and switch_day(question) == 0
-    fitted = [learned.label(assumed if at_once else place.needed) for place in positions.places]
+    fitted = [learned.label(place.needed) for place in positions.places]
     removed = [learned.design(place.part) for place in positions.places]
     upgraded = [place.part != place.needed for place in positions.places]
     rates = [each.removals + each.upgrades * yes for each, yes in zip(removed, upgraded, strict=True)]
@@ -118,9 +108,9 @@ def settings_of(question: Question, learned: Learned, positions: Positions) -> d
         "duty_spread": learned.duty.spread,
         "refit_delay": 0.5 if question.component.clock == "days" else 0.0,
     }
-    if assumed is not None and not at_once and switch_day(question) < question.span:
+    if assumed is not None and 0 < question.switch_day < question.span:
         settings["later_designs"] = [learned.label(assumed)] * len(positions)
-        settings["switch_at"] = np.array([place.pace * switch_day(question) for place in positions.places])
+        settings["switch_at"] = np.array([place.pace * question.switch_day for place in positions.places])
     return settings
 
 
@@ -141,7 +131,7 @@ def simulate(
     assumed = question.what_if
     retrofit = None
     if assumed.retrofit_a_week is not None:
-        begin = switch_day(question) / question.span
+        begin = question.switch_day / question.span
         if begin < 1.0:
             step = WEEK / question.span
             retrofit = Retrofit(begin, assumed.retrofit_a_week, step)
@@ -150,7 +140,7 @@ def simulate(
     windows, _ = edges_of(question)
     draws = draws or int(np.clip(SIMULATED / max(len(single), 1), FEWEST_SIMULATED, MOST_SIMULATED))
     return simulate_counts(
-        designs_of(question, learned, positions),
+        designs_of(learned),
         single.ages,
         single.horizons,
         windows=windows,
@@ -164,10 +154,17 @@ def simulate(
 
 
 def singles(positions: Positions) -> Positions:
-    """A line a position; fractions of positions are rounded so that their running sum stays right."""
+    """A line a position; fractions of positions are rounded so that their running sum stays right.
+
+    In the order of site, type, part and age, which hardly depends on what is assumed: luck follows the line.
+    """
     import numpy as np
 
-    counts = np.diff(np.rint(np.cumsum(positions.weights)), prepend=0.0).astype(int)
-    line = np.repeat(np.arange(len(positions)), counts)
+    keys = [
+        (place.site, place.type, place.part, age) for place, age in zip(positions.places, positions.ages, strict=True)
+    ]
+    order = np.array(sorted(range(len(keys)), key=keys.__getitem__), dtype=int)
+    counts = np.diff(np.rint(np.cumsum(positions.weights[order])), prepend=0.0).astype(int)
+    line = np.repeat(order, counts)
     places: Sequence[Any] = [positions.places[number] for number in line]
     return Positions(positions.ages[line], positions.horizons[line], np.ones(line.size), list(places))

@@ -102,7 +102,7 @@ def _spread(
         site=row.site,
         type=row.type,
         part=row.part,
-        needed=row.needed,
+        needed=question.superseded_from_start or row.needed,
         pace=pace,
         rule=_rule(row, question, learned),
         every=0.0,

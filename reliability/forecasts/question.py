@@ -56,6 +56,17 @@ class Question:
         """The same without assumptions; the quantity to plan for stays at its level."""
         return replace(self, what_if=WhatIf(service_level=self.what_if.service_level))
 
+    @property
+    def switch_day(self) -> int:
+        """Days from the start of the count to the day from which a superseding part goes in; 0: from the start."""
+        begin = self.what_if.superseding_from
+        return 0 if begin is None else max((begin - self.start).days, 0)
+
+    @property
+    def superseded_from_start(self) -> str | None:
+        """The superseding part, if it is all that goes in."""
+        return self.what_if.superseding if self.switch_day == 0 else None
+
     def seed(self, part: str) -> int:
         """The same question gives the same answer, and every what-if of it takes the same draws."""
         text = f"{self.component.code} {self.begin} {self.days} {self.as_of} {self.sites} {part}"

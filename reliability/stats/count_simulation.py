@@ -38,7 +38,8 @@ class Retrofit:
 class SimulatedCounts:
     """One fleet a draw: counts (draws,) in total, by group label (draws,), by window (draws, windows).
 
-    by_position: failed, used and planned of each position, (draws, positions), within the stretch.
+    by_position: failed, used and planned of each position, (draws, positions), within the stretch; by_later: those of
+    them that the later design followed.
     """
 
     failures: FloatArray
@@ -47,6 +48,7 @@ class SimulatedCounts:
     by_group: dict[Any, FloatArray] = field(default_factory=dict)
     by_window: FloatArray = field(default_factory=lambda: np.zeros((0, 0)))
     by_position: tuple[FloatArray, FloatArray, FloatArray] = field(default=(np.zeros((0, 0)),) * 3, repr=False)
+    by_later: tuple[FloatArray, FloatArray, FloatArray] = field(default=(np.zeros((0, 0)),) * 3, repr=False)
 
 
 def simulate_counts(
@@ -124,6 +126,7 @@ def simulate_counts(
         by_group=by_group,
         by_window=tally.windows,
         by_position=(tally.failed, tally.used, tally.planned),
+        by_later=tally.later,
     )
 
 
@@ -168,8 +171,9 @@ class _Fleet:
 
     def _until(self, state: _State, limit: FloatArray, tally: _Tally) -> None:
         while (here := state.end <= limit).any():
-            tally.count(state.end, here, state.failed, state.planned, state.elsewhere)
             now = state.end + self.refit_delay
+            flags = (state.failed, state.planned, state.elsewhere)
+            tally.count(state.end, here, flags, now > self.switch_at)
             self._renew(state, here, np.where(here, now, 0.0), np.where(now > self.switch_at, 2, 1))
 
     def _renew(self, state: _State, here: BoolArray, now: FloatArray, design: IntArray) -> None:
@@ -190,7 +194,7 @@ class _Fleet:
         due = np.floor(retrofit.each * steps + 1e-9) - np.floor(retrofit.each * (steps - 1) + 1e-9)
         chosen = old & (place <= due)
         nothing = np.zeros_like(old)
-        tally.count(np.broadcast_to(at, old.shape), chosen, nothing, chosen, nothing)
+        tally.count(np.broadcast_to(at, old.shape), chosen, (nothing, chosen, nothing), chosen)
         self._renew(state, chosen, np.broadcast_to(at, old.shape), np.full(old.shape, 2))
 
     def _draw_ends(self, state: _State, where: BoolArray) -> None:
@@ -240,6 +244,7 @@ def _steps(retrofit: Retrofit | None) -> list[float]:
 class _Tally:
     def __init__(self, draws: int, horizon: FloatArray, edges: FloatArray, stretch: tuple[float, float]) -> None:
         self.failed, self.used, self.planned = (np.zeros((draws, horizon.size)) for _ in range(3))
+        self.later = tuple(np.zeros((draws, horizon.size)) for _ in range(3))
         self.windows = np.zeros((draws, edges.size - 1))
         self._horizon, self._edges = horizon, edges
         self._begin, self._end = stretch[0] * horizon, stretch[1] * horizon
@@ -251,12 +256,16 @@ class _Tally:
         self.used += self._inside(at, used)
 
     def count(
-        self, end: FloatArray, here: BoolArray, failed: BoolArray, planned: BoolArray, elsewhere: BoolArray
+        self, end: FloatArray, here: BoolArray, flags: tuple[BoolArray, BoolArray, BoolArray], later: BoolArray
     ) -> None:
+        """flags: failed, replaced by plan, counted elsewhere; later: the later design goes in."""
+        failed, planned, elsewhere = flags
         counted = self._inside(end, here)
-        self.used += counted & ~elsewhere
-        self.failed += counted & failed
-        self.planned += counted & planned
+        for total, followed, own in zip(
+            (self.failed, self.used, self.planned), self.later, (failed, ~elsewhere, planned), strict=True
+        ):
+            total += counted & own
+            followed += counted & own & later
         draw, position = np.nonzero(here & failed)
         share = end[draw, position] / self._horizon[position]
         window = np.clip(np.searchsorted(self._edges, share, side="left") - 1, 0, self._edges.size - 2)

@@ -278,6 +278,16 @@ def test_the_superseding_part_goes_in_from_its_day_on() -> None:
     late, _ = asked(superseding_from=day(AS_OF + 45))
     retrofitted, fewer = asked(superseding_from=day(AS_OF), retrofit_a_week=5.0)
     assert retrofitted < at_once < late < base
+    question = question_of(
+        fleet.component,
+        as_of=day(AS_OF),
+        begin=day(AS_OF),
+        days=91,
+        what_if=WhatIf(superseding="N2", superseding_from=day(AS_OF + 45)),
+    )
+    needed = {row["group"]: row["parts_used"]["mean"] for row in forecast_document(question)["groups"]["needed"]}
+    assert needed["N1"] > 5
+    assert needed["N2"] > 5
     assert difference["mean"] == pytest.approx(at_once - base, abs=1e-6)
     low, high = difference["bands"]["0.8"]
     assert low <= difference["mean"] <= high <= 0
