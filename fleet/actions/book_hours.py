@@ -12,7 +12,7 @@ from fleet.actions.base import once
 from fleet.actions.checks_values import clean_number, need_day
 from fleet.actions.errors import BadValue, NotAllowed, day_words
 from fleet.actions.ledger import not_before
-from fleet.actions.move_job import job_change
+from fleet.actions.move_job import begin_work, job_change
 from fleet.actions.writes import add, save_again
 from fleet.formats import number
 from fleet.models import BenchHours, BenchJob, Person, Role
@@ -39,6 +39,7 @@ def book_hours(
         worked_on = today if day is None else need_day(day, field="day", today=today)
         not_before(worked_on, job.received_on, f"{job.module.code} was received", field="day")
         row = write_hours(job, who(by, person), worked_on, hours, by)
+        begin_work(job, worked_on)
         answer["hours"] = row.pk
     return row
 

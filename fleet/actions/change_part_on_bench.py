@@ -16,7 +16,7 @@ from fleet.actions.fit_part import write_fitting
 from fleet.actions.issue_part import write_issue
 from fleet.actions.ledger import not_before
 from fleet.actions.measured import Measured
-from fleet.actions.move_job import job_change
+from fleet.actions.move_job import begin_work, job_change
 from fleet.actions.rebuild_clocks import rebuild_clocks
 from fleet.actions.remove_part import write_removal
 from fleet.models import BenchJob, Condition, Fitting, Person, Store
@@ -44,6 +44,7 @@ def change_part_on_bench(
         changed_on = place.today if day is None else need_day(day, field="day", today=place.today)
         not_before(changed_on, job.received_on, f"{job.module.code} was received", field="day")
         BenchChange(job, place, changed_on, by).make(entry)
+        begin_work(job, changed_on)
         if entry.part is not None and store is not None:
             write_issue(
                 by=by, store=store, part=entry.part, quantity=1, happened_on=changed_on, visit=None, job=job,

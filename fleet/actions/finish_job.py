@@ -6,13 +6,16 @@ import datetime as dt
 
 from django.utils import timezone
 
+from fleet.actions.base import change
+from fleet.actions.changed_since import check_version
 from fleet.actions.checks_jobs import check_job_days
 from fleet.actions.checks_values import choose, clean_text, need_day
-from fleet.actions.move_job import job_change
+from fleet.actions.move_job import check_open, locked_job
 from fleet.actions.rebuild_clocks import rebuild_clocks
 from fleet.actions.scrap import scrap
 from fleet.actions.writes import save_again
 from fleet.models import BenchJob, Outcome, Person, Placement, Stage
+from fleet.rights import BENCH
 
 
 def finish_job(
@@ -24,14 +27,20 @@ def finish_job(
     note: str = "",
     version: int | None = None,
 ) -> BenchJob:
-    """Ready: it waits in the pool. Scrapped: so is the module. Withdrawn: unmended, it leaves the depot."""
+    """Ready: it waits in the pool. Scrapped: so is the module. Withdrawn: unmended, it leaves the depot.
+
+    Said twice, it is done once.
+    """
     choose(outcome, Outcome, field="outcome", blank=False)
-    with job_change(by=by, job=job, version=version, raises_version=True) as job:
+    with change(by=by, right=BENCH):
+        job = locked_job(job, by)
         today = job.depot.day_of(timezone.now())
         day = today if finished_on is None else need_day(finished_on, field="finished_on", today=today)
+        if (job.outcome, job.finished_on) == (outcome, day):
+            return job
+        check_version(job, version)
+        check_open(job)
         job.stage, job.finished_on, job.outcome, job.waits_for = Stage.FINISHED, day, outcome, None
-        if outcome == Outcome.READY and job.started_on is None:
-            job.started_on = day
         said = clean_text(note, field="note", longest=4000, words="The note")
         job.note = "\n".join(text for text in (job.note, said) if text)
         check_job_days(job)

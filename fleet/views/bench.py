@@ -38,6 +38,11 @@ def age_of(job: BenchJob) -> int:
 
 @needs(BENCH)
 def bench(request: Any) -> HttpResponse:
+    return render(request, "bench/board.html", board(request))
+
+
+def board(request: Any) -> dict[str, Any]:
+    """What the records say of the bench; the page leaves room for what is forecast from it."""
     jobs = list(
         with_hours(request.seen(BenchJob).open()).select_related("module", "depot", "waits_for", "module__type")
     )
@@ -46,7 +51,7 @@ def bench(request: Any) -> HttpResponse:
     way = on_the_way(request.user)
     waiting = list(pool(request.seen(Module)).with_state().order_by("code_order")[: MOST_WAITING + 1])
     weeks = weeks_of(request)
-    context = {
+    return {
         "lead": bench_sentence(jobs, weeks, pool(request.seen(Module)).count()),
         "target": target_sentence(len(jobs)),
         "stages": [{"name": stage.value, "jobs": [job for job in jobs if job.stage == stage]} for stage in STAGES],
@@ -59,7 +64,6 @@ def bench(request: Any) -> HttpResponse:
         "rows": [week_row(week, booked, there, weeks["now"]) for week, booked, there in weeks["rows"]],
         "actions": bench_actions(request),
     }
-    return render(request, "bench/board.html", context)
 
 
 def arriving(request: Any, way: Any) -> list[dict[str, Any]]:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections import defaultdict
+from collections.abc import Sequence
 from decimal import Decimal
 from typing import Any
 
@@ -94,10 +95,10 @@ LIMITS = [
 ]
 
 
-def stock_list(*, orders: bool, whole: bool) -> Listing:
-    """What is short comes first, for those who see all of it."""
+def stock_list(*, orders: bool, whole: bool, more: Sequence[Column] = ()) -> Listing:
+    """What is short comes first, for those who see all of it; `more` columns may tell what is forecast."""
     return Listing(
-        columns=[PART, ON_HAND, WHERE, *(DUE if orders else []), *(LIMITS if whole else [])],
+        columns=[PART, ON_HAND, WHERE, *(DUE if orders else []), *(LIMITS if whole else []), *more],
         what="parts",
         caption="Stock",
         sort="-missing" if whole else "part",
@@ -109,6 +110,10 @@ def stock_list(*, orders: bool, whole: bool) -> Listing:
 
 @needs(STORES)
 def stores(request: Any) -> HttpResponse:
+    return stock_page(request)
+
+
+def stock_page(request: Any, more: Sequence[Column] = (), **told: Any) -> Any:
     balances = request.seen(StockBalance)
     shelves = Prefetch(
         "balances", queryset=balances.select_related("store__site").order_by("store__code_order"), to_attr="here"
@@ -122,8 +127,8 @@ def stores(request: Any) -> HttpResponse:
         "lead": stock_sentence(parts, whole=whole),
         "actions": stock_actions(request),
     }
-    listing = stock_list(orders=may(request.user, STOCK), whole=whole)
-    return listing.answer(request, parts, StockFilter if whole else SeenStockFilter, **context)
+    listing = stock_list(orders=may(request.user, STOCK), whole=whole, more=more)
+    return listing.answer(request, parts, StockFilter if whole else SeenStockFilter, **context, **told)
 
 
 def stock_sentence(parts: Any, *, whole: bool) -> str:

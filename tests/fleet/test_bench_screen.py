@@ -168,7 +168,8 @@ def test_hours_are_corrected_and_struck_out(job: BenchJob, greta: Person, otto: 
     assert client.post(strike, {"version": 2, "reason": "other job"}).status_code == 302
     row.refresh_from_db()
     assert (row.hours, row.struck_out) == (3, "other job")
-    fix = {"version": 1, "received_on": "2024-03-12", "reason": "label"}
+    job.refresh_from_db()
+    fix = {"version": job.version, "received_on": "2024-03-12", "reason": "label"}
     assert client_of(otto).post(reverse("correct_record", args=["job", job.pk]), fix).status_code == 302
     job.refresh_from_db()
     assert job.received_on == on("2024-03-12")

@@ -124,8 +124,20 @@ def test_stages_hours_and_the_end(job: BenchJob, greta: Person, ines: Person, we
     assert (done.stage, done.outcome) == ("finished", "ready")
     assert list(pool(Module.objects.all())) == [weir.module]
     assert turn_round(BenchJob.objects.all()) == [9]
+    assert (
+        finish_job(by=greta, job=job, outcome="ready", finished_on=on("2024-03-20"), version=1) == done
+    )  # a double tap
     with pytest.raises(AlreadyDone, match=r"was finished on 20.March 2024 as ready"):
         book_hours(by=greta, job=job, hours=1, day=on("2024-03-20"))
+
+
+def test_work_begins_with_the_first_hour_or_part(job: BenchJob, greta: Person) -> None:
+    book_hours(by=greta, job=job, hours=1, day=on("2024-03-14"))
+    book_hours(by=greta, job=job, hours=1, day=on("2024-03-13"))
+    job.refresh_from_db()
+    assert (job.started_on, job.stage) == (on("2024-03-13"), "received")
+    done = finish_job(by=greta, job=job, outcome="ready", finished_on=on("2024-03-20"))
+    assert done.started_on == on("2024-03-13")
 
 
 def test_hours_have_their_limits(job: BenchJob, greta: Person, rosa: Person, ines: Person) -> None:
@@ -244,7 +256,7 @@ def test_a_job_is_corrected_within_its_stay(job: BenchJob, ines: Person, greta: 
         correct_record(by=ines, record=job, version=2, changes={"received_on": on("2024-03-01")}, reason="label")
     correct_record(by=ines, record=job, version=2, changes={"finished_on": None, "outcome": ""}, reason="not yet ready")
     job.refresh_from_db()
-    assert (job.stage, job.finished_on) == ("on the bench", None)
+    assert (job.stage, job.finished_on) == ("waiting", None)
 
 
 def test_its_stay_keeps_its_job(job: BenchJob, weir: Carriage, ines: Person) -> None:

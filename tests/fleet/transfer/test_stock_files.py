@@ -349,3 +349,14 @@ def test_what_each_role_takes_out(tmp_path: Path) -> None:
     whole = exported(tmp_path, "all.zip", scope_of(make.make_planner()))
     assert len(whole["moves"]) == 9
     assert whole["supply"][0]["unit_cost"] == "11.50"
+
+
+@pytest.mark.django_db(transaction=True)
+def test_what_one_site_takes_out_comes_in_elsewhere(tmp_path: Path) -> None:
+    bring_in(tmp_path, stocked())
+    write_export(tmp_path / "shed.zip", scope_of(None, Site.objects.get(code="SHED")))
+    empty_book()
+    call_command("import_records", str(tmp_path / "shed.zip"), stdout=io.StringIO())
+    assert [row for row in balances() if row[0] == "SHELF"] == ON_HAND[:3]
+    assert BenchJob.objects.get().hours.count() == 2
+    assert sound()
