@@ -102,7 +102,8 @@ def _numbers(values: ArrayLike, name: str) -> FloatArray:
 
 
 def _refuse_dependent(scaled: FloatArray, labels: tuple[str, ...]) -> None:
-    _, sizes, vectors = np.linalg.svd(scaled, full_matrices=True)
+    # the triangle of a tall table has its singular values, and no side as long as the lives
+    _, sizes, vectors = np.linalg.svd(np.linalg.qr(scaled, mode="r"), full_matrices=True)
     small = np.append(sizes, np.zeros(max(len(labels) - sizes.size, 0))) < DEPENDENT
     if small.any():
         shares = np.abs(vectors[small]).max(axis=0)
@@ -125,7 +126,7 @@ def refuse_separation(lifetimes: Lifetimes, design: Design) -> None:
     matrix = design.matrix
     early = lifetimes.is_interval & (lifetimes.last_good <= lifetimes.entries)
     fixed = lifetimes.observed & ~early
-    if np.linalg.matrix_rank(matrix[fixed]) == matrix.shape[1]:
+    if np.linalg.matrix_rank(np.linalg.qr(matrix[fixed], mode="r")) == matrix.shape[1]:
         return
     up = np.unique(np.concatenate([matrix[~lifetimes.observed], -matrix[early]]), axis=0)
     held = np.unique(matrix[fixed], axis=0)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
@@ -13,6 +14,7 @@ from reliability.stats.lognormal_likelihood import HALF_LOG_TWO_PI, chained_rows
 from reliability.stats.newton import Evaluation
 from reliability.stats.weibull_likelihood import (
     LARGEST_LOG_HAZARD,
+    ROWS_AT_ONCE,
     IntervalRows,
     interval_rows,
     reference_log_age,
@@ -48,6 +50,7 @@ class RegressionLikelihood:
     interval_ends: IntervalRows
     constant: float  # minus the sum of weight log age over exact failures
 
+    @np.errstate(over="ignore", under="ignore", invalid="ignore", divide="ignore")
     def __call__(self, point: FloatArray) -> Evaluation:
         """Value, gradient (1 + p,) and second derivatives (1 + p, 1 + p)."""
         size = point.size
@@ -67,6 +70,7 @@ class RegressionLikelihood:
             return outside(size)
         return value, gradient, hessian
 
+    @np.errstate(over="ignore", under="ignore", invalid="ignore", divide="ignore")
     def by_cluster(self, point: FloatArray, codes: IntArray, count: int) -> tuple[FloatArray, FloatArray]:
         """Gradient (count, 1 + p) and second derivatives (count, 1 + p, 1 + p) of each cluster of lives; codes (n,)."""
         size = point.size
@@ -89,22 +93,31 @@ class RegressionLikelihood:
         hessian[:, lower[0], lower[1]] = hessian[:, lower[1], lower[0]]
         return gradient, hessian
 
-    def _terms(self, point: FloatArray) -> list[tuple[CovariateRows, FloatArray]]:
-        """For each kind of row the value and its derivatives by log shape and level: d_s, d_l, ss, sl, ll; (6, n)."""
+    def _terms(self, point: FloatArray) -> Iterator[tuple[CovariateRows, FloatArray]]:
+        """Rows of one kind, in pieces, with value and derivatives by log shape and level: d_s, d_l, ss, sl, ll."""
         log_shape, shape, weights = float(point[0]), math.exp(point[0]), point[1:]
-        made = []
-        with np.errstate(over="ignore", under="ignore", invalid="ignore", divide="ignore"):
-            if self.exact.x.size:
-                y, level = shape * self.exact.x, self.exact.design @ weights
-                made.append((self.exact, (_normal_rows if self.lognormal else _weibull_rows)(log_shape, y, level)))
-            if self.survival.x.size:
-                y, level = shape * self.survival.x, self.survival.design @ weights
-                made.append((self.survival, (_normal_survival if self.lognormal else _weibull_survival)(y, level)))
-            if self.intervals.x.size:
-                module = lognormal_likelihood if self.lognormal else weibull_likelihood
-                terms = module.interval_row_terms(self.interval_ends, shape, self.intervals.design @ weights)
-                made.append((self.intervals, np.stack(terms)))
-        return made
+        exact = _normal_rows if self.lognormal else _weibull_rows
+        survival = _normal_survival if self.lognormal else _weibull_survival
+        for rows in _pieces(self.exact):
+            yield rows, exact(log_shape, shape * rows.x, rows.design @ weights)
+        for rows in _pieces(self.survival):
+            yield rows, survival(shape * rows.x, rows.design @ weights)
+        for place, rows in enumerate(_pieces(self.intervals)):
+            yield rows, self._interval_terms(place, shape, rows.design @ weights)
+
+    def _interval_terms(self, place: int, shape: float, level: FloatArray) -> FloatArray:
+        part = slice(place * ROWS_AT_ONCE, (place + 1) * ROWS_AT_ONCE)
+        ends = self.interval_ends
+        piece = IntervalRows(ends.log_right[part], ends.log_ratio[part], ends.weights[part])
+        module = lognormal_likelihood if self.lognormal else weibull_likelihood
+        return np.stack(module.interval_row_terms(piece, shape, level))
+
+
+def _pieces(rows: CovariateRows) -> Iterator[CovariateRows]:
+    """So many rows at once that their terms take little memory."""
+    for begin in range(0, rows.x.size, ROWS_AT_ONCE):
+        part = slice(begin, begin + ROWS_AT_ONCE)
+        yield CovariateRows(rows.x[part], rows.weights[part], rows.design[part], rows.owner[part])
 
 
 def outside(size: int) -> Evaluation:
