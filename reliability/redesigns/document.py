@@ -48,7 +48,7 @@ def redesign_document(question: RedesignQuestion) -> dict[str, Any]:
     if posterior is not None:
         chances = {"longer": posterior.probability(), "hope": posterior.probability(question.hope)}
     shape = _old_shape(everything)
-    verdict, path = verdict_of(beside, question.hope, shape, chances["longer"] if chances else None)
+    verdict, path = verdict_of(beside, everything, question.hope, shape, chances["longer"] if chances else None)
     history = _curves(everything, question)
     return {
         **question.asked(),
@@ -59,7 +59,9 @@ def redesign_document(question: RedesignQuestion) -> dict[str, Any]:
         "path": path,
         "chances": chances,
         "chances_missing": reason,
-        "ahead": None if posterior is None else ahead_of(beside, verdict, posterior.effects(), _a_module(beside)),
+        "ahead": None
+        if posterior is None
+        else ahead_of(beside, everything, verdict, posterior.effects(), _a_module(beside)),
         "same_dates": {
             **evidence_of(beside, question.confidence),
             "at_like_duty": _at_like_duty(beside, alike, question.confidence),

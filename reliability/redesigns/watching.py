@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime as dt
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -22,42 +23,55 @@ MOST_LOOKS = 60
 USUAL_SHAPE = 2.0  # of the old parts while hardly one has failed
 
 
-def looks_of(lives: Compared) -> list[Look]:
-    """One look a week since the first site began, at most 60 (then evenly spaced), the last one now."""
+def looks_of(lives: Compared, whole: Compared) -> list[Look]:
+    """One look a week since the first site began, at most 60 (then evenly spaced), the last one now.
+
+    lives are those watched over the same dates, which sites are compared by; whole all lives ever, which each position
+    is compared with its own past by: over the same dates a position has hardly held an old part.
+    """
     if lives.lifetimes is None or not lives.starts:
         return []
     first, last = min(lives.starts.values()).toordinal(), lives.as_of.toordinal()
     weeks = range(first + WEEK, last, WEEK)
     days = list(weeks) if len(weeks) <= MOST_LOOKS else np.linspace(first + WEEK, last, MOST_LOOKS)[:-1].astype(int)
-    found = [_look(lives.as_seen_on(int(day)), dt.date.fromordinal(int(day))) for day in days]
-    return [*(look for look in found if look is not None), *_now(lives)]
+    whole = whole.chosen(~whole.rigs)
+    found = [
+        _look(lives.as_seen_on(int(day)), whole.as_seen_on(int(day)), dt.date.fromordinal(int(day))) for day in days
+    ]
+    return [*(look for look in found if look is not None), *_now(lives, whole)]
 
 
-def _now(lives: Compared) -> list[Look]:
-    look = _look(lives, lives.as_of)
+def _now(lives: Compared, whole: Compared) -> list[Look]:
+    look = _look(lives, whole, lives.as_of)
     return [] if look is None else [look]
 
 
-def _look(lives: Compared, on: dt.date) -> Look | None:
-    if lives.lifetimes is None:
+def _look(lives: Compared, whole: Compared, on: dt.date) -> Look | None:
+    if lives.lifetimes is None or whole.lifetimes is None:
         return None
-    return take_look(
+    by_site = take_look(
         counted_when_found(lives.lifetimes),
         lives.lifetimes.groups == AFTER,
         sites=strata_of(lives, "site"),
-        positions=lives.positions,
         label=on.isoformat(),
     )
+    by_position = take_look(counted_when_found(whole.lifetimes), whole.lifetimes.groups == AFTER, sites=whole.positions)
+    return replace(by_site, position_score=by_position.score, position_information=by_position.information)
 
 
 def ahead_of(
-    lives: Compared, verdict: dict[str, Any], effects: Any, positions_a_module: float, by_week: int = 26
+    lives: Compared,
+    whole: Compared,
+    verdict: dict[str, Any],
+    effects: Any,
+    positions_a_module: float,
+    by_week: int = 26,
 ) -> dict[str, Any] | None:
     """How long until it is clear at the present pace, and how many more modules would make it so by a date.
 
     None where the verdict stands already, or where nothing is gained at the present pace.
     """
-    now = _now(lives)
+    now = _now(lives, whole.chosen(~whole.rigs))
     if verdict["final"] or not now or lives.lifetimes is None:
         return None
     failures, share, rate = _pace(lives)
@@ -107,11 +121,11 @@ def _pace(lives: Compared) -> tuple[float, float, float]:
 
 
 def verdict_of(
-    lives: Compared, hope: float, old_shape: float | None, probability: float | None
+    lives: Compared, whole: Compared, hope: float, old_shape: float | None, probability: float | None
 ) -> tuple[dict[str, Any], list[dict[str, Any]]]:
     """The verdict as plain values, and the path to it: z beside the boundary at each look."""
     planned = planned_information(hope, old_shape or USUAL_SHAPE)
-    looks = looks_of(lives)
+    looks = looks_of(lives, whole)
     path = [
         {
             "on": look.label,

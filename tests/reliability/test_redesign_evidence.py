@@ -15,6 +15,7 @@ from reliability.redesigns.document import redesign_document
 from reliability.redesigns.few import years_a_failure
 from reliability.redesigns.fitting_faults import exact_share, fitting_faults
 from reliability.redesigns.question import RedesignQuestion, question_for
+from reliability.stats.difference import counted_when_found, logrank
 from tests.reliability.rollout_fleet import BEGAN, TODAY, RolloutFleet
 from tests.reliability.small_fleet import SmallFleet, day
 
@@ -85,6 +86,21 @@ def test_the_score_by_site_agrees_with_a_count_by_hand() -> None:
     by_site = document["same_dates"]["tests"][0]
     assert by_site["z"] == pytest.approx(score / variance**0.5, rel=1e-9)
     assert by_site["information"] == pytest.approx(variance, rel=1e-9)
+
+
+def test_positions_are_compared_with_their_own_past_sites_over_the_same_dates_only() -> None:
+    """Over the same dates a position has hardly held an old part, and the positions could not agree for long."""
+    RolloutFleet(1.3)
+    last = redesign_document(question())["path"][-1]
+    whole = all_history(question().component, ["N2"], ["N1"], as_of=day(TODAY))
+    beside = at_the_same_time(question().component, ["N2"], ["N1"], as_of=day(TODAY))
+    by_position, by_site = (
+        logrank(counted_when_found(lives.lifetimes), strata=strata)
+        for lives, strata in ((whole, whole.positions), (beside, beside.lifetimes.sites))
+    )
+    # groups in the order of their names: after, before
+    assert last["position_z"] == pytest.approx(-by_position.z)
+    assert last["z"] == pytest.approx(-by_site.z)
 
 
 def test_sites_switched_all_at_once_are_named() -> None:
