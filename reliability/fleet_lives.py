@@ -5,6 +5,7 @@ from __future__ import annotations
 import datetime as dt
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, field
+from functools import cached_property
 from typing import TYPE_CHECKING, Any, NamedTuple
 
 if TYPE_CHECKING:
@@ -68,16 +69,24 @@ class FleetLives:
     not_measured: int = 0
     life_set: str | None = None
 
-    def count(self, *states: str, group: Any = None) -> int:
-        """Lives in these states, in one group or in all."""
+    @cached_property
+    def _counts(self) -> dict[Any, dict[str, int]]:
+        """Lives by group and state, counted once: there may be thousands of groups."""
         import numpy as np
 
         if self.lifetimes is None:
-            return 0
-        chosen = np.isin(self.states, states)
-        if group is not None:
-            chosen &= self.lifetimes.groups == group
-        return round(float(self.lifetimes.weights[chosen].sum()))
+            return {}
+        states, place = np.unique(self.states, return_inverse=True)
+        labels = self.lifetimes.group_labels.tolist() or [""]
+        keys = self.lifetimes.group_codes * len(states) + place
+        totals = np.bincount(keys, weights=self.lifetimes.weights, minlength=len(labels) * len(states))
+        table = np.rint(totals).astype(int).reshape(len(labels), len(states)).tolist()
+        return {label: dict(zip(states.tolist(), row, strict=True)) for label, row in zip(labels, table, strict=True)}
+
+    def count(self, *states: str, group: Any = None) -> int:
+        """Lives in these states, in one group or in all."""
+        groups = self._counts.values() if group is None else (self._counts.get(group, {}),)
+        return sum(count for each in groups for state, count in each.items() if state in states)
 
 
 def arrays_of(

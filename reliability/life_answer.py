@@ -88,7 +88,7 @@ def document_of(found: FleetLives, confidence: float = 0.95, most: int | None = 
         "life_set": found.life_set,
         "groups": [_group(found, label, confidence, fit=label in fitted) for label in found.groups if label in shown],
         "more_groups": [_counts(found, label) for label in found.groups if label not in shown],
-        "at_risk": _at_risk(found),
+        "at_risk": _at_risk(found, shown),
         "left_out": [{"reason": row.reason, "count": row.count} for row in found.left_out],
         "warnings": list(found.warnings),
     }
@@ -97,13 +97,13 @@ def document_of(found: FleetLives, confidence: float = 0.95, most: int | None = 
     return document
 
 
-def _at_risk(found: FleetLives) -> dict[str, Any]:
+def _at_risk(found: FleetLives, shown: set[str]) -> dict[str, Any]:
     """Parts under observation at a few round ages, by group."""
     from reliability.risk_ages import under_observation
 
     if found.lifetimes is None:
         return {"age": [], "counts": {}}
-    counted = under_observation(found.lifetimes, found.groups)
+    counted = under_observation(found.lifetimes, [label for label in found.groups if label in shown])
     return {**counted, "counts": {label or ALL: counts for label, counts in counted["counts"].items()}}
 
 

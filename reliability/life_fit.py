@@ -214,8 +214,8 @@ def notes(data: Data) -> list[str]:
     ]
     if gaps:
         told.append(
-            f"A curve that is free to bend leaves the Weibull line by at most {joined(gaps)} of all parts: within "
-            "chance, or too little to matter."
+            f"The widest gap between the Weibull line and a curve free to bend, in parts of a hundred: {joined(gaps)}; "
+            "within chance, or too little to matter."
         )
     return told
 

@@ -20,7 +20,7 @@ if TYPE_CHECKING:
 ALL = "all"
 FEWEST_FAILURES = 5  # below, no maximum-likelihood shape is shown
 MOST_STRATA = 4  # designs that a panel treats one by one
-HEAD = ("component", "component_name", "clock", "as_of", "confidence", "by")
+HEAD = ("component", "component_name", "clock", "as_of", "confidence", "by", "modes", "mode_names")
 
 Data = dict[str, Any]
 
@@ -103,6 +103,8 @@ class PanelQuestion:
             "as_of": found.as_of.isoformat(),
             "confidence": self.confidence,
             "by": found.by,
+            "modes": list(found.modes),
+            "mode_names": found.mode_names,
         }
 
 
@@ -114,7 +116,14 @@ def panel_document(component: str, name: str, *, mine: set[str] | None = None, *
     data: Data = kept(f"life {name}", question, lambda: {**asked.head(), **panel.answer(asked)})
     if mine is not None and hasattr(panel, "as_seen"):
         data = panel.as_seen(data, mine)
-    return {**data, "sentence": data.get("refused") or panel.sentence(data)}
+    return {**data, "sentence": data.get("refused") or condition_of(data, name) + panel.sentence(data)}
+
+
+def condition_of(data: Data, name: str) -> str:
+    """“If only thread worn out acted: ”; the panel of the modes shows them all."""
+    from reliability.wording import only_modes
+
+    return "" if name == "modes" else only_modes(data)
 
 
 def question_of(component: str, *, confidence: float = 0.95, **choices: Any) -> PanelQuestion:

@@ -38,7 +38,7 @@ def sheets_of(document: Document, panels: Document, ranks: dict[str, int], names
     plot = plot_chart(document, drawn, ranks) if any(group["failures"] for group in drawn) else None
     few = few_tables(document)
     table = group_table(document, names, "")
-    groups = len(document["groups"]) + len(document["more_groups"])
+    groups_left = len(table["rows"][GROUP_ROWS:]) + len(document["more_groups"])
     return {
         "lead": words.with_soft_interval(main["sentence"]) if main else "",
         "lead_rank": rank_in(document, main, ranks) if main else None,
@@ -46,7 +46,7 @@ def sheets_of(document: Document, panels: Document, ranks: dict[str, int], names
         "survival": survival and {**on_paper(survival), "columns": None, "notes": None},
         "at_risk": at_risk_table(document) if drawn else None,
         "groups": {**table, "rows": table["rows"][:GROUP_ROWS]},
-        "groups_left": f"{number(groups - GROUP_ROWS)} more groups stand in the book." if groups > GROUP_ROWS else "",
+        "groups_left": f"{number(groups_left)} more groups stand in the book." if groups_left else "",
         "method_line": words.method_line(document),
         "told": told(panels, FIRST_SHEET),
         "warnings": document["warnings"][:WARNINGS],

@@ -15,6 +15,7 @@ if TYPE_CHECKING:
 FACTOR = 1.25  # as fast as a typical one, beyond which one stands out
 ALLOWED = 0.1  # expected share of false namings
 NAMED = 4
+MOST_JUDGED = 200  # lots; more of them take minutes
 EVEN = 0.5
 ROWS_IN_SIGHT = 12
 KINDS = {"sites": "site", "lots": "lot"}
@@ -29,15 +30,29 @@ def answer(question: PanelQuestion) -> Data:
         with_lots = question.lives(also="lot")
         for stratum in _fit(question, with_lots):
             lots = with_lots.also[stratum.chosen]
-            named = lots != ""
+            named, left = most_seen(lots, stratum.lifetimes.weights)
             if named.any():
                 lifetimes = at_middles(stratum.lifetimes.subset(named))
-                families.append(_family("lots", stratum, lifetimes, lots[named], question.confidence))
+                family = _family("lots", stratum, lifetimes, lots[named], question.confidence)
+                families.append({**family, "not_judged": left})
     return {"factor": FACTOR, "allowed": ALLOWED, "families": families}
 
 
 def _fit(question: PanelQuestion, found: Any = None) -> list[Stratum]:
     return [each for each in question.strata(found) if each.lifetimes.failures >= FEWEST_FAILURES]
+
+
+def most_seen(lots: Any, weights: Any) -> tuple[Any, int]:
+    """Which rows are of the lots with most lives that are judged, and how many lots are not."""
+    import numpy as np
+
+    labels, place = np.unique(lots, return_inverse=True)
+    lives = np.bincount(place, weights=weights)
+    lives[labels == ""] = 0.0
+    order = np.argsort(-lives, kind="stable")[:MOST_JUDGED]
+    judged = np.zeros(labels.size, dtype=bool)
+    judged[order] = lives[order] > 0.0
+    return judged[place], int((lives > 0.0).sum() - judged.sum())
 
 
 def at_middles(lifetimes: Lifetimes) -> Lifetimes:
@@ -196,6 +211,11 @@ def notes(data: Data, family: Data) -> list[str]:
         f"typical one its parts fail, with {percent(data['confidence'])} intervals. A small one is drawn towards 1: "
         "few lives say little."
     ]
+    if family.get("not_judged"):
+        told.append(
+            f"Judged are the {number(family['count'])} lots with most lives; {number(family['not_judged'])} more have "
+            "too few to say much."
+        )
     if family["kind"] == "lots" and family["found_later"]:
         told.append(
             f"{number(family['found_later'])} failures were only found at a later look; they count in the middle "

@@ -8,12 +8,18 @@ from typing import Any
 from fleet.part_styles import PartStyle, part_style
 
 MOST_GROUPS = 8  # beyond that looks repeat and nobody can tell them apart
+FEWER_OF_MANY = 6  # of lots and quarters there are always many, each at many sites: the first answer must be quick
 MOST_BANDS = 3  # more of them lie upon each other
 FINEST_STEP = 0.0015  # of the height or of the length: finer steps are not seen
 
 Document = dict[str, Any]
 Figure = dict[str, Any]
 Group = dict[str, Any]
+
+
+def first_groups(by: str | None) -> int:
+    """How many groups the first answer fits and draws; the others come with the table of all."""
+    return FEWER_OF_MANY if by in ("lot", "quarter") else MOST_GROUPS
 
 
 def drawn_groups(document: Document) -> list[Group]:

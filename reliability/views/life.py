@@ -16,7 +16,7 @@ from fleet.models.codes import clean_code
 from fleet.part_ranks import part_ranks
 from fleet.rights import CATALOGUE, LIFE, may, needs
 from fleet.views.listing import as_csv
-from reliability.charts.groups import MOST_GROUPS
+from reliability.charts.groups import first_groups
 from reliability.forms.life import GROUPINGS, Choices, LifeForm
 from reliability.life_panels import PANELS, Panel
 
@@ -43,7 +43,7 @@ def life(request: Any) -> HttpResponse:
         return JsonResponse(everything(request, choices, form), json_dumps_params={"ensure_ascii": False})
     if kind in FILES:
         return as_file(component, seen_document(request, choices, form), kind)
-    document = seen_document(request, choices, form, most=MOST_GROUPS)
+    document = seen_document(request, choices, form, most=first_groups(form.question()["by"]))
     return render(request, "life/page.html", context_of(request, choices, form, document))
 
 

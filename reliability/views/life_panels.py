@@ -15,7 +15,7 @@ from fleet.rights import LIFE, needs
 from fleet.views.listing import as_csv
 from reliability.forms.life import Choices, LifeForm
 from reliability.life_panels import BY_NAME, Panel
-from reliability.views.life import address, chosen_component, own_sites, panel_address
+from reliability.views.life import address, chosen_component, own_sites, panel_address, titles_of
 
 GROUPS_A_PAGE = 50
 
@@ -30,6 +30,8 @@ def life_panel(request: Any, name: str) -> HttpResponse:
     form = LifeForm(request.GET, choices=choices)
     if component is None or not form.is_valid():
         raise Http404
+    from reliability.life_words import narrowed_words
+
     data = seen_panel(request, choices, form, panel)
     kind = request.GET.get("as")
     if kind == "json":
@@ -40,6 +42,7 @@ def life_panel(request: Any, name: str) -> HttpResponse:
         "component": component,
         "panel": shown_panel(request, panel, data),
         "as_of": dt.date.fromisoformat(data["as_of"]),
+        "narrowed": narrowed_words(form.question(), titles_of(choices)),
         "crumbs": [{"name": "Life", "url": reverse("life") + address(request)}],
     }
     return render(request, "life/panel.html" if request.htmx else "life/panel_page.html", context)

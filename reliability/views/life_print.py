@@ -12,7 +12,7 @@ from django.utils import timezone
 
 from fleet.models import Component
 from fleet.rights import LIFE, needs
-from reliability.charts.groups import MOST_GROUPS
+from reliability.charts.groups import first_groups
 from reliability.forms.life import GROUPINGS, Choices, LifeForm
 from reliability.life_panels import PANELS
 from reliability.views.life import (
@@ -38,7 +38,7 @@ def life_print(request: Any) -> HttpResponse:
     form = LifeForm(request.GET, choices=choices)
     if component is None or not form.is_valid():
         raise Http404
-    document = seen_document(request, choices, form, most=MOST_GROUPS)
+    document = seen_document(request, choices, form, most=first_groups(form.question()["by"]))
     panels = {panel.key: seen_panel(request, choices, form, panel) for panel in PANELS} if document["groups"] else {}
     context: dict[str, Any] = {
         "component": component,

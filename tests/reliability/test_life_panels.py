@@ -132,6 +132,8 @@ def test_chosen_modes_are_called_by_name_and_do_not_change_the_shares(worked: Wo
     assert "If only this mode acted (thread worn out)" in document["warnings"][0]
     assert document["mode_names"] == {"WORN": "Thread worn out"}
     assert len(document["incidence"]["groups"][0]["modes"]) == 2
+    assert document["trend"]["sentence"].startswith("If only thread worn out acted: By ")
+    assert document["incidence"]["sentence"].startswith("Of the N1 drive nuts")
 
 
 def test_positions_are_followed_from_one_part_to_the_next(worked: WorkedFleet) -> None:
@@ -236,6 +238,17 @@ def test_a_bad_lot_is_named_and_no_good_one() -> None:
     said = plain(data["sentence"])
     assert f"Lots whose parts fail clearly faster than a typical one's: {BAD_LOT}" in said
     assert "or fewer are expected to be false" in said
+
+
+def test_of_very_many_lots_those_with_most_lives_are_judged() -> None:
+    from reliability.life_stand_outs import MOST_JUDGED, most_seen
+
+    lots = np.array([f"L-{number}" for number in range(MOST_JUDGED + 5)] + ["L-3", "L-204", ""])
+    judged, left = most_seen(lots, np.ones(len(lots)))
+    kept = set(lots[judged])
+    assert (len(kept), left) == (MOST_JUDGED, 5)
+    assert {"L-3", "L-204"} <= kept
+    assert "" not in kept
 
 
 def test_alike_lots_and_sites_do_not_stand_out(worked: WorkedFleet) -> None:

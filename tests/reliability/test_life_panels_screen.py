@@ -13,6 +13,7 @@ from django.urls import reverse
 
 from fleet.actions.rebuild_clocks import rebuild_clocks
 from fleet.models import LifeSet, SetLife
+from reliability.charts.groups import FEWER_OF_MANY
 from reliability.life_panels import PANELS
 from tests.factories import make_crew, make_manager, make_planner
 from tests.reliability.small_fleet import SmallFleet, day
@@ -126,7 +127,7 @@ def test_many_lots_stay_few_on_the_page_and_all_in_the_list(ines: Client) -> Non
     rebuild_clocks()
     asked = {"as_of": AS_OF, "component": "NUT", "by": "lot"}
     reply = ines.get("/life/", asked)
-    assert len(reply.context["document"]["groups"]) == 8
+    assert len(reply.context["document"]["groups"]) == FEWER_OF_MANY
     assert "All 70 groups" in text_of(reply)
     assert "140 lives" in text_of(reply)
     first = ines.get("/life/groups/", {**asked, "sort": "-lives"})
