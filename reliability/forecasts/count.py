@@ -93,8 +93,8 @@ def settings_of(question: Question, learned: Learned, positions: Positions) -> d
     assumed = question.what_if.superseding
     fitted = [learned.label(place.needed) for place in positions.places]
     removed = [learned.design(place.part) for place in positions.places]
-    upgraded = [place.part != place.needed for place in positions.places]
-    rates = [each.removals + each.upgrades * yes for each, yes in zip(removed, upgraded, strict=True)]
+    upgrading = positions.column("upgrading")
+    rates = [each.removals + each.upgrades * yes for each, yes in zip(removed, upgrading, strict=True)]
     settings: dict[str, Any] = {
         "sites": positions.column("site"),
         "designs": [learned.label(place.part) for place in positions.places],

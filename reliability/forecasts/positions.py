@@ -33,6 +33,7 @@ class Place(NamedTuple):
     down: float
     joins: float
     leaves: float
+    upgrading: bool  # whether parts here are being changed for a newer design, whatever is assumed
 
 
 @dataclass(frozen=True, eq=False)
@@ -110,6 +111,7 @@ def _spread(
         down=0.0,
         joins=max(row.joins - shift, 0.0) if row.joins > 0 else 0.0,
         leaves=row.leaves - shift,
+        upgrading=row.part != row.needed,
     )
     place = _visited(place, row, question, learned)
     for age, share in ages:
