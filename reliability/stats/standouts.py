@@ -92,9 +92,8 @@ def stand_outs(
     mixture = _mixture(fit)
     tail = 0.5 * (1.0 - confidence_level)
     limits = np.log(np.array([factor, 1.0 / factor]))
-    at_limits = mixture.below(np.broadcast_to(limits, (mixture.means.size, 2)))
+    at_limits, (lower, upper) = mixture.told(limits, (tail, 1.0 - tail))
     worse, better = 1.0 - at_limits[:, 0], at_limits[:, 1]
-    lower, upper = mixture.quantiles(tail), mixture.quantiles(1.0 - tail)
     order = np.argsort(-worse, kind="stable")
     chosen, rate = _chosen(worse[order], false_discovery_rate)
     codes, weights = judged.site_codes, judged.weights
@@ -207,12 +206,18 @@ class _Mixture:
         parts = [share * component.below(logs) for component, share in zip(self.components, self.shares, strict=True)]
         return np.sum(parts, axis=0)
 
-    def quantiles(self, share: float) -> FloatArray:
-        logs = np.log(self.means)[:, None] + self.deviations[:, None] * PLACES
+    def told(self, limits: FloatArray, shares: tuple[float, ...]) -> tuple[FloatArray, list[FloatArray]]:
+        """P(log z <= limits), shape (S, limits), and the quantiles of z for each share, (S,): one table for both."""
+        places = np.log(self.means)[:, None] + self.deviations[:, None] * PLACES
+        table = self.below(np.hstack([np.broadcast_to(limits, (self.means.size, limits.size)), places]))
         # on the normal scale the distribution is nearly a straight line in log z
-        table = special.ndtri(np.clip(self.below(logs), 1e-12, 1.0 - 1e-12))
-        wanted = float(special.ndtri(share))
-        return np.exp([np.interp(wanted, np.maximum.accumulate(row), at) for row, at in zip(table, logs, strict=True)])
+        straight = special.ndtri(np.clip(table[:, limits.size :], 1e-12, 1.0 - 1e-12))
+        rising = np.maximum.accumulate(straight, axis=1)
+        quantiles = [
+            np.exp([np.interp(float(special.ndtri(share)), row, at) for row, at in zip(rising, places, strict=True)])
+            for share in shares
+        ]
+        return table[:, : limits.size], quantiles
 
 
 def _mixture(fit: WeibullSiteFit) -> _Mixture:
