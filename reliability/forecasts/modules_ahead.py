@@ -55,7 +55,7 @@ def _plans(as_of: dt.date) -> tuple[dict[int, float], dict[int, list[Arrival]]]:
     leaves: dict[int, float] = {}
     arrives: dict[int, list[Arrival]] = {}
     scrapped = Module.objects.filter(scrapped_on__gt=as_of).values_list("pk", "scrapped_on")
-    last = {module: float((day - as_of).days) for module, day in scrapped}
+    last = {module: float((day - as_of).days) for module, day in scrapped if day is not None}
     leaves.update(last)
     ending = Placement.objects.standing().filter(from_on__lte=as_of, to_on__gt=as_of)
     for module, day in ending.values_list("module_id", "to_on"):

@@ -35,11 +35,11 @@ def visiting(as_of: dt.date, known_on: dt.date | None) -> tuple[dict[str, Visiti
     learned = _intervals([pk for pk, _, every, _ in rows if not every], as_of, known_on)
     for pk, code, every, next_on in rows:
         interval = float(every) if every else learned.get(pk)
-        ahead = next_on is not None and next_on > as_of and known_on is None
+        upcoming = next_on if next_on is not None and next_on > as_of and known_on is None else None
         if interval is None:
             unknown.append(code)
         else:
-            found[code] = Visiting(interval, next_on.isoformat() if ahead else None)
+            found[code] = Visiting(interval, None if upcoming is None else upcoming.isoformat())
     return found, unknown
 
 

@@ -175,8 +175,8 @@ class BlockTails:
         inside = np.flatnonzero(reach)
         more = np.zeros((*beyond.shape[:2], inside.size, beyond.shape[3]))
         for (width, stop), share in zip(settings, counting, strict=True):
-            same = np.flatnonzero((spans[0] == width) & (spans[1] == stop) & (end > begin))
-            same = slice(None) if same.size == len(self._classes) else same
+            alike = np.flatnonzero((spans[0] == width) & (spans[1] == stop) & (end > begin))
+            same: IntArray | slice = slice(None) if alike.size == len(self._classes) else alike
             cells = int(np.count_nonzero(at <= stop))  # places rise: the first ones
             reached = remaining[:, same][..., stop - at[:cells]].swapaxes(2, 3)
             beyond[:, same, :cells] = reached[..., 1:]

@@ -111,10 +111,10 @@ class FromNew:
                 fitted_before = transform.forward(source * (1.0 - known_mask))
                 near = near + transform.back(fitted_before / (1.0 - silent))
             near = near * (1.0 - beyond_mask)
-            source = counted_part + silent * transform.forward(near * inside)
+            ending = counted_part + silent * transform.forward(near * inside)
             if next_until > width:
-                source = source + (self._counted + silent) * transform.forward(near * (1.0 - inside))
-            far = transform.back(transform.forward(transform.back(source) * beyond_mask) * every)
+                ending = ending + (self._counted + silent) * transform.forward(near * (1.0 - inside))
+            far = transform.back(transform.forward(transform.back(ending) * beyond_mask) * every)
             found.append(np.clip(near + far, 0.0, 1.0))
         return np.stack(found, axis=2)
 

@@ -53,7 +53,7 @@ class Hazards:
 
     def _unit_at(self, logs: FloatArray, classes: IntArray | slice) -> FloatArray:
         shape = self.shape[:, classes][:, :, None]
-        if self.deviation is None or not self.deviation.any():
+        if self.deviation is None or self.scale is None or not self.deviation.any():
             return np.exp(shape * logs)
         deviation, scale = self.deviation[:, classes], self.scale[:, classes]
         result = np.empty(np.broadcast_shapes(logs.shape, shape.shape))
