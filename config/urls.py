@@ -3,6 +3,7 @@
 from django.urls import include, path
 
 urlpatterns = [
+    path("", include("reliability.urls_before")),
     path("", include("fleet.urls")),
     path("", include("reliability.urls")),
 ]

@@ -19,7 +19,7 @@ from numpy.typing import NDArray
 
 from reliability.stats.count_results import CountDistribution
 from reliability.stats.lead_times import DurationPosterior, learned_durations
-from reliability.stats.stocking import backorders_of, demand_over_lead_time, order_quantity, order_up_to
+from reliability.stats.stocking import OrderQuantity, backorders_of, demand_over_lead_time, order_quantity, order_up_to
 from reliability.stats.stocking_paths import DemandPaths, Receipt, RunningOut, daily_paths, running_out
 
 BANDS = (0.5, 0.8, 0.95)
@@ -51,7 +51,9 @@ class PastDelivery:
 
 @dataclass(frozen=True)
 class Shelf:
-    """One part in all stores together (or one store). lead_time_days: the catalogue's figure, None if not known."""
+    """One part in all stores together (or one store). lead_time_days: the catalogue's figure, None if not known.
+    minimum: the smallest order; keep_at_least: pieces that the book wants on the shelf in any case.
+    """
 
     part: str
     name: str
@@ -61,6 +63,7 @@ class Shelf:
     lead_time_days: float | None = None
     pack: int = 1
     minimum: int = 0
+    keep_at_least: int = 0
     unit_cost: Decimal | None = None
     supplier: str = ""
     superseded_by: str = ""  # the part that is fitted instead from `used_until` on
@@ -115,6 +118,7 @@ class OrderLine:
     added: int = 0
     pack: int = 1
     minimum: int = 0
+    keep_at_least: int = 0
     unit_cost: Decimal | None = None
     cost: Decimal | None = None
     chance_if_nothing: float = 0.0
@@ -126,6 +130,7 @@ class OrderLine:
     next_delivery: DayRange = DayRange(None, None, None)
     cover_weeks: tuple[float | None, float | None, float | None] = (None, None, None)
     left_over: tuple[float, int, int] | None = None  # mean and 80 of 100 cases, when a superseded part goes out of use
+    used_until: dt.date | None = None
     lead_orders: float = 0.0
     lead_figure: float | None = None
     service_level: float = 0.95
@@ -168,19 +173,23 @@ def order_line(shelf: Shelf, weekly: NDArray[np.int64] | None, rules: Rules) -> 
     shared: dict[str, Any] = {
         "part": shelf.part, "name": shelf.name, "on_hand": shelf.on_hand, "due": due, "supplier": shelf.supplier,
         "superseded_by": shelf.superseded_by, "pack": shelf.pack, "minimum": shelf.minimum,
-        "unit_cost": shelf.unit_cost, "lead_orders": lead.completed, "lead_figure": shelf.lead_time_days,
+        "keep_at_least": shelf.keep_at_least, "unit_cost": shelf.unit_cost, "lead_orders": lead.completed,
+        "lead_figure": shelf.lead_time_days, "used_until": shelf.used_until,
         "service_level": rules.service_level,
     }  # fmt: skip
     if weekly is None:
-        return OrderLine(known=False, looked_until=rules.today, comes=_comes(lead, rules.today), **shared)
+        least = order_quantity(shelf.keep_at_least, shelf.on_hand, due, pack=shelf.pack, minimum=shelf.minimum)
+        return OrderLine(
+            known=False, looked_until=rules.today, comes=_comes(lead, rules.today), **_ordered(least, shelf), **shared
+        )
     rng = np.random.default_rng([rules.seed, *shelf.part.encode()])
     most = int(min(math.ceil(lead.quantile(LONGEST_LEAD)), MOST_DAYS))
     known = daily_paths(weekly, rng)
     paths = known.reaching(most + rules.review_days, rng)
     by_day = lead.by_day(most)
     demand = demand_over_lead_time(paths, by_day, review_days=rules.review_days)
-    level = order_up_to(demand.pmf, rules.service_level)
-    reorder = order_up_to(demand_over_lead_time(paths, by_day).pmf, rules.service_level)
+    level = max(order_up_to(demand.pmf, rules.service_level), shelf.keep_at_least)
+    reorder = max(order_up_to(demand_over_lead_time(paths, by_day).pmf, rules.service_level), shelf.keep_at_least)
     order = order_quantity(level, shelf.on_hand, due, pack=shelf.pack, minimum=shelf.minimum)
     today_order = np.minimum(np.ceil(lead.draws(paths.draws, rng)), most).astype(np.int64)
     receipts = [_receipt(each, shelf, rules.today, paths, rng) for each in shelf.due]
@@ -195,10 +204,7 @@ def order_line(shelf: Shelf, weekly: NDArray[np.int64] | None, rules: Rules) -> 
         span_days=lead.median + rules.review_days,
         order_up_to=level,
         reorder_level=reorder,
-        quantity=order.quantity,
-        wanting=order.wanting,
-        added=order.added,
-        cost=None if shelf.unit_cost is None else shelf.unit_cost * order.quantity,
+        **_ordered(order, shelf),
         chance_if_nothing=course.chance_by(today_order + rules.review_days),
         chance_before_delivery=course.chance_before(following),
         short_on_average=backorders_of(demand.pmf, max(shelf.on_hand + due, 0)),
@@ -211,6 +217,11 @@ def order_line(shelf: Shelf, weekly: NDArray[np.int64] | None, rules: Rules) -> 
         carried_on=float(by_day[max(known.days - rules.review_days + 1, 0) :].sum()),
         **shared,
     )
+
+
+def _ordered(order: OrderQuantity, shelf: Shelf) -> dict[str, Any]:
+    cost = None if shelf.unit_cost is None else shelf.unit_cost * order.quantity
+    return {"quantity": order.quantity, "wanting": order.wanting, "added": order.added, "cost": cost}
 
 
 def lead_times(shelf: Shelf, today: dt.date) -> DurationPosterior:

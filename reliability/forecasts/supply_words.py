@@ -14,9 +14,10 @@ def reasons(line: OrderLine, today: dt.date) -> list[str]:
     """Sentences in the order in which one would say them; the first stands in the list, the rest behind it."""
     if not line.known:
         unknown = "No life of this part is on record, so its use cannot be forecast: we cannot tell what to order."
-        return [f"{have(line)}. {unknown}"]
+        least = f"{at_least(line)}{wanting(line)}" if line.keep_at_least else ""
+        return [sentence for sentence in (f"{have(line)}. {unknown}", least) if sentence]
     told = [first_reason(line, today), use(line), wanted(line), danger(line, today)]
-    told += [superseded(line), lead(line), carried_on(line)]
+    told += [superseded(line, today), lead(line), carried_on(line)]
     return [sentence for sentence in told if sentence]
 
 
@@ -63,9 +64,24 @@ def wanted(line: OrderLine) -> str:
         return "Nothing needs to be ordered."
     verb = "is" if line.order_up_to == 1 else "are"
     enough = f"{number(line.order_up_to)} on hand or due {verb} enough in {chance_in_words(line.service_level)}"
+    if line.keep_at_least and line.order_up_to == line.keep_at_least:
+        enough = at_least(line)
     if not line.quantity:
         return f"{enough}; nothing needs to be ordered."
-    told = f"{enough}, so {number(line.wanting)} {'is' if line.wanting == 1 else 'are'} wanting."
+    told = f"{enough}{wanting(line)}"
+    urgent = line.on_hand + line.due <= line.reorder_level
+    return told + (" This cannot wait for the next review." if urgent else "")
+
+
+def at_least(line: OrderLine) -> str:
+    return f"The book keeps at least {number(line.keep_at_least)} on the shelf or on the way"
+
+
+def wanting(line: OrderLine) -> str:
+    """`, so 12 are wanting. Packs of 5 make it 15.`"""
+    if not line.wanting:
+        return "; nothing needs to be ordered."
+    told = f", so {number(line.wanting)} {'is' if line.wanting == 1 else 'are'} wanting."
     if line.added:
         why = []
         if line.minimum > line.wanting:
@@ -73,8 +89,7 @@ def wanted(line: OrderLine) -> str:
         if line.pack > 1:
             why.append(f"packs of {number(line.pack)}")
         told += f" {' and '.join(why).capitalize()} make it {number(line.quantity)}."
-    urgent = line.on_hand + line.due <= line.reorder_level
-    return told + (" This cannot wait for the next review." if urgent else "")
+    return told
 
 
 def danger(line: OrderLine, today: dt.date) -> str:
@@ -98,10 +113,12 @@ def danger(line: OrderLine, today: dt.date) -> str:
     return told
 
 
-def superseded(line: OrderLine) -> str:
+def superseded(line: OrderLine, today: dt.date) -> str:
     if not line.superseded_by:
         return ""
     told = f"{line.superseded_by} replaces this part"
+    if line.used_until is not None:
+        told += f" everywhere by {day(line.used_until, today)}"
     if line.use_mean == 0:
         return f"{told} and no position takes it any more: use what is there elsewhere, or scrap it."
     if line.left_over is None:

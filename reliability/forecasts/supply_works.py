@@ -1,0 +1,23 @@
+"""Background work on what stores and bench need."""
+
+from __future__ import annotations
+
+from typing import Any
+
+from fleet.models import Book, Component, Work
+from fleet.work import Progress, work_kind
+
+
+@work_kind("count_use", daily="Counting what stores and bench will need")
+def count_use(work: Work, progress: Progress) -> dict[str, Any]:
+    """What every component uses from tomorrow on, then order list and backlog, so that no page waits for them."""
+    from reliability.forecasts.coming_use import keep_use
+    from reliability.forecasts.kept_order import order_document
+
+    components = list(Component.objects.all())
+    for place, component in enumerate(components):
+        progress.step(place, len(components) + 1, component.title)
+        keep_use(component)
+    progress.step(len(components), len(components) + 1, "order list")
+    order_document(currency=Book.load().currency)
+    return {"components": len(components)}
