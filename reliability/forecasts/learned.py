@@ -32,6 +32,7 @@ DRAWS = 400
 FEW = 10  # failures below which an earlier design's shape is leaned on, and from which it can be
 SHAPE_SPREAD = 0.35  # how far the log shape of a new design strays from the earlier one's
 PLAIN_PRIOR = (math.log(2.0), 1.0)
+LONGEST = 1e12  # where hardly anything is known a scale may be without bounds
 ALL = ""  # the design that stands for all parts of the component
 
 
@@ -64,10 +65,13 @@ class Learned:
 
     def design(self, part: str) -> Design:
         """A design without a life of its own borrows its component's."""
-        return self.designs.get(part) or self.designs[ALL]
+        return self.designs[self.label(part)]
 
     def label(self, part: str) -> str:
-        return part if part in self.designs else ALL
+        """A part that came into the book since then stands with the design that has failed most."""
+        if part in self.designs:
+            return part
+        return ALL if ALL in self.designs else max(self.designs, key=lambda each: self.designs[each].failures)
 
 
 def learned(component: Component, as_of: dt.date, known_on: dt.date | None = None) -> Learned:
@@ -158,7 +162,7 @@ def _designs(found: FleetLives, component: Component, out: Removals) -> tuple[di
             # the design's own, and one more at its component's rate
             "removals": (removed + 1.0) / (lifetimes.exposure + 1.0 / rate) if rate else 0.0,
             "upgrades": out.upgrades_lately.get(part, 0) / max(lifetimes.exposure, 1e-9),
-            "typical": float(np.median(life.drawn.scales)),
+            "typical": float(min(np.median(life.drawn.scales), LONGEST)),
         }
     return told, warnings
 
