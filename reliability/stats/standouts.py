@@ -224,28 +224,39 @@ def _mixture(fit: WeibullSiteFit) -> _Mixture:
     """The multipliers given the records, averaged over shape, level and spread."""
     likelihood = fit._evaluate
     assert isinstance(likelihood, SiteLikelihood)
-    points, shares = _points(fit, likelihood)
-    components = [_component(likelihood, float(x), float(y)) for x, y in points]
+    points = _points(fit)
+    # log posterior of each point with each spread, up to one constant: (m, K)
+    logs = np.array([_by_spread(likelihood, float(x), float(y)) for x, y in points])
+    masses = np.exp(logs - logs.max())
+    heights = masses.sum(axis=1)
+    points, masses, heights = points[heights > 0.0], masses[heights > 0.0], heights[heights > 0.0]
+    shares = heights / heights.sum()
+    components = [
+        _component(likelihood, float(x), float(y), mass / height)
+        for (x, y), mass, height in zip(points, masses, heights, strict=True)
+    ]
     moments = np.array([component.means() for component in components])
     means, squares = np.tensordot(shares, moments, axes=(0, 0))
     deviations = np.sqrt(np.log1p(np.maximum(squares / means**2 - 1.0, 1e-12)))
     return _Mixture(components, shares, means, deviations)
 
 
-def _points(fit: WeibullSiteFit, likelihood: SiteLikelihood) -> tuple[FloatArray, FloatArray]:
-    """Nodes (log shape, level) around the estimate and their shares of the likelihood, shapes (m, 2), (m,)."""
+def _points(fit: WeibullSiteFit) -> FloatArray:
+    """Nodes (log shape, level) around the estimate, shape (m, 2)."""
     root = np.linalg.cholesky(fit._best_covariance)
     x, y = np.meshgrid(NODES, NODES)
     near = np.hypot(x, y) < 3.0
-    points = np.array(fit._best) + np.stack([x[near], y[near]], axis=1) @ root.T
-    heights = np.array([likelihood(float(a), float(b))[0] for a, b in points])
-    shares = np.exp(heights - heights.max())
-    return points, shares / shares.sum()
+    return np.array(fit._best) + np.stack([x[near], y[near]], axis=1) @ root.T
 
 
-def _component(likelihood: SiteLikelihood, log_shape: float, level: float) -> _Component:
+def _by_spread(likelihood: SiteLikelihood, log_shape: float, level: float) -> FloatArray:
+    terms = likelihood.node_terms(log_shape, level)
+    return likelihood.nodes.log_masses + (terms[0] if terms is not None else -np.inf)
+
+
+def _component(likelihood: SiteLikelihood, log_shape: float, level: float, every: FloatArray) -> _Component:
+    """every: the shares of the spreads at this point, (K,)."""
     shape = math.exp(log_shape)
-    every = likelihood.spread_shares(log_shape, level)
     kept = np.flatnonzero(every > LEAST_SHARE)
     spreads = likelihood.nodes.spreads[kept]
     sums = likelihood.site_sums(shape, level)
