@@ -3,12 +3,28 @@
 from __future__ import annotations
 
 import datetime as dt
+from collections.abc import Iterable
 from typing import Any
 
 from django.db.models import Exists, F, FloatField, OuterRef, Q, QuerySet, Subquery, Sum
 from django.db.models.functions import Coalesce
 
-from fleet.models import BenchCapacity, BenchHours, BenchJob, Left, Module, Person, Placement, Role, SiteKind, Visit
+from fleet.models import (
+    BenchCapacity,
+    BenchHours,
+    BenchJob,
+    Finding,
+    Fitting,
+    FoundKind,
+    Left,
+    Module,
+    Person,
+    Placement,
+    RemovalReason,
+    Role,
+    SiteKind,
+    Visit,
+)
 from fleet.stock import days_of
 
 
@@ -41,6 +57,19 @@ def on_the_way(person: Person) -> QuerySet[Any]:
     """The bench sees what was sent to it, from whatever site; the office what its own sites sent."""
     visits = Visit.objects.all()
     return sent_to_bench(visits if person.role == Role.BENCH else visits.for_person(person)).order_by("happened_at")
+
+
+def why_sent(visits: Iterable[Visit]) -> dict[int, str]:
+    """By visit: what failed there, `lead screw: screw bowed`. The bench sees it on the module as soon as it is in."""
+    keys = [visit.pk for visit in visits]
+    found: dict[int, list[str]] = {}
+    failed = Finding.objects.standing().filter(visit__in=keys, finding=FoundKind.FAILED)
+    removed = Fitting.objects.standing().filter(removed_visit__in=keys, reason=RemovalReason.FAILED)
+    for rows, visit in ((failed, "visit_id"), (removed, "removed_visit_id")):
+        for row in rows.select_related("position__component", "mode").order_by("position__order", "pk"):
+            mode = f": {row.mode.title}" if row.mode else " failed"
+            found.setdefault(getattr(row, visit), []).append(f"{row.position.component.title}{mode}")
+    return {visit: ", ".join(dict.fromkeys(words)) for visit, words in found.items()}
 
 
 def pool(modules: QuerySet[Any]) -> QuerySet[Any]:

@@ -6,9 +6,9 @@ from typing import Any
 
 from fleet.actions.base import change, sees
 from fleet.actions.catalogue import Saving, only
-from fleet.actions.errors import NotAllowed
+from fleet.actions.errors import BadValue, NotAllowed
 from fleet.actions.rebuild_clocks import rebuild_clocks
-from fleet.models import Module, Person, Placement, Site
+from fleet.models import BenchJob, Module, Person, Placement, Site, SiteKind
 from fleet.rights import CATALOGUE
 
 FIELDS = {
@@ -26,12 +26,23 @@ def save_site(*, by: Person | None, site: Site | None = None, version: int | Non
             raise NotAllowed(f"Site {site.code} is none of yours. Ask a manager of your book.")
         modules = [] if site is None else locked_modules(site)
         saving = Saving(Site, site, version, fields)
+        if saving.changes("kind") and not saving.is_new:
+            check_no_bench(saving.record)
         stored: Site = saving.store()
         if saving.is_new and by is not None and not by.all_sites:
             by.sites.add(stored)
         if modules and saving.changes(*MOVE_CLOCKS):
             rebuild_clocks(modules)
     return stored
+
+
+def check_no_bench(site: Site) -> None:
+    """Parts do not age at a depot: bench jobs there would else have aged them."""
+    if site.kind != SiteKind.DEPOT and BenchJob.objects.standing().filter(depot=site).exists():
+        raise BadValue(
+            f"Bench jobs happened at {site.title}, so it stays a depot. Enter the other place as a new site.",
+            field="kind",
+        )
 
 
 def locked_modules(site: Site) -> list[int]:

@@ -16,7 +16,7 @@ from django.views.decorators.cache import never_cache
 from fleet.actions.errors import RecordError
 from fleet.actions.set_capacity import set_capacity
 from fleet.actions.take_in_module import take_in_module
-from fleet.bench import hours_available, hours_booked, monday_of, on_the_way, pool, with_hours
+from fleet.bench import hours_available, hours_booked, monday_of, on_the_way, pool, why_sent, with_hours
 from fleet.formats import counted, long_day, number, short_day
 from fleet.forms.bench import CapacityForm, TakeInForm
 from fleet.forms.errors import add_record_error
@@ -67,10 +67,13 @@ def board(request: Any) -> dict[str, Any]:
 
 
 def arriving(request: Any, way: Any) -> list[dict[str, Any]]:
-    """From where, and what the crew wrote, is told only of sites that the person sees."""
+    """From where is told only of sites that the person sees; why, to everybody who will mend it."""
     seen = set(request.seen(Site).values_list("pk", flat=True))
+    visits = list(way[: MOST_WAITING + 1])
+    why = why_sent(visits)
     return [
-        {"visit": visit, "site": visit.site if visit.site_id in seen else None} for visit in way[: MOST_WAITING + 1]
+        {"visit": visit, "site": visit.site if visit.site_id in seen else None, "why": why.get(visit.pk, "")}
+        for visit in visits
     ]
 
 
@@ -185,8 +188,9 @@ def take_in(request: Any) -> HttpResponse:
     depots = request.seen(Site).filter(kind="depot").order_by("code_order")
     modules = may_come(request)
     asked = next((module for module, _ in modules if module.code == request.GET.get("module", "").upper()), None)
+    opened = {"module": asked, "reason": reason_of(request, asked)}
     form = TakeInForm(
-        request.POST if request.method == "POST" else None, modules=modules, depots=depots, initial={"module": asked}
+        request.POST if request.method == "POST" else None, modules=modules, depots=depots, initial=opened
     )
     if request.method == "POST" and form.is_valid():
         try:
@@ -204,6 +208,12 @@ def take_in(request: Any) -> HttpResponse:
         "cancel_url": reverse("bench"),
     }
     return render(request, "list/edit.html", context, status=422 if form.is_bound else 200)
+
+
+def reason_of(request: Any, module: Module | None) -> str:
+    """What the visit that sent it found, written down beforehand."""
+    visits = list(on_the_way(request.user).filter(module=module)) if module is not None else []
+    return next(iter(why_sent(visits).values()), "")
 
 
 @needs(CATALOGUE)

@@ -8,6 +8,7 @@ import pytest
 from django.test import Client
 from django.urls import reverse
 
+from fleet.actions.entries import FindingEntry
 from fleet.actions.record_visit import record_visit
 from fleet.actions.take_in_module import take_in_module
 from fleet.models import BenchCapacity, BenchHours, BenchJob, Fitting, Person, Site, StockMove
@@ -97,6 +98,16 @@ def test_what_is_on_the_way_is_taken_in(weir: Carriage, greta: Person, depot: Si
     assert reply["Location"] == f"/bench/jobs/{job.code}/"
     assert client.post("/bench/take-in/", data | {"entry_key": "no key"}).status_code == 422
     assert broken_rules() == []
+
+
+def test_why_it_comes_is_written_down_beforehand(weir: Carriage, greta: Person, depot: Site) -> None:
+    found = FindingEntry(position=weir.nut, finding="failed", mode=weir.worn)
+    record_visit(by=weir.crew, module=weir.module, happened_at=at("2024-03-09"), left="to bench", findings=[found])
+    client = client_of(greta)
+    why = f"{weir.nuts.title}: thread worn out"
+    assert why in text(client.get("/bench/"))
+    assert client.get(f"/bench/take-in/?module={weir.module.code}").context["form"]["reason"].value() == why
+    assert client.get("/bench/take-in/?module=NONE").context["form"]["reason"].value() == ""
 
 
 def test_a_job_lives_through_its_page(job: BenchJob, weir: Carriage, greta: Person, depot: Site) -> None:

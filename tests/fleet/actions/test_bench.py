@@ -19,6 +19,7 @@ from fleet.actions.move_job import move_job
 from fleet.actions.place_module import place_module
 from fleet.actions.record_visit import record_visit
 from fleet.actions.save_module import save_module
+from fleet.actions.save_site import save_site
 from fleet.actions.set_capacity import set_capacity
 from fleet.actions.strike_out import strike_out
 from fleet.actions.take_away_module import take_away_module
@@ -208,6 +209,11 @@ def test_parts_do_not_age_through_a_whole_job(weir: Carriage, rosa: Person, gret
     assert sent - fitted == 59
     assert again - sent == pytest.approx(9 / 24, abs=0.05)  # the visit was at nine in the morning
     assert clock.at("days", on("2024-05-11").toordinal()) == again + 10
+
+
+def test_a_depot_with_jobs_stays_one(job: BenchJob, ines: Person) -> None:
+    with pytest.raises(BadValue, match="so it stays a depot"):
+        save_site(by=ines, site=job.depot, version=1, kind="field")
 
 
 def test_a_module_with_an_open_job_does_not_leave(job: BenchJob, weir: Carriage, ines: Person) -> None:
