@@ -110,6 +110,7 @@ def simulate_counts(
         visits=None if visits is None else (column(visits[0]), column(visits[1])),
         refit_delay=refit_delay,
         taken_share=taken_share,
+        already=np.broadcast_to(False if roles.later is None else roles.running == roles.later, (count,)),
         luck=Luck(for_luck, (draws, count)),
         order=for_order.permutation(count),
     )
@@ -143,6 +144,7 @@ class _Fleet:
     visits: tuple[FloatArray, FloatArray] | None
     refit_delay: float
     taken_share: float
+    already: BoolArray  # positions that hold the later design from the start
     luck: Luck
     order: IntArray
 
@@ -161,7 +163,7 @@ class _Fleet:
             earlier = ~fresh & (self.join_at == 0)
             now = np.where(earlier, known_good, now)
             current = np.where(earlier, np.maximum(current + known_good * self.duty, 0.0), current)
-        design = np.where(fresh, 1, 0) + np.zeros(size, dtype=np.int64)
+        design = np.where(fresh, np.where(now > self.switch_at, 2, 1), np.where(self.already, 2, 0))
         state = _State(now, current, design, np.zeros(size, dtype=np.int64))
         self._draw_ends(state, np.ones(size, dtype=bool))
         for until in _steps(retrofit):

@@ -115,6 +115,21 @@ def test_retrofits_avoid_failures_and_use_parts_up_to_the_number_of_old_ones() -
     assert many.planned.mean() == pytest.approx(POSITIONS - first_week, abs=0.25)
 
 
+def test_parts_of_the_new_design_are_not_retrofitted() -> None:
+    found = simulate_counts(
+        {"old": KnownWeibull(3.0, 8000.0), "new": KnownWeibull(5.0, 20000.0)},
+        AGES,
+        91.0,
+        draws=50,
+        rng=np.random.default_rng(4),
+        designs=["new" if number % 4 else "old" for number in range(POSITIONS)],
+        later_designs=["new"] * POSITIONS,
+        switch_at=0.0,
+        retrofit=Retrofit(0.0, 5, 1 / 13),
+    )
+    assert set(found.planned.tolist()) <= {POSITIONS / 4, POSITIONS / 4 - 1}
+
+
 def test_what_if_and_base_share_their_luck() -> None:
     """The same seed gives every position the same luck: a longer life never fails more often."""
     base, better = (
