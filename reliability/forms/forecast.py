@@ -5,9 +5,11 @@ from __future__ import annotations
 import datetime as dt
 from typing import Any
 
+import django_filters
 from django import forms
 from django.utils import timezone
 
+from fleet.forms.filters import SeenChoice
 from fleet.forms.record import DayInput
 from fleet.models import Book, Component, Site, SiteKind
 
@@ -73,6 +75,13 @@ class ForecastForm(forms.Form):
     def service_level(self) -> float:
         asked = self.cleaned_data.get("service")
         return float(f"{(self.usual_service if asked is None else asked) / 100:.6g}")
+
+
+class KeptFilter(django_filters.FilterSet):
+    """What the list of kept forecasts can be narrowed by."""
+
+    component = SeenChoice(Component, label="Component")
+    q = django_filters.CharFilter(label="In the note", field_name="note", lookup_expr="icontains")
 
 
 class KeepForm(forms.Form):

@@ -20,7 +20,7 @@ from fleet.views.listing import Column, Listing, as_csv
 from reliability import forecast_kept_words as kept_words
 from reliability import forecast_what_if_words as what_if_words
 from reliability import forecast_words as words
-from reliability.forms.forecast import ForecastForm, KeepForm
+from reliability.forms.forecast import ForecastForm, KeepForm, KeptFilter
 from reliability.models import KeptForecast
 from reliability.views import forecast_tables as tables
 from reliability.views.forecast_answer import Answer
@@ -93,7 +93,7 @@ KEPT = Listing(
 def kept_forecasts(request: Any) -> HttpResponse:
     rows = request.seen(KeptForecast).select_related("component", "made_by")
     crumbs = [{"name": "Forecast", "url": reverse("forecast")}]
-    return KEPT.answer(request, rows, title="Kept forecasts", crumbs=crumbs)  # type: ignore[return-value]
+    return KEPT.answer(request, rows, KeptFilter, title="Kept forecasts", crumbs=crumbs)  # type: ignore[return-value]
 
 
 @needs(LIFE)

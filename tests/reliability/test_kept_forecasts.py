@@ -13,7 +13,7 @@ from django.db.models.deletion import ProtectedError
 from django.test import Client
 
 from fleet.actions.errors import RecordError
-from fleet.models import DataVersion
+from fleet.models import Component, DataVersion
 from reliability import forecast_kept_words as words
 from reliability.forecasts.keep_forecast import keep_forecast
 from reliability.forecasts.next_quarter import forecast_document, question_of
@@ -235,6 +235,17 @@ def test_other_sites_do_not_count_against_a_forecast_of_some(client: Client) -> 
 
 def test_the_list_says_what_to_do_when_it_is_empty(client: Client) -> None:
     assert "No forecast has been kept yet" in ines(client).get("/forecast/kept/").content.decode()
+
+
+def test_the_list_narrows_by_component_and_by_words_of_the_note(client: Client) -> None:
+    fleet, manager = SmallFleet(), make_manager()
+    screws = Component.objects.create(code="SCREW", clock="days")
+    autumn = make_kept_forecast(component=fleet.component, made_by=manager, note="Autumn order")
+    make_kept_forecast(component=screws, made_by=manager, note="autumn")
+    make_kept_forecast(component=fleet.component, made_by=manager)
+    client.force_login(manager)
+    assert list(client.get("/forecast/kept/?component=NUT&q=autumn").context["page"].object_list) == [autumn]
+    assert "No kept forecasts match these filters." in client.get("/forecast/kept/?q=spring").content.decode()
 
 
 def test_the_narrowest_band_is_named() -> None:
