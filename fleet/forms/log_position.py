@@ -193,5 +193,6 @@ class PositionForm(forms.Form):
 
 def part_words(part: Any, carried: int | None = None) -> str:
     """`N3 nut with wiper lip`, its state where it is not the current one, and how many the person carries along."""
-    said = part.title if part.state == "current" else f"{part.title} ({part.state})"
-    return f"{said}: {carried} with you" if carried else said
+    with_you = f"{part.code}, {carried} with you: {part.name}".removesuffix(": ")
+    said = with_you if carried else part.title
+    return said if part.state == "current" else f"{said} ({part.state})"

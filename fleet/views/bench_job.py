@@ -85,7 +85,7 @@ def changes_of(request: Any, job: BenchJob) -> list[str]:
 
 
 def job_sentence(job: Any) -> str:
-    hours = f"{number(job.hours_booked)} hours booked" if job.hours_booked else "no hours booked yet"
+    hours = f"{number(job.hours_booked, 1)} hours booked" if job.hours_booked else "no hours booked yet"
     if job.struck_out:
         return f"Struck out: {job.struck_out}."
     if job.finished_on is not None:

@@ -224,7 +224,7 @@ def test_log_takes_the_new_part_off_the_van(weir: Carriage, van: Store) -> None:
     client = client_of(weir.crew)
     page = text(client.get(reverse("log_visit", args=[weir.module.code])))
     assert "New parts come from" in page
-    assert f"{weir.n2.code}: 2 with you" in page
+    assert f"{weir.n2.code}, 2 with you" in page
     reply = send(client, weir.module, at_position(weir.nut, outcome="failed", mode=weir.worn, part=weir.n2))
     assert reply.status_code == 302
     move = StockMove.objects.get(kind="issue")
