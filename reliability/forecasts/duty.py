@@ -19,7 +19,9 @@ from reliability.lives_as_known import modules_as_known
 QUARTER, QUARTERS, LOOK_BACK = 91, 8, 90
 YEAR, MOST_YEARS, STEP, STEPS = 364, 2, 28, 13  # whole weeks
 MOST_MODULES, FEWEST_MODULES = 300, 3
-PLAIN_SEASON, SEASON_GAIN, FEWEST_PAIRS = 0.08, 0.6, 3
+# duty that strays without any season would pass for one in about 1 of 75 fleets
+PLAIN_SEASON, FEWEST_PAIRS = 0.1, 3
+SEASON_GAIN, GAIN_OF_FEW = 0.45, 0.35
 
 
 @dataclass(frozen=True)
@@ -88,7 +90,8 @@ def _season(uses: _Uses, logs: dict[int, float]) -> list[float]:
         return []
     plain = math.sqrt(sum(log**2 for log, _ in pairs) / len(pairs))
     with_season = math.sqrt(sum((log - earlier) ** 2 for log, earlier in pairs) / len(pairs))
-    if plain < PLAIN_SEASON or with_season > SEASON_GAIN * plain:
+    gain = GAIN_OF_FEW if len(pairs) == FEWEST_PAIRS else SEASON_GAIN
+    if plain < PLAIN_SEASON or with_season > gain * plain:
         return []
     curve = []
     for step in range(1, STEPS + 1):
