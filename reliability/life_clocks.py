@@ -113,9 +113,18 @@ def sentence(data: Data) -> str:
     return f"{start}: they wear by {best} ({samples}).{end}"
 
 
-def page(data: Data, *, address: Any = None) -> Data:
+def page(data: Data, *, address: Any = None, ranks: dict[str, int] | None = None) -> Data:
+    from reliability.charts.clocks import clocks_figure
+
+    chart = None
+    if any(group["clocks"] for group in data["groups"]):
+        chart = {
+            "figure": clocks_figure(data, ranks or {}),
+            "size": "short",
+            "notes": ["The lower, the better the clock explains."],
+        }
     return {
-        "chart": None,
+        "chart": chart,
         "tables": [_table(data)],
         "notes": notes(data),
         "how": (

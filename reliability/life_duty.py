@@ -248,7 +248,7 @@ def _meaning(data: Data, ratio: Data) -> str:
     return f"{change} {'shorter' if shorter else 'longer'} lives"
 
 
-def page(data: Data, *, address: Any = None) -> Data:
+def page(data: Data, *, address: Any = None, ranks: dict[str, int] | None = None) -> Data:
     from reliability.charts.duty import duty_figure
 
     first = main_stratum(own_effects(data))

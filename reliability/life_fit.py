@@ -15,6 +15,8 @@ if TYPE_CHECKING:
 QUANTITIES: dict[str, Any] = {"b10": ("quantile", 0.1), "median": ("quantile", 0.5)}
 # What a difference in AICc means: Burnham & Anderson, Model Selection and Multimodel Inference (2002), section 2.6.
 AS_GOOD, WORSE, CLEARLY_WORSE = 2.0, 4.0, 10.0
+CURVE_POINTS = 60
+FINEST_STEP = 0.002
 WRITTEN = {"weibull": "Weibull", "lognormal": "lognormal", "exponential": "exponential"}
 SAYS = {
     "weibull": "the older, the sooner, without a turn",
@@ -68,8 +70,31 @@ def _group(stratum: Stratum, confidence: float) -> Data:
         "running": stratum.running,
         "sites": len(stratum.lifetimes.site_labels),
         "fits": rows,
+        "curves": _curves(stratum, fits, confidence) if fits else None,
         "bend": bend_of(stratum) if "weibull" in fits else None,
         "notes": notes,
+    }
+
+
+def _curves(stratum: Stratum, fits: dict[str, LifeFit], confidence: float) -> Data:
+    """Survival of each fit at a few ages, over the steps of the curve that assumes nothing."""
+    import numpy as np
+
+    from reliability.survival_curve import survival_curve
+
+    seen = survival_curve(stratum.lifetimes, confidence)
+    ages = np.linspace(0.0, seen.last_age, CURVE_POINTS)
+    start = float(seen.given_survival_to)
+    steps, level = [(start, 1.0)], 1.0
+    for step, survival in zip(seen.ages.tolist(), seen.survival.tolist(), strict=True):
+        if level - survival > FINEST_STEP:
+            steps.append((step, round(survival, 5)))
+            level = survival
+    steps.append((seen.last_age, steps[-1][1]))
+    return {
+        "age": [round(float(value), 3) for value in ages],
+        "fitted": {name: [round(float(value), 5) for value in fit.survival(ages)] for name, fit in fits.items()},
+        "seen": {"age": [step for step, _ in steps], "survival": [survival for _, survival in steps]},
     }
 
 
@@ -178,12 +203,18 @@ def warnings(data: Data) -> list[str]:
     return told
 
 
-def page(data: Data, *, address: Any = None) -> Data:
+def page(data: Data, *, address: Any = None, ranks: dict[str, int] | None = None) -> Data:
+    from reliability.charts.fits import fits_figure
+
     main = main_stratum(data["groups"])
     assert main is not None
     rest = [group for group in data["groups"] if group is not main]
+    chart = {
+        "figure": fits_figure(data, main, WRITTEN),
+        "notes": [f"Grey steps: what was seen of {parts_of(data, main['group'])}; lines: the three curves through it."],
+    }
     return {
-        "chart": None,
+        "chart": chart,
         "warnings": warnings(data),
         "tables": [_table(data, [main])],
         "more_tables": [_table(data, rest)] if rest else [],

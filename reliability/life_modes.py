@@ -200,7 +200,7 @@ def telling_place(group: Data) -> int | None:
     return next((place for place, total in enumerate(totals) if total >= 0.5), len(totals) - 1)
 
 
-def page(data: Data, *, address: Any = None) -> Data:
+def page(data: Data, *, address: Any = None, ranks: dict[str, int] | None = None) -> Data:
     """Chart of the main design, a table for each."""
     from reliability.charts.modes import incidence_figure
 

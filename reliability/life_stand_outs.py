@@ -173,7 +173,7 @@ def _row_words(row: Data) -> str:
     return f"{row['label']} {number(times['estimate'], 1)} times as fast ({between})"
 
 
-def page(data: Data, *, address: Any = None) -> Data:
+def page(data: Data, *, address: Any = None, ranks: dict[str, int] | None = None) -> Data:
     from reliability.charts.stand_outs import stand_outs_figure
 
     families = [family for family in data["families"] if family["rows"]]

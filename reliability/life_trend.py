@@ -245,7 +245,7 @@ def _same_within_positions(data: Data, sooner: bool) -> bool:
     return bool((within["p_worsening"] < within["p_improving"]) == sooner)
 
 
-def page(data: Data, *, address: Any = None) -> Data:
+def page(data: Data, *, address: Any = None, ranks: dict[str, int] | None = None) -> Data:
     from reliability.charts.trend import trend_figure
 
     drawn = not data["narrowed"]

@@ -15,7 +15,7 @@ from fleet.rights import LIFE, needs
 from fleet.views.listing import as_csv
 from reliability.forms.life import Choices, LifeForm
 from reliability.life_panels import BY_NAME, Panel
-from reliability.views.life import address, chosen_component, own_sites, panel_address, titles_of
+from reliability.views.life import address, chosen_component, looks_of, own_sites, panel_address, titles_of
 
 GROUPS_A_PAGE = 50
 
@@ -40,7 +40,7 @@ def life_panel(request: Any, name: str) -> HttpResponse:
         return panel_file(component, panel, data)
     context = {
         "component": component,
-        "panel": shown_panel(request, panel, data),
+        "panel": shown_panel(request, panel, data, looks_of(choices)),
         "as_of": dt.date.fromisoformat(data["as_of"]),
         "narrowed": narrowed_words(form.question(), titles_of(choices)),
         "crumbs": [{"name": "Life", "url": reverse("life") + address(request)}],
@@ -89,7 +89,7 @@ def panel_file(component: Component, panel: Panel, data: dict[str, Any]) -> Http
     return as_csv(f"life {component.code} {panel.name}", module.FILE_HEAD, lines)  # type: ignore[return-value]
 
 
-def shown_panel(request: Any, panel: Panel, data: dict[str, Any]) -> dict[str, Any]:
+def shown_panel(request: Any, panel: Panel, data: dict[str, Any], ranks: dict[str, int]) -> dict[str, Any]:
     """What parts of the screen are made of: sentence, chart, tables, files, or the reason why there is none."""
     told: dict[str, Any] = {
         "id": panel.name,
@@ -99,7 +99,7 @@ def shown_panel(request: Any, panel: Panel, data: dict[str, Any]) -> dict[str, A
     }
     if told["refused"]:
         return told
-    told |= panel.load().page(data, address=lambda mode: reverse("life") + address(request, mode=mode))
+    told |= panel.load().page(data, address=lambda mode: reverse("life") + address(request, mode=mode), ranks=ranks)
     csv_url = panel_address(request, panel, **{"as": "csv"})
     told["csv_url"] = csv_url
     if told["chart"]:
