@@ -202,13 +202,16 @@ def replicates_for(bench: Bench) -> int:
 def what_a_change_does(bench: Bench, change: Change, *, replicates: int | None = None) -> dict[str, Any]:
     """The change minus the plan, week by week, on the same jobs: the bands are of the difference itself."""
     replicates = replicates or replicates_for(bench)
-    base, other = (
-        backlog(bench, change=each, replicates=replicates, with_needed=False).course for each in (None, change)
-    )
-    found = difference(other, base)
-    weeks = base.weeks
+    base, other = (backlog(bench, change=each, replicates=replicates, with_needed=False) for each in (None, change))
+    return changes_told(other, base)
+
+
+def changes_told(changed: Backlog, base: Backlog) -> dict[str, Any]:
+    """One forecast minus another of the same jobs, as plain values; both need the same number of replicates."""
+    found = difference(changed.course, base.course)
+    weeks = base.course.weeks
     return {
-        "weeks": [(bench.today + dt.timedelta(days=int(day))).isoformat() for day in weeks],
+        "weeks": [(base.bench.today + dt.timedelta(days=int(day))).isoformat() for day in weeks],
         "modules": told(found.modules.at(weeks)),
         "hours": told(found.backlog_hours),
         "ready": told(found.pool.at(weeks)),

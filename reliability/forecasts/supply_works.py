@@ -12,12 +12,14 @@ from fleet.work import Progress, work_kind
 def count_use(work: Work, progress: Progress) -> dict[str, Any]:
     """What every component uses from tomorrow on, then order list and backlog, so that no page waits for them."""
     from reliability.forecasts.coming_use import keep_use
+    from reliability.forecasts.kept_backlog import bench_document
     from reliability.forecasts.kept_order import order_document
 
     components = list(Component.objects.all())
     for place, component in enumerate(components):
         progress.step(place, len(components) + 1, component.title)
         keep_use(component)
-    progress.step(len(components), len(components) + 1, "order list")
+    progress.step(len(components), len(components) + 1, "order list and bench")
     order_document(currency=Book.load().currency)
+    bench_document()
     return {"components": len(components)}
