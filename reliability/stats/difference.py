@@ -8,6 +8,7 @@ from reliability.stats.difference_modes import ModeComparison, compare_modes
 from reliability.stats.difference_sums import WEIGHTINGS, joined_strata
 from reliability.stats.life_ratio import LifeRatio, Ratio, life_ratio
 from reliability.stats.life_ratio_posterior import LifeRatioPosterior, life_ratio_posterior
+from reliability.stats.life_ratio_split import SplitLives, split_at_start
 from reliability.stats.sequential import (
     Look,
     Verdict,
@@ -26,6 +27,7 @@ __all__ = [
     "ModeComparison",
     "Ratio",
     "RestrictedMeanDifference",
+    "SplitLives",
     "Verdict",
     "compare_modes",
     "counted_at_middle",
@@ -37,6 +39,7 @@ __all__ = [
     "planned_information",
     "restricted_mean_difference",
     "sequential_boundary",
+    "split_at_start",
     "take_look",
     "verdict",
 ]

@@ -27,11 +27,13 @@ from reliability.stats.profile_intervals import normal_quantile
 from reliability.stats.weibull_fit import fit_weibull
 
 # log shapes and log ages (from the reference) that a search may visit
-LOWEST, HIGHEST = np.array([-5.0, -60.0, -5.0, -60.0]), np.array([5.0, 60.0, 5.0, 60.0])
-LARGEST_STEP = np.array([0.7, 1.5, 0.7, 1.5])
+HIGHEST = np.array([5.0, 60.0, 5.0, 60.0, 20.0])
+LOWEST = -HIGHEST
+LARGEST_STEP = np.array([0.7, 1.5, 0.7, 1.5, 1.0])
 # a ratio beyond exp(12) either way is called unbounded
 FARTHEST = 12.0
 FEW_FAILURES, ORDINARY_LOG_SHAPE = 15, 0.7
+RESTARTS = 5
 
 
 @dataclass(frozen=True)
@@ -93,6 +95,7 @@ def life_ratio(
     *,
     sites: Any = None,
     positions: Any = None,
+    past: Lifetimes | None = None,
     common_shape: bool = False,
     probabilities: Sequence[float] = (0.1, 0.5),
     confidence_level: float = 0.95,
@@ -107,7 +110,10 @@ def life_ratio(
 
     sites: the site of each life, a pair (of before, of after), or None for the sites that the lives carry; with fewer
     than two sites the lives count as independent. positions: likewise a pair; the multiplier then belongs to each
-    position at a site, for parts renewed where the last one failed.
+    position at a site, for parts renewed where the last one failed. past: what the old parts did before they are
+    compared (see `split_at_start`), with a free factor on its hazard, so that it tells which sites or positions are bad
+    and nothing of the season; sites and positions are then of three. Where positions differ it is needed: an old part
+    that was already old when the comparison began stands at a good position.
 
     Kalbfleisch & Prentice, The Statistical Analysis of Failure Time Data (2002), chapter 3 and section 10.2; Klein &
     Moeschberger (2003), chapter 13. Raises TooFewFailures, NoSpreadInFailures, UndefinedEstimate (naming the group),
@@ -117,9 +123,9 @@ def life_ratio(
         if not 0.0 < share < 1.0:
             raise InvalidArgument(f"The share failed is {share:g}; it must lie between 0 and 1.")
     normal_quantile(confidence_level)
-    clusters = shared_clusters(before, after, sites, positions)
-    refuse_unusable(before, after)
-    likelihood = ratio_likelihood(before, after, clusters, spread_prior)
+    clusters = shared_clusters(before, after, sites, positions, past)
+    refuse_unusable(before, after, past)
+    likelihood = ratio_likelihood(before, after, clusters, spread_prior, past)
     start = _start(before, after, likelihood, common_shape)
     top = _search(likelihood, start, common_shape)
     if not top.converged:
@@ -127,7 +133,7 @@ def life_ratio(
             "The search for the life ratio did not settle. Use common_shape=True, or wait for more failures.",
             iterations=top.iterations,
         )
-    best = _expanded(top.point, common_shape)
+    best = _free_matrix(likelihood.size, common_shape) @ top.point
     found = LifeRatio(
         before_shape=math.exp(best[0]),
         after_shape=math.exp(best[2]),
@@ -144,32 +150,37 @@ def life_ratio(
 
 
 def shared_clusters(
-    before: Lifetimes, after: Lifetimes, sites: Any, positions: Any
-) -> tuple[IntArray, IntArray] | None:
-    """Numbers of the sites (or positions at sites) common to both groups; None where there are fewer than two."""
-    if sites is None and before.sites is not None and after.sites is not None:
-        sites = (before.sites, after.sites)
-    columns = [pair for pair in (sites, positions) if pair is not None]
+    before: Lifetimes, after: Lifetimes, sites: Any, positions: Any, past: Lifetimes | None = None
+) -> tuple[IntArray, ...] | None:
+    """Numbers of the sites (or positions at sites) common to all groups; None where there are fewer than two."""
+    groups = [before, after] if past is None else [before, after, past]
+    if sites is None and all(lives.sites is not None for lives in groups):
+        sites = tuple(lives.sites for lives in groups)
+    columns = [given for given in (sites, positions) if given is not None]
     if not columns:
         return None
-    labels: list[list[Any]] = [[], []]
-    for number, lives in enumerate((before, after)):
+    labels: list[Any] = []
+    for number, lives in enumerate(groups):
         try:
-            parts = [list(pair[number]) for pair in columns]
+            parts = [list(given[number]) for given in columns]
         except (TypeError, IndexError) as error:
-            raise InvalidArgument("sites and positions are pairs of lists: of the old lives, of the new.") from error
+            raise InvalidArgument(
+                "sites and positions are pairs of lists: of the old lives, of the new (and a third of the past)."
+            ) from error
         if any(len(part) != len(lives) for part in parts):
             raise InvalidArgument(f"sites and positions must have one label for each of {len(lives)} lives.")
-        labels[number] = list(zip(*parts, strict=True))
-    joined: NDArray[Any] = np.empty(len(before) + len(after), dtype=object)
-    joined[:] = labels[0] + labels[1]
+        labels += list(zip(*parts, strict=True))
+    joined: NDArray[Any] = np.empty(len(labels), dtype=object)
+    joined[:] = labels
     codes = label_codes(joined, joined.size)
     if codes.max() < 1:
         return None
-    return codes[: len(before)], codes[len(before) :]
+    return tuple(np.split(codes, np.cumsum([len(lives) for lives in groups])[:-1]))
 
 
-def refuse_unusable(before: Lifetimes, after: Lifetimes) -> None:
+def refuse_unusable(before: Lifetimes, after: Lifetimes, past: Lifetimes | None = None) -> None:
+    if past is not None and past.has_intervals:
+        raise UnsupportedRows("Some parts failed between two ages in the past. Use counted_at_middle for it as well.")
     for name, lives in (("old", before), ("new", after)):
         if lives.has_intervals:
             raise UnsupportedRows(
@@ -187,7 +198,7 @@ def refuse_unusable(before: Lifetimes, after: Lifetimes) -> None:
 
 def _start(before: Lifetimes, after: Lifetimes, likelihood: RatioLikelihood, common_shape: bool) -> FloatArray:
     """Each group fitted alone, as (log shape, level)."""
-    point = np.empty(4)
+    point = np.zeros(likelihood.size)
     for number, (name, lives) in enumerate((("old", before), ("new", after))):
         try:
             fit = fit_weibull(lives)
@@ -204,40 +215,45 @@ def _start(before: Lifetimes, after: Lifetimes, likelihood: RatioLikelihood, com
     if common_shape:
         log_shape = 0.5 * (point[0] + point[2])
         scales = point[[1, 3]] / np.exp(point[[0, 2]])
-        point = np.array([log_shape, scales[0] * math.exp(log_shape), log_shape, scales[1] * math.exp(log_shape)])
+        point[[0, 2]] = log_shape
+        point[[1, 3]] = scales * math.exp(log_shape)
     return point
 
 
 def _search(likelihood: RatioLikelihood, start: FloatArray, common_shape: bool) -> Maximum:
-    """The top in (log shape, level) of each group; three numbers where the shape is common."""
-    kept = [0, 1, 3] if common_shape else [0, 1, 2, 3]
-    levels = 400.0
-    lowest, highest = np.array([-5.0, -levels, -5.0, -levels]), np.array([5.0, levels, 5.0, levels])
+    """The top in what is free of (log shape, level) of each group and the past's factor."""
+    free = _free_matrix(likelihood.size, common_shape)
+    kept = free.argmax(axis=0)  # where each free number stands among all
+    limits = np.array([5.0, 400.0, 5.0, 400.0, 20.0])[kept]
+    steps = np.array([0.7, 3.0, 0.7, 3.0, 1.0])[kept]
 
     def evaluate(point: FloatArray) -> Evaluation:
-        return _collected(likelihood(_expanded(point, common_shape)), common_shape)
+        value, slope, bend = likelihood(free @ point)
+        return value, free.T @ slope, free.T @ bend @ free
 
-    steps = np.array([0.7, 3.0, 0.7, 3.0])
-    return maximise(evaluate, start[kept], lowest[kept], highest[kept], steps[kept])
+    top = maximise(evaluate, start[kept], -limits, limits, steps)
+    for _ in range(RESTARTS):
+        if top.converged or top.at_limit:
+            break
+        # far from the top a step may climb too little for the search to go on by itself
+        top = maximise(evaluate, top.point, -limits, limits, steps)
+    return top
 
 
-def _expanded(point: FloatArray, common_shape: bool) -> FloatArray:
-    return point[[0, 1, 0, 2]] if common_shape else np.asarray(point, dtype=float)
-
-
-def _collected(evaluation: Evaluation, common_shape: bool) -> Evaluation:
-    """The derivatives for the free numbers alone."""
+def _free_matrix(size: int, common_shape: bool) -> FloatArray:
+    """All parameters from the free ones, shape (size, free): the second log shape follows the first where common."""
+    free = np.eye(size)
     if not common_shape:
-        return evaluation
-    value, slope, bend = evaluation
-    spreading = np.array([[1, 0, 0], [0, 1, 0], [1, 0, 0], [0, 0, 1]], dtype=float)
-    return value, spreading.T @ slope, spreading.T @ bend @ spreading
+        return free
+    free[2, 0] = 1.0
+    return np.delete(free, 2, axis=1)
 
 
 @dataclass(frozen=True, eq=False)
 class _Profile:
-    """The likelihood with the log ratio psi held: free are log shape and log age of the first group, and the second's
-    log shape (none where common). Ages are those by which the share has failed, from the reference.
+    """The likelihood with the log ratio psi held. Free are the first group's log shape and log age, the second's log
+    shape (none where common), and last the past's factor (where there is one). Ages are those by which the share has
+    failed, from the reference.
     """
 
     likelihood: RatioLikelihood
@@ -246,14 +262,24 @@ class _Profile:
     best_free: FloatArray  # where the likelihood is highest of all
 
     def point(self, free: FloatArray, psi: float) -> FloatArray:
-        """(log shape, log age) of both groups."""
-        second = free[0] if self.common_shape else free[2]
-        return np.array([free[0], free[1], second, free[1] + psi])
+        """(log shape, log age) of both groups, and the past's factor."""
+        full = self.spreading(free.size) @ free
+        full[3] += psi
+        return full
+
+    def spreading(self, free: int) -> FloatArray:
+        """All parameters from the free ones at psi = 0, shape (P, free)."""
+        matrix = np.zeros((self.likelihood.size, free))
+        matrix[[0, 1, 3], [0, 1, 1]] = 1.0
+        matrix[2, 0 if self.common_shape else 2] = 1.0
+        if self.likelihood.size == 5:
+            matrix[4, -1] = 1.0
+        return matrix
 
     def by_age(self, point: FloatArray) -> Evaluation:
         """The likelihood in (log shape, log age) of both groups: level = log_hazard - shape x log age."""
         inner = point.copy()
-        turn, bends = np.eye(4), []
+        turn, bends = np.eye(point.size), []
         for at in (0, 2):
             shape, age = math.exp(point[at]), float(point[at + 1])
             inner[at + 1] = self.log_hazard - shape * age
@@ -269,21 +295,21 @@ class _Profile:
 
     def highest(self, psi: float, free: FloatArray) -> tuple[float, float, FloatArray]:
         """Largest log-likelihood at psi, its slope in psi, and where it is."""
-        spreading = np.zeros((4, free.size))
-        spreading[[0, 1, 3], [0, 1, 1]] = 1.0
-        spreading[2, 0 if self.common_shape else 2] = 1.0
+        spreading = self.spreading(free.size)
 
         def evaluate(values: FloatArray) -> Evaluation:
             value, slope, bend = self.by_age(self.point(values, psi))
             return value, spreading.T @ slope, spreading.T @ bend @ spreading
 
-        size = free.size
+        kept = spreading.argmax(axis=0)
         starts = [free]
         if min(rows.failures for rows in self.likelihood.groups) < FEW_FAILURES:
             # with few failures a steep and a flat shape may each be a top: the higher one counts
-            starts.append(np.array([ORDINARY_LOG_SHAPE, free[1], ORDINARY_LOG_SHAPE])[:size])
-            starts.append(np.append(self.best_free[:2], ORDINARY_LOG_SHAPE)[:size])
-        tops = [maximise(evaluate, start, LOWEST[:size], HIGHEST[:size], LARGEST_STEP[:size]) for start in starts]
+            for start in (free.copy(), self.best_free.copy()):
+                start[kept == 2] = ORDINARY_LOG_SHAPE
+                starts.append(start)
+            starts[1][0] = ORDINARY_LOG_SHAPE
+        tops = [maximise(evaluate, start, LOWEST[kept], HIGHEST[kept], LARGEST_STEP[kept]) for start in starts]
         top = max(tops, key=lambda found: found.value)
         return top.value, float(self.by_age(self.point(top.point, psi))[1][3]), top.point
 
@@ -328,7 +354,7 @@ def _ratio(
     shapes = np.exp(best[[0, 2]])
     ages = (log_hazard - best[[1, 3]]) / shapes
     psi = float(ages[1] - ages[0])
-    free = np.array([best[0], ages[0], best[2]])[: 2 if common_shape else 3]
+    free = np.concatenate([[best[0], ages[0]], [] if common_shape else [best[2]], best[4:]])
     profile = _Profile(likelihood, common_shape, log_hazard, free)
     peak, _, bend = profile.by_age(profile.point(free, psi))
     error = _error_of_psi(bend, common_shape)
@@ -351,14 +377,12 @@ def _ratio(
 
 
 def _error_of_psi(bend: FloatArray, common_shape: bool) -> float:
-    """Standard error of the log ratio from the curvature in (log shape, log age) of both groups."""
-    columns = [[1, 0, 0], [0, 1, 0], [1, 0, 0], [0, 1, 1]] if common_shape else np.eye(4).tolist()
-    spreading = np.array(columns, dtype=float)
-    if not common_shape:
-        spreading[3, 1] = 1.0
-    at = -1
+    """Standard error of the log ratio from the curvature in (log shape, log age) of both groups (and the factor)."""
+    free = _free_matrix(len(bend), common_shape)
+    at = 2 if common_shape else 3  # the second group's log age becomes the log ratio
+    free[3, 1] = 1.0
     try:
-        variance = float(np.linalg.inv(-(spreading.T @ bend @ spreading))[at, at])
+        variance = float(np.linalg.inv(-(free.T @ bend @ free))[at, at])
     except np.linalg.LinAlgError:
         return 0.5
     return math.sqrt(variance) if 0.0 < variance < 9.0 else 1.0

@@ -69,6 +69,7 @@ def life_ratio_posterior(
     *,
     sites: Any = None,
     positions: Any = None,
+    past: Lifetimes | None = None,
     spread_prior: float = 1.0,
     log_shape_prior: tuple[float, float] = LOG_SHAPE_PRIOR,
     draws: int = DRAWS,
@@ -78,13 +79,14 @@ def life_ratio_posterior(
     without a failure.
 
     Priors, the same for both groups: log shape normal(log 2, 1); level H(t_ref)^(1/2), t_ref the group's greatest age
-    at risk; nu exponential. Importance sampling from a multivariate t about the top, refined until it is worth 400
-    independent draws; then systematic resampling. Seeded (rng=None draws the same every time).
+    at risk; nu exponential; log of the past's factor normal(0, 1) (past: as in `life_ratio`). Importance sampling from
+    a multivariate t about the top, refined until it is worth 400 independent draws; then systematic resampling. Seeded
+    (rng=None draws the same every time).
     Gelman et al., Bayesian Data Analysis (2013), section 10.4. Raises TooFewFailures where neither group has failed,
     UnsupportedRows for rows with last_good, InvalidArgument, NotConverged.
     """
-    for name, lives in (("old", before), ("new", after)):
-        if lives.has_intervals:
+    for name, lives in (("old", before), ("new", after), ("past", past)):
+        if lives is not None and lives.has_intervals:
             raise UnsupportedRows(
                 f"{int(lives.is_interval.sum())} {name} parts failed somewhere between two ages. Use counted_at_middle "
                 "where these ages lie close together."
@@ -99,7 +101,8 @@ def life_ratio_posterior(
     if draws < 200:
         raise InvalidArgument(f"{draws} draws are too few; ask for at least 200.")
     rng = np.random.default_rng(31) if rng is None else rng
-    likelihood = ratio_likelihood(before, after, shared_clusters(before, after, sites, positions), spread_prior)
+    clusters = shared_clusters(before, after, sites, positions, past)
+    likelihood = ratio_likelihood(before, after, clusters, spread_prior, past)
     ends = np.log([float(lives.durations.max()) for lives in (before, after)]) - likelihood.log_reference
     posterior = _Posterior(likelihood, ends, log_shape_prior)
     points, effective = _sampled(posterior, draws, rng)
@@ -129,7 +132,7 @@ class _Posterior:
 
     def __call__(self, point: FloatArray) -> Evaluation:
         value, by_level, second = self.likelihood(self.inner(point[None])[0])
-        turn = np.eye(4)
+        turn = np.eye(point.size)
         for at, log_end in zip((0, 2), self.log_ends, strict=True):
             turn[at + 1, at] = -math.exp(point[at]) * log_end
         slope, bend = turn.T @ by_level, turn.T @ second @ turn
@@ -140,6 +143,9 @@ class _Posterior:
             slope[at] += -off / width - 1.0
             slope[at + 1] += PRIOR_FAILURES
             bend[at, at] += by_level[at + 1] * turn[at + 1, at] - 1.0 / width**2
+        value -= 0.5 * float((point[4:] ** 2).sum())
+        slope[4:] -= point[4:]
+        bend[4:, 4:] -= np.eye(point.size - 4)
         return value, slope, bend
 
     def values(self, points: FloatArray) -> FloatArray:
@@ -153,23 +159,25 @@ class _Posterior:
         for at in (0, 2):
             logs = points[:, at]
             total += -0.5 * ((logs - centre) / width) ** 2 - logs + PRIOR_FAILURES * points[:, at + 1]
+        total -= 0.5 * (points[:, 4:] ** 2).sum(axis=1)
         return np.where(np.isfinite(total), total, -np.inf)
 
 
 def _sampled(posterior: _Posterior, draws: int, rng: np.random.Generator) -> tuple[FloatArray, float]:
-    start = np.array([LOG_SHAPE_PRIOR[0], 0.0, LOG_SHAPE_PRIOR[0], -1.0])
-    box = np.array([6.0, 600.0, 6.0, 600.0])
-    top = maximise(posterior, start, -box, box, np.array([0.5, 2.0, 0.5, 2.0]))
+    size = posterior.likelihood.size
+    start = np.array([LOG_SHAPE_PRIOR[0], 0.0, LOG_SHAPE_PRIOR[0], -1.0, 0.0])[:size]
+    box = np.array([6.0, 600.0, 6.0, 600.0, 20.0])[:size]
+    top = maximise(posterior, start, -box, box, np.array([0.5, 2.0, 0.5, 2.0, 0.5])[:size])
     centre, spread = top.point, _spread_of(top.hessian)
     rows = sum(group.log_ages.size for group in posterior.likelihood.groups)
     tried = min(draws, max(FEWEST_DRAWS, MOST_WORK // max(rows, 1)))
     for _ in range(6):
         root = np.linalg.cholesky(spread)
-        normal = rng.standard_normal((tried, 4))
+        normal = rng.standard_normal((tried, size))
         stretch = np.sqrt(TAIL_FREEDOM / rng.chisquare(TAIL_FREEDOM, tried))
         points = centre + (normal * stretch[:, None]) @ root.T
         distance = (normal**2).sum(axis=1) * stretch**2
-        logs = posterior.values(points) + 0.5 * (TAIL_FREEDOM + 4.0) * np.log1p(distance / TAIL_FREEDOM)
+        logs = posterior.values(points) + 0.5 * (TAIL_FREEDOM + size) * np.log1p(distance / TAIL_FREEDOM)
         weights = np.exp(logs - logs.max())
         weights /= weights.sum()
         effective = 1.0 / float((weights**2).sum())
@@ -179,7 +187,7 @@ def _sampled(posterior: _Posterior, draws: int, rng: np.random.Generator) -> tup
             return points[chosen], effective
         # move and widen towards where the weights are
         centre = weights @ points
-        spread = (points - centre).T @ ((points - centre) * weights[:, None]) * 1.3 + 1e-6 * np.eye(4)
+        spread = (points - centre).T @ ((points - centre) * weights[:, None]) * 1.3 + 1e-6 * np.eye(size)
     raise NotConverged(
         "The posterior of the life ratio could not be sampled well. Wait for more failures.", iterations=6
     )
