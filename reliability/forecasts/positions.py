@@ -14,6 +14,7 @@ from reliability.forecasts.question import Question
 from reliability.running_parts import RunningRow
 
 AGE_CELLS = 60  # ages are told apart to this share of the typical life
+MOST_PACES = 120  # of all sites together
 PACE_STEP = 0.25  # paces are told apart to this share
 AGE_DRAWS = 40
 NEVER = math.inf
@@ -27,7 +28,8 @@ class Place(NamedTuple):
     part: str
     needed: str
     pace: float
-    rule: float  # age at planned replacement
+    rule: float  # age at planned replacement; in days in service where it goes by the pace
+    rule_per_pace: float  # use a day in service over the pace, for such a rule
     every: float  # days between visits, 0 where failures are found at once
     next: float
     down: float
@@ -62,7 +64,7 @@ def positions_of(rows: Iterable[RunningRow], question: Question, learned: Learne
     """Rows of about equal age and pace as one: the cost grows with the number of distinct ages."""
     import numpy as np
 
-    found: dict[Place, list[tuple[float, float, float]]] = defaultdict(list)
+    entries: list[tuple[Place, float, float]] = []
     spread_ages: dict[tuple[str, float], list[tuple[float, float]]] = {}
     for row in rows:
         if row.least and (row.part, row.age) not in spread_ages:
@@ -70,25 +72,49 @@ def positions_of(rows: Iterable[RunningRow], question: Question, learned: Learne
         aged = spread_ages[row.part, row.age] if row.least else [(row.age, 1.0)]
         for place, age, weight in _spread(row, aged, question, learned):
             if place.pace > 0 and place.leaves > 0:
-                step = round(math.log(place.pace) / PACE_STEP)
-                found[place._replace(pace=float(step))].append((age, weight, place.pace))
+                entries.append((place, age, weight))
+    found: dict[Place, list[tuple[float, float]]] = defaultdict(list)
+    for (place, age, weight), pace in zip(entries, _shared_paces(entries), strict=True):
+        rule = place.rule * pace * place.rule_per_pace if place.rule_per_pace else place.rule
+        found[place._replace(pace=pace, rule=rule, rule_per_pace=0.0)].append((age, weight))
     ages, weights, places = [], [], []
-    for key, members in sorted(found.items()):
-        cell = max(learned.design(key.part).typical / AGE_CELLS, 1e-9)
-        whole = sum(weight for _, weight, _ in members)
-        # means, so that no use is lost or gained by sharing a line
-        place = key._replace(pace=sum(weight * pace for _, weight, pace in members) / whole)
+    for place, members in sorted(found.items()):
+        cell = max(learned.design(place.part).typical / AGE_CELLS, 1e-9)
         cells: dict[int, list[float]] = defaultdict(lambda: [0.0, 0.0])
-        for age, weight, _ in members:
+        for age, weight in members:
             total = cells[round(age / cell)]
             total[0] += weight
             total[1] += weight * age
-        for _, (weight, aged) in sorted(cells.items()):
-            ages.append(aged / weight)
+        for _, (weight, aged_sum) in sorted(cells.items()):
+            ages.append(aged_sum / weight)
             weights.append(weight)
             places.append(place)
     horizons = np.array([place.pace * question.span for place in places])
     return Positions(np.array(ages), horizons, np.array(weights), places)
+
+
+def _shared_paces(entries: list[tuple[Place, float, float]]) -> list[float]:
+    """Paces of a site that differ little are replaced by their mean, so that no use is lost or gained.
+
+    Where sites and paces are very many, each site's modules are split by pace into as many equal shares as there is
+    room for, two at least.
+    """
+    steps = [round(math.log(place.pace) / PACE_STEP) for place, _, _ in entries]
+    keys = [(place.site, step) for (place, _, _), step in zip(entries, steps, strict=True)]
+    if len(set(keys)) > MOST_PACES:
+        by_site: dict[str, list[int]] = defaultdict(list)
+        for number, (place, _, _) in enumerate(entries):
+            by_site[place.site].append(number)
+        shares = max(2, MOST_PACES // len(by_site))
+        for site, numbers in by_site.items():
+            numbers.sort(key=lambda number: entries[number][0].pace)
+            for rank, number in enumerate(numbers):
+                keys[number] = (site, rank * shares // len(numbers))
+    sums: dict[tuple[str, int], list[float]] = defaultdict(lambda: [0.0, 0.0])
+    for key, (place, _, weight) in zip(keys, entries, strict=True):
+        sums[key][0] += weight
+        sums[key][1] += weight * place.pace
+    return [sums[key][1] / sums[key][0] for key in keys]
 
 
 def _spread(
@@ -99,13 +125,15 @@ def _spread(
     use = 1.0 if days else question.what_if.duty * learned.duty.factor(question.span)
     pace = row.a_day * learned.standing.share(row.site) * use
     shift = question.shift
+    rule, by_days = _rule(row, question, learned)
     place = Place(
         site=row.site,
         type=row.type,
         part=row.part,
         needed=question.superseded_from_start or row.needed,
         pace=pace,
-        rule=_rule(row, question, learned),
+        rule=rule,
+        rule_per_pace=row.a_day / pace if by_days and pace > 0 else 0.0,
         every=0.0,
         next=0.0,
         down=0.0,
@@ -137,14 +165,14 @@ def _ages_at_least(row: RunningRow, learned: Learned) -> list[tuple[float, float
     return list(zip(ages.tolist(), weights.tolist(), strict=True))
 
 
-def _rule(row: RunningRow, question: Question, learned: Learned) -> float:
-    """The age at planned replacement: assumed for all, else what the site's records show."""
+def _rule(row: RunningRow, question: Question, learned: Learned) -> tuple[float, bool]:
+    """The age at planned replacement: assumed for all, else what the site's records show; and whether in days."""
     if question.what_if.replace_at is not None:
-        return question.what_if.replace_at
+        return question.what_if.replace_at, False
     rule = learned.rules.get(row.site)
     if rule is None:
-        return NEVER
-    return rule.age if rule.clock == question.component.clock else rule.age * row.a_day
+        return NEVER, False
+    return rule.age, rule.clock != question.component.clock
 
 
 def _visited(place: Place, row: RunningRow, question: Question, learned: Learned) -> Place:
