@@ -180,16 +180,16 @@ def _needs_sites(
 
 
 def _duty_factors(spread: float | tuple[float, float], draws: int, sites: int, rng: np.random.Generator) -> FloatArray:
-    """Lognormal factors of mean 1 on the horizon's use, (draws, sites); the common one is stratified."""
+    """Lognormal factors of mean 1 on the horizon's use, (draws, sites); the common one and each site's stratified."""
     common, own = spread if isinstance(spread, tuple) else (spread, 0.0)
     if common < 0 or own < 0:
         raise InvalidArgument("duty_spread must be at least 0.")
     factors = np.ones((draws, sites))
-    if common:
-        steps = ndtri((rng.permutation(draws) + rng.random(draws)) / draws)
-        factors *= np.exp(common * steps - common**2 / 2.0)[:, None]
-    if own:
-        factors *= np.exp(own * rng.standard_normal((draws, sites)) - own**2 / 2.0)
+    for deviation, columns in ((common, 1), (own, sites)):
+        if deviation:
+            places = rng.permuted(np.tile(np.arange(draws)[:, None], (1, columns)), axis=0)
+            steps = ndtri((places + rng.random((draws, columns))) / draws)
+            factors = factors * np.exp(deviation * steps - deviation**2 / 2.0)
     return factors
 
 
