@@ -82,7 +82,7 @@ class Compared:
         lives, later = self.lifetimes, self.ended > day
         share = np.clip((day - self.begun) / np.maximum(self.ended - self.begun, 1.0), 0.0, 1.0)
         durations = np.where(
-            later, np.floor(lives.entries + share * (lives.durations - lives.entries)), lives.durations
+            later, np.floor(lives.entries + share * (lives.durations - lives.entries) + 1e-9), lives.durations
         )
         seen = durations > lives.entries
         if not seen.any():

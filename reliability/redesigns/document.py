@@ -13,16 +13,20 @@ from reliability.life_answer import document_of, finite
 from reliability.redesigns.candidates import candidates_of, rigs_of
 from reliability.redesigns.comparability import Comparability, comparability, duties_of
 from reliability.redesigns.compared import AFTER, BEFORE, Compared, all_history, at_the_same_time
-from reliability.redesigns.evidence import at_like_duty, both_sides, evidence_of
+from reliability.redesigns.evidence import at_like_duty, evidence_of, told_ratio
 from reliability.redesigns.few import FEW, few_failures_of
 from reliability.redesigns.fitting_faults import fitting_faults
 from reliability.redesigns.question import RedesignQuestion
 from reliability.redesigns.single_modes import single_modes
 from reliability.redesigns.watching import ahead_of, verdict_of
-from reliability.stats.difference import counted_when_found
+from reliability.redesigns.with_past import sides_with_past
+from reliability.stats.difference import life_ratio
 from reliability.stats.errors import StatisticsError
 from reliability.stats.life_ratio_posterior import LifeRatioPosterior, life_ratio_posterior
+from reliability.stats.lifetimes import Lifetimes
 from reliability.stats.weibull_fit import fit_weibull
+
+Paired = tuple[tuple[Lifetimes, Lifetimes], dict[str, Any]] | None
 
 
 def kept_redesign(question: RedesignQuestion) -> dict[str, Any]:
@@ -43,7 +47,8 @@ def redesign_document(question: RedesignQuestion) -> dict[str, Any]:
     if question.modes:
         everything, beside = everything.if_only(question.modes), beside.if_only(question.modes)
     names = {mode.code: mode.title for mode in FailureMode.objects.filter(component=question.component)}
-    posterior, reason = _posterior(beside)
+    paired = sides_with_past(everything, beside.starts)
+    posterior, reason = _posterior(paired)
     chances = None
     if posterior is not None:
         chances = {"longer": posterior.probability(), "hope": posterior.probability(question.hope)}
@@ -63,7 +68,7 @@ def redesign_document(question: RedesignQuestion) -> dict[str, Any]:
         if posterior is None
         else ahead_of(beside, everything, verdict, posterior.effects(), _a_module(beside)),
         "same_dates": {
-            **evidence_of(beside, question.confidence),
+            **_with_past(evidence_of(beside, question.confidence), paired, question.confidence),
             "at_like_duty": _at_like_duty(beside, alike, question.confidence),
             "curves": _curves(beside, question),
         },
@@ -106,13 +111,29 @@ def _at_like_duty(lives: Compared, alike: Comparability, confidence: float) -> d
     return at_like_duty(lives, duties_of(lives)[1], confidence)
 
 
-def _posterior(lives: Compared) -> tuple[LifeRatioPosterior | None, str]:
-    """Before records exist on both sides no probability is told."""
-    sides = both_sides(lives)
-    if sides is None:
-        return None, "No old and new part have yet run over the same dates at one site."
+def _with_past(evidence: dict[str, Any], paired: Paired, confidence: float) -> dict[str, Any]:
+    """Where positions differ the ratio over the same dates is right only with the past of the positions."""
+    if paired is None or not evidence["ratio"]:
+        return evidence
+    sides, options = paired
     try:
-        return life_ratio_posterior(*(counted_when_found(side) for side in sides)), ""
+        told = told_ratio(life_ratio(*sides, confidence_level=confidence, **options))
+    except StatisticsError as error:
+        return {
+            **evidence,
+            "ratio": {**evidence["ratio"], "positions differ": None},
+            "notes": [*evidence["notes"], f"With the past of the positions: {error}"],
+        }
+    return {**evidence, "ratio": {**evidence["ratio"], "positions differ": told}}
+
+
+def _posterior(paired: Paired) -> tuple[LifeRatioPosterior | None, str]:
+    """Before records exist on both sides no probability is told."""
+    if paired is None:
+        return None, "No old and new part have yet run over the same dates at one site."
+    sides, options = paired
+    try:
+        return life_ratio_posterior(*sides, **options), ""
     except StatisticsError as error:
         return None, str(error)
 

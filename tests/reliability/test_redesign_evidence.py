@@ -15,7 +15,8 @@ from reliability.redesigns.document import redesign_document
 from reliability.redesigns.few import years_a_failure
 from reliability.redesigns.fitting_faults import exact_share, fitting_faults
 from reliability.redesigns.question import RedesignQuestion, question_for
-from reliability.stats.difference import counted_when_found, logrank
+from reliability.redesigns.with_past import sides_with_past
+from reliability.stats.difference import counted_when_found, life_ratio, logrank
 from tests.reliability.rollout_fleet import BEGAN, TODAY, RolloutFleet
 from tests.reliability.small_fleet import SmallFleet, day
 
@@ -101,6 +102,23 @@ def test_positions_are_compared_with_their_own_past_sites_over_the_same_dates_on
     # groups in the order of their names: after, before
     assert last["position_z"] == pytest.approx(-by_position.z)
     assert last["z"] == pytest.approx(-by_site.z)
+
+
+def test_the_past_of_the_positions_ends_on_the_sites_first_day() -> None:
+    RolloutFleet(1.3)
+    whole = all_history(question().component, ["N2"], ["N1"], as_of=day(TODAY))
+    beside = at_the_same_time(question().component, ["N2"], ["N1"], as_of=day(TODAY))
+    (before, after), options = sides_with_past(whole, beside.starts)
+    for side, same in ((before, beside.side(BEFORE)), (after, beside.side(AFTER))):
+        assert side.failures == same.failures
+        assert np.array_equal(np.sort(side.durations), np.sort(same.durations))
+        assert np.array_equal(np.sort(side.entries), np.sort(same.entries))
+    past = options["past"]
+    at_sites = np.isin(whole.lifetimes.sites, list(beside.starts))
+    assert past.exposure == pytest.approx(whole.lifetimes.subset(at_sites).exposure - before.exposure - after.exposure)
+    assert [len(column) for column in options["positions"]] == [len(before), len(after), len(past)]
+    told = redesign_document(question())["same_dates"]["ratio"]["positions differ"]["median"]
+    assert told["estimate"] == pytest.approx(life_ratio(before, after, **options).median.estimate)
 
 
 def test_sites_switched_all_at_once_are_named() -> None:
