@@ -74,6 +74,9 @@ def document_of(found: FleetLives, confidence: float = 0.95, most: int | None = 
     from reliability.wording import life_sentence
 
     by_lives = sorted(found.groups, key=lambda label: -found.count(*STATES, group=label))
+    # the one that most parts still run of is always told: it matters most now
+    running = max(by_lives, key=lambda label: found.count("running", group=label), default=None)
+    by_lives.sort(key=lambda label: label != running)
     shown = set(by_lives[:most])
     fitted = set(by_lives[:MOST_FITTED])
     document: dict[str, Any] = {

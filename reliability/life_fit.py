@@ -153,7 +153,7 @@ def _choice(data: Data, group: Data) -> str:
 def _what_changes(data: Data, weibull: Data, others: list[Data]) -> str:
     """What B10 and median would be under the curves that fit as well or better, and whether that matters."""
     if not others:
-        return "The figures above are its figures."
+        return "The figures of this screen are its figures."
     told = []
     for row in others:
         inside = all(_within(row[name]["estimate"], weibull[name]) for name in QUANTITIES)

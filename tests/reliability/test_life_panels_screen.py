@@ -124,20 +124,22 @@ def test_many_lots_stay_few_on_the_page_and_all_in_the_list(ines: Client) -> Non
         module = fleet.module(f"M-{number}", lock)
         for life in (20, 30 + number):
             fleet.fit(module, 0, life, "failed", lot=f"LOT-{number}")
+    fleet.fit(fleet.module("RUNS", lock), 0, lot="NEW")
     rebuild_clocks()
     asked = {"as_of": AS_OF, "component": "NUT", "by": "lot"}
     reply = ines.get("/life/", asked)
     assert len(reply.context["document"]["groups"]) == FEWER_OF_MANY
-    assert "All 70 groups" in text_of(reply)
-    assert "140 lives" in text_of(reply)
+    assert "All 71 groups" in text_of(reply)
+    assert "141 lives" in text_of(reply)
+    assert reply.context["lead"].startswith("None of the drive nuts of lot NEW has failed")  # the one that still runs
     first = ines.get("/life/groups/", {**asked, "sort": "-lives"})
-    assert "All 70 groups" in text_of(first)
-    assert "10 groups with fewest lives are not fitted" in text_of(first)
+    assert "All 71 groups" in text_of(first)
+    assert "11 groups with fewest lives are not fitted" in text_of(first)
     second = ines.get("/life/groups/", {**asked, "page": "2"})
     shown = [cell for cell in (f"LOT-{number}" for number in range(70)) if cell in first.content.decode()]
     assert len(shown) >= 50
     assert "LOT-69" in second.content.decode()
-    assert len(lines_of(ines.get("/life/", {**asked, "as": "csv"}))) == 70
+    assert len(lines_of(ines.get("/life/", {**asked, "as": "csv"}))) == 71
 
 
 def test_two_sheets_say_who_when_and_everything_in_words(worked: WorkedFleet) -> None:
