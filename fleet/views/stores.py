@@ -17,7 +17,7 @@ from fleet.formats import counted, long_day, number
 from fleet.forms.stock_filters import SeenStockFilter, StockFilter
 from fleet.forms.stores import StoreForm
 from fleet.models import Book, Part, SiteKind, StockBalance, StockMove, Store, SupplyLine
-from fleet.rights import CATALOGUE, COSTS, ISSUE, STOCK, STORES, may, needs
+from fleet.rights import CATALOGUE, COSTS, ISSUE, LIFE, STOCK, STORES, may, needs
 from fleet.stock import kept_parts, sees_all_stock, with_stock
 from fleet.views.listing import Column, Listing
 from fleet.views.saving import save_form
@@ -98,7 +98,7 @@ LIMITS = [
 def stock_list(*, orders: bool, whole: bool, more: Sequence[Column] = ()) -> Listing:
     """What is short comes first, for those who see all of it; `more` columns may tell what is forecast."""
     return Listing(
-        columns=[PART, ON_HAND, WHERE, *(DUE if orders else []), *(LIMITS if whole else []), *more],
+        columns=[PART, ON_HAND, *more, WHERE, *(DUE if orders else []), *(LIMITS if whole else [])],
         what="parts",
         caption="Stock",
         sort="-missing" if whole else "part",
@@ -151,8 +151,10 @@ def stock_actions(request: Any) -> list[dict[str, Any]]:
     if not may(request.user, STOCK):
         return [moves]
     return [
-        {"name": "Order parts", "url": reverse("new_supply_order")},
+        {"name": "What to order", "url": reverse("order_list")},
+        {"name": "Order parts", "url": reverse("new_supply_order"), "quiet": True},
         {"name": "Supply orders", "url": reverse("supply"), "quiet": True},
+        {"name": "Where to keep spares", "url": reverse("places"), "quiet": True},
         {"name": "Add a store", "url": reverse("new_store"), "quiet": True},
         moves,
     ]
@@ -178,6 +180,7 @@ def store(request: Any, code: str) -> HttpResponse:
         "move_rows": move_lines(request, place).rows(moves),
         "moves_url": f"{reverse('stock_moves')}?store={place.code}",
         "actions": store_actions(request, place),
+        "with_cover": bool(balances) and may(request.user, LIFE),
         "crumbs": CRUMBS,
     }
     return render(request, "stores/store.html", context)

@@ -212,7 +212,7 @@ def order_line(shelf: Shelf, weekly: NDArray[np.int64] | None, rules: Rules) -> 
         lasts=_lasts(course, rules.today),
         comes=_comes(lead, rules.today),
         next_delivery=_days(following, rules.today, paths.days),
-        cover_weeks=_cover(running_out(paths, shelf.on_hand)),
+        cover_weeks=cover_weeks(running_out(paths, shelf.on_hand)),
         left_over=_left_over(shelf, due, paths, rules.today),
         carried_on=float(by_day[max(known.days - rules.review_days + 1, 0) :].sum()),
         **shared,
@@ -286,7 +286,7 @@ def _days(days: NDArray[np.int64], today: dt.date, last: int) -> DayRange:
     return DayRange(*(_day(today, day) if day <= last else None for day in found))
 
 
-def _cover(course: RunningOut) -> tuple[float | None, float | None, float | None]:
+def cover_weeks(course: RunningOut) -> tuple[float | None, float | None, float | None]:
     weeks = [
         None if day is None else max(day - 1, 0) / 7.0 for day in (course.day_quantile(p) for p in (0.5, 0.1, 0.9))
     ]

@@ -3,11 +3,8 @@
 from __future__ import annotations
 
 import datetime as dt
-import hashlib
-import json
 from collections import defaultdict
 from collections.abc import Iterable
-from dataclasses import asdict
 from typing import Any
 
 from django.db.models import QuerySet
@@ -87,9 +84,3 @@ def rules(today: dt.date, *, service_level: float | None = None) -> Rules:
     book = Book.load()
     level = book.service_level if service_level is None else service_level
     return Rules(today, book.review_period_days, level, seed=today.toordinal())
-
-
-def state_of(found: Iterable[Shelf], rules: Rules) -> str:
-    """The same as long as nothing moved, came, was ordered or set otherwise."""
-    text = json.dumps([asdict(rules), [asdict(each) for each in found]], sort_keys=True, default=str)
-    return hashlib.sha256(text.encode()).hexdigest()

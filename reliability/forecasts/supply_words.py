@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import datetime as dt
+from collections.abc import Sequence
+from decimal import Decimal
 
 from fleet.formats import counted, long_day, number, percent, short_day
 from reliability.forecasts.order_list import DayRange, OrderLine, OrderList
@@ -157,13 +159,17 @@ def carried_on(line: OrderLine) -> str:
 def list_sentence(found: OrderList, currency: str) -> str:
     """How many parts to order, and what it costs."""
     wanted_lines = [line for line in found.lines if line.quantity]
-    if not wanted_lines:
+    return order_sentence(len(wanted_lines), found.cost, found.without_price, currency)
+
+
+def order_sentence(parts: int, cost: Decimal, without_price: Sequence[str], currency: str) -> str:
+    """`3 parts to order today for 3 250 EUR.`"""
+    if not parts:
         return "Nothing needs to be ordered today."
-    told = f"{counted(len(wanted_lines), 'part')} to order today for {number(found.cost)} {currency}"
-    if found.without_price:
-        told += f", without {', '.join(found.without_price)}, which has no price"
-        if len(found.without_price) > 1:
-            told = told.replace("which has", "which have")
+    told = f"{counted(parts, 'part')} to order today for {number(cost)} {currency}"
+    if without_price:
+        verb = "has" if len(without_price) == 1 else "have"
+        told += f", without {', '.join(without_price)}, which {verb} no price"
     return told + "."
 
 

@@ -20,6 +20,6 @@ def count_use(work: Work, progress: Progress) -> dict[str, Any]:
         progress.step(place, len(components) + 1, component.title)
         keep_use(component)
     progress.step(len(components), len(components) + 1, "order list and bench")
-    order_document(currency=Book.load().currency)
+    order_document(Book.load().currency)
     bench_document()
     return {"components": len(components)}

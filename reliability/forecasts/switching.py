@@ -11,7 +11,7 @@ from __future__ import annotations
 import datetime as dt
 from collections import Counter
 from collections.abc import Iterable, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
@@ -35,31 +35,29 @@ class Switch:
     planned: bool = True  # by a rollout plan; else assumed
 
 
-@dataclass
-class Switched:
-    """Drawn weeks by part after all switches, and the days on which parts go out of use."""
-
-    use: dict[str, NDArray[np.int64]]
-    until: dict[str, dt.date] = field(default_factory=dict)
-    switches: list[Switch] = field(default_factory=list)
-
-
-def switched(
-    uses: Mapping[str, ComingUse], assumed: Iterable[Switch] = (), *, with_plans: bool = True, draws: int | None = None
-) -> Switched:
-    """Every component's drawn weeks; what is assumed of a component takes the place of its plans."""
+def all_switches(uses: Mapping[str, ComingUse], assumed: Iterable[Switch] = ()) -> list[Switch]:
+    """Of components whose use is known; what is assumed of a component takes the place of its plans."""
     told = list(assumed)
     elsewhere = {each.component for each in told}
-    plans = planned_switches(uses) if with_plans else []
-    found = Switched({})
-    for use in uses.values():
-        found.use.update(use.draws(count=draws))
-    for each in [*(plan for plan in plans if plan.component not in elsewhere), *told]:
-        if each.old in found.use and each.new in found.use:
-            move(found.use, each, uses[each.component].seed)
-            found.switches.append(each)
-            if each.until is not None:
-                found.until[each.old] = each.until
+    plans = [plan for plan in planned_switches(uses) if plan.component not in elsewhere]
+    return [each for each in [*plans, *told] if uses[each.component].known]
+
+
+def days_of_use(switches: Iterable[Switch]) -> dict[str, dt.date]:
+    """The day on which a part goes out of use, of those that do."""
+    return {each.old: each.until for each in switches if each.until is not None}
+
+
+def switched(uses: Iterable[ComingUse], switches: Iterable[Switch]) -> dict[str, NDArray[np.int64]]:
+    """Drawn weeks of every part of these components, after their switches."""
+    found: dict[str, NDArray[np.int64]] = {}
+    seeds = {}
+    for use in uses:
+        found.update(use.draws())
+        seeds[use.component] = use.seed
+    for each in switches:
+        if each.old in found and each.new in found:
+            move(found, each, seeds[each.component])
     return found
 
 

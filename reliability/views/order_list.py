@@ -50,7 +50,7 @@ def order_list(request: Any) -> HttpResponseBase:
     lines = tables.chosen_lines(document, parts, form.cleaned_data, request.GET.get("sort", ""))
     kind = request.GET.get("as")
     if kind == "json":
-        return JsonResponse({**plain(document), "lines": lines}, json_dumps_params={"ensure_ascii": False})
+        return JsonResponse(plain(document, lines), json_dumps_params={"ensure_ascii": False})
     if kind == "csv":
         return as_csv("order list", tables.FILE_HEAD, (tables.file_line(line) for line in lines))
     ticks = ticked_form(request, lines, parts)
@@ -84,19 +84,19 @@ def order_list(request: Any) -> HttpResponseBase:
 def asked_document(request: Any, what_if: OrderWhatIfForm) -> Document:
     """The kept list, or one made for what is assumed."""
     from reliability.forecasts.coming_use import kept_uses
-    from reliability.forecasts.kept_order import make_list, order_document, told
+    from reliability.forecasts.kept_order import order_document
     from reliability.forecasts.switching import assumed_switches
 
-    currency, today = Book.load().currency, timezone.localdate()
+    currency = Book.load().currency
     level, new = what_if.service_level(), what_if.cleaned_data["superseding"]
     if level is None and new is None:
-        return order_document(currency=currency, today=today)
+        return order_document(currency)
     switches = []
     if new is not None:
         use = kept_uses([new.component], count=True)[new.component.code]
         begin = max(what_if.cleaned_data["superseding_from"] or use.begin, use.begin)
         switches = assumed_switches(use, new.code, begin, what_if.cleaned_data["retrofit_a_week"] or 0.0)
-    return told(make_list(today, assumed=switches, service_level=level), currency)
+    return order_document(currency, assumed=switches, service_level=level)
 
 
 def parts_of(request: Any) -> dict[str, Any]:
@@ -133,6 +133,7 @@ def count_again(request: Any) -> HttpResponse:
     return redirect(f"{reverse('order_list')}?{request.GET.urlencode()}")
 
 
-def plain(document: Document) -> Document:
-    """Without what only the page needs."""
-    return {name: value for name, value in document.items() if name not in ("state", "lines", "made_at")}
+def plain(document: Document, lines: list[Document]) -> Document:
+    """The lines asked for, without what only the keeping needs."""
+    shown = [{name: value for name, value in line.items() if name != "state"} for line in lines]
+    return {**document, "lines": shown}

@@ -11,11 +11,14 @@ from django.shortcuts import render
 from fleet.models import Component
 from fleet.rights import LIFE, SEE, may, needs
 from fleet.today import records_today
+from reliability.stock_today import bench_ahead, running_out
 
 
 @needs(SEE)
 def today(request: Any) -> HttpResponse:
     context = records_today(request)
+    context["running_out"] = running_out(request.user, context["today"])
+    context["bench_ahead"] = bench_ahead(request.user, context["today"])
     # Expectations are learned from all sites, and so are the figures beside them.
     if may(request.user, LIFE) and request.user.all_sites:
         context["expected"] = expected(request, context["today"])
