@@ -18,6 +18,8 @@ sys.path.insert(0, str(Path(__file__).resolve().parents[2]))
 
 from reliability.stats.errors import StatisticsError
 from reliability.stats.life_ratio import life_ratio
+from reliability.stats.life_ratio_posterior import life_ratio_posterior
+from reliability.stats.life_ratio_split import split_at_start
 from reliability.stats.lifetimes import Lifetimes
 from reliability.stats.sequential import Look, planned_information, take_look, verdict
 
@@ -182,6 +184,31 @@ def coverage(rollout: Rollout, count: int) -> None:
     )
 
 
+def over_the_same_dates(rollout: Rollout, count: int) -> None:
+    """Equal parts compared from the first day on: sites alone, and positions with their past."""
+    names = ("sites", "positions with their past")
+    held, likely, wide = np.zeros(2), np.zeros(2), np.zeros(2)
+    for number in range(count):
+        ledger = lived(np.random.default_rng([10, number]), rollout)
+        lives, new, rows = known(ledger, 7.0 * WEEKS)
+        cut = split_at_start(lives, np.maximum(-ledger.fitted[rows], 0.0) * ~new)
+        is_new, places = new[cut.now_rows], ledger.position[rows]
+        before, after = cut.now.subset(~is_new), cut.now.subset(is_new)
+        now = places[cut.now_rows]
+        past = {"past": cut.past, "positions": (now[~is_new], now[is_new], places[cut.past_rows])}
+        for row, options in enumerate(({}, past)):
+            ratio = life_ratio(before, after, probabilities=[0.5], **options).median
+            held[row] += ratio.lower <= 1.0 <= ratio.upper
+            wide[row] += math.log(ratio.upper / ratio.lower)
+            likely[row] += life_ratio_posterior(before, after, draws=600, **options).probability() > 0.9
+    told = "   ".join(
+        f"{name}: held {100 * held[row] / count:5.1f}, likely {100 * likely[row] / count:5.1f}, "
+        f"width {wide[row] / count:.2f}"
+        for row, name in enumerate(names)
+    )
+    print(f"{rollout.name:44s} {told}", flush=True)
+
+
 def unsited(lives: Lifetimes) -> Lifetimes:
     return Lifetimes(lives.durations, lives.observed, entries=lives.entries)
 
@@ -215,6 +242,11 @@ def main() -> None:
     print(f"\n{count} rollouts each, the new part lives 1.3 times as long, as hoped")
     for rollout in (*NULLS[:4:3], NULLS[1], NULLS[2]):
         true_verdicts(replace(rollout, factor=1.3), count, planned)
+    print(
+        f"\n{count} rollouts each over the same dates, equal parts: median ratio held, posterior above 0.9 (10 is fair)"
+    )
+    for rollout in NULLS:
+        over_the_same_dates(replace(rollout, each=10), count)
     print(f"\n{count} rollouts each; per cent of 95 % intervals of the life ratio that hold the truth")
     for rollout in COVERED:
         coverage(rollout, count)
