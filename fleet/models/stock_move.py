@@ -73,6 +73,7 @@ class StockMove(Coded, Versioned, Strikeable, Entered):
             models.Index(fields=["other_store", "part"]),
             models.Index(fields=["part", "happened_on"]),
             models.Index(fields=["store", "happened_on"]),
+            models.Index(fields=["happened_on"]),  # the newest of all
         ]
         constraints = [
             models.CheckConstraint(

@@ -87,12 +87,21 @@ class Listing:
         column = columns.get(asked.removeprefix("-")) or columns[self.sort.removeprefix("-")]
         if asked.removeprefix("-") not in columns:
             falling = self.sort.startswith("-")
-        order = [F(name).desc(nulls_last=True) if falling else F(name).asc(nulls_last=True) for name in column.sort]
+        order = []
+        for name in column.sort:
+            last = empty_last(rows, name)
+            order.append(F(name).desc(nulls_last=last) if falling else F(name).asc(nulls_last=last))
         return rows.order_by(*order, "pk")
 
     def lines(self, rows: QuerySet[Any]) -> Iterator[list[Any]]:
         for row in rows.iterator(chunk_size=2000) if not rows._prefetch_related_lookups else rows:  # type: ignore[attr-defined]
             yield [column.in_file(row) for column in self.columns]
+
+
+def empty_last(rows: QuerySet[Any], name: str) -> bool | None:
+    """Where a column is never empty, saying so would only keep its index from being used."""
+    own = {field.name: field for field in rows.model._meta.concrete_fields}
+    return None if name in own and not own[name].null else True
 
 
 def csv_address(request: HttpRequest) -> str:

@@ -136,12 +136,10 @@ def stock_sentence(parts: Any, *, whole: bool) -> str:
         held = parts.filter(on_hand__gt=0).count()
         return f"{counted(held, 'part lies', 'parts lie')} in the stores that you see." if held else NOTHING
     kept = kept_parts(parts)
-    short = list(kept.filter(missing__gt=0).order_by("-missing").values_list("code", flat=True)[:4])
-    count = kept.filter(missing__gt=0).count()
-    if not kept.exists():
-        return NOTHING
+    short = list(kept.filter(missing__gt=0).order_by("-missing", "code_order").values_list("code", flat=True))
+    count = len(short)
     if not count:
-        return "Every part lies at its minimum or above."
+        return "Every part lies at its minimum or above." if kept.exists() else NOTHING
     more = f" and {number(count - 3)} more" if count > 3 else ""
     return f"{counted(count, 'part lies', 'parts lie')} below the minimum: {', '.join(short[:3])}{more}."
 
