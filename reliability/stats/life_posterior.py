@@ -2,7 +2,7 @@
 family.
 
 `weibull_posterior` answers for one model. Here models are averaged by their evidence (Hoeting, Madigan, Raftery &
-Volinsky 1999, Statistical Science 14, 382): sites that do not differ at all beside sites that spread, and from 20
+Volinsky 1999, Statistical Science 14, 382): sites that do not differ at all beside sites that spread, and from six
 failures on lognormal lives beside Weibull ones.
 """
 
@@ -25,7 +25,7 @@ from reliability.stats.posterior_lognormal import LognormalGrid, lognormal_grid
 
 FloatArray = NDArray[np.float64]
 
-FAMILIES_FROM = 20  # failures; with fewer the records cannot tell the families apart
+FAMILIES_FROM = 6  # failures; with fewer the records cannot tell the families apart
 WEIBULL_ODDS = 3.0  # prior odds of Weibull against lognormal lives
 ALIKE_ODDS = 1.0  # prior odds of sites that do not differ against sites that spread
 

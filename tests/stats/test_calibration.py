@@ -15,7 +15,7 @@ def test_a_young_fleet_is_held_and_the_constant_rate_beaten() -> None:
     pit = np.array(scores.pit["all"])
     assert 0.56 <= np.mean((pit > 0.1) & (pit < 0.9)) <= 1.0
     assert np.mean(scores.rival["all"]) > 2.0 * np.mean(scores.crps["all"])
-    assert len(list(lines("young", scores, 1.0))) == 4
+    assert len(list(lines("young", scores))) == 3
 
 
 def test_visits_are_counted_on_their_lattice() -> None:

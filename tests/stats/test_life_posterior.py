@@ -65,7 +65,7 @@ def test_many_records_tell_the_families_apart(family: str, low: float, high: flo
 
 
 def test_few_records_stay_with_weibull() -> None:
-    found = life_posterior(many("lognormal", np.random.default_rng(3), 20))
+    found = life_posterior(many("lognormal", np.random.default_rng(3), 5))
     assert found.lognormal_share == 0.0
 
 
