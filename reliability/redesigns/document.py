@@ -68,7 +68,7 @@ def redesign_document(question: RedesignQuestion) -> dict[str, Any]:
         if posterior is None
         else ahead_of(beside, everything, verdict, posterior.effects(), _a_module(beside)),
         "same_dates": {
-            **_with_past(evidence_of(beside, question.confidence), paired, question.confidence),
+            **_with_past(evidence_of(beside, question.confidence, positions_too=False), paired, question.confidence),
             "at_like_duty": _at_like_duty(beside, alike, question.confidence),
             "curves": _curves(beside, question),
         },

@@ -30,13 +30,16 @@ TESTS = (
 )
 
 
-def evidence_of(lives: Compared, confidence: float) -> dict[str, Any]:
-    """Tests, restricted means and life ratios of one comparison; what cannot be told is None, with its reason."""
+def evidence_of(lives: Compared, confidence: float, *, positions_too: bool = True) -> dict[str, Any]:
+    """Tests, restricted means and life ratios of one comparison; what cannot be told is None, with its reason.
+
+    positions_too=False leaves out the ratio with positions that differ: over the same dates it needs their past.
+    """
     notes: list[str] = []
     return {
         "tests": tests_of(lives, notes),
         "restricted_mean": restricted_mean_of(lives, confidence, notes),
-        "ratio": ratio_of(lives, confidence, notes),
+        "ratio": ratio_of(lives, confidence, notes, positions_too),
         "notes": list(dict.fromkeys(notes)),
     }
 
@@ -107,7 +110,7 @@ def restricted_mean_of(lives: Compared, confidence: float, notes: list[str]) -> 
     return None
 
 
-def ratio_of(lives: Compared, confidence: float, notes: list[str]) -> dict[str, Any] | None:
+def ratio_of(lives: Compared, confidence: float, notes: list[str], positions_too: bool = True) -> dict[str, Any] | None:
     """Life of the new parts over that of the old: with sites that differ, and beside it under other assumptions."""
     sides = both_sides(lives)
     if sides is None:
@@ -122,6 +125,9 @@ def ratio_of(lives: Compared, confidence: float, notes: list[str]) -> dict[str, 
     }
     answer: dict[str, Any] = {}
     for name, how in ways.items():
+        if name == "positions differ" and not positions_too:
+            answer[name] = None  # keeps its place among the others
+            continue
         try:
             answer[name] = told_ratio(life_ratio(before, after, confidence_level=confidence, **how))
         except StatisticsError as error:

@@ -126,9 +126,9 @@ class RatioLikelihood:
         value += top + math.log(float(shares.sum()))
         shares /= shares.sum()
         slopes = -mean.T @ first  # (V, P)
-        bends = np.einsum("sv,si,sj->vij", gain, first, first, optimize=True) - self._second(sums, mean)
+        bends = (gain.T[:, None, :] * first.T) @ first - self._second(sums, mean)
         middle = shares @ slopes
-        spread_bend = np.einsum("v,vij->ij", shares, bends) + (slopes * shares[:, None]).T @ slopes
+        spread_bend = np.tensordot(shares, bends, 1) + (slopes * shares[:, None]).T @ slopes
         return value, slope + middle, bend + spread_bend - np.outer(middle, middle)
 
     def _heights(self, hazard: FloatArray) -> FloatArray:
