@@ -48,4 +48,4 @@ def bench_ahead(person: Any, today: dt.date) -> list[str]:
     document = last_bench_document(today)
     if document is None or not sees_whole_bench(person):
         return []
-    return [sentence for sentence in (document["course_sentence"], document["target_sentence"]) if sentence]
+    return [sentence for sentence in (document["ends_sentence"], document["target_sentence"]) if sentence]

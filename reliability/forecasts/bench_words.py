@@ -18,14 +18,19 @@ def sentences(found: Backlog) -> list[str]:
 
 def course(found: Backlog) -> str:
     """`23 modules are at the bench. On 2 March there will be about 31 (80 of 100 cases: 18 to 47).`"""
+    now = int(found.course.modules.values[0, 0])
+    verb = "is" if now == 1 else "are"
+    return f"{counted(now, 'module')} {verb} at the bench. {ends(found)}"
+
+
+def ends(found: Backlog) -> str:
+    """`On 2 March there will be about 31 (80 of 100 cases: 18 to 47).`"""
     modules, today = found.course.modules, found.bench.today
-    now = int(modules.values[0, 0])
     end = today + dt.timedelta(days=found.course.days)
     lower, upper = modules.band(0.8)
-    verb = "is" if now == 1 else "are"
     return (
-        f"{counted(now, 'module')} {verb} at the bench. On {day(end, today)} there will be about "
-        f"{_about(float(modules.mean[-1]))} (80 of 100 cases: {_to(lower[-1], upper[-1])})."
+        f"On {day(end, today)} there will be about {_about(float(modules.mean[-1]))} "
+        f"(80 of 100 cases: {_to(lower[-1], upper[-1])})."
     )
 
 

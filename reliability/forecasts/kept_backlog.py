@@ -13,7 +13,7 @@ from django.utils import timezone
 from fleet.models import Component, DataVersion
 from reliability.forecasts.backlog import Backlog, Bench, Change, backlog, changes_told, replicates_for
 from reliability.forecasts.bench_records import RETROFIT, BenchRecords, bench_records
-from reliability.forecasts.bench_words import change_sentence, course, sentences, target
+from reliability.forecasts.bench_words import change_sentence, ends, sentences, target
 from reliability.forecasts.coming_use import ComingUse, kept_uses
 from reliability.kept import key_of
 from reliability.models import KeptResult
@@ -82,7 +82,7 @@ def told(records: BenchRecords, bench: Bench, uses: dict[str, ComingUse], questi
     document = {
         **found.document(),
         "sentences": sentences(found),
-        "course_sentence": course(found),
+        "ends_sentence": ends(found),
         "target_sentence": target(found),
         "notes": records.notes,
         "current": all(use.current for use in uses.values()),

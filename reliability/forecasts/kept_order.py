@@ -39,8 +39,10 @@ def order_document(
 ) -> Document:
     """Today's list; what is not counted yet is counted now, or left out. A list with assumptions is not kept."""
     today, told = timezone.localdate(), list(assumed)
-    uses = kept_uses(Component.objects.all(), count=count)
-    usual = not told and service_level is None
+    components = list(Component.objects.all())
+    uses = kept_uses(components, count=count)
+    # what is not counted yet is not told apart from what cannot be: such a list is not kept
+    usual = not told and service_level is None and len(uses) == len(components)
     before = last_document(today) if usual else None
     document = made(today, uses, told, rules(today, service_level=service_level), currency, before)
     if usual and (before is None or before != document):

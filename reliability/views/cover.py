@@ -28,13 +28,13 @@ def stores(request: Any) -> HttpResponseBase:
 
 
 def cover_column() -> Column | None:
-    """From the order list as it was last made today; without one there is no column."""
+    """From what was counted today already; without that there is no column."""
     from reliability.forecasts.kept_order import order_document
 
     document = order_document(Book.load().currency, count=False)
-    if not document["lines"]:
-        return None
     weeks = {line["part"]: line["cover_weeks"] for line in document["lines"] if line["known"]}
+    if not weeks:
+        return None
     return Column(
         "cover",
         "Lasts, weeks",
