@@ -21,14 +21,19 @@ def early_window(lifetimes: Lifetimes, candidates: Sequence[float] | None = None
 
     For each candidate age the evidence of "a share (Jeffreys' prior) fails evenly before it, the others live Weibull
     given survival to it" is weighed against one Weibull for all; the best is taken if its log Bayes factor is above 4.
-    candidates: ages in the unit of the lives (from 1 % to a fifth of the median failure age if None).
+    candidates: ages in the unit of the lives (from 1 % to a fifth of the median failure age, and, where that is
+    young, of half the greatest age seen, if None).
     Source: Kass & Raftery 1995, J. Am. Statist. Assoc. 90, 773 (the scale of Bayes factors).
     """
     failed = lifetimes.observed
     if lifetimes.failures < 5:
         return 0.0
     middle = float(np.median(np.repeat(lifetimes.durations[failed], np.ceil(lifetimes.weights[failed]).astype(int))))
-    ages = np.ceil(middle * np.geomspace(0.01, 0.2, 6)) if candidates is None else np.asarray(candidates, dtype=float)
+    # in a young fleet most failures may be early ones: then half the greatest age seen is the measure
+    reach = 0.5 * float(lifetimes.durations.max())
+    measures = (middle, reach) if middle < 0.5 * reach else (middle,)
+    usual = np.ceil(np.concatenate([measure * np.geomspace(0.01, 0.2, 6) for measure in measures]))
+    ages = usual if candidates is None else np.asarray(candidates, dtype=float)
     plain = log_evidence(lifetimes)
     found = [(_split_evidence(lifetimes, float(age)) - plain, float(age)) for age in np.unique(ages)]
     best, age = max(found, default=(0.0, 0.0))

@@ -114,6 +114,14 @@ def test_early_failures_are_seen_where_they_are() -> None:
     assert early_window(infants(np.random.default_rng(2), 0.1, visits=7.0)) >= 5.0
 
 
+def test_early_failures_are_seen_in_a_young_fleet_where_most_failures_are_early() -> None:
+    """Their median is an early age itself: a window measured by it alone would lie before them."""
+    rng = np.random.default_rng(4)
+    life = np.where(rng.random(160) < 0.15, rng.uniform(0, 5, 160), 250 * rng.weibull(3.0, 160))
+    lives = records(np.ceil(life), rng.integers(20, 150, 160).astype(float))
+    assert 3.0 <= early_window(lives) <= 12.0
+
+
 @pytest.mark.parametrize("seed", range(6))
 def test_no_early_failures_are_seen_where_there_are_none(seed: int) -> None:
     assert early_window(infants(np.random.default_rng(seed), 0.0)) == 0.0
