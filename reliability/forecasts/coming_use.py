@@ -171,6 +171,11 @@ def kept_uses(components: Iterable[Component], *, count: bool) -> dict[str, Comi
 
 def read_use(component: str, row: KeptResult, version: int) -> ComingUse:
     told = json.loads(bytes(row.payload))
+    return use_of(component, told, row.made_at, current=row.data_version == version)
+
+
+def use_of(component: str, told: dict[str, Any], counted_at: dt.datetime, *, current: bool) -> ComingUse:
+    """From the plain values of a count."""
     return ComingUse(
         component=component,
         begin=dt.date.fromisoformat(told["begin"]),
@@ -180,8 +185,8 @@ def read_use(component: str, row: KeptResult, version: int) -> ComingUse:
         weekly=told["weekly"],
         standing=[(site, part, needed, count) for site, part, needed, count in told["standing"]],
         by_site=told["by_site"],
-        counted_at=row.made_at,
-        current=row.data_version == version,
+        counted_at=counted_at,
+        current=current,
     )
 
 

@@ -23,3 +23,13 @@ def count_use(work: Work, progress: Progress) -> dict[str, Any]:
     order_document(Book.load().currency)
     bench_document()
     return {"components": len(components)}
+
+
+@work_kind("backtest_bench", daily="Judging past forecasts of the bench")
+def judge_past_backlogs(work: Work, progress: Progress) -> dict[str, Any]:
+    """Once a quarter has ended since the last time; most days nothing. Asked for by name it is done in any case."""
+    from reliability.forecasts.backlog_backtest import is_bench_due, judge_bench
+
+    if not (is_bench_due() or work.arguments.get("again")):
+        return {"judged": 0}
+    return {"judged": judge_bench(since=work.made_at, tell=progress.step)["judged"]}

@@ -18,6 +18,7 @@ from fleet.views.listing import as_csv
 from reliability.forms.bench_backlog import BacklogForm
 
 WHOLE_BENCH = "This counts all depots together, and you see some of them only. Ask somebody who sees all of them."
+TOO_YOUNG = "No past quarter can be judged yet: before they began, too few jobs had been finished to learn from."
 FILE_HEAD = [
     "day", "modules_expected", "modules_from_80", "modules_to_80", "modules_from_95", "modules_to_95",
     "hours_expected", "hours_from_80", "hours_to_80", "hours_from_95", "hours_to_95", "ready_expected",
@@ -78,8 +79,40 @@ def page(request: Any, document: Document) -> Document:
         "difference": document.get("difference_sentence", ""),
         "needed": needed_table(document),
         "kinds": kinds_table(document),
+        "past": past(),
         "files": {"csv": address, "json": address.replace("as=csv", "as=json")},
     }  # fmt: skip
+
+
+def past() -> Document | None:
+    """How past forecasts of the bench did, once they were judged."""
+    from reliability.forecasts.backlog_backtest import MEASURE, latest_bench
+    from reliability.forecasts.backtest_words import line
+
+    document = latest_bench()
+    if document is None:
+        return None
+    columns = [
+        {"key": "from", "label": "13 weeks from"},
+        {"key": "first", "label": "Modules on the first day", "numeric": True},
+        {"key": "expected", "label": "Expected after them", "numeric": True},
+        {"key": "band", "label": "80 in 100", "numeric": True},
+        {"key": "actual", "label": "Were there", "numeric": True},
+    ]
+    rows = [
+        {
+            "cells": [
+                dt.date.fromisoformat(each["from"]),
+                each["at_first"],
+                number(each["expected"], 0),
+                "{} to {}".format(*each["bands"]["0.8"]),
+                {"text": number(each["actual"]), "strong": True, "sub": "" if each["held"]["0.8"] else "outside"},
+            ]
+        }
+        for each in (document["measures"][MEASURE]["quarters"] if document["judged"] else [])
+    ]
+    told = line(document, MEASURE) if document["judged"] else {"sentence": TOO_YOUNG, "note": ""}
+    return {**told, "columns": columns, "rows": rows}
 
 
 def hours_sentence(document: Document) -> str:
