@@ -74,6 +74,7 @@ class StockMove(Coded, Versioned, Strikeable, Entered):
             models.Index(fields=["part", "happened_on"]),
             models.Index(fields=["store", "happened_on"]),
             models.Index(fields=["happened_on"]),  # the newest of all
+            models.Index(fields=["happened_on"], condition=Q(line__isnull=False), name="deliveries_by_day"),
         ]
         constraints = [
             models.CheckConstraint(
