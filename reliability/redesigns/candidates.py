@@ -8,7 +8,7 @@ import numpy as np
 
 from reliability.life_answer import finite
 from reliability.redesigns.compared import AFTER, Compared, all_history, at_the_same_time
-from reliability.redesigns.evidence import both_sides, strata_of, told_ratio
+from reliability.redesigns.evidence import both_sides, limits_of, strata_of, told_ratio
 from reliability.stats.difference import counted_when_found, logrank
 from reliability.stats.errors import StatisticsError
 from reliability.stats.life_ratio import life_ratio
@@ -61,10 +61,15 @@ def _candidate(part: str, lives: Compared, question: RedesignQuestion) -> dict[s
     return row
 
 
-def rigs_of(question: RedesignQuestion, choices: dict[str, Any]) -> list[dict[str, Any]]:
-    """For each part with lives on a test stand: both kinds of lives, and how many times as long it lives there."""
+def rigs_of(question: RedesignQuestion, whole: Compared, choices: dict[str, Any]) -> list[dict[str, Any]]:
+    """For each part with lives on a test stand: both kinds of lives, and how many times as long it lives there.
+
+    whole: lives of old and new parts, stands included; those of other candidates are read besides.
+    """
     parts = dict.fromkeys([*question.old, *question.new, *question.also])
-    lives = all_history(question.component, list(parts), [], **{**choices, "with_rigs": True})
+    lives = whole
+    if question.also:
+        lives = all_history(question.component, list(parts), [], with_rigs=True, **choices)
     if lives.lifetimes is None or not lives.rigs.any():
         return []
     rows = []
@@ -93,7 +98,7 @@ def _factor(field: Lifetimes | None, rig: Lifetimes, question: RedesignQuestion)
     before, after = counted_when_found(field), counted_when_found(rig)
     alone = (np.zeros(len(before)), np.zeros(len(after)))
     try:
-        found = life_ratio(before, after, sites=alone, confidence_level=question.confidence)
+        found = life_ratio(before, after, sites=alone, probabilities=(0.5,), confidence_level=question.confidence)
     except StatisticsError as error:
         return {"factor": None, "why_not": str(error)}
-    return {"factor": told_ratio(found)["median"], "why_not": ""}
+    return {"factor": limits_of(found.median), "why_not": ""}

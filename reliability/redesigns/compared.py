@@ -17,6 +17,7 @@ from numpy.typing import NDArray
 
 from fleet.models import Component, FailureMode, Part, Site, SiteKind
 from reliability.fleet_lives import NO_PLACE
+from reliability.life_rules import Reason
 from reliability.lives_of_positions import PositionLife, first_fitted, lives_of_positions
 from reliability.stats.lifetimes import Lifetimes
 
@@ -63,6 +64,14 @@ class Compared:
         """The same with these rows only."""
         lifetimes = self.lifetimes.subset(rows) if self.lifetimes is not None and rows.any() else None
         return replace(self, lifetimes=lifetimes, **{name: getattr(self, name)[rows] for name in COLUMNS})
+
+    def without_rigs(self) -> Compared:
+        """The lives in the field; those on test stands are counted as left out."""
+        on_stands = int(self.rigs.sum())
+        if not on_stands:
+            return self
+        left_out = {**self.left_out, Reason.RIG.value: self.left_out.get(Reason.RIG.value, 0) + on_stands}
+        return replace(self.chosen(~self.rigs), left_out=left_out)
 
     def if_only(self, modes: Sequence[str]) -> Compared:
         """The same lives if only these failure modes acted: other failures count as withdrawals in good order."""

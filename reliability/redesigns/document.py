@@ -28,6 +28,9 @@ from reliability.stats.weibull_fit import fit_weibull
 
 Paired = tuple[tuple[Lifetimes, Lifetimes], dict[str, Any]] | None
 
+# Over all history only the ratio with sites that differ is shown: the others would cost as much again.
+ASIDE = ("positions differ", "one shape for both", "lives independent")
+
 
 def kept_redesign(question: RedesignQuestion) -> dict[str, Any]:
     """Read where it was computed before from the same data."""
@@ -41,7 +44,8 @@ def redesign_document(question: RedesignQuestion) -> dict[str, Any]:
         "as_of": question.as_of,
         "sites": list(question.sites) if question.sites is not None else None,
     }
-    everything = all_history(question.component, question.new, question.old, **choices)
+    whole = all_history(question.component, question.new, question.old, with_rigs=True, **choices)
+    everything = whole.without_rigs()
     beside = at_the_same_time(question.component, question.new, question.old, not_before=question.not_before, **choices)
     alike = comparability(everything, beside)
     if question.modes:
@@ -68,17 +72,19 @@ def redesign_document(question: RedesignQuestion) -> dict[str, Any]:
         if posterior is None
         else ahead_of(beside, everything, verdict, posterior.effects(), _a_module(beside)),
         "same_dates": {
-            **_with_past(evidence_of(beside, question.confidence, positions_too=False), paired, question.confidence),
+            **_with_past(
+                evidence_of(beside, question.confidence, without=["positions differ"]), paired, question.confidence
+            ),
             "at_like_duty": _at_like_duty(beside, alike, question.confidence),
             "curves": _curves(beside, question),
         },
-        "all_history": {**evidence_of(everything, question.confidence), "curves": history},
+        "all_history": {**evidence_of(everything, question.confidence, without=ASIDE), "curves": history},
         "starts": {site: day.isoformat() for site, day in sorted(beside.starts.items())},
         "comparability": _told(alike),
         "by_mode": {"age": None, "rows": []} if question.modes else single_modes(beside, names, question.confidence),
         "fitting_faults": fitting_faults(everything, question.confidence),
         "candidates": candidates_of(question, choices),
-        "rigs": rigs_of(question, choices),
+        "rigs": rigs_of(question, whole, choices),
         "few": few_failures_of(everything, question.confidence, _target(history, question.hope), shape),
         "left_out": [{"reason": reason, "count": count} for reason, count in sorted(everything.left_out.items())],
     }

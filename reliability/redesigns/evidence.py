@@ -6,6 +6,7 @@ beside them and are named, since water, season and habits change with the calend
 
 from __future__ import annotations
 
+from collections.abc import Collection
 from typing import Any
 
 import numpy as np
@@ -30,16 +31,16 @@ TESTS = (
 )
 
 
-def evidence_of(lives: Compared, confidence: float, *, positions_too: bool = True) -> dict[str, Any]:
+def evidence_of(lives: Compared, confidence: float, *, without: Collection[str] = ()) -> dict[str, Any]:
     """Tests, restricted means and life ratios of one comparison; what cannot be told is None, with its reason.
 
-    positions_too=False leaves out the ratio with positions that differ: over the same dates it needs their past.
+    without: ratios that are not asked for. Over the same dates the one with positions that differ needs their past.
     """
     notes: list[str] = []
     return {
         "tests": tests_of(lives, notes),
         "restricted_mean": restricted_mean_of(lives, confidence, notes),
-        "ratio": ratio_of(lives, confidence, notes, positions_too),
+        "ratio": ratio_of(lives, confidence, notes, without),
         "notes": list(dict.fromkeys(notes)),
     }
 
@@ -110,7 +111,9 @@ def restricted_mean_of(lives: Compared, confidence: float, notes: list[str]) -> 
     return None
 
 
-def ratio_of(lives: Compared, confidence: float, notes: list[str], positions_too: bool = True) -> dict[str, Any] | None:
+def ratio_of(
+    lives: Compared, confidence: float, notes: list[str], without: Collection[str] = ()
+) -> dict[str, Any] | None:
     """Life of the new parts over that of the old: with sites that differ, and beside it under other assumptions."""
     sides = both_sides(lives)
     if sides is None:
@@ -125,7 +128,7 @@ def ratio_of(lives: Compared, confidence: float, notes: list[str], positions_too
     }
     answer: dict[str, Any] = {}
     for name, how in ways.items():
-        if name == "positions differ" and not positions_too:
+        if name in without:
             answer[name] = None  # keeps its place among the others
             continue
         try:
@@ -170,8 +173,8 @@ def _places(lives: Compared) -> tuple[NDArray[Any], NDArray[Any]]:
 
 def told_ratio(found: LifeRatio) -> dict[str, Any]:
     return {
-        "b10": _limits(found.b10),
-        "median": _limits(found.median),
+        "b10": limits_of(found.b10),
+        "median": limits_of(found.median),
         "shapes": [finite(found.before_shape), finite(found.after_shape)],
         "spread": finite(found.spread),
         "clusters": found.clusters,
@@ -179,7 +182,7 @@ def told_ratio(found: LifeRatio) -> dict[str, Any]:
     }
 
 
-def _limits(ratio: Ratio) -> dict[str, Any]:
+def limits_of(ratio: Ratio) -> dict[str, Any]:
     answer: dict[str, Any] = {
         "estimate": finite(ratio.estimate),
         "lower": finite(ratio.lower),
