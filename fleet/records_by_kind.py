@@ -5,10 +5,23 @@ from __future__ import annotations
 from typing import Any
 
 from django.db import models
+from django.db.models import Q
 from django.http import Http404
 from django.urls import reverse
 
-from fleet.models import BenchHours, BenchJob, Finding, Fitting, Module, Placement, Reading, StockMove, Stop, Visit
+from fleet.models import (
+    BenchHours,
+    BenchJob,
+    Finding,
+    Fitting,
+    Module,
+    Placement,
+    Reading,
+    StockMove,
+    Stop,
+    Store,
+    Visit,
+)
 
 ENTERED: dict[str, type[models.Model]] = {
     "visit": Visit,
@@ -49,7 +62,11 @@ def seen_record(request: Any, kind: str, pk: int, *, kinds: dict[str, type[model
     """The record, if there is such a kind and the person may see it; 404 otherwise."""
     if kind not in kinds or not 0 < pk < 2**63:
         raise Http404
-    record = request.seen(kinds[kind]).filter(pk=pk).first()
+    rows = request.seen(kinds[kind]).filter(pk=pk)
+    if kind == "move":  # one is seen at either end, but what it did is undone at both
+        stores = request.seen(Store).values("pk")
+        rows = rows.filter(Q(other_store=None) | Q(other_store__in=stores), store__in=stores)
+    record = rows.first()
     if record is None:
         raise Http404
     return record

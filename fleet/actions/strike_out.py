@@ -12,7 +12,7 @@ from fleet.actions.checks_places import Places
 from fleet.actions.checks_rights import check_may_correct, module_of
 from fleet.actions.correct_record import clean_reason, fetched
 from fleet.actions.errors import AlreadyDone, BadValue, NotAllowed
-from fleet.actions.ledger import effects, locked_balances, take_back
+from fleet.actions.ledger import check_store, effects, locked_balances, take_back
 from fleet.actions.measured import MeasuredEnds
 from fleet.actions.rebuild_clocks import rebuild_clocks
 from fleet.actions.strike import strike
@@ -109,6 +109,9 @@ def strike_move(*, by: Person | None, move: StockMove, reason: str, version: int
         if move.struck_out:
             raise AlreadyDone(f"This was struck out already: {move.struck_out}.", field="record")
         check_may_correct(by, move)
+        for store in (move.store, move.other_store):
+            if store is not None:
+                check_store(store, by, field="record")
         check_version(move, version)
         return take_back(move, by, reason)
 

@@ -15,25 +15,50 @@ from fleet.formats import counted, number
 from fleet.forms.errors import add_record_error
 from fleet.forms.stock_filters import MoveFilter
 from fleet.forms.stores import CountForm, IssueForm, MoveForm, ReceiveForm, ScrapForm, TransferForm
-from fleet.models import Part, StockBalance, StockMove, Store
-from fleet.rights import ISSUE, STOCK, STORES, may_correct, needs
+from fleet.models import Part, Site, StockBalance, StockMove, Store
+from fleet.rights import ISSUE, STOCK, STORES, may, may_correct, needs
 from fleet.views.listing import Column, Listing
 
 JOINS = ("store", "other_store", "part", "visit__module", "job__module", "line__order", "entered_by")
+ANOTHER = "another store"
 
 
 def signed(quantity: int) -> str:
     return f"+{number(quantity)}" if quantity > 0 else number(quantity)
 
 
-def what_for(move: Any) -> Any:
+class Seen:
+    """Of what a move names besides its store, that which the person may read; the rest is not named."""
+
+    def __init__(self, request: Any) -> None:
+        self.whole = request.user.all_sites and request.user.role != "bench"
+        self.sites = set() if self.whole else set(request.seen(Site).values_list("pk", flat=True))
+        self.stores = set() if self.whole else set(request.seen(Store).values_list("pk", flat=True))
+        self.orders = may(request.user, STOCK)
+
+    def store(self, key: int | None) -> bool:
+        return key is None or self.whole or key in self.stores
+
+    def site(self, key: int | None) -> bool:
+        return self.whole or key in self.sites
+
+
+def store_name(store: Store, seen: Seen) -> str:
+    return str(store.title) if seen.store(store.pk) else ANOTHER
+
+
+def what_for(move: Any, seen: Seen) -> Any:
     """The visit, job or order that a move belongs to."""
     if move.visit is not None:
+        if not seen.site(move.visit.site_id):
+            return {"text": "another site", "sub": "visit"}
         code = move.visit.module.code
         return {"text": code, "url": reverse("module", args=[code]), "sub": "visit"}
     if move.job is not None:
+        if not seen.site(move.job.depot_id):
+            return {"text": "another depot", "sub": "bench"}
         return {"text": move.job.module.code, "url": reverse("bench_job", args=[move.job.code]), "sub": "bench"}
-    if move.line is not None:
+    if move.line is not None and seen.orders:
         return {
             "text": move.line.order.code,
             "url": reverse("supply_order", args=[move.line.order.code]),
@@ -50,7 +75,7 @@ class MoveLines:
     """The ledger's columns; at one store, quantities are signed as that store sees them."""
 
     def __init__(self, request: Any, store: Store | None = None) -> None:
-        self.request, self.store = request, store
+        self.request, self.store, self.seen = request, store, Seen(request)
 
     def quantity(self, move: Any) -> int:
         return int(-move.quantity if self.store is not None and move.store_id != self.store.pk else move.quantity)
@@ -59,26 +84,28 @@ class MoveLines:
         if move.other_store is None:
             return ""
         there = move.store if self.store is not None and move.store_id != self.store.pk else move.other_store
-        return str(there.title)
+        return store_name(there, self.seen)
 
     def strike(self, move: Any) -> Any:
         if move.struck_out:
             return {"text": f"struck out: {move.struck_out}"}
-        if not may_correct(self.request.user, move):
+        both = self.seen.store(move.store_id) and self.seen.store(move.other_store_id)
+        if not (both and may_correct(self.request.user, move)):
             return ""
         return {"text": "Strike out", "url": reverse("strike_out_record", args=["move", move.pk])}
 
     def columns(self) -> list[Column]:
         return [
             Column("day", "Day", lambda m: m.happened_on, sort=("happened_on",)),
-            Column("store", "Store", lambda m: m.store.title, plain=lambda m: m.store.code,
+            Column("store", "Store", lambda m: store_name(m.store, self.seen),
+                   plain=lambda m: m.store.code if self.seen.store(m.store_id) else ANOTHER,
                    sort=("store__code_order",)),
             Column("part", "Part", part_cell, plain=lambda m: m.part.code, sort=("part__code_order",)),
             Column("quantity", "Pieces", lambda m: signed(self.quantity(m)), plain=lambda m: m.quantity,
                    sort=("quantity",), numeric=True),
             Column("kind", "Kind", lambda m: m.kind, sort=("kind",)),
             Column("other", "Other store", self.other),
-            Column("for", "For", what_for),
+            Column("for", "For", lambda m: what_for(m, self.seen)),
             Column("condition", "Condition", lambda m: m.condition, sort=("condition",)),
             Column("reason", "Reason", lambda m: m.reason),
             Column("who", "Entered by", lambda m: m.entered_by.name if m.entered_by else "",

@@ -11,10 +11,15 @@ import pytest
 from django.test import Client
 from django.urls import reverse
 
+from fleet.actions.errors import NotAllowed
+from fleet.actions.issue_part import issue_part
 from fleet.actions.place_supply_order import OrderedPart, place_supply_order
 from fleet.actions.rebuild_balances import ledger_sums
+from fleet.actions.record_visit import record_visit
+from fleet.actions.strike_out import strike_out
+from fleet.actions.transfer_stock import transfer_stock
 from fleet.models import Part, Person, StockMove, Store, SupplyLine, SupplyOrder
-from tests.factories import Carriage, make_depot, make_planner, make_store, on, stock
+from tests.factories import Carriage, at, make_depot, make_planner, make_store, on, stock
 from tests.fleet.invariants_stock import broken_stock_rules
 from tests.fleet.log_page import at as at_position
 from tests.fleet.log_page import send
@@ -271,6 +276,33 @@ def test_a_move_is_struck_out_on_screen(weir: Carriage, otto: Person, shelf: Sto
     assert lies(shelf, weir.n1) == 0
     assert client.get(reverse("correct_record", args=["move", move.pk])).status_code == 404
     assert "booked twice" in text(client.get("/history/?kind=stock-move"))
+
+
+def test_what_lies_elsewhere_is_not_named_nor_undone(weir: Carriage, otto: Person, shelf: Store, van: Store) -> None:
+    """A van serves several sites and is filled at a depot: who sees one site reads and undoes that part of it."""
+    away = Carriage()
+    weir.crew.sites.add(away.site)
+    stock(shelf, weir.n1, 5)
+    stock(van, weir.n1, 5, happened_on=on("2024-01-10"))
+    transfer = transfer_stock(by=otto, store=shelf, other_store=van, part=weir.n1, quantity=1)
+    visit = record_visit(by=weir.crew, module=away.module, happened_at=at("2024-03-09"))
+    issue_part(by=weir.crew, store=van, part=weir.n1, visit=visit)
+    limited = make_planner(sites=[weir.site])
+    client = client_of(limited)
+    for address in ("/stores/moves/", "/stores/moves/?as=csv", "/stores/VAN-R/"):
+        page = text(client.get(address))
+        assert "another store" in page, address
+        assert "another site" in page, address
+        for name in ("Depot shelf", "SHELF", away.module.code + "<", away.module.code + ","):
+            assert name not in page, f"{address} names {name}"
+        assert "shelf" in text(client_of(otto).get(address)).casefold()
+    strike = reverse("strike_out_record", args=["move", transfer.pk])
+    assert client.get(strike).status_code == 404
+    assert client.post(strike, {"version": 1, "reason": "mine"}).status_code == 404
+    with pytest.raises(NotAllowed, match="none of yours"):
+        strike_out(by=limited, record=transfer, reason="mine")
+    assert (lies(shelf, weir.n1), lies(van, weir.n1)) == (4, 5)
+    assert client_of(otto).get(strike).status_code == 200
 
 
 def test_search_finds_stores_and_orders(weir: Carriage, otto: Person, shelf: Store) -> None:
