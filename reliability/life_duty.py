@@ -82,7 +82,10 @@ def _effect(
     from reliability.stats.errors import StatisticsError
     from reliability.stats.life_regression import fit_weibull_regression
 
-    lifetimes, duty = stratum.lifetimes.subset(known), a_day[known]
+    # in an order that does not depend on the database's numbers: sums are then the same to the last digit
+    lives, duty = stratum.lifetimes.subset(known), a_day[known]
+    order = np.lexsort((lives.last_good, duty, lives.site_codes, lives.observed, lives.entries, lives.durations))
+    lifetimes, duty = lives.subset(order), duty[order]
     told: Data = {
         "group": stratum.label,
         "clock": clock,
