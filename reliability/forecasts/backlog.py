@@ -163,7 +163,7 @@ def backlog(
     bench: Bench, *, change: Change | None = None, replicates: int | None = None, with_needed: bool = True
 ) -> Backlog:
     """The bench's coming weeks, as planned or with a change; replicates: as many as fit if None."""
-    replicates = replicates or replicates_for(bench)
+    replicates = replicates or replicates_for(bench, change)
     bench = bench if change is None else changed(bench, change)
     hours = hours_by_day(bench.hours, bench.today, bench.days)
     if change is not None:
@@ -184,8 +184,10 @@ def backlog(
     )
 
 
-def replicates_for(bench: Bench) -> int:
-    """2,000, or as many as keep a large bench quick."""
+def replicates_for(bench: Bench, change: Change | None = None) -> int:
+    """2,000, or as many as keep a large bench quick; beside a change as many as keep both quick."""
+    if change is not None:
+        return min(replicates_for(bench), replicates_for(changed(bench, change)))
     coming = sum(
         (
             0.0
@@ -201,7 +203,7 @@ def replicates_for(bench: Bench) -> int:
 
 def what_a_change_does(bench: Bench, change: Change, *, replicates: int | None = None) -> dict[str, Any]:
     """The change minus the plan, week by week, on the same jobs: the bands are of the difference itself."""
-    replicates = replicates or replicates_for(bench)
+    replicates = replicates or replicates_for(bench, change)
     base, other = (backlog(bench, change=each, replicates=replicates, with_needed=False) for each in (None, change))
     return changes_told(other, base)
 

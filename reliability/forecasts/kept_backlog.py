@@ -77,7 +77,8 @@ def last_bench_document(today: dt.date | None = None) -> dict[str, Any] | None:
 
 
 def told(records: BenchRecords, bench: Bench, uses: dict[str, ComingUse], question: BenchQuestion) -> dict[str, Any]:
-    replicates = replicates_for(bench)
+    change = question.change
+    replicates = replicates_for(bench, change)
     found = backlog(bench, replicates=replicates)
     document = {
         **found.document(),
@@ -91,7 +92,6 @@ def told(records: BenchRecords, bench: Bench, uses: dict[str, ComingUse], questi
         "kinds": kinds_told(found),
         "replicates": replicates,
     }
-    change = question.change
     if change is not None:
         changed = backlog(bench, change=change, replicates=replicates)
         what = changes_told(changed, found)

@@ -11,6 +11,7 @@ from django.utils import timezone
 from fleet.forms.record import DayInput
 
 MOST_HOURS = 10_000
+MOST_RETROFITS = 200
 DAYS = 91
 
 
@@ -29,10 +30,13 @@ class BacklogForm(forms.Form):
     retrofits_a_week = forms.FloatField(
         required=False,
         min_value=0,
-        max_value=1000,
+        max_value=MOST_RETROFITS,
         label="Retrofits a week at the bench",
         widget=forms.NumberInput(attrs={"placeholder": "as planned", "step": "any"}),
-        error_messages={"min_value": "Fewer than none cannot come. Write 0 or more."},
+        error_messages={
+            "min_value": "Fewer than none cannot come. Write 0 or more.",
+            "max_value": f"No bench takes that many. Write {MOST_RETROFITS} or fewer.",
+        },
     )
 
     def clean_target_on(self) -> dt.date | None:
