@@ -16,6 +16,7 @@ from fleet.forms.errors import add_record_error
 from fleet.forms.stock_filters import MoveFilter
 from fleet.forms.stores import CountForm, IssueForm, MoveForm, ReceiveForm, ScrapForm, TransferForm
 from fleet.models import Part, Site, StockBalance, StockMove, Store
+from fleet.models.codes import clean_code
 from fleet.rights import ISSUE, STOCK, STORES, may, may_correct, needs
 from fleet.views.listing import Column, Listing
 
@@ -178,7 +179,7 @@ def move_view(request: Any, code: str, form_class: type[MoveForm]) -> HttpRespon
 
 def asked(request: Any, store: Store) -> dict[str, Any]:
     """What the address names beforehand; with a count goes what the book says now."""
-    part = request.seen(Part).filter(code=request.GET.get("part", "").upper()[:40]).first()
+    part = request.seen(Part).filter(code=clean_code(request.GET.get("part", "").replace("\0", ""))).first()
     if part is None:
         return {}
     condition = "used" if request.GET.get("condition") == "used" else "new"

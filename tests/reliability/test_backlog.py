@@ -150,6 +150,17 @@ def test_a_large_bench_takes_fewer_replicates() -> None:
     assert backlog(large, with_needed=False).course.replicates == replicates_for(large)
 
 
+def test_a_large_change_takes_fewer_replicates_too() -> None:
+    """1,000 retrofits a week in 2,000 replicates would fill gigabytes."""
+    flood = Change(planned_a_week={"retrofit": 1000.0})
+    small = bench(kinds=(*bench().kinds, seals(kind="retrofit", name="retrofit", weekly_failures=None)))
+    assert replicates_for(small) == 2000
+    assert replicates_for(small, flood) == 200
+    assert backlog(small, change=flood, with_needed=False).course.replicates == 200
+    told = what_a_change_does(small, flood)
+    assert told["modules"]["mean"][-1] > 10_000
+
+
 # what-ifs
 
 
