@@ -55,6 +55,7 @@ class ComingUse:
     by_site: dict[str, float]
     counted_at: dt.datetime
     current: bool
+    failures_seen: int = 0
 
     @cached_property
     def taking(self) -> dict[str, dict[str, int]]:
@@ -124,6 +125,7 @@ def count_use(question: Question) -> dict[str, Any]:
     return {
         "begin": question.begin.isoformat(),
         "known": bool(taught.designs) or not running.rows,
+        "failures_seen": taught.failures,
         "failures": chances(tally.total.failures),
         "used": {str(part): chances(counts.parts_used) for part, counts in tally.groups["needed"].items()},
         "weekly": [week.mean for week in tally.weeks],
@@ -187,6 +189,7 @@ def use_of(component: str, told: dict[str, Any], counted_at: dt.datetime, *, cur
         by_site=told["by_site"],
         counted_at=counted_at,
         current=current,
+        failures_seen=told["failures_seen"],
     )
 
 

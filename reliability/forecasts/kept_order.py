@@ -76,7 +76,8 @@ def made(
 ) -> Document:
     """As plain values: lines with their reasons in words, cost, and which components could not be counted."""
     switches = all_switches(uses, assumed)
-    listed = shelves(today, [part for use in uses.values() for part in use.used], days_of_use(switches))
+    untried = [code for code, use in uses.items() if use.known and use.failures_seen == 0]
+    listed = shelves(today, [part for use in uses.values() for part in use.used], days_of_use(switches), untried)
     lines = lines_of(listed, uses, switches, asked, before)
     lines.sort(
         key=lambda line: (not line["quantity"], line["tell_on"] or "9", -line["chance_if_nothing"], line["part"])

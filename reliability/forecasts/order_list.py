@@ -68,6 +68,7 @@ class Shelf:
     supplier: str = ""
     superseded_by: str = ""  # the part that is fitted instead from `used_until` on
     used_until: dt.date | None = None
+    none_failed: bool = False  # of its component so far: then an expected use would rest on the prior alone
 
 
 @dataclass(frozen=True)
@@ -131,6 +132,7 @@ class OrderLine:
     cover_weeks: tuple[float | None, float | None, float | None] = (None, None, None)
     left_over: tuple[float, int, int] | None = None  # mean and 80 of 100 cases, when a superseded part goes out of use
     used_until: dt.date | None = None
+    none_failed: bool = False
     lead_orders: float = 0.0
     lead_figure: float | None = None
     service_level: float = 0.95
@@ -174,7 +176,7 @@ def order_line(shelf: Shelf, weekly: NDArray[np.int64] | None, rules: Rules) -> 
         "part": shelf.part, "name": shelf.name, "on_hand": shelf.on_hand, "due": due, "supplier": shelf.supplier,
         "superseded_by": shelf.superseded_by, "pack": shelf.pack, "minimum": shelf.minimum,
         "keep_at_least": shelf.keep_at_least, "unit_cost": shelf.unit_cost, "lead_orders": lead.completed,
-        "lead_figure": shelf.lead_time_days, "used_until": shelf.used_until,
+        "lead_figure": shelf.lead_time_days, "used_until": shelf.used_until, "none_failed": shelf.none_failed,
         "service_level": rules.service_level,
     }  # fmt: skip
     if weekly is None:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import datetime as dt
 from collections import defaultdict
-from collections.abc import Iterable
+from collections.abc import Collection, Iterable
 from typing import Any
 
 from django.db.models import QuerySet
@@ -17,8 +17,12 @@ DELIVERIES_SINCE = dt.timedelta(days=3 * 365)
 MOST_DELIVERIES = 60  # of a part: older ones say little of the next
 
 
-def shelves(today: dt.date, needed: Iterable[str], until: dict[str, dt.date] | None = None) -> list[Shelf]:
-    """Every part that lies somewhere, is due, has a minimum, is current or is `needed`; until: its last day in use."""
+def shelves(
+    today: dt.date, needed: Iterable[str], until: dict[str, dt.date] | None = None, none_failed: Collection[str] = ()
+) -> list[Shelf]:
+    """Every part that lies somewhere, is due, has a minimum, is current or is `needed`; until: its last day in use;
+    none_failed: components without a failure so far.
+    """
     parts = with_stock(Part.objects.all(), StockBalance.objects.all(), SupplyLine.objects.all())
     wanted, ends = set(needed), until or {}
     due, came, followers = dues(), deliveries(today), successors()
@@ -36,8 +40,9 @@ def shelves(today: dt.date, needed: Iterable[str], until: dict[str, dt.date] | N
             supplier=part.supplier,
             superseded_by=followers.get(part.code, ""),
             used_until=ends.get(part.code),
+            none_failed=part.component.code in none_failed,
         )
-        for part in parts.order_by("code_order")
+        for part in parts.select_related("component").order_by("code_order")
         if part.code in wanted or part.minimum or part.on_hand or part.due or part.state == "current"
     ]
 

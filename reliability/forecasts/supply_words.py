@@ -52,12 +52,21 @@ def use(line: OrderLine) -> str:
     if line.use_mean == 0:
         return ""
     low, high = line.use_bands["0.8"]
+    if line.none_failed:
+        return (
+            f"None has failed so far; until an order placed at the next review could come, in about "
+            f"{number(line.span_days, 0)} days, {spread_of(low, high)} will be used in 80 of 100 cases."
+        )
     about = number(line.use_mean, 0 if line.use_mean >= 20 else 1)
-    spread = f"{number(low)} to {number(high)}" if low != high else number(low)
+    spread = spread_of(low, high)
     return (
         f"Until an order placed at the next review could come, in about {number(line.span_days, 0)} days, about "
         f"{about} will be used (80 of 100 cases: {spread})."
     )
+
+
+def spread_of(low: int, high: int) -> str:
+    return f"{number(low)} to {number(high)}" if low != high else number(low)
 
 
 def wanted(line: OrderLine) -> str:

@@ -110,6 +110,8 @@ def row(line: Document, cells: Document, currency: str) -> Document:
 def use(line: Document) -> str:
     if not line["known"]:
         return "cannot tell"
+    if line["none_failed"]:
+        return "none failed yet"
     mean = line["use_mean"]
     return number(mean, 0 if mean >= 20 else 1) if mean else "none"
 

@@ -8,6 +8,7 @@ import numpy as np
 import pytest
 import time_machine
 
+from fleet.actions.rebuild_clocks import rebuild_clocks
 from fleet.models import Component, DataVersion, Redesign, RedesignChange, RolloutStep
 from reliability.forecasts.coming_use import keep_use, kept_uses, weeks_for
 from reliability.forecasts.next_quarter import forecast_document, question_of
@@ -111,3 +112,17 @@ def test_a_rollout_plan_moves_the_use_on_its_days_and_adds_what_it_changes() -> 
     drawn = switched([use], [switch])
     assert not drawn["N2"][:, 4:].any() or switch.share[4] < 1
     assert drawn["N3"][:, 2].mean() > holding - 1e-9
+
+
+def test_a_part_of_which_none_failed_is_told_by_its_band_alone() -> None:
+    """An expected use would rest on the prior alone."""
+    from reliability.forecasts.kept_order import order_document
+
+    fleet = SmallFleet()
+    for number in range(8):
+        fleet.fit(fleet.module(f"M-{number}", fleet.site(f"S-{number}")), 0)
+    rebuild_clocks()
+    (line,) = (line for line in order_document("EUR")["lines"] if line["part"] == "N1")
+    assert line["none_failed"]
+    assert "None has failed so far" in " ".join(line["reasons"])
+    assert "about" not in line["reasons"][1].partition("days,")[2]
