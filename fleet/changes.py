@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import datetime as dt
 from collections import defaultdict
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable
 from dataclasses import dataclass
 from typing import Any
 
@@ -65,6 +65,9 @@ KINDS: dict[str, type[models.Model]] = {
     "book": Book,
 }
 OFFICE_KINDS = {"person", "book"}  # need the right to people and settings
+# Named by records that are seen at either end; a module is not among them: its stay at one's site is on record there.
+OF_A_SITE = (Store, Visit, BenchJob, Site)
+Seen = Callable[[type[models.Model]], Any]
 VERBS = {"+": "entered", "~": "changed", "-": "removed"}
 NOT_TOLD = {
     "id",
@@ -118,20 +121,24 @@ def label_of(field: Any) -> str:
     return str(field.verbose_name).replace("_", " ")
 
 
-def related_names(fields: list[Any], rows: Iterable[Any]) -> dict[Any, dict[Any, str]]:
-    """Names of what foreign keys point at, one query a model."""
+def related_names(fields: list[Any], rows: Iterable[Any], seen: Seen | None = None) -> dict[Any, dict[Any, str]]:
+    """Names of what foreign keys point at, one query a model; `seen` leaves out what lies at others' sites."""
     wanted: dict[Any, set[Any]] = defaultdict(set)
     for field in fields:
         if field.is_relation:
             wanted[field.related_model].update(getattr(row, field.attname) for row in rows)
     return {
-        model: {key: str(found) for key, found in model._default_manager.in_bulk(keys - {None}).items()}
+        model: {key: str(found) for key, found in rows_of(model, seen).in_bulk(keys - {None}).items()}
         for model, keys in wanted.items()
         if keys - {None}
     }
 
 
-def tell(kind: str, rows: list[Any]) -> list[Told]:
+def rows_of(model: Any, seen: Seen | None) -> Any:
+    return seen(model) if seen is not None and model in OF_A_SITE else model._default_manager
+
+
+def tell(kind: str, rows: list[Any], seen: Seen | None = None) -> list[Told]:
     """History rows of one kind (newest first) with what each changed; three queries and one a related model."""
     model = KINDS[kind]
     key = model._meta.pk.attname
@@ -142,7 +149,7 @@ def tell(kind: str, rows: list[Any]) -> list[Told]:
         earlier[getattr(row, key)].append(row)
     everything = [row for group in earlier.values() for row in group]
     fields = told_fields(model, kind)
-    names = related_names(fields, everything)
+    names = related_names(fields, everything, seen)
     places = {row.history_id: (group, place) for group in earlier.values() for place, row in enumerate(group)}
     told = []
     for row in rows:

@@ -49,12 +49,14 @@ def history(request: Any) -> HttpResponse:
     kind = form.kind_asked()
     rows = changes_of(request, kind, form.cleaned_data)
     if request.GET.get("as") == "csv":
-        return as_csv(f"changes of {kind}", ["at", "who", "from", "what", "change", "reason"], lines(kind, rows))
+        return as_csv(
+            f"changes of {kind}", ["at", "who", "from", "what", "change", "reason"], lines(request, kind, rows)
+        )
     page = Paginator(rows, PAGE_SIZE).get_page(request.GET.get("page"))
     context = {
         "form": form,
         "kind": kind,
-        "told": tell(kind, list(page)),
+        "told": tell(kind, list(page), request.seen),
         "page": page,
         "exports": [{"name": "CSV", "url": csv_address(request)}],
     }
@@ -78,7 +80,7 @@ def changes_of(request: Any, kind: str, asked: dict[str, Any]) -> Any:
     return rows
 
 
-def lines(kind: str, rows: Any) -> list[list[str]]:
+def lines(request: Any, kind: str, rows: Any) -> list[list[str]]:
     return [
         [
             moment(each.at),
@@ -88,5 +90,5 @@ def lines(kind: str, rows: Any) -> list[list[str]]:
             "; ".join(f"{field}: {before or 'empty'} → {after}" for field, before, after in each.changes),
             each.reason,
         ]
-        for each in tell(kind, list(rows[:MOST_IN_FILE]))
+        for each in tell(kind, list(rows[:MOST_IN_FILE]), request.seen)
     ]

@@ -296,6 +296,12 @@ def test_what_lies_elsewhere_is_not_named_nor_undone(weir: Carriage, otto: Perso
         for name in ("Depot shelf", "SHELF", away.module.code + "<", away.module.code + ","):
             assert name not in page, f"{address} names {name}"
         assert "shelf" in text(client_of(otto).get(address)).casefold()
+    for address in ("/history/?kind=stock-move", "/history/?kind=stock-move&as=csv"):
+        told = text(client.get(address))
+        assert "VAN-R" in told
+        assert "SHELF" not in told
+        assert visit.code not in told
+        assert visit.code in text(client_of(otto).get(address))
     strike = reverse("strike_out_record", args=["move", transfer.pk])
     assert client.get(strike).status_code == 404
     assert client.post(strike, {"version": 1, "reason": "mine"}).status_code == 404
