@@ -100,7 +100,8 @@ def sentence(request: Any, stop_count: int, marks: int) -> str:
     still = "none stands still" if stop_count == 0 else f"{stop_count} {'stands' if stop_count == 1 else 'stand'} still"
     waits = ""
     if marks:
-        waits = f" {counted(marks, 'record waits', 'records wait')} for a word."
+        marked = counted(marks, "record is marked as wrong and waits", "records are marked as wrong and wait")
+        waits = f" {marked} for a decision."
     return f"Of {counted(modules, 'module')}, {still}.{waits}"
 
 

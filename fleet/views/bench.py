@@ -116,7 +116,9 @@ def bench_sentence(jobs: list[Any], weeks: dict[str, Any], ready: int) -> str:
 
 def target_sentence(waiting: int) -> str:
     target = Book.load().bench_target
-    return f"That is more than the {number(target)} that the book aims at." if waiting > target else ""
+    if waiting <= target:
+        return ""
+    return f"{number(waiting)} modules are more than the {number(target)} that the book aims at."
 
 
 def bench_actions(request: Any) -> list[dict[str, Any]]:

@@ -71,7 +71,8 @@ def doubts(request: Any) -> HttpResponse:
 def waiting_sentence(count: int) -> str:
     if count == 0:
         return "Nothing waits."
-    return "One record waits for a word." if count == 1 else f"{count} records wait for a word."
+    waits = "One record is marked as wrong and waits" if count == 1 else f"{count} records are marked as wrong and wait"
+    return f"{waits} for a decision."
 
 
 @needs(CORRECT)
