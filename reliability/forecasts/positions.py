@@ -18,6 +18,10 @@ MOST_PACES = 120  # of all sites together
 PACE_STEP = 0.25  # paces are told apart to this share
 AGE_DRAWS = 40
 NEVER = math.inf
+# Failures from which lives tell how old a part of unknown age can be. With fewer it is at most so many times as old as
+# is on record, and without any just as old: ages of thousands of years would make the first week the worst.
+TELLING = 5
+OLDEST = 3.0
 
 
 class Place(NamedTuple):
@@ -160,8 +164,11 @@ def _ages_at_least(row: RunningRow, learned: Learned) -> list[tuple[float, float
 
     from reliability.stats.count_compound import ages_at_least
 
-    drawn = learned.design(row.part).life.draws(AGE_DRAWS, np.random.default_rng(0))
-    ages, weights = ages_at_least(drawn, row.age)
+    design = learned.design(row.part)
+    if design.failures == 0 or (design.failures < TELLING and row.age <= 0):
+        return [(row.age, 1.0)]
+    longest = OLDEST * row.age if design.failures < TELLING else np.inf
+    ages, weights = ages_at_least(design.life.draws(AGE_DRAWS, np.random.default_rng(0)), row.age, longest=longest)
     return list(zip(ages.tolist(), weights.tolist(), strict=True))
 
 

@@ -164,6 +164,19 @@ def test_an_age_known_only_at_least_is_spread_over_what_lives_allow() -> None:
     assert 40 < sum(age * share for age, share in zip(ages, shares, strict=True)) < 80
 
 
+def test_ages_stay_within_reason_where_no_part_has_failed_yet() -> None:
+    """Without a failure the lives set no limit: ages of thousands of years made the first week the worst."""
+    fleet = SmallFleet()
+    site = fleet.site(records_from=day(300))
+    for number in range(12):
+        fleet.fit(fleet.module(f"NEW-{number}", site), 310)
+        fleet.fit(fleet.module(f"OLD-{number}", site), None)
+    found = positions(fleet)
+    assert max(found.ages) <= 101
+    weeks = [week["mean"] for week in told(fleet)["weeks"]]
+    assert max(weeks) < 1.5 * min(weeks)
+
+
 def strokes_fleet(use: Any) -> SmallFleet:
     """Ten modules with a reading each week for three years; `use(day)` strokes a day."""
     fleet = SmallFleet("strokes")
