@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from bisect import bisect_left
 from collections.abc import Iterable
 from dataclasses import dataclass, replace
@@ -116,8 +117,18 @@ def lives_on_clocks(component: Any, clocks: Iterable[str], **choices: Any) -> Li
     told = {clock: _told_on(replace(asked, clock=clock)) for clock in clocks}
     longest = max((len(lives) for lives in told.values()), default=0)
     known = {clock: lives for clock, lives in told.items() if lives and len(lives) >= MOST * longest}
-    keys = sorted(set.intersection(*(set(lives) for lives in known.values()))) if known else []
     codes = dict(Site.objects.values_list("pk", "code"))
+    shared = set.intersection(*(set(lives) for lives in known.values())) if known else set()
+
+    def told_by(key: int) -> list[Any]:
+        """Rows in an order that does not depend on the database's numbers."""
+        rows = [lives[key] for lives in known.values()]
+        ages = [
+            (float(row.duration or 0), float(row.entry or 0), float(row.last_good or -1), row.state) for row in rows
+        ]
+        return [codes.get(rows[0].site or 0, ""), *ages]
+
+    keys = sorted(shared, key=told_by)
     parts = dict(Part.objects.filter(component=asked.component).values_list("pk", "code"))
     read_on = _reading_days(asked)
     by_clock, interpolated = {}, {}
@@ -127,7 +138,7 @@ def lives_on_clocks(component: Any, clocks: Iterable[str], **choices: Any) -> Li
         counted = [float(row.duration or 0) - float(row.entry or 0) for row in rows]
         read = read_on.get(clock, {})
         unread = [used * _unread(row, read) for used, row in zip(counted, rows, strict=True)]
-        interpolated[clock] = 0.0 if clock == "days" else sum(unread) / sum(counted)
+        interpolated[clock] = 0.0 if clock == "days" else math.fsum(unread) / math.fsum(counted)
     return LivesOnClocks(by_clock, interpolated, [clock for clock in told if clock not in known], longest - len(keys))
 
 

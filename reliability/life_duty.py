@@ -191,7 +191,8 @@ def _sites(lifetimes: Lifetimes, modules: Any, a_day: Any) -> list[Data]:
             {
                 "site": str(site),
                 "modules": len(set(modules[mine].tolist())),
-                "mean": float(np.average(a_day[mine], weights=exposed[mine])),
+                # exact sums: the same to the last digit whatever the order of the rows
+                "mean": math.fsum(a_day[mine] * exposed[mine]) / math.fsum(exposed[mine]),
                 "least": float(a_day[mine].min()),
                 "most": float(a_day[mine].max()),
                 "failures": round(float(lifetimes.weights[mine & lifetimes.observed].sum())),

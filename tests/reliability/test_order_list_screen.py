@@ -204,7 +204,7 @@ def test_who_sees_some_sites_is_told_why_there_is_no_list(client: Client, world:
         page = method("/stores/order/")
         assert page.status_code == 200
         assert "Ask a planner who sees all sites" in page.content.decode()
-        assert "N2" not in page.content.decode()
+        assert "tick_N2" not in page.content.decode()
 
 
 def test_crew_bench_and_contact_get_no_order_list(client: Client, world: SupplyFleet) -> None:
