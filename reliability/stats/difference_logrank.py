@@ -20,6 +20,8 @@ from reliability.stats.lifetimes import FloatArray, Lifetimes
 
 # a direction whose variance is below this share of the largest holds no comparison
 NO_INFORMATION = 1e-10
+# and below this variance a failure there is nothing but rounding: where weights vanish while both groups are at risk
+ROUNDING = 1e-13
 
 
 @dataclass(frozen=True, eq=False)
@@ -100,14 +102,14 @@ def logrank(
     codes = label_codes(strata, len(lifetimes))
     sets = risk_sets(lifetimes, lifetimes.group_codes, count, codes)
     observed, expected, covariance = weighted_sums(sets, age_weights(sets, weighting, rho, gamma))
-    statistic, freedom = _chi_square(observed - expected, covariance)
+    failed = lifetimes.weights * lifetimes.observed
+    statistic, freedom = _chi_square(observed - expected, covariance, ROUNDING * float(failed.sum()))
     if freedom == 0:
         raise UndefinedEstimate(
             "No failure happened while parts of two groups were at risk at the same age"
             f"{' in the same stratum' if strata is not None else ''}, and not all at once, so nothing can be compared. "
             "Wait for more records, or compare with fewer strata."
         )
-    failed = lifetimes.weights * lifetimes.observed
     return LogRank(
         statistic=statistic,
         degrees_of_freedom=freedom,
@@ -125,12 +127,14 @@ def logrank(
     )
 
 
-def _chi_square(score: FloatArray, covariance: FloatArray) -> tuple[float, int]:
+def _chi_square(score: FloatArray, covariance: FloatArray, rounding: float) -> tuple[float, int]:
     """score' covariance^- score and the rank: groups never at risk with another drop out."""
     values, vectors = np.linalg.eigh(covariance)
-    used = values > NO_INFORMATION * max(float(values[-1]), 1e-300)
+    if values[-1] <= rounding:
+        return 0.0, 0
+    used = values > NO_INFORMATION * float(values[-1])
     along = vectors[:, used].T @ score
-    return float(along**2 @ (1.0 / values[used])), int(used.sum()) if values[-1] > 1e-200 else 0
+    return float(along**2 @ (1.0 / values[used])), int(used.sum())
 
 
 def counted_when_found(lifetimes: Lifetimes) -> Lifetimes:

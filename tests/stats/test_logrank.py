@@ -306,3 +306,15 @@ def test_a_heavy_row_and_a_million_rows():
     ages = rng.integers(1, 400, 1_000_000)
     many = Lifetimes(ages, rng.random(ages.size) < 0.3, groups=rng.integers(0, 2, ages.size))
     assert 0.0 < logrank(many, strata=rng.integers(0, 50, ages.size)).p_value < 1.0
+
+
+@pytest.mark.parametrize("seed", range(40))
+def test_late_failures_of_one_group_alone_compare_nothing(seed):
+    """The new group leaves while the late weights are still 0: what is left of the variance is rounding."""
+    ages = np.random.default_rng(seed).integers(5, 90, 31)
+    lives = Lifetimes([2, 1, *ages], [0, *[1] * 32], groups=["new", *["old"] * 32])
+    with warnings.catch_warnings():
+        warnings.simplefilter("error")
+        assert logrank(lives).z < 0
+        with pytest.raises(UndefinedEstimate):
+            logrank(lives, gamma=1).z  # noqa: B018
