@@ -47,7 +47,7 @@ def cover_column() -> Column | None:
 def weeks_cell(weeks: Any) -> Any:
     """`8.9` and softer `7.6 to 10`; what lasts longer than we look is said so."""
     if weeks is None:
-        return "–"
+        return {"text": "not counted yet"}
     middle, low, high = weeks
     if low is None:
         return {"text": "longer than we look"}
