@@ -70,7 +70,7 @@ def heading(document: Document) -> str:
 def lead(document: Document, name: str) -> str:
     """How many will fail, how sure that is, and how many are enough."""
     total, used = document["total"], document["total"]["parts_used"]
-    enough = f"Having {number(plan_for(used))} parts is enough in {service_of(used)}."
+    enough = f"Having {counted(plan_for(used), 'part')} is enough in {service_of(used)}."
     if document["positions"] == 0:
         return f"No {name} runs in the field, so none can fail."
     if not document["counted"]:

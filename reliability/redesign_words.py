@@ -6,11 +6,14 @@ import datetime as dt
 from typing import Any
 
 from fleet.formats import counted, long_day, number, percent, rounded
+from reliability.life_answer import FEWEST_FAILURES
+from reliability.life_warnings import MANY_NOT_KNOWN, NAMED_AT_MOST
 from reliability.wording import age, plural, sure
 
 Document = dict[str, Any]
 NEARLY_SURE = 0.995
 ONE_LOT = 0.8
+LEAST_TIMES, MANY_TIMES = 0.01, 100
 
 VERDICTS = {
     "clear": "Clear: {new} live longer than {old}.",
@@ -66,18 +69,50 @@ def ratio_sentence(document: Document) -> str:
     median = found["median"]
     where = "At the same sites over the same dates" if found["clusters"] else "Over the same dates"
     times = f"{number(median['estimate'], 2)} times as long"
-    return f"{where} the life by which half have failed is {times}{limits_words(median, document['confidence'])}."
+    told = f"{where} the life by which half have failed is {times}{limits_words(median, document['confidence'])}."
+    return f"{told}{beyond_words(document)}"
+
+
+def beyond_words(document: Document) -> str:
+    """Where a side's median lies beyond its oldest part, or rests on a handful of failures, that is said with it."""
+    groups = (document["same_dates"]["curves"] or {"groups": []})["groups"]
+    few = [
+        f"{number(group['failures'])} of the {group['group']}"
+        for group in groups
+        if group["failures"] < FEWEST_FAILURES
+    ]
+    if few:
+        return f" Failed have only {listed(few)}: too few to rest a decision on."
+    beyond = [group["group"] for group in groups if not half_seen(group)]
+    if not beyond:
+        return ""
+    return f" Of {listed(beyond)} none has run so long yet: this carries the fitted curve on beyond what has been seen."
+
+
+def half_seen(group: dict[str, Any]) -> bool:
+    """Whether the age by which half have failed has been reached by a part, as the Life screen asks it."""
+    median, oldest = group["median"], group["curve"]["last_age"]
+    if median is None or median["estimate"] is None or oldest is None:
+        return False
+    return bool(median["estimate"] <= oldest)
 
 
 def limits_words(ratio: dict[str, Any], confidence: float) -> str:
     lower, upper = ratio["lower"], ratio["upper"]
     if lower and upper is not None:
-        return f" ({sure(confidence)} it lies between {number(lower, 2)} and {number(upper, 2)})"
+        return f" ({sure(confidence)} it lies between {times_of(lower)} and {times_of(upper)})"
     if lower:
-        return f" ({sure(confidence)} it is at least {number(lower, 2)}; the records give no upper limit)"
+        return f" ({sure(confidence)} it is at least {times_of(lower)}; the records give no upper limit)"
     if upper is not None:
-        return f" ({sure(confidence)} it is at most {number(upper, 2)})"
+        return f" ({sure(confidence)} it is at most {times_of(upper)})"
     return ", but the records bound it on neither side"
+
+
+def times_of(value: float) -> str:
+    """0.05, 1.48, 350; never 0.00."""
+    if value < LEAST_TIMES:
+        return f"less than {number(LEAST_TIMES, 2)}"
+    return number(value, 2) if value < MANY_TIMES else number(rounded(value, 2))
 
 
 def chance_sentence(document: Document) -> str:
@@ -100,7 +135,10 @@ def strength(document: Document) -> str:
     """Where the evidence stands against its boundary, and since when."""
     found = document["verdict"]
     if found["boundary"] is None:
-        return "No failure has yet happened while old and new parts ran side by side, so there is nothing to weigh."
+        return (
+            "No part has yet failed while old and new parts of its age ran beside each other at its site, so there is "
+            "nothing to weigh."
+        )
     within = "" if found["position_z"] is None else f" and within positions {number(found['position_z'], 2)}"
     needed = f"{number(found['boundary'], 2)} was needed with {percent(min(found['share'], 1.0))}"
     stands = f"Log-rank Z by site {number(found['z'], 2)}{within}; {needed} of the planned information."
@@ -144,7 +182,10 @@ def few_sentence(document: Document) -> str:
         told += f" ({number(rounded(found['part_years']))} part-years)"
     if found["years_a_failure"] and found["years_a_failure"] >= 1:
         rate = number(rounded(found["years_a_failure"], 2))
-        return f"{told}: at {percent(found['confidence'])} confidence fewer than 1 in {rate} a year."
+        return (
+            f"{told}: at {percent(found['confidence'])} confidence fewer than 1 in {rate} a year, as long as they are "
+            "no older than these. Parts that wear fail more often later."
+        )
     return f"{told}: too little yet to bound how many fail a year below one each."
 
 
@@ -166,12 +207,32 @@ def warnings(document: Document) -> list[str]:
         )
     if alike["unlike_duty"]:
         told.append(duty_words(document))
+    told += records_words(document["records"])
     lots = next(mix for mix in alike["mixes"] if mix["name"] == "lot")
     largest = max(lots["rows"], key=lambda row: row["after"], default=None)
     if largest and largest["after"] > ONE_LOT and largest["label"] != "no lot":
         told.append(
             f"{percent(largest['after'])} of the new parts are of lot {largest['label']}: a good lot looks like a good "
             "design."
+        )
+    return told
+
+
+def records_words(records: dict[str, Any]) -> list[str]:
+    """What the records leave open that could make one side look longer-lived."""
+    told, places = [], records["unanswered"]
+    if places:
+        named = ", ".join(places[:NAMED_AT_MOST]) + (" and others" if len(places) > NAMED_AT_MOST else "")
+        told.append(
+            f"Nobody has said whether every failure is reported at once at {named}. Until then a running part counts "
+            "there only up to the last time its module was seen, so that old and new parts may look unlike for that "
+            "alone. Answer it on the site's page."
+        )
+    if records["not_known"] > MANY_NOT_KNOWN * records["removed"]:
+        told.append(
+            f"The reason of {number(records['not_known'])} of {number(records['removed'])} removals is not known. They "
+            "count as removals in good order; if they were failures, the answer could be another. Ask the crews for "
+            "the reasons."
         )
     return told
 

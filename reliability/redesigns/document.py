@@ -6,7 +6,7 @@ from typing import Any
 
 import numpy as np
 
-from fleet.models import FailureMode
+from fleet.models import FailureMode, Site
 from reliability.fleet_lives import FleetLives
 from reliability.kept import kept
 from reliability.life_answer import document_of, finite
@@ -86,6 +86,7 @@ def redesign_document(question: RedesignQuestion) -> dict[str, Any]:
         "candidates": candidates_of(question, choices),
         "rigs": rigs_of(question, whole, choices),
         "few": few_failures_of(everything, question.confidence, _target(history, question.hope), shape),
+        "records": _records(everything),
         "left_out": [{"reason": reason, "count": count} for reason, count in sorted(everything.left_out.items())],
     }
 
@@ -167,6 +168,17 @@ def _a_module(lives: Compared) -> float:
         return 1.0
     pairs = np.unique(np.column_stack([lives.modules, lives.positions]), axis=0)
     return float(len(pairs) / len(np.unique(lives.modules)))
+
+
+def _records(lives: Compared) -> dict[str, Any]:
+    """What the records leave open: sites that may not report at once, removals without a reason."""
+    there = set() if lives.lifetimes is None else set(lives.lifetimes.site_labels.tolist())
+    unanswered = Site.objects.filter(code__in=there, reports_at_once=None).values_list("code", flat=True)
+    return {
+        "unanswered": sorted(unanswered),
+        "not_known": int((lives.states == "not known").sum()),
+        "removed": int((lives.states != "running").sum()),
+    }
 
 
 def _told(alike: Comparability) -> dict[str, Any]:

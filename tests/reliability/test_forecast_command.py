@@ -9,6 +9,7 @@ from pathlib import Path
 import pytest
 from django.core.management import CommandError, call_command
 
+from reliability.management.commands.forecast import lines_of
 from tests.bearing_cage import write_records
 from tests.reliability.small_fleet import SmallFleet
 from tests.reliability.test_forecast import lived_fleet
@@ -40,6 +41,31 @@ def test_the_table_says_it_in_a_sentence() -> None:
     assert "Drive nut: 7" in text.replace("\u00a0", " ")
     assert "will fail (80 of 100 such stretches:" in text
     assert "parts is enough in 95 of 100" in text
+
+
+def test_the_table_plans_for_the_parts_that_are_used_not_for_failures_alone() -> None:
+    """As the sentence above it and the screen do: a failure may take other parts along."""
+    total = {"mean": 8.0, "bands": {"0.8": [6, 10]}, "plan_for": {"0.95": 11}}
+    used = {**total, "plan_for": {"0.95": 25}}
+    told = {
+        "from": "2027-01-04",
+        "days": 91,
+        "as_of": "2026-12-01",
+        "title": "nut",
+        "counted": True,
+        "by": "part",
+        "positions": 40,
+        "failures_seen": 9,
+        "left_out": [],
+        "warnings": [],
+        "total": {**total, "parts_used": used},
+        "rows": [{"group": "N1", **total, "parts_used": used}],
+    }
+    lines = lines_of(told)
+    assert "Having 25\u00a0parts is enough" in lines[1]
+    assert [line.split()[-1] for line in lines[3:5]] == ["25", "25"]
+    weekly = lines_of({**told, "by": "week", "rows": [{"group": "2027-01-04", **total}]})
+    assert weekly[4].split()[-1] == "–"
 
 
 def test_all_components_make_one_document() -> None:

@@ -63,6 +63,12 @@ def test_where_nothing_or_little_is_known_it_says_so(changes: dict[str, Any], sa
     assert plain(words.lead(document(**changes), "drive nut")).startswith(said)
 
 
+def test_one_part_is_no_parts() -> None:
+    once = told(0.1, 0, -1)
+    said = plain(words.lead(document(failures_seen=0, total={**once, "parts_used": once}), "drive nut"))
+    assert said.endswith("Most likely 0 will fail. Having 1 part is enough in 95 of 100.")
+
+
 def test_the_level_that_was_asked_for_is_told_whatever_the_order() -> None:
     asked = told(300.0, 280, 330, at_0_9=325)
     turned = {**asked, "plan_for": dict(reversed(asked["plan_for"].items()))}

@@ -67,14 +67,14 @@ def chosen(code: str | None) -> list[Component]:
 
 
 def lines_of(document: dict[str, Any]) -> list[str]:
-    """The document as a table."""
+    """The document as a table; the parts to plan for go beyond failures, which take others along."""
     bands = list(document["total"]["bands"])
     head = f"{document['by']:<24}{'expected':>10}" + "".join(f"{100 * float(band):>9.0f} %" for band in bands)
     rows = [{"group": "total", **document["total"]}, *document["rows"]]
     table = [
         f"{row['group']:<24}{row['mean']:>10.1f}"
         + "".join(f"{words.between(row['bands'][band]).replace(' to ', '–'):>11}" for band in bands)
-        + f"{row['plan_for']['0.95']:>11}"
+        + f"{row['parts_used']['plan_for']['0.95'] if 'parts_used' in row else '–':>11}"
         for row in rows
     ]
     notes = [f"! {warning}" for warning in document["warnings"]]
