@@ -8,7 +8,7 @@ from fleet.formats import number, rounded
 from reliability import redesign_words as words
 
 
-def money_page(found: dict[str, Any], costs: Any, currency: str, redesign: Any) -> dict[str, Any]:
+def money_page(found: dict[str, Any], costs: Any, currency: str, document: dict[str, Any]) -> dict[str, Any]:
     """`told` None: nothing runs, or the old part has no life on record."""
     told = found["told"]
     page: dict[str, Any] = {"told": told, "currency": currency, "costs": cost_rows(costs, currency)}
@@ -16,6 +16,7 @@ def money_page(found: dict[str, Any], costs: Any, currency: str, redesign: Any) 
         return page
     estimated = told["as estimated"]
     page["sentence"] = words.money_sentence(estimated, currency)
+    page["taken"] = words.taken_sentence(estimated, document)
     if "at the lower bound" in told:
         only = number(found["lower_ratio"], 2)
         page["cautious"] = (

@@ -272,17 +272,34 @@ def money_sentence(told: dict[str, Any], currency: str) -> str:
         return f"{start} Nothing more has to be spent on its rollout."
     cost = f"{number(rounded(told['rollout_cost'], 3))} {currency}"
     if paid["estimate"] is None:
-        within = f"within {13 * paid['quarters']} weeks in only {in_hundred(paid['chance'])} cases"
-        return f"{start} The {cost} for what is left of the rollout come back {within}."
+        chance = f"within {13 * paid['quarters']} weeks is {in_hundred(paid['chance'])}"
+        return f"{start} The chance that the {cost} for what is left of the rollout come back {chance}."
     ends = [long_day(dt.date.fromisoformat(paid[end])) if paid[end] else "later" for end in ("lower", "upper")]
     day = long_day(dt.date.fromisoformat(paid["estimate"]))
     return f"{start} The {cost} for what is left of the rollout are back by about {day} ({ends[0]} to {ends[1]})."
 
 
+def taken_sentence(told: dict[str, Any], document: Document) -> str:
+    """How long the count takes the new parts to live: from all lives, not only those over the same dates."""
+    taken, names = told.get("taken_ratio"), names_of(document)
+    if not taken or not taken["estimate"]:
+        return ""
+    ends = f"{times_of(taken['lower'])} to {times_of(taken['upper'])} in 80 of 100 cases"
+    return (
+        f"This takes {names['new']} to last {times_of(taken['estimate'])} times as long as the old ones ({ends}), as "
+        "the forecast does: from all their lives, whenever they were, so that a change of water, season or habits is "
+        "in it. Over the same dates the ratio may be another; it stands above."
+    )
+
+
 def more_or_less(band: dict[str, Any]) -> str:
     """Failures avoided, or those it brings on top."""
-    count = number(abs(round(band["mean"])))
-    verb = f"it avoids about {count} failures" if band["mean"] >= 0 else f"it brings about {count} more failures"
+    count = abs(round(band["mean"]))
+    verb = f"it avoids about {counted(count, 'failure')}"
+    if count == 0:
+        verb = "it changes the number of failures by less than one"
+    elif band["mean"] < 0:
+        verb = f"it brings about {counted(count, 'more failure')}"
     return f"{verb} ({in_band(band, 1)} avoided in 80 of 100 cases)"
 
 

@@ -5,6 +5,7 @@ What feeds back on itself (retrofits at a pace) or needs three designs in one st
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from typing import TYPE_CHECKING, Any
 
@@ -115,7 +116,12 @@ def settings_of(question: Question, learned: Learned, positions: Positions) -> d
 
 
 def simulate(
-    question: Question, learned: Learned, positions: Positions, *, draws: int | None = None
+    question: Question,
+    learned: Learned,
+    positions: Positions,
+    *,
+    draws: int | None = None,
+    most_retrofits: float = math.inf,
 ) -> SimulatedCounts:
     """The same question by plain simulation; the same seed gives every position the same luck in every what-if."""
     import numpy as np
@@ -134,7 +140,7 @@ def simulate(
         begin = question.switch_day / question.span
         if begin < 1.0:
             step = WEEK / question.span
-            retrofit = Retrofit(begin, assumed.retrofit_a_week, step)
+            retrofit = Retrofit(begin, assumed.retrofit_a_week, step, most_retrofits)
         settings.setdefault("later_designs", [learned.label(assumed.superseding or "")] * len(single))
         settings.setdefault("switch_at", 0.0)
     windows, _ = edges_of(question)

@@ -7,6 +7,7 @@ its pace. The difference is counted in failures, and in money by the costs on th
 from __future__ import annotations
 
 import datetime as dt
+import math
 from dataclasses import asdict, dataclass, replace
 from typing import Any
 
@@ -93,28 +94,28 @@ def money_of(
     question = question_of(component, begin=as_of, days=QUARTERS * WEEKS * WEEK, as_of=as_of, sites=sites)
     if not running_now(question).rows or old not in taught.designs:
         return {"told": None}
-    without = _weeks(replace(question, what_if=WhatIf(superseding=old, superseding_from=as_of)), taught)
-    found = {"as estimated": _told(question, without, taught, new, costs, plan)}
+    found = {"as estimated": _told(question, taught, new, old, costs, plan)}
+    found["as estimated"]["taken_ratio"] = _taken_ratio(taught, new, old)
     if lower_ratio is not None and lower_ratio > 0:
         cautious = _only_as_good(taught, new, old, lower_ratio)
-        found["at the lower bound"] = _told(question, without, cautious, new, costs, plan)
+        found["at the lower bound"] = _told(question, cautious, new, old, costs, plan)
     return {"told": found, "failure_cost": finite(costs.failure), "lower_ratio": finite(lower_ratio)}
 
 
-def _weeks(question: Question, taught: Learned) -> FloatArray:
+def _weeks(question: Question, taught: Learned, most_retrofits: float = math.inf) -> FloatArray:
     """Failures by week in each simulated fleet, (draws, weeks)."""
     positions = positions_of(running_now(question).rows, question, taught)
-    return simulate(question, taught, positions, draws=DRAWS).by_window[:, -QUARTERS * WEEKS :]
+    found = simulate(question, taught, positions, draws=DRAWS, most_retrofits=most_retrofits)
+    return found.by_window[:, -QUARTERS * WEEKS :]
 
 
-def _told(
-    question: Question, without: FloatArray, taught: Learned, new: str, costs: Costs, plan: Plan
-) -> dict[str, Any]:
-    pace = None
-    if plan.positions and plan.modules and plan.modules_a_week:
-        pace = plan.modules_a_week * plan.positions / plan.modules
-    assumed = WhatIf(superseding=new, superseding_from=question.as_of, retrofit_a_week=pace)
-    with_it = _weeks(replace(question, what_if=assumed), taught)
+def _told(question: Question, taught: Learned, new: str, old: str, costs: Costs, plan: Plan) -> dict[str, Any]:
+    """Both fleets of one world: the new parts that run already live in both as long as `taught` says."""
+    without = _weeks(replace(question, what_if=WhatIf(superseding=old, superseding_from=question.as_of)), taught)
+    # No more than is left and paid for; without a pace all in the first week.
+    pace = (plan.modules_a_week or plan.modules) * plan.positions / plan.modules if plan.modules else None
+    assumed = WhatIf(superseding=new, superseding_from=question.as_of, retrofit_a_week=pace or None)
+    with_it = _weeks(replace(question, what_if=assumed), taught, plan.positions)
     avoided = without - with_it
     saved = without * (costs.failure + costs.old_part) - with_it * (costs.failure + costs.new_part)
     spent = _spent(costs, plan, without.shape[1])
@@ -164,6 +165,19 @@ def _break_even(balance: FloatArray, as_of: dt.date) -> dict[str, Any]:
         "chance": float(np.isfinite(week).mean()),
         "quarters": QUARTERS,
     }
+
+
+def _taken_ratio(taught: Learned, new: str, old: str) -> dict[str, Any] | None:
+    """Median life of the new part over that of the old, as both are drawn for the count."""
+    if new not in taught.designs:
+        return None
+    medians = []
+    for part in (new, old):
+        drawn = taught.designs[part].life.drawn
+        medians.append(drawn.scales * np.log(2.0) ** (1.0 / drawn.shapes))
+    # every draw of the one with every draw of the other: they are drawn apart
+    low, middle, high = np.quantile(medians[0][:, None] / medians[1][None, :], [0.1, 0.5, 0.9])
+    return {"estimate": finite(float(middle)), "lower": finite(float(low)), "upper": finite(float(high))}
 
 
 def _only_as_good(taught: Learned, new: str, old: str, ratio: float) -> Learned:

@@ -26,12 +26,18 @@ BoolArray = NDArray[np.bool_]
 class Retrofit:
     """Running parts of the old design changed for the later one: so many each step from a share of the horizon on.
 
-    start: share of the horizon; each: parts a step; step: share of the horizon. Who is next is a matter of chance.
+    start: share of the horizon; each: parts a step; step: share of the horizon; most: parts in all. Who is next is a
+    matter of chance.
     """
 
     start: float
     each: float
     step: float
+    most: float = np.inf
+
+    def due(self, steps: int) -> float:
+        """Parts due by the end of so many steps."""
+        return float(min(np.floor(self.each * steps + 1e-9), self.most))
 
 
 @dataclass(frozen=True, eq=False)
@@ -193,8 +199,7 @@ class _Fleet:
         place = np.empty_like(behind)
         place[:, self.order] = behind
         steps = round((until - retrofit.start) / retrofit.step)
-        due = np.floor(retrofit.each * steps + 1e-9) - np.floor(retrofit.each * (steps - 1) + 1e-9)
-        chosen = old & (place <= due)
+        chosen = old & (place <= retrofit.due(steps) - retrofit.due(steps - 1))
         nothing = np.zeros_like(old)
         tally.count(np.broadcast_to(at, old.shape), chosen, (nothing, chosen, nothing), chosen)
         self._renew(state, chosen, np.broadcast_to(at, old.shape), np.full(old.shape, 2))

@@ -217,7 +217,7 @@ def money_context(
         plan=plan_left(record),
         lower_ratio=lower,
     )
-    return money_page(found, costs, book.currency, record)
+    return money_page(found, costs, book.currency, document)
 
 
 def newest_old(line: RedesignChange) -> Any:

@@ -154,7 +154,9 @@ def test_a_part_that_brings_failures_is_said_to() -> None:
         "break_even": {"estimate": None, "quarters": 4, "chance": 0.0},
     }
     sentence = words.money_sentence(told, "EUR")
-    assert sentence.startswith("In the next 13 weeks it brings about 17 more failures (−35 to 4 avoided")
+    assert sentence.replace("\u00a0", " ").startswith(
+        "In the next 13 weeks it brings about 17 more failures (−35 to 4 avoided"
+    )
     assert f"costs about {number(9400)} EUR" in sentence
 
 

@@ -89,7 +89,7 @@ def test_shared_draws_make_a_total_wider_than_independent_parts() -> None:
     assert both.failures.standard_deviation > 1.1 * independent
 
 
-def retrofitted(each: float) -> Any:
+def retrofitted(each: float, **plan: float) -> Any:
     return simulate_counts(
         {"old": KnownWeibull(3.0, 80.0), "new": KnownWeibull(5.0, 2000.0)},
         AGES,
@@ -100,7 +100,7 @@ def retrofitted(each: float) -> Any:
         next_designs=["old"] * POSITIONS,
         later_designs=["new"] * POSITIONS,
         switch_at=0.0,
-        retrofit=Retrofit(0.0, each, 1 / 13) if each else None,
+        retrofit=Retrofit(0.0, each, 1 / 13, **plan) if each else None,
     )
 
 
@@ -113,6 +113,14 @@ def test_retrofits_avoid_failures_and_use_parts_up_to_the_number_of_old_ones() -
     first_week = forecast_counts(KnownWeibull(3.0, 80.0), AGES, 7.0, draws=1).failures.mean
     assert many.failures.mean() == pytest.approx(first_week, abs=0.25)
     assert many.planned.mean() == pytest.approx(POSITIONS - first_week, abs=0.25)
+
+
+def test_a_plan_ends_with_its_last_part() -> None:
+    plan = Retrofit(0.0, 2.5, 1 / 13, most=6)
+    assert [plan.due(steps) for steps in range(5)] == [0, 2, 5, 6, 6]
+    found = retrofitted(2.5, most=6)
+    assert found.planned.max() == 6
+    assert retrofitted(2.5).planned.max() > 6
 
 
 def test_parts_of_the_new_design_are_not_retrofitted() -> None:
