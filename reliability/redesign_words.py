@@ -286,9 +286,8 @@ def taken_sentence(told: dict[str, Any], document: Document) -> str:
         return ""
     ends = f"{times_of(taken['lower'])} to {times_of(taken['upper'])} in 80 of 100 cases"
     return (
-        f"This takes {names['new']} to last {times_of(taken['estimate'])} times as long as the old ones ({ends}), as "
-        "the forecast does: from all their lives, whenever they were, so that a change of water, season or habits is "
-        "in it. Over the same dates the ratio may be another; it stands above."
+        f"This takes {names['new']} to last {times_of(taken['estimate'])} times as long as the old ones ({ends}), from "
+        "all lives whenever they were, as the forecast does; over the same dates the ratio may be another."
     )
 
 
