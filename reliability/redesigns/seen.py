@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+import re
 from typing import Any
 
 ELSEWHERE = "other sites"
+NAMED_SITE = re.compile(r"\bthe site (\S*\w)")  # how estimators name the site that a refusal speaks of
 
 
 def only_sites(document: dict[str, Any], mine: set[str]) -> dict[str, Any]:
@@ -17,7 +19,20 @@ def only_sites(document: dict[str, Any], mine: set[str]) -> dict[str, Any]:
         "comparability": {**alike, "mixes": mixes, **kept},
         "same_dates": _side(document["same_dates"], mine),
         "all_history": _side(document["all_history"], mine),
+        "records": _records(document["records"], mine),
+        "chances_missing": unnamed(document["chances_missing"], mine),
     }
+
+
+def unnamed(note: str, mine: set[str]) -> str:
+    """A sentence without the code of a site that is not theirs; the code as a whole, A1 is not A10."""
+    return NAMED_SITE.sub(lambda found: found[0] if found[1] in mine else "another site", note)
+
+
+def _records(records: dict[str, Any], mine: set[str]) -> dict[str, Any]:
+    asked = records["unanswered"]
+    own = [site for site in asked if site in mine]
+    return {**records, "unanswered": own if len(own) == len(asked) else [*own, ELSEWHERE]}
 
 
 def _without(mix: dict[str, Any], mine: set[str]) -> dict[str, Any]:
@@ -33,7 +48,7 @@ def _without(mix: dict[str, Any], mine: set[str]) -> dict[str, Any]:
 def _side(found: dict[str, Any], mine: set[str]) -> dict[str, Any]:
     """Notes may name a site, and fits hold what each site's hazard is multiplied by."""
     curves = found["curves"]
-    notes = [note for note in found["notes"] if "site " not in note or any(site in note for site in mine)]
+    notes = [unnamed(note, mine) for note in found["notes"]]
     if curves is None:
         return {**found, "notes": notes}
     groups = [{**group, "weibull": _weibull(group["weibull"], mine)} for group in curves["groups"]]
