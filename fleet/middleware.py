@@ -4,14 +4,18 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from typing import Any
+from urllib.parse import urlsplit
 
 from django.contrib.auth.views import redirect_to_login
 from django.core.exceptions import PermissionDenied
 from django.http import HttpRequest, HttpResponse
+from django_htmx.http import HttpResponseClientRedirect
 
+from fleet.carried import carried
 from fleet.history import writing
 from fleet.models.book import zone_read_once
 from fleet.rights import PUBLIC, may, seen_by
+from fleet.views.errors import sign_in_first
 
 GetResponse = Callable[[HttpRequest], HttpResponse]
 
@@ -42,8 +46,20 @@ class RightsMiddleware:
         if right == PUBLIC:
             return None
         if not request.user.is_authenticated:
-            return redirect_to_login(request.get_full_path())
+            return ask_who_it_is(request)
         if right is None or not may(request.user, right):
             raise PermissionDenied
         request.seen = lambda model: seen_by(request.user, model)
         return None
+
+
+def ask_who_it_is(request: Any) -> HttpResponse:
+    """To the sign-in page; what was entered goes along, and a part of a page sends its whole page there."""
+    kept = carried(request)
+    if kept:
+        return sign_in_first(request, kept)
+    if request.headers.get("HX-Request"):
+        page = urlsplit(request.headers.get("HX-Current-URL", ""))
+        asked = page._replace(scheme="", netloc="").geturl() or request.get_full_path()
+        return HttpResponseClientRedirect(redirect_to_login(asked).url)
+    return redirect_to_login(request.get_full_path())

@@ -12,24 +12,27 @@ from django.views.decorators.cache import never_cache
 from django.views.decorators.debug import sensitive_post_parameters
 from django.views.decorators.http import require_POST
 
+from fleet.carried import opened
 from fleet.forms.sign_in import ChangePasswordForm, NewPasswordForm, SignInForm
 from fleet.history import writing
 from fleet.reset_links import person_of_link
 from fleet.rights import PUBLIC, SEE, needs
+from fleet.views.errors import send_again
 
 
 @needs(PUBLIC)
 @never_cache
 @sensitive_post_parameters("password")
 def sign_in(request: HttpRequest) -> HttpResponse:
-    onward = way_on(request)
-    if request.user.is_authenticated:
-        return redirect(onward)
+    onward, kept = way_on(request), request.POST.get("carried", "")
     form = SignInForm(request, data=posted(request))
-    if request.method == "POST" and form.is_valid():
+    if not request.user.is_authenticated:
+        if request.method != "POST" or not form.is_valid():
+            context = {"form": form, "next": onward, "carried": kept}
+            return render(request, "sign_in/sign_in.html", context, status=422 if form.is_bound else 200)
         login(request, form.get_user())
-        return redirect(onward)
-    return render(request, "sign_in/sign_in.html", {"form": form, "next": onward}, status=422 if form.is_bound else 200)
+    entry = opened(kept)
+    return send_again(request, entry) if entry else redirect(onward)
 
 
 def posted(request: HttpRequest) -> QueryDict | None:
