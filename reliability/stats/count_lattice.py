@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from reliability.stats.count_masses import Ends, Hazards, since_start
+from reliability.stats.count_masses import Ends, Hazards, since_start, with_unknown_ages
 from reliability.stats.count_positions import Classes, Rows
 
 FloatArray = NDArray[np.float64]
@@ -69,7 +69,8 @@ class VisitGrid:
         cumulative = hazards.cumulative(age, which)
         other = classes.other_removals[which][:, None] * np.maximum(since, 0.0)
         due = (age >= classes.replace_at[which][:, None] - 1e-9) & (since > 0.0)
-        masses = _found_at_visits(since_start(cumulative), other, due)
+        survived = with_unknown_ages(since_start(cumulative), hazards, rows, index, age)
+        masses = _found_at_visits(survived, other, due)
         return Ends(*masses), None, None
 
 

@@ -51,6 +51,13 @@ class DesignLives:
             [_lives(found, np.broadcast_to(code, site.shape), site) for code in (roles.running, roles.fitted, later)]
         )
 
+    def running(self, ages: FloatArray, positions: IntArray) -> FloatArray:
+        """Cumulative hazard of the running parts of these positions at ages (draws, positions, n)."""
+        lives = self.roles[0]
+        rest = (lives.shape, lives.rate, lives.early, lives.scale, lives.deviation)
+        shape, rate, early, scale, deviation = (each[:, positions, None] for each in rest)
+        return _Lives(shape, rate, early, lives.early_until[positions][:, None], scale, deviation).cumulative(ages)
+
     def end(
         self, role: IntArray, age: FloatArray, exponential: FloatArray, draw: IntArray, position: IntArray
     ) -> FloatArray:
@@ -85,15 +92,19 @@ class _Lives:
         until = self.early_until
         if not until.any():
             return self._age_at(self._unit(age) + exponential / self.rate)
-        safe = np.where(until > 0, until, 1.0)
-        first = -np.log1p(-self.early * np.minimum(age, until) / safe)
-        late = self._unit(np.maximum(age, until)) - self._unit(until)
-        target = first + self.rate * late + exponential
+        target = self.cumulative(age) + exponential
         whole = -np.log1p(-self.early)
         beyond = self._age_at(np.maximum(target - whole, 0.0) / self.rate + self._unit(until))
         with np.errstate(divide="ignore", invalid="ignore"):
             within = until * -np.expm1(-target) / self.early
         return np.where((target < whole) & (until > 0), within, beyond)
+
+    def cumulative(self, age: FloatArray) -> FloatArray:
+        """-log S."""
+        until = self.early_until
+        safe = np.where(until > 0, until, 1.0)
+        first = -np.log1p(-self.early * np.minimum(age, until) / safe)
+        return first + self.rate * (self._unit(np.maximum(age, until)) - self._unit(until))
 
     def _unit(self, age: FloatArray) -> FloatArray:
         """Cumulative hazard at rate 1."""

@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 from scipy.special import log_ndtr
 
 from reliability.stats.count_positions import Classes, Rows
+from reliability.stats.unknown_ages import hazard_since
 
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
@@ -141,8 +142,9 @@ class MidpointGrid:
         factor = duty[:, which][:, :, None]
         limit = (classes.replace_at[which][:, None] - age) / factor
         clipped = np.minimum(time[None], limit)
-        cumulative = hazards.cumulative(age + clipped * factor, which)
-        failed, removed, alive = _competing(since_start(cumulative), classes.other_removals[which][:, None] * clipped)
+        since = since_start(hazards.cumulative(age + clipped * factor, which))
+        since = with_unknown_ages(since, hazards, rows, index, age + clipped * factor)
+        failed, removed, alive = _competing(since, classes.other_removals[which][:, None] * clipped)
         share = _start_share(np.log(np.maximum(alive[..., 0] / np.maximum(alive[..., 1], 1e-300), 1.0)))
         ends = Ends(*(_with_start(mass, share) for mass in (failed, removed)), None)
         if not np.isfinite(limit).any():
@@ -150,6 +152,20 @@ class MidpointGrid:
         horizon = classes.horizon[which]
         place = (limit + joined)[..., 0] / np.where(horizon > 0, horizon, 1e-9) * (2 * self.cells)
         return ends, alive[..., -1], place
+
+
+def with_unknown_ages(since: FloatArray, hazards: Hazards, rows: Rows, index: IntArray, ages: FloatArray) -> FloatArray:
+    """The same, where the ages (draws, rows, n) are the least that some parts can have."""
+    which = rows.class_index[index]
+    oldest = rows.classes.oldest[which]
+    unknown = np.flatnonzero((oldest > rows.age[index]) & np.isnan(rows.start[index]))
+    if not unknown.size:
+        return since
+    least = ages[:, unknown]
+    most = least[..., 0] + (oldest - rows.age[index])[unknown]
+    gone = least - least[..., :1]
+    since[:, unknown] = hazard_since(lambda at: hazards.cumulative(at, which[unknown]), least[..., 0], most, gone)
+    return since
 
 
 def since_start(cumulative: FloatArray) -> FloatArray:

@@ -36,6 +36,7 @@ class Classes:
     other_removals: FloatArray
     switch_at: FloatArray
     join_at: FloatArray
+    oldest: FloatArray  # above the row's age: that is the least it can be, this the most
     running: IntArray  # the design that runs, is fitted from now on, and after the switch
     fitted: IntArray
     later: IntArray
@@ -45,7 +46,9 @@ class Classes:
 
     def distinct_from_new(self) -> tuple[IntArray, IntArray]:
         """First of each set of classes alike in all that matters once a new part is in, and each class's set."""
-        columns = [getattr(self, item.name) for item in fields(Classes) if item.name not in ("running", "join_at")]
+        columns = [
+            getattr(self, item.name) for item in fields(Classes) if item.name not in ("running", "join_at", "oldest")
+        ]
         return _distinct(columns, len(self))
 
     def take(self, chosen: NDArray[Any]) -> Classes:
@@ -127,6 +130,8 @@ def group_positions(
     down = _column("down_until", columns.pop("down_until"), count, least=0.0)
     further = {name: _column(name, values, count, least=0.0) for name, values in columns.items()}
     _require_steady_visits(further)
+    if (np.isfinite(further["replace_at"]) & (further["oldest"] > age)).any():
+        raise InvalidArgument("oldest does not go with replace_at: give such parts as several, each of an age.")
     site, site_labels = _codes("sites", sites, count)
     same = groups is not None and groups is sites
     group, group_labels = (site, site_labels) if same else _codes("groups", groups, count)

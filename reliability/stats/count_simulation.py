@@ -16,6 +16,7 @@ from numpy.typing import ArrayLike, NDArray
 from reliability.stats.count_designs import roles_of
 from reliability.stats.count_luck import DesignLives, Luck
 from reliability.stats.errors import InvalidArgument
+from reliability.stats.unknown_ages import drawn_ages
 
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
@@ -83,6 +84,7 @@ def simulate_counts(
     stretch: tuple[float, float] = (0.0, 1.0),
     retrofit: Retrofit | None = None,
     taken_share: float = 0.0,
+    oldest: ArrayLike = 0.0,
 ) -> SimulatedCounts:
     """One simulated horizon for each posterior draw; arguments as in `forecast_counts` (no weights). Units of the
     lives.
@@ -103,7 +105,7 @@ def simulate_counts(
         return np.broadcast_to(np.asarray(values, dtype=np.float64), (count,))
 
     # draws of the lives, of the duty and of chance: each stays the same whatever else is asked
-    for_lives, for_duty, for_luck, for_order = rng.spawn(4)
+    for_lives, for_duty, for_luck, for_order, for_ages = rng.spawn(5)
     fleet = _Fleet(
         lives=DesignLives.drawn(roles, draws, for_lives, labels),
         duty=_duty(duty_spread, draws, labels, for_duty),
@@ -122,7 +124,7 @@ def simulate_counts(
     )
     edges = np.array([0.0, 1.0]) if windows is None else np.asarray(windows, dtype=np.float64) / windows[-1]
     tally = _Tally(draws, fleet.horizon, edges, stretch)
-    fleet.run(age, column(down_until), tally, retrofit)
+    fleet.run(fleet.ages_now(age, column(oldest), for_ages), column(down_until), tally, retrofit)
     by_group = (
         {} if groups is None else {g: tally.failed[:, _where(groups, g)].sum(axis=1) for g in dict.fromkeys(groups)}
     )
@@ -153,6 +155,21 @@ class _Fleet:
     already: BoolArray  # positions that hold the later design from the start
     luck: Luck
     order: IntArray
+
+    def ages_now(self, age: FloatArray, oldest: FloatArray, rng: np.random.Generator) -> FloatArray:
+        """Ages (draws, positions), drawn where they are known only to be at least `age`."""
+        ages = np.broadcast_to(age, self.duty.shape).copy()
+        unknown = np.flatnonzero(oldest > age)
+        luck = rng.random((len(ages), unknown.size))
+        if unknown.size:
+            # a part that waits for a visit was good at the last one
+            waited = np.zeros(1) if self.visits is None else np.maximum(self.visits[0] - self.visits[1], 0.0)[unknown]
+            since = np.minimum(waited * self.duty[:, unknown], age[unknown])
+            found = drawn_ages(
+                lambda at: self.lives.running(at, unknown), age[unknown] - since, oldest[unknown] - since, luck
+            )
+            ages[:, unknown] = found + since
+        return ages
 
     def run(self, age: FloatArray, down: FloatArray, tally: _Tally, retrofit: Retrofit | None) -> None:
         """Follow every position of every draw from end to end of its parts until the horizon is over."""

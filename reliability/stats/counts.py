@@ -67,6 +67,7 @@ def forecast_counts(
     parts_by_window: bool = True,
     taken_share: float = 0.0,
     join_at: ArrayLike = 0.0,
+    oldest: ArrayLike = 0.0,
     designs: Sequence[Any] | None = None,
     next_designs: Sequence[Any] | None = None,
     later_designs: Sequence[Any] | None = None,
@@ -94,6 +95,8 @@ def forecast_counts(
     parts_used at failures.
     taken_share: share of the other removals that parts_used leaves out, because they are counted elsewhere.
     join_at: the position is there, and its part ages, only from then on.
+    oldest: above the age: that is the least the running part can be, and it may be up to so old (see unknown_ages); not
+    with replace_at.
     designs, next_designs, later_designs: with one posterior a design (a mapping), the label of the design that runs at
     each position, is fitted there from now on, and after switch_at; all designs' draws, sites and duty belong together.
     Raises InvalidArgument. Source: Cox 1962; early renewals by mass at cell midpoints, see count_kernel.
@@ -123,6 +126,7 @@ def forecast_counts(
             "other_removals": other_removals,
             "switch_at": np.inf if switch_at is None else switch_at,
             "join_at": join_at,
+            "oldest": oldest,
         },
         designs=(roles.running, roles.fitted, roles.fitted if roles.later is None else roles.later),
     )
@@ -295,6 +299,8 @@ def _are_rare(rows: Rows, drawn: DesignDraws, duty: FloatArray, chunk: IntArray)
     if not len(rows):
         return False
     classes = rows.classes
+    if classes.oldest.any():
+        return False
     ages = np.linspace(0.0, rows.age.max(), 6)
     ahead = classes.horizon[:, None] * duty[chunk][:, classes.site][:, :, None]
     hazards = drawn.hazards(chunk, classes.running, classes)
