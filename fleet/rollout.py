@@ -62,6 +62,23 @@ def upgraded_modules(redesign: Redesign, modules: Iterable[tuple[int, int]]) -> 
     return {module: Upgraded(per_type.get(kind, 0), upgraded[module], last.get(module)) for module, kind in modules}
 
 
+def positions_left(redesign: Redesign, modules: Iterable[tuple[int, int]]) -> dict[int, int]:
+    """By component, for pairs of (module, its type): positions that have not had their new part."""
+    changes = list(redesign.changes.select_related("new_part"))
+    components = [line.new_part.component_id for line in changes]
+    places: dict[int, list[tuple[int, int]]] = defaultdict(list)
+    for position, kind, component in Position.objects.filter(component__in=components).values_list(
+        "pk", "type", "component"
+    ):
+        places[kind].append((position, component))
+    fitted = Fitting.objects.standing().filter(part__in=[line.new_part_id for line in changes])
+    done = set(fitted.values_list("module", "position"))
+    left: Counter[int] = Counter(dict.fromkeys(components, 0))
+    for module, kind in modules:
+        left.update(component for position, component in places[kind] if (module, position) not in done)
+    return dict(left)
+
+
 def upgraded_outside(redesign: Redesign, planned: set[int]) -> int:
     """Modules with the new part that no plan names."""
     parts = redesign.changes.values("new_part")

@@ -11,6 +11,13 @@ from django.utils import timezone
 from fleet.forms.record import DayInput
 from fleet.models import Component, FailureMode, Part
 
+RESTS_ON = [
+    ("", "the verdict, if it can be told"),
+    ("same-dates", "the same dates"),
+    ("all-history", "all history"),
+    ("hope", "the hope, as an assumption"),
+]
+
 
 class EvidenceForm(forms.Form):
     component = forms.ModelChoiceField(queryset=None, to_field_name="code", required=False, empty_label=None)
@@ -21,6 +28,7 @@ class EvidenceForm(forms.Form):
         queryset=None, to_field_name="code", required=False, label="Beside it, other candidates"
     )
     as_of = DayInput(required=False, label="Records up to")
+    money = forms.ChoiceField(required=False, choices=RESTS_ON, label="Money rests on the ratio of")
 
     def __init__(self, data: Any, *, request: Any, lines: list[Any]) -> None:
         super().__init__(data)
@@ -59,3 +67,7 @@ class EvidenceForm(forms.Form):
 
     def as_of_day(self) -> dt.date:
         return self.cleaned_data.get("as_of") or timezone.localdate()
+
+    def rests_on(self) -> str:
+        """The comparison whose ratio the money is counted with; empty: the first that tells one."""
+        return str(self.cleaned_data.get("money") or "").replace("-", " ")

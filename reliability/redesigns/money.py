@@ -2,6 +2,7 @@
 
 Without: every part fitted from now on is the old one. With: the new one, and modules still in the plan are upgraded at
 its pace. The difference is counted in failures, and in money by the costs on the redesign and in the book's settings.
+A redesign of several components is counted component by component, and its rollout is paid for once.
 """
 
 from __future__ import annotations
@@ -24,7 +25,7 @@ from reliability.forecasts.question import Question, question_of
 from reliability.forecasts.what_if import WhatIf
 from reliability.kept import kept
 from reliability.life_answer import finite
-from reliability.stats.kept_draws import KeptDraws
+from reliability.redesigns.money_basis import Basis, Stretch, basis_of, lives_as
 
 QUARTERS = 4
 DRAWS = 200  # simulated fleets: their 80 % ends move by a few per cent with another seed
@@ -35,15 +36,13 @@ FloatArray = NDArray[np.float64]
 class Costs:
     """In the book's currency; a failure costs visits, bench hours and days of standstill, besides the part."""
 
-    old_part: float
-    new_part: float
     visits_a_failure: float
     visit: float
     bench_hours_a_failure: float
     bench_hour: float
     stop_days_a_failure: float
     stop_day: float
-    module: float  # of the rollout, beyond the part
+    module: float  # of the rollout, beyond the parts
 
     @property
     def failure(self) -> float:
@@ -56,71 +55,131 @@ class Costs:
 
 
 @dataclass(frozen=True)
+class Side:
+    """One component: the new part, the old one that would go in without it, all that it replaces, and what they cost.
+
+    positions: of it in the modules that the plan has left.
+    """
+
+    component: Component
+    new: str
+    old: str
+    replaced: tuple[str, ...]
+    old_cost: float
+    new_cost: float
+    positions: int
+    as_of: dt.date
+    hope: float
+    confidence: float = 0.95
+    not_before: dt.date | None = None
+
+    def asked(self) -> dict[str, Any]:
+        return {name: getattr(self, name) for name in self.__dataclass_fields__} | {"component": self.component.code}
+
+
+@dataclass(frozen=True)
 class Plan:
-    """What is left of the rollout: modules, positions in them, and how many modules a week."""
+    """What is left of the rollout: modules, and how many of them a week; None: all at once."""
 
     modules: int
-    positions: int
     modules_a_week: float | None
 
 
-def kept_money(component: Component, new: str, old: str, **choices: Any) -> dict[str, Any]:
+@dataclass(frozen=True, eq=False)
+class Weekly:
+    """Failures avoided and money saved in each simulated fleet and week, (draws, weeks)."""
+
+    avoided: FloatArray
+    saved: FloatArray
+
+    def __add__(self, other: Weekly) -> Weekly:
+        return Weekly(self.avoided + other.avoided, self.saved + other.saved)
+
+
+def kept_money(sides: tuple[Side, ...], costs: Costs, plan: Plan, rests_on: str = "") -> dict[str, Any]:
     """Computed once for each version of the data and each set of costs."""
     asked = {
-        "component": component.code,
-        "new": new,
-        "old": old,
-        **{name: asdict(value) if hasattr(value, "__dataclass_fields__") else value for name, value in choices.items()},
+        "sides": [side.asked() for side in sides],
+        "costs": asdict(costs),
+        "plan": asdict(plan),
+        "rests_on": rests_on,
     }
-    found: dict[str, Any] = kept("redesign money", asked, lambda: money_of(component, new, old, **choices))
+    found: dict[str, Any] = kept("redesign money", asked, lambda: money_of(sides, costs, plan, rests_on))
     return found
 
 
-def money_of(
-    component: Component,
-    new: str,
-    old: str,
-    *,
-    as_of: dt.date,
-    costs: Costs,
-    plan: Plan,
-    lower_ratio: float | None = None,
-    sites: list[str] | None = None,
-) -> dict[str, Any]:
-    """Failures and money avoided a quarter, and when the rollout is paid, each with its band; twice where
-    `lower_ratio` is given: as estimated, and as if the new part lived only so many times as long as the old one.
+def money_of(sides: tuple[Side, ...], costs: Costs, plan: Plan, rests_on: str = "") -> dict[str, Any]:
+    """Failures and money avoided a quarter, and when the rollout is paid, each with its band; twice where the records
+    bound a ratio from below: as estimated, and as if the new parts lived only so many times as long as the old ones.
+
+    A component of which nothing runs, or whose old part has no life on record, is named and left out.
     """
-    taught = learned(component, as_of)
-    question = question_of(component, begin=as_of, days=QUARTERS * WEEKS * WEEK, as_of=as_of, sites=sites)
-    if not running_now(question).rows or old not in taught.designs:
+    counted = {side.component.code: _counted(side, costs, plan, rests_on) for side in sides}
+    there = {code: found for code, found in counted.items() if found is not None}
+    if not there:
         return {"told": None}
-    found = {"as estimated": _told(question, taught, new, old, costs, plan)}
-    found["as estimated"]["taken_ratio"] = _taken_ratio(taught, new, old)
-    if lower_ratio is not None and lower_ratio > 0:
-        cautious = _only_as_good(taught, new, old, lower_ratio)
-        found["at the lower bound"] = _told(question, cautious, new, old, costs, plan)
-    return {"told": found, "failure_cost": finite(costs.failure), "lower_ratio": finite(lower_ratio)}
+    as_of, spent = sides[0].as_of, _spent(sides, costs, plan)
+    told = {"as estimated": _told(_sum([found.estimated for found in there.values()]), spent, costs, as_of)}
+    if any(found.cautious is not None for found in there.values()):
+        # what has no lower bound of its own stands as it is assumed
+        low = [found.cautious or found.estimated for found in there.values()]
+        told["at the lower bound"] = _told(_sum(low), spent, costs, as_of)
+    return {
+        "told": told,
+        "failure_cost": finite(costs.failure),
+        "bases": {code: found.basis.told() for code, found in there.items()},
+        "by_component": {code: _first_quarter(found.estimated) for code, found in there.items() if len(sides) > 1},
+        "not_counted": [code for code in counted if code not in there],
+    }
 
 
-def _weeks(question: Question, taught: Learned, most_retrofits: float = math.inf) -> FloatArray:
-    """Failures by week in each simulated fleet, (draws, weeks)."""
+@dataclass(frozen=True, eq=False)
+class _Counted:
+    basis: Basis
+    estimated: Weekly
+    cautious: Weekly | None
+
+
+def _counted(side: Side, costs: Costs, plan: Plan, rests_on: str) -> _Counted | None:
+    taught = learned(side.component, side.as_of)
+    question = question_of(side.component, begin=side.as_of, days=QUARTERS * WEEKS * WEEK, as_of=side.as_of)
+    if not running_now(question).rows or side.old not in taught.designs:
+        return None
+    basis = basis_of(side, taught, rests_on)
+    estimated = _weekly(question, lives_as(taught, side, basis.stretch), side, costs, plan)
+    cautious = None
+    if basis.lower is not None and basis.lower > 0:
+        only = lives_as(taught, side, Stretch.known(basis.lower))
+        cautious = _weekly(question, only, side, costs, plan)
+    return _Counted(basis, estimated, cautious)
+
+
+def _weekly(question: Question, taught: Learned, side: Side, costs: Costs, plan: Plan) -> Weekly:
+    """Both fleets of one world: the new parts that run already live in both as long as `taught` says."""
+    old = WhatIf(superseding=side.old, superseding_from=question.as_of)
+    without = _failures(replace(question, what_if=old), taught)
+    # No more than is left and paid for; without a pace all in the first week.
+    pace = (plan.modules_a_week or plan.modules) * side.positions / plan.modules if plan.modules else None
+    new = WhatIf(superseding=side.new, superseding_from=question.as_of, retrofit_a_week=pace or None)
+    with_it = _failures(replace(question, what_if=new), taught, side.positions)
+    saved = without * (costs.failure + side.old_cost) - with_it * (costs.failure + side.new_cost)
+    return Weekly(without - with_it, saved)
+
+
+def _failures(question: Question, taught: Learned, most_retrofits: float = math.inf) -> FloatArray:
     positions = positions_of(running_now(question).rows, question, taught)
     found = simulate(question, taught, positions, draws=DRAWS, most_retrofits=most_retrofits)
     return found.by_window[:, -QUARTERS * WEEKS :]
 
 
-def _told(question: Question, taught: Learned, new: str, old: str, costs: Costs, plan: Plan) -> dict[str, Any]:
-    """Both fleets of one world: the new parts that run already live in both as long as `taught` says."""
-    without = _weeks(replace(question, what_if=WhatIf(superseding=old, superseding_from=question.as_of)), taught)
-    # No more than is left and paid for; without a pace all in the first week.
-    pace = (plan.modules_a_week or plan.modules) * plan.positions / plan.modules if plan.modules else None
-    assumed = WhatIf(superseding=new, superseding_from=question.as_of, retrofit_a_week=pace or None)
-    with_it = _weeks(replace(question, what_if=assumed), taught, plan.positions)
-    avoided = without - with_it
-    saved = without * (costs.failure + costs.old_part) - with_it * (costs.failure + costs.new_part)
-    spent = _spent(costs, plan, without.shape[1])
-    balance = np.cumsum(saved, axis=1) - spent
-    failures, money = _quarterly(avoided), _quarterly(saved)
+def _sum(weekly: list[Weekly]) -> Weekly:
+    """Draw by draw: components fail of causes of their own."""
+    return sum(weekly[1:], weekly[0])
+
+
+def _told(weekly: Weekly, spent: FloatArray, costs: Costs, as_of: dt.date) -> dict[str, Any]:
+    balance = np.cumsum(weekly.saved, axis=1) - spent
+    failures, money = _quarterly(weekly.avoided), _quarterly(weekly.saved)
     return {
         "quarters": [
             {"failures_avoided": _band(failures[:, n]), "money_saved": _band(money[:, n])} for n in range(QUARTERS)
@@ -128,14 +187,22 @@ def _told(question: Question, taught: Learned, new: str, old: str, costs: Costs,
         "visits_avoided": _band(failures[:, 0] * costs.visits_a_failure),
         "bench_hours_avoided": _band(failures[:, 0] * costs.bench_hours_a_failure),
         "rollout_cost": finite(float(spent[-1])),
-        "break_even": _break_even(balance, question.as_of),
+        "break_even": _break_even(balance, as_of),
         "balance": _band(balance[:, -1]),
     }
 
 
-def _spent(costs: Costs, plan: Plan, weeks: int) -> FloatArray:
-    """Cost of the rollout up to the end of each week; without a pace all of it at once."""
-    whole = plan.modules * costs.module + plan.positions * costs.new_part
+def _first_quarter(weekly: Weekly) -> dict[str, Any]:
+    return {
+        "failures_avoided": _band(_quarterly(weekly.avoided)[:, 0]),
+        "money_saved": _band(_quarterly(weekly.saved)[:, 0]),
+    }
+
+
+def _spent(sides: tuple[Side, ...], costs: Costs, plan: Plan) -> FloatArray:
+    """Cost of the rollout up to the end of each week; without a pace all of it at once. A module is paid for once."""
+    weeks = QUARTERS * WEEKS
+    whole = plan.modules * costs.module + sum(side.positions * side.new_cost for side in sides)
     if not plan.modules_a_week or not plan.modules:
         return np.full(weeks, whole)
     return whole * np.minimum(np.arange(1, weeks + 1) * plan.modules_a_week / plan.modules, 1.0)
@@ -165,24 +232,3 @@ def _break_even(balance: FloatArray, as_of: dt.date) -> dict[str, Any]:
         "chance": float(np.isfinite(week).mean()),
         "quarters": QUARTERS,
     }
-
-
-def _taken_ratio(taught: Learned, new: str, old: str) -> dict[str, Any] | None:
-    """Median life of the new part over that of the old, as both are drawn for the count."""
-    if new not in taught.designs:
-        return None
-    medians = []
-    for part in (new, old):
-        drawn = taught.designs[part].life.drawn
-        medians.append(drawn.scales * np.log(2.0) ** (1.0 / drawn.shapes))
-    # every draw of the one with every draw of the other: they are drawn apart
-    low, middle, high = np.quantile(medians[0][:, None] / medians[1][None, :], [0.1, 0.5, 0.9])
-    return {"estimate": finite(float(middle)), "lower": finite(float(low)), "upper": finite(float(high))}
-
-
-def _only_as_good(taught: Learned, new: str, old: str, ratio: float) -> Learned:
-    """The same knowledge, but the new part lives `ratio` times as long as the old one."""
-    like = taught.designs[old]
-    drawn = replace(like.life.drawn, scales=like.life.drawn.scales * ratio)
-    life = KeptDraws(drawn, like.life.has_spread, like.life.failures)
-    return replace(taught, designs={**taught.designs, new: replace(like, life=life, typical=like.typical * ratio)})

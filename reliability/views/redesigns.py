@@ -77,7 +77,7 @@ def redesign_print(request: Any, code: str) -> HttpResponse:
         return redesign(request, code)
     document = seen_document(request, record, form, line)
     context = context_of(request, record, form, line, document)
-    context |= {"money": money_context(request, record, line, document), "printed_on": timezone.localdate()}
+    context |= {"money": money_context(request, record, form, document), "printed_on": timezone.localdate()}
     return render(request, "redesigns/print.html", context)
 
 
@@ -88,7 +88,7 @@ def redesign_money(request: Any, code: str) -> HttpResponse:
     context: dict[str, Any] = {"redesign": record, "crumbs": [*CRUMBS, crumb_of(record)]}
     if line is not None and form.is_valid():
         document = seen_document(request, record, form, line)
-        context["money"] = money_context(request, record, line, document)
+        context["money"] = money_context(request, record, form, document)
     template = "redesigns/money.html" if request.htmx else "redesigns/money_page.html"
     return render(request, template, context)
 
@@ -183,21 +183,18 @@ def progress_of(request: Any, record: Redesign) -> dict[str, Any] | None:
 
 
 def money_context(
-    request: Any, record: Redesign, line: RedesignChange, document: dict[str, Any]
+    request: Any, record: Redesign, form: EvidenceForm, document: dict[str, Any]
 ) -> dict[str, Any] | None:
-    """Costs, failures and money with and without; None for those who may not see costs."""
+    """Costs, failures and money with and without, of all components; None for those who may not see costs."""
     from fleet.models import Book
     from reliability.redesign_money import money_page
-    from reliability.redesign_words import main_ratio
-    from reliability.redesigns.money import Costs, kept_money
+    from reliability.redesigns.money import Costs, Side, kept_money
     from reliability.redesigns.plan_left import plan_left
 
     if not may(request.user, COSTS):
         return None
-    book, old = Book.load(), newest_old(line)
+    book = Book.load()
     costs = Costs(
-        old_part=float(old.unit_cost or 0),
-        new_part=float(line.new_part.unit_cost or 0),
         visits_a_failure=record.visits_a_failure,
         visit=float(book.visit_cost),
         bench_hours_a_failure=record.bench_hours_a_failure,
@@ -206,18 +203,25 @@ def money_context(
         stop_day=float(book.stop_cost_per_day),
         module=float(record.cost_a_module or 0),
     )
-    ratio = main_ratio(document["same_dates"])
-    lower = ratio["median"]["lower"] if ratio else None
-    found = kept_money(
-        line.new_part.component,
-        line.new_part.code,
-        old.code,
-        as_of=dt.date.fromisoformat(document["as_of"]),
-        costs=costs,
-        plan=plan_left(record),
-        lower_ratio=lower,
+    plan, positions = plan_left(record)
+    sides = tuple(
+        Side(
+            component=line.new_part.component,
+            new=line.new_part.code,
+            old=newest_old(line).code,
+            replaced=tuple(part.code for part in line.replaces.all()),
+            old_cost=float(newest_old(line).unit_cost or 0),
+            new_cost=float(line.new_part.unit_cost or 0),
+            positions=positions.get(line.new_part.component_id, 0),
+            as_of=dt.date.fromisoformat(document["as_of"]),
+            hope=record.hope,
+            confidence=document["confidence"],
+            not_before=record.starts_on,
+        )
+        for line in form.lines
     )
-    return money_page(found, costs, book.currency, document)
+    found = kept_money(sides, costs, plan, form.rests_on())
+    return money_page(found, sides, costs, book.currency, only_modes=bool(document["modes"]))
 
 
 def newest_old(line: RedesignChange) -> Any:

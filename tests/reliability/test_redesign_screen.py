@@ -15,6 +15,7 @@ from fleet.actions.plan_rollout import plan_rollout
 from fleet.formats import number, percent
 from fleet.models import Module
 from reliability import redesign_words as words
+from reliability.redesign_money import money_sentence
 from tests.factories import make_book, make_crew, make_manager, make_planner
 from tests.reliability.rollout_fleet import TODAY, RolloutFleet
 from tests.reliability.small_fleet import day
@@ -153,7 +154,7 @@ def test_a_part_that_brings_failures_is_said_to() -> None:
         "rollout_cost": 0,
         "break_even": {"estimate": None, "quarters": 4, "chance": 0.0},
     }
-    sentence = words.money_sentence(told, "EUR")
+    sentence = money_sentence(told, "EUR")
     assert sentence.replace("\u00a0", " ").startswith(
         "In the next 13 weeks it brings about 17 more failures (−35 to 4 avoided"
     )
