@@ -10,7 +10,7 @@ from zoneinfo import ZoneInfo
 from django.db import models
 
 from fleet.actions.checks_values import label
-from fleet.actions.errors import ChangedSince
+from fleet.actions.errors import BadValue, ChangedSince
 from fleet.formats import long_day, moment
 from fleet.models import Book, Site
 from fleet.models.zones import zone as zone_named
@@ -21,6 +21,11 @@ NOT_TOLD = {"version", "code_order", "folded", "site", "entered_at", "entered_by
 
 def check_version(record: Any, version: int | None) -> None:
     """Refuses an edit of an older version, and tells what changed meanwhile."""
+    if version is not None and version > record.version:
+        raise BadValue(
+            f"This form shows a state that {describe(record)} never had. Open it again, and enter your change there.",
+            field="version",
+        )
     if version is not None and version != record.version:
         raise ChangedSince(record=describe(record), changes=changes_since(record, version))
 

@@ -14,7 +14,7 @@ from fleet.actions.entries import PartChange
 from fleet.forms.choosing import PickField, TileField
 from fleet.forms.instants import DayField
 from fleet.forms.log import EntryKeyField
-from fleet.forms.record import DayInput
+from fleet.forms.record import DayInput, VersionField
 from fleet.models import (
     BenchJob,
     Condition,
@@ -87,7 +87,7 @@ class JobForm(forms.Form):
 
 class StageForm(JobForm):
     name = "stage"
-    version = forms.IntegerField(widget=forms.HiddenInput, min_value=1)
+    version = VersionField()
     stage = TileField(
         choices=[(stage.value, stage.value) for stage in Stage if stage != Stage.FINISHED],
         widget=forms.RadioSelect,
@@ -202,7 +202,7 @@ class UseForm(JobForm):
 
 class FinishForm(JobForm):
     name = "finish"
-    version = forms.IntegerField(widget=forms.HiddenInput, min_value=1)
+    version = VersionField()
     outcome = TileField(choices=OUTCOMES, widget=forms.RadioSelect, label="How it ends")
     sure = forms.BooleanField(required=False, label="Yes, scrap the module: all its parts count as withdrawn")
     note = forms.CharField(max_length=4000, required=False, widget=forms.Textarea(attrs={"rows": 2}))

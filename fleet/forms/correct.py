@@ -7,7 +7,7 @@ from typing import Any, ClassVar
 
 from django import forms
 
-from fleet.forms.record import CodeInput, DayInput, InstantInput
+from fleet.forms.record import CodeInput, DayInput, InstantInput, VersionField
 from fleet.models import (
     FailureMode,
     Fitting,
@@ -28,7 +28,7 @@ class CorrectForm(forms.Form):
     """`changed` gives only what differs from the record."""
 
     names: ClassVar[tuple[str, ...]] = ()
-    version = forms.IntegerField(widget=forms.HiddenInput, min_value=1)
+    version = VersionField()
     reason = forms.CharField(max_length=500, label="Why it is corrected", help_text="Kept with the change.")
 
     def __init__(self, *args: Any, record: Any, request: Any, **kwargs: Any) -> None:
@@ -227,7 +227,7 @@ CORRECT_FORMS: dict[str, type[CorrectForm]] = {
 
 
 class StrikeOutForm(forms.Form):
-    version = forms.IntegerField(widget=forms.HiddenInput, min_value=1, required=False)
+    version = VersionField()
     reason = forms.CharField(
         max_length=480, label="Why it is struck out", help_text="It stays readable and leaves every statistic."
     )
@@ -235,6 +235,7 @@ class StrikeOutForm(forms.Form):
 
     def __init__(self, *args: Any, record: Any, **kwargs: Any) -> None:
         super().__init__(*args, initial={"version": getattr(record, "version", None)}, **kwargs)
+        self.fields["version"].required = hasattr(record, "version")  # a reading has none: it is never edited
         if record._meta.model_name != "visit":
             del self.fields["with_all"]
 

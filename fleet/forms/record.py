@@ -12,6 +12,8 @@ from django.core.exceptions import ValidationError
 from fleet.forms.instants import instant_of
 from fleet.models.codes import CODE_LENGTH, clean_code, validate_code
 
+LOST_VERSION = "The form has lost which state of the record it showed. Open it again, and enter your change there."
+
 
 class CodeInput(forms.CharField):
     """A code as people type it; stored upper case."""
@@ -67,16 +69,34 @@ class InstantInput(forms.DateTimeField):
         raise ValidationError(self.error_messages["invalid"], code="invalid")
 
 
+class VersionField(forms.IntegerField):
+    """Which state of a record a form shows; without it nobody could be told what changed meanwhile."""
+
+    widget = forms.HiddenInput
+
+    def __init__(self, **kwargs: Any) -> None:
+        super().__init__(**kwargs)
+        self.error_messages = dict.fromkeys(("required", "invalid"), LOST_VERSION)
+
+    def clean(self, value: Any) -> int | None:
+        version: int | None = super().clean(value)
+        if version is not None and not 1 <= version < 2**31:
+            raise ValidationError(LOST_VERSION)
+        return version
+
+
 class RecordForm(forms.Form):
     """`record` is None for a new one; `save_by` hands what was typed to the action."""
 
-    version = forms.IntegerField(required=False, widget=forms.HiddenInput, min_value=1)
+    version = VersionField(required=False)
     noun: ClassVar[str] = ""  # the action's argument: site, part …
 
     def __init__(self, *args: Any, record: Any, request: Any, **kwargs: Any) -> None:
         self.record, self.request = record, request
         initial = (self.opened(record) if record is not None else {}) | kwargs.pop("initial", {})
         super().__init__(*args, initial=initial, **kwargs)
+        if "version" in self.fields:
+            self.fields["version"].required = record is not None
         self.prepare()
 
     def prepare(self) -> None:

@@ -11,7 +11,7 @@ from django import forms
 from fleet.actions.place_supply_order import OrderedPart
 from fleet.forms.choosing import PickField
 from fleet.forms.log import EntryKeyField
-from fleet.forms.record import CodeInput, DayInput
+from fleet.forms.record import CodeInput, DayInput, VersionField
 from fleet.models import Part, Store, SupplyLine
 from fleet.models.supply import MOST_PIECES
 
@@ -144,7 +144,7 @@ class DeliveryForm(forms.Form):
 
 
 class LineForm(forms.Form):
-    version = forms.IntegerField(widget=forms.HiddenInput, min_value=1)
+    version = VersionField()
     quantity = forms.IntegerField(min_value=1, max_value=MOST_PIECES, label="Ordered")
     due_on = DayInput(required=False, label="Due on")
     unit_cost = forms.DecimalField(min_value=0, max_digits=10, decimal_places=2, required=False, label="Unit cost")
@@ -152,5 +152,5 @@ class LineForm(forms.Form):
 
 
 class CallOffForm(forms.Form):
-    version = forms.IntegerField(widget=forms.HiddenInput, min_value=1)
+    version = VersionField()
     reason = forms.CharField(max_length=500, label="Why nothing more comes", help_text="Kept with the change.")

@@ -8,6 +8,7 @@ from django.utils import timezone
 
 from fleet.actions.entries import PartChange
 from fleet.actions.record_visit import record_visit
+from fleet.formats import long_day
 from fleet.models import Fitting, LooksWrong, Visit
 from tests.factories import Carriage, make_crew
 
@@ -66,10 +67,11 @@ def test_a_refused_reason_is_told_at_the_removal(weir: Carriage) -> None:
 def test_a_record_is_struck_out_with_a_reason_only(weir: Carriage) -> None:
     visit, _ = logged(weir)
     client = signed_in(weir.manager)
-    assert client.post(f"/strike-out/visit/{visit.pk}/", {"reason": ""}).status_code == 422
-    refused = client.post(f"/strike-out/visit/{visit.pk}/", {"reason": "wrong module"})
+    shown = {"version": visit.version}
+    assert client.post(f"/strike-out/visit/{visit.pk}/", {**shown, "reason": ""}).status_code == 422
+    refused = client.post(f"/strike-out/visit/{visit.pk}/", {**shown, "reason": "wrong module"})
     assert refused.status_code == 422
-    gone = client.post(f"/strike-out/visit/{visit.pk}/", {"reason": "wrong module", "with_all": "on"})
+    gone = client.post(f"/strike-out/visit/{visit.pk}/", {**shown, "reason": "wrong module", "with_all": "on"})
     assert gone.status_code == 302
     visit.refresh_from_db()
     assert visit.struck_out == "wrong module"
@@ -87,3 +89,14 @@ def test_a_contact_doubts_and_a_manager_settles(weir: Carriage) -> None:
     done = manager.post(f"/looks-wrong/{mark.pk}/", {"outcome": "confirmed", "answer": "Rosa was"})
     assert done.status_code == 302
     assert "nobody was here" not in manager.get("/").content.decode()
+
+
+def test_a_record_is_named_in_words_not_by_its_code(weir: Carriage) -> None:
+    visit, nut = logged(weir)
+    client, day = signed_in(weir.manager), long_day(weir.site.day_of(visit.happened_at))
+    lead = client.get(f"/correct/visit/{visit.pk}/").context["lead"]
+    assert f"the visit of {day}" in lead
+    assert visit.code not in lead
+    lead = client.get(f"/strike-out/fitting/{nut.pk}/").context["lead"]
+    assert f"{nut.part.code} at " in lead
+    assert f"out {day}, failed" in lead

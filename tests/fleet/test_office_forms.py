@@ -115,3 +115,31 @@ def test_a_manager_can_hand_over_a_link_and_sign_somebody_out(client: Client, wo
     assert phone.get("/").status_code == 200
     client.post(f"/people/{world.crew.code}/sign-out/")
     assert phone.get("/").status_code == 302
+
+
+@pytest.mark.parametrize("version", ["", "0", "2", "2147483648", "9" * 40, "²", "one"])
+def test_an_edit_says_which_state_it_was_opened_in(client: Client, world: make.Carriage, version: str) -> None:
+    address = f"/sites/{world.site.code}/edit/"
+    entry = {"code": world.site.code, "kind": "field", "zone": "Europe/Lisbon", "name": "Old lock"}
+    for said in (entry, {**entry, "version": version}):
+        answer = client.post(address, said)
+        assert answer.status_code == 422
+        assert "Open it again" in answer.content.decode()
+    world.site.refresh_from_db()
+    assert world.site.name != "Old lock"
+
+
+def test_a_correction_and_a_strike_out_say_which_state_they_were_opened_in(
+    client: Client, world: make.Carriage
+) -> None:
+    fitting = world.fit()
+    for verb in ("correct", "strike-out"):
+        address = f"/{verb}/fitting/{fitting.pk}/"
+        opened = client.get(address).context["form"]
+        shown = {name: "" if (said := opened[name].value()) is None else said for name in opened.fields}
+        for version in ("", fitting.version + 1):
+            answer = client.post(address, {**shown, "lot": "L-1", "reason": "read again", "version": version})
+            assert answer.status_code == 422, verb
+            assert "Open it again" in answer.content.decode(), (verb, answer.context["form"].errors)
+    fitting.refresh_from_db()
+    assert (fitting.lot, fitting.struck_out) == ("", "")
