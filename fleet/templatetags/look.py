@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime as dt
+import re
 from collections.abc import Iterable, Mapping
 from decimal import Decimal
 from typing import Any
@@ -17,12 +18,24 @@ from fleet import formats
 from fleet.part_styles import part_style
 
 register = template.Library()
+# The drawing library reads these in any text of a figure, and more: bold, links, styles. A name may hold what it likes.
+NOT_OURS = re.compile(r"<(?!br>|/?extra>)")
 
 
 @register.filter
 def number(value: formats.Number | None, digits: int | None = None) -> str:
     """`{{ 61400|number }}` or `{{ play|number:1 }}`"""
     return formats.number(value, digits)
+
+
+@register.filter
+def as_written(figure: Any) -> Any:
+    """A figure whose texts are shown as they were written, whatever markup somebody put into a name."""
+    if isinstance(figure, str):
+        return NOT_OURS.sub("&lt;", figure)
+    if isinstance(figure, Mapping):
+        return {key: as_written(value) for key, value in figure.items()}
+    return [as_written(value) for value in figure] if isinstance(figure, (list, tuple)) else figure
 
 
 @register.filter

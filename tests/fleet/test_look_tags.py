@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime as dt
+import json
 from types import SimpleNamespace
 from typing import Any
 from urllib.parse import parse_qs
@@ -100,3 +101,21 @@ def test_page_links_keep_every_filter_value() -> None:
 
 def test_links_do_not_let_markup_through() -> None:
     assert "<" not in write("{% with_query page=3 %}", '/modules/?q="><script>')
+
+
+def test_names_in_a_figure_are_shown_as_written() -> None:
+    """A lot or a failure mode is named by a person; its name may be no link, no bold and no end of the script."""
+    name = '</script><a href="https://mallory.example"><b>N2</b></a> < 5'
+    figure = {
+        "data": [{"name": name, "x": [name, 1.5], "hovertemplate": f"%{{y}}<br>%{{x}}<extra>{name}</extra>"}],
+        "layout": {"xaxis": {"title": name}, "annotations": ({"text": name},)},
+    }
+    source = "{% include 'parts/chart.html' with chart=chart %}"
+    page = write(source, chart={"id": "one", "figure": figure, "sentence": name, "columns": [], "rows": []})
+    assert "<a href" not in page
+    drawn = json.loads(page.split('<script id="one" type="application/json">')[1].split("</script>")[0])
+    shown = name.replace("<", "&lt;")
+    assert drawn["data"] == [
+        {"name": shown, "x": [shown, 1.5], "hovertemplate": f"%{{y}}<br>%{{x}}<extra>{shown}</extra>"}
+    ]
+    assert drawn["layout"] == {"xaxis": {"title": shown}, "annotations": [{"text": shown}]}
