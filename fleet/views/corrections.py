@@ -13,6 +13,7 @@ from fleet.actions.checks_rights import entries_behind
 from fleet.actions.errors import RecordError
 from fleet.forms.correct import CORRECT_FORMS, StrikeOutForm
 from fleet.forms.errors import add_record_error
+from fleet.record_words import record_words
 from fleet.records_by_kind import CORRECTED, home_of, seen_record
 from fleet.rights import LOG, may_correct, needs
 
@@ -73,7 +74,7 @@ def strike_out_record(request: Any, kind: str, pk: int) -> HttpResponse:
 def page(request: Any, form: Any, record: Any, kind: str, *, title: str, submit: str) -> HttpResponse:
     context = {
         "title": title,
-        "lead": f"Of {home_of(record)[0]}: {record}.",
+        "lead": f"Of {home_of(record)[0]}: {record_words(record)}.",
         "form": form,
         "submit": submit,
         "crumbs": crumbs_of(record),

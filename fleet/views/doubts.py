@@ -14,6 +14,7 @@ from fleet.actions.errors import RecordError
 from fleet.forms.correct import CORRECT_FORMS, LooksWrongForm, SettleForm
 from fleet.forms.errors import add_record_error
 from fleet.models import LooksWrong
+from fleet.record_words import record_words
 from fleet.records_by_kind import DOUBTED, module_of, seen_record
 from fleet.rights import CORRECT, REPORT, needs
 from fleet.views.listing import Column, Listing
@@ -89,10 +90,12 @@ def settle_doubt(request: Any, pk: int) -> HttpResponse:
         else:
             messages.success(request, "Settled.")
             return redirect("doubts")
+    record = request.seen(DOUBTED[doubt.kind]).filter(pk=doubt.record).first()
     context = {
         "doubt": doubt,
         "form": form,
-        "record": request.seen(DOUBTED[doubt.kind]).filter(pk=doubt.record).first(),
+        "record": record,
+        "words": record_words(record) if record else f"{doubt.kind}: no longer on record, or not at a site of yours",
         "can_correct": doubt.kind in CORRECT_FORMS,
         "crumbs": [{"name": "Looks wrong", "url": reverse("doubts")}],
     }
