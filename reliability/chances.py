@@ -116,7 +116,7 @@ def posterior_of(lifetimes: Any) -> Any:
     """With two or more sites they may differ."""
     from reliability.stats.posterior import weibull_posterior
 
-    return weibull_posterior(lifetimes, site_spread=len(lifetimes.site_labels) > 1)
+    return weibull_posterior(lifetimes, site_spread=len(lifetimes.site_labels) > 1, early_until=0.0)
 
 
 def drawn(posterior: Any, failures: int) -> dict[str, Any]:

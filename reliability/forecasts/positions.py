@@ -129,6 +129,9 @@ def _spread(
     use = 1.0 if days else question.what_if.duty * learned.duty.factor(question.span)
     pace = row.a_day * learned.standing.share(row.site) * use
     shift = question.shift
+    # ages speak of the end of the as-of day, the count of the morning on which it starts; on the day's clock lives that
+    # failed were shortened by half a day, on the others they were not
+    aged_since = shift - (1.0 if days else 0.5)
     rule, by_days = _rule(row, question, learned)
     place = Place(
         site=row.site,
@@ -147,7 +150,7 @@ def _spread(
     )
     place = _visited(place, row, question, learned)
     for age, share in ages:
-        aged = age if row.joins > 0 else max(age + shift * pace, 0.0)
+        aged = age if row.joins > 0 else max(age + aged_since * pace, 0.0)
         left = learned.standing.days_left(row.stopped) - shift if row.stopped >= 0 else 0.0
         if left <= 0:
             yield place, aged, row.count * share

@@ -131,19 +131,25 @@ def weibull_posterior(
     site_spread: bool = False,
     log_shape_prior: tuple[float, float] = (log(2.0), 1.0),
     spread_prior: float = 1.0,
-    early_until: float = 0.0,
+    early_until: float | None = None,
     rounded_up_to: float = 0.0,
 ) -> WeibullPosterior:
     """Posterior of shape, scale and (with site_spread) the variance nu of site factors, as weighted grid points.
 
     log_shape_prior: mean and standard deviation of log shape. spread_prior: mean of the exponential prior on nu.
     early_until: lives are split at this age: a share fails before it (its own binomial), the rest is Weibull given
-    survival to it; 0 means one Weibull. rounded_up_to: the unit that ages at failure were rounded up to (1 for whole
-    days), see `unrounded`. Raises InvalidArgument for a prior outside its domain.
+    survival to it; looked for in the records if None (`early_window`), 0 means one Weibull. rounded_up_to: the unit
+    that ages at failure were rounded up to (1 for whole days), see `unrounded`. Raises InvalidArgument for a prior
+    outside its domain.
     """
-    if not (log_shape_prior[1] > 0 and spread_prior > 0 and early_until >= 0):
+    if not (log_shape_prior[1] > 0 and spread_prior > 0 and (early_until or 0.0) >= 0):
         raise InvalidArgument("The prior's standard deviation and mean spread must be above 0, early_until at least 0.")
     lifetimes = unrounded(lifetimes, rounded_up_to)
+    if early_until is None:
+        # weighs posteriors itself
+        from reliability.stats.early_failures import early_window
+
+        early_until = early_window(lifetimes)
     early_counts = (0.0, 0.0)
     if early_until:
         lifetimes, early_counts = split_early(lifetimes, early_until)
@@ -158,7 +164,8 @@ def log_evidence(lifetimes: Lifetimes, *, log_shape_prior: tuple[float, float] =
     """
     exact = lifetimes.is_exact
     ages = float(lifetimes.weights[exact] @ np.log(lifetimes.durations[exact]))
-    return weibull_posterior(lifetimes, log_shape_prior=log_shape_prior).evidence - ages - log(log_shape_prior[1])
+    evidence = weibull_posterior(lifetimes, log_shape_prior=log_shape_prior, early_until=0.0).evidence
+    return evidence - ages - log(log_shape_prior[1])
 
 
 def _settled_grid(

@@ -106,7 +106,7 @@ def grouped_rows(rng: np.random.Generator) -> None:
         ("group 100,000 lives", lambda: whole.grouped()),
         ("Weibull fit", lambda: fit_weibull(lives)),
         (f"{len(QUANTITIES)} likelihood-ratio intervals", lambda: [fit.interval(quantity) for quantity in QUANTITIES]),
-        ("posterior grid", lambda: weibull_posterior(lives)),
+        ("posterior grid", lambda: weibull_posterior(lives, early_until=0.0)),
         ("lognormal fit", lambda: fit_lognormal(lives)),
         ("Kaplan–Meier", lambda: kaplan_meier(lives)),
         ("Weibull fit between looks", lambda: fit_weibull(few)),

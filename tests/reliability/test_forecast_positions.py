@@ -2,12 +2,22 @@
 
 from __future__ import annotations
 
+import datetime as dt
 import random
 from collections import defaultdict
 
+import numpy as np
 import pytest
 
-from reliability.forecasts.positions import MOST_PACES, Place, _shared_paces
+from fleet.models import Clock, Component
+from reliability.forecasts.duty import Duty
+from reliability.forecasts.learned import ALL, Design, Learned
+from reliability.forecasts.positions import MOST_PACES, Place, _shared_paces, positions_of
+from reliability.forecasts.question import question_of
+from reliability.forecasts.standing import Standing
+from reliability.running_parts import RunningRow
+from reliability.stats.kept_draws import KeptDraws
+from reliability.stats.posterior import KnownWeibull
 
 
 def place(site: str, pace: float) -> Place:
@@ -49,3 +59,32 @@ def test_shared_paces_lose_no_use_and_stay_few(sites: int) -> None:
 def test_paces_of_few_sites_stay_near_their_own() -> None:
     entries = [(place("S", pace), 0.0, 1.0) for pace in (98.0, 100.0, 200.0, 400.0)]
     assert _shared_paces(entries) == pytest.approx([99.0, 99.0, 200.0, 400.0])
+
+
+@pytest.mark.parametrize(
+    ("clock", "a_day", "first", "expected"),
+    [("days", 1.0, 1, 40.0), ("days", 1.0, 4, 43.0), ("strokes", 80.0, 1, 40.5 * 80)],
+)
+def test_a_part_is_as_old_on_the_first_morning_as_on_the_evening_before(
+    clock: Clock, a_day: float, first: int, expected: float
+) -> None:
+    """Whole days end with the day; on another clock a part that went in on a day had half of it."""
+    today = dt.date(2026, 3, 2)
+    life = KeptDraws.of(KnownWeibull(2.0, 9000.0), 1, np.random.default_rng(1))
+    learned = Learned(
+        failures=9,
+        designs={ALL: Design(life, failures=9, removals=0.0, upgrades=0.0, typical=9000.0)},
+        taken_share=0.0,
+        rules={},
+        visits={},
+        standing=Standing({}, 1.0, []),
+        stop_share=0.0,
+        duty=Duty(0.0, 0.0, []),
+        triggers=[],
+    )
+    row = RunningRow(age=40 * a_day, a_day=a_day, part="N1", needed="N1", site="LOCK", type="A", count=1)
+    asked = question_of(
+        Component(code="NUT", clock=clock), as_of=today, begin=today + dt.timedelta(days=first), days=10
+    )
+    found = positions_of([row], asked, learned)
+    assert (found.ages + asked.gap * a_day).tolist() == pytest.approx([expected])

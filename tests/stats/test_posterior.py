@@ -196,11 +196,20 @@ def test_early_failures_are_set_apart() -> None:
     rng = np.random.default_rng(5)
     life = np.where(rng.random(600) < 0.1, rng.uniform(0, 5, 600), 5 + 100 * rng.weibull(2.5, 600))
     lifetimes = Lifetimes(np.minimum(life, 90.0), life < 90.0)
-    plain = weibull_posterior(lifetimes).draws(400, rng)
-    split = weibull_posterior(lifetimes, early_until=5.0).draws(400, rng)
+    plain = weibull_posterior(lifetimes, early_until=0.0).draws(400, rng)
     assert np.median(plain.shapes) < 1.5
-    assert np.median(split.shapes) > 2.0
-    assert np.quantile(split.early_shares, 0.01) < 0.1 < np.quantile(split.early_shares, 0.99)
+    # told where they end, or looked for in the records
+    for split in (weibull_posterior(lifetimes, early_until=5.0), weibull_posterior(lifetimes)):
+        drawn = split.draws(400, rng)
+        assert np.median(drawn.shapes) > 2.0
+        assert np.quantile(drawn.early_shares, 0.01) < 0.1 < np.quantile(drawn.early_shares, 0.99)
+
+
+def test_no_early_failures_are_found_where_lives_are_weibull() -> None:
+    rng = np.random.default_rng(5)
+    life = 100 * rng.weibull(2.5, 3000)
+    records = Lifetimes(np.minimum(np.ceil(life), 90.0), life < 90.0, sites=rng.integers(0, 5, 3000).astype(str))
+    assert weibull_posterior(records).early_until == 0.0
 
 
 def test_known_parameters_do_not_vary() -> None:
