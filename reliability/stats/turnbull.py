@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -85,6 +86,33 @@ class _Cells:
     last: IntArray  # one past its last cell, (n,)
     entry: IntArray  # number of cells before the row came under observation, (n,)
     weights: FloatArray  # (n,)
+
+    @cached_property
+    def one_cell(self) -> BoolArray:
+        """Rows that say in which cell they failed, (n,)."""
+        return (self.last - self.first == 1) & ~self.beyond
+
+    @cached_property
+    def beyond(self) -> BoolArray:
+        """Rows that may have outlasted all ages, (n,)."""
+        return self.right[self.last - 1] == np.inf
+
+    @cached_property
+    def known_failed(self) -> FloatArray:
+        """Lives of which the cell is known, (m,)."""
+        return np.bincount(self.first[self.one_cell], weights=self.weights[self.one_cell], minlength=self.right.size)
+
+    @cached_property
+    def known_at_risk(self) -> FloatArray:
+        """Lives at risk in each cell whatever the masses: before all cells in which they may have failed, (m,)."""
+        return _running(self.entry, self.first, self.weights, self.right.size) + self.known_failed
+
+    @cached_property
+    def spread_rows(self) -> tuple[IntArray, IntArray, FloatArray, IntArray]:
+        """First, last, weights and spans of the rows whose cell among several depends on the masses."""
+        several = ~self.one_cell & ~self.beyond
+        first, last = self.first[several], self.last[several]
+        return first, last, self.weights[several], _spans(first, last)
 
 
 def turnbull(lifetimes: Lifetimes) -> TurnbullCurve:
@@ -195,9 +223,17 @@ def pool_adjacent_violators(values: FloatArray, weights: FloatArray) -> FloatArr
 
 def _chances(cells: _Cells, mass: FloatArray) -> FloatArray:
     """Probability of each row, the sum of the masses it covers, shape (n,)."""
-    padded = np.append(mass, 0.0)
-    spans = np.stack([cells.first, cells.last], axis=1).ravel()
-    return np.add.reduceat(padded, spans)[::2]
+    return _sums_between(_spans(cells.first, cells.last), mass)
+
+
+def _spans(first: IntArray, last: IntArray) -> IntArray:
+    """First and last of each row by turns, (2 n,)."""
+    return np.stack([first, last], axis=1).ravel()
+
+
+def _sums_between(spans: IntArray, mass: FloatArray) -> FloatArray:
+    """Sum of the masses from each first up to before each last, shape (n,)."""
+    return np.add.reduceat(np.append(mass, 0.0), spans)[::2] if spans.size else np.zeros(0)
 
 
 def _spread_over_cells(cells: _Cells, values: FloatArray) -> FloatArray:
@@ -237,10 +273,8 @@ def _stepped(
     cells: _Cells, mass: FloatArray, slope: FloatArray, free: BoolArray, chances: FloatArray, lives: float
 ) -> FloatArray:
     """One projected Newton step that climbs; then a self-consistent step, which never falls."""
-    curvature = _curvature(cells, cells.weights / chances**2)[np.ix_(free, free)]
-    curvature[np.diag_indices_from(curvature)] += 1e-12 * lives + 1e-10 * np.diag(curvature)
     direction = np.where(mass > 1e-9, 0.0, -mass)
-    direction[free] = np.linalg.solve(curvature, slope[free])
+    direction[free] = _newton_direction(cells, cells.weights / chances**2, slope, free, 1e-12 * lives)
     height = float(cells.weights @ np.log(chances)) - lives * float(mass.sum())
     share = 1.0
     for _ in range(50):
@@ -255,15 +289,32 @@ def _stepped(
     return mass * _spread_over_cells(cells, cells.weights / _chances(cells, mass)) / lives
 
 
-def _curvature(cells: _Cells, values: FloatArray) -> FloatArray:
-    """Matrix with, for cells j and k, the sum of the values of the rows that cover both, shape (m, m)."""
-    size = cells.right.size
-    corner = np.zeros((size, size))
-    np.add.at(corner, (cells.first, cells.last - 1), values)
-    # a row covers j <= k where it begins at or before j and ends at or after k
-    upper = np.cumsum(np.cumsum(corner, axis=0)[:, ::-1], axis=1)[:, ::-1]
-    upper = np.triu(upper)
-    return upper + np.triu(upper, 1).T
+def _newton_direction(
+    cells: _Cells, values: FloatArray, slope: FloatArray, free: BoolArray, ridge: float
+) -> FloatArray:
+    """Solves curvature x = slope on the free cells, shape (their number,), the curvature's diagonal a little raised.
+
+    The curvature of cells j and k is the sum of the values of the rows that cover both, a full matrix. In running sums
+    y, x_j = y_j - y_(j-1), a row concerns its two ends only: that matrix has as many entries as rows.
+    """
+    from scipy import sparse
+    from scipy.sparse.linalg import splu
+
+    before = np.append(0, np.cumsum(free))
+    size = int(before[-1])
+    # number of the sum at each row's beginning and end; sum 0 is none and always 0
+    first, last = before[cells.first], before[cells.last]
+    diagonal = _spread_over_cells(cells, values)[free]
+    own = np.arange(1, size + 1)
+    begins, ends = np.concatenate([first, own - 1]), np.concatenate([last, own])
+    weights = np.concatenate([values, ridge + 1e-10 * diagonal])
+    entries = np.concatenate([weights, weights, -weights, -weights])
+    down, across = np.concatenate([begins, ends, begins, ends]), np.concatenate([begins, ends, ends, begins])
+    kept = (down > 0) & (across > 0)
+    matrix = sparse.csc_matrix((entries[kept], (down[kept] - 1, across[kept] - 1)), shape=(size, size))
+    steps = slope[free]
+    sums = splu(matrix).solve(steps - np.append(steps[1:], 0.0))
+    return np.diff(sums, prepend=0.0)
 
 
 def _self_consistent(cells: _Cells) -> tuple[FloatArray, int]:
@@ -295,7 +346,8 @@ def _self_consistent(cells: _Cells) -> tuple[FloatArray, int]:
 
 def _masses(cells: _Cells, hazard: FloatArray) -> FloatArray:
     """Mass of each cell. Raises UndefinedEstimate where S falls to 0 before others came under observation."""
-    survival = np.cumprod(np.append(1.0, 1.0 - hazard))
+    survival = np.ones(hazard.size + 1)
+    np.cumprod(1.0 - hazard, out=survival[1:])
     emptied = np.flatnonzero(survival[1:] < 1e-12)
     if emptied.size and (cells.entry > emptied[0]).any():
         age = float(cells.right[emptied[0]])
@@ -311,15 +363,15 @@ def _reproduced(cells: _Cells, hazard: FloatArray) -> FloatArray:
     """One step of self-consistency; a withdrawn row is at risk up to the cells in which it may have failed."""
     size = hazard.size
     mass = _masses(cells, hazard)
-    beyond = cells.right[cells.last - 1] == np.inf
-    at_risk = _running(cells.entry, cells.first, cells.weights, size)
-    first, last, weights = cells.first[~beyond], cells.last[~beyond], cells.weights[~beyond]
-    summed = np.append(0.0, np.cumsum(mass))
-    share = weights / np.maximum(_chances(cells, mass)[~beyond], 1e-300)
+    first, last, weights, spans = cells.spread_rows
+    summed = np.zeros(size + 1)
+    np.cumsum(mass, out=summed[1:])
+    share = weights / np.maximum(_sums_between(spans, mass), 1e-300)
     covering = _running(first, last, share, size)
     failed = mass * covering
     # still at risk in a cell: the share of the row's chance that lies in it or in later cells
-    at_risk += np.maximum(_running(first, last, share * summed[last], size) - summed[:-1] * covering, failed)
+    after = np.maximum(_running(first, last, share * summed[last], size) - summed[:-1] * covering, failed)
+    at_risk, failed = cells.known_at_risk + after, cells.known_failed + failed
     reproduced = np.where(at_risk > 0.0, np.minimum(failed / np.maximum(at_risk, 1e-300), 1.0), 0.0)
     if np.isinf(cells.right[-1]):
         reproduced[-1] = 1.0  # what outlasts all ages fails beyond them; none was counted there

@@ -9,7 +9,7 @@ from hypothesis import given, settings
 from reliability.stats.errors import InvalidArgument, UndefinedEstimate
 from reliability.stats.kaplan_meier import kaplan_meier
 from reliability.stats.lifetimes import Lifetimes
-from reliability.stats.turnbull import pool_adjacent_violators, turnbull
+from reliability.stats.turnbull import _innermost_cells, _newton_direction, pool_adjacent_violators, turnbull
 from tests.stats import reference
 from tests.stats.cases import small_lives, weibull_lives
 
@@ -190,4 +190,21 @@ def test_nothing_failed_and_one_life():
 def test_pooling_adjacent_violators():
     assert pool_adjacent_violators(np.array([0.1, 0.4, 0.2, 0.5]), np.array([1.0, 1.0, 3.0, 1.0])) == pytest.approx(
         [0.1, 0.25, 0.25, 0.5]
+    )
+
+
+def test_the_newton_step_solves_the_full_curvature():
+    # the sum of values over the rows that cover both cells, written out, against the sparse running sums
+    rng = np.random.default_rng(21)
+    last_good = rng.integers(0, 30, 80).astype(float)
+    cells = _innermost_cells(
+        Lifetimes(last_good + rng.integers(1, 9, 80), rng.random(80) < 0.8, last_good=last_good, weights=2.0)
+    )
+    values, free = rng.random(cells.first.size) + 0.1, rng.random(cells.right.size) < 0.7
+    slope = rng.normal(size=cells.right.size)
+    covers = (cells.first[:, None] <= np.arange(cells.right.size)) & (np.arange(cells.right.size) < cells.last[:, None])
+    curvature = (covers.T @ (values[:, None] * covers))[np.ix_(free, free)]
+    curvature[np.diag_indices_from(curvature)] += 1e-3 + 1e-10 * np.diag(curvature)
+    assert _newton_direction(cells, values, slope, free, 1e-3) == pytest.approx(
+        np.linalg.solve(curvature, slope[free]), rel=1e-9
     )
