@@ -7,11 +7,11 @@ from typing import Any
 from django.db import models
 
 from fleet.actions.changed_since import check_version
-from fleet.actions.checks_values import clean_day
+from fleet.actions.checks_values import clean_day, clean_planned_day
 from fleet.actions.errors import BadValue
 from fleet.actions.writes import add, save_again
 
-MAY_LIE_AHEAD = {"next_visit_on"}
+MAY_LIE_AHEAD = {"next_visit_on", "due_on"}
 
 
 class Saving:
@@ -78,8 +78,8 @@ def clean_field(model: type[models.Model], name: str, value: Any) -> Any:
     kind = column.related_model if column.is_relation else None
     if kind is not None and value is not None and not isinstance(value, kind):
         raise BadValue(f"“{name.replace('_', ' ')}” is not on record. Choose one from the list.", field=name)
-    if isinstance(column, models.DateField) and name not in MAY_LIE_AHEAD:
-        return clean_day(value, field=name)
+    if isinstance(column, models.DateField):
+        return (clean_planned_day if name in MAY_LIE_AHEAD else clean_day)(value, field=name)
     return value
 
 

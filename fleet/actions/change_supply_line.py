@@ -25,8 +25,7 @@ def change_supply_line(
     only(fields, FIELDS, "line")
     with change(by=by, right=STOCK, reason=reason, raises_version=False):
         line = standing_line(line)
-        given = {name: value if name == "due_on" else clean_field(SupplyLine, name, value)
-                 for name, value in fields.items()}  # fmt: skip
+        given = {name: clean_field(SupplyLine, name, value) for name, value in fields.items()}
         changed = {name: value for name, value in given.items() if value != getattr(line, name)}
         if not changed:
             return line

@@ -15,6 +15,7 @@ from fleet.actions.errors import BadValue, day_words, thousands
 from fleet.models.codes import CodeField
 
 EARLIEST = dt.date(1900, 1, 1)
+FURTHEST = dt.timedelta(days=3653)  # ten years: nobody plans further, and a year typed wrong lies beyond
 AHEAD = dt.timedelta(minutes=5)  # a phone's clock may run a little fast
 
 
@@ -66,6 +67,18 @@ def clean_day(value: Any, *, field: str, today: dt.date | None = None) -> dt.dat
     if value > last:
         raise BadValue(f"{day_words(value)} lies in the future. Enter a day up to today.", field=field)
     return value
+
+
+def clean_planned_day(value: Any, *, field: str) -> dt.date | None:
+    """A day that may lie ahead: from 1900 to ten years from now."""
+    last = latest_planned_day()
+    if isinstance(value, dt.date) and not isinstance(value, dt.datetime) and value > last:
+        raise BadValue(f"{day_words(value)} lies more than ten years ahead. Check the year.", field=field)
+    return clean_day(value, field=field, today=last)
+
+
+def latest_planned_day() -> dt.date:
+    return timezone.now().date() + FURTHEST
 
 
 def need_day(value: Any, *, field: str, today: dt.date | None = None) -> dt.date:

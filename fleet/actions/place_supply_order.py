@@ -11,7 +11,7 @@ from decimal import Decimal
 from django.utils import timezone
 
 from fleet.actions.base import change, once
-from fleet.actions.checks_values import need_day
+from fleet.actions.checks_values import clean_planned_day, need_day
 from fleet.actions.errors import BadValue, RecordError, day_words
 from fleet.actions.writes import add
 from fleet.models import Book, Part, Person, SupplyLine, SupplyOrder
@@ -67,7 +67,7 @@ def place_supply_order(
 
 
 def write_line(order: SupplyOrder, line: OrderedPart, by: Person | None) -> SupplyLine:
-    due = line.due_on
+    due = clean_planned_day(line.due_on, field="due_on")
     if due is None and line.part.lead_time_days is not None:
         due = order.ordered_on + dt.timedelta(days=line.part.lead_time_days)
     record = SupplyLine(

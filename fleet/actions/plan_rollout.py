@@ -9,7 +9,7 @@ from django.db.models import Max
 
 from fleet.actions.base import change, sees
 from fleet.actions.changed_since import check_version
-from fleet.actions.checks_values import EARLIEST
+from fleet.actions.checks_values import clean_planned_day
 from fleet.actions.correct_record import clean_reason
 from fleet.actions.errors import AlreadyDone, BadValue, NotAllowed, day_words
 from fleet.actions.strike import strike
@@ -20,7 +20,7 @@ from fleet.rights import LIFE
 
 WEEK = 7
 MOST_A_WEEK = 10_000
-LATEST = dt.date(2200, 1, 1)
+LATEST = dt.date(2200, 1, 1)  # of the last module at a slow pace
 
 
 def plan_rollout(
@@ -43,6 +43,7 @@ def plan_rollout(
                 raise NotAllowed(f"Module {module.code} does not stand at a site of yours. Leave it out.")
         planned = set(redesign.steps.standing().values_list("module_id", flat=True))
         new = [module for module in dict.fromkeys(modules) if module.pk not in planned]
+        check_end(planned_day(first_on, modules_a_week, max(0, len(new) - 1)))
         last = redesign.steps.aggregate(last=Max("order"))["last"] or 0
         steps = [
             RolloutStep(
@@ -57,9 +58,8 @@ def plan_rollout(
     return list(redesign.steps.standing().filter(order__gt=last)) if steps else []
 
 
-def check_pace(first_on: dt.date | None, modules_a_week: int | None) -> None:
-    if first_on is not None and not EARLIEST <= first_on < LATEST:
-        raise BadValue(f"{day_words(first_on)} is no day of a rollout. Check the year.", field="first_on")
+def check_pace(first_on: dt.date | None, modules_a_week: int | None, field: str = "first_on") -> None:
+    clean_planned_day(first_on, field=field)
     if modules_a_week is None:
         return
     if not 1 <= modules_a_week <= MOST_A_WEEK:
@@ -68,6 +68,14 @@ def check_pace(first_on: dt.date | None, modules_a_week: int | None) -> None:
         )
     if first_on is None:
         raise BadValue("The first day is missing. Enter it with the pace.", field="first_on")
+
+
+def check_end(last: dt.date | None) -> None:
+    if last is not None and last >= LATEST:
+        raise BadValue(
+            f"At this pace the last module would get its part on {day_words(last)}. Enter more modules a week.",
+            field="modules_a_week",
+        )
 
 
 def planned_day(first_on: dt.date | None, modules_a_week: int | None, place: int) -> dt.date | None:
@@ -82,7 +90,7 @@ def move_step(
     """Another planned day for one module; empty: no day yet."""
     with change(by=by, right=LIFE, raises_version=False):
         step = opened(step, by)
-        check_pace(planned_on, None)
+        check_pace(planned_on, None, "planned_on")
         if step.planned_on == planned_on:
             return step
         check_version(step, version)

@@ -6,7 +6,7 @@ import datetime as dt
 from collections.abc import Iterable
 
 from fleet.actions.base import change
-from fleet.actions.checks_values import clean_number, clean_text
+from fleet.actions.checks_values import clean_number, clean_planned_day, clean_text
 from fleet.actions.errors import BadValue, day_words
 from fleet.actions.writes import add, save_again
 from fleet.models import BenchCapacity, Person
@@ -32,7 +32,8 @@ def set_capacity(
 ) -> list[BenchCapacity]:
     """So many hours in each week of a stretch; each closed working day takes a fifth off its week."""
     with change(by=by, right=CATALOGUE, raises_version=False):
-        first, last = monday(first_week), monday(last_week or first_week)
+        first = monday(planned(first_week, "first_week"))
+        last = monday(planned(last_week or first_week, "last_week"))
         weeks = weeks_of(first, last)
         full = clean_number(hours, BenchCapacity._meta.get_field("hours"))
         text = clean_text(note, field="note", longest=200, words="The note")
@@ -41,6 +42,13 @@ def set_capacity(
         return [
             write_week(week, round(full * (1 - closed.get(week, 0) / WORKING_DAYS), 6), text, book) for week in weeks
         ]
+
+
+def planned(week: dt.date, field: str) -> dt.date:
+    day = clean_planned_day(week, field=field)
+    if day is None:
+        raise BadValue("The week is missing. Enter any day of it.", field=field)
+    return day
 
 
 def weeks_of(first: dt.date, last: dt.date) -> list[dt.date]:

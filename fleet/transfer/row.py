@@ -6,6 +6,8 @@ import datetime as dt
 from collections.abc import Callable
 from typing import Any
 
+from fleet.actions.checks_values import latest_planned_day
+
 Say = Callable[[int, str, Any, str], None]
 
 
@@ -40,3 +42,9 @@ class Row:
         value = self.values.get(to)
         if value is not None and last is not None and value > last:
             self.say(column, f"lies after {words}, {last.isoformat()}. Enter a day up to then.")
+
+    def not_too_far(self, column: str) -> None:
+        """Refuses a planned day that only a year typed wrong can mean."""
+        day = self.values.get(column)
+        if day is not None and day > latest_planned_day():
+            self.say(column, "lies more than ten years ahead. Check the year.")

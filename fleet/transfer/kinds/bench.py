@@ -80,7 +80,7 @@ def finish_hours(row: Row, known: Known) -> None:
 
 
 def finish_capacity(row: Row, known: Known) -> None:
-    pass
+    row.not_too_far("week")
 
 
 BENCH = FileKind(

@@ -15,6 +15,7 @@ def finish(row: Row, known: Known) -> None:
     row["code_order"] = natural_key(row["code"] or "")
     row["folded"] = fold(row["code"], row["name"])
     known.check_past(row, "records_from", "records_from")
+    row.not_too_far("next_visit_on")
 
 
 SITES = FileKind(
@@ -31,7 +32,7 @@ SITES = FileKind(
         Column("hours_per_day", "hours_per_day", cells.number(0, 24)),
         Column("reports_at_once", "reports_at_once", cells.yes_no),
         Column("next_visit_on", "next_visit_on", cells.day),
-        Column("visit_every_days", "visit_every_days", cells.whole(1)),
+        Column("visit_every_days", "visit_every_days", cells.whole(1, 3650)),
     ),
     key=("code",),
     key_columns=("site",),

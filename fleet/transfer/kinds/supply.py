@@ -14,6 +14,7 @@ def finish(row: Row, known: Known) -> None:
     code = row.values.pop("order_code", None)
     row["order_id"] = None
     known.check_past(row, "ordered_on", "ordered_on")
+    row.not_too_far("due_on")
     row.not_before("due_on", "due_on", row["ordered_on"], "the day it was ordered")
     if code is not None and row["ordered_on"] is not None:
         settle_order(row, known, code)

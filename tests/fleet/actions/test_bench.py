@@ -311,6 +311,15 @@ def test_capacity_is_set_by_week_with_closed_days(ines: Person, greta: Person) -
         set_capacity(by=ines, first_week=on("2024-12-23"), hours=40, closed_days=[on("2025-03-03")])
 
 
+@pytest.mark.parametrize("day", ["0001-01-01", "1899-12-31", "9999-12-31"])
+def test_capacity_of_weeks_that_nobody_plans_is_refused(ines: Person, day: str) -> None:
+    """A closed day in the last week of the calendar has no week after it."""
+    for weeks in ({"first_week": on(day)}, {"first_week": on("2024-12-23"), "last_week": on(day)}):
+        with pytest.raises(BadValue, match="Check"):
+            set_capacity(by=ines, hours=40, closed_days=[on(day)], **weeks)
+    assert not BenchCapacity.objects.exists()
+
+
 def test_the_bench_of_another_depot_has_no_say(job: BenchJob) -> None:
     other = make_bench(make_depot())
     for verb in (

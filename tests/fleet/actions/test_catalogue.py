@@ -39,11 +39,13 @@ pytestmark = pytest.mark.django_db
 def test_a_site_is_made_and_changed_with_its_history(ines: Person) -> None:
     site = save_site(by=ines, code=" alder-1 ", name="Alder Sluice", kind="field", zone="Europe/Lisbon")
     assert (site.code, site.version) == ("ALDER-1", 1)
-    site = save_site(by=ines, site=site, version=1, name="Alder Lock", next_visit_on=on("2424-01-01"))
+    site = save_site(by=ines, site=site, version=1, name="Alder Lock", next_visit_on=on("2027-01-01"))
     assert (site.name, site.version, site.history.count()) == ("Alder Lock", 2, 2)
     with pytest.raises(ChangedSince, match="Alder Sluice → Alder Lock"):
         save_site(by=ines, site=site, version=1, name="Alder Gate")
     assert save_site(by=ines, site=site, version=1, name="Alder Lock").version == 2
+    with pytest.raises(BadValue, match="more than ten years ahead"):
+        save_site(by=ines, site=site, version=2, next_visit_on=on("9999-12-31"))
 
 
 @pytest.mark.parametrize(

@@ -102,6 +102,7 @@ def test_a_plan_needs_days_and_paces_that_make_sense(world: Carriage) -> None:
         ({"first_on": on("2026-01-05"), "modules_a_week": 0}, "out of range"),
         ({"first_on": on("1026-01-05")}, "Check the year"),
         ({"first_on": on("9026-01-05")}, "Check the year"),
+        ({"first_on": on("2126-01-05")}, "Check the year"),
     ):
         with pytest.raises(BadValue, match=words):
             plan_rollout(by=world.manager, redesign=redesign, modules=[world.module], **fields)  # type: ignore[arg-type]

@@ -154,6 +154,17 @@ def test_the_line_at_fault_is_named(weir: Carriage, ines: Person) -> None:
         place_supply_order(by=ines, lines=[OrderedPart(weir.n1, 0)])
 
 
+@pytest.mark.parametrize(("day", "words"), [("9999-12-31", "more than ten years ahead"), ("0001-01-01", "before 1900")])
+def test_a_year_typed_wrong_is_no_day_of_a_delivery(
+    weir: Carriage, ines: Person, line: SupplyLine, day: str, words: str
+) -> None:
+    with pytest.raises(BadValue, match=words):
+        place_supply_order(by=ines, lines=[OrderedPart(weir.n2, 4, due_on=on(day))])
+    with pytest.raises(BadValue, match=words):
+        change_supply_line(by=ines, line=line, version=1, due_on=on(day))
+    assert SupplyOrder.objects.count() == 1
+
+
 def test_only_the_office_orders(weir: Carriage, rosa: Person) -> None:
     for person in (rosa, weir.contact):
         with pytest.raises(NotAllowed):

@@ -164,6 +164,8 @@ WRONG = [
     ("capacity", 2, "week", "June", "is no week"),
     ("capacity", 2, "week", "2024-W60", "does not have"),
     ("capacity", 2, "week", "2024-06-11", "repeats row"),
+    ("capacity", 2, "week", "9999-12-31", "more than ten years ahead"),
+    ("supply", 2, "due_on", "9999-12-31", "more than ten years ahead"),
     ("moves", 2, "quantity", "-6", "more than 0"),
     ("moves", 6, "quantity", "1", "less than 0"),
     ("moves", 5, "other_store", "", "a transfer has two ends"),
