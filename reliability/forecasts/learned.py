@@ -62,6 +62,8 @@ class Learned:
     triggers: list[Trigger]
     unvisited: list[str] = field(default_factory=list)  # sites of which nobody knows how often crews come
     warnings: list[str] = field(default_factory=list)
+    elsewhere: Rule | None = None  # of planned replacement, where a site has not come so far
+    lived_on: frozenset[str] = frozenset()  # sites that go by no rule
 
     def design(self, part: str) -> Design:
         """A design without a life of its own borrows its component's."""
@@ -102,6 +104,8 @@ def _learn(
         "designs": designs,
         "taken_share": min(1.0, sum(each.parts for each in taken) / by_chance) if by_chance else 0.0,
         "rules": {site: list(rule) for site, rule in out.rules.items()},
+        "elsewhere": None if out.elsewhere is None else list(out.elsewhere),
+        "lived_on": sorted(out.lived_on),
         "visits": {site: list(each) for site, each in visits.items()},
         "standing": [how.running, how.everywhere, how.durations],
         "stop_share": stop_shares(component.pk, as_of, known_on),
@@ -137,6 +141,8 @@ def from_told(told: Mapping[str, Any]) -> Learned:
         triggers=[Trigger(**each) for each in told["triggers"]],
         unvisited=list(told["unvisited"]),
         warnings=list(told["warnings"]),
+        elsewhere=None if told["elsewhere"] is None else Rule(*told["elsewhere"]),
+        lived_on=frozenset(told["lived_on"]),
     )
 
 

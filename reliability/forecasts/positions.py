@@ -11,6 +11,7 @@ from typing import Any, NamedTuple
 
 from reliability.forecasts.learned import Learned
 from reliability.forecasts.question import Question
+from reliability.forecasts.site_rules import with_rules_of_others
 from reliability.running_parts import RunningRow
 
 AGE_CELLS = 60  # ages are told apart to this share of the typical life
@@ -68,6 +69,8 @@ def positions_of(rows: Iterable[RunningRow], question: Question, learned: Learne
     """Rows of about equal age and pace as one: the cost grows with the number of distinct ages."""
     import numpy as np
 
+    rows = list(rows)
+    learned = with_rules_of_others(rows, question.component.clock, learned)
     entries: list[tuple[Place, float, float]] = []
     spread_ages: dict[tuple[str, float], list[tuple[float, float]]] = {}
     for row in rows:

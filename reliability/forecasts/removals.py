@@ -18,6 +18,8 @@ from reliability.running_parts import NO_PLACE, known_ended
 LATELY = dt.timedelta(days=400)  # planned removals that show a rule
 IN_FORCE = dt.timedelta(days=200)  # one at least must be as recent as this
 FEWEST, NEAR, MOSTLY, MOST_BEYOND = 5, 0.15, 0.6, 0.25
+OUTLIVED = 1.0 + 2.0 * NEAR  # times the age of a rule: a part as old lives by no such rule
+FEWEST_SITES, MOST_AGAINST = 2, 0.25  # sites that go by a rule, and the share of them that may not
 
 
 class Rule(NamedTuple):
@@ -29,11 +31,17 @@ class Rule(NamedTuple):
 
 @dataclass(frozen=True)
 class Removals:
-    """Removals for other reasons by part, those under a rule left out, and the rules by site."""
+    """Removals for other reasons by part, those under a rule left out, and the rules by site.
+
+    elsewhere: what nearly all sites that could show a rule go by; a site that has not come so far yet goes by it too.
+    lived_on: sites without a rule whose parts were let grow older than that.
+    """
 
     by_part: dict[str, int]
     upgrades_lately: dict[str, int]
     rules: dict[str, Rule]
+    elsewhere: Rule | None = None
+    lived_on: frozenset[str] = frozenset()
 
 
 class _Planned(NamedTuple):
@@ -58,11 +66,14 @@ def removals(component: Component, as_of: dt.date, known_on: dt.date | None) -> 
     by_part: Counter[str] = Counter(ended.filter(reason__in=CHANCE).values_list("part__code", flat=True))
     recent = ended.filter(removed_on__gt=as_of - LATELY)
     upgrades = Counter(recent.filter(reason=RemovalReason.UPGRADE).values_list("part__code", flat=True))
-    rules = _rules(recent, clock, as_of, known_on)
-    planned = ended.filter(reason=RemovalReason.PLANNED)
-    for part, site in planned.values_list("part__code", "clock__site__code"):
-        by_part[part] += (site or NO_PLACE) not in rules
-    return Removals(dict(by_part), dict(upgrades), rules)
+    planned, others = _ended_lately(recent, clock, known_on)
+    rules = _rules(planned, others, clock, as_of)
+    elsewhere, lived_on = _elsewhere(rules, others, clock)
+    by_plan = set(rules) if elsewhere is None else (set(planned) - lived_on)
+    seen = ended.filter(reason=RemovalReason.PLANNED)
+    for part, site in seen.values_list("part__code", "clock__site__code"):
+        by_part[part] += (site or NO_PLACE) not in by_plan
+    return Removals(dict(by_part), dict(upgrades), rules, elsewhere, frozenset(lived_on))
 
 
 def _ended_at_ages(recent: Any, clock: str, known_on: dt.date | None) -> Iterator[tuple[Any, ...]]:
@@ -84,11 +95,35 @@ def _ended_at_ages(recent: Any, clock: str, known_on: dt.date | None) -> Iterato
         yield reason, site, day, own_age, spans[pk].days_at_end - spans[pk].days_at_fit
 
 
-def _rules(recent: Any, clock: str, as_of: dt.date, known_on: dt.date | None) -> dict[str, Rule]:
-    planned: dict[str, list[_Planned]] = defaultdict(list)
-    others: dict[str, list[_Planned]] = defaultdict(list)
+_BySite = dict[str, list[_Planned]]
+
+
+def _ended_lately(recent: Any, clock: str, known_on: dt.date | None) -> tuple[_BySite, _BySite]:
+    """Planned removals, and what else ended, by site."""
+    planned: _BySite = defaultdict(list)
+    others: _BySite = defaultdict(list)
     for reason, site, *found in _ended_at_ages(recent, clock, known_on):
         (planned if reason == RemovalReason.PLANNED else others)[site or NO_PLACE].append(_Planned(site, *found))
+    return planned, others
+
+
+def _elsewhere(rules: dict[str, Rule], others: _BySite, clock: str) -> tuple[Rule | None, set[str]]:
+    """The rule in the middle of those of the sites, where few sites speak against it; and the ones that do."""
+    clocks = Counter(rule.clock for rule in rules.values())
+    usual = max(clocks, key=lambda each: clocks[each], default=clock)
+    ages = sorted(rule.age for rule in rules.values() if rule.clock == usual)
+    if len(ages) < FEWEST_SITES:
+        return None, set()
+    rule, column = Rule(ages[len(ages) // 2], usual), "own" if usual == clock else "days"
+    lived_on = {
+        site
+        for site, seen in others.items()
+        if site not in rules and any((getattr(each, column) or 0.0) > OUTLIVED * rule.age for each in seen)
+    }
+    return (rule, lived_on) if len(lived_on) <= MOST_AGAINST * len(rules) else (None, set())
+
+
+def _rules(planned: _BySite, others: _BySite, clock: str, as_of: dt.date) -> dict[str, Rule]:
     rules = {}
     for site, seen in planned.items():
         if max(each.day for each in seen) <= as_of - IN_FORCE:
@@ -112,7 +147,7 @@ def _rule(seen: Iterable[_Planned], others: Iterable[_Planned], column: str, clo
     if len(near) < max(FEWEST, MOSTLY * len(ages)):
         return None
     age = near[len(near) // 2]
-    beyond = sum((getattr(each, column) or 0.0) > (1.0 + 2.0 * NEAR) * age for each in others)
+    beyond = sum((getattr(each, column) or 0.0) > OUTLIVED * age for each in others)
     if beyond > MOST_BEYOND * len(near):
         return None
     return (near[-1] - near[0]) / age, Rule(age, clock)

@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 
 from reliability.forecasts.horizon import week_starts
 from reliability.forecasts.question import Question
+from reliability.forecasts.site_rules import by_others
 from reliability.risk_ages import round_ages
 from reliability.running_parts import RunningParts, RunningRow
 
@@ -60,7 +61,13 @@ def written(
         "age_profile": age_profile([row for row in running.rows if row.joins == 0]),
         "follows": sorted({(row.part, row.needed) for row in running.rows}),
         "left_out": [{"reason": reason, "count": count} for reason, count in running.left_out],
-        "warnings": [*running.notes, *unvisited(question, learned), *learned.warnings, *tally.warnings],
+        "warnings": [
+            *running.notes,
+            *unvisited(question, learned),
+            *by_others(running.rows, question, learned),
+            *learned.warnings,
+            *tally.warnings,
+        ],
     }
 
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime as dt
+import math
 import random
 from typing import Any
 
@@ -90,6 +91,22 @@ def test_a_rule_of_planned_replacement_is_seen_and_counted_apart() -> None:
     later = told(fleet, what_if=WhatIf(replace_at=1000.0))
     assert later["planned"]["mean"] < 0.01
     assert later["total"]["mean"] > 1.2 * found["total"]["mean"]
+
+
+def test_a_site_that_has_not_come_so_far_goes_by_the_rule_of_the_others() -> None:
+    fleet = SmallFleet()
+    live(fleet, [fleet.site("LOCK"), fleet.site("MILL")], planned=60)
+    young, old = fleet.site("POND"), fleet.site("WEIR")
+    for number in range(10):
+        fleet.fit(fleet.module(f"Y-{number}", young), AS_OF - 10)
+        fleet.fit(fleet.module(f"O-{number}", old), AS_OF - 200)
+    rebuild_clocks()
+    places = positions(fleet).places
+    assert [place.rule for place in places if place.site == "POND"] == [pytest.approx(60, abs=1)]
+    assert {place.rule for place in places if place.site == "WEIR"} == {math.inf}
+    (said,) = [warning for warning in told(fleet)["warnings"] if "planned replacement" in warning]
+    assert said.startswith("POND has shown no planned replacement yet")
+    assert "60 days" in said
 
 
 def test_planned_removals_without_an_age_in_common_are_chance() -> None:
