@@ -68,6 +68,15 @@ def may_correct(person: Person, record: Any, now: dt.datetime | None = None) -> 
     return day(record.entered_at) == day(now or timezone.now())
 
 
+def may_manage(by: Person, person: Person) -> bool:
+    """Change somebody or hand over their link: nobody gets at one who may do or see more than they do themselves."""
+    if person.role == Role.ADMINISTRATOR and by.role != Role.ADMINISTRATOR:
+        return False
+    if by.all_sites or by.pk == person.pk:
+        return True
+    return not person.all_sites and not person.sites.exclude(pk__in=by.sites.values("pk")).exists()
+
+
 def needs(right: str) -> Callable[[View], View]:
     """Names the right a view asks for; the middleware enforces it."""
     if right != PUBLIC and right not in HOLDERS:

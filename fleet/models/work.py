@@ -12,6 +12,10 @@ if TYPE_CHECKING:
     from fleet.models.person import Person
 
 
+def sees_all_work(person: Person) -> bool:
+    return person.all_sites and person.may("people")
+
+
 class WorkState(models.TextChoices):
     WAITING = "waiting"
     RUNNING = "running"
@@ -22,8 +26,8 @@ class WorkState(models.TextChoices):
 
 class WorkQuerySet(models.QuerySet):
     def for_person(self, person: Person) -> WorkQuerySet:
-        """Managers see all work, others their own."""
-        return self if person.may("people") else self.filter(person=person)
+        """Managers who see all sites see all work, others their own: a result holds what its person sees."""
+        return self if sees_all_work(person) else self.filter(person=person)
 
 
 class Work(models.Model):
@@ -63,7 +67,7 @@ class Work(models.Model):
 
 class KeptFileQuerySet(models.QuerySet):
     def for_person(self, person: Person) -> KeptFileQuerySet:
-        return self if person.may("people") else self.filter(work__person=person)
+        return self if sees_all_work(person) else self.filter(work__person=person)
 
 
 class KeptFile(models.Model):

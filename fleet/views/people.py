@@ -16,7 +16,7 @@ from fleet.forms.filters import PersonFilter
 from fleet.forms.people import BookForm, PersonForm
 from fleet.models import Book, Person
 from fleet.reset_links import reset_path
-from fleet.rights import PEOPLE, needs
+from fleet.rights import PEOPLE, may_manage, needs
 from fleet.views.listing import Column, Listing
 from fleet.views.saving import save_form
 
@@ -83,6 +83,7 @@ def edit_person(request: Any, code: str) -> HttpResponse:
         crumbs=CRUMBS,
         template="people/person.html",
         person=person,
+        may_link=may_manage(request.user, person),
     )
 
 
@@ -91,6 +92,9 @@ def edit_person(request: Any, code: str) -> HttpResponse:
 def make_reset_link(request: Any, code: str) -> HttpResponse:
     """Shows the link once, to be handed over without mail; it works once and for three days."""
     person = get_object_or_404(request.seen(Person), code=code.upper())
+    if not may_manage(request.user, person):
+        messages.error(request, f"{person.name} may do or see more than you. Ask an administrator for the link.")
+        return redirect("edit_person", code=person.code)
     link = request.build_absolute_uri(reset_path(person))
     return render(request, "people/reset_link.html", {"person": person, "link": link, "crumbs": CRUMBS})
 

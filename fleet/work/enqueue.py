@@ -52,4 +52,6 @@ def ask_to_cancel(work: Work) -> None:
     """Waiting work ends at once, running work at its next step."""
     waiting = Work.objects.filter(pk=work.pk, state=WorkState.WAITING)
     if not change_state(waiting, state=WorkState.CANCELLED, cancel_asked=True, message="Stopped before it began."):
-        change_state(Work.objects.filter(pk=work.pk, state=WorkState.RUNNING), cancel_asked=True)
+        # Put back in line meanwhile, it ends at the first step of its next attempt.
+        going_on = [WorkState.RUNNING, WorkState.WAITING]
+        change_state(Work.objects.filter(pk=work.pk, state__in=going_on), cancel_asked=True)

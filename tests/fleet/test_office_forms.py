@@ -107,6 +107,22 @@ def test_history_tells_old_and_new_and_who(client: Client, world: make.Carriage)
     assert "browser" in page
 
 
+def test_nobody_hands_themselves_the_link_of_somebody_who_may_more(client: Client, world: make.Carriage) -> None:
+    """Whoever opens the link chooses the password, and signs in as that person."""
+    root = make.make_person(role="administrator")
+    nils = make.make_person(role="manager", sites=[world.site])
+    stranger = make.make_person(role="crew", sites=[make.make_site()])
+    for by, person, given in (
+        (world.manager, root, False), (nils, world.manager, False), (nils, stranger, False), (nils, root, False),
+        (nils, world.crew, True), (root, world.manager, True), (world.manager, stranger, True),
+    ):  # fmt: skip
+        client.force_login(by)
+        shown = client.get(f"/people/{person.code}/edit/").content.decode()
+        answer = client.post(f"/people/{person.code}/link/", follow=True).content.decode()
+        told = ("Make a password link" in shown, "Whoever opens it chooses the password" in answer)
+        assert told == (given, given), (by.role, person.role)
+
+
 def test_a_manager_can_hand_over_a_link_and_sign_somebody_out(client: Client, world: make.Carriage) -> None:
     page = client.post(f"/people/{world.crew.code}/link/").content.decode()
     assert "/password/" in page

@@ -53,6 +53,24 @@ def test_a_manager_makes_no_administrator(mona: Person) -> None:
     assert save_person(by=root, person=mona, version=1, role="administrator").role == "administrator"
 
 
+def test_a_manager_of_some_sites_hands_out_no_others(mona: Person) -> None:
+    weir, mill = make_site(), make_site()
+    nils = make_person(role="manager", sites=[weir])
+    rosa = save_person(by=nils, code="ROSA", name="Rosa", role="crew", all_sites=False, sites=[weir])
+    for fields in ({"all_sites": True}, {"sites": [weir, mill]}):
+        for person in (nils, rosa):
+            with pytest.raises(NotAllowed, match=r"yours|hand out no others"):
+                save_person(by=nils, person=person, version=1, **fields)
+        with pytest.raises(NotAllowed):
+            save_person(by=nils, code="NEW", name="New", role="crew", **{"all_sites": False, **fields})
+    tom = make_person(role="crew", sites=[weir, mill])
+    for person in (mona, tom):
+        with pytest.raises(NotAllowed, match="Ask a manager who sees all sites"):
+            save_person(by=nils, person=person, version=1, name="Somebody else")
+    assert save_person(by=mona, person=tom, version=1, sites=[mill]).sites.count() == 1
+    assert save_person(by=nils, person=nils, version=1, name="Nils B.").sites.get() == weir
+
+
 @pytest.mark.parametrize(
     ("fields", "field"),
     [
