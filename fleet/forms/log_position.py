@@ -118,7 +118,15 @@ class PositionForm(forms.Form):
             self.clean_days(cleaned)
         if self.outcome_said == FITTED and not cleaned.get("part") and "part" not in self.errors:
             self.add_error("part", "A part went in, but which one? Choose it.")
+        self.clean_upgrade(cleaned)
         return cleaned
+
+    def clean_upgrade(self, cleaned: dict[str, Any]) -> None:
+        """The same design again is no upgrade; as one it would count as a step of a rollout."""
+        fitting, part = self.choices.fitting, cleaned.get("part")
+        if self.outcome_said == RemovalReason.UPGRADE and fitting and part == fitting.part:
+            same = f"{part.code} came out and {part.code} went in: that is no upgrade."
+            self.add_error("part", f"{same} Choose the new design, or another reason.")
 
     def clean_days(self, cleaned: dict[str, Any]) -> None:
         """Failed and last good, against the day the part went in."""

@@ -6,7 +6,7 @@ import datetime as dt
 from typing import Any
 
 from django.contrib import messages
-from django.db.models import Q, QuerySet
+from django.db.models import F, Q, QuerySet
 from django.http import HttpResponse
 from django.shortcuts import redirect, render
 from django.urls import reverse
@@ -20,28 +20,52 @@ from fleet.formats import moment
 from fleet.forms.log import LogSheet
 from fleet.forms.log_choices import log_choices
 from fleet.forms.log_position import PositionForm
-from fleet.models import Left, Module, Site, Visit
+from fleet.models import Left, Module, Role, Site, SiteKind, Visit
 from fleet.rights import LOG, needs
 from fleet.views.seen import seen_module
 
 FOUND_AT_MOST = 20
 RECENT = 6
+STOPPED_AT_MOST = 8
+SITES_AT_MOST = 24
+AT_SITE_AT_MOST = 120
 JUST_NOW = dt.timedelta(seconds=20)
 LEFT_WORDS = {Left.RUNNING: "left running", Left.STOPPED: "left stopped", Left.TO_BENCH: "sent to the bench"}
 
 
 @needs(LOG)
 def log(request: Any) -> HttpResponse:
-    """Modules by a part of their tag, their site or their bay; before anything is typed, those last logged."""
+    """Modules by a part of their tag, their site or their bay; before anything is typed, the likely ones at one tap."""
     words = request.GET.get("q", "").replace("\x00", "").strip()[:80]
     modules = request.seen(Module).with_state().filter(scrapped_on=None).select_related("type")
-    found = list(matching(request, modules, words)[: FOUND_AT_MOST + 1]) if words else recent(request, modules)
-    context = {
-        "words": words,
-        "modules": found[:FOUND_AT_MOST],
-        "more": len(found) > FOUND_AT_MOST,
-    }
-    return render(request, "log/find.html", context)
+    site = None if words else chosen_site(request)
+    if words:
+        found = list(matching(request, modules, words)[: FOUND_AT_MOST + 1])
+        context = {"modules": found[:FOUND_AT_MOST], "more": len(found) > FOUND_AT_MOST}
+    elif site:
+        there = modules.filter(now_site_id=site.pk)
+        context = {
+            "site": site,
+            "there": list(there.order_by("-is_stopped", "now_bay", "code_order")[:AT_SITE_AT_MOST]),
+        }
+        context["more"] = len(context["there"]) == AT_SITE_AT_MOST
+    else:
+        context = at_one_tap(request, modules)
+    return render(request, "log/find.html", {"words": words, "today": timezone.localdate(), **context})
+
+
+def chosen_site(request: Any) -> Any:
+    code = request.GET.get("site", "").replace("\x00", "").strip().upper()
+    return request.seen(Site).filter(code=code).first() if code else None
+
+
+def at_one_tap(request: Any, modules: QuerySet[Any]) -> dict[str, Any]:
+    """What stands still, where this person was last, and the sites by when a visit is due."""
+    stopped = list(modules.filter(is_stopped=True).order_by("stopped_since", "code_order")[:STOPPED_AT_MOST])
+    sites = request.seen(Site).order_by(F("next_visit_on").asc(nulls_last=True), "code_order")
+    if request.user.role != Role.BENCH:
+        sites = sites.exclude(kind=SiteKind.DEPOT)
+    return {"stopped": stopped, "last": recent(request, modules), "sites": list(sites[:SITES_AT_MOST])}
 
 
 def matching(request: Any, modules: QuerySet[Any], words: str) -> QuerySet[Any]:
@@ -56,9 +80,9 @@ def matching(request: Any, modules: QuerySet[Any], words: str) -> QuerySet[Any]:
 
 
 def recent(request: Any, modules: QuerySet[Any]) -> list[Any]:
-    """The modules that this person attended last."""
-    mine = request.seen(Visit).standing().filter(entered_by=request.user)
-    last = mine.order_by("-entered_at").values_list("module_id", flat=True)[:60]
+    """The modules that this person attended last, or wrote down for somebody else."""
+    mine = request.seen(Visit).standing().filter(Q(crew=request.user) | Q(crew=None, entered_by=request.user))
+    last = mine.order_by("-happened_at", "-pk").values_list("module_id", flat=True)[:60]
     order = list(dict.fromkeys(last))[:RECENT]
     return sorted(modules.filter(pk__in=order), key=lambda module: order.index(module.pk))
 

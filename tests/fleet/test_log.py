@@ -214,3 +214,16 @@ def test_the_form_asks_a_fixed_number_of_questions(weir, cleo, django_assert_num
         make_part(component=component)
     with django_assert_num_queries(len(few)):
         cleo.get(log_address(weir.module))
+
+
+def test_before_anything_is_typed_the_likely_modules_are_one_tap_away(weir, cleo):
+    Carriage(code="KM-9", site=make_site(code="ELSEWHERE"))  # not hers
+    send(cleo, weir.module, all_well="on", left="stopped", strokes="100")
+    page = cleo.get(reverse("log"))
+    assert [module.code for module in page.context["stopped"]] == ["KM-1"]
+    assert [module.code for module in page.context["last"]] == ["KM-1"]
+    assert [site.code for site in page.context["sites"]] == [weir.site.code]
+    there = cleo.get(reverse("log"), {"site": weir.site.code.lower()})
+    assert f'href="{log_address(weir.module)}"' in there.content.decode()
+    hidden = cleo.get(reverse("log"), {"site": "ELSEWHERE"})
+    assert "KM-9" not in hidden.content.decode()

@@ -231,3 +231,10 @@ def test_the_search_for_a_module_bears_anything(weir, cleo):
     assert "KM-1" in cleo.get(reverse("log"), {"q": "m-1"}).content.decode()
     assert "KM-1" in cleo.get(reverse("log"), {"q": f"{weir.site.code.lower()} km"}).content.decode()
     assert "KM-1" not in cleo.get(reverse("log"), {"q": "%"}).content.decode()
+
+
+def test_the_same_design_again_is_no_upgrade(weir, cleo):
+    answer = send(cleo, weir.module, at(weir.nut, outcome="upgrade", part=weir.n1), strokes="60000")
+    assert answer.status_code == 422
+    assert "that is no upgrade" in answer.content.decode()
+    assert send(cleo, weir.module, at(weir.nut, outcome="upgrade", part=weir.n2), strokes="60000").status_code == 302
