@@ -11,7 +11,8 @@ from django.db.models.functions import Coalesce
 from django.utils import timezone
 
 from fleet.formats import counted
-from fleet.models import FAILURE_REASONS, Fitting, LooksWrong, Module, ModuleState, Site, SiteKind, Stop
+from fleet.models import FAILURE_REASONS, Fitting, LooksWrong, Module, ModuleState, Position, Site, SiteKind, Stop
+from fleet.position_names import position_names
 from fleet.rights import CATALOGUE, CORRECT, LOG, may
 from fleet.today_stock import stock_today
 
@@ -37,14 +38,19 @@ def empty_positions(request: Any) -> list[Any]:
     """Positions of modules in service that hold no part, though one stood there before."""
     standing = request.seen(Fitting).running().filter(module=OuterRef("pk"), position=OuterRef("type__positions"))
     before = request.seen(Fitting).standing().filter(module=OuterRef("pk"), position=OuterRef("type__positions"))
-    rows = (
+    rows = list(
         request.seen(Module)
         .filter(scrapped_on=None)
         .filter(~Exists(standing), Exists(before))
-        .values_list("code", "type__positions__code")
-        .order_by("code_order")
+        .values_list("code", "type", "type__positions")
+        .order_by("code_order")[: MOST + 1]
     )
-    return [{"module": module, "position": position} for module, position in rows[: MOST + 1]]
+    types = {kind for _, kind, _ in rows}
+    positions = list(request.seen(Position).filter(type__in=types).select_related("component"))
+    names: dict[int, str] = {}
+    for kind in types:
+        names |= position_names(position for position in positions if position.type_id == kind)
+    return [{"module": module, "position": names[position]} for module, _, position in rows]
 
 
 def failures_by_week(request: Any, today: dt.date) -> dict[str, Any]:
