@@ -69,7 +69,7 @@ class PositionForm(RecordForm):
 
     noun = "position"
     code = CodeInput(label="Position code")
-    component = forms.ModelChoiceField(queryset=None, to_field_name="code")
+    component = forms.ModelChoiceField(queryset=None, to_field_name="code", empty_label="choose one")
     order = forms.IntegerField(min_value=0, max_value=9999, initial=0, help_text="Where it stands in the list.")
     type: Any = None
 
@@ -91,7 +91,7 @@ class PositionForm(RecordForm):
 class PartForm(RecordForm):
     noun = "part"
     code = CodeInput(label="Part number")
-    component = forms.ModelChoiceField(queryset=None, to_field_name="code")
+    component = forms.ModelChoiceField(queryset=None, to_field_name="code", empty_label="choose one")
     revision = forms.CharField(max_length=20, required=False)
     name = forms.CharField(max_length=120, required=False)
     supersedes = forms.ModelChoiceField(

@@ -106,7 +106,7 @@ class CorrectFitting(CorrectForm):
         "caused_by",
         "note",
     )
-    part = forms.ModelChoiceField(queryset=None, to_field_name="code")
+    part = forms.ModelChoiceField(queryset=None, to_field_name="code", empty_label="choose one")
     serial = forms.CharField(max_length=60, required=False)
     lot = forms.CharField(max_length=60, required=False)
     fitted_on = DayInput(required=False, help_text="Empty: fitted before anybody wrote it down.")
@@ -186,7 +186,7 @@ class CorrectStop(CorrectForm):
 
 class CorrectPlacement(CorrectForm):
     names = ("site", "bay", "from_on", "to_on")
-    site = forms.ModelChoiceField(queryset=None, to_field_name="code")
+    site = forms.ModelChoiceField(queryset=None, to_field_name="code", empty_label="choose one")
     bay = forms.CharField(max_length=40, required=False)
     from_on = DayInput(label="From")
     to_on = DayInput(required=False, label="Until", help_text="Empty: it stands there now.")

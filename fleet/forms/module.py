@@ -14,7 +14,7 @@ from fleet.models import Module, ModuleType, Site
 class ModuleForm(RecordForm):
     noun = "module"
     code = CodeInput(label="Tag")
-    type = forms.ModelChoiceField(queryset=None, to_field_name="code")
+    type = forms.ModelChoiceField(queryset=None, to_field_name="code", empty_label="choose one")
     built_on = DayInput(required=False, label="Built on")
     records_from = DayInput(
         required=False,
@@ -40,7 +40,7 @@ class PlaceForm(RecordForm):
 
     version = None
     module = CodeInput(label="Module tag")
-    site = forms.ModelChoiceField(queryset=None, to_field_name="code")
+    site = forms.ModelChoiceField(queryset=None, to_field_name="code", empty_label="choose one")
     bay = forms.CharField(max_length=40, required=False, help_text="Where on the site.")
     from_on = DayInput(label="From")
     same_day = forms.BooleanField(required=False, label="It moved twice on that day")

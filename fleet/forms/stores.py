@@ -57,7 +57,7 @@ class MoveForm(forms.Form):
     done: ClassVar[str] = ""
 
     entry_key = EntryKeyField()
-    part = forms.ModelChoiceField(queryset=None, to_field_name="code")
+    part = forms.ModelChoiceField(queryset=None, to_field_name="code", empty_label="choose one")
     quantity = forms.IntegerField(min_value=1, max_value=MOST_PIECES, label="How many")
     condition = forms.ChoiceField(choices=CONDITIONS, required=False, initial=Condition.NEW.value)
     happened_on = DayInput(required=False, label="Day", help_text="Empty: today.")
@@ -149,7 +149,7 @@ class TransferForm(MoveForm):
     def prepare(self) -> None:
         others = self.request.seen(Store).exclude(pk=self.store.pk)
         words = [(store, store.title) for store in others.order_by("code_order")]
-        self.fields["other_store"] = PickField(words, label="To which store")
+        self.fields["other_store"] = PickField(words, nothing="choose one", label="To which store")
         self.order_fields(self.field_order)
 
     def action(self) -> Any:
