@@ -164,6 +164,9 @@ def written(value: Any, digits: int | None) -> Any:
     return value
 
 
+CODE = re.compile(r"[A-Z0-9.]{1,8}(-[A-Z0-9.]{1,8}){1,2}")  # a short code with a dash, which must not break there
+
+
 @register.filter
 def cells(row: Any, columns: Iterable[Mapping[str, Any]]) -> list[tuple[Mapping[str, Any], dict[str, Any]]]:
     """Each column with its cell; a cell may be a plain value or a mapping (see `parts/table.html`)."""
@@ -173,6 +176,7 @@ def cells(row: Any, columns: Iterable[Mapping[str, Any]]) -> list[tuple[Mapping[
         cell = dict(value) if isinstance(value, Mapping) else {"text": value}
         cell["blank"] = "estimate" not in cell and "state" not in cell and cell.get("text") in (None, "")
         cell["text"] = written(cell.get("text"), cell.get("digits", column.get("digits")))
+        cell["code"] = bool(CODE.fullmatch(str(cell["text"])))
         pairs.append((column, cell))
     return pairs
 

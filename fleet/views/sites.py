@@ -36,11 +36,10 @@ LIST = Listing(
         Column(
             "site",
             "Site",
-            lambda site: {"text": site.title, "url": reverse("site", args=[site.code]), "sub": site.code},
-            plain=lambda site: site.code,
-            sort=("code_order",),
+            lambda site: {"text": site.title, "url": reverse("site", args=[site.code])},
+            sort=("name", "code_order"),
         ),
-        Column("name", "Name", lambda site: site.name, sort=("folded",)),
+        Column("code", "Code", lambda site: site.code, sort=("code_order",)),
         Column("kind", "Kind", lambda site: site.kind, sort=("kind",)),
         Column("modules", "Modules", lambda site: site.modules_here, sort=("modules_here",), numeric=True),
         Column(

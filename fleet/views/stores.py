@@ -13,7 +13,7 @@ from django.shortcuts import get_object_or_404, render
 from django.urls import reverse
 from django.utils import timezone
 
-from fleet.formats import counted, long_day, number
+from fleet.formats import FIXED, counted, number
 from fleet.forms.stock_filters import SeenStockFilter, StockFilter
 from fleet.forms.stores import StoreForm
 from fleet.models import Book, Part, SiteKind, StockBalance, StockMove, Store, SupplyLine
@@ -57,9 +57,10 @@ def where(part: Any) -> str:
         elif store.site is not None and store.site.kind != SiteKind.DEPOT:
             at_sites += count
         else:
-            named.append(f"{store.title} {number(count)}")
-    rest = [f"{words} {number(count)}" for words, count in (("at sites", at_sites), ("carried", carried)) if count]
-    return " · ".join([*named, *rest])
+            named.append((store.title, count))
+    rest = [(words, count) for words, count in (("at sites", at_sites), ("carried", carried)) if count]
+    # A line breaks between two places, not within one.
+    return " · ".join(f"{words} {number(count)}".replace(" ", FIXED) for words, count in [*named, *rest])
 
 
 def where_in_file(part: Any) -> str:
@@ -72,7 +73,7 @@ def due_cell(part: Any) -> dict[str, Any]:
 
 def next_cell(part: Any) -> Any:
     late = part.next_due is not None and part.next_due < timezone.localdate()
-    return {"text": long_day(part.next_due), "kind": "late", "sub": "overdue"} if late else part.next_due
+    return {"text": part.next_due, "kind": "late", "sub": "overdue"} if late else part.next_due
 
 
 PART = Column("part", "Part", moves_of, plain=lambda part: part.code, sort=("code_order",))

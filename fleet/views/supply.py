@@ -37,7 +37,7 @@ def is_late(line: Any) -> bool:
 
 
 def due_on_cell(line: Any) -> Any:
-    return {"text": long_day(line.due_on), "kind": "late", "sub": "overdue"} if is_late(line) else line.due_on
+    return {"text": line.due_on, "kind": "late", "sub": "overdue"} if is_late(line) else line.due_on
 
 
 LINES = Listing(

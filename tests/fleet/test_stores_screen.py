@@ -85,7 +85,7 @@ def test_what_is_short_comes_first_and_says_so(weir: Carriage, otto: Person, she
     assert f"1\u00a0part lies below the minimum: {weir.s1.code}." in page
     assert page.index(f">{weir.s1.code}<") < page.index(f">{weir.n1.code}<")
     assert "overdue" in page
-    assert "Depot shelf 30" in page
+    assert "Depot\u00a0shelf\u00a030" in page
     short = text(client_of(otto).get("/stores/?shows=short"))
     assert f">{weir.n1.code}<" not in short
     sheet = csv.DictReader(io.StringIO(text(client_of(otto).get("/stores/?as=csv")).removeprefix("\ufeff")))
