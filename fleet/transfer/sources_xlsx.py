@@ -12,7 +12,10 @@ from typing import Any
 from fleet.transfer.problems import Unreadable
 from fleet.transfer.sources import LONGEST_CELL, MOST_COLUMNS, Table, open_archive
 
-CELL_PLACE = re.compile(rb'<c\b[^>]*?\br="([A-Z]{1,9})(\d{1,9})"')
+# A row or a cell of a sheet, or where its cells begin, under whatever prefix, with all attributes.
+ROW_OR_CELL = re.compile(rb"""<(?:[\w.-]+:)?(row|c|sheetData)(?=[\s/>])((?:[^>"']|"[^"]*"|'[^']*')*)>""")
+PLACE = re.compile(rb"""(?:^|\s)r\s*=\s*["']\s*([A-Za-z]{0,9})(\d{1,9})""")
+OTHER_SORTS = ("content.xml", "xl/workbook.bin")  # the reader would take these archives for workbooks of another sort
 LARGE_AREA = 5_000_000
 MOST_EMPTINESS = 10  # cells of the area for each cell that holds something
 
@@ -21,6 +24,9 @@ def open_workbook(name: str, content: bytes) -> list[Table]:
     from python_calamine import CalamineWorkbook
 
     with open_archive(name, content) as archive:
+        parts = {part.replace("\\", "/").lower() for part in archive.namelist()}
+        if "xl/workbook.xml" not in parts or not parts.isdisjoint(OTHER_SORTS):
+            raise Unreadable("is no .xlsx workbook. Save it as .xlsx.", file=name)
         bound_areas(name, archive)
     try:
         workbook = CalamineWorkbook.from_filelike(io.BytesIO(content))
@@ -31,20 +37,25 @@ def open_workbook(name: str, content: bytes) -> list[Table]:
 
 
 def bound_areas(name: str, archive: zipfile.ZipFile) -> None:
-    """The reader lays a sheet out whole: one cell in the far corner would take all memory."""
+    """The reader lays a sheet out whole: one cell in the far corner would take all memory.
+
+    A sheet may lie anywhere in the archive, and a row or a cell that names no place follows the one before it.
+    """
     for entry in archive.infolist():
-        if not entry.filename.startswith("xl/worksheets/") or not entry.filename.endswith(".xml"):
+        is_sheet, cells, width, height, row, column = False, 0, 0, 0, 0, 0
+        for tag, attributes in rows_and_cells(archive, entry):
+            place = PLACE.search(attributes)
+            if tag == b"sheetData":
+                is_sheet = True
+            elif tag == b"row":
+                row, column = int(place[2]) if place else row + 1, 0
+            else:
+                cells += 1
+                column = column_number(place[1]) if place else column + 1
+                row = int(place[2]) if place else row
+                width, height = max(width, column), max(height, row)
+        if not is_sheet:
             continue
-        cells, width, height = 0, 0, 0
-        with archive.open(entry) as sheet:
-            kept = b""
-            while piece := sheet.read(1 << 20):
-                piece = kept + piece
-                end = piece.rfind(b"<")
-                kept, piece = piece[end:], piece[:end]
-                for letters, digits in CELL_PLACE.findall(piece):
-                    cells += 1
-                    width, height = max(width, column_number(letters)), max(height, int(digits))
         if width > MOST_COLUMNS:
             raise Unreadable(
                 f"has a sheet of more than {MOST_COLUMNS} columns. Delete those without records.", file=name
@@ -53,9 +64,20 @@ def bound_areas(name: str, archive: zipfile.ZipFile) -> None:
             raise Unreadable("has a sheet that is almost empty but very long. Delete its empty rows.", file=name)
 
 
+def rows_and_cells(archive: zipfile.ZipFile, entry: zipfile.ZipInfo) -> Iterator[tuple[bytes, bytes]]:
+    with archive.open(entry) as sheet:
+        kept = b""
+        while piece := sheet.read(1 << 20):
+            piece = kept + piece
+            end = piece.rfind(b"<")
+            kept, piece = piece[end:], piece[:end]
+            yield from ROW_OR_CELL.findall(piece)
+        yield from ROW_OR_CELL.findall(kept)
+
+
 def column_number(letters: bytes) -> int:
     number = 0
-    for letter in letters:
+    for letter in letters.upper():
         number = number * 26 + letter - 64
     return number
 

@@ -4,8 +4,10 @@ from __future__ import annotations
 
 import datetime as dt
 import io
+import re
 import struct
 import zipfile
+from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
@@ -136,18 +138,63 @@ def test_a_workbook_gives_the_text_of_a_file() -> None:
     assert rows[2][0] == "0147"
 
 
-def test_a_workbook_whose_last_cell_lies_far_away() -> None:
+def changed_workbook(change: Callable[[str, bytes], tuple[str, bytes]]) -> bytes:
+    """A sound workbook, entry by entry made into another."""
     content = workbook({"sites": [["site"], ["A"]]})
-    far = io.BytesIO()
-    with zipfile.ZipFile(io.BytesIO(content)) as old, zipfile.ZipFile(far, "w", zipfile.ZIP_DEFLATED) as new:
+    made = io.BytesIO()
+    with zipfile.ZipFile(io.BytesIO(content)) as old, zipfile.ZipFile(made, "w", zipfile.ZIP_DEFLATED) as new:
         for entry in old.infolist():
-            body = old.read(entry)
-            if entry.filename.endswith("sheet1.xml"):
-                cell = b'<row r="1048576"><c r="CA1048576"><v>1</v></c></row></sheetData>'
-                body = body.replace(b"</sheetData>", cell)
-            new.writestr(entry.filename, body)
+            new.writestr(*change(entry.filename, old.read(entry)))
+    return made.getvalue()
+
+
+FAR = [
+    b'<row r="1048576"><c r="CA1048576"><v>1</v></c></row>',
+    b"<row r='1048576'><c r='CA1048576'><v>1</v></c></row>",
+    b'<row r="1048576"><c r = "ca1048576"><v>1</v></c></row>',
+    b'<row r="1048576"><c s=">" r="CA1048576"><v>1</v></c></row>',
+    b'<x:row r="1048576"><x:c r="CA1048576"><v>1</v></x:c></x:row>',
+    b'<row r="1048576">' + b"<c><v>1</v></c>" * 80 + b"</row>",
+]
+
+
+@pytest.mark.parametrize("cell", FAR)
+def test_a_workbook_whose_last_cell_lies_far_away(cell: bytes) -> None:
+    """Laid out whole it takes gigabytes, and the worker that tries is ended by the system."""
+
+    def far(name: str, body: bytes) -> tuple[str, bytes]:
+        return name, body.replace(b"</sheetData>", cell + b"</sheetData>")
 
     with pytest.raises(Unreadable, match="almost empty but very long"):
-        open_bytes("fleet.xlsx", far.getvalue())
+        open_bytes("fleet.xlsx", changed_workbook(far))
+
+
+def test_a_far_cell_is_found_wherever_the_sheet_lies() -> None:
+    def elsewhere(name: str, body: bytes) -> tuple[str, bytes]:
+        body = body.replace(b"worksheets/sheet1.xml", b"others/one.bin").replace(
+            b"</sheetData>", FAR[0] + b"</sheetData>"
+        )
+        return name.replace("worksheets/sheet1.xml", "others/one.bin"), body
+
+    with pytest.raises(Unreadable, match="almost empty but very long"):
+        open_bytes("fleet.xlsx", changed_workbook(elsewhere))
+
+
+def test_a_workbook_of_many_columns_or_of_another_sort() -> None:
     with pytest.raises(Unreadable, match="more than 100 columns"):
         open_bytes("fleet.xlsx", workbook({"sites": [["x"] * 150]}))
+    with pytest.raises(Unreadable, match="more than 100 columns"):
+        open_bytes("fleet.xlsx", changed_workbook(lambda name, body: (name, re.sub(rb'(<c) r="[A-Z]+\d+"', rb"\1", body)
+                   .replace(b"<c ", b"<c/>" * 150 + b"<c "))))  # fmt: skip
+    for other in ("content.xml", "xl/workbook.bin"):
+        with pytest.raises(Unreadable, match=r"is no \.xlsx workbook"):
+            open_bytes("fleet.xlsx", changed_workbook(lambda name, body, other=other: (
+                name.replace("docProps/app.xml", other), body)))  # fmt: skip
+
+
+def test_a_list_of_far_formulas_is_no_sheet() -> None:
+    chain = b'<calcChain><c r="CA1048576" i="1"/></calcChain>'
+    content = changed_workbook(lambda name, body: (
+        (name.replace("docProps/app.xml", "xl/calcChain.xml"), chain if "app.xml" in name else body)
+    ))  # fmt: skip
+    assert rows_of("fleet.xlsx", content) == [["site"], ["A"]]
