@@ -1,103 +1,38 @@
 """Do the bands hold? PIT and CRPS of the forecast on fleets whose truth is known, beside constant rate x fleet x
 Poisson.
 
-python -m tests.benchmarks.bench_calibration [--fleets 600] [--case NAME ...] [--further] [--seed 1]
+python -m tests.benchmarks.bench_calibration [--fleets 600] [--case NAME ...] [--further] [--weeks] [--rows FOLDER]
+
+Each fleet has a seed of its own: a run that was stopped goes on where its rows end, and more fleets only add to it.
 """
 
 from __future__ import annotations
 
 import argparse
+import json
 import sys
 import time
-from collections.abc import Iterable
-from dataclasses import dataclass, field
+import zlib
+from collections.abc import Iterable, Iterator, Sequence
+from pathlib import Path
 
 import numpy as np
 from scipy.special import gammaln
 
+from reliability.stats.count_results import CountDistribution
 from reliability.stats.counts import CountForecast, forecast_counts
 from reliability.stats.kept_draws import KeptDraws
 from reliability.stats.life_posterior import life_posterior
 from reliability.stats.scoring import crps, randomised_pit
+from tests.benchmarks.calibration_cases import CASES, FURTHER
 from tests.benchmarks.calibration_fleets import NEW_SITE, Case, Fleet, make_fleet
 
 SCOPES = ("all", "old site", NEW_SITE)
-
-CASES: dict[str, Case] = {
-    "many, young": Case(shape=2.5, scale=90.0, deployed=(10, 100)),
-    "many, mature": Case(shape=2.0, scale=80.0, deployed=(300, 600)),
-    "5 to 15 failures": Case(
-        shape=(1.2, 3.0), scale=(150.0, 500.0), sites=8, positions=12, deployed=(10, 150), keep=lambda n: 5 <= n <= 15
-    ),
-    "two to three lives": Case(shape=2.0, scale=40.0, deployed=(30, 200)),
-    "sites differ 0.3": Case(shape=2.0, scale=100.0, spread=0.3, deployed=(10, 200)),
-    "sites differ 1": Case(shape=2.0, scale=100.0, spread=1.0, deployed=(10, 200)),
-    "late records": Case(shape=2.0, scale=100.0, deployed=(150, 400), records_from=60.0),
-    "visits every 14 days": Case(shape=2.0, scale=80.0, deployed=(30, 200), visits=14.0),
-    "visits every 28 days": Case(shape=2.0, scale=80.0, deployed=(30, 200), visits=28.0),
-    "removed with others": Case(shape=2.0, scale=100.0, deployed=(30, 250), other_removals=1 / 120),
-    "planned replacement": Case(shape=2.5, scale=100.0, deployed=(30, 250), replace_at=80.0),
-    "duty 20 %": Case(shape=2.0, scale=100.0, deployed=(30, 200), duty_spread=0.2, past_duty=(0.6, 1.6)),
-    "lognormal lives": Case(scale=80.0, deployed=(30, 250), lognormal=True),
-    "infants 10 %": Case(shape=2.5, scale=100.0, deployed=(30, 200), infants=0.1),
-    "exponential, few": Case(
-        shape=1.0, scale=(400.0, 1500.0), sites=8, positions=12, deployed=(10, 200), keep=lambda n: 5 <= n <= 15
-    ),
-    "0 to 2 failures": Case(
-        shape=(1.2, 3.0), scale=(200.0, 1200.0), sites=6, positions=10, deployed=(10, 150), keep=lambda n: n <= 2
-    ),
-    **{
-        f"3 to 7 failures, shape {shape}": Case(
-            shape=shape, scale=(120.0, 400.0), sites=6, positions=12, deployed=(10, 120), keep=lambda n: 3 <= n <= 7
-        )
-        for shape in (1.8, 2.5, 3.5)
-    },
-}
-
-# Mixtures and corners that no case above was made for: what holds there holds by method, not by chance.
-FURTHER: dict[str, Case] = {
-    "sites differ 0.5, 5 to 15 failures": Case(
-        shape=(1.2, 3.0),
-        scale=(150.0, 500.0),
-        spread=0.5,
-        sites=8,
-        positions=12,
-        deployed=(10, 150),
-        keep=lambda n: 5 <= n <= 15,
-    ),
-    "late records, removals, sites differ": Case(
-        shape=2.2, scale=90.0, spread=0.4, deployed=(150, 500), records_from=90.0, other_removals=1 / 200
-    ),
-    "visits and planned replacement": Case(shape=2.5, scale=90.0, deployed=(30, 250), visits=21.0, replace_at=84.0),
-    "short lives, removals, sites differ": Case(
-        shape=1.8, scale=45.0, spread=0.3, deployed=(20, 160), other_removals=1 / 90
-    ),
-    "lognormal, 8 to 25 failures": Case(
-        scale=200.0, sites=8, positions=12, deployed=(10, 160), lognormal=True, keep=lambda n: 8 <= n <= 25
-    ),
-    "infants 15 %, 15 to 40 failures": Case(
-        shape=3.0, scale=250.0, sites=8, positions=15, deployed=(20, 200), infants=0.15, keep=lambda n: 15 <= n <= 40
-    ),
-    "falling hazard": Case(shape=0.75, scale=150.0, deployed=(30, 300)),
-    "two old sites, unequal duty": Case(
-        shape=2.0, scale=120.0, sites=2, positions=60, deployed=(30, 250), duty_spread=0.15, past_duty=(0.5, 2.0)
-    ),
-}
+WEEKS = (1, 7, 13)
+Row = dict[str, list[float]]  # by scope: PIT, CRPS, CRPS of the rival, median, actual, width of the 80 % band
 
 
-@dataclass
-class Scores:
-    """PIT values, CRPS of the forecast and of the rival, and widths, by scope."""
-
-    pit: dict[str, list[float]] = field(default_factory=lambda: {scope: [] for scope in SCOPES})
-    crps: dict[str, list[float]] = field(default_factory=lambda: {scope: [] for scope in SCOPES})
-    rival: dict[str, list[float]] = field(default_factory=lambda: {scope: [] for scope in SCOPES})
-    expected: dict[str, list[float]] = field(default_factory=lambda: {scope: [] for scope in SCOPES})
-    actual: dict[str, list[float]] = field(default_factory=lambda: {scope: [] for scope in SCOPES})
-    width: dict[str, list[float]] = field(default_factory=lambda: {scope: [] for scope in SCOPES})
-
-
-def forecast(case: Case, fleet: Fleet, rng: np.random.Generator) -> CountForecast:
+def forecast(case: Case, fleet: Fleet, rng: np.random.Generator, *, weeks: bool = False) -> CountForecast:
     """The forecast as the program makes it: early failures looked for, site spread, removals by their rate, and its
     numbers of draws.
     """
@@ -116,6 +51,7 @@ def forecast(case: Case, fleet: Fleet, rng: np.random.Generator) -> CountForecas
         replace_at=case.replace_at if np.isfinite(case.replace_at) else None,
         duty_spread=case.duty_spread,
         refit_delay=0.5,
+        windows=np.arange(0.0, case.horizon + 1.0, 7.0) if weeks else None,
     )
 
 
@@ -128,32 +64,55 @@ def poisson(mean: float) -> np.ndarray:
     return pmf / pmf.sum()
 
 
-def score(case: Case, fleets: int, seed: int) -> Scores:
-    """Scores of one case."""
-    rng = np.random.default_rng(seed)
-    scores = Scores()
-    for _ in range(fleets):
-        fleet = make_fleet(case, rng)
-        found = forecast(case, fleet, rng)
-        counts = {
-            "all": found.failures,
-            "old site": found.by_group[fleet.old_site].failures,
-            NEW_SITE: found.by_group[NEW_SITE].failures,
-        }
-        rate = fleet.records.failures / fleet.records.exposure
-        share = {"all": 1.0, "old site": fleet.sites == fleet.old_site, NEW_SITE: fleet.sites == NEW_SITE}
-        for scope, distribution in counts.items():
-            outcome = fleet.outcomes[scope]
-            scores.pit[scope].append(float(randomised_pit(distribution.pmf, outcome, rng)))
-            scores.crps[scope].append(float(crps(distribution.pmf, outcome)))
-            scores.rival[scope].append(
-                float(crps(poisson(rate * float((fleet.horizons * share[scope]).sum())), outcome))
-            )
-            scores.expected[scope].append(distribution.quantile(0.5))
-            scores.actual[scope].append(outcome)
-            low, high = distribution.interval(0.8)
-            scores.width[scope].append(high - low)
-    return scores
+def one(case: Case, rng: np.random.Generator, *, weeks: bool) -> Row:
+    """Scores of one fleet."""
+    fleet = make_fleet(case, rng)
+    found = forecast(case, fleet, rng, weeks=weeks)
+    rate = fleet.records.failures / fleet.records.exposure
+    old, new = fleet.sites == fleet.old_site, fleet.sites == NEW_SITE
+    expected = {"all": fleet.horizons.sum(), "old site": fleet.horizons[old].sum(), NEW_SITE: fleet.horizons[new].sum()}
+    counts = {
+        "all": found.failures,
+        "old site": found.by_group[fleet.old_site].failures,
+        NEW_SITE: found.by_group[NEW_SITE].failures,
+    }
+    row = {scope: scored(counts[scope], fleet.outcomes[scope], rate * float(expected[scope]), rng) for scope in SCOPES}
+    for week in WEEKS if weeks else ():
+        mean = rate * float(expected["all"]) * 7.0 / case.horizon
+        row[f"week {week}"] = scored(found.by_window[week - 1].failures, int(fleet.by_week[week - 1]), mean, rng)
+    return row
+
+
+def scored(found: CountDistribution, outcome: int, rival: float, rng: np.random.Generator) -> list[float]:
+    """A row's figures of one count; rival: the mean that a constant rate expects."""
+    low, high = found.interval(0.8)
+    return [
+        float(randomised_pit(found.pmf, outcome, rng)),
+        float(crps(found.pmf, outcome)),
+        float(crps(poisson(rival), outcome)),
+        float(found.quantile(0.5)),
+        float(outcome),
+        float(high - low),
+    ]
+
+
+def rows_of(name: str, fleets: int, seed: int, folder: Path | None, *, weeks: bool) -> Iterator[Row]:
+    """Rows of the first so many fleets of a case, those that lie in the folder and those still to be run."""
+    case = (CASES | FURTHER)[name]
+    known: list[Row] = []
+    path = None if folder is None else folder / f"{name.replace(' ', '_')}{'_weeks' if weeks else ''}_{seed}.jsonl"
+    if path is not None:
+        path.parent.mkdir(parents=True, exist_ok=True)
+        known = [json.loads(line) for line in path.read_text().splitlines()] if path.exists() else []
+    for number in range(fleets):
+        if number < len(known):
+            yield known[number]
+            continue
+        row = one(case, np.random.default_rng([seed, zlib.crc32(name.encode()), number]), weeks=weeks)
+        if path is not None:
+            with path.open("a") as rows:
+                rows.write(json.dumps(row) + "\n")
+        yield row
 
 
 TITLE = (
@@ -162,18 +121,16 @@ TITLE = (
 )
 
 
-def lines(name: str, scores: Scores) -> Iterable[str]:
+def lines(name: str, rows: Sequence[Row]) -> Iterable[str]:
     """The table's lines of one case, as Markdown; PIT80 with its standard error."""
-    for scope in SCOPES:
-        pit = np.array(scores.pit[scope])
+    for scope in rows[0]:
+        pit, score, rival, median, actual, width = np.array([row[scope] for row in rows]).T
         inside = np.mean((pit > 0.1) & (pit < 0.9))
         error = np.sqrt(inside * (1.0 - inside) / pit.size)
-        ratio = np.mean(scores.rival[scope]) / max(np.mean(scores.crps[scope]), 1e-12)
-        actual, median = np.mean(scores.actual[scope]), np.mean(scores.expected[scope])
         yield (
             f"| {name if scope == 'all' else ''} | {scope} | {inside:.3f} ± {error:.3f} | {np.mean(pit <= 0.1):.3f} "
-            f"| {np.mean(pit >= 0.9):.3f} | {actual:.2f} | {median:.2f} "
-            f"| {np.mean(scores.width[scope]):.1f} | {np.mean(scores.crps[scope]):.3f} | {ratio:.2f} times |"
+            f"| {np.mean(pit >= 0.9):.3f} | {actual.mean():.2f} | {median.mean():.2f} "
+            f"| {width.mean():.1f} | {score.mean():.3f} | {rival.mean() / max(score.mean(), 1e-12):.2f} times |"
         )
 
 
@@ -183,15 +140,16 @@ def main() -> None:
     parser.add_argument("--fleets", type=int, default=600)
     parser.add_argument("--case", action="append", choices=[*CASES, *FURTHER])
     parser.add_argument("--further", action="store_true", help="the mixtures and corners instead of the listed cases")
+    parser.add_argument("--weeks", action="store_true", help="the first, seventh and thirteenth week as well")
+    parser.add_argument("--rows", type=Path, metavar="FOLDER", help="keep each fleet's row there, and go on from them")
     parser.add_argument("--seed", type=int, default=1)
     chosen = parser.parse_args()
-    every = CASES | FURTHER
     print(TITLE, flush=True)
     for name in chosen.case or (FURTHER if chosen.further else CASES):
-        started = time.perf_counter()
-        scores = score(every[name], chosen.fleets, chosen.seed)
-        print("\n".join(lines(name, scores)), flush=True)
-        each = 1000 * (time.perf_counter() - started) / chosen.fleets
+        started = time.process_time()
+        rows = list(rows_of(name, chosen.fleets, chosen.seed, chosen.rows, weeks=chosen.weeks))
+        print("\n".join(lines(name, rows)), flush=True)
+        each = 1000 * (time.process_time() - started) / chosen.fleets
         print(f"{name}: {chosen.fleets} fleets, {each:.0f} ms each", file=sys.stderr, flush=True)
 
 

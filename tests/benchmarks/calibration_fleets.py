@@ -36,8 +36,15 @@ class Case:
     replace_at: float = np.inf
     duty_spread: float = 0.0
     past_duty: tuple[float, float] = (1.0, 1.0)  # duty of sites, log-evenly; lives are then counted in strokes
-    lognormal: bool = False
+    family: str = "weibull"  # or lognormal, gamma, log-logistic
     infants: float = 0.0
+    infant_mean: float = 0.0  # days, exponential; 0: evenly within five days
+    position_spread: float = 0.0  # variance of a factor of the hazard, by position
+    sizes: tuple[float, float] | None = None  # positions of old sites, log-evenly, instead of `positions`
+    large_site: int = 0  # positions of the first site
+    new_positions: int | None = None
+    young_share: float = 0.0  # of old positions that began within the past twenty days
+    horizon: float = HORIZON
     keep: Callable[[float], bool] = field(default=lambda failures: True)
 
 
@@ -53,7 +60,9 @@ class Fleet:
     removals: float  # other removals in the records
     observed_time: float
     outcomes: dict[str, int]  # failures found in the horizon: "all", one old site, the new site
+    by_week: NDArray[np.int64]  # of all, where the horizon is whole weeks of days
     old_site: str
+    deployed: FloatArray  # use since each position got its first part
 
 
 def make_fleet(case: Case, rng: np.random.Generator) -> Fleet:
@@ -73,40 +82,66 @@ def _drawn(value: float | tuple[float, float], rng: np.random.Generator) -> floa
 class _Truth:
     shape: float
     scale: float
-    factor: FloatArray  # of the hazard, by site
+    factor: FloatArray  # of the hazard, by position
     case: Case
     rng: np.random.Generator
 
-    def lives(self, site: NDArray[np.int64]) -> FloatArray:
-        size = site.size
-        if self.case.lognormal:
-            life = self.scale * np.exp(0.6 * self.rng.standard_normal(size))
-        else:
-            life = self.scale * self.rng.weibull(self.shape, size)
-        life = life * self.factor[site] ** (-1.0 / self.shape)
+    def lives(self, position: NDArray[np.int64]) -> FloatArray:
+        size = position.size
+        life = self.scale * self._standard(size) * self.factor[position] ** (-1.0 / self.shape)
         if self.case.infants:
             early = self.rng.random(size) < self.case.infants
-            life = np.where(early, self.rng.uniform(0.0, 5.0, size), life)
+            mean = self.case.infant_mean
+            soon = self.rng.exponential(mean, size) if mean else self.rng.uniform(0.0, 5.0, size)
+            life = np.where(early, soon, life)
         return life
+
+    def _standard(self, size: int) -> FloatArray:
+        match self.case.family:
+            case "lognormal":
+                return np.exp(0.6 * self.rng.standard_normal(size))
+            case "gamma":
+                return self.rng.gamma(3.0, 1.0 / 3.0, size)
+            case "log-logistic":
+                return (1.0 / self.rng.random(size) - 1.0) ** (-1.0 / 3.0)
+        return self.rng.weibull(self.shape, size)
 
 
 def _one_fleet(case: Case, rng: np.random.Generator) -> Fleet | None:
     count = case.sites + 1
     factor = rng.gamma(1 / case.spread, case.spread, count) if case.spread else np.ones(count)
-    truth = _Truth(_drawn(case.shape, rng), _drawn(case.scale, rng), factor, case, rng)
-    site = np.repeat(np.arange(count), case.positions)
+    shape, scale = _drawn(case.shape, rng), _drawn(case.scale, rng)
+    site = np.repeat(np.arange(count), _sizes(case, rng))
+    factor = factor[site]
+    if case.position_spread:
+        factor = factor * rng.gamma(1 / case.position_spread, case.position_spread, site.size)
+    truth = _Truth(shape, scale, factor, case, rng)
     is_new = site == case.sites
     start = -rng.uniform(*case.deployed, site.size)
     start[is_new] = -rng.uniform(0.0, 12.0, int(is_new.sum()))
+    if case.young_share:
+        young = ~is_new & (rng.random(site.size) < case.young_share)
+        start[young] = -rng.uniform(0.0, 20.0, int(young.sum()))
     duty = np.exp(rng.uniform(*np.log(case.past_duty), count))[site]
     start = np.floor(start * duty)
     factor_ahead = (
         np.exp(case.duty_spread * rng.standard_normal() - case.duty_spread**2 / 2.0) if case.duty_spread else 1.0
     )
     offset = rng.integers(0, int(case.visits), site.size).astype(float) if case.visits else np.zeros(site.size)
-    end = HORIZON * duty
+    end = case.horizon * duty
     ledger = _follow(truth, site, start, end * factor_ahead, offset)
     return _written_down(case, site, start, duty, offset, ledger, end)
+
+
+def _sizes(case: Case, rng: np.random.Generator) -> NDArray[np.int64]:
+    sizes = np.full(case.sites + 1, case.positions)
+    if case.sizes is not None:
+        sizes[:-1] = [round(_drawn(case.sizes, rng)) for _ in range(case.sites)]
+    if case.large_site:
+        sizes[0] = case.large_site
+    if case.new_positions is not None:
+        sizes[-1] = case.new_positions
+    return sizes
 
 
 @dataclass(eq=False)
@@ -127,7 +162,7 @@ def _follow(truth: _Truth, site: NDArray[np.int64], start: FloatArray, end: Floa
     rows: list[tuple[NDArray[np.int64], FloatArray, FloatArray, FloatArray, NDArray[np.int64]]] = []
     position, fitted = np.arange(site.size), start.copy()
     while position.size:
-        failing = fitted + truth.lives(site[position])
+        failing = fitted + truth.lives(position)
         other = fitted + (rng.exponential(1 / case.other_removals, position.size) if case.other_removals else np.inf)
         due = fitted + case.replace_at
         ended = np.minimum(np.minimum(failing, other), due)
@@ -199,5 +234,12 @@ def _written_down(
             "old site": int(future[where == 0].sum()),
             NEW_SITE: int(future[where == case.sites].sum()),
         },
+        by_week=_by_week(ledger.ended[future], case.horizon),
         old_site=str(names[0]),
+        deployed=-start,
     )
+
+
+def _by_week(days: FloatArray, horizon: float) -> NDArray[np.int64]:
+    """A failure of day 1 to 7 lies in the first week."""
+    return np.bincount(((days - 1.0) // 7).astype(np.int64), minlength=int(np.ceil(horizon / 7)))
