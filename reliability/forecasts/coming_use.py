@@ -155,6 +155,12 @@ def keep_use(component: Component, today: dt.date | None = None) -> ComingUse:
     return read_use(component.code, row, version)
 
 
+def all_counted(components: Iterable[Component]) -> bool:
+    """Whether today's use of each is kept; reads no counts."""
+    keys = {key_of(question_for(each).asked()) for each in components}
+    return KeptResult.objects.filter(kind=KIND, key__in=keys).count() == len(keys)
+
+
 def kept_uses(components: Iterable[Component], *, count: bool) -> dict[str, ComingUse]:
     """By component; what is not kept for today is counted now, or left out."""
     listed = list(components)

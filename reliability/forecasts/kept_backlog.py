@@ -20,6 +20,7 @@ from reliability.models import KeptResult
 
 KIND = "bench backlog"
 DAYS = 91
+KEPT_FOR = dt.timedelta(days=3)
 
 
 @dataclass(frozen=True)
@@ -60,7 +61,7 @@ def bench_document(question: BenchQuestion = USUAL, *, count: bool = True) -> di
             return dict(kept)
     document = {**told(records, records.bench, uses, question), "state": state}
     text = json.dumps(document, allow_nan=False, separators=(",", ":"))
-    KeptResult.objects.filter(kind=KIND, made_at__lt=timezone.now() - dt.timedelta(days=3)).delete()
+    KeptResult.objects.filter(kind=KIND, made_at__lt=timezone.now() - KEPT_FOR).delete()
     KeptResult.objects.update_or_create(
         kind=KIND,
         key=key_of({"today": today}),
@@ -74,6 +75,13 @@ def last_bench_document(today: dt.date | None = None) -> dict[str, Any] | None:
     day = today or timezone.localdate()
     row = KeptResult.objects.filter(kind=KIND, key=key_of({"today": day})).first()
     return None if row is None else dict(json.loads(bytes(row.payload)))
+
+
+def earlier_bench_document() -> dict[str, Any] | None:
+    """That of the last day before today that is still kept."""
+    today = timezone.localdate()
+    days = (today - dt.timedelta(days=back) for back in range(1, KEPT_FOR.days + 1))
+    return next((found for day in days if (found := last_bench_document(day)) is not None), None)
 
 
 def told(records: BenchRecords, bench: Bench, uses: dict[str, ComingUse], question: BenchQuestion) -> dict[str, Any]:

@@ -56,6 +56,13 @@ def last_document(today: dt.date | None = None) -> Document | None:
     return None if row is None else dict(json.loads(bytes(row.payload)))
 
 
+def earlier_document() -> Document | None:
+    """The list of the last day before today that is still kept."""
+    today = timezone.localdate()
+    days = (today - dt.timedelta(days=back) for back in range(1, KEPT_FOR.days + 1))
+    return next((found for day in days if (found := last_document(day)) is not None), None)
+
+
 def keep(today: dt.date, document: Document) -> None:
     text = json.dumps(document, allow_nan=False, separators=(",", ":"))
     KeptResult.objects.filter(kind=KIND, made_at__lt=timezone.now() - KEPT_FOR).delete()

@@ -6,7 +6,7 @@ import datetime as dt
 from collections.abc import Iterator
 from typing import Any
 
-from django.http import JsonResponse
+from django.http import HttpResponse, JsonResponse
 from django.http.response import HttpResponseBase
 from django.shortcuts import render
 from django.urls import reverse
@@ -16,6 +16,7 @@ from fleet.formats import number, percent
 from fleet.rights import BENCH, CATALOGUE, may, needs
 from fleet.views.listing import as_csv
 from reliability.forms.bench_backlog import BacklogForm
+from reliability.views.counting import is_page, still_counting
 
 WHOLE_BENCH = "This counts all depots together, and you see some of them only. Ask somebody who sees all of them."
 TOO_YOUNG = "No past quarter can be judged yet: before they began, too few jobs had been finished to learn from."
@@ -40,6 +41,9 @@ def bench_backlog(request: Any) -> HttpResponseBase:
     form = BacklogForm(request.GET)
     if not form.is_valid():
         return render(request, template, {**frame, "form": form}, status=422)
+    waiting = still_counting(request, "#backlog") if is_page(request) else None
+    if waiting is not None:
+        return while_counting(request, template, {**frame, "form": form, "counting": waiting})
     asked = {**form.cleaned_data, "more_hours": form.cleaned_data["more_hours"] or 0.0}
     document = bench_document(BenchQuestion(**asked))
     if "refused" in document:
@@ -51,6 +55,21 @@ def bench_backlog(request: Any) -> HttpResponseBase:
     if kind == "csv":
         return as_csv("bench backlog", FILE_HEAD, lines(document))
     return render(request, template, {**frame, "form": form, **page(request, document)})
+
+
+def while_counting(request: Any, template: str, context: Document) -> HttpResponse:
+    """What was told on the last day, while today's use is being counted."""
+    from reliability.forecasts.kept_backlog import earlier_bench_document
+
+    if context["counting"]["unchanged"]:
+        return HttpResponse(status=204)
+    earlier = earlier_bench_document()
+    if earlier is not None:
+        told = page(request, earlier)
+        for chart in ("modules", "hours"):
+            told[chart]["csv_url"] = ""  # the file is today's
+        context |= {**told, "files": None, "earlier": dt.date.fromisoformat(earlier["weeks"][0])}
+    return render(request, template, context)
 
 
 def without_hours(request: Any, document: Document) -> Document:

@@ -14,6 +14,7 @@ from fleet.models import Book, Component, SiteKind, Store
 from fleet.rights import LIFE, STORES, may, needs
 from fleet.views.listing import Column
 from fleet.views.stores import stock_page
+from reliability.views.counting import still_counting
 
 WHOLE_BOOK = "A depot serves all sites, and you see some of them only."
 VAN = "What a person carries along lasts as long as their rounds let it: no use is told for it."
@@ -82,6 +83,10 @@ def store_cover(request: Any, code: str) -> HttpResponse:
         context["refused"] = VAN
     elif depot and not request.user.all_sites:
         context["refused"] = WHOLE_BOOK
+    elif (waiting := still_counting(request, "#cover")) is not None:
+        if waiting["unchanged"]:
+            return HttpResponse(status=204)
+        context["counting"] = waiting
     else:
         from reliability.forecasts.coming_use import kept_uses
         from reliability.forecasts.cover import store_cover as cover_of

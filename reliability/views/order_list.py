@@ -23,6 +23,7 @@ from fleet.views.listing import as_csv
 from fleet.work import enqueue
 from reliability.forms.order_list import OrderListForm, OrderWhatIfForm, TickedForm
 from reliability.views import order_tables as tables
+from reliability.views.counting import is_page, still_counting
 
 CRUMBS = [{"name": "Stores", "url": "/stores/"}]
 WHOLE_BOOK = (
@@ -46,6 +47,9 @@ def order_list(request: Any) -> HttpResponseBase:
     if not (form.is_valid() and what_if.is_valid()):
         context = {"form": form, "what_if": what_if, "faults": True, "crumbs": CRUMBS}
         return render(request, "order/page.html", context, status=422)
+    waiting = still_counting(request, "#list", also="#order-lead") if is_page(request) else None
+    if waiting is not None:
+        return while_counting(request, form, what_if, waiting)
     document, parts = asked_document(request, what_if), parts_of(request)
     lines = tables.chosen_lines(document, parts, form.cleaned_data, request.GET.get("sort", ""))
     kind = request.GET.get("as")
@@ -79,6 +83,29 @@ def order_list(request: Any) -> HttpResponseBase:
     }
     template = "order/print.html" if kind == "print" else "order/page.html"
     return render(request, template, context, status=422 if ticks.is_bound else 200)
+
+
+def while_counting(request: Any, form: OrderListForm, what_if: OrderWhatIfForm, waiting: Document) -> HttpResponse:
+    """The list of the last day, to look at and not to order from, while today's is being counted."""
+    from reliability.forecasts.kept_order import earlier_document
+
+    if waiting["unchanged"]:
+        return HttpResponse(status=204)
+    context: Document = {
+        "form": form, "what_if": what_if, "counting": waiting, "address": request.GET.urlencode(), "crumbs": CRUMBS,
+        "today": timezone.localdate(),
+    }  # fmt: skip
+    earlier = earlier_document()
+    if earlier is not None:
+        lines = tables.chosen_lines(earlier, parts_of(request), form.cleaned_data, request.GET.get("sort", ""))
+        context |= {
+            "earlier": dt.date.fromisoformat(earlier["as_of"]),
+            "lead": earlier["sentence"],
+            "columns": tables.COLUMNS,
+            "rows": [tables.row(line, {}, earlier["currency"]) for line in lines],
+            "notes": tables.notes(earlier),
+        }
+    return render(request, "order/page.html", context)
 
 
 def asked_document(request: Any, what_if: OrderWhatIfForm) -> Document:

@@ -10,7 +10,9 @@ from django.test import Client
 from django.utils import timezone
 from playwright.sync_api import Page, expect
 
-from fleet.models import BenchCapacity, SupplyOrder
+from fleet.models import BenchCapacity, SupplyOrder, Work
+from fleet.work import run_here
+from reliability.models import KeptResult
 from tests.factories import make_planner
 from tests.reliability import supply_fleet
 from tests.reliability.supply_fleet import SupplyFleet
@@ -26,6 +28,7 @@ def world(transactional_db: None) -> SupplyFleet:
     monday = timezone.localdate() - supply_fleet.dt.timedelta(days=timezone.localdate().weekday())
     for place in range(14):
         BenchCapacity.objects.create(week=monday + supply_fleet.dt.timedelta(weeks=place), hours=10)
+    supply_fleet.count_today()
     return found
 
 
@@ -74,6 +77,16 @@ def test_filters_follow_without_a_reload_and_ticks_still_work(otto: Page, live_s
     otto.get_by_label("How many of N2").fill("10")
     otto.get_by_role("button", name="Order all ticked lines").click()
     expect(otto.get_by_text("is placed: 1")).to_be_visible()
+
+
+def test_the_list_comes_by_itself_when_the_background_has_counted(otto: Page, live_server: Any) -> None:
+    KeptResult.objects.all().delete()
+    otto.goto(f"{live_server.url}/stores/order/")
+    expect(otto.get_by_text("is being counted in the background")).to_be_visible()
+    run_here(Work.objects.get())
+    expect(otto.get_by_label("N2 to be ordered")).to_be_visible()
+    expect(otto.locator("#order-lead")).to_contain_text("ordered today")
+    expect(otto.get_by_text("is being counted in the background")).to_have_count(0)
 
 
 def test_the_bench_draws_its_forecast_and_the_other_pages_fit_a_tablet_and_a_phone(

@@ -6,12 +6,18 @@ import datetime as dt
 
 from fleet.actions.place_supply_order import OrderedPart, place_supply_order
 from fleet.actions.receive_stock import receive_delivery
-from fleet.models import BenchCapacity, BenchHours, BenchJob, Placement, Site, Store
+from fleet.models import BenchCapacity, BenchHours, BenchJob, Component, Placement, Site, Store
+from reliability.forecasts.coming_use import ComingUse, kept_uses
 from tests.factories import make_depot, make_manager, make_store, stock
 from tests.reliability.small_fleet import SmallFleet, day
 from tests.reliability.test_forecast import AS_OF, lived_fleet
 
 TODAY = day(AS_OF)
+
+
+def count_today() -> dict[str, ComingUse]:
+    """As the worker does before anybody looks."""
+    return kept_uses(Component.objects.all(), count=True)
 
 
 class SupplyFleet:

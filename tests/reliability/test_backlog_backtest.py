@@ -23,7 +23,7 @@ from reliability.forecasts.backlog_backtest import (
 )
 from reliability.forecasts.backtest_quarter import past_quarters
 from tests.factories import make_manager
-from tests.reliability.supply_fleet import TODAY, SupplyFleet
+from tests.reliability.supply_fleet import TODAY, SupplyFleet, count_today
 
 pytestmark = pytest.mark.django_db
 NOON = dt.datetime.combine(TODAY, dt.time(12), tzinfo=dt.UTC)
@@ -87,6 +87,7 @@ def test_it_is_kept_told_on_the_page_and_due_once_a_quarter(client: Client, worl
     assert not is_bench_due()
     assert is_bench_due(TODAY + dt.timedelta(days=100))
     client.force_login(make_manager())
+    count_today()
     page = client.get("/bench/backlog/").content.decode()
     assert "How past forecasts of the bench did" in page
     assert "lay within the 80" in page

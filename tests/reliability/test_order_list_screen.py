@@ -6,6 +6,7 @@ Cast: Otto the storekeeper, who sees all; Petra, a planner of one site; Cleo the
 from __future__ import annotations
 
 import datetime as dt
+import html
 import json
 import re
 import uuid
@@ -17,11 +18,13 @@ import time_machine
 from django.test import Client
 
 from fleet.actions.issue_part import issue_part
+from fleet.formats import long_day
 from fleet.models import Book, DataVersion, Site, SupplyLine, SupplyOrder, Work
+from fleet.work import run_here
 from reliability.forecasts.kept_order import KIND, order_document
 from reliability.models import KeptResult
 from tests.factories import make_bench, make_contact, make_crew, make_planner
-from tests.reliability.supply_fleet import TODAY, SupplyFleet
+from tests.reliability.supply_fleet import TODAY, SupplyFleet, count_today
 
 pytestmark = pytest.mark.django_db
 NOON = dt.datetime.combine(TODAY, dt.time(12), tzinfo=dt.UTC)
@@ -43,6 +46,7 @@ def world() -> SupplyFleet:
 
 @pytest.fixture
 def otto(client: Client, world: SupplyFleet) -> Client:
+    count_today()
     client.force_login(make_planner(code="OTTO"))
     return client
 
@@ -188,6 +192,77 @@ def test_the_books_minimum_is_kept_and_its_review_period_counts(otto: Client, wo
     book.review_period_days = 60
     book.save()
     assert line_of(otto.get("/stores/order/?as=json").json())["order_up_to"] > usual["order_up_to"]
+
+
+def early(client: Client) -> Client:
+    """A planner before the worker has counted."""
+    client.force_login(make_planner(code="EVA"))
+    return client
+
+
+def look(client: Client, address: str) -> Any:
+    """The page's own look, as its script sends it."""
+    return client.get(address, headers={"HX-Request": "true", "HX-Trigger": "counting"})
+
+
+def test_before_the_first_count_the_page_comes_at_once_and_the_background_counts(
+    client: Client, world: SupplyFleet
+) -> None:
+    page = early(client).get("/stores/order/?sort=part").content.decode()
+    assert "being counted in the background" in page
+    assert 'hx-get="/stores/order/?sort=part"' in page
+    assert '<a href="/stores/order/?sort=part">Look again</a>' in page, "without scripts"
+    assert "The list of" not in page
+    assert not KeptResult.objects.exists(), "nothing was counted"
+    assert look(client, "/stores/order/?sort=part").status_code == 204
+    assert Work.objects.count() == 1, "counted once, however often somebody looks"
+    run_here(Work.objects.get())
+    told = look(client, "/stores/order/?sort=part")
+    assert told.status_code == 200
+    assert "tick_N2" in told.content.decode()
+    assert "being counted" not in told.content.decode()
+
+
+def test_meanwhile_the_last_days_list_is_shown_with_its_day_and_nothing_is_ordered_from_it(
+    client: Client, world: SupplyFleet
+) -> None:
+    with time_machine.travel(NOON - dt.timedelta(days=2), tick=False):
+        count_today()
+        before = order_document("EUR")
+    page = early(client).get("/stores/order/").content.decode()
+    day = long_day(TODAY - dt.timedelta(days=2))
+    assert f"The list of {day}" in page
+    assert f"It was true on {day}" in page
+    assert line_of(before)["reasons"][0] in html.unescape(page)
+    assert "tick_N2" not in page
+    assert "Order all ticked lines" not in page
+    assert "?as=csv" not in page
+
+
+def test_a_count_that_failed_says_so_and_is_tried_again(client: Client, world: SupplyFleet) -> None:
+    early(client).get("/stores/order/")
+    Work.objects.update(state="failed", message="The disk is full.")
+    answer = look(client, "/stores/order/")
+    assert "The last try came to no end. The disk is full." in answer.content.decode()
+    assert Work.objects.count() == 1
+    with time_machine.travel(NOON + dt.timedelta(minutes=6), tick=False):
+        assert look(client, "/stores/order/").status_code == 204
+        assert Work.objects.count() == 2
+    with time_machine.travel(NOON + dt.timedelta(minutes=8), tick=False):
+        assert "It has been waiting since" in client.get("/stores/order/").content.decode()
+
+
+def test_the_days_own_count_in_line_does_not_keep_somebody_waiting(client: Client, world: SupplyFleet) -> None:
+    Work.objects.create(kind="count_use", title="Counting")
+    early(client).get("/stores/order/")
+    assert Work.objects.filter(person__code="EVA").count() == 1
+    client.get("/stores/order/")
+    assert Work.objects.count() == 2
+
+
+def test_files_and_what_is_sent_wait_for_the_count(client: Client, world: SupplyFleet) -> None:
+    assert line_of(early(client).get("/stores/order/?as=json").json())["on_hand"] == 17
+    assert not Work.objects.exists()
 
 
 def test_what_came_after_the_count_is_told_and_counting_again_goes_to_the_background(otto: Client) -> None:

@@ -130,6 +130,10 @@ def test_a_stores_page_brings_in_how_long_it_lasts(client: Client, world: Supply
     lock = Site.objects.get(code="LOCK")
     client.force_login(make_planner(sites=[lock]))
     assert 'hx-get="/stores/BOX/lasts/"' in client.get("/stores/BOX/").content.decode()
+    assert "being counted in the background" in client.get("/stores/BOX/lasts/").content.decode()
+    look = {"HX-Request": "true", "HX-Trigger": "counting"}
+    assert client.get("/stores/BOX/lasts/", headers=look).status_code == 204
+    uses()
     page = client.get("/stores/BOX/lasts/").content.decode()
     assert "From the use expected at this site." in page
     assert client.get("/stores/SHELF/lasts/").status_code == 404, "not a store of theirs"
