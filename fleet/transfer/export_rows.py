@@ -10,6 +10,7 @@ from django.db.models import Case, F, Value, When
 
 from fleet.models import Book, Component, FailureMode, ModuleType, Part, Person, Position, SetLife, Site
 from fleet.models.zones import zone
+from fleet.transfer.export_redesigns import redesigns, replacements, rollout
 from fleet.transfer.export_stock import bench, capacity, hours, moves, stores, supply
 from fleet.transfer.plain_rows import Rows, plain
 from fleet.transfer.scope import Scope
@@ -181,10 +182,13 @@ ROWS: dict[str, Callable[[Scope], Rows]] = {
     "types": types,
     "positions": positions,
     "parts": parts,
+    "redesigns": redesigns,
+    "replacements": replacements,
     "stores": stores,
     "supply": supply,
     "capacity": capacity,
     "modules": modules,
+    "rollout": rollout,
     "placements": placements,
     "bench": bench,
     "hours": hours,

@@ -26,6 +26,7 @@ from fleet.transfer.problems import Problems, Unreadable
 from fleet.transfer.reading import stage_file
 from fleet.transfer.references import check_causes, check_supersession
 from fleet.transfer.refresh import refresh
+from fleet.transfer.replacements import check_new_parts, check_once_a_component
 from fleet.transfer.signature import note_touched_modules, signature
 from fleet.transfer.sources import Table
 from fleet.transfer.staging import drop_stages, fetch, value_of
@@ -152,6 +153,10 @@ def check_together(job: Job) -> None:
         job.step(0, f"Checking {kind.file}")
         if kind.name == "parts":
             check_supersession(kind, job)
+        elif kind.name == "redesigns":
+            check_new_parts(kind, job)
+        elif kind.name == "replacements":
+            check_once_a_component(kind, job)
         elif kind.name == "placements":
             check_overlaps(kind, ["module_id"], "from_on", "to_on", "another stay of this module", job)
             check_jobs_keep_their_stays(kind, job)

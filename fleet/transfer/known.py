@@ -26,6 +26,8 @@ from fleet.models import (
     Person,
     Placement,
     Position,
+    Redesign,
+    RolloutStep,
     Site,
     Store,
     SupplyLine,
@@ -134,6 +136,16 @@ class Known:
         }
         self.life_sets = dict(LifeSet.objects.values_list("code", "pk"))
         self.new_life_sets: dict[str, int] = {}
+        self.redesigns = dict(Redesign.objects.values_list("code", "pk"))
+        self.steps = {
+            (redesign, module): order
+            for redesign, module, order in RolloutStep.objects.standing().values_list(
+                "redesign_id", "module_id", "order"
+            )
+        }
+        self.last_steps: dict[int, int] = {}
+        for (redesign, _), order in self.steps.items():
+            self.last_steps[redesign] = max(order, self.last_steps.get(redesign, 0))
         self.stores = dict(Store.objects.values_list("code", "pk"))
         self.jobs = {
             row[0]: KnownJob(*row[1:])

@@ -1,4 +1,4 @@
-"""Stores which sites a person sees and which types a part fits, with their history."""
+"""Stores which sites a person sees, which types a part fits and which parts another replaces, with their history."""
 
 from __future__ import annotations
 
@@ -14,7 +14,7 @@ from fleet.transfer.writing_sql import Numbers
 def write_links(kind: FileKind, known: Known, numbers: Numbers) -> None:
     """For rows that are new or differ; others keep what they have."""
     links = LINKS[kind.name]
-    targets = known.sites if kind.name == "people" else known.types
+    targets: Any = {"people": known.sites, "parts": known.types, "replacements": known.parts}[kind.name]
     target_base = numbers.base.get(links.target._meta.db_table, 0)
     base = numbers.base.get(kind.table, 0)
     staged = fetch(f"SELECT id, linked FROM {kind.stage} WHERE id < 0 OR differs = 1 ORDER BY row")

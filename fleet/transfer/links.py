@@ -1,4 +1,4 @@
-"""Records that name several others: the sites of a person, the module types of a part."""
+"""Records that name several others: the sites of a person, the module types of a part, the parts replaced."""
 
 from __future__ import annotations
 
@@ -8,7 +8,7 @@ from typing import Any
 
 from django.db import models
 
-from fleet.models import ModuleType, Site
+from fleet.models import ModuleType, Part, Site
 from fleet.transfer.columns import FileKind
 from fleet.transfer.staging import fetch
 
@@ -26,6 +26,7 @@ class Links:
 LINKS = {
     "people": Links("sites", Site, "person_id", "site_id"),
     "parts": Links("fits_types", ModuleType, "part_id", "moduletype_id"),
+    "replacements": Links("replaces", Part, "redesignchange_id", "part_id"),
 }
 
 

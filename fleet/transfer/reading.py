@@ -22,6 +22,7 @@ UNKNOWN = {
     "type": "Add it to types.csv, or correct the code.",
     "part": "Add it to parts.csv, or correct the code.",
     "module": "Add it to modules.csv, or correct the code.",
+    "redesign": "Add the redesign to redesigns.csv, or correct the code.",
     "store": "Add the store to stores.csv, or correct the code.",
     "job": "Add the job to bench.csv, or correct the code.",
 }

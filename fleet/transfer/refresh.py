@@ -58,6 +58,10 @@ def parts(kind: FileKind, known: Known) -> None:
         known.parts[code] = KnownPart(pk, component or UNCLEAR, fitting)
 
 
+def redesigns(kind: FileKind, known: Known) -> None:
+    known.redesigns.update(rows(kind, "code", "id"))
+
+
 def modules(kind: FileKind, known: Known) -> None:
     for code, pk, module_type, built, scrapped in rows(kind, "code", "id", "type_id", "built_on", "scrapped_on"):
         known.modules[code] = KnownModule(pk, module_type or UNCLEAR, day(built), day(scrapped))
@@ -100,6 +104,7 @@ READERS: dict[str, Callable[[FileKind, Known], None]] = {
     "types": types,
     "positions": positions,
     "parts": parts,
+    "redesigns": redesigns,
     "modules": modules,
     "placements": placements,
     "stores": stores,

@@ -17,6 +17,8 @@ from fleet.models import (
     Person,
     Placement,
     Reading,
+    Redesign,
+    RolloutStep,
     Site,
     StockMove,
     Stop,
@@ -24,7 +26,7 @@ from fleet.models import (
     SupplyLine,
     Visit,
 )
-from fleet.rights import BENCH, COSTS, PEOPLE, STOCK, STORES, may
+from fleet.rights import BENCH, COSTS, LIFE, PEOPLE, STOCK, STORES, may
 
 
 @dataclass(frozen=True)
@@ -37,6 +39,7 @@ class Scope:
     stock: bool = True  # stores and what lies there
     orders: bool = True
     bench: bool = True
+    redesigns: bool = True
 
     @property
     def everywhere(self) -> bool:
@@ -58,6 +61,14 @@ class Scope:
 
     def visits(self) -> QuerySet[Visit]:
         return self.rows(Visit.objects.standing(), "site").filter(module__in=self.modules())
+
+    def redesign_rows(self) -> QuerySet[Redesign]:
+        """They belong to no site, like the catalogue; their costs are shown apart."""
+        return Redesign.objects.all() if self.redesigns else Redesign.objects.none()
+
+    def steps(self) -> QuerySet[RolloutStep]:
+        rows = RolloutStep.objects.standing() if self.redesigns else RolloutStep.objects.none()
+        return rows.filter(module__in=self.modules())
 
     def stops(self) -> QuerySet[Stop]:
         return self.rows(Stop.objects.standing(), "site").filter(module__in=self.modules())
@@ -141,4 +152,5 @@ def scope_of(person: Person | None, site: Site | None = None) -> Scope:
         stock=may(person, STORES),
         orders=may(person, STOCK),
         bench=may(person, BENCH),
+        redesigns=may(person, LIFE),
     )

@@ -21,6 +21,9 @@ from fleet.models import (
     Placement,
     Position,
     Reading,
+    Redesign,
+    RedesignChange,
+    RolloutStep,
     Site,
     Stop,
     Store,
@@ -33,6 +36,7 @@ from fleet.transfer.staging import fetch, on_sqlite, run
 from fleet.transfer.stock import hold_stock_still, note_touched_stock, stock_signature
 
 CATALOGUE = [Person, Site, Component, FailureMode, ModuleType, Position, Part, Module, Store]
+REDESIGNS = [Redesign, RolloutStep]
 SUPPLY = [SupplyOrder, SupplyLine, BenchCapacity, BenchHours]
 OF_MODULES = [Placement, Visit, Fitting, Stop, BenchJob]
 OWN = {"placements", "visits", "fittings", "stops", "readings", "bench"}
@@ -56,8 +60,9 @@ def signature(own: Ranges | None = None) -> list[Any]:
     """Counts and versions of the catalogue and of the touched modules' records, without rows of this import."""
     own = own or {}
     parts: list[Any] = []
-    for model in [*CATALOGUE, *SUPPLY]:
+    for model in [*CATALOGUE, *REDESIGNS, *SUPPLY]:
         parts += of_others(model._meta.db_table, "COALESCE(SUM(version), 0)", own)
+    parts += of_others(RedesignChange._meta.db_table, "COALESCE(SUM(new_part_id), 0)", own)
     parts += of_others(LifeSet._meta.db_table, "0", own)
     touched = "module_id IN (SELECT id FROM touched_modules)"
     for model in OF_MODULES:
@@ -76,7 +81,7 @@ def hold_still() -> None:
     """On PostgreSQL nobody changes the catalogue or these modules until the commit; SQLite has one writer anyway."""
     if on_sqlite():
         return
-    tables = ", ".join(connection.ops.quote_name(model._meta.db_table) for model in [*CATALOGUE, *SUPPLY])
+    tables = ", ".join(connection.ops.quote_name(model._meta.db_table) for model in [*CATALOGUE, *REDESIGNS, *SUPPLY])
     run(f"LOCK TABLE {tables} IN SHARE ROW EXCLUSIVE MODE")
     run("SELECT id FROM fleet_module WHERE id IN (SELECT id FROM touched_modules) ORDER BY id FOR NO KEY UPDATE")
     hold_stock_still()

@@ -14,6 +14,7 @@ from fleet.transfer.holding import hold_rows, let_stand, sweep, waits, without_c
 from fleet.transfer.job import Job
 from fleet.transfer.link_rows import write_links
 from fleet.transfer.orders import ORDERS, write_orders
+from fleet.transfer.replacements import raise_changed
 from fleet.transfer.reserve import reserve
 from fleet.transfer.signature import hold_still, signature
 from fleet.transfer.staging import fetch, on_sqlite, run, value_of
@@ -106,6 +107,8 @@ class Store:
         for kind in self.job.kinds:
             if "linked" in kind.extra:
                 write_links(kind, self.job.known, self.numbers)
+            if kind.name == "replacements":
+                raise_changed(kind)
             if kind.name == "moves":
                 write_balances(kind, self.last_rows[kind.name], self.numbers)
         DataVersion.raise_version()

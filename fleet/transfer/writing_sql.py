@@ -158,7 +158,9 @@ def keeps_history(kind: FileKind) -> bool:
 
 def update_statement(kind: FileKind, numbers: Numbers) -> tuple[str, list[Any]]:
     """Rows of the book that differ take what the files say."""
-    changes, params = ['"version" = book.version + 1'], []
+    changes, params = [], []
+    if any(each.attname == "version" for each in kind.model._meta.concrete_fields):
+        changes.append('"version" = book.version + 1')
     for name in kind.stored:
         if name not in kind.key:
             changes.append(f'"{name}" = {staged_source(kind.field_of(name), numbers)}')
@@ -167,6 +169,8 @@ def update_statement(kind: FileKind, numbers: Numbers) -> tuple[str, list[Any]]:
         changes.append(f"struck_out_at = CASE WHEN {fresh} THEN {instant_sql()} ELSE book.struck_out_at END")
         changes.append(f"struck_out_by_id = CASE WHEN {fresh} THEN CAST(%s AS bigint) ELSE book.struck_out_by_id END")
         params += [utc_text(numbers.now), person_key(numbers)]
+    # of a record that is all key only its links differ, yet its history says that it was changed
+    changes = changes or [f'"{kind.key[0]}" = book."{kind.key[0]}"']
     statement = (
         f"UPDATE {kind.table} AS book SET {', '.join(changes)} FROM {kind.stage} AS mine "
         "WHERE mine.id = book.id AND mine.differs = 1 AND mine.id > 0"

@@ -8,6 +8,7 @@ from fleet.transfer.kinds.moves import MOVES
 from fleet.transfer.kinds.parts import PARTS
 from fleet.transfer.kinds.people import PEOPLE
 from fleet.transfer.kinds.readings import READINGS
+from fleet.transfer.kinds.redesigns import REDESIGNS, REPLACEMENTS, ROLLOUT
 from fleet.transfer.kinds.sites import SITES
 from fleet.transfer.kinds.stops import STOPS
 from fleet.transfer.kinds.stores import STORES
@@ -17,8 +18,8 @@ from fleet.transfer.kinds.visits import VISITS
 
 # In the order in which they refer to each other.
 ALL_KINDS = [
-    SITES, PEOPLE, COMPONENTS, MODES, TYPES, POSITIONS, PARTS, STORES, SUPPLY, CAPACITY, MODULES, PLACEMENTS,
-    BENCH, HOURS, VISITS, FITTINGS, FINDINGS, STOPS, READINGS, MOVES, LIVES,
+    SITES, PEOPLE, COMPONENTS, MODES, TYPES, POSITIONS, PARTS, REDESIGNS, REPLACEMENTS, STORES, SUPPLY,
+    CAPACITY, MODULES, ROLLOUT, PLACEMENTS, BENCH, HOURS, VISITS, FITTINGS, FINDINGS, STOPS, READINGS, MOVES, LIVES,
 ]  # fmt: skip
 BY_NAME = {kind.name: kind for kind in ALL_KINDS}
 

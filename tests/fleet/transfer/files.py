@@ -117,6 +117,47 @@ SM-8,SHELF,N-1,2024-07-02,1,receipt,,,,,used,from K-10
 SM-9,SHELF,N-1,2024-07-03,-1,scrap,,,,,,dropped""",
 }
 
+# A nut with a lip that comes with a new guide, and the plan by which the carriages get both.
+REDESIGNED = {
+    "components": """
+component,name,clock
+NUT,Drive nut,strokes
+SCREW,Lead screw,days
+GUIDE,Carriage guide,days""",
+    "positions": """
+type,position,component,order
+BRUSH,N1,NUT,1
+BRUSH,S1,SCREW,2
+BRUSH,G1,GUIDE,3""",
+    "parts": """
+part,component,name,unit_cost
+N-0,NUT,First nut,11
+N-1,NUT,Nut,12
+N-2,NUT,Nut with lip,14.50
+S-1,SCREW,Screw,
+G-1,GUIDE,Guide,5
+G-2,GUIDE,Guide for the lip,6""",
+    "redesigns": """
+redesign,name,hope,starts_on,cost_a_module,visits_a_failure,bench_hours_a_failure,stop_days_a_failure,note
+LIP,Nut with a lip,1.4,2024-03-01,55.50,1,0.25,2,keeps sand out
+SCREW-2,,,,,,,,""",
+    "replacements": """
+redesign,part,replaces
+LIP,N-2,N-1 N-0
+LIP,G-2,G-1
+SCREW-2,S-2,S-1""",
+    "rollout": """
+redesign,module,order,planned_on
+LIP,K-10,1,2024-03-01
+LIP,K-9,2,2024-03-08""",
+}
+REDESIGNED["parts"] += "\nS-2,SCREW,Screw of another steel,"
+
+
+def redesigned(**changed: str | bytes | None) -> dict[str, str | bytes]:
+    """The small fleet with its redesigns and their plan."""
+    return fleet(**{**{name: body.strip() + "\n" for name, body in REDESIGNED.items()}, **changed})
+
 
 def text(name: str) -> str:
     return (FLEET | STOCKED)[name].strip() + "\n"

@@ -19,9 +19,9 @@ from tests import factories as make
 from tests.fleet.transfer.files import bring_in, fleet, text, with_cell
 
 pytestmark = pytest.mark.django_db
-TABLES = ["sites", "people", "components", "modes", "types", "positions", "parts", "stores", "supply", "capacity",
-          "modules", "placements", "bench", "hours", "visits", "fittings", "findings", "stops", "readings", "moves",
-          "lives"]  # fmt: skip
+TABLES = ["sites", "people", "components", "modes", "types", "positions", "parts", "redesigns", "replacements",
+          "stores", "supply", "capacity", "modules", "rollout", "placements", "bench", "hours", "visits", "fittings",
+          "findings", "stops", "readings", "moves", "lives"]  # fmt: skip
 
 
 def exported(tmp_path: Path, name: str = "out.zip", scope: Scope | None = None) -> dict[str, list[dict[str, str]]]:
@@ -68,6 +68,18 @@ def test_an_export_comes_back_the_same(form: str, tmp_path: Path) -> None:
     assert exported(tmp_path, "second.zip") == before
     assert clocks() == ages
     assert list(before) == TABLES
+
+
+@pytest.mark.django_db(transaction=True)
+@pytest.mark.parametrize("name", ["=1+1", "+cmd", "-2 m", "@sum", "'=1+1", "''-", "'n Sluis", "a=b"])
+def test_a_text_that_a_spreadsheet_would_run_is_quoted_and_comes_back(name: str, tmp_path: Path) -> None:
+    site = make.make_site(name=name)
+    shown = exported(tmp_path)["sites"][0]["name"]
+    assert not shown.startswith(("=", "+", "-", "@"))
+    write_export(tmp_path / "again.zip", Scope())
+    empty_book()
+    call_command("import_records", str(tmp_path / "again.zip"), stdout=io.StringIO())
+    assert Site.objects.get(code=site.code).name == name
 
 
 def test_no_passwords_and_only_measured_counts(tmp_path: Path) -> None:
