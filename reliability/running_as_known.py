@@ -53,7 +53,8 @@ def _module_row(loaded: Loaded, clocks: ModuleClocks, places: Places, clock: str
         "scrapped": None if record.scrapped_day is None else dt.date.fromordinal(record.scrapped_day),
         "site_code": code,
         "site_kind": kind,
-        "placed": bool(record.stays),
+        "placed": min((dt.date.fromordinal(stay.from_day) for stay in record.stays), default=None),
+        "built": None if record.built_day is None else dt.date.fromordinal(record.built_day),
         **_knot("before", before, clock),
         **_knot("after", after, clock),
     }

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime as dt
+import math
 from collections import Counter, defaultdict
 from collections.abc import Iterator
 from dataclasses import dataclass, field
@@ -37,6 +38,7 @@ class RunningRow(NamedTuple):
     joins: float = 0.0  # days until it is there
     leaves: float = NEVER  # days until it is there no more
     seen: float = -1.0  # days since its module was last visited, where failures are found only then
+    most: float = 0.0  # with `least`: the most the age can be; infinite where the module's first day is not known
 
 
 @dataclass(frozen=True)
@@ -70,12 +72,14 @@ def running_parts(
     wanted = None if sites is None else set(sites)
     for row in _fitted(component, as_of) if then is None else _fitted_as_known(component, as_of, then):
         age, known = _age(row, as_of)
+        beyond = None if known else _beyond(row)
         stays = _stays(row, ahead, as_of, left_out)
         if age is None and any(stay.after == 0 for stay in stays):
             left_out["neither readings nor a duty known"] += 1
         for stay in stays:
             if age is not None and (wanted is None or stay.site in wanted):
-                found.append(_Found(age, _pace(row), row["part_code"], row["type_code"], known, row["module_id"], stay))
+                code, type_code = row["part_code"], row["type_code"]
+                found.append(_Found(age, _pace(row), code, type_code, known, row["module_id"], stay, beyond))
     rows, guessed = _with_pace(found, component.clock, Replacements(component, as_of, then), ahead)
     return RunningParts(
         component=component.code,
@@ -97,6 +101,7 @@ class _Found(NamedTuple):
     known: bool
     module: int
     stay: Arrival
+    beyond: tuple[float, float] | None = None  # see _beyond; None where the age has no upper bound
 
 
 def _stays(row: dict[str, Any], ahead: ModulesAhead, as_of: dt.date, left_out: Counter[str]) -> list[Arrival]:
@@ -135,6 +140,7 @@ def _fitted(component: Component, as_of: dt.date) -> Any:
     before = knots.filter(day__lte=as_of.toordinal()).order_by("-day")
     after = knots.filter(day__gt=as_of.toordinal()).order_by("day")
     stay = Placement.objects.on(as_of).filter(module=OuterRef("module_id"))
+    first = Placement.objects.standing().filter(module=OuterRef("module_id")).order_by("from_on")
     return (
         Fitting.objects.standing()
         .filter(Q(removed_on=None) | Q(removed_on__gt=as_of), part__component=component)
@@ -154,7 +160,8 @@ def _fitted(component: Component, as_of: dt.date) -> Any:
             after=Subquery(after.values(clock)[:1]),
             site_code=Subquery(stay.values("site__code")[:1]),
             site_kind=Subquery(stay.values("site__kind")[:1]),
-            placed=Subquery(Placement.objects.standing().filter(module=OuterRef("module_id")).values("pk")[:1]),
+            placed=Subquery(first.values("from_on")[:1]),
+            built=F("module__built_on"),
         )
         .order_by("module_id", "position_id")
     )
@@ -200,6 +207,26 @@ def _age(row: dict[str, Any], as_of: dt.date) -> tuple[float | None, bool]:
     return (None, known) if start is None else (max(0.0, row["age_at_fit"] + now - start), known)
 
 
+def _beyond(row: dict[str, Any]) -> tuple[float, float] | None:
+    """By how much a part of unknown age can be older than it is at least: on its module's clock before records began,
+    and in days since the module was built of which no place is on record. None where nobody knows when it was built.
+    """
+    if row["built"] is None:
+        return None
+    # without any place on record the clock itself begins on the day it was built
+    days = 0 if row["placed"] is None else (row["placed"] - row["built"]).days
+    return max(row["at_records"] or 0.0, 0.0), float(max(days, 0))
+
+
+def _most(found: _Found, use: float) -> float:
+    if found.known:
+        return 0.0
+    if found.beyond is None:
+        return math.inf
+    on_clock, days = found.beyond
+    return round(found.age + on_clock + days * use, 1)
+
+
 def _pace(row: dict[str, Any]) -> float | None:
     """Use a day just now; none where the clock stands (a stopped module) or is not known."""
     if row["after"] is None or row["before"] is None or row["after_day"] <= row["before_day"]:
@@ -231,6 +258,7 @@ def _with_pace(
             each.stay.after,
             each.stay.leaves,
             ahead.seen.get(each.module, -1.0),
+            _most(each, use),
         )
         needed = replacements.of(each.part, site)
         counts[(round(each.age, 1), float(f"{use:.4g}"), each.part, needed, site, each.type, *further)] += 1

@@ -106,6 +106,7 @@ def settings_of(question: Question, learned: Learned, positions: Positions) -> d
         "down_until": positions.clock("down"),
         "join_at": positions.clock("joins"),
         "leave_at": positions.clock("leaves"),
+        "oldest": np.array(positions.column("oldest")),
         "duty_spread": learned.duty.spread,
         "refit_delay": 0.5 if question.component.clock == "days" else 0.0,
     }

@@ -18,11 +18,8 @@ AGE_CELLS = 60  # ages are told apart to this share of the typical life
 MOST_PACES = 120  # of all sites together
 PACE_STEP = 0.25  # paces are told apart to this share
 AGE_DRAWS = 40
+CEILING_CELLS = 15  # the most that ages can be are told apart to this share of the typical life
 NEVER = math.inf
-# Failures from which lives tell how old a part of unknown age can be. With fewer it is at most so many times as old as
-# is on record, and without any just as old: ages of thousands of years would make the first week the worst.
-TELLING = 5
-OLDEST = 3.0
 
 
 class Place(NamedTuple):
@@ -41,6 +38,7 @@ class Place(NamedTuple):
     joins: float
     leaves: float
     upgrading: bool  # whether parts here are being changed for a newer design, whatever is assumed
+    oldest: float = 0.0  # above the age: that is the least it can be, this the most, and each draw of the lives decides
 
 
 @dataclass(frozen=True, eq=False)
@@ -71,15 +69,12 @@ def positions_of(rows: Iterable[RunningRow], question: Question, learned: Learne
 
     rows = list(rows)
     learned = with_rules_of_others(rows, question.component.clock, learned)
-    entries: list[tuple[Place, float, float]] = []
-    spread_ages: dict[tuple[str, float], list[tuple[float, float]]] = {}
-    for row in rows:
-        if row.least and (row.part, row.age) not in spread_ages:
-            spread_ages[row.part, row.age] = _ages_at_least(row, learned)
-        aged = spread_ages[row.part, row.age] if row.least else [(row.age, 1.0)]
-        for place, age, weight in _spread(row, aged, question, learned):
-            if place.pace > 0 and place.leaves > 0:
-                entries.append((place, age, weight))
+    entries = [
+        (place, age, weight)
+        for row in rows
+        for place, age, weight in _spread(row, question, learned)
+        if place.pace > 0 and place.leaves > 0
+    ]
     found: dict[Place, list[tuple[float, float]]] = defaultdict(list)
     for (place, age, weight), pace in zip(entries, _shared_paces(entries), strict=True):
         rule = place.rule * pace * place.rule_per_pace if place.rule_per_pace else place.rule
@@ -124,10 +119,10 @@ def _shared_paces(entries: list[tuple[Place, float, float]]) -> list[float]:
     return [sums[key][1] / sums[key][0] for key in keys]
 
 
-def _spread(
-    row: RunningRow, ages: list[tuple[float, float]], question: Question, learned: Learned
-) -> Iterator[tuple[Place, float, float]]:
-    """A row as one or more: ages that are known only at least, and a module that stands still, may go several ways."""
+def _spread(row: RunningRow, question: Question, learned: Learned) -> Iterator[tuple[Place, float, float]]:
+    """A row as one or more: a module that stands still may go several ways, and so may an age under a rule that is
+    known only at least.
+    """
     days = question.component.clock == "days"
     use = 1.0 if days else question.what_if.duty * learned.duty.factor(question.span)
     pace = row.a_day * learned.standing.share(row.site) * use
@@ -152,6 +147,11 @@ def _spread(
         upgrading=row.part != row.needed,
     )
     place = _visited(place, row, question, learned)
+    ages = [(row.age, 1.0)]
+    if row.least and place.rule < NEVER:
+        ages = _ages_below(row, place.rule * (pace * place.rule_per_pace or 1.0), learned)
+    elif row.least and row.most > row.age:
+        place = place._replace(oldest=_ceiling(row, 0.0 if row.joins > 0 else aged_since * pace, learned))
     for age, share in ages:
         aged = age if row.joins > 0 else max(age + aged_since * pace, 0.0)
         left = learned.standing.days_left(row.stopped) - shift if row.stopped >= 0 else 0.0
@@ -160,21 +160,29 @@ def _spread(
             continue
         # it may be this part that failed: then a new one goes in; else this one waits as it is
         left = round(left, 1)
-        yield place._replace(down=left), age, row.count * share * learned.stop_share
+        yield place._replace(down=left, oldest=0.0), age, row.count * share * learned.stop_share
         yield place._replace(joins=left), age, row.count * share * (1.0 - learned.stop_share)
 
 
-def _ages_at_least(row: RunningRow, learned: Learned) -> list[tuple[float, float]]:
-    """Ages and their shares for a part that may have been there for longer than anybody wrote down."""
+def _ceiling(row: RunningRow, aged: float, learned: Learned) -> float:
+    """The most a part of unknown age can be, to a share of the typical life; never below the least."""
+    if row.most == NEVER:
+        return NEVER
+    cell = max(learned.design(row.part).typical / CEILING_CELLS, 1e-9)
+    return max(row.age + max(round((row.most - row.age) / cell), 1) * cell + aged, 0.0)
+
+
+def _ages_below(row: RunningRow, rule: float, learned: Learned) -> list[tuple[float, float]]:
+    """Ages and their shares for a part of unknown age where parts are replaced at an age."""
     import numpy as np
 
     from reliability.stats.count_compound import ages_at_least
 
-    design = learned.design(row.part)
-    if design.failures == 0 or (design.failures < TELLING and row.age <= 0):
+    longest = min(row.most or NEVER, rule)
+    if longest <= row.age:
         return [(row.age, 1.0)]
-    longest = OLDEST * row.age if design.failures < TELLING else np.inf
-    ages, weights = ages_at_least(design.life.draws(AGE_DRAWS, np.random.default_rng(0)), row.age, longest=longest)
+    drawn = learned.design(row.part).life.draws(AGE_DRAWS, np.random.default_rng(0))
+    ages, weights = ages_at_least(drawn, row.age, longest=longest)
     return list(zip(ages.tolist(), weights.tolist(), strict=True))
 
 

@@ -7,6 +7,7 @@ import math
 import random
 from typing import Any
 
+import numpy as np
 import pytest
 from django.utils import timezone
 
@@ -19,7 +20,7 @@ from reliability.forecasts.next_quarter import forecast_document, question_of
 from reliability.forecasts.positions import Positions, positions_of
 from reliability.forecasts.what_if import WhatIf
 from reliability.running_parts import running_parts
-from tests.reliability.small_fleet import DAY_0, SmallFleet, day
+from tests.reliability.small_fleet import DAY_0, PLACED_LONG_BEFORE, SmallFleet, day
 
 pytestmark = pytest.mark.django_db
 AS_OF = 400
@@ -168,17 +169,40 @@ def test_modules_that_leave_take_their_failures_along_and_those_that_come_bring_
     assert back["positions"] == 40
 
 
-def test_an_age_known_only_at_least_is_spread_over_what_lives_allow() -> None:
+def at_lock(found: Positions) -> list[tuple[float, float, float]]:
+    """Least age, most, and how many."""
+    rows = zip(found.ages, found.places, found.weights, strict=True)
+    return [(age, place.oldest, weight) for age, place, weight in rows if place.site == "LOCK"]
+
+
+def test_an_age_known_only_at_least_goes_by_what_lives_allow() -> None:
+    """Lives of eighty days: twenty parts there for twenty days at least fail as often as parts of every age do."""
+    fleet = SmallFleet()
+    site = fleet.site(records_from=day(380))
+    live(fleet, [fleet.site("MILL")])
+    for number in range(20):
+        fleet.fit(fleet.module(f"OLD-{number}", site, built_on=day(PLACED_LONG_BEFORE)), None)
+    ((age, oldest, number),) = at_lock(positions(fleet))
+    assert (age, number) == (19.0, 20.0)
+    assert 1350 < oldest < 1450
+    mean = told(fleet, days=28, sites=["LOCK"])["total"]["mean"]
+    # survival from x to x + 28 days, x spread as S(x) beyond twenty days
+    ages = np.linspace(20.0, 400.0, 4000)
+    alive = np.exp(-((ages / 90.0) ** 2.5))
+    later = np.exp(-(((ages + 28.0) / 90.0) ** 2.5))
+    assert mean == pytest.approx(20.0 * (1.0 - later.sum() / alive.sum()), rel=0.12)
+
+
+def test_under_a_rule_an_unknown_age_lies_below_it() -> None:
     fleet = SmallFleet()
     site = fleet.site(records_from=day(380))
     live(fleet, [fleet.site("MILL")])
     fleet.fit(fleet.module("OLD", site), None)
-    found = positions(fleet)
-    ages = [age for age, place in zip(found.ages, found.places, strict=True) if place.site == "LOCK"]
-    shares = [weight for weight, place in zip(found.weights, found.places, strict=True) if place.site == "LOCK"]
-    assert sum(shares) == pytest.approx(1.0)
-    assert min(ages) >= 20
-    assert 40 < sum(age * share for age, share in zip(ages, shares, strict=True)) < 80
+    found = at_lock(positions(fleet, what_if=WhatIf(replace_at=60.0)))
+    assert sum(weight for _, _, weight in found) == pytest.approx(1.0)
+    assert {oldest for _, oldest, _ in found} == {0.0}
+    assert min(age for age, _, _ in found) >= 19.0
+    assert max(age for age, _, _ in found) <= 60.0
 
 
 def test_ages_stay_within_reason_where_no_part_has_failed_yet() -> None:
@@ -187,11 +211,11 @@ def test_ages_stay_within_reason_where_no_part_has_failed_yet() -> None:
     site = fleet.site(records_from=day(300))
     for number in range(12):
         fleet.fit(fleet.module(f"NEW-{number}", site), 310)
-        fleet.fit(fleet.module(f"OLD-{number}", site), None)
+        fleet.fit(fleet.module(f"OLD-{number}", site, built_on=day(100) if number % 2 else None), None)
     found = positions(fleet)
     assert max(found.ages) <= 101
     weeks = [week["mean"] for week in told(fleet)["weeks"]]
-    assert max(weeks) < 1.5 * min(weeks)
+    assert max(weeks) < 2 * min(weeks)
 
 
 def strokes_fleet(use: Any) -> SmallFleet:

@@ -75,7 +75,40 @@ def test_a_part_of_unknown_fitting_day_has_the_age_since_records_began_at_least(
     rebuild_clocks()
     found = running_parts(fleet.component, as_of=day(AS_OF))
     assert [row.age for row in found.rows] == [60.0]
+    assert [row.most for row in found.rows] == [float("inf")]
     assert found.notes == ["1\u00a0part whose fitting day is not known counts with every age that it can have."]
+
+
+@pytest.mark.parametrize(
+    ("built", "placed", "least"),
+    [
+        (-50, -20, 60.0),  # nobody knows where it was for thirty days
+        (-50, -50, 60.0),
+        (-50, 150, 50.0),  # of its time before records began nothing is written down
+    ],
+)
+def test_a_part_of_unknown_age_is_no_older_than_its_module(
+    fleet: SmallFleet, built: int, placed: int, least: float
+) -> None:
+    module = fleet.module("M-1", fleet.site(records_from=day(140)), placed=placed, built_on=day(built))
+    fleet.fit(module, None)
+    rebuild_clocks()
+    now = running_parts(fleet.component, as_of=day(AS_OF)).rows
+    then = running_parts(fleet.component, as_of=day(AS_OF), known_on=day(AS_OF)).rows
+    assert [(row.age, row.most) for row in now] == [(least, 250.0)]
+    assert now == then
+
+
+def test_strokes_before_records_count_at_the_pace_of_today() -> None:
+    fleet = SmallFleet("strokes")
+    module = fleet.module("M-1", fleet.site(records_from=day(140)), placed=100, built_on=day(80))
+    for at in range(100, 210, 10):
+        fleet.read(module, at, strokes=(at - 100) * 500)
+    fleet.fit(module, None)
+    rebuild_clocks()
+    (row,) = running_parts(fleet.component, as_of=day(AS_OF)).rows
+    assert row.age == pytest.approx(30_000, rel=0.02)
+    assert row.most == pytest.approx(60_000, rel=0.02)
 
 
 def test_a_module_that_stands_still_says_for_how_long(fleet: SmallFleet) -> None:
