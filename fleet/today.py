@@ -17,6 +17,7 @@ from fleet.rights import CATALOGUE, CORRECT, LOG, may
 from fleet.today_stock import stock_today
 
 MOST = 12  # lines shown before “all of them”
+MOST_EMPTY = 200  # empty positions looked at, to tell each where its module’s stop is told
 VISITS_WITHIN_DAYS = 7
 WEEKS_BEFORE = 8
 
@@ -43,7 +44,7 @@ def empty_positions(request: Any) -> list[Any]:
         .filter(scrapped_on=None)
         .filter(~Exists(standing), Exists(before))
         .values_list("code", "type", "type__positions")
-        .order_by("code_order")[: MOST + 1]
+        .order_by("code_order")[:MOST_EMPTY]
     )
     types = {kind for _, kind, _ in rows}
     positions = list(request.seen(Position).filter(type__in=types).select_related("component"))
@@ -51,6 +52,14 @@ def empty_positions(request: Any) -> list[Any]:
     for kind in types:
         names |= position_names(position for position in positions if position.type_id == kind)
     return [{"module": module, "position": names[position]} for module, _, position in rows]
+
+
+def told_at_stops(stops: list[Any], empty: list[Any]) -> list[Any]:
+    """What a stopped module lacks is told where its stop is told; what stays is of modules not listed there."""
+    listed = {stop.module.code: stop for stop in stops}
+    for stop in stops:
+        stop.lacks = [each["position"] for each in empty if each["module"] == stop.module.code]
+    return [each for each in empty if each["module"] not in listed][:MOST]
 
 
 def failures_by_week(request: Any, today: dt.date) -> dict[str, Any]:
@@ -119,7 +128,7 @@ def records_today(request: Any) -> dict[str, Any]:
     return {
         "today": today,
         **stopped,
-        "empty_positions": empty_positions(request),
+        "empty_positions": told_at_stops(stopped["stops"], empty_positions(request)),
         "visits_due": visits_due(request, today),
         "sites_without_answer": sites_without_answer(request),
         "marks": marks,

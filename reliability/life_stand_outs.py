@@ -135,9 +135,11 @@ def sentence(data: Data) -> str:
         )
     rates = [family["false_discovery_rate"] for family in data["families"] if named(family)]
     if rates:
+        false = percent(max(rates))
+        at_most = "" if false.startswith("under") else " or fewer"
         told.append(
             f"{sure(data['confidence'])[:1].upper()}{sure(data['confidence'])[1:]} of each range; of such "
-            f"namings {percent(max(rates))} or fewer are expected to be false."
+            f"namings {false}{at_most} are expected to be false."
         )
     return " ".join(each for each in told if each)
 

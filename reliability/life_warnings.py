@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from typing import Any
 
+from fleet.formats import number
 from reliability.fleet_lives import LifeRow
 from reliability.wording import in_sentence
 
@@ -103,8 +104,8 @@ def _not_measured(rows: Sequence[LifeRow], clock: str) -> str:
     if not estimated:
         return ""
     return (
-        f"The {clock} of {estimated} of {lives} lives reach beyond the readings of their module, or it has none: there "
-        "they are carried on at its usual daily duty. Read the counters to make them sure."
+        f"The {clock} of {number(estimated)} of {number(lives)} lives reach beyond the readings of their module, "
+        "or it has none: there they are carried on at its usual daily duty. Read the counters to make them sure."
     )
 
 

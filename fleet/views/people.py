@@ -29,12 +29,10 @@ LIST = Listing(
             lambda person: {
                 "text": person.name,
                 "url": reverse("edit_person", args=[person.code]),
-                "sub": person.code,
             },
-            plain=lambda person: person.code,
-            sort=("code_order",),
+            sort=("name", "code_order"),
         ),
-        Column("name", "Name", lambda person: person.name, sort=("name",)),
+        Column("code", "Code", lambda person: person.code, sort=("code_order",)),
         Column("role", "Role", lambda person: person.role, sort=("role",)),
         Column(
             "sites",

@@ -40,7 +40,7 @@ def money_figure(document: Document) -> Figure:
         },
     ]
     layout = {
-        "xaxis": {"title": f"Money spent, {document['currency']}", "rangemode": "tozero"},
+        "xaxis": {"title": f"Money spent, {document['currency']}", "rangemode": "tozero", "tickformat": ","},
         "yaxis": {"title": "Modules that wait for a part", "rangemode": "tozero"},
         "showlegend": False,
     }
