@@ -14,10 +14,12 @@ from typing import IO, Any
 
 from django.db import connection, transaction
 
+from fleet.models import Book
 from fleet.transfer.export_rows import ROWS
 from fleet.transfer.kinds import ALL_KINDS
 from fleet.transfer.problems import Unreadable
 from fleet.transfer.scope import Scope
+from fleet.transfer.sources import is_formula
 from fleet.transfer.staging import on_sqlite, run
 
 MOST_SHEET_ROWS = 1_048_576
@@ -44,12 +46,14 @@ def one_moment() -> Iterator[None]:
     if connection.in_atomic_block:
         yield
     elif on_sqlite():
+        Book.load()  # a book that nobody has opened yet makes its settings, which nothing may do in here
         run("BEGIN")
         try:
             yield
         finally:
             run("ROLLBACK")
     else:
+        Book.load()
         with transaction.atomic():
             run("SET TRANSACTION ISOLATION LEVEL REPEATABLE READ READ ONLY")
             yield
@@ -83,7 +87,7 @@ def write_csv(target: Any, name: str, scope: Scope) -> int:
     count = 0
     for row in ROWS[name](scope):
         count += 1
-        writer.writerow([cell(value) for value in row])
+        writer.writerow([csv_cell(value) for value in row])
     return count
 
 
@@ -100,6 +104,11 @@ def cell(value: Any) -> str:
     if isinstance(value, float):
         return repr(value)
     return value.isoformat() if isinstance(value, dt.date) else str(value)
+
+
+def csv_cell(value: Any) -> str:
+    """A text that a spreadsheet would run as a formula is quoted; the quote is taken off when the file comes in."""
+    return f"'{value}" if isinstance(value, str) and is_formula(value.lstrip("'")) else cell(value)
 
 
 def write_workbook(target: IO[bytes], scope: Scope) -> dict[str, int]:

@@ -126,11 +126,20 @@ def csv_rows(file: str, text: io.TextIOWrapper) -> Iterator[tuple[int, list[str]
             for number, cells in enumerate(csv.reader(lines(first, text), delimiter=separator, strict=True), start=1):
                 if number > MOST_ROWS:
                     raise Unreadable(f"has more than {MOST_ROWS} rows. Split it.", file=file)
-                yield number, [cell.strip() for cell in cells]
+                yield number, [unquoted(cell.strip()) for cell in cells]
         except UnicodeDecodeError:
             raise Unreadable(NOT_UTF8, file=file, row=number + 1 if number else 0) from None
         except csv.Error as fault:
             raise Unreadable(csv_words(str(fault)), file=file, row=number + 1) from None
+
+
+def is_formula(text: str) -> bool:
+    return text.startswith(("=", "+", "-", "@"))
+
+
+def unquoted(cell: str) -> str:
+    """Without the quotation mark that keeps a spreadsheet from running a text as a formula."""
+    return cell[1:] if cell.startswith("'") and is_formula(cell.lstrip("'")) else cell
 
 
 def lines(first: str, rest: Iterable[str]) -> Iterator[str]:
