@@ -164,7 +164,7 @@ def _add_taken(tally: Tally, trigger: Trigger, question: Question) -> None:
     failing = kept("forecast triggers", other.asked(), lambda: _failing(other))
 
     def more(counts: Counts, failures: list[float], share: float) -> Counts:
-        taken = CountDistribution(parts_taken(trigger, failures, share))
+        taken = CountDistribution(parts_taken(trigger, failures, share, coming=failing["designs"]))
         return Counts(counts.failures, add_up([counts.parts_used, taken]), counts.planned)
 
     whole = tally.total.failures.mean + 1e-9
@@ -180,10 +180,11 @@ def _add_taken(tally: Tally, trigger: Trigger, question: Question) -> None:
 
 
 def _failing(other: Question) -> dict[str, Any]:
-    """Probabilities of 0, 1, 2 ... failures of a component, in total and by site and type."""
+    """Probabilities of 0, 1, 2 ... failures of a component, in total and by site and type; how many of each design."""
     tally = tallied(other, running_now(other), learned(other.component, other.as_of, other.known_on))
     by_label = {
         name: {str(label): counts.failures.pmf.tolist() for label, counts in tally.groups[name].items()}
         for name in ("site", "type")
     }
-    return {"total": tally.total.failures.pmf.tolist(), **by_label}
+    designs = {str(label): counts.failures.mean for label, counts in tally.groups["part"].items()}
+    return {"total": tally.total.failures.pmf.tolist(), "designs": designs, **by_label}

@@ -44,16 +44,16 @@ def compound_counts(triggers: ArrayLike, each: ArrayLike) -> FloatArray:
     return _cleaned(scipy.fft.irfft(spectrum, length)[:size])
 
 
-def taken_along(triggers: ArrayLike, taken: float, left: float) -> FloatArray:
+def taken_along(triggers: ArrayLike, taken: float, left: float, *, prior: float = 0.5) -> FloatArray:
     """How many of N failures take a part along, its chance learned from `taken` of `taken + left` past ones.
 
-    Beta-binomial given N with Jeffreys' prior: the unknown chance is common to all failures, so the band is wider
+    Beta-binomial given N with Jeffreys' prior (prior: what it adds to both numbers): the unknown chance is common to all failures, so the band is wider
     than a binomial's. Returns probabilities of 0, 1, ... up to the greatest N.
     """
     outer = _checked(triggers)
     if taken < 0 or left < 0:
         raise InvalidArgument(f"taken is {taken:g} and left {left:g}; counts of past failures cannot be negative.")
-    first, second = taken + 0.5, left + 0.5
+    first, second = taken + prior, left + prior
     number, share = np.meshgrid(np.arange(outer.size), np.arange(outer.size), indexing="ij")
     rest = np.maximum(number - share, 0)
     logs = gammaln(number + 1) - gammaln(share + 1) - gammaln(rest + 1)
