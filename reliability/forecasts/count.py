@@ -20,8 +20,8 @@ if TYPE_CHECKING:
     from reliability.stats.count_simulation import SimulatedCounts
 
 FEW_FAILURES = 20
-MANY_FAILURES = 200
-MANY_DRAWS, SOME_DRAWS, FEW_DRAWS, FEWEST_DRAWS = 400, 200, 100, 50
+DRAWS = 400  # of each life; those that are counted in full speak for the others
+COUNTED_OF_FEW, COUNTED = 200, 48
 LABELS = ("site", "type", "part", "needed")
 SIMULATED = 600_000  # draws times positions
 FEWEST_SIMULATED, MOST_SIMULATED = 200, 2000
@@ -65,7 +65,8 @@ def count(question: Question, learned: Learned, positions: Positions) -> CountFo
         stretch=stretch,
         parts_by_window=False,
         taken_share=learned.taken_share,
-        draws=draws_for(learned, positions),
+        draws=DRAWS,
+        counted_draws=COUNTED_OF_FEW if learned.failures < FEW_FAILURES else COUNTED,
         rng=np.random.default_rng(question.seed("")),
         **settings_of(question, learned, positions),
     )
@@ -74,17 +75,6 @@ def count(question: Question, learned: Learned, positions: Positions) -> CountFo
 def designs_of(learned: Learned) -> dict[str, Any]:
     """Draws of every design, in an order that no assumption changes: a what-if and its base case share them."""
     return {label: design.life for label, design in sorted(learned.designs.items())}
-
-
-def draws_for(learned: Learned, positions: Positions) -> int:
-    """Few failures leave much open, which takes many draws to tell."""
-    if learned.failures < FEW_FAILURES:
-        return MANY_DRAWS
-    labels = {learned.label(name) for place in positions.places for name in (place.part, place.needed)}
-    least = min(learned.design(label).failures for label in labels)
-    if least < FEW_FAILURES:
-        return SOME_DRAWS
-    return FEW_DRAWS if least < MANY_FAILURES else FEWEST_DRAWS
 
 
 def settings_of(question: Question, learned: Learned, positions: Positions) -> dict[str, Any]:

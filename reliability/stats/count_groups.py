@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from copy import copy
 from dataclasses import dataclass
 
 import numpy as np
@@ -18,20 +19,19 @@ IntArray = NDArray[np.int64]
 
 @dataclass(frozen=True, eq=False)
 class Block:
-    """Rows that share a kind of grid; `spans` are shares of the horizon, (targets, 2).
+    """Rows that share a kind of grid.
 
     taken_share: share of the other removals that is not counted among the parts used.
     """
 
     grid: MidpointGrid | VisitGrid
     rows: Rows
-    spans: FloatArray
     taken_share: float = 0.0
 
-    def places(self) -> list[tuple[IntArray, IntArray]]:
-        """(begin, end) places of each target, for each class."""
+    def places(self, spans: FloatArray) -> list[tuple[IntArray, IntArray]]:
+        """(begin, end) places of each target, for each class; spans are shares of the horizon, (targets, 2)."""
         classes = self.rows.classes
-        return [(self._place(begin * classes.horizon), self._place(end * classes.horizon)) for begin, end in self.spans]
+        return [(self._place(begin * classes.horizon), self._place(end * classes.horizon)) for begin, end in spans]
 
     def _place(self, time: FloatArray) -> IntArray:
         place = self.grid.place_of(np.minimum(time, self.rows.classes.leave_at), self.rows.classes)
@@ -45,7 +45,13 @@ class BlockTails:
     """Masses and kernels of one block for some draws; `targets` gives the tails of one kind of end."""
 
     def __init__(
-        self, block: Block, hazards: Hazards, fitted: Hazards, following: Hazards | None, duty: FloatArray
+        self,
+        block: Block,
+        spans: FloatArray,
+        hazards: Hazards,
+        fitted: Hazards,
+        following: Hazards | None,
+        duty: FloatArray,
     ) -> None:
         self._block, self._rows, self._grid = block, block.rows, block.grid
         on_lattice = isinstance(block.grid, VisitGrid)
@@ -62,15 +68,31 @@ class BlockTails:
         self._fresh = np.flatnonzero(~np.isnan(block.rows.start) & (not on_lattice))
         running = block.grid.running(hazards, block.rows, self._running, duty)
         self._ends, self._planned, self._planned_place = running
-        self._spans = [(begin[self._distinct], end[self._distinct]) for begin, end in block.places()]
+        self._spans = self._places(spans)
 
-    def targets(self, kind: str, count: int) -> list[FloatArray]:
-        """Tails P(N >= k), k = 1 .., (draws, rows, orders), of each of the first `count` targets."""
+    def within(self, spans: FloatArray, draws: IntArray) -> BlockTails:
+        """The same lives of some of the draws, for other spans."""
+        other = copy(self)
+        other._new, other._new_by, other._ends = (
+            ends.of_draws(draws) for ends in (self._new, self._new_by, self._ends)
+        )
+        if self._next is not None:
+            other._next = self._next[0].of_draws(draws), self._next[1].of_draws(draws)
+        if self._planned is not None and self._planned_place is not None:
+            other._planned, other._planned_place = self._planned[draws], self._planned_place[draws]
+        other._failures, other._spans = [], self._places(spans)
+        return other
+
+    def _places(self, spans: FloatArray) -> list[tuple[IntArray, IntArray]]:
+        return [(begin[self._distinct], end[self._distinct]) for begin, end in self._block.places(spans)]
+
+    def targets(self, kind: str) -> list[FloatArray]:
+        """Tails P(N >= k), k = 1 .., (draws, rows, orders), of each target."""
         if kind == "planned" and not self._any_planned and not (self._rows.extra == 2).any():
-            return [np.zeros((self._new.failed.shape[0], len(self._rows), 1)) for _ in range(count)]
+            return [np.zeros((self._new.failed.shape[0], len(self._rows), 1)) for _ in self._spans]
         if kind == "parts" and self._failures and self._ends.removed is None and not self._any_planned:
             # only what stopped modules get comes on top
-            return [self._with_extra(kind, tails, number) for number, tails in enumerate(self._failures[:count])]
+            return [self._with_extra(kind, tails, number) for number, tails in enumerate(self._failures)]
         kernel = self._kernel(self._new, self._new_by, kind)
         whole = kernel.tails()
         following = None if self._next is None else self._kernel(*self._next, kind)
@@ -79,7 +101,7 @@ class BlockTails:
             kernel, whole, following = following, following.tails(), None
         known: dict[int, FloatArray] = {}
         found = []
-        for begin, end in self._spans[:count]:
+        for begin, end in self._spans:
             if following is not None:
                 remaining = self._switched(kernel, whole, following, begin, end)
             else:

@@ -11,8 +11,11 @@ and the first failure's distribution is exact. On a visit lattice the places are
 
 from __future__ import annotations
 
+from functools import cached_property
+
 import numpy as np
 import scipy.fft
+from numpy.lib.stride_tricks import sliding_window_view
 from numpy.typing import NDArray
 
 FloatArray = NDArray[np.float64]
@@ -21,7 +24,7 @@ IntArray = NDArray[np.int64]
 MOST_RENEWALS = 300
 _TAIL_LEFT = 1e-7  # of a position over the horizon; a million of them then miss a tenth of a part
 _WINDOW_LEFT = 1e-6  # of a position within a window
-_SHORT = 10  # places of a window up to which its few terms are summed directly
+_SHORT = 60  # places up to which windows are summed term by term: faster than transforms, without their rounding
 
 
 class Transform:
@@ -37,8 +40,8 @@ class Transform:
         self._damping = 10.0 ** (-9.0 / self._size * np.arange(places))
 
     def forward(self, sequence: FloatArray) -> NDArray[np.complex128]:
-        """Transform along the last axis."""
-        return scipy.fft.rfft(sequence * self._damping, self._size, axis=-1)
+        """Transform along the last axis, of at most `places` entries."""
+        return scipy.fft.rfft(sequence * self._damping[: sequence.shape[-1]], self._size, axis=-1)
 
     def up_to(self, limit: int) -> FloatArray:
         """1 below the limit, the tie's share on it, 0 beyond: (places,)."""
@@ -121,43 +124,56 @@ class FromNew:
     def _plain_window_tails(self, whole: FloatArray, width: int) -> FloatArray:
         """Window tails of one design, all orders at once: within the window they are the plain tails."""
         transform = self._transform
-        every = 1.0 / (1.0 - (self._counted if self._silent is None else self._counted + self._silent))
         inside = transform.up_to(width)
         near = whole * inside
         near[:, :, 0] = inside
         near[:, :, 0, 0] *= 1.0 - transform.tie
-        source = self._short_source(near, width) if width <= _SHORT else self._source(near)
-        source *= 1.0 - inside
+        first = max(int(np.count_nonzero(inside == 1.0)), 1)  # from here on a part is fitted before the window
         found = np.empty_like(whole)
         found[:, :, 0] = 1.0
         # a cell centred on the very end lies half beyond it
         found[:, :, 0, 0] = 1.0 - transform.tie
-        far = transform.back(transform.forward(source) * every[:, :, None])
-        np.clip(near[:, :, 1:] + far, 0.0, 1.0, out=found[:, :, 1:])
+        far = near[:, :, 1:]
+        if first < transform.places:
+            product = self._product if transform.places > _SHORT else _short_product
+            counted, silent = self._plain
+            source = product(near[:, :, :-1], counted, first, width)
+            if silent is not None:
+                source += product(near[:, :, 1:], silent, first, width)
+            source *= 1.0 - inside[first:]
+            far[..., first:] += product(source, self._renewals[..., : transform.places - first], 0, None)
+        np.clip(far, 0.0, 1.0, out=found[:, :, 1:])
         return found
 
-    def _source(self, near: FloatArray) -> FloatArray:
-        """c * (one order less within the window) + s * (the same order within it), orders 1 and up."""
-        spectra = self._transform.forward(near)
-        source = self._counted[:, :, None] * spectra[:, :, :-1]
-        if self._silent is not None:
-            source += self._silent[:, :, None] * spectra[:, :, 1:]
-        return self._transform.back(source)
+    @cached_property
+    def _renewals(self) -> FloatArray:
+        """Masses of all fittings so far, whatever ended the part before, a new one at place 0 among them."""
+        every = self._counted if self._silent is None else self._counted + self._silent
+        return self._transform.back(1.0 / (1.0 - every))
 
-    def _short_source(self, near: FloatArray, width: int) -> FloatArray:
-        """The same for a window of few places, term by term."""
-        counted, silent = self._plain
-        source = np.zeros_like(near[:, :, 1:])
-        for place in range(width + 1):
-            size = source.shape[3] - place
-            source[..., place:] += counted[:, :, None, :size] * near[:, :, :-1, place : place + 1]
-            if silent is not None and place > 0:
-                source[..., place:] += silent[:, :, None, :size] * near[:, :, 1:, place : place + 1]
-        return source
+    def _product(self, sequences: FloatArray, masses: FloatArray, first: int, width: int | None) -> FloatArray:
+        """What `_short_product` gives, through transforms."""
+        forward = self._transform.forward
+        return self._transform.back(forward(sequences) * forward(masses)[:, :, None])[..., first : masses.shape[2]]
 
     def _enough(self, whole: FloatArray, width: int) -> int:
         # one more than for a new part: the running one may be about to fail
         return _orders(whole[:, :, :, min(width, whole.shape[3] - 1)]) + 1
+
+
+def _short_product(sequences: FloatArray, masses: FloatArray, first: int, width: int | None) -> FloatArray:
+    """Convolution of sequences (draws, classes, orders, places) with masses (draws, classes, places) from `first` on.
+
+    width: the last place at which a sequence is above 0, where that is known.
+    """
+    places = masses.shape[2]
+    width = places - 1 if width is None else width
+    padded = np.zeros((*masses.shape[:2], places + width))
+    padded[..., width:] = masses
+    windows = sliding_window_view(padded, places - first, axis=2)
+    # masses[r - u] for u = 0 .. width and r = first .. places - 1
+    reached = windows[:, :, first + width - np.arange(width + 1)]
+    return sequences[..., : width + 1] @ reached
 
 
 def _orders(tails: FloatArray) -> int:

@@ -76,6 +76,11 @@ class Ends:
     removed: FloatArray | None
     planned: FloatArray | None
 
+    def of_draws(self, draws: IntArray) -> Ends:
+        """Those of some of the draws."""
+        removed, planned = (None if mass is None else mass[draws] for mass in (self.removed, self.planned))
+        return Ends(self.failed[draws], removed, planned)
+
     def split(self, kind: str, taken_share: float = 0.0) -> tuple[FloatArray, FloatArray | None]:
         """(counted, silent) masses for "failures", "parts" (less the taken share of removals) or "planned"."""
         others = [mass for mass in (self.removed, self.planned) if mass is not None]

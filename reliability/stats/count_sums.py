@@ -4,9 +4,9 @@ The generating function of a sum is the product of its members': its logarithm i
 circle, and inverted by one FFT. Three ways to the same logarithm, chosen by what is exact and cheap:
 
 - a variance above 5: the first eight cumulants; probabilities are then right to 3e-6, to 1e-9 from a variance of 9;
-- members that rarely fail (P(N >= 1) below 0.3): its power series in z, log p_0 + sum_j c_j z^j (De Pril 1989, ASTIN
-  Bulletin 19, 9), with enough terms to leave less than 1e-10;
-- else member by member.
+- else, members that rarely fail (P(N >= 1) below 0.3) together: its power series in z, log p_0 + sum_j c_j z^j (De Pril
+  1989, ASTIN Bulletin 19, 9), with enough terms to leave less than 1e-10;
+- and the others one by one.
 """
 
 from __future__ import annotations
@@ -16,6 +16,7 @@ import scipy.fft
 from numpy.typing import NDArray
 
 FloatArray = NDArray[np.float64]
+IntArray = NDArray[np.int64]
 ComplexArray = NDArray[np.complex128]
 
 _SERIES_FROM = 5.0
@@ -23,46 +24,61 @@ _RARE = 0.3
 
 
 class CountMixtures:
-    """The average over draws of the distributions of several sums, sum_i w_gi copies of N_i for each sum g."""
+    """The average over draws of the distributions of several sums, sum_i w_gi copies of N_i for each sum g.
 
-    def __init__(self, sums: int) -> None:
-        self._mass = [np.zeros(64) for _ in range(sums)]
-        self._share = 1.0
+    targets: how many stretches each sum is told for; their draws are added side by side, in one call.
+    """
 
-    def add(self, tails: FloatArray, weights: FloatArray, *, share: float = 1.0) -> None:
-        """Add draws: tails P(N_i >= k), (draws, rows, k = 1 ..), weights (sums, rows); each stands for `share`
-        draws.
+    def __init__(self, sums: int, targets: int = 1) -> None:
+        self.targets = targets
+        self._mass = [[np.zeros(64) for _ in range(sums)] for _ in range(targets)]
+
+    def add(self, tails: FloatArray, weights: FloatArray, shares: float | FloatArray = 1.0) -> None:
+        """Add draws: tails P(N_i >= k), (targets * draws, rows, k = 1 ..), all draws of the first target first.
+
+        weights (sums, rows). shares: how many draws each of them stands for, one number or (draws,).
         """
-        self._share = share
+        if not self.targets:
+            return
+        share = np.broadcast_to(np.asarray(shares, dtype=np.float64), (tails.shape[0] // self.targets,))
         if not tails.shape[1] or not weights.any():
-            for mass in self._mass:
-                mass[0] += share * tails.shape[0]
+            for masses in self._mass:
+                for mass in masses:
+                    mass[0] += share.sum()
             return
         tails = tails[..., : max(int(np.count_nonzero(tails.max(axis=(0, 1)) > 1e-10)), 1)]
         probabilities = _probabilities(tails)
         low = _moments(probabilities, weights)
         wide = low[1] > _SERIES_FROM
-        if wide.any():
-            cumulants = _cumulants(probabilities, low, weights)
-            wide &= _series_serves(cumulants)
-            for number in np.flatnonzero(wide.any(axis=0)):
-                self._add_wide(int(number), cumulants[:, wide[:, number], number])
-        some = ~wide.all(axis=1)
-        if some.any():
-            self._add_narrow(tails[some], probabilities[some], weights, low[:, some], wide[some])
+        some = np.flatnonzero(wide.any(axis=0))
+        if some.size:
+            cumulants = _cumulants(probabilities, low[:, :, some], weights[some])
+            wide[:, some] &= _series_serves(cumulants)
+            for place, number in enumerate(some.tolist()):
+                self._add_wide(number, np.flatnonzero(wide[:, number]), cumulants[:, :, place], share)
+        narrow = np.flatnonzero(~wide.all(axis=0))
+        if narrow.size:
+            rows = np.flatnonzero(weights[narrow].any(axis=0))
+            members = tails[:, rows], probabilities[:, rows], weights[np.ix_(narrow, rows)]
+            self._add_narrow(
+                narrow, members, low[:, :, narrow], ~wide[:, narrow] * np.tile(share, self.targets)[:, None]
+            )
 
-    def pmfs(self) -> list[FloatArray]:
+    def pmfs(self, target: int = 0) -> list[FloatArray]:
         """For each sum the probabilities of 0, 1, 2 ... up to where less than 1e-12 is left."""
-        return [_trimmed(np.maximum(mass, 0.0)) for mass in self._mass]
+        return [_trimmed(np.maximum(mass, 0.0)) for mass in self._mass[target]]
 
-    def _put(self, number: int, start: int, mass: FloatArray) -> None:
-        held = self._mass[number]
+    def _put(self, target: int, number: int, start: int, mass: FloatArray) -> None:
+        held = self._mass[target][number]
         if start + mass.size > held.size:
             held = np.concatenate([held, np.zeros(max(start + mass.size, 2 * held.size) - held.size)])
-            self._mass[number] = held
-        held[start : start + mass.size] += self._share * mass
+            self._mass[target][number] = held
+        held[start : start + mass.size] += mass
 
-    def _add_wide(self, number: int, cumulants: FloatArray) -> None:
+    def _add_wide(self, number: int, chosen: IntArray, cumulants: FloatArray, share: FloatArray) -> None:
+        if not chosen.size:
+            return
+        cumulants = cumulants[:, chosen]
         mean, deviation = cumulants[0], np.sqrt(cumulants[1])
         size = scipy.fft.next_fast_len(int(np.ceil(18.0 * deviation.max())) + 24, real=True)
         offset = np.maximum(np.rint(mean) - size // 2, 0.0)
@@ -74,34 +90,44 @@ class CountMixtures:
         spectrum = np.zeros((mean.size, angle.size), dtype=np.complex128)
         spectrum[:, : used.size] = power
         mass = scipy.fft.irfft(np.conj(spectrum), size, axis=1)
-        for start, row in zip(offset.astype(np.int64), mass, strict=True):
-            self._put(number, int(start), row)
+        target, draw = np.divmod(chosen, share.size)
+        mass *= share[draw][:, None]
+        for owner, start, row in zip(target.tolist(), offset.astype(np.int64).tolist(), mass, strict=True):
+            self._put(owner, number, start, row)
 
     def _add_narrow(
         self,
-        tails: FloatArray,
-        probabilities: FloatArray,
-        weights: FloatArray,
+        numbers: IntArray,
+        members: tuple[FloatArray, FloatArray, FloatArray],
         low: FloatArray,
-        wide: NDArray[np.bool_],
+        share: FloatArray,
     ) -> None:
-        deviation = np.sqrt(np.maximum(low[1], 0.0))
-        top = float(np.where(wide, 0.0, low[0] + 12.0 * deviation).max())
+        """The sums `numbers`, each with `share` (targets * draws, sums) of every draw; 0 where it is wide there.
+
+        members: tails, probabilities and weights of their rows alone.
+        """
+        tails, probabilities, weights = members
+        top = float(np.where(share > 0, low[0] + 12.0 * np.sqrt(np.maximum(low[1], 0.0)), 0.0).max())
         size = scipy.fft.next_fast_len(int(np.ceil(top)) + 16, real=True)
         angle = 2.0 * np.pi / size * np.arange(size // 2 + 1)
-        rare = tails[..., 0].max() < _RARE
-        rows = tails.shape[1] if not rare else weights.shape[0]
+        rare = tails[..., 0].max(axis=0) < _RARE
+        draws = share.shape[0] // self.targets
+        rows = max(int(np.count_nonzero(~rare)), weights.shape[0])
         chunk = max(1, int(1.5e6 / (rows * angle.size)))
-        for start in range(0, tails.shape[0], chunk):
-            part = slice(start, start + chunk)
-            if rare:
-                spectrum = _by_power_series(probabilities[part], weights, angle)
-            else:
-                spectrum = _by_members(tails[part], weights, angle)
-            mass = scipy.fft.irfft(np.conj(spectrum), size, axis=2)
-            mass = np.einsum("dgn,dg->gn", mass, ~wide[part])
-            for number in range(weights.shape[0]):
-                self._put(number, 0, mass[number])
+        for target in range(self.targets):
+            spectrum = np.zeros((weights.shape[0], angle.size), dtype=np.complex128)
+            for start in range(target * draws, (target + 1) * draws, chunk):
+                part = slice(start, min(start + chunk, (target + 1) * draws))
+                found = np.ones((part.stop - start, *spectrum.shape), dtype=np.complex128)
+                if rare.any():
+                    found *= _by_power_series(probabilities[part][:, rare], weights[:, rare], angle)
+                if not rare.all():
+                    found *= _by_members(tails[part][:, ~rare], weights[:, ~rare], angle)
+                spectrum += np.einsum("dga,dg->ga", found, share[part])
+            # the transform of an average is the average of the transforms
+            mass = scipy.fft.irfft(np.conj(spectrum), size, axis=1)
+            for number, row in zip(numbers.tolist(), mass, strict=True):
+                self._put(target, number, 0, row)
 
 
 def _trimmed(mass: FloatArray) -> FloatArray:

@@ -31,55 +31,56 @@ class Plan:
 
 
 class Tallies:
-    """For each kind all that is counted, and each window's, one of them by group as well."""
+    """For each kind all that is counted and one target by group, from every draw; each window from some of them."""
 
-    def __init__(self, rows: Rows, targets: int, plan: Plan) -> None:
-        self._share = 1.0
+    def __init__(self, rows: Rows, plan: Plan) -> None:
         self._plan = plan
-        self._targets = targets
         classes = rows.classes
         planned = bool(np.isfinite(classes.replace_at).any())
         differ = planned or bool(classes.other_removals.any()) or bool(rows.extra.any())
         self.kinds = ["failures", *(["parts"] if differ else []), *(["planned"] if planned else [])]
+        self.window_kinds = self.kinds if plan.parts_by_window else self.kinds[:1]
         self._lines, self._sums = _lines_of(rows, plan.groupings)
-        self._mixtures = {
-            kind: [CountMixtures(len(self._sums) if n == plan.grouped else 1) for n in range(self.targets(kind))]
-            for kind in self.kinds
-        }
+        apart = plan.grouped > 0
+        self._whole = {kind: CountMixtures(1 if apart else len(self._sums)) for kind in self.kinds}
+        self._grouped = {kind: CountMixtures(len(self._sums)) for kind in self.kinds} if apart else self._whole
+        self._windows = {kind: CountMixtures(1, len(plan.windows)) for kind in self.window_kinds}
 
-    def targets(self, kind: str) -> int:
-        """How many of the targets this kind is counted in."""
-        return self._targets if kind == "failures" or self._plan.parts_by_window else self._plan.grouped + 1
+    def add(self, kind: str, targets: list[FloatArray], weights: FloatArray, share: float) -> None:
+        """Tails (draws, rows, orders) of all that is counted, and of the target by group where that is another.
 
-    def add(self, kind: str, number: int, tails: FloatArray, weights: FloatArray) -> None:
-        """Tails of target `number` for some draws; weights (groups + 1, rows)."""
-        own = self._sums @ weights if number == self._plan.grouped else weights[-1:]
-        self._mixtures[kind][number].add(tails, own, share=self._share)
+        weights (groups + 1, rows); each draw stands for `share` draws.
+        """
+        if targets[1:]:
+            self._whole[kind].add(targets[0], weights[-1:], share)
+        self._grouped[kind].add(targets[-1], self._sums @ weights, share)
 
-    def each_for(self, share: float) -> Tallies:
-        """These tallies, where each draw added from now on stands for `share` draws."""
-        self._share = share
-        return self
+    def add_windows(self, kind: str, targets: list[FloatArray], weights: FloatArray, shares: FloatArray) -> None:
+        """Tails of each window, for draws that stand for `shares` draws (draws,)."""
+        orders = max(tails.shape[2] for tails in targets)
+        tails = np.zeros((len(targets), *targets[0].shape[:2], orders))
+        for place, found in zip(tails, targets, strict=True):
+            place[..., : found.shape[2]] = found
+        self._windows[kind].add(tails.reshape(-1, *tails.shape[2:]), weights[-1:], shares)
 
     def add_nothing(self, draws: int) -> None:
         """No positions at all: nothing will fail."""
-        for mixtures in self._mixtures.values():
-            for mixture in mixtures:
-                mixture.add(np.zeros((draws, 0, 1)), np.zeros((1, 0)), share=self._share)
+        for mixtures in (self._whole, self._grouped, self._windows):
+            for mixture in mixtures.values():
+                mixture.add(np.zeros((draws * mixture.targets, 0, 1)), np.zeros((1, 0)))
 
     def forecast(self, rows: Rows, draws: int) -> CountForecast:
         """The finished distributions."""
-        found = {kind: [mixture.pmfs() for mixture in mixtures] for kind, mixtures in self._mixtures.items()}
-        total = _counts({kind: pmfs[0][-1] for kind, pmfs in found.items()})
+        total = _counts({kind: mixture.pmfs()[-1] for kind, mixture in self._whole.items()})
         by_window = [
-            _counts({kind: pmfs[1 + n][-1] for kind, pmfs in found.items() if 1 + n < len(pmfs)})
-            for n in range(len(self._plan.windows))
+            _counts({kind: mixture.pmfs(number)[0] for kind, mixture in self._windows.items()})
+            for number in range(len(self._plan.windows))
         ]
         groups: list[dict[Any, Counts]] = [{} for _ in range(self._plan.groupings)]
         if rows.group_labels != [None]:
+            found = {kind: mixture.pmfs() for kind, mixture in self._grouped.items()}
             for grouping, label, line in self._lines:
-                pmfs = {kind: pmfs[self._plan.grouped][line] for kind, pmfs in found.items()}
-                groups[grouping][label] = _counts(pmfs)
+                groups[grouping][label] = _counts({kind: pmfs[line] for kind, pmfs in found.items()})
         return CountForecast(
             total.failures,
             total.parts_used,

@@ -23,6 +23,7 @@ from reliability.stats.count_masses import MidpointGrid
 from reliability.stats.count_positions import Rows, group_positions
 from reliability.stats.count_results import CountDistribution, CountForecast, Counts
 from reliability.stats.count_tallies import Plan, Tallies
+from reliability.stats.count_thinning import expected_by_site, shapes_and_scales, spoken_for
 from reliability.stats.errors import InvalidArgument
 from reliability.stats.prediction import calibrated_prediction
 
@@ -36,6 +37,8 @@ MOST_CELLS = 512
 CELLS_A_SPREAD = 2.5  # cells within scale / shape; with twice as many no quantile moves
 CELLS_WITH_CHANGES = 5.0  # where positions leave, or designs change, between cells
 FEW_ROWS = 40
+WINDOW_DRAWS = 20  # tell what a single window brings
+MANY_DRAWS = 50  # unless more than so many are needed for the whole: then little is known, and each counts
 MANY_CELLS = 190.0
 _RARE_HAZARD = 0.25
 
@@ -50,6 +53,7 @@ def forecast_counts(
     windows: Sequence[float] | None = None,
     weights: ArrayLike | None = None,
     draws: int = 400,
+    counted_draws: int | None = None,
     rng: np.random.Generator | None = None,
     replace_at: ArrayLike | None = None,
     visits: tuple[ArrayLike, ArrayLike] | None = None,
@@ -87,8 +91,9 @@ def forecast_counts(
     down_until: above 0 the module is stopped and gets a new part then. leave_at: the position is counted until then.
     next_posterior, switch_at: parts fitted after switch_at live by next_posterior.
     refit_delay: from a failure to the moment the new part's life begins; half a day where failures are written down by
-    the day and parts begin with the next. draws: of the posterior. cells: steps of the grid (chosen from the lives
-    if None).
+    the day and parts begin with the next. draws: of the posterior; counted_draws: so
+    many of them are counted in full, weighted to speak for all (see count_thinning; None: every one).
+    cells: steps of the grid (chosen from the lives if None).
     group_window: by_group speaks of this window (0 the first) instead of the whole horizon.
     also_groups: further labels of every position, answered in by_also. stretch: (first, last) edge of windows; totals,
     groups and windows speak of what lies between them, in one pass. parts_by_window: False leaves the windows'
@@ -139,21 +144,42 @@ def forecast_counts(
         raise InvalidArgument(f"group_window is {group_window}; there are {len(edges) - 1} windows, counted from 0.")
     if not 0 <= taken_share <= 1:
         raise InvalidArgument(f"taken_share is {taken_share:g}; it must lie between 0 and 1.")
-    spans = _spans(edges, stretch)
+    whole, spans = _spans(edges, stretch)
     plan = Plan(
         grouped=0 if group_window is None else group_window + 1,
         groupings=1 + len(also_groups),
         windows=() if windows is None else _told_windows(windows, stretch),
         parts_by_window=parts_by_window,
     )
-    tallies = Tallies(rows, len(spans), plan)
+    tallies = Tallies(rows, plan)
+    told = whole[None] if group_window is None else np.stack([whole, spans[group_window]])
     coarse = rows.coarse() if len(rows) > FEW_ROWS else rows
     coarse = coarse if len(coarse) < 0.7 * len(rows) else rows
-    for chunk, share in _chunks(rows, sharpness):
+    some, shares = np.arange(draws), np.ones(draws)
+    if counted_draws is not None and counted_draws < draws and len(rows):
+        expected, further = expected_by_site(rows, drawn, duty, whole), shapes_and_scales(drawn, _used_designs(rows))
+        some, shares = spoken_for(expected, counted_draws, further=further)
+    for places, share in _chunks(rows, sharpness[some], shares):
+        chunk = some[places]
         chosen = coarse if _are_rare(rows, drawn, duty, chunk) else rows
         sharp = float(np.quantile(sharpness[chunk], 0.9))
-        blocks = _blocks(chosen, sharp, (edges, spans), cells, (refit_delay, taken_share))
-        _add_draws(tallies.each_for(share), blocks, drawn, roles.later is not None, duty, chunk)
+        blocks = _blocks(chosen, sharp, edges, cells, (refit_delay, taken_share))
+        if not blocks:
+            tallies.add_nothing(chunk.size)
+            continue
+        lives = [_lives(block, told, drawn, roles.later is not None, duty, chunk) for block in blocks]
+        weights = np.concatenate([block.rows.weights for block in blocks], axis=1)
+        means = np.zeros(chunk.size)
+        for kind in tallies.kinds:
+            targets = _side_by_side(lives, kind)
+            tallies.add(kind, targets, weights, share)
+            means += targets[0].sum(axis=2) @ weights[-1] if kind == "failures" else 0.0
+        if plan.windows:
+            thinned = some.size < draws and some.size <= MANY_DRAWS
+            few, stand_for = _representatives(means, share, some.size) if thinned else (np.arange(chunk.size), share)
+            lives = [each.within(spans, few) for each in lives]
+            for kind in tallies.window_kinds:
+                tallies.add_windows(kind, _side_by_side(lives, kind), weights, stand_for)
     return tallies.forecast(rows, draws)
 
 
@@ -208,15 +234,15 @@ def _used_designs(rows: Rows) -> IntArray:
     return used if used.size else np.zeros(1, dtype=np.int64)
 
 
-def _spans(edges: FloatArray, stretch: tuple[int, int] | None) -> FloatArray:
-    """(begin, end) of what is counted, as shares of the horizon: the whole (or the stretch), then its windows."""
+def _spans(edges: FloatArray, stretch: tuple[int, int] | None) -> tuple[FloatArray, FloatArray]:
+    """(begin, end) of what is counted, as shares of the horizon: the whole (or the stretch) (2,), and its windows."""
     if edges.size == 1 and stretch is None:
-        return np.array([[0.0, 1.0]])
+        return np.array([0.0, 1.0]), np.zeros((0, 2))
     first, last = (0, edges.size - 1) if stretch is None else stretch
     if not 0 <= first < last <= edges.size - 1:
         raise InvalidArgument(f"stretch is {stretch}; it must name two edges of the windows, the first one first.")
     own = np.stack([edges[first:last], edges[first + 1 : last + 1]], axis=1)
-    return np.concatenate([[[edges[first], edges[last]]], own])
+    return np.array([edges[first], edges[last]]), own
 
 
 def _told_windows(windows: Sequence[float], stretch: tuple[int, int] | None) -> tuple[tuple[float, float], ...]:
@@ -233,11 +259,11 @@ def _label_tuples(groups: Sequence[Any] | None, also: Sequence[Sequence[Any]]) -
 def _blocks(
     rows: Rows,
     sharpness: float,
-    times: tuple[FloatArray, FloatArray],
+    edges: FloatArray,
     cells: int | None,
     settings: tuple[float, float],
 ) -> list[Block]:
-    (edges, spans), (refit_delay, taken_share) = times, settings
+    refit_delay, taken_share = settings
     classes = rows.classes
     at_visits = classes.visit_every > 0
     blocks = []
@@ -246,12 +272,12 @@ def _blocks(
         some = ~at_visits & (np.isfinite(classes.replace_at) == planned)
         if some.any():
             number = cells or _cell_count(float(classes.horizon[some].max()), sharpness, edges)
-            blocks.append(Block(MidpointGrid(number, refit_delay), rows.of_classes(some), spans, taken_share))
+            blocks.append(Block(MidpointGrid(number, refit_delay), rows.of_classes(some), taken_share))
     if at_visits.any():
         some = rows.of_classes(at_visits)
         seen = (some.classes.horizon - some.classes.visit_next) / some.classes.visit_every
         most = max(int(np.floor(seen.max() + 1e-9)) + 1, 1)
-        blocks.append(Block(VisitGrid(most), some, spans, taken_share))
+        blocks.append(Block(VisitGrid(most), some, taken_share))
     return blocks
 
 
@@ -267,7 +293,7 @@ def _cell_count(horizon: float, sharpness: float, edges: FloatArray) -> int:
     return MOST_CELLS
 
 
-def _chunks(rows: Rows, sharpness: FloatArray) -> list[tuple[IntArray, float]]:
+def _chunks(rows: Rows, sharpness: FloatArray, shares: FloatArray) -> list[tuple[IntArray, FloatArray]]:
     """Draws of like lives together, and how many draws each stands for.
 
     Most draws need few cells and orders; arrays stay within some tens of megabytes. Weak records leave draws with
@@ -283,8 +309,8 @@ def _chunks(rows: Rows, sharpness: FloatArray) -> list[tuple[IntArray, float]]:
         mine = order[start:stop][thinning // 2 :: thinning]
         work = max(len(rows), 12 * len(rows.classes), 1) * 2.0 * cells[stop - 1]
         size = int(np.clip(1.2e6 / work, 1, mine.size))
-        share = (stop - start) / mine.size
-        chunks += [(mine[first : first + size], share) for first in range(0, mine.size, size)]
+        share = shares[mine] * (shares[order[start:stop]].sum() / shares[mine].sum())
+        chunks += [(mine[first : first + size], share[first : first + size]) for first in range(0, mine.size, size)]
     return chunks
 
 
@@ -311,22 +337,26 @@ def _are_rare(rows: Rows, drawn: DesignDraws, duty: FloatArray, chunk: IntArray)
     return bool(most < _RARE_HAZARD)
 
 
-def _add_draws(
-    tallies: Tallies, blocks: list[Block], drawn: DesignDraws, switched: bool, duty: FloatArray, chunk: IntArray
-) -> None:
-    worked = []
-    for block in blocks:
-        classes = block.rows.classes
-        running, fitted = (drawn.hazards(chunk, design, classes) for design in (classes.running, classes.fitted))
-        later = drawn.hazards(chunk, classes.later, classes) if switched else None
-        worked.append(BlockTails(block, running, fitted, later, duty[chunk][:, classes.site]))
-    weights = [block.rows.weights for block in blocks]
-    for kind in tallies.kinds:
-        targets = tallies.targets(kind)
-        for number, parts in enumerate(zip(*(tails.targets(kind, targets) for tails in worked), strict=True)):
-            tallies.add(kind, number, _joined(parts), np.concatenate(weights, axis=1))
-    if not worked:
-        tallies.add_nothing(chunk.size)
+def _representatives(means: FloatArray, shares: FloatArray, draws: int) -> tuple[IntArray, FloatArray]:
+    """Some of the draws for the windows, and how many each stands for, with the mean of the totals kept.
+
+    What a single week brings is mostly chance: of what the draws differ in it needs the level, not each site's.
+    """
+    return spoken_for(means[:, None], -(-means.size * WINDOW_DRAWS // draws), shares)
+
+
+def _lives(
+    block: Block, spans: FloatArray, drawn: DesignDraws, switched: bool, duty: FloatArray, chunk: IntArray
+) -> BlockTails:
+    classes = block.rows.classes
+    running, fitted = (drawn.hazards(chunk, design, classes) for design in (classes.running, classes.fitted))
+    later = drawn.hazards(chunk, classes.later, classes) if switched else None
+    return BlockTails(block, spans, running, fitted, later, duty[chunk][:, classes.site])
+
+
+def _side_by_side(lives: list[BlockTails], kind: str) -> list[FloatArray]:
+    """For each target the tails of all rows, (draws, rows, orders)."""
+    return [_joined(parts) for parts in zip(*(each.targets(kind) for each in lives), strict=True)]
 
 
 def _joined(parts: Sequence[FloatArray]) -> FloatArray:
