@@ -44,7 +44,7 @@ benchmark: $(VENV)/test.stamp ## measure and print; nothing is judged by the clo
 	done
 
 clean: ## remove what these commands made, except the book in data/
-	rm -rf $(VENV) staticfiles test-results .ruff_cache .mypy_cache .hypothesis .benchmarks
+	rm -rf $(VENV) staticfiles test-results .ruff_cache .mypy_cache .hypothesis .benchmarks .test-databases
 	find . -name __pycache__ -type d -prune -exec rm -rf {} +
 
 # The stamps are older than a lock that changed, so the libraries are installed again then and only then.

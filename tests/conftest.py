@@ -15,6 +15,8 @@ import hypothesis
 import pytest
 from django.conf import settings
 
+from tests import migrated
+
 CHROMIUM = "/usr/bin/chromium"
 # Playwright's own event loop would make Django refuse every query in a browser test.
 os.environ.setdefault("DJANGO_ALLOW_ASYNC_UNSAFE", "1")
@@ -49,6 +51,20 @@ def pytest_collection_modifyitems(items: list[pytest.Item]) -> None:
 def pytest_unconfigure() -> None:
     if settings.configured and hasattr(settings, "TEST_FOLDER"):
         shutil.rmtree(settings.TEST_FOLDER, ignore_errors=True)
+
+
+@pytest.fixture(scope="session")
+def django_db_modify_db_settings(django_db_modify_db_settings_parallel_suffix: None) -> None:
+    """The test database begins as a copy of one that is migrated already; what is newer is still migrated."""
+    from django.db import connection
+
+    migrated.use_for(connection.settings_dict)
+
+
+@pytest.fixture(scope="session")
+def django_db_keepdb(request: pytest.FixtureRequest) -> bool:
+    """On SQLite the copy is kept as it is; its folder goes with the process."""
+    return not on_postgresql() or bool(request.config.getvalue("reuse_db"))
 
 
 @pytest.fixture(scope="session")
