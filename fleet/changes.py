@@ -7,6 +7,7 @@ from collections import defaultdict
 from collections.abc import Callable, Iterable
 from dataclasses import dataclass
 from typing import Any
+from zoneinfo import ZoneInfo
 
 from django.db import models
 
@@ -37,6 +38,7 @@ from fleet.models import (
     SupplyOrder,
     Visit,
 )
+from fleet.models.book import book_zone
 
 KINDS: dict[str, type[models.Model]] = {
     "visit": Visit,
@@ -113,7 +115,7 @@ def words_of(field: Any, value: Any, names: dict[Any, dict[Any, str]]) -> str:
     if isinstance(value, bool):
         return "yes" if value else "no"
     if isinstance(value, dt.datetime):
-        return f"{moment(value.astimezone(dt.UTC))} UTC"
+        return moment(value.astimezone(ZoneInfo(book_zone())))
     return long_day(value) if isinstance(value, dt.date) else str(value)
 
 

@@ -15,6 +15,7 @@ from django.utils.html import format_html
 from django.utils.safestring import SafeString
 
 from fleet import formats
+from fleet.models.book import book_zone
 from fleet.part_styles import part_style
 
 register = template.Library()
@@ -48,7 +49,13 @@ def shown(value: Any, zone: str = "") -> Any:
     """An instant in the named zone (a site's), else in the zone in force; a day stays the day it is."""
     if not isinstance(value, dt.datetime) or timezone.is_naive(value):
         return value
-    return timezone.localtime(value, ZoneInfo(zone) if zone else None)
+    return timezone.localtime(value, ZoneInfo(zone) if zone else zone_in_force())
+
+
+def zone_in_force() -> dt.tzinfo:
+    """That of the surrounding `{% timezone %}`, else the book's own: the office reads its own clock, not UTC."""
+    chosen = getattr(timezone._active, "value", None)  # unset unless somebody chose a zone, be it UTC
+    return chosen or ZoneInfo(book_zone())
 
 
 @register.filter

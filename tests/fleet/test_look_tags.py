@@ -14,6 +14,7 @@ from django.template import Context, Template
 from django.test import RequestFactory
 
 from fleet.formats import FIXED
+from tests.factories import make_book
 
 
 def write(source: str, address: str = "/modules/", **context: Any) -> str:
@@ -40,6 +41,15 @@ def test_an_instant_is_shown_in_the_zone_of_its_site() -> None:
     at = dt.datetime(2026, 6, 30, 23, 30, tzinfo=dt.UTC)
     assert write('{{ at|moment:"Europe/Oslo" }}', at=at) == "1 July 2026, 01:30"
     assert write('{{ at|day_in:"America/New_York" }}', at=at).startswith("30 Jun")
+
+
+@pytest.mark.django_db
+def test_an_instant_of_no_site_is_shown_by_the_books_clock_and_never_against_a_chosen_zone() -> None:
+    make_book(zone="Europe/Amsterdam")
+    at = dt.datetime(2024, 1, 21, 23, 30, tzinfo=dt.UTC)
+    assert write("{{ at|moment }} {{ at|long_day }}", at=at) == "22 January 2024, 00:30 22 January 2024"
+    chosen = "{% load tz %}{% timezone 'UTC' %}{{ at|moment }}{% endtimezone %}"
+    assert write(chosen, at=at) == "21 January 2024, 23:30"
 
 
 @pytest.mark.parametrize("kind", ["object", "mapping"])
