@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
-from fleet.actions.base import change, sees
+from fleet.actions.base import change, lock_module, sees
 from fleet.actions.checks_places import Places
 from fleet.actions.checks_rights import module_of
 from fleet.actions.checks_values import clean_text
@@ -23,7 +23,7 @@ def say_looks_wrong(*, by: Person, record: Any, word: str) -> LooksWrong:
     with change(by=by, right=REPORT, raises_version=False):
         if not sees(by, record):
             raise NotAllowed("This record belongs to a site that is none of yours. Ask your planner.")
-        module = record if isinstance(record, Module) else module_of(record)
+        module = lock_module(record if isinstance(record, Module) else module_of(record))  # said twice at once, too
         waiting = LooksWrong.objects.waiting().filter(kind=kind, record=record.pk, said_by=by, word=word).first()
         if waiting is not None:
             return waiting

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
+from django.db import transaction
 from django.http import HttpResponse
 from django.shortcuts import get_object_or_404, redirect, render
 from django.urls import reverse
@@ -56,9 +57,12 @@ def export(request: Any) -> HttpResponse:
 
 @needs(CATALOGUE)
 @require_POST
+@transaction.atomic
 def confirm_import(request: Any, work_id: Any) -> HttpResponse:
     """Brings in exactly what the preview showed: the same file, and only if it still comes to the same."""
-    preview = get_object_or_404(request.seen(Work), pk=work_id, kind="preview_records", state=WorkState.DONE)
+    # Sent twice at one moment, the second waits here and finds what the first began.
+    previews = request.seen(Work).select_for_update(of=("self",))
+    preview = get_object_or_404(previews, pk=work_id, kind="preview_records", state=WorkState.DONE)
     file = preview.files.filter(role="input").first()
     if preview.result.get("error_count") or file is None or not request.user.all_sites:
         return redirect("work", work_id=preview.pk)

@@ -6,6 +6,7 @@ import datetime as dt
 from typing import Any
 
 from django.contrib import messages
+from django.db import transaction
 from django.http import HttpResponse, JsonResponse
 from django.http.response import HttpResponseBase
 from django.shortcuts import redirect, render
@@ -58,9 +59,13 @@ def begin(request: Any, form: BacktestForm, chosen: Component) -> HttpResponse:
     if not asked.is_valid():
         context = page(request, form, chosen, latest(chosen), asked)
         return render(request, "forecast/backtest.html", context, status=422)
-    if not on_its_way(works_for(request, chosen)):
-        arguments = {"component": chosen.code, "quarters": asked.cleaned_data["quarters"]}
-        enqueue(ASKED, f"Judging past forecasts: {chosen.title}", arguments, request.user)
+    with transaction.atomic():
+        request.seen(Component).select_for_update(of=("self",), no_key=True).get(pk=chosen.pk)
+        begun = not on_its_way(works_for(request, chosen))
+        if begun:
+            arguments = {"component": chosen.code, "quarters": asked.cleaned_data["quarters"]}
+            enqueue(ASKED, f"Judging past forecasts: {chosen.title}", arguments, request.user)
+    if begun:
         messages.success(request, "Past forecasts are being judged in the background. You may leave this page.")
     return redirect(here(form, chosen))
 
