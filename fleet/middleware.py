@@ -33,13 +33,19 @@ class WriterMiddleware:
 
 
 class RightsMiddleware:
-    """Refuses every view that names no right, and every person who does not hold it."""
+    """Refuses every view that names no right, and every person who does not hold it.
+
+    What somebody is shown is theirs: no proxy on the way may keep it for the next one who asks.
+    """
 
     def __init__(self, get_response: GetResponse) -> None:
         self.get_response = get_response
 
     def __call__(self, request: HttpRequest) -> HttpResponse:
-        return self.get_response(request)
+        answer = self.get_response(request)
+        if request.user.is_authenticated and not answer.has_header("Cache-Control"):
+            answer["Cache-Control"] = "private"
+        return answer
 
     def process_view(self, request: Any, view: Callable[..., Any], args: Any, kwargs: Any) -> HttpResponse | None:
         right = getattr(view, "right", None)

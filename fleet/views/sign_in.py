@@ -51,7 +51,9 @@ def way_on(request: HttpRequest) -> str:
 def sign_out(request: HttpRequest) -> HttpResponse:
     logout(request)
     messages.info(request, "You are signed out on this device.")
-    return redirect("sign_in")
+    answer = redirect("sign_in")
+    answer["Clear-Site-Data"] = '"cache"'  # “Back” on a shared tablet shows no page of whoever had it before
+    return answer
 
 
 @needs(PUBLIC)

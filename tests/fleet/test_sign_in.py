@@ -65,7 +65,9 @@ def test_a_closed_account_does_not_get_in(client, ada):
 def test_leaving_takes_a_post(client, ada):
     client.force_login(ada)
     assert client.get(reverse("sign_out")).status_code == 405
-    assert client.post(reverse("sign_out")).url == reverse("sign_in")
+    signed_out = client.post(reverse("sign_out"))
+    assert signed_out.url == reverse("sign_in")
+    assert signed_out["Clear-Site-Data"] == '"cache"'
     assert "_auth_user_id" not in client.session
 
 
