@@ -40,7 +40,8 @@ def moves(scope: Scope) -> Rows:
 def bench(scope: Scope) -> Rows:
     yield from plain(
         scope.jobs().order_by("received_on", "code_order"), "code", "module__code", "depot__code", "reason",
-        "received_on", "stage", "started_on", "finished_on", "outcome", "note",
+        "received_on", "stage", "started_on", "finished_on", "outcome", "waits_for__code",
+        "note",
     )  # fmt: skip
 
 

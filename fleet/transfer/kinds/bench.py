@@ -42,6 +42,8 @@ def settle_stage(row: Row) -> None:
         row.say("outcome", f"is missing: the job is finished. Write one of: {', '.join(Outcome.values)}.")
     if not ended and row["outcome"]:
         row.say("outcome", "is given, yet finished_on is empty. Enter the day it ended, or leave both empty.")
+    if row["waits_for_id"] is not None and row["stage"] != Stage.WAITING_FOR_PARTS:
+        row.say("waits_for", f"names a part, yet the stage is {row['stage']}. Write “waiting for parts”, or no part.")
 
 
 def settle_depot(row: Row, known: Known) -> None:
@@ -97,6 +99,7 @@ BENCH = FileKind(
         Column("started_on", "started_on", cells.day),
         Column("finished_on", "finished_on", cells.day),
         Column("outcome", "outcome", cells.one_of(*Outcome.values), empty=""),
+        Column("waits_for", "waits_for_id", cells.code, refers="part"),
         Column("note", "note", cells.text_up_to(4000), empty=""),
     ),
     key=("code",),

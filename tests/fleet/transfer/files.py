@@ -94,8 +94,8 @@ PO-1,N-1,10,2024-02-01,2024-02-20,Brandt,11.50
 PO-1,S-1,2,2024-02-01,,Brandt,
 PO-2,N-1,5,2024-05-02,2024-06-02,Brandt,""",
     "bench": """
-job,module,depot,reason,received_on,stage,started_on,finished_on,outcome,note
-J-1,K-9,SHED,screw bowed,2024-06-01,,2024-06-03,2024-06-28,ready,""",
+job,module,depot,reason,received_on,stage,started_on,finished_on,outcome,waits_for,note
+J-1,K-9,SHED,screw bowed,2024-06-01,,2024-06-03,2024-06-28,ready,,""",
     "hours": """
 job,person,day,hours
 J-1,MAX,2024-06-03,2.5

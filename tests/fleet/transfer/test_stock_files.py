@@ -157,6 +157,8 @@ WRONG = [
     ("bench", 2, "outcome", "", "is missing: the job is finished"),
     ("bench", 2, "stage", "waiting", "do not agree"),
     ("bench", 2, "started_on", "2024-05-31", "lies before the day it was received"),
+    ("bench", 2, "waits_for", "N-2", "yet the stage is finished"),
+    ("bench", 2, "waits_for", "N-9", "Add it to parts.csv"),
     ("hours", 2, "job", "J-9", "Add the job to bench.csv"),
     ("hours", 2, "day", "2024-07-09", "lies after the day the job was finished"),
     ("hours", 2, "hours", "25", "out of range"),
@@ -189,8 +191,26 @@ def test_a_wrong_cell_is_named_and_nothing_is_stored(name: str, row: int, column
     assert not Store.objects.exists()
 
 
+def test_the_part_that_a_job_waits_for_comes_in_goes_out_and_stays_where_a_file_says_nothing(tmp_path: Path) -> None:
+    home = "K-10,WEIR,B2,2024-01-10,"
+    placements = text("placements").replace(home, f"{home}2024-07-01\nK-10,SHED,,2024-07-01,")
+    bench = "job,module,received_on,stage,waits_for\nJ-7,K-10,2024-07-02,waiting for parts,N-2\n"
+    files = stocked(placements=placements, bench=bench, fittings=text("fittings"), hours=None, moves=None)
+    assert bring_in(tmp_path, files).state == "done"
+    job = BenchJob.objects.get()
+    assert job.waits_for.code == "N-2"
+    assert [(row["job"], row["waits_for"]) for row in exported(tmp_path)["bench"]] == [("J-7", "N-2")]
+    untold = "job,module,received_on,stage,note\nJ-7,K-10,2024-07-02,waiting for parts,asked the supplier\n"
+    assert bring_in(tmp_path, {"bench": untold}, update=True).state == "done"
+    job.refresh_from_db()
+    assert (job.note, job.waits_for.code) == ("asked the supplier", "N-2")
+    assert bring_in(tmp_path, {"bench": bench.replace("N-2", "N-1")}, update=True).state == "done"
+    job.refresh_from_db()
+    assert job.waits_for.code == "N-1"
+
+
 def test_nobody_works_more_than_a_day() -> None:
-    bench = text("bench").replace("2024-06-28", "2024-06-10") + "J-2,K-9,SHED,,2024-06-10,,,2024-06-28,ready,\n"
+    bench = text("bench").replace("2024-06-28", "2024-06-10") + "J-2,K-9,SHED,,2024-06-10,,,2024-06-28,ready,,\n"
     hours = text("hours") + "J-1,MAX,2024-06-10,13\nJ-2,MAX,2024-06-10,12\n"
     [(file, row, column, message)] = problems(stocked(bench=bench, hours=hours))
     assert (file, row, column) == ("hours.csv", 5, "hours")
@@ -198,7 +218,7 @@ def test_nobody_works_more_than_a_day() -> None:
 
 
 def test_jobs_of_a_module_do_not_overlap() -> None:
-    bench = text("bench") + "J-2,K-9,SHED,,2024-06-10,,,2024-06-30,ready,\n"
+    bench = text("bench") + "J-2,K-9,SHED,,2024-06-10,,,2024-06-30,ready,,\n"
     [(file, row, _, message)] = problems(stocked(bench=bench))
     assert (file, row) == ("bench.csv", 3)
     assert "overlaps another job of this module" in message
