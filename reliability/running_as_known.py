@@ -15,8 +15,10 @@ from typing import Any
 
 from fleet.clock_records import Loaded
 from fleet.clocks import Knot, ModuleClocks, SpanClock, Stay
+from fleet.models import Clock
 from reliability.lives_as_known import modules_as_known
 
+LAST_OF_DAY = 0.999
 Row = dict[str, Any]
 Places = Mapping[int, tuple[str, str]]  # code and kind of each site
 
@@ -41,10 +43,17 @@ def _runs(span: SpanClock, removed_day: int | None, as_of: int) -> bool:
     return (span.fitted_day is None or span.fitted_day <= as_of) and (removed_day is None or removed_day > as_of)
 
 
+def moment_of(as_of: dt.date, clock: str) -> float:
+    """Where a module's clock is read for a day: a count with the readings of that very day, for the pace goes by those
+    of the past weeks and not by the stretch that the last one ends, which may be hours long.
+    """
+    return as_of.toordinal() + (0.0 if clock == Clock.DAYS else LAST_OF_DAY)
+
+
 def _module_row(loaded: Loaded, clocks: ModuleClocks, places: Places, clock: str, as_of: dt.date) -> Row:
     """Where the module stands on the day, and its clock on both sides of it."""
     day, record = as_of.toordinal(), loaded.record
-    place = bisect_right(clocks.knots, float(day), key=lambda knot: knot.day)
+    place = bisect_right(clocks.knots, moment_of(as_of, clock), key=lambda knot: knot.day)
     before = clocks.knots[place - 1] if place else None
     after = clocks.knots[place] if place < len(clocks.knots) else None
     stay = _stay_on(record.stays, day)

@@ -16,7 +16,7 @@ from django.utils import timezone
 from fleet.formats import counted
 from fleet.models import ClockPoint, Component, Fitting, Part, PartState, Placement, Site, SiteKind
 from reliability.forecasts.modules_ahead import NEVER, Arrival, ModulesAhead, modules_ahead
-from reliability.running_as_known import running_as_known
+from reliability.running_as_known import moment_of, running_as_known
 
 NO_PLACE = "no place"
 LATELY_DAYS = 120
@@ -137,8 +137,9 @@ def _fitted(component: Component, as_of: dt.date) -> Any:
     """Fittings running on the day, the module's clock on both sides of it, and where the module stands."""
     clock = component.clock
     knots = ClockPoint.objects.filter(module=OuterRef("module_id"))
-    before = knots.filter(day__lte=as_of.toordinal()).order_by("-day")
-    after = knots.filter(day__gt=as_of.toordinal()).order_by("day")
+    moment = moment_of(as_of, clock)
+    before = knots.filter(day__lte=moment).order_by("-day")
+    after = knots.filter(day__gt=moment).order_by("day")
     stay = Placement.objects.on(as_of).filter(module=OuterRef("module_id"))
     first = Placement.objects.standing().filter(module=OuterRef("module_id")).order_by("from_on")
     return (

@@ -127,9 +127,9 @@ def _spread(row: RunningRow, question: Question, learned: Learned) -> Iterator[t
     use = 1.0 if days else question.what_if.duty * learned.duty.factor(question.span)
     pace = row.a_day * learned.standing.share(row.site) * use
     shift = question.shift
-    # ages speak of the end of the as-of day, the count of the morning on which it starts; on the day's clock lives that
-    # failed were shortened by half a day, on the others they were not
-    aged_since = shift - (1.0 if days else 0.5)
+    # ages in days speak of the end of the as-of day, on the other clocks of its morning; the count of the morning on
+    # which it starts
+    aged_since = shift - (1.0 if days else 0.0)
     rule, by_days = _rule(row, question, learned)
     place = Place(
         site=row.site,

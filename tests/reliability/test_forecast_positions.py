@@ -63,12 +63,12 @@ def test_paces_of_few_sites_stay_near_their_own() -> None:
 
 @pytest.mark.parametrize(
     ("clock", "a_day", "first", "expected"),
-    [("days", 1.0, 1, 40.0), ("days", 1.0, 4, 43.0), ("strokes", 80.0, 1, 40.5 * 80)],
+    [("days", 1.0, 1, 40.0), ("days", 1.0, 4, 43.0), ("strokes", 80.0, 1, 41.0 * 80)],
 )
-def test_a_part_is_as_old_on_the_first_morning_as_on_the_evening_before(
+def test_a_part_is_as_old_as_the_first_morning_finds_it(
     clock: Clock, a_day: float, first: int, expected: float
 ) -> None:
-    """Whole days end with the day; on another clock a part that went in on a day had half of it."""
+    """Whole days end with the day; a count is told of the morning of the as-of day."""
     today = dt.date(2026, 3, 2)
     life = KeptDraws.of(KnownWeibull(2.0, 9000.0), 1, np.random.default_rng(1))
     learned = Learned(

@@ -158,6 +158,21 @@ def test_strokes_come_from_readings_and_the_pace_from_the_last_of_them() -> None
     assert row.a_day == pytest.approx(500, rel=0.02)
 
 
+@pytest.mark.parametrize("known_on", [None, day(AS_OF)])
+def test_a_reading_of_the_day_itself_makes_no_pace_of_a_few_hours(known_on: dt.date | None) -> None:
+    """500 a day for weeks; the counter read yesterday evening and again at noon, in between nobody worked."""
+    fleet = SmallFleet(clock="strokes")
+    module = fleet.module("M-1", fleet.site())
+    for at in (100, 120, 150, 180, 199.9):
+        fleet.read(module, at, strokes=int(at * 500))
+    fleet.read(module, 200.5, strokes=int(199.9 * 500))
+    fleet.fit(module, 180)
+    rebuild_clocks()
+    (row,) = running_parts(fleet.component, as_of=day(AS_OF), known_on=known_on).rows
+    assert row.a_day == pytest.approx(500, rel=0.02)
+    assert row.age == pytest.approx(19.5 * 500, rel=0.05)
+
+
 def test_a_module_without_readings_takes_the_pace_of_its_site() -> None:
     fleet = SmallFleet("strokes")
     site = fleet.site(strokes_per_day=400)
