@@ -26,7 +26,8 @@ def as_written(value: Any) -> Any:
     return number(value, 0) if value == round(value) else f"{value:.10g}"
 
 
-NEEDED = "Nothing is entered here, and it is needed. Enter it."
+NEEDED = "This is empty, and it is needed. Enter it."
+NOT_CHOSEN = "Nothing is chosen here. Choose one of the list."
 NO_WHOLE_NUMBER = "This is no whole number. Write it like 12."
 NO_NUMBER = "This is no number. Write it like 2.5."
 NO_CHOICE = "This is not among the choices. Choose one of the list."
@@ -48,9 +49,9 @@ def speak_plainly() -> None:
         forms.IntegerField: {"invalid": NO_WHOLE_NUMBER},
         forms.FloatField: {"invalid": NO_NUMBER},
         forms.DecimalField: {"invalid": NO_NUMBER},
-        forms.ChoiceField: {"invalid_choice": NO_CHOICE},
-        forms.ModelChoiceField: {"invalid_choice": NO_CHOICE},
-        forms.ModelMultipleChoiceField: {"invalid_choice": NO_CHOICE},
+        forms.ChoiceField: {"invalid_choice": NO_CHOICE, "required": NOT_CHOSEN},
+        forms.ModelChoiceField: {"invalid_choice": NO_CHOICE, "required": NOT_CHOSEN},
+        forms.ModelMultipleChoiceField: {"invalid_choice": NO_CHOICE, "required": NOT_CHOSEN},
     }
     for kind, words in said.items():
         kind.default_error_messages = {**kind.default_error_messages, **words}
