@@ -15,7 +15,6 @@ from typing import Any
 
 from fleet.clock_records import Loaded
 from fleet.clocks import Knot, ModuleClocks, SpanClock, Stay
-from fleet.models import Clock
 from reliability.lives_as_known import modules_as_known
 
 LAST_OF_DAY = 0.999
@@ -47,7 +46,7 @@ def moment_of(as_of: dt.date, clock: str) -> float:
     """Where a module's clock is read for a day: a count with the readings of that very day, for the pace goes by those
     of the past weeks and not by the stretch that the last one ends, which may be hours long.
     """
-    return as_of.toordinal() + (0.0 if clock == Clock.DAYS else LAST_OF_DAY)
+    return as_of.toordinal() + (0.0 if clock == "days" else LAST_OF_DAY)
 
 
 def _module_row(loaded: Loaded, clocks: ModuleClocks, places: Places, clock: str, as_of: dt.date) -> Row:
