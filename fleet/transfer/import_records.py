@@ -24,7 +24,7 @@ from fleet.transfer.matching import compare, find_repeats, match
 from fleet.transfer.orders import check_orders, drop_unused
 from fleet.transfer.problems import Problems, Unreadable
 from fleet.transfer.reading import stage_file
-from fleet.transfer.references import check_causes, check_supersession
+from fleet.transfer.references import check_causes, check_ranks, check_supersession
 from fleet.transfer.refresh import refresh
 from fleet.transfer.replacements import check_new_parts, check_once_a_component
 from fleet.transfer.signature import note_touched_modules, signature
@@ -151,7 +151,9 @@ def check_together(job: Job) -> None:
     """What rows say about each other, and against the book."""
     for kind in job.kinds:
         job.step(0, f"Checking {kind.file}")
-        if kind.name == "parts":
+        if kind.name == "people":
+            check_ranks(kind, job)
+        elif kind.name == "parts":
             check_supersession(kind, job)
         elif kind.name == "redesigns":
             check_new_parts(kind, job)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
+from fleet.models import Role
 from fleet.transfer.columns import FileKind
 from fleet.transfer.job import Job
 from fleet.transfer.staging import as_day, fetch, index_stage, run
@@ -85,3 +86,27 @@ def check_causes(kind: FileKind, job: Job) -> None:
 
 def before(end: Any, start: Any) -> bool:
     return end is not None and start is not None and as_day(end) < as_day(start)
+
+
+RANKS = """
+SELECT mine.row, mine.role, mine.is_active, mine.name, mine.all_sites, book.id, book.role, book.is_active, book.name,
+       book.all_sites
+FROM stage_people AS mine LEFT JOIN fleet_person AS book ON book.id = mine.id
+WHERE mine.bad = 0 ORDER BY mine.row
+"""
+
+
+def check_ranks(kind: FileKind, job: Job) -> None:
+    """As on the page of people: a manager makes and changes no administrator, and nobody locks themselves out."""
+    by = job.person
+    if by is None:
+        return
+    for row, role, active, name, everywhere, pk, role_now, active_now, name_now, everywhere_now in fetch(RANKS):
+        said = (role, bool(active), name, bool(everywhere))
+        now = (role_now, bool(active_now), name_now, bool(everywhere_now))
+        if pk is not None and said == now:
+            continue
+        if by.role != Role.ADMINISTRATOR and Role.ADMINISTRATOR in (role, role_now):
+            job.say(kind, row, "role", role, "is made and changed by an administrator only. Leave this row out.")
+        elif pk == by.pk and said[:2] != now[:2]:
+            job.say(kind, row, "role", role, "would change what you may do yourself. Ask another manager.")

@@ -15,6 +15,7 @@ from fleet.models import (
     Finding,
     Fitting,
     FittingClock,
+    KeptFile,
     LifeSet,
     Module,
     Part,
@@ -28,7 +29,9 @@ from fleet.models import (
 )
 from fleet.models.codes import natural_key, validate_code
 from fleet.transfer.made_visits import made_code
-from tests.fleet.transfer.files import bring_in, fleet, look, problems, text, with_cell
+from fleet.work import run_here
+from tests.factories import make_manager, make_person
+from tests.fleet.transfer.files import bring_in, fleet, look, problems, text, with_cell, zipped
 
 pytestmark = pytest.mark.django_db
 
@@ -176,6 +179,32 @@ def test_update_overwrites_with_history_and_version(tmp_path: Path) -> None:
     anna = Person.objects.get(code="ANNA")
     assert anna.all_sites
     assert not anna.sites.exists()
+
+
+@pytest.mark.parametrize(
+    ("row", "words"),
+    [
+        ("NEW,New,administrator,all,yes", "by an administrator only"),
+        ("ROOT,Root,administrator,all,no", "by an administrator only"),
+        ("ROOT,Root,crew,,yes", "by an administrator only"),
+        ("MONA,Mona,administrator,all,yes", "by an administrator only"),
+        ("MONA,Mona,crew,all,yes", "Ask another manager"),
+        ("MONA,Mona,manager,all,no", "Ask another manager"),
+        ("ROOT,Root,administrator,all,yes", ""),
+        ("MONA,Mona,manager,all,yes", ""),
+        ("NEW,New,manager,all,yes", ""),
+    ],
+)
+def test_a_file_gives_a_manager_no_more_than_the_page_of_people(row: str, words: str) -> None:
+    mona = make_manager(code="MONA", name="Mona")
+    make_person(role="administrator", code="ROOT", name="Root")
+    content = zipped({"people": f"person,name,role,sites,active\n{row}\n"})
+    other = make_person(role="administrator")
+    for by, refused in ((mona, bool(words)), (other, False)):
+        work = Work.objects.create(kind="preview_records", person=by, arguments={"update": True})
+        KeptFile.objects.create(work=work, role="input", name="people.zip", content=content)
+        outcome = run_here(work).result
+        assert [words in each["message"] for each in outcome.get("errors", [])] == [True] * refused
 
 
 def test_update_may_strike_out_but_not_undo_it(tmp_path: Path) -> None:
