@@ -5,13 +5,11 @@ from __future__ import annotations
 import uuid
 from typing import Any
 
-from fleet.actions.base import change, once
 from fleet.actions.checks_values import clean_number, clean_text
 from fleet.actions.errors import BadValue, ChangedCount
-from fleet.actions.ledger import check_store, fresh_part, locked_balances, post, today_at
+from fleet.actions.ledger import check_store, fresh_part, locked_balances, post_once, today_at
 from fleet.formats import counted as in_words
 from fleet.models import Condition, MoveKind, Part, Person, StockMove, Store
-from fleet.rights import STOCK
 
 
 def count_stock(
@@ -30,34 +28,29 @@ def count_stock(
 
     A count that agrees is kept too, with a difference of nothing: it says when somebody last looked.
     """
-    said = (store, part, counted, reason, condition, code)
-    with (
-        change(by=by, right=STOCK, raises_version=False),
-        once(entry_key, by=by, verb="count_stock", said=said) as answer,
-    ):
-        if "move" in answer:
-            return StockMove.objects.get(pk=answer["move"])
+
+    def move() -> StockMove:
         check_store(store, by)
         count = whole(counted)
-        reason = clean_text(reason, field="reason", longest=500, words="The reason")
+        why = clean_text(reason, field="reason", longest=500, words="The reason")
         key = (store.pk, fresh_part(part).pk, condition)
         on_hand = locked_balances([key])[key].on_hand
         if expected is not None and expected != on_hand:
             raise ChangedCount(part=part.code, expected=expected, on_hand=on_hand)
         difference = count - on_hand
-        if difference and not reason:
+        if difference and not why:
             raise BadValue(
                 f"{in_words(count, 'piece')} counted, {on_hand} on record. Say in a few words where the difference "
                 "comes from, or that nobody knows.",
                 field="reason",
             )
-        move = StockMove(
+        return StockMove(
             store=store, part=part, quantity=difference, kind=MoveKind.COUNT, happened_on=today_at(store),
-            condition=condition, reason=reason,
+            condition=condition, reason=why,
         )  # fmt: skip
-        post(move, by=by, code=code)
-        answer["move"] = move.pk
-    return move
+
+    said = (store, part, counted, reason, condition, code)
+    return post_once(move, by=by, verb="count_stock", said=said, entry_key=entry_key, code=code)
 
 
 def whole(counted: Any) -> int:

@@ -3,18 +3,20 @@
 from __future__ import annotations
 
 import datetime as dt
-from collections.abc import Iterable
+import uuid
+from collections.abc import Callable, Iterable
 from typing import Any
 
 from django.utils import timezone
 
-from fleet.actions.base import sees
+from fleet.actions.base import change, once, sees
 from fleet.actions.checks_values import choose, clean_number, need_day
 from fleet.actions.errors import BadValue, NotAllowed, NotEnough, day_words
 from fleet.actions.strike import strike
 from fleet.actions.writes import add
 from fleet.models import Book, Condition, MoveKind, Part, Person, StockBalance, StockMove, Store
 from fleet.models.zones import zone
+from fleet.rights import STOCK
 
 Key = tuple[int, int, str]  # store, part, condition
 
@@ -71,6 +73,27 @@ def post(move: StockMove, *, by: Person | None, code: str | None = None) -> Stoc
     add(move, code=code, prefix="SM")
     if move.kind == MoveKind.COUNT:
         note_count(move, balances)
+    return move
+
+
+def post_once(
+    make: Callable[[], StockMove],
+    *,
+    by: Person | None,
+    verb: str,
+    said: Any,
+    entry_key: uuid.UUID | None,
+    code: str | None,
+) -> StockMove:
+    """One move by who may move stock, all of it or nothing; the same submission again gives the move of before."""
+    with (
+        change(by=by, right=STOCK, raises_version=False),
+        once(entry_key, by=by, verb=verb, said=said) as answer,
+    ):
+        if "move" in answer:
+            return StockMove.objects.get(pk=answer["move"])
+        move = post(make(), by=by, code=code)
+        answer["move"] = move.pk
     return move
 
 

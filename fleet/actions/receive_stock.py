@@ -8,7 +8,7 @@ from collections.abc import Mapping
 
 from fleet.actions.base import change, once
 from fleet.actions.errors import BadValue, RecordError
-from fleet.actions.ledger import check_store, fresh_part, locked_balances, moved_on, not_before, pieces, post
+from fleet.actions.ledger import check_store, fresh_part, locked_balances, moved_on, not_before, pieces, post_once
 from fleet.formats import counted
 from fleet.models import Condition, MoveKind, Part, Person, StockMove, Store, SupplyLine
 from fleet.rights import STOCK
@@ -28,13 +28,8 @@ def receive_stock(
     code: str | None = None,
 ) -> StockMove:
     """Against a line of a supply order never more than is still to come."""
-    said = (store, quantity, part, line, happened_on, condition, reason, code)
-    with (
-        change(by=by, right=STOCK, raises_version=False),
-        once(entry_key, by=by, verb="receive_stock", said=said) as answer,
-    ):
-        if "move" in answer:
-            return StockMove.objects.get(pk=answer["move"])
+
+    def move() -> StockMove:
         check_store(store, by)
         move = StockMove(
             store=store, part=part, kind=MoveKind.RECEIPT, condition=condition, reason=reason,
@@ -43,9 +38,10 @@ def receive_stock(
         if line is not None:
             take_from_line(move, line)
         fresh_part(move.part if move.part_id else None)
-        post(move, by=by, code=code)
-        answer["move"] = move.pk
-    return move
+        return move
+
+    said = (store, quantity, part, line, happened_on, condition, reason, code)
+    return post_once(move, by=by, verb="receive_stock", said=said, entry_key=entry_key, code=code)
 
 
 def receive_delivery(

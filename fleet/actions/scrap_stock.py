@@ -5,12 +5,10 @@ from __future__ import annotations
 import datetime as dt
 import uuid
 
-from fleet.actions.base import change, once
 from fleet.actions.checks_values import clean_text
 from fleet.actions.errors import BadValue
-from fleet.actions.ledger import check_store, fresh_part, moved_on, pieces, post
+from fleet.actions.ledger import check_store, fresh_part, moved_on, pieces, post_once
 from fleet.models import Condition, MoveKind, Part, Person, StockMove, Store
-from fleet.rights import STOCK
 
 
 def scrap_stock(
@@ -25,21 +23,16 @@ def scrap_stock(
     entry_key: uuid.UUID | None = None,
     code: str | None = None,
 ) -> StockMove:
-    said = (store, part, quantity, reason, happened_on, condition, code)
-    with (
-        change(by=by, right=STOCK, raises_version=False),
-        once(entry_key, by=by, verb="scrap_stock", said=said) as answer,
-    ):
-        if "move" in answer:
-            return StockMove.objects.get(pk=answer["move"])
+
+    def move() -> StockMove:
         check_store(store, by)
-        reason = clean_text(reason, field="reason", longest=500, words="The reason")
-        if not reason:
+        why = clean_text(reason, field="reason", longest=500, words="The reason")
+        if not why:
             raise BadValue("The reason is missing. Say in a few words why they are thrown away.", field="reason")
-        move = StockMove(
+        return StockMove(
             store=store, part=fresh_part(part), quantity=-pieces(quantity), kind=MoveKind.SCRAP,
-            happened_on=moved_on(store, happened_on), condition=condition, reason=reason,
+            happened_on=moved_on(store, happened_on), condition=condition, reason=why,
         )  # fmt: skip
-        post(move, by=by, code=code)
-        answer["move"] = move.pk
-    return move
+
+    said = (store, part, quantity, reason, happened_on, condition, code)
+    return post_once(move, by=by, verb="scrap_stock", said=said, entry_key=entry_key, code=code)

@@ -5,11 +5,9 @@ from __future__ import annotations
 import datetime as dt
 import uuid
 
-from fleet.actions.base import change, once
 from fleet.actions.errors import BadValue
-from fleet.actions.ledger import check_store, fresh_part, moved_on, pieces, post
+from fleet.actions.ledger import check_store, fresh_part, moved_on, pieces, post_once
 from fleet.models import Condition, MoveKind, Part, Person, StockMove, Store
-from fleet.rights import STOCK
 
 
 def transfer_stock(
@@ -26,21 +24,16 @@ def transfer_stock(
     code: str | None = None,
 ) -> StockMove:
     """Out of `store`, into `other_store`."""
-    said = (store, other_store, part, quantity, happened_on, condition, reason, code)
-    with (
-        change(by=by, right=STOCK, raises_version=False),
-        once(entry_key, by=by, verb="transfer_stock", said=said) as answer,
-    ):
-        if "move" in answer:
-            return StockMove.objects.get(pk=answer["move"])
+
+    def move() -> StockMove:
         check_store(store, by)
         check_store(other_store, by, field="other_store")
         if store.pk == other_store.pk:
             raise BadValue(f"{store.title} is both ends of this transfer. Choose another store.", field="other_store")
-        move = StockMove(
+        return StockMove(
             store=store, other_store=other_store, part=fresh_part(part), quantity=-pieces(quantity),
             kind=MoveKind.TRANSFER, happened_on=moved_on(store, happened_on), condition=condition, reason=reason,
         )  # fmt: skip
-        post(move, by=by, code=code)
-        answer["move"] = move.pk
-    return move
+
+    said = (store, other_store, part, quantity, happened_on, condition, reason, code)
+    return post_once(move, by=by, verb="transfer_stock", said=said, entry_key=entry_key, code=code)
