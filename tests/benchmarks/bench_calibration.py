@@ -29,6 +29,8 @@ from tests.benchmarks.calibration_fleets import NEW_SITE, Case, Fleet, make_flee
 
 SCOPES = ("all", "old site", NEW_SITE)
 WEEKS = (1, 7, 13)
+# as reliability/forecasts/count.py has them
+DRAWS, FEW_FAILURES, COUNTED_OF_FEW, COUNTED = 400, 20, 200, 48
 Row = dict[str, list[float]]  # by scope: PIT, CRPS, CRPS of the rival, median, actual, width of the 80 % band
 
 
@@ -39,12 +41,13 @@ def forecast(case: Case, fleet: Fleet, rng: np.random.Generator, *, weeks: bool 
     posterior = life_posterior(fleet.records, site_spread=True, rounded_up_to=1.0)
     unplanned = 0.0 if np.isfinite(case.replace_at) else fleet.removals / fleet.observed_time
     return forecast_counts(
-        KeptDraws.of(posterior, 400, rng),
+        KeptDraws.of(posterior, DRAWS, rng),
         fleet.ages,
         fleet.horizons,
         sites=fleet.sites,
         groups=fleet.sites,
-        draws=400 if fleet.records.failures < 20 else 100 if fleet.records.failures < 200 else 50,
+        draws=DRAWS,
+        counted_draws=COUNTED_OF_FEW if fleet.records.failures < FEW_FAILURES else COUNTED,
         rng=rng,
         other_removals=unplanned,
         visits=fleet.visits,
