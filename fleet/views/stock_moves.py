@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from typing import Any
 
 from django.contrib import messages
@@ -198,31 +199,17 @@ def told(request: Any, move: StockMove, form: MoveForm) -> str:
     return f"{pieces} of {move.part.code} {form.done} {move.store.title}; {left} on hand there now."
 
 
-@needs(STOCK)
-@never_cache
-def receive_stock(request: Any, code: str) -> HttpResponse:
-    return move_view(request, code, ReceiveForm)
+def verb(right: str, form_class: type[MoveForm]) -> Callable[[Any, str], HttpResponse]:
+    @needs(right)
+    @never_cache
+    def view(request: Any, code: str) -> HttpResponse:
+        return move_view(request, code, form_class)
+
+    return view
 
 
-@needs(ISSUE)
-@never_cache
-def issue_part(request: Any, code: str) -> HttpResponse:
-    return move_view(request, code, IssueForm)
-
-
-@needs(STOCK)
-@never_cache
-def count_stock(request: Any, code: str) -> HttpResponse:
-    return move_view(request, code, CountForm)
-
-
-@needs(STOCK)
-@never_cache
-def transfer_stock(request: Any, code: str) -> HttpResponse:
-    return move_view(request, code, TransferForm)
-
-
-@needs(STOCK)
-@never_cache
-def scrap_stock(request: Any, code: str) -> HttpResponse:
-    return move_view(request, code, ScrapForm)
+receive_stock = verb(STOCK, ReceiveForm)
+issue_part = verb(ISSUE, IssueForm)
+count_stock = verb(STOCK, CountForm)
+transfer_stock = verb(STOCK, TransferForm)
+scrap_stock = verb(STOCK, ScrapForm)
