@@ -2,21 +2,26 @@
 
 from __future__ import annotations
 
+import logging
 from collections.abc import Callable
 from typing import Any
 from urllib.parse import urlsplit
 
 from django.contrib.auth.views import redirect_to_login
 from django.core.exceptions import PermissionDenied
+from django.db import OperationalError
 from django.http import HttpRequest, HttpResponse
+from django.shortcuts import render
 from django_htmx.http import HttpResponseClientRedirect
 
+from fleet.actions.base import waited_too_long
 from fleet.carried import carried
 from fleet.history import writing
 from fleet.models.book import zone_read_once
 from fleet.rights import PUBLIC, may, seen_by
 from fleet.views.errors import sign_in_first
 
+log = logging.getLogger(__name__)
 GetResponse = Callable[[HttpRequest], HttpResponse]
 
 
@@ -30,6 +35,15 @@ class WriterMiddleware:
         person = request.user if request.user.is_authenticated else None
         with writing(person=person, source="browser"), zone_read_once():
             return self.get_response(request)
+
+    def process_exception(self, request: HttpRequest, error: Exception) -> HttpResponse | None:
+        """What no action put into words: a sign-in, say, while an import is written on the embedded database."""
+        if not (isinstance(error, OperationalError) and waited_too_long(error)):
+            return None
+        log.exception("A page waited too long for the database.")
+        answer = render(request, "503.html", status=503)
+        answer["Retry-After"] = "60"
+        return answer
 
 
 class RightsMiddleware:

@@ -62,10 +62,14 @@ def told_in_words() -> Iterator[None]:
             "Somebody recorded something here at the same moment. Look at it again, then send yours once more."
         ) from error
     except OperationalError as error:
-        if not any(word in str(error) for word in ("locked", "deadlock")):
+        if not waited_too_long(error):
             raise
         log.exception("A change waited too long.")
         raise Collided("The book was busy for too long, and nothing was recorded. Send it once more.") from error
+
+
+def waited_too_long(error: OperationalError) -> bool:
+    return any(word in str(error) for word in ("locked", "deadlock"))
 
 
 def require(by: Person, right: str) -> None:

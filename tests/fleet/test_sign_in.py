@@ -6,6 +6,7 @@ import datetime as dt
 
 import pytest
 import time_machine
+from django.db import OperationalError
 from django.test import Client
 from django.urls import reverse
 
@@ -136,3 +137,18 @@ def test_changing_the_password_keeps_this_device_and_signs_the_others_out(ada):
 def test_nobody_changes_a_password_without_signing_in(client, ada):
     answer = client.get(reverse("change_password"))
     assert answer.url == f"{reverse('sign_in')}?next={reverse('change_password')}"
+
+
+def test_who_waited_too_long_for_the_database_is_told_so_and_nothing_else_is_hidden(client, ada, monkeypatch):
+    """The embedded database lets one write at a time; a large import may take longer than anybody waits."""
+    for words, status in (("database is locked", 503), ("no such table", 500)):
+
+        def locked(*_: object, words: str = words) -> None:
+            raise OperationalError(words)
+
+        monkeypatch.setattr("fleet.views.sign_in.login", locked)
+        client.raise_request_exception = False
+        answer = enter(client)
+        assert answer.status_code == status
+        assert ("send it again" in answer.content.decode()) is (status == 503)
+        assert answer.has_header("Retry-After") is (status == 503)
