@@ -10,7 +10,7 @@ from itertools import groupby
 from typing import TYPE_CHECKING, Any, NamedTuple
 
 from django.db import connection
-from django.db.models import F, Max, Min
+from django.db.models import F, Max, Min, Q
 
 from fleet.models import ClockPoint, Fitting, Part, Site
 from reliability.fleet_lives import NO_PLACE
@@ -195,17 +195,34 @@ class Duty(NamedTuple):
     measured: bool
 
 
-def module_duties(asked: Asked, clock: str = "strokes") -> dict[str, Duty]:
-    """Strokes (or hours) a day in service of the component's modules up to the as-of day, by the module's number."""
+def module_duties(asked: Asked, clock: str = "strokes", *, of_all: bool = False) -> dict[str, Duty]:
+    """Strokes (or hours) a day in service of the component's modules up to the as-of day, by the module's number.
+
+    of_all: of whatever modules there are; with a million fittings that is quicker than finding the component's own.
+    """
     limit = asked.as_of.toordinal() + 1
-    with_parts = Fitting.objects.standing().filter(part__component=asked.component).values("module")
-    knots = ClockPoint.objects.filter(module__in=with_parts, day__lt=limit, **{f"{clock}__isnull": False})
-    spans = {"least": Min(clock), "most": Max(clock), "since": Min("days"), "until": Max("days")}
+    knots = ClockPoint.objects.filter(day__lt=limit, **{f"{clock}__isnull": False})
+    if not of_all:
+        knots = knots.filter(
+            module__in=Fitting.objects.standing().filter(part__component=asked.component).values("module")
+        )
+    read = Q(**{f"{clock}_read": True})
+    spans = {
+        "least": Min(clock),
+        "most": Max(clock),
+        "since": Min("days"),
+        "until": Max("days"),
+        "least_read": Min(clock, filter=read),
+        "most_read": Max(clock, filter=read),
+        "since_read": Min("days", filter=read),
+        "until_read": Max("days", filter=read),
+    }
     duties: dict[str, Duty] = {}
-    for readings_only in (False, True):
-        chosen = knots.filter(**{f"{clock}_read": True}) if readings_only else knots
-        for row in chosen.values(key=F("module_id")).annotate(**spans).order_by():
-            used = row["until"] - row["since"]
-            if used >= SHORTEST_USE and row["most"] > row["least"]:
-                duties[str(row["key"])] = Duty((row["most"] - row["least"]) / used, readings_only)
+    for row in knots.values(key=F("module_id")).annotate(**spans).order_by():
+        for measured, end in ((False, ""), (True, "_read")):
+            if row[f"until{end}"] is None:
+                continue
+            used = row[f"until{end}"] - row[f"since{end}"]
+            if used >= SHORTEST_USE and row[f"most{end}"] > row[f"least{end}"]:
+                duties[str(row["key"])] = Duty((row[f"most{end}"] - row[f"least{end}"]) / used, measured)
     return duties

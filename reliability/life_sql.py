@@ -72,7 +72,7 @@ def single_lives(question: LifeQuestion) -> Query:
 
 
 def lives_of_positions(question: LifeQuestion) -> Query:
-    """A row a fitting, as `PositionLife` in lives_of_positions.py."""
+    """A row a fitting: what the rules on columns (redesigns/life_columns.py) are held against."""
     text, parameters = _lives(question)
     return (
         f"{text} SELECT module_id, position_id, label, also, left_out, state, entry, duration, last_good, site_id, "

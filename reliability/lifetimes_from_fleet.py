@@ -12,6 +12,7 @@ import datetime as dt
 import math
 from collections import defaultdict
 from collections.abc import Iterable, Mapping, Sequence
+from types import MappingProxyType
 from typing import Any
 
 from django.db import connection
@@ -88,16 +89,27 @@ def component_codes() -> list[str]:
     return list(Component.objects.values_list("code", flat=True))
 
 
-def reporting_lags(as_of: dt.date, known_on: dt.date | None = None) -> dict[int, int]:
-    """For each site that reports at once: days within which 95 % of its failures were known; of its visits if none."""
+def reporting_lags(
+    as_of: dt.date,
+    known_on: dt.date | None = None,
+    *,
+    counted: Mapping[int, Mapping[int, int]] | None = None,
+    without_parts: Sequence[int] = (),
+) -> dict[int, int]:
+    """For each site that reports at once: days within which 95 % of its failures were known; of its visits if none.
+
+    counted: by site how many failures became known how many days late, of parts that somebody has read already
+    (`without_parts`): a million need not be read twice.
+    """
     once = Site.objects.filter(reports_at_once=True).values_list("pk", flat=True)
     known = Coalesce("removed_known_on", "removed_visit__known_on", "removed_on")
     failures = (
         Fitting.objects.standing()
         .filter(reason__in=FAILURE_REASONS, removed_on__lte=as_of, clock__site__in=once)
+        .exclude(part__in=without_parts)
         .annotate(place=F("clock__site_id"), known=known, happened=Coalesce("failed_on", "removed_on"))
     )
-    lags = _late_by(failures, known_on)
+    lags = _late_by(failures, known_on, counted or {})
     without = [site for site in once if site not in lags]
     if without:
         visits = (
@@ -109,12 +121,14 @@ def reporting_lags(as_of: dt.date, known_on: dt.date | None = None) -> dict[int,
     return {site: lags.get(site, 0) for site in once}
 
 
-def _late_by(records: Any, known_on: dt.date | None) -> dict[int, int]:
+def _late_by(
+    records: Any, known_on: dt.date | None, counted: Mapping[int, Mapping[int, int]] = MappingProxyType({})
+) -> dict[int, int]:
     """For each place the quantile of the days from `happened` to `known`; the database subtracts the dates."""
     if known_on is not None:
         records = records.filter(known__lte=known_on)
     late = ExpressionWrapper(F("known") - F("happened"), output_field=DurationField())
-    counts: dict[int, list[tuple[int, int]]] = defaultdict(list)
+    counts = defaultdict(list, {place: list(late.items()) for place, late in counted.items()})
     for place, lag, count in records.annotate(late=late).values_list("place", "late").annotate(n=Count("pk")):
         counts[place].append((max(0, lag.days), count))
     return {place: _quantile(pairs, LAG_QUANTILE) for place, pairs in counts.items()}

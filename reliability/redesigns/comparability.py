@@ -7,17 +7,19 @@ from __future__ import annotations
 
 import datetime as dt
 from collections import Counter
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
+from django.db.models import Count
 from numpy.typing import NDArray
 
 from fleet.models import Fitting
 from reliability.histories_from_fleet import module_duties
 from reliability.life_question import asked_of
 from reliability.redesigns.compared import AFTER, BEFORE, Compared
+from reliability.stats.ranks import ranked
 
 LITTLE_OVERLAP = 0.5  # below, the page warns in words
 ALL_AT_ONCE = 0.1  # an old share of a site's watched days below which it was switched all at once
@@ -72,33 +74,43 @@ class Comparability:
 def comparability(everything: Compared, concurrent: Compared) -> Comparability:
     """Sides of `everything` with their mixtures; which sites give a control over the same dates."""
     days = everything.ended - everything.begun
-    sites = np.asarray([]) if everything.lifetimes is None else everything.lifetimes.sites
-    failed = everything.states == "failed"
+    failed = everything.in_state("failed").astype(float)
+    site_labels, site_codes = _sites(everything)
+    modes = np.where(everything.mode_labels == "", "not named", everything.mode_labels)
     mixes = (
-        _mix("site", "days in service", everything, sites, days),
+        _mix("site", "days in service", everything, (site_labels, site_codes), days),
         _seasons(everything),
-        _mix("failure mode", "failures", everything, everything.modes, failed.astype(float), unnamed="not named"),
+        _mix("failure mode", "failures", everything, (modes, everything.mode_codes), failed),
         _lots(everything),
     )
     at_once, beside = _switched(concurrent)
     return Comparability(mixes, _duty(everything, days), at_once, beside)
 
 
-def _mix(name: str, of: str, lives: Compared, labels: NDArray[Any], weights: NDArray[Any], unnamed: str = "") -> Mix:
-    sides: dict[str, Counter[str]] = {BEFORE: Counter(), AFTER: Counter()}
-    if lives.lifetimes is not None:
-        groups = lives.lifetimes.groups
-        for label, side, weight in zip(labels.tolist(), groups.tolist(), weights.tolist(), strict=True):
-            if weight > 0:
-                sides[side][str(label) or unnamed] += weight
+def _sites(lives: Compared) -> tuple[NDArray[Any], NDArray[np.int64]]:
+    if lives.lifetimes is None:
+        return np.asarray([]), np.zeros(0, dtype=np.int64)
+    return lives.lifetimes.site_labels, lives.lifetimes.site_codes
+
+
+def _mix(
+    name: str, of: str, lives: Compared, labels: tuple[NDArray[Any], NDArray[np.int64]], weights: NDArray[np.float64]
+) -> Mix:
+    """labels: the distinct ones, and which of them each life has."""
+    known, codes = labels
+    sides: dict[str, Mapping[str, float]] = {}
+    for side, own in ((BEFORE, ~lives.is_new), (AFTER, lives.is_new)):
+        rows = own & (weights > 0)
+        sums = np.bincount(codes[rows], weights=weights[rows], minlength=len(known))
+        sides[side] = {str(known[place]): float(sums[place]) for place in np.flatnonzero(sums).tolist()}
     return _shared(name, of, sides, lambda label: label)
 
 
-def _shared(name: str, of: str, sides: dict[str, Counter[str]], order: Callable[[str], Any]) -> Mix:
+def _shared(name: str, of: str, sides: Mapping[str, Mapping[str, float]], order: Callable[[str], Any]) -> Mix:
     labels = sorted(set(sides[BEFORE]) | set(sides[AFTER]), key=order)
     totals = {side: sum(counts.values()) for side, counts in sides.items()}
     shares = {
-        side: tuple(counts[label] / totals[side] if totals[side] else 0.0 for label in labels)
+        side: tuple(counts.get(label, 0.0) / totals[side] if totals[side] else 0.0 for label in labels)
         for side, counts in sides.items()
     }
     return Mix(name, of, tuple(labels), shares[BEFORE], shares[AFTER])
@@ -106,7 +118,7 @@ def _shared(name: str, of: str, sides: dict[str, Counter[str]], order: Callable[
 
 def _seasons(lives: Compared) -> Mix:
     """Days watched by quarter of the year."""
-    sides: dict[str, Counter[str]] = {BEFORE: Counter(), AFTER: Counter()}
+    sides: dict[str, dict[str, float]] = {BEFORE: {}, AFTER: {}}
     if lives.lifetimes is not None and len(lives.begun):
         begun, ended = lives.begun.astype(int), lives.ended.astype(int)
         first, last = int(begun.min()), max(int(ended.max()), int(begun.min()) + 1)
@@ -114,8 +126,8 @@ def _seasons(lives: Compared) -> Mix:
         for number, season in enumerate(SEASONS):
             until = np.concatenate([[0], np.cumsum(quarter == number)])
             days = until[np.clip(ended - first, 0, last - first)] - until[begun - first]
-            for side, counts in sides.items():
-                counts[season] += float(days[lives.lifetimes.groups == side].sum())
+            for side, own in ((BEFORE, ~lives.is_new), (AFTER, lives.is_new)):
+                sides[side][season] = float(days[own].sum())
     return _shared("season", "days in service", sides, SEASONS.index)
 
 
@@ -123,25 +135,27 @@ def _lots(lives: Compared) -> Mix:
     """Parts by lot; old and new never share one, so this names how many lots stand behind each side."""
     sides: dict[str, Counter[str]] = {BEFORE: Counter(), AFTER: Counter()}
     fitted = Fitting.objects.standing().filter(part__component=lives.component, fitted_on__lte=lives.as_of)
-    for side, parts in ((BEFORE, lives.old), (AFTER, lives.new)):
-        for lot in fitted.filter(part__code__in=parts).values_list("lot", flat=True):
-            sides[side][lot or "no lot"] += 1
+    counted = fitted.filter(part__code__in=[*lives.old, *lives.new]).values_list("part__code", "lot")
+    for part, lot, count in counted.annotate(count=Count("pk")).order_by():
+        sides[AFTER if part in lives.new else BEFORE][lot or "no lot"] += count
     return _shared("lot", "parts", sides, lambda label: label)
 
 
 def duties_of(lives: Compared) -> tuple[str, NDArray[np.float64]]:
     """Strokes a day of each life's module (hours, where the life is counted in them); NaN where not known."""
     clock = "hours" if lives.clock == "hours" else "strokes"
-    duties = module_duties(asked_of(lives.component, clock=lives.clock, as_of=lives.as_of), clock)
-    return clock, np.array([duties[str(m)].a_day if str(m) in duties else np.nan for m in lives.modules.tolist()])
+    duties = module_duties(asked_of(lives.component, clock=lives.clock, as_of=lives.as_of), clock, of_all=True)
+    modules, place = ranked(lives.modules)
+    known = [duties[str(module)].a_day if str(module) in duties else np.nan for module in modules.tolist()]
+    return clock, np.array(known)[place] if known else np.zeros(0)
 
 
 def _duty(lives: Compared, days: NDArray[np.float64]) -> Duty:
     clock, a_day = duties_of(lives)
     found: dict[str, float | None] = {BEFORE: None, AFTER: None}
     if lives.lifetimes is not None:
-        for side in found:
-            chosen = (lives.lifetimes.groups == side) & ~np.isnan(a_day) & (days > 0)
+        for side, own in ((BEFORE, ~lives.is_new), (AFTER, lives.is_new)):
+            chosen = own & ~np.isnan(a_day) & (days > 0)
             if chosen.any():
                 found[side] = float(np.average(a_day[chosen], weights=days[chosen]))
     return Duty(clock, found[BEFORE], found[AFTER])
@@ -152,10 +166,13 @@ def _switched(concurrent: Compared) -> tuple[tuple[str, ...], tuple[str, ...]]:
     if concurrent.lifetimes is None:
         return tuple(sorted(concurrent.starts)), ()
     days = np.maximum(concurrent.ended - concurrent.begun, 0.0)
-    at_once, beside = [], []
+    at_once: list[str] = []
+    beside: list[str] = []
+    lives, place = concurrent.lifetimes, {site: code for code, site in enumerate(concurrent.lifetimes.site_labels)}
+    both_by_site = np.append(np.bincount(lives.site_codes, weights=days, minlength=len(place)), 0.0)
+    old_days = np.where(concurrent.is_new, 0.0, days)
+    old_by_site = np.append(np.bincount(lives.site_codes, weights=old_days, minlength=len(place)), 0.0)
     for site in sorted(concurrent.starts):
-        here = concurrent.lifetimes.sites == site
-        old = days[here & (concurrent.lifetimes.groups == BEFORE)].sum()
-        both = days[here].sum()
+        old, both = (sums[place.get(site, -1)] for sums in (old_by_site, both_by_site))
         (beside if both > 0 and old / both >= ALL_AT_ONCE else at_once).append(site)
     return tuple(at_once), tuple(beside)

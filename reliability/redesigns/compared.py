@@ -7,9 +7,9 @@ takes each site from the day its first new part went in: old parts still there e
 from __future__ import annotations
 
 import datetime as dt
-from collections import Counter
-from collections.abc import Sequence
+from collections.abc import Collection, Sequence
 from dataclasses import dataclass, replace
+from functools import cached_property
 from typing import Any
 
 import numpy as np
@@ -17,21 +17,27 @@ from numpy.typing import NDArray
 
 from fleet.models import Component, FailureMode, Part, Site, SiteKind
 from reliability.fleet_lives import NO_PLACE
+from reliability.life_question import keys_of
 from reliability.life_rules import Reason
-from reliability.lives_of_positions import PositionLife, first_fitted, lives_of_positions
+from reliability.redesigns.life_columns import FAILED, STATES, among, told
+from reliability.redesigns.lives_of_positions import PositionLives, PositionRecords, position_records
 from reliability.stats.lifetimes import Lifetimes
+from reliability.stats.ranks import ranked
 
 BEFORE, AFTER = "before", "after"
-COLUMNS = ("modules", "positions", "parts", "states", "fitted", "begun", "ended", "modes", "rigs")
+COLUMNS = ("modules", "positions", "parts", "state_codes", "fitted", "begun", "ended", "mode_codes", "rigs")
+OTHER_MODE = "other mode"
+ALL_STATES = np.array([*STATES, OTHER_MODE])
 
 
 @dataclass(frozen=True, eq=False)
 class Compared:
     """One row a life. lifetimes.groups is before or after; the other columns have its length.
 
-    modules: the records' own numbers. positions: a number for each place in each module. states: as in `FleetLives`.
+    modules: the records' own numbers. positions: a number for each place in each module. state_codes: places among
+    ALL_STATES; mode_codes: places among mode_labels, the codes of failure modes (empty: none).
     begun, ended: ordinal days of the fitting (or of the start of observation) and of the end of observation.
-    modes: code of the failure mode, empty where none. rigs: True on a test stand.
+    rigs: True on a test stand.
     starts: for each site the day from which it is looked at; empty where all history counts.
     """
 
@@ -44,21 +50,60 @@ class Compared:
     modules: NDArray[np.int64]
     positions: NDArray[np.int64]
     parts: NDArray[Any]
-    states: NDArray[Any]
+    state_codes: NDArray[np.int8]
     fitted: NDArray[np.int64]
     begun: NDArray[np.float64]
     ended: NDArray[np.float64]
-    modes: NDArray[Any]
+    mode_codes: NDArray[np.int64]
+    mode_labels: NDArray[Any]
     rigs: NDArray[np.bool_]
     starts: dict[str, dt.date]
     left_out: dict[str, int]
 
-    def side(self, side: str) -> Lifetimes | None:
-        """The lives of one side; None where it has none."""
+    @property
+    def states(self) -> NDArray[Any]:
+        """As in `FleetLives`."""
+        return ALL_STATES[self.state_codes]
+
+    @property
+    def modes(self) -> NDArray[Any]:
+        """Code of each life's failure mode, empty where none."""
+        return self.mode_labels[self.mode_codes]
+
+    def in_state(self, *states: str) -> NDArray[np.bool_]:
+        return np.isin(ALL_STATES, states)[self.state_codes]
+
+    @cached_property
+    def is_new(self) -> NDArray[np.bool_]:
+        """True for lives of the new parts."""
         if self.lifetimes is None:
-            return None
-        chosen = self.lifetimes.groups == side
-        return self.lifetimes.subset(chosen) if chosen.any() else None
+            return np.zeros(0, dtype=bool)
+        return np.asarray(self.lifetimes.group_labels == AFTER)[self.lifetimes.group_codes]
+
+    @cached_property
+    def pooled(self) -> Lifetimes | None:
+        """Equal lives of one side at one site in one row: for all that asks for no position."""
+        return None if self.lifetimes is None else self.lifetimes.grouped()
+
+    def pooled_by_mode(self) -> tuple[Lifetimes, NDArray[Any]]:
+        """The same with only failures of one mode in a row, and the modes of the rows."""
+        assert self.lifetimes is not None
+        rows, codes = self.lifetimes.grouped_with(self.mode_codes)
+        return rows, self.mode_labels[codes]
+
+    def pooled_by_state(self) -> tuple[Lifetimes, NDArray[Any]]:
+        """The same with only lives of one state in a row, and the states of the rows."""
+        assert self.lifetimes is not None
+        rows, codes = self.lifetimes.grouped_with(self.state_codes.astype(np.int64))
+        return rows, ALL_STATES[codes]
+
+    def side(self, side: str) -> Lifetimes | None:
+        """The lives of one side, equal ones in one row; None where it has none."""
+        return _side(self.pooled, side)
+
+    def side_of_positions(self, side: str) -> Lifetimes | None:
+        """The lives of one side, each in a row of its own."""
+        return _side(self.lifetimes, side)
 
     def chosen(self, rows: NDArray[np.bool_]) -> Compared:
         """The same with these rows only."""
@@ -77,108 +122,125 @@ class Compared:
         """The same lives if only these failure modes acted: other failures count as withdrawals in good order."""
         if self.lifetimes is None:
             return self
-        others = self.lifetimes.observed & ~np.isin(self.modes, list(modes))
-        states = np.where(others, "other mode", self.states)
-        return replace(self, lifetimes=self.lifetimes.withdrawn_where(others), states=states)
-
-    def as_seen_on(self, day: int) -> Compared:
-        """The lives as they stood on an earlier (ordinal) day, for the path of the evidence.
-
-        Ages on that day lie on a straight line through each life's use; what ended later was still running.
-        """
-        if self.lifetimes is None:
-            return self
-        lives, later = self.lifetimes, self.ended > day
-        share = np.clip((day - self.begun) / np.maximum(self.ended - self.begun, 1.0), 0.0, 1.0)
-        durations = np.where(
-            later, np.floor(lives.entries + share * (lives.durations - lives.entries) + 1e-9), lives.durations
-        )
-        seen = durations > lives.entries
-        if not seen.any():
-            return self.chosen(np.zeros(len(lives), dtype=bool))
-        cut = Lifetimes(
-            durations[seen],
-            (lives.observed & ~later)[seen],
-            entries=lives.entries[seen],
-            last_good=np.where(later, np.nan, lives.last_good)[seen],
-            sites=lives.sites[seen],
-            groups=lives.groups[seen],
-        )
-        states = np.where(later, "running", self.states)
-        return replace(self.chosen(seen), lifetimes=cut, states=states[seen])
+        others = self.lifetimes.observed & ~np.isin(self.mode_labels, list(modes))[self.mode_codes]
+        states = np.where(others, np.int8(len(STATES)), self.state_codes)
+        return replace(self, lifetimes=self.lifetimes.withdrawn_where(others), state_codes=states)
 
 
-def all_history(component: Component, new: Sequence[str], old: Sequence[str], **choices: Any) -> Compared:
-    """Every life of the old and the new parts, whenever it was."""
-    return _compared(component, new, old, {}, choices)
+def _side(lives: Lifetimes | None, side: str) -> Lifetimes | None:
+    if lives is None:
+        return None
+    chosen = np.asarray(lives.group_labels == side)[lives.group_codes]
+    if not chosen.any():
+        return None
+    return lives.subset(chosen)
 
 
-def at_the_same_time(
-    component: Component, new: Sequence[str], old: Sequence[str], *, not_before: dt.date | None = None, **choices: Any
-) -> Compared:
-    """Only sites with a new part, each from its first day on (or from `not_before`, where that is later)."""
-    first = first_fitted(component.code, list(new), choices["as_of"])
-    fields = set(Site.objects.filter(kind=SiteKind.FIELD).values_list("pk", flat=True))
-    starts = {site: max(day, not_before or day) for site, day in first.items() if site in fields}
-    return _compared(component, new, old, starts, choices)
-
-
-def _compared(
+def all_history(
     component: Component,
     new: Sequence[str],
     old: Sequence[str],
-    starts: dict[int, dt.date],
-    choices: dict[str, Any],
+    *,
+    records: PositionRecords | None = None,
+    with_rigs: bool = False,
+    **choices: Any,
 ) -> Compared:
-    asked = {"parts": [*new, *old], "also": "mode", **choices}
+    """Every life of the old and the new parts, whenever it was. records: as read before, of these parts or more."""
+    records, sites = _records(component, [*new, *old], records, **choices)
+    return _compared(records, new, old, records.lives(sites=sites, with_rigs=with_rigs), {})
+
+
+def at_the_same_time(
+    component: Component,
+    new: Sequence[str],
+    old: Sequence[str],
+    *,
+    not_before: dt.date | None = None,
+    records: PositionRecords | None = None,
+    **choices: Any,
+) -> Compared:
+    """Only sites with a new part, each from its first day on (or from `not_before`, where that is later)."""
+    records, sites = _records(component, [*new, *old], records, **choices)
+    fields = dict(Site.objects.filter(kind=SiteKind.FIELD).values_list("pk", "code"))
+    first = records.first_fitted(_keys(component, new))
+    starts = {site: max(day, not_before or day) for site, day in first.items() if site in fields}
     if starts:
-        wanted = choices.get("sites")
-        codes = dict(Site.objects.filter(pk__in=starts).values_list("pk", "code"))
-        asked["sites"] = [code for code in codes.values() if wanted is None or code in wanted]
-    rows = lives_of_positions(component, starts=starts, **asked)
-    named = {part.pk: part.code for part in Part.objects.filter(component=component)}
-    sites = {pk: (code, kind) for pk, code, kind in Site.objects.values_list("pk", "code", "kind")}
+        sites = [site for site in starts if sites is None or site in sites]
+    return _compared(records, new, old, records.lives(starts, sites=sites), starts)
+
+
+def _records(
+    component: Component,
+    parts: Sequence[str],
+    records: PositionRecords | None,
+    *,
+    as_of: dt.date,
+    clock: str | None = None,
+    sites: Sequence[str] | None = None,
+) -> tuple[PositionRecords, Collection[int] | None]:
+    """What the records hold of these parts, and the numbers of the sites asked for."""
+    if records is None:
+        records = position_records(component, parts, as_of=as_of, clock=clock)
+    return records.of_parts(_keys(component, parts)), keys_of(Site, sites, "site")
+
+
+def _keys(component: Component, parts: Sequence[str]) -> tuple[int, ...]:
+    return keys_of(Part, parts, "part", component=component) or ()
+
+
+def _compared(
+    records: PositionRecords, new: Sequence[str], old: Sequence[str], lives: PositionLives, starts: dict[int, dt.date]
+) -> Compared:
+    component = records.asked.component
+    named = dict(Part.objects.filter(component=component).values_list("pk", "code"))
     modes = dict(FailureMode.objects.filter(component=component).values_list("pk", "code"))
-    left_out: Counter[str] = Counter(row.left_out for row in rows if row.left_out is not None)
-    kept = [row for row in rows if row.left_out is None]
+    sites = {pk: (code, kind) for pk, code, kind in Site.objects.values_list("pk", "code", "kind")}
+    codes = {0: NO_PLACE, **{pk: code for pk, (code, _) in sites.items()}}
     began = {site: day.toordinal() for site, day in starts.items()}
-    parts = np.array([named[row.part] for row in kept], dtype=object)
-    place = [sites.get(row.site or 0, (NO_PLACE, "")) for row in kept]
+    rigs = [pk for pk, (_, kind) in sites.items() if kind == SiteKind.RIG]
+    is_new = among(lives.part, _keys(component, new))
+    mode_labels, mode_codes = _labels(lives.mode, {0: "", **modes})[1]
     return Compared(
         component=component,
-        clock=asked.get("clock") or component.clock,
-        as_of=choices["as_of"],
+        clock=records.asked.clock,
+        as_of=records.asked.as_of,
         new=tuple(new),
         old=tuple(old),
-        lifetimes=_lifetimes(kept, np.isin(parts, list(new)), [code for code, _ in place]),
-        modules=np.array([row.module for row in kept], dtype=np.int64),
-        positions=_numbered(kept),
-        parts=parts,
-        states=np.array([row.state for row in kept], dtype=object),
-        fitted=np.array([row.fitted_day or 0 for row in kept], dtype=np.int64),
-        begun=np.array([max(row.fitted_day or 0, began.get(row.site or 0, 0)) for row in kept], dtype=float),
-        ended=np.array([row.last_day or 0 for row in kept], dtype=float),
-        modes=np.array([modes.get(row.also, "") for row in kept], dtype=object),
-        rigs=np.array([kind == SiteKind.RIG for _, kind in place], dtype=bool),
+        lifetimes=_lifetimes(lives, is_new, codes),
+        modules=lives.module,
+        positions=ranked(lives.place)[1],
+        parts=_labels(lives.part, named)[0],
+        state_codes=lives.state,
+        fitted=lives.fitted_day,
+        begun=np.maximum(lives.fitted_day, told(lives.site, began, 0)).astype(float),
+        ended=lives.last_day,
+        mode_codes=mode_codes,
+        mode_labels=mode_labels,
+        rigs=among(lives.site, rigs),
         starts={sites[site][0]: day for site, day in starts.items()},
-        left_out=dict(left_out),
+        left_out=lives.left_out,
     )
 
 
-def _lifetimes(rows: list[PositionLife], is_new: NDArray[np.bool_], places: list[str]) -> Lifetimes | None:
-    if not rows:
+def _lifetimes(lives: PositionLives, is_new: NDArray[np.bool_], codes: dict[int, str]) -> Lifetimes | None:
+    if not lives.entry.size:
         return None
-    return Lifetimes(
-        durations=np.array([row.duration for row in rows], dtype=float),
-        observed=np.array([row.state == "failed" for row in rows]),
-        entries=np.array([row.entry for row in rows], dtype=float),
-        last_good=np.array([np.nan if row.last_good is None else row.last_good for row in rows], dtype=float),
-        sites=np.array(places),
-        groups=np.where(is_new, AFTER, BEFORE),
+    places, site_index = _labels(lives.site, codes)
+    sides, group_index = _labels(is_new.astype(np.int64), {0: BEFORE, 1: AFTER})
+    made = Lifetimes(
+        durations=lives.duration,
+        observed=lives.state == FAILED,
+        entries=lives.entry,
+        last_good=lives.last_good,
+        sites=places,
+        groups=sides,
     )
+    return made.knowing(sites=site_index, groups=group_index)
 
 
-def _numbered(rows: list[PositionLife]) -> NDArray[np.int64]:
-    """One number for each position of each module."""
-    places = np.array([(row.module, row.position) for row in rows], dtype=np.int64).reshape(-1, 2)
-    return np.unique(places, axis=0, return_inverse=True)[1].reshape(-1).astype(np.int64)
+def _labels(numbers: NDArray[np.int64], named: dict[int, str]) -> tuple[NDArray[Any], tuple[NDArray[Any], Any]]:
+    """The label of each number, and the distinct ones in order with the place of each row among them."""
+    present, place = ranked(numbers)
+    found = np.array([named.get(number, "") for number in present.tolist()] or [""])
+    distinct, order = np.unique(found, return_inverse=True)
+    return found[place], (distinct[: present.size], order[place])

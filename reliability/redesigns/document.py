@@ -16,14 +16,16 @@ from reliability.redesigns.compared import AFTER, BEFORE, Compared, all_history,
 from reliability.redesigns.evidence import at_like_duty, evidence_of, told_ratio
 from reliability.redesigns.few import FEW, few_failures_of
 from reliability.redesigns.fitting_faults import fitting_faults
+from reliability.redesigns.lives_of_positions import position_records
 from reliability.redesigns.question import RedesignQuestion
 from reliability.redesigns.single_modes import single_modes
-from reliability.redesigns.watching import ahead_of, verdict_of
+from reliability.redesigns.watching import ahead_of, looks_of, verdict_of
 from reliability.redesigns.with_past import sides_with_past
 from reliability.stats.difference import life_ratio
 from reliability.stats.errors import StatisticsError
 from reliability.stats.life_ratio_posterior import LifeRatioPosterior, life_ratio_posterior
 from reliability.stats.lifetimes import Lifetimes
+from reliability.stats.ranks import ranked
 from reliability.stats.weibull_fit import fit_weibull
 
 Paired = tuple[tuple[Lifetimes, Lifetimes], dict[str, Any]] | None
@@ -44,9 +46,12 @@ def redesign_document(question: RedesignQuestion) -> dict[str, Any]:
         "as_of": question.as_of,
         "sites": list(question.sites) if question.sites is not None else None,
     }
-    whole = all_history(question.component, question.new, question.old, with_rigs=True, **choices)
+    sides = (question.component, question.new, question.old)
+    parts = dict.fromkeys([*question.new, *question.old, *question.also])
+    choices["records"] = position_records(question.component, list(parts), as_of=question.as_of)
+    whole = all_history(*sides, with_rigs=True, **choices)
     everything = whole.without_rigs()
-    beside = at_the_same_time(question.component, question.new, question.old, not_before=question.not_before, **choices)
+    beside = at_the_same_time(*sides, not_before=question.not_before, **choices)
     alike = comparability(everything, beside)
     if question.modes:
         everything, beside = everything.if_only(question.modes), beside.if_only(question.modes)
@@ -57,7 +62,8 @@ def redesign_document(question: RedesignQuestion) -> dict[str, Any]:
     if posterior is not None:
         chances = {"longer": posterior.probability(), "hope": posterior.probability(question.hope)}
     shape = _old_shape(everything)
-    verdict, path = verdict_of(beside, everything, question.hope, shape, chances["longer"] if chances else None)
+    looks = looks_of(beside, everything)
+    verdict, path = verdict_of(looks, question.hope, shape, chances["longer"] if chances else None)
     history = _curves(everything, question)
     return {
         **question.asked(),
@@ -70,7 +76,7 @@ def redesign_document(question: RedesignQuestion) -> dict[str, Any]:
         "chances_missing": reason,
         "ahead": None
         if posterior is None
-        else ahead_of(beside, everything, verdict, posterior.effects(), _a_module(beside)),
+        else ahead_of(beside, looks[-1] if looks else None, verdict, posterior.effects(), _a_module(beside)),
         "same_dates": {
             **_with_past(
                 evidence_of(beside, question.confidence, without=["positions differ"]), paired, question.confidence
@@ -96,17 +102,18 @@ def _curves(lives: Compared, question: RedesignQuestion) -> dict[str, Any] | Non
     if lives.lifetimes is None:
         return None
     labels = {BEFORE: " and ".join(question.old), AFTER: " and ".join(question.new)}
-    named = np.array([labels[side] for side in lives.lifetimes.groups.tolist()])
+    pooled, states = lives.pooled_by_state()
+    sides = [side for side in (BEFORE, AFTER) if side in pooled.group_labels]
     found = FleetLives(
         component=question.component.code,
         clock=lives.clock,
         as_of=question.as_of,
         by="part",
-        lifetimes=lives.lifetimes.with_groups(named),
-        states=lives.states,
+        lifetimes=pooled.with_groups(np.array([labels[side] for side in pooled.group_labels])[pooled.group_codes]),
+        states=states,
         component_name=question.component.title,
         modes=question.modes,
-        groups=tuple(labels[side] for side in (BEFORE, AFTER) if (lives.lifetimes.groups == side).any()),
+        groups=tuple(labels[side] for side in sides),
     )
     return document_of(found, question.confidence)
 
@@ -166,8 +173,8 @@ def _a_module(lives: Compared) -> float:
     """Positions of such a part in a module."""
     if not len(lives.modules):
         return 1.0
-    pairs = np.unique(np.column_stack([lives.modules, lives.positions]), axis=0)
-    return float(len(pairs) / len(np.unique(lives.modules)))
+    # a number of a position stands for one module only
+    return ranked(lives.positions)[0].size / ranked(lives.modules)[0].size
 
 
 def _records(lives: Compared) -> dict[str, Any]:
@@ -176,8 +183,8 @@ def _records(lives: Compared) -> dict[str, Any]:
     unanswered = Site.objects.filter(code__in=there, reports_at_once=None).values_list("code", flat=True)
     return {
         "unanswered": sorted(unanswered),
-        "not_known": int((lives.states == "not known").sum()),
-        "removed": int((lives.states != "running").sum()),
+        "not_known": int(lives.in_state("not known").sum()),
+        "removed": int((~lives.in_state("running")).sum()),
     }
 
 

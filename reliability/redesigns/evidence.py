@@ -6,20 +6,25 @@ beside them and are named, since water, season and habits change with the calend
 
 from __future__ import annotations
 
+import math
 from collections.abc import Collection
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy import special
 
 from reliability.life_answer import finite
 from reliability.redesigns.compared import AFTER, BEFORE, Compared
 from reliability.stats.difference import counted_when_found, logrank, restricted_mean_difference
+from reliability.stats.difference_logrank import ROUNDING
 from reliability.stats.errors import StatisticsError
 from reliability.stats.life_ratio import LifeRatio, Ratio, life_ratio
 from reliability.stats.life_regression import fit_weibull_regression
 from reliability.stats.lifetimes import Lifetimes
+from reliability.stats.sequential_path import path_of_looks
 
+POSITIONS = "positions differ"
 FEWEST_SITES_LEFT_OUT = 3
 EARLIER = 0.75  # of the last age, where some site did not get that far
 TESTS = (
@@ -34,7 +39,7 @@ TESTS = (
 def evidence_of(lives: Compared, confidence: float, *, without: Collection[str] = ()) -> dict[str, Any]:
     """Tests, restricted means and life ratios of one comparison; what cannot be told is None, with its reason.
 
-    without: ratios that are not asked for. Over the same dates the one with positions that differ needs their past.
+    without: ratios that are not asked for. The one with positions that differ is never told here: it needs their past.
     """
     notes: list[str] = []
     return {
@@ -51,10 +56,8 @@ def both_sides(lives: Compared) -> tuple[Lifetimes, Lifetimes] | None:
 
 
 def strata_of(lives: Compared, strata: str) -> NDArray[Any] | None:
-    """Labels by site, or by position at a site."""
+    """Labels by site; None without strata."""
     assert lives.lifetimes is not None
-    if strata == "position":
-        return lives.positions * 10_000 + lives.lifetimes.site_codes
     return lives.lifetimes.site_codes if strata == "site" else None
 
 
@@ -65,17 +68,36 @@ def tests_of(lives: Compared, notes: list[str]) -> list[dict[str, Any]]:
         row: dict[str, Any] = {"strata": name, "rho": rho, "gamma": gamma, "z": None, "p": None, "information": None}
         if both_sides(lives) is not None:
             try:
-                assert lives.lifetimes is not None
-                # labels sort as after, before: the first group is the new one, so its z is turned round
-                test = logrank(
-                    counted_when_found(lives.lifetimes), strata=strata_of(lives, strata), rho=rho, gamma=gamma
-                )
-                row.update(z=finite(-test.z), p=finite(test.p_value), information=finite(test.variance))
-                row["excess"] = finite(-float(test.score[0]))
+                score, variance = by_position(lives) if strata == "position" else _score(lives, strata, rho, gamma)
+                z = score / math.sqrt(variance)
+                row.update(z=finite(z), p=finite(float(special.chdtrc(1, z * z))), information=finite(variance))
+                row["excess"] = finite(score)
             except StatisticsError as error:
                 notes.append(str(error))
         found.append(row)
     return found
+
+
+def _score(lives: Compared, strata: str, rho: float, gamma: float) -> tuple[float, float]:
+    """Failures of old parts beyond those expected, and the variance."""
+    assert lives.pooled is not None
+    pooled = counted_when_found(lives.pooled)
+    test = logrank(pooled, strata=pooled.site_codes if strata else None, rho=rho, gamma=gamma)
+    # labels sort as after, before: the first group is the new one, so its score is turned round
+    return -float(test.score[0]), test.variance
+
+
+def by_position(lives: Compared) -> tuple[float, float]:
+    """The same within each position at a site: most positions hold one kind of part and are not looked at."""
+    assert lives.lifetimes is not None
+    found = counted_when_found(lives.lifetimes)
+    strata = lives.positions * len(found.site_labels) + found.site_codes
+    path = path_of_looks(found, lives.is_new, strata, lives.begun, lives.ended, [np.inf])
+    score, variance = float(path.score[0]), float(path.information[0])
+    if variance <= ROUNDING * found.failures:
+        logrank(found, strata=strata)  # says in words why nothing can be compared
+        return 0.0, ROUNDING
+    return score, variance
 
 
 def restricted_mean_of(lives: Compared, confidence: float, notes: list[str]) -> dict[str, Any] | None:
@@ -119,16 +141,15 @@ def ratio_of(
     if sides is None:
         return None
     before, after = (counted_when_found(side) for side in sides)
-    places = _places(lives)
     ways: dict[str, dict[str, Any]] = {
         "sites differ": {},
-        "positions differ": {"positions": places},
+        POSITIONS: {},
         "one shape for both": {"common_shape": True},
         "lives independent": {"sites": (np.zeros(len(before)), np.zeros(len(after)))},
     }
     answer: dict[str, Any] = {}
     for name, how in ways.items():
-        if name in without:
+        if name in without or name == POSITIONS:
             answer[name] = None  # keeps its place among the others
             continue
         try:
@@ -150,7 +171,7 @@ def at_like_duty(lives: Compared, a_day: NDArray[np.float64], confidence: float)
     if not known.any():
         return None
     kept = counted_when_found(lives.lifetimes.subset(known))
-    covariates = {"new": (kept.groups == AFTER).astype(float), "duty": np.log(a_day[known])}
+    covariates = {"new": lives.is_new[known].astype(float), "duty": np.log(a_day[known])}
     sites = len(kept.site_labels) >= FEWEST_SITES_LEFT_OUT + 2
     try:
         fit = fit_weibull_regression(kept, covariates)
@@ -163,12 +184,6 @@ def at_like_duty(lives: Compared, a_day: NDArray[np.float64], confidence: float)
         "upper": finite(found.upper),
         "method": found.method,
     }
-
-
-def _places(lives: Compared) -> tuple[NDArray[Any], NDArray[Any]]:
-    assert lives.lifetimes is not None
-    groups = lives.lifetimes.groups
-    return lives.positions[groups == BEFORE], lives.positions[groups == AFTER]
 
 
 def told_ratio(found: LifeRatio) -> dict[str, Any]:

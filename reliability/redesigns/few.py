@@ -29,8 +29,9 @@ def few_failures_of(
     new = lives.side(AFTER)
     if new is None or new.failures >= FEW:
         return None
-    own = lives.lifetimes is not None and lives.lifetimes.groups == AFTER
-    years = float((lives.ended - lives.begun)[own].clip(min=0.0).sum()) / DAYS_A_YEAR
+    # days at a depot or standing still are no days in service
+    days = new.exposure if lives.clock == "days" else (lives.ended - lives.begun)[lives.is_new].clip(min=0.0).sum()
+    years = float(days) / DAYS_A_YEAR
     return {
         "parts": int(new.count),
         "failures": int(new.failures),

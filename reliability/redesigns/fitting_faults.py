@@ -22,7 +22,7 @@ def fitting_faults(lives: Compared, confidence: float) -> dict[str, Any]:
         answer[side] = {"parts": 0, "failed": 0, "estimate": None, "lower": None, "upper": None}
         if lives.lifetimes is None:
             continue
-        own = (lives.lifetimes.groups == side) & (lives.lifetimes.entries == 0)
+        own = (lives.is_new == (side == AFTER)) & (lives.lifetimes.entries == 0)
         days = lives.ended - lives.begun
         failed = int((own & lives.lifetimes.observed & (days <= FIRST_DAYS)).sum())
         parts = failed + int((own & (days > FIRST_DAYS)).sum())

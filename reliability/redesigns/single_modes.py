@@ -13,7 +13,6 @@ import numpy as np
 from fleet.formats import rounded
 from reliability.life_answer import finite
 from reliability.redesigns.compared import AFTER, BEFORE, Compared
-from reliability.redesigns.evidence import strata_of
 from reliability.stats.difference import counted_when_found
 from reliability.stats.difference_modes import ModeComparison, compare_modes
 from reliability.stats.errors import StatisticsError
@@ -27,16 +26,13 @@ ORDINARY = 1.96
 def single_modes(lives: Compared, names: dict[str, str], confidence: float) -> dict[str, Any]:
     """For each mode its share by one age on both sides with limits, and the log-rank Z of the mode alone."""
     before, after = lives.side(BEFORE), lives.side(AFTER)
-    if before is None or after is None or lives.lifetimes is None:
+    if before is None or after is None:
         return {"age": None, "rows": []}
     age = float(rounded(common_age(before, after)))
+    pooled, modes = lives.pooled_by_mode()
     try:
         found = compare_modes(
-            counted_when_found(lives.lifetimes),
-            lives.modes,
-            age,
-            strata=strata_of(lives, "site"),
-            confidence_level=confidence,
+            counted_when_found(pooled), modes, age, strata=pooled.site_codes, confidence_level=confidence
         )
     except StatisticsError:
         return {"age": None, "rows": []}
@@ -48,12 +44,19 @@ def common_age(before: Lifetimes, after: Lifetimes) -> float:
 
     Later on the shares of any two designs draw near each other, since everything fails of something in the end.
     """
-    reached = min(float(np.sort(side.durations)[-min(AT_RISK, len(side))]) for side in (before, after))
+    reached = min(_reached(side) for side in (before, after))
     try:
         middle = kaplan_meier(counted_when_found(before), minimum_at_risk=AT_RISK).quantile(0.5).estimate
     except StatisticsError:
         return reached
     return reached if middle is None else min(reached, float(middle))
+
+
+def _reached(side: Lifetimes) -> float:
+    """The greatest age that five of the side have reached, or all where there are fewer."""
+    order = np.argsort(-side.durations, kind="stable")
+    enough = np.cumsum(side.weights[order]) >= min(AT_RISK, side.count)
+    return float(side.durations[order][np.argmax(enough)])
 
 
 def told(found: ModeComparison, names: dict[str, str]) -> dict[str, Any]:

@@ -3,17 +3,16 @@
 from __future__ import annotations
 
 import datetime as dt
-from dataclasses import replace
 from typing import Any
 
 import numpy as np
 
 from reliability.life_answer import finite
-from reliability.redesigns.compared import AFTER, BEFORE, Compared
-from reliability.redesigns.evidence import strata_of
+from reliability.redesigns.compared import Compared
 from reliability.stats.difference import counted_when_found
-from reliability.stats.sequential import Look, planned_information, sequential_boundary, take_look, verdict
+from reliability.stats.sequential import Look, planned_information, sequential_boundary, verdict
 from reliability.stats.sequential_outlook import extra_modules, information_a_week, outlook
+from reliability.stats.sequential_path import PathOfLooks, path_of_looks
 
 WEEK = 7
 LATELY = 13  # weeks whose failures say the present pace
@@ -29,39 +28,36 @@ def looks_of(lives: Compared, whole: Compared) -> list[Look]:
     lives are those watched over the same dates, which sites are compared by; whole all lives ever, which each position
     is compared with its own past by: over the same dates a position has hardly held an old part.
     """
-    if lives.lifetimes is None or not lives.starts:
+    if lives.lifetimes is None or whole.lifetimes is None or not lives.starts:
         return []
     first, last = min(lives.starts.values()).toordinal(), lives.as_of.toordinal()
     weeks = range(first + WEEK, last, WEEK)
     days = list(weeks) if len(weeks) <= MOST_LOOKS else np.linspace(first + WEEK, last, MOST_LOOKS)[:-1].astype(int)
-    whole = whole.chosen(~whole.rigs)
-    found = [
-        _look(lives.as_seen_on(int(day)), whole.as_seen_on(int(day)), dt.date.fromordinal(int(day))) for day in days
+    labels = [*(dt.date.fromordinal(int(day)) for day in days), lives.as_of]
+    until = np.array([*days, np.inf])
+    by_site = _path(lives, lives.lifetimes.site_codes, until)
+    by_position = _path(whole, whole.positions, until)
+    return [
+        Look(
+            float(by_site.score[place]),
+            float(by_site.information[place]),
+            float(by_position.score[place]),
+            float(by_position.information[place]),
+            label.isoformat(),
+        )
+        for place, label in enumerate(labels)
+        if by_site.seen[place] and by_position.seen[place]
     ]
-    return [*(look for look in found if look is not None), *_now(lives, whole)]
 
 
-def _now(lives: Compared, whole: Compared) -> list[Look]:
-    look = _look(lives, whole, lives.as_of)
-    return [] if look is None else [look]
-
-
-def _look(lives: Compared, whole: Compared, on: dt.date) -> Look | None:
-    if lives.lifetimes is None or whole.lifetimes is None:
-        return None
-    by_site = take_look(
-        counted_when_found(lives.lifetimes),
-        lives.lifetimes.groups == AFTER,
-        sites=strata_of(lives, "site"),
-        label=on.isoformat(),
-    )
-    by_position = take_look(counted_when_found(whole.lifetimes), whole.lifetimes.groups == AFTER, sites=whole.positions)
-    return replace(by_site, position_score=by_position.score, position_information=by_position.information)
+def _path(lives: Compared, strata: Any, days: Any) -> PathOfLooks:
+    assert lives.lifetimes is not None
+    return path_of_looks(counted_when_found(lives.lifetimes), lives.is_new, strata, lives.begun, lives.ended, days)
 
 
 def ahead_of(
     lives: Compared,
-    whole: Compared,
+    now: Look | None,
     verdict: dict[str, Any],
     effects: Any,
     positions_a_module: float,
@@ -71,8 +67,7 @@ def ahead_of(
 
     None where the verdict stands already, or where nothing is gained at the present pace.
     """
-    now = _now(lives, whole.chosen(~whole.rigs))
-    if verdict["final"] or not now or lives.lifetimes is None:
+    if verdict["final"] or now is None or lives.lifetimes is None:
         return None
     failures, share, rate = _pace(lives)
     weekly = float(information_a_week(failures, share))
@@ -89,13 +84,13 @@ def ahead_of(
     }
     if weekly <= 0:
         return answer
-    ahead = outlook(now[0], verdict["planned"], weekly_information=weekly, effects=effects, weeks=AHEAD)
+    ahead = outlook(now, verdict["planned"], weekly_information=weekly, effects=effects, weeks=AHEAD)
     answer["weeks"], answer["weeks_sure"] = ahead.weeks(0.5), ahead.weeks(CHANCE)
     answer["clear_in"] = {str(week): ahead.clear_by(week) for week in (13, 26, 52, AHEAD)}
     a_module = rate * positions_a_module * (1.0 - share)
     if a_module > 0 and share < 0.5:
         answer["extra_modules"] = extra_modules(
-            now[0],
+            now,
             verdict["planned"],
             weekly_information=weekly,
             information_a_module=a_module,
@@ -113,19 +108,17 @@ def _pace(lives: Compared) -> tuple[float, float, float]:
     since = max(min(day.toordinal() for day in lives.starts.values()), today - LATELY * WEEK)
     weeks = max((today - since) / WEEK, 1.0)
     failures = float((lives.lifetimes.observed & (lives.ended > since)).sum()) / weeks
-    running = lives.states == "running"
-    new = running & (lives.lifetimes.groups == AFTER)
-    old = running & (lives.lifetimes.groups == BEFORE)
+    running = lives.in_state("running")
+    new, old = running & lives.is_new, running & ~lives.is_new
     both = float(new.sum() + old.sum())
     return failures, float(new.sum()) / both if both else 0.0, failures / both if both else 0.0
 
 
 def verdict_of(
-    lives: Compared, whole: Compared, hope: float, old_shape: float | None, probability: float | None
+    looks: list[Look], hope: float, old_shape: float | None, probability: float | None
 ) -> tuple[dict[str, Any], list[dict[str, Any]]]:
     """The verdict as plain values, and the path to it: z beside the boundary at each look."""
     planned = planned_information(hope, old_shape or USUAL_SHAPE)
-    looks = looks_of(lives, whole)
     path = [
         {
             "on": look.label,

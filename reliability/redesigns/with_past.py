@@ -11,7 +11,7 @@ from typing import Any
 
 import numpy as np
 
-from reliability.redesigns.compared import AFTER, Compared
+from reliability.redesigns.compared import Compared
 from reliability.stats.difference import counted_when_found, split_at_start
 from reliability.stats.lifetimes import FloatArray, Lifetimes
 
@@ -25,14 +25,16 @@ def sides_with_past(
     """
     if whole.lifetimes is None or not starts:
         return None
-    field = whole.chosen(~whole.rigs & np.isin(whole.lifetimes.sites, list(starts)))
+    begun_at = np.isin(whole.lifetimes.site_labels, list(starts))[whole.lifetimes.site_codes]
+    there = ~whole.rigs & begun_at
+    field = whole if there.all() else whole.chosen(there)
     if field.lifetimes is None:
         return None
     lives = counted_when_found(field.lifetimes)
     cut = split_at_start(lives, _age_at_start(field, starts))
     if cut.now is None:
         return None
-    new = cut.now.groups == AFTER
+    new = field.is_new[cut.now_rows]
     if new.all() or not new.any():
         return None
     sides = cut.now.subset(~new), cut.now.subset(new)
@@ -46,9 +48,10 @@ def _age_at_start(lives: Compared, starts: dict[str, Any]) -> FloatArray:
     """Age of each part on its site's first day, on a straight line through its use; 0 for the new ones."""
     assert lives.lifetimes is not None
     found = lives.lifetimes
-    first = np.array([starts[site].toordinal() for site in found.sites.tolist()], dtype=float)
+    days = np.array([starts[site].toordinal() for site in found.site_labels.tolist()], dtype=float)
+    first = days[found.site_codes]
     share = np.clip((first - lives.begun) / np.maximum(lives.ended - lives.begun, 1.0), 0.0, 1.0)
     # a share of whole days may come out a hair below the whole number
     ages = np.floor(found.entries + share * (found.durations - found.entries) + 1e-9)
     # begun that day or later: nothing of it was before
-    return np.where((found.groups == AFTER) | (share <= 0.0), 0.0, np.where(share >= 1.0, found.durations, ages))
+    return np.where(lives.is_new | (share <= 0.0), 0.0, np.where(share >= 1.0, found.durations, ages))

@@ -142,9 +142,7 @@ def counted_when_found(lifetimes: Lifetimes) -> Lifetimes:
 
     Fair between groups only where both are visited alike; an estimate of life needs the intervals themselves.
     """
-    if not lifetimes.has_intervals:
-        return lifetimes
-    return _with_durations(lifetimes, lifetimes.durations)
+    return lifetimes.counted_when_found()
 
 
 def counted_at_middle(lifetimes: Lifetimes) -> Lifetimes:

@@ -8,9 +8,7 @@ from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
-from numpy.typing import NDArray
 
-from reliability.stats.difference_sums import label_codes
 from reliability.stats.errors import (
     InvalidArgument,
     NoSpreadInFailures,
@@ -20,8 +18,9 @@ from reliability.stats.errors import (
     UndefinedEstimate,
     UnsupportedRows,
 )
+from reliability.stats.life_ratio_clusters import shared_clusters
 from reliability.stats.life_ratio_likelihood import RatioLikelihood, ratio_likelihood
-from reliability.stats.lifetimes import FloatArray, IntArray, Lifetimes
+from reliability.stats.lifetimes import FloatArray, Lifetimes
 from reliability.stats.newton import Evaluation, Maximum, maximise
 from reliability.stats.profile_intervals import normal_quantile
 from reliability.stats.weibull_fit import fit_weibull
@@ -32,6 +31,8 @@ LOWEST = -HIGHEST
 LARGEST_STEP = np.array([0.7, 1.5, 0.7, 1.5, 1.0])
 # a ratio beyond exp(12) either way is called unbounded
 FARTHEST = 12.0
+# log-likelihood below the highest node of the spread at which another plays no part, at a start and at the top
+FAR_NODES, NEAR_NODES = 500.0, 60.0
 FEW_FAILURES, ORDINARY_LOG_SHAPE = 15, 0.7
 RESTARTS = 5
 
@@ -125,9 +126,9 @@ def life_ratio(
     normal_quantile(confidence_level)
     clusters = shared_clusters(before, after, sites, positions, past)
     refuse_unusable(before, after, past)
-    likelihood = ratio_likelihood(before, after, clusters, spread_prior, past)
-    start = _start(before, after, likelihood, common_shape)
-    top = _search(likelihood, start, common_shape)
+    whole = ratio_likelihood(before, after, clusters, spread_prior, past)
+    start = _start(before, after, whole, common_shape)
+    likelihood, top = _highest(whole, start, common_shape)
     if not top.converged:
         raise NotConverged(
             "The search for the life ratio did not settle. Use common_shape=True, or wait for more failures.",
@@ -149,35 +150,6 @@ def life_ratio(
     return LifeRatio(**{**found.__dict__, "ratios": ratios})
 
 
-def shared_clusters(
-    before: Lifetimes, after: Lifetimes, sites: Any, positions: Any, past: Lifetimes | None = None
-) -> tuple[IntArray, ...] | None:
-    """Numbers of the sites (or positions at sites) common to all groups; None where there are fewer than two."""
-    groups = [before, after] if past is None else [before, after, past]
-    if sites is None and all(lives.sites is not None for lives in groups):
-        sites = tuple(lives.sites for lives in groups)
-    columns = [given for given in (sites, positions) if given is not None]
-    if not columns:
-        return None
-    labels: list[Any] = []
-    for number, lives in enumerate(groups):
-        try:
-            parts = [list(given[number]) for given in columns]
-        except (TypeError, IndexError) as error:
-            raise InvalidArgument(
-                "sites and positions are pairs of lists: of the old lives, of the new (and a third of the past)."
-            ) from error
-        if any(len(part) != len(lives) for part in parts):
-            raise InvalidArgument(f"sites and positions must have one label for each of {len(lives)} lives.")
-        labels += list(zip(*parts, strict=True))
-    joined: NDArray[Any] = np.empty(len(labels), dtype=object)
-    joined[:] = labels
-    codes = label_codes(joined, joined.size)
-    if codes.max() < 1:
-        return None
-    return tuple(np.split(codes, np.cumsum([len(lives) for lives in groups])[:-1]))
-
-
 def refuse_unusable(before: Lifetimes, after: Lifetimes, past: Lifetimes | None = None) -> None:
     if past is not None and past.has_intervals:
         raise UnsupportedRows("Some parts failed between two ages in the past. Use counted_at_middle for it as well.")
@@ -194,6 +166,20 @@ def refuse_unusable(before: Lifetimes, after: Lifetimes, past: Lifetimes | None 
                 failures=0,
                 needed=1,
             )
+
+
+def _highest(whole: RatioLikelihood, start: FloatArray, common_shape: bool) -> tuple[RatioLikelihood, Maximum]:
+    """The top, and the likelihood with only those nodes of the spread that count near it."""
+    likelihood = whole.narrowed(start, FAR_NODES)
+    top = _search(likelihood, start, common_shape)
+    best = _free_matrix(whole.size, common_shape) @ top.point
+    narrowed = whole.narrowed(best, NEAR_NODES)
+    if narrowed.nodes is not None and likelihood.nodes is not None and likelihood is not whole:
+        inside = np.isin(narrowed.nodes.spreads, likelihood.nodes.spreads)
+        if not inside.all():  # the top lies where other nodes count
+            top = _search(whole, best, common_shape)
+            narrowed = whole.narrowed(_free_matrix(whole.size, common_shape) @ top.point, NEAR_NODES)
+    return narrowed, top
 
 
 def _start(before: Lifetimes, after: Lifetimes, likelihood: RatioLikelihood, common_shape: bool) -> FloatArray:

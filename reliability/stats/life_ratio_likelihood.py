@@ -3,74 +3,18 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from functools import cached_property
 
 import numpy as np
 
+from reliability.stats.life_ratio_rows import GroupMoments, GroupRows, group_rows
 from reliability.stats.lifetimes import FloatArray, IntArray, Lifetimes
 from reliability.stats.newton import Evaluation
 from reliability.stats.site_likelihood import SpreadNodes, rising_log, spread_nodes
-from reliability.stats.weibull_likelihood import LARGEST_LOG_HAZARD
 
+MANY_CLUSTERS = 2000
 SMALLEST_SPREAD, LARGEST_SPREAD, SPREAD_STEP = 1e-3, 30.0, 0.45
-
-
-@dataclass(frozen=True, eq=False)
-class GroupRows:
-    """One group's rows without intervals, sorted by cluster: log ages less the reference, weights with a minus for
-    entries. basis (2, P) gives the group's (log shape, level) from all P parameters.
-    """
-
-    log_ages: FloatArray
-    signed_weights: FloatArray
-    clusters: IntArray
-    failures: float
-    sum_log_exact: float
-    basis: FloatArray
-
-    def sums_at(self, point: FloatArray, count: int) -> FloatArray:
-        """`cluster_sums` at all P parameters."""
-        log_shape, level = self.basis @ point
-        return self.cluster_sums(math.exp(log_shape), float(level), count)
-
-    def cluster_sums(self, shape: float, level: float, count: int) -> FloatArray:
-        """Cumulative hazard of each cluster, its slope and second derivative in log shape, shape (3, count)."""
-        y = shape * self.log_ages
-        hazard = np.exp(np.minimum(y + level, LARGEST_LOG_HAZARD)) * self.signed_weights
-        rows = (hazard, hazard * y, hazard * y * (y + 1.0))
-        sums = np.stack([np.bincount(self.clusters, weights=row, minlength=count) for row in rows])
-        sums[0] = np.maximum(sums[0], 0.0)
-        return sums
-
-    def hazards(self, shapes: FloatArray, levels: FloatArray, count: int) -> FloatArray:
-        """Cumulative hazard of each cluster for many (shape, level), shape (draws, count)."""
-        powers = np.minimum(shapes[:, None] * self.log_ages + levels[:, None], LARGEST_LOG_HAZARD)
-        rows = np.exp(powers) * self.signed_weights
-        present, first = np.unique(self.clusters, return_index=True)
-        sums = np.zeros((shapes.size, count))
-        sums[:, present] = np.maximum(np.add.reduceat(rows, first, axis=1), 0.0)
-        return sums
-
-
-def group_rows(lifetimes: Lifetimes, clusters: IntArray, log_reference: float, basis: FloatArray) -> GroupRows:
-    late = lifetimes.entries > 0
-    ages = np.concatenate([lifetimes.durations, lifetimes.entries[late]])
-    signed = np.concatenate([lifetimes.weights, -lifetimes.weights[late]])
-    where = np.concatenate([clusters, clusters[late]])
-    # rows of one cluster and age are added: a site has few distinct days
-    order = np.lexsort((ages, where))
-    ages, signed, where = ages[order], signed[order], where[order]
-    first = np.flatnonzero(np.append(True, (np.diff(ages) != 0.0) | (np.diff(where) != 0)))
-    exact = lifetimes.observed
-    logs = np.log(lifetimes.durations[exact]) - log_reference
-    return GroupRows(
-        log_ages=np.log(ages[first]) - log_reference,
-        signed_weights=np.add.reduceat(signed, first),
-        clusters=where[first],
-        failures=lifetimes.failures,
-        sum_log_exact=float(lifetimes.weights[exact] @ logs),
-        basis=basis,
-    )
 
 
 @dataclass(frozen=True, eq=False)
@@ -82,7 +26,7 @@ class RatioLikelihood:
     nu averaged over its prior, as in `SiteLikelihood`. Without nodes z is 1: independent lives.
     """
 
-    groups: tuple[GroupRows, ...]
+    groups: tuple[GroupRows | GroupMoments, ...]
     failures: FloatArray  # of each cluster, all groups, shape (S,)
     log_reference: float
     nodes: SpreadNodes | None
@@ -93,6 +37,25 @@ class RatioLikelihood:
         return int(self.groups[0].basis.shape[1])
 
     def __call__(self, point: FloatArray) -> Evaluation:
+        key = point.tobytes()
+        if key not in self._last:
+            self._last.clear()
+            self._last[key] = self._evaluated(point)
+        return self._last[key]
+
+    @cached_property
+    def _last(self) -> dict[bytes, Evaluation]:
+        """The latest evaluation: a search asks again where it ended."""
+        return {}
+
+    @cached_property
+    def _rising(self) -> FloatArray:
+        """Sum over clusters of log (1 + j nu), j below the failures, for each node, shape (V,)."""
+        assert self.nodes is not None
+        failures, count = np.unique(self.failures, return_counts=True)
+        return count @ rising_log(failures, self.nodes.spreads)
+
+    def _evaluated(self, point: FloatArray) -> Evaluation:
         with np.errstate(over="ignore", invalid="ignore", under="ignore"):
             value, slope, bend = self._terms(point)
         if not (math.isfinite(value) and np.isfinite(slope).all() and np.isfinite(bend).all()):
@@ -135,10 +98,8 @@ class RatioLikelihood:
         """Log of prior mass times the clusters' terms for each node of nu, shape (V,)."""
         assert self.nodes is not None
         spreads = self.nodes.spreads
-        logs = rising_log(self.failures, spreads) - (self.failures[:, None] + 1.0 / spreads) * np.log1p(
-            hazard[:, None] * spreads
-        )
-        return logs.sum(axis=0) + self.nodes.log_masses
+        logs = np.log1p(hazard[:, None] * spreads)
+        return self._rising - self.failures @ logs - logs.sum(axis=0) / spreads + self.nodes.log_masses
 
     def _second(self, sums: list[FloatArray], factors: FloatArray) -> FloatArray:
         """Sum over clusters of factor x second derivatives of the hazard, shape (V, P, P)."""
@@ -162,8 +123,7 @@ class RatioLikelihood:
                 return total - hazard.sum(axis=1)
             heights = np.empty((len(points), self.nodes.spreads.size))
             for place, spread in enumerate(self.nodes.spreads):
-                fixed = float(rising_log(self.failures, np.array([spread])).sum())
-                heights[:, place] = fixed - np.log1p(spread * hazard) @ (self.failures + 1.0 / spread)
+                heights[:, place] = self._rising[place] - np.log1p(spread * hazard) @ (self.failures + 1.0 / spread)
         heights += self.nodes.log_masses
         top = heights.max(axis=1)
         return total + top + np.log(np.exp(heights - top[:, None]).sum(axis=1))
@@ -172,10 +132,23 @@ class RatioLikelihood:
         """Mean of nu given the parameters; 0 for independent lives."""
         if self.nodes is None:
             return 0.0
-        hazard = np.sum([rows.sums_at(point, self.failures.size)[0] for rows in self.groups], axis=0)
-        heights = self._heights(hazard)
+        heights = self.node_heights(point)
         shares = np.exp(heights - heights.max())
         return float(shares @ self.nodes.spreads / shares.sum())
+
+    def node_heights(self, point: FloatArray) -> FloatArray:
+        """Log-likelihood of each node of nu with its prior mass, up to a constant, shape (V,)."""
+        return self._heights(np.sum([rows.sums_at(point, self.failures.size)[0] for rows in self.groups], axis=0))
+
+    def narrowed(self, point: FloatArray, within: float) -> RatioLikelihood:
+        """Only the nodes of nu whose height at the point comes within so much of the highest, and one on either side:
+        with thousands of clusters all others add nothing, and each costs as much as one that does."""
+        if self.nodes is None or self.failures.size < MANY_CLUSTERS:
+            return self
+        heights = self.node_heights(point)
+        high = np.flatnonzero(heights > heights.max() - within)
+        kept = slice(max(int(high[0]) - 1, 0), int(high[-1]) + 2)
+        return replace(self, nodes=SpreadNodes(self.nodes.spreads[kept], self.nodes.log_masses[kept]))
 
 
 def ratio_likelihood(

@@ -49,13 +49,7 @@ def _piece(
 ) -> Lifetimes | None:
     if rows.size == 0:
         return None
-    last_good = np.maximum(lifetimes.last_good, entries)
-    return Lifetimes(
-        ends[rows],
-        observed[rows],
-        entries=entries[rows],
-        last_good=np.where(observed, last_good, np.nan)[rows],
-        weights=lifetimes.weights[rows],
-        sites=None if lifetimes.sites is None else lifetimes.sites[rows],
-        groups=None if lifetimes.groups is None else lifetimes.groups[rows],
-    )
+    cut = lifetimes.subset(rows)
+    observed = observed[rows]
+    last_good = np.where(observed, np.maximum(cut.last_good, entries[rows]), np.nan)
+    return cut.recut(ends[rows], observed, entries[rows], last_good)

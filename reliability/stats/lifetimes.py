@@ -11,11 +11,14 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from reliability.stats.errors import InvalidLifetimes
+from reliability.stats.ranks import as_whole, first_rows, ranked
 
 # of float64; numpy's own stubs take sums of weights for whole numbers, so more cannot be said
 FloatArray = NDArray[Any]
 BoolArray = NDArray[np.bool_]
 IntArray = NDArray[np.int64]
+INDEXES = ("_site_index", "_group_index")
+SQUEEZED = 4  # a key with so many times as many values as rows is squeezed before it is multiplied on
 
 
 @dataclass(frozen=True, eq=False)
@@ -70,11 +73,26 @@ class Lifetimes:
             object.__setattr__(self, name, column)
 
     @classmethod
-    def _trusted(cls, columns: dict[str, Any]) -> Self:
-        """Rows already known to be valid: no second validation."""
+    def _trusted(cls, columns: dict[str, Any], known: dict[str, Any] | None = None) -> Self:
+        """Rows already known to be valid: no second validation. known: the index of labels, where it is known."""
         made = object.__new__(cls)
         made._store(columns)
+        made.__dict__.update(known or {})
         return made
+
+    def knowing(self, **indexes: tuple[NDArray[Any], IntArray]) -> Self:
+        """The same with the distinct labels of `sites` or `groups` in order, and each row's place among them, given:
+        finding them among a million texts takes a second."""
+        known = {f"_{name.removesuffix('s')}_index": index for name, index in indexes.items()}
+        return self._trusted(self._columns(), {**self._known(), **known})
+
+    def _known(self, *without: str) -> dict[str, Any]:
+        """The indexes of labels that were asked for before, for the same rows."""
+        return {name: self.__dict__[name] for name in INDEXES if name in self.__dict__ and name not in without}
+
+    def _known_of(self, rows: NDArray[Any]) -> dict[str, Any]:
+        """The same for some of the rows: labels that none of them has are left away."""
+        return {name: _index_of(labels, codes, rows) for name, (labels, codes) in self._known().items()}
 
     def _columns(self) -> dict[str, Any]:
         names = ("durations", "observed", "entries", "last_good", "weights", "sites", "groups")
@@ -148,13 +166,18 @@ class Lifetimes:
 
     def grouped(self) -> Self:
         """The same lives with equal rows (all columns alike) merged and their weights added; sorted by duration."""
+        return self.grouped_with(np.zeros(len(self), dtype=np.int64))[0]
+
+    def grouped_with(self, codes: IntArray) -> tuple[Self, IntArray]:
+        """The same where only rows with equal codes (numbers of at least 0) are merged, and the codes that are left."""
         key = _combined_key(
-            [self.durations, self.entries, self.last_good, self.observed], [self.site_codes, self.group_codes]
+            [self.durations, self.entries, self.last_good, self.observed], [self.site_codes, self.group_codes, codes]
         )
-        _, first, inverse = np.unique(key, return_index=True, return_inverse=True)
+        distinct, inverse = ranked(key)
+        first = first_rows(inverse, distinct.size)
         columns = {name: _take(column, first) for name, column in self._columns().items()}
-        columns["weights"] = np.bincount(inverse, weights=self.weights, minlength=first.size)
-        return self._trusted(columns)
+        columns["weights"] = np.bincount(inverse, weights=self.weights, minlength=first.size).astype(np.float64)
+        return self._trusted(columns, self._known_of(first)), codes[first]
 
     def subset(self, mask: ArrayLike) -> Self:
         """The rows where mask (booleans or row numbers) says so. Raises InvalidLifetimes where none is left."""
@@ -163,20 +186,20 @@ class Lifetimes:
         kept = columns["durations"]
         if kept is None or kept.size == 0:
             raise InvalidLifetimes("No life is left after this choice. Choose fewer restrictions.")
-        return self._trusted(columns)
+        return self._trusted(columns, self._known_of(index))
 
     def reweighted(self, weights: ArrayLike) -> Self:
         """The same rows with other weights, shape (n,). Raises InvalidLifetimes where one is not above 0."""
         columns = self._columns()
         columns["weights"] = _column(weights, "weights", len(self))
         _check_rows(columns)
-        return self._trusted(columns)
+        return self._trusted(columns, self._known())
 
     def with_groups(self, groups: ArrayLike) -> Self:
         """The same rows with other groups, shape (n,)."""
         columns = self._columns()
         columns["groups"] = _labels(groups, "groups", len(self))
-        return self._trusted(columns)
+        return self._trusted(columns, self._known("_group_index"))
 
     def withdrawn_where(self, mask: ArrayLike) -> Self:
         """The same lives with the failures where mask is True counted as withdrawn at their durations."""
@@ -184,7 +207,22 @@ class Lifetimes:
         mask = np.asarray(mask, dtype=bool)
         columns["observed"] = self.observed & ~mask
         columns["last_good"] = np.where(mask, np.nan, self.last_good)
-        return self._trusted(columns)
+        return self._trusted(columns, self._known())
+
+    def recut(self, durations: FloatArray, observed: BoolArray, entries: FloatArray, last_good: FloatArray) -> Self:
+        """The same lives observed for another part of their time; the caller answers for entries below durations."""
+        known_age = ~observed | (last_good == durations)
+        columns = {**self._columns(), "durations": durations, "observed": observed, "entries": entries}
+        columns["last_good"] = np.where(known_age, np.nan, last_good)
+        return self._trusted(columns, self._known())
+
+    def counted_when_found(self) -> Self:
+        """The same lives with interval failures counted at the age at which they were found."""
+        if not self.has_intervals:
+            return self
+        columns = self._columns()
+        columns["last_good"] = np.broadcast_to(np.float64(np.nan), (len(self),))
+        return self._trusted(columns, self._known())
 
 
 def _numbers(values: Any, name: str) -> FloatArray:
@@ -308,20 +346,39 @@ def _index_labels(labels: NDArray[Any] | None, count: int) -> tuple[NDArray[Any]
     return distinct, codes.astype(np.int64)
 
 
+def _index_of(labels: NDArray[Any], codes: IntArray, rows: NDArray[Any]) -> tuple[NDArray[Any], IntArray]:
+    codes = codes[rows]
+    if not labels.size:
+        return labels, codes
+    there = np.bincount(codes, minlength=labels.size) > 0
+    return (labels, codes) if there.all() else (labels[there], (np.cumsum(there) - 1)[codes])
+
+
 def _combined_key(columns: Sequence[NDArray[Any]], codes: Sequence[IntArray]) -> IntArray:
     """One whole number a row, equal where all columns are equal, ordered by the first column first."""
     key = np.zeros(columns[0].size, dtype=np.int64)
     size = 1
     parts = [column for column in columns if not _constant(column)]
-    for part in [np.unique(column, return_inverse=True)[1] for column in parts] + [c for c in codes if c.any()]:
+    for part in [_placed(column) for column in parts] + [c for c in codes if c.any()]:
         width = int(part.max()) + 1
-        if size * width >= 2**62:
-            # squeeze before the product overflows; the order is kept
-            key = np.unique(key, return_inverse=True)[1]
+        # squeezed before the product overflows, and while a table holds it: the order is kept
+        if size * width >= 2**62 or size > SQUEEZED * key.size:
+            key = ranked(key)[1]
             size = int(key.max()) + 1
         key = key * width + part
         size *= width
     return key
+
+
+def _placed(column: NDArray[Any]) -> IntArray:
+    """The place of each value among the distinct ones, NaN last."""
+    whole = column.astype(np.int64) if column.dtype == bool else as_whole(column)
+    if whole is None:
+        return np.unique(column, return_inverse=True)[1].astype(np.int64)
+    distinct, codes = ranked(whole)
+    if distinct[0] >= 0:
+        return codes
+    return np.where(codes == 0, distinct.size, codes) - 1
 
 
 def _constant(column: NDArray[Any]) -> bool:

@@ -25,7 +25,6 @@ MAY_READ_RECORDS = (
     "reliability/life_question.py",  # turns the names of a question into records
     "reliability/lives_of_set.py",  # imported lives, which have no records behind them
     "reliability/histories_from_fleet.py",  # the order of failures in a position, and the duty of modules
-    "reliability/lives_of_positions.py",  # lives one by one for comparisons within positions, by the same rules
     "reliability/running_parts.py",  # what runs now and how hard, for the forecast: ages, no lives
     "reliability/kept.py",  # asks for the version of the data, never for rows
     "reliability/views/",

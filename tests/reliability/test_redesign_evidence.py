@@ -18,6 +18,7 @@ from reliability.redesigns.question import RedesignQuestion, question_for
 from reliability.redesigns.with_past import sides_with_past
 from reliability.stats.difference import counted_when_found, life_ratio, logrank
 from tests.reliability.rollout_fleet import BEGAN, TODAY, RolloutFleet
+from tests.reliability.slow_lives import as_seen_on
 from tests.reliability.small_fleet import SmallFleet, day
 
 pytestmark = pytest.mark.django_db
@@ -109,7 +110,7 @@ def test_the_past_of_the_positions_ends_on_the_sites_first_day() -> None:
     whole = all_history(question().component, ["N2"], ["N1"], as_of=day(TODAY))
     beside = at_the_same_time(question().component, ["N2"], ["N1"], as_of=day(TODAY))
     (before, after), options = sides_with_past(whole, beside.starts)
-    for side, same in ((before, beside.side(BEFORE)), (after, beside.side(AFTER))):
+    for side, same in ((before, beside.side_of_positions(BEFORE)), (after, beside.side_of_positions(AFTER))):
         assert side.failures == same.failures
         assert np.array_equal(np.sort(side.durations), np.sort(same.durations))
         assert np.array_equal(np.sort(side.entries), np.sort(same.entries))
@@ -143,11 +144,11 @@ def test_without_a_new_part_nothing_is_claimed() -> None:
 def test_the_path_ends_with_today_and_ages_lie_on_the_way() -> None:
     RolloutFleet()
     lives = at_the_same_time(question().component, ["N2"], ["N1"], as_of=day(TODAY))
-    halfway = lives.as_seen_on(day(300).toordinal())
-    assert halfway.lifetimes.failures == sum(lives.lifetimes.observed & (lives.ended <= day(300).toordinal()))
-    assert (halfway.lifetimes.durations <= 300).all()
-    same = lives.as_seen_on(day(TODAY).toordinal())
-    assert np.array_equal(np.sort(same.lifetimes.durations), np.sort(lives.lifetimes.durations))
+    halfway, _ = as_seen_on(lives, day(300).toordinal())
+    assert halfway.failures == sum(lives.lifetimes.observed & (lives.ended <= day(300).toordinal()))
+    assert (halfway.durations <= 300).all()
+    same, _ = as_seen_on(lives, day(TODAY).toordinal())
+    assert np.array_equal(np.sort(same.durations), np.sort(lives.lifetimes.durations))
     path = redesign_document(question())["path"]
     assert path[-1]["on"] == day(TODAY).isoformat()
     assert path[0]["information"] < path[len(path) // 2]["information"] < path[-1]["information"]
