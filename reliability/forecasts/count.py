@@ -9,10 +9,11 @@ import math
 from collections.abc import Sequence
 from typing import TYPE_CHECKING, Any
 
-from reliability.forecasts.horizon import WEEK, week_starts
+from reliability.forecasts.horizon import WEEK
 from reliability.forecasts.learned import Learned
 from reliability.forecasts.positions import Positions
 from reliability.forecasts.question import Question
+from reliability.forecasts.season import edges_of, in_season, season_of
 from reliability.forecasts.what_if import NotCountedYet
 
 if TYPE_CHECKING:
@@ -34,14 +35,6 @@ def is_simulated(question: Question) -> bool:
     return assumed.retrofit_a_week is not None or 0 < question.switch_day < question.span
 
 
-def edges_of(question: Question) -> tuple[list[int], tuple[int, int]]:
-    """Edges of what is counted, in days from the start of the count, and the stretch asked for among them."""
-    starts = [question.gap + start for start in week_starts(question.days)]
-    if question.gap == 0:
-        return starts, (0, len(starts) - 1)
-    return [0, *starts], (1, len(starts))
-
-
 def count(question: Question, learned: Learned, positions: Positions) -> CountForecast:
     """Failures, parts used and planned ones: in total, by week, and by site, type, part and what goes in."""
     import numpy as np
@@ -51,10 +44,11 @@ def count(question: Question, learned: Learned, positions: Positions) -> CountFo
     if is_simulated(question):
         from reliability.forecasts.simulated import simulated_forecast
 
-        return simulated_forecast(question, simulate(question, learned, positions), positions)
+        found = simulated_forecast(question, simulate(question, learned, positions), positions)
+        return in_season(found, season_of(question, learned.duty)) if learned.duty.season else found
     windows, stretch = edges_of(question)
     labels = [positions.column(name) for name in LABELS]
-    return forecast_counts(
+    found = forecast_counts(
         designs_of(learned),
         positions.ages,
         positions.horizons,
@@ -70,6 +64,7 @@ def count(question: Question, learned: Learned, positions: Positions) -> CountFo
         rng=np.random.default_rng(question.seed("")),
         **settings_of(question, learned, positions),
     )
+    return in_season(found, season_of(question, learned.duty)) if learned.duty.season else found
 
 
 def designs_of(learned: Learned) -> dict[str, Any]:

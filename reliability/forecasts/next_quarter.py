@@ -19,6 +19,7 @@ from reliability.forecasts.horizon import week_starts
 from reliability.forecasts.learned import Learned, learned, learned_from
 from reliability.forecasts.positions import positions_of
 from reliability.forecasts.question import Question, question_of
+from reliability.forecasts.season import season_of
 from reliability.forecasts.taken_along import Trigger, parts_taken
 from reliability.forecasts.written import written
 from reliability.kept import kept
@@ -98,7 +99,7 @@ def tallied(question: Question, running: RunningParts, taught: Learned) -> Tally
 
 
 def _season(question: Question, taught: Learned) -> list[str]:
-    factor = taught.duty.factor(question.span)
+    factor = taught.duty.factor(question.span) * season_of(question, taught.duty).whole
     if abs(factor - 1.0) < 0.02:
         return []
     return [

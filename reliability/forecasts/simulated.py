@@ -17,7 +17,8 @@ def simulated_forecast(question: Question, found: SimulatedCounts, positions: Po
     """Shares of the simulated fleets with 0, 1, 2 ... failures, parts used and planned ones."""
     import numpy as np
 
-    from reliability.forecasts.count import LABELS, edges_of, singles
+    from reliability.forecasts.count import LABELS, singles
+    from reliability.forecasts.season import edges_of
     from reliability.stats.count_results import CountForecast
 
     single = singles(positions)

@@ -47,8 +47,8 @@ def compound_counts(triggers: ArrayLike, each: ArrayLike) -> FloatArray:
 def taken_along(triggers: ArrayLike, taken: float, left: float, *, prior: float = 0.5) -> FloatArray:
     """How many of N failures take a part along, its chance learned from `taken` of `taken + left` past ones.
 
-    Beta-binomial given N with Jeffreys' prior (prior: what it adds to both numbers): the unknown chance is common to all failures, so the band is wider
-    than a binomial's. Returns probabilities of 0, 1, ... up to the greatest N.
+    Beta-binomial given N with Jeffreys' prior (prior: what it adds to both numbers): the unknown chance is common to
+    all failures, so the band is wider than a binomial's. Returns probabilities of 0, 1, ... up to the greatest N.
     """
     outer = _checked(triggers)
     if taken < 0 or left < 0:
