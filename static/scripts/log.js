@@ -191,18 +191,47 @@
   if (question) question.scrollIntoView({ block: "center" });
 
   // A second tap while the first is under way sends nothing; the entry key on the server decides the rest.
+  // The book is asked first whether it can be reached: without signal a browser would put its own page over the entry.
   function sendOnce(target) {
     target.addEventListener("submit", (event) => {
-      if (target.dataset.sent) {
-        event.preventDefault();
-        return;
-      }
+      if (target.dataset.reached) return;
+      event.preventDefault();
+      if (target.dataset.sent) return;
       target.dataset.sent = "yes";
       target.classList.add("sending");
+      reach(target, event.submitter);
     });
-    window.addEventListener("pageshow", () => {
-      delete target.dataset.sent;
-      target.classList.remove("sending");
-    });
+    window.addEventListener("pageshow", () => ready(target));
+  }
+
+  function ready(target) {
+    delete target.dataset.sent;
+    delete target.dataset.reached;
+    target.classList.remove("sending");
+  }
+
+  function reach(target, submitter) {
+    const late = new AbortController();
+    const clock = setTimeout(() => late.abort(), 10000);
+    fetch("/health", { cache: "no-store", signal: late.signal })
+      .then(() => {
+        target.dataset.reached = "yes";
+        target.requestSubmit(submitter);
+      })
+      .catch(() => {
+        ready(target);
+        sayNoSignal(target, submitter);
+      })
+      .finally(() => clearTimeout(clock));
+  }
+
+  function sayNoSignal(target, submitter) {
+    const said = target.querySelector(".no-signal") || document.createElement("p");
+    said.className = "message warning no-signal";
+    said.setAttribute("role", "alert");
+    const button = submitter || target.querySelector("button");
+    said.textContent = `No signal: nothing was sent. What you entered stays on this page. Press “${button.textContent.trim()}” again where there is signal.`;
+    button.parentElement.before(said);
+    said.scrollIntoView({ block: "center" });
   }
 })();

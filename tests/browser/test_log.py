@@ -178,6 +178,20 @@ def test_a_double_tap_records_once(phone, live_server, weir):
     assert Visit.objects.count() == 1
 
 
+def test_without_signal_the_entry_stays_on_the_page_and_goes_out_later(phone, context, live_server, weir):
+    open_log(phone, live_server)
+    tile(phone, "All well").click()
+    phone.locator("[name=strokes]").fill("60000")
+    context.set_offline(True)
+    button(phone, "Done").click()
+    expect(phone.get_by_text("No signal: nothing was sent.")).to_be_visible()
+    expect(phone.locator("[name=strokes]")).to_have_value("60000")
+    context.set_offline(False)
+    button(phone, "Done").click()
+    expect(phone.get_by_text("Recorded: all well")).to_be_visible()
+    assert Visit.objects.count() == 1
+
+
 def test_the_phones_own_back_goes_one_step_back(phone, live_server, weir):
     open_log(phone, live_server)
     position(phone, "drive nut").click()
