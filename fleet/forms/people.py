@@ -41,12 +41,18 @@ class BookForm(RecordForm):
     currency = forms.RegexField(
         r"^[A-Z]{3}$", label="Currency", error_messages={"invalid": "Write the currency as three letters, like EUR."}
     )
-    zone = forms.ChoiceField(label="Time zone of sites that have none of their own")
+    zone = forms.ChoiceField(label="Time zone of the office, and of sites that have none of their own")
     bench_target = forms.IntegerField(min_value=0, max_value=100_000, label="Modules the bench may have waiting")
     review_period_days = forms.IntegerField(min_value=1, max_value=366, label="Days between two orders")
-    visit_cost = forms.DecimalField(min_value=0, max_digits=10, decimal_places=2, label="Cost of a visit")
-    stop_cost_per_day = forms.DecimalField(min_value=0, max_digits=10, decimal_places=2, label="Cost of a day's stop")
-    bench_hour_cost = forms.DecimalField(min_value=0, max_digits=10, decimal_places=2, label="Cost of a bench hour")
+    visit_cost = forms.DecimalField(
+        min_value=0, max_digits=10, decimal_places=2, label="Cost of a visit, in this currency"
+    )
+    stop_cost_per_day = forms.DecimalField(
+        min_value=0, max_digits=10, decimal_places=2, label="Cost of a day's stop, in this currency"
+    )
+    bench_hour_cost = forms.DecimalField(
+        min_value=0, max_digits=10, decimal_places=2, label="Cost of a bench hour, in this currency"
+    )
     service_level = forms.FloatField(
         min_value=0.5, max_value=0.999, label="Wanted chance of not running out", help_text="0.95 is 95 in 100."
     )

@@ -19,7 +19,7 @@ from fleet.formats import counted, long_day, number
 from fleet.forms.errors import add_record_error
 from fleet.forms.stock_filters import DeliveryFilter, SupplyFilter
 from fleet.forms.supply import CallOffForm, DeliveryForm, LineForm, OrderSheet
-from fleet.models import Part, SiteKind, StockMove, Store, SupplyLine, SupplyOrder
+from fleet.models import Book, Part, SiteKind, StockMove, Store, SupplyLine, SupplyOrder
 from fleet.rights import STOCK, needs
 from fleet.stock import days_of, lead_times
 from fleet.views.listing import Column, Listing
@@ -190,6 +190,7 @@ def supply_order(request: Any, code: str) -> HttpResponse:
         "form": form,
         "stores": bool(stores),
         "receipts": request.seen(StockMove).filter(line__order=order).select_related("part", "store", "entered_by"),
+        "currency": Book.load().currency,
         "crumbs": IN_ORDERS,
     }
     return render(request, "supply/order.html", context, status=422 if form.is_bound else 200)

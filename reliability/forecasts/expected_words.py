@@ -28,7 +28,7 @@ def told(now: Now | None, today: dt.date) -> dict[str, Any]:
     }
 
 
-NOTHING_KEPT = "What was to be expected was not counted yet. The background worker does so once a day."
+NOTHING_KEPT = "What was to be expected was not counted yet. The program does so once a day."
 
 
 def answer(now: Now, unusual: int) -> str:
@@ -77,7 +77,7 @@ def note(now: Now, today: dt.date) -> str:
     fresh = "" if now.until >= today else f" Counted up to {long_day(now.until)}"
     if fresh:
         late = (today - now.until).days > STALE_DAYS
-        fresh += ": the background worker has not run since." if late else "; today is counted by the next round."
+        fresh += ": the daily count has not run since." if late else "; today is counted by the next round."
     missing = f" {counted(now.missing, 'component')} could not be compared." if now.missing else ""
     return f"{rule}{fresh}{missing}"
 

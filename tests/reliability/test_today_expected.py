@@ -187,7 +187,7 @@ def test_it_says_when_nothing_is_kept_and_when_the_worker_stood_still(client: Cl
     assert "was not counted yet" in page(client, make_manager())
     keep("NUT", 3.0, 5.0, until=dt.date(2025, 5, 8))
     text = page(client, make_manager())
-    assert "Counted up to 8\u00a0May 2025: the background worker has not run since." in text
+    assert "Counted up to 8\u00a0May 2025: the daily count has not run since." in text
     now = expected_now([fleet.component])
     assert now is not None
     assert (
