@@ -15,7 +15,7 @@ import hypothesis
 import pytest
 from django.conf import settings
 
-from tests import migrated
+from tests import emptied, migrated
 
 CHROMIUM = "/usr/bin/chromium"
 # Playwright's own event loop would make Django refuse every query in a browser test.
@@ -36,16 +36,26 @@ def pytest_report_header() -> str:
     return f"engine: {'PostgreSQL' if on_postgresql() else 'SQLite, a file'}"
 
 
+@pytest.hookimpl(tryfirst=True)  # before the marks choose
 def pytest_collection_modifyitems(items: list[pytest.Item]) -> None:
     only_postgresql = pytest.mark.skip(
         reason="needs writers side by side, and SQLite lets in one at a time: `make test` runs it on PostgreSQL"
     )
     no_browser = pytest.mark.skip(reason=f"no {CHROMIUM}: apt-get install chromium")
     for item in items:
+        if uses_database(item):
+            item.add_marker(pytest.mark.database)
         if item.get_closest_marker("postgres") and not on_postgresql():
             item.add_marker(only_postgresql)
         if item.get_closest_marker("browser") and not os.path.exists(CHROMIUM):
             item.add_marker(no_browser)
+
+
+def uses_database(item: pytest.Item) -> bool:
+    fixtures = getattr(item, "fixturenames", ())
+    return any(map(item.get_closest_marker, ("django_db", "postgres"))) or not {"db", "transactional_db"}.isdisjoint(
+        fixtures
+    )
 
 
 def pytest_unconfigure() -> None:
@@ -59,6 +69,8 @@ def django_db_modify_db_settings(django_db_modify_db_settings_parallel_suffix: N
     from django.db import connection
 
     migrated.use_for(connection.settings_dict)
+    if on_postgresql():
+        emptied.install()
 
 
 @pytest.fixture(scope="session")
