@@ -13,6 +13,7 @@ from typing import TYPE_CHECKING, Any
 
 from django.utils import timezone
 
+from fleet.formats import number, rounded
 from fleet.models import Component
 from reliability.fleet_lives import FleetLives
 from reliability.forecasts.duty import Duty, duty
@@ -31,6 +32,8 @@ if TYPE_CHECKING:
 DRAWS = 400
 FEW = 10  # failures below which an earlier design's shape is leaned on, and from which it can be
 SHAPE_SPREAD = 0.35  # how far the log shape of a new design strays from the earlier one's
+FEWEST_LENT = 3  # failures from which a design tells another how long it may live
+LIFE_SPREAD = 0.7  # how far the log of its median life strays from the earlier one's
 PLAIN_PRIOR = (math.log(2.0), 1.0)
 LONGEST = 1e12  # where hardly anything is known a scale may be without bounds
 ALL = ""  # the design that stands for all parts of the component
@@ -182,15 +185,16 @@ def _posteriors(
     known: dict[str, tuple[LifePosterior, Lifetimes]] = {}
     older = _superseded(component)
     for part in order:
-        prior = PLAIN_PRIOR
-        leaned_on = _earlier(part, older, known) if by_part[part].failures < FEW else None
-        if leaned_on is not None:
-            prior = _shape_prior(known[leaned_on][0])
-            warnings.append(
-                f"{part} has failed {round(by_part[part].failures)} times so far. How its failures grow with age leans "
-                f"on {leaned_on} (shape {math.exp(prior[0]):.1f}); how long it lives comes from its own records."
-            )
-        known[part] = (_posterior(by_part[part], component.clock, prior), by_part[part])
+        few = by_part[part].failures < FEW
+        shaped_like = _earlier(part, older, known, FEW) if few else None
+        living_like = _earlier(part, older, known, FEWEST_LENT) if few else None
+        prior = PLAIN_PRIOR if shaped_like is None else _shape_prior(known[shaped_like][0])
+        posterior = _posterior(by_part[part], component.clock, prior)
+        if living_like is not None:
+            posterior = _living_like(posterior, known[living_like][0])
+            said = _leans_on(known[living_like][0], living_like, component.clock, shaped_like, prior)
+            warnings.append(f"{part} has failed {round(by_part[part].failures)} times so far. {said}")
+        known[part] = (posterior, by_part[part])
     if any(part not in known for part in component.parts.values_list("code", flat=True)):
         known[ALL] = (_posterior(everything, component.clock, PLAIN_PRIOR), everything)
     return known
@@ -213,9 +217,31 @@ def _superseded(component: Component) -> dict[str, str]:
     return dict(rows)
 
 
-def _earlier(part: str, older: Mapping[str, str], known: Mapping[str, Any]) -> str | None:
+def _living_like(posterior: LifePosterior, other: LifePosterior) -> LifePosterior:
+    from reliability.stats.leaning import leaning_on_life, log_median
+
+    centre, deviation = log_median(other)
+    return leaning_on_life(posterior, (centre, math.hypot(LIFE_SPREAD, deviation)))
+
+
+def _leans_on(
+    other: LifePosterior, living_like: str, clock: str, shaped_like: str | None, prior: tuple[float, float]
+) -> str:
+    from reliability.stats.leaning import log_median
+
+    middle = math.exp(log_median(other)[0])
+    life = (
+        f"How long it lives leans loosely on {living_like}, half of which last {number(rounded(middle))} {clock}: "
+        "a life four times as long, or a fourth, is not ruled out"
+    )
+    if shaped_like is None:
+        return f"{life}."
+    return f"{life}. How its failures grow with age leans on {shaped_like} (shape {math.exp(prior[0]):.1f})."
+
+
+def _earlier(part: str, older: Mapping[str, str], known: Mapping[str, Any], least: int) -> str | None:
     """An earlier design with enough failures: down the chain, else the one with the most of them."""
-    enough = [each for each, (_, lifetimes) in known.items() if lifetimes.failures >= FEW]
+    enough = [each for each, (_, lifetimes) in known.items() if lifetimes.failures >= least]
     step, seen = older.get(part), {part}
     while step is not None and step not in seen:
         if step in enough:
