@@ -98,6 +98,17 @@ class NotEnough(RecordError):
         )
 
 
+class OrderedMeanwhile(RecordError):
+    """Somebody ordered the same part after the page was opened; sent again it is ordered besides."""
+
+    def __init__(self, *, who: str, quantity: int, part: str, order: str, newest: int) -> None:
+        super().__init__(
+            f"{who} ordered {thousands(quantity)} of {part} since you opened this page (order {order}). "
+            "Nothing of yours is ordered yet. Send it once more only if it is needed besides.",
+            shown_now={"newest": newest},
+        )
+
+
 class ChangedCount(RecordError):
     """Stock moved between the moment somebody began to count and the moment they said the number."""
 

@@ -12,7 +12,7 @@ from django.utils import timezone
 
 from fleet.actions.base import change, once
 from fleet.actions.checks_values import clean_planned_day, need_day
-from fleet.actions.errors import BadValue, RecordError, day_words
+from fleet.actions.errors import BadValue, OrderedMeanwhile, RecordError, day_words
 from fleet.actions.writes import add
 from fleet.models import Book, Part, Person, SupplyLine, SupplyOrder
 from fleet.models.zones import zone
@@ -37,8 +37,12 @@ def place_supply_order(
     ordered_on: dt.date | None = None,
     entry_key: uuid.UUID | None = None,
     code: str | None = None,
+    newest: int | None = None,
 ) -> SupplyOrder:
-    """All lines in one order; its code is the supplier's or the book's own."""
+    """All lines in one order; its code is the supplier's or the book's own.
+
+    `newest` is the line entered last when the page was opened: who orders the same part at the same time is told.
+    """
     said = (lines, supplier, ordered_on, code)
     with (
         change(by=by, right=STOCK, raises_version=False),
@@ -50,6 +54,7 @@ def place_supply_order(
         day = today if ordered_on is None else need_day(ordered_on, field="ordered_on", today=today)
         if not lines:
             raise BadValue("The order holds no part yet. Enter how many of at least one.")
+        check_not_ordered_meanwhile(lines, newest)
         order = SupplyOrder(supplier=supplier, ordered_on=day, entered_by=by)
         add(order, code=code or None, prefix="SO")
         seen: set[int] = set()
@@ -64,6 +69,22 @@ def place_supply_order(
             seen.add(line.part.pk)
         answer["order"] = order.pk
     return order
+
+
+def check_not_ordered_meanwhile(lines: Sequence[OrderedPart], newest: int | None) -> None:
+    """Under the locks of the parts, so that of two who order at one moment the second sees what the first did."""
+    if newest is None:
+        return
+    parts = Part.objects.filter(pk__in=[line.part.pk for line in lines]).order_by("pk")
+    locked = list(parts.select_for_update(of=("self",), no_key=True).values_list("pk", flat=True))
+    since = SupplyLine.objects.standing().filter(part__in=locked, pk__gt=newest).select_related("order", "part")
+    line = since.order_by("pk").last()
+    if line is not None:
+        who = line.entered_by.name if line.entered_by is not None else "Somebody"
+        raise OrderedMeanwhile(
+            who=who, quantity=line.quantity, part=line.part.code, order=line.order.code,
+            newest=SupplyLine.objects.newest(),
+        )  # fmt: skip
 
 
 def write_line(order: SupplyOrder, line: OrderedPart, by: Person | None) -> SupplyLine:

@@ -11,7 +11,7 @@ from django import forms
 from fleet.actions.place_supply_order import OrderedPart
 from fleet.forms.choosing import PickField
 from fleet.forms.log import EntryKeyField
-from fleet.forms.record import CodeInput, DayInput, VersionField
+from fleet.forms.record import LOST_VERSION, CodeInput, DayInput, VersionField
 from fleet.models import Part, Store, SupplyLine
 from fleet.models.supply import MOST_PIECES
 
@@ -19,17 +19,29 @@ BLANK_LINES = 6
 MOST_LINES = 60
 
 
+class NewestField(forms.IntegerField):
+    """The order line entered last when the page was opened: what comes after it, its reader has not seen."""
+
+    widget = forms.HiddenInput
+
+    def __init__(self) -> None:
+        super().__init__(required=False, min_value=0, max_value=2**62)
+        self.error_messages = dict.fromkeys(self.error_messages, LOST_VERSION)
+
+
 class OrderForm(forms.Form):
     """What holds for the whole order."""
 
     entry_key = EntryKeyField()
+    newest = NewestField()
     supplier = forms.CharField(max_length=120, required=False, help_text="Empty: that of the first part.")
     code = CodeInput(label="Order number", required=False, help_text="The supplier’s, or empty for one of the book.")
     ordered_on = DayInput(required=False, label="Ordered on", help_text="Empty: today.")
 
-    def __init__(self, *args: Any, **kwargs: Any) -> None:
+    def __init__(self, *args: Any, newest: int | None = None, **kwargs: Any) -> None:
         super().__init__(*args, **kwargs)
         self.fields["entry_key"].initial = uuid.uuid4()
+        self.fields["newest"].initial = newest
 
 
 class OrderLineForm(forms.Form):
@@ -66,8 +78,10 @@ def with_pack(part: Part) -> str:
 class OrderSheet:
     """The order's form and a form a line, checked together."""
 
-    def __init__(self, parts: Any, data: Any = None, asked: Sequence[tuple[str, str]] = ()) -> None:
-        self.order = OrderForm(data)
+    def __init__(
+        self, parts: Any, data: Any = None, asked: Sequence[tuple[str, str]] = (), newest: int | None = None
+    ) -> None:
+        self.order = OrderForm(data, newest=newest)
         count = self.lines_sent(data) if data is not None else min(MOST_LINES, len(asked) + BLANK_LINES)
         self.lines = [
             OrderLineForm(
@@ -108,6 +122,7 @@ class OrderSheet:
             "ordered_on": said["ordered_on"],
             "code": said["code"] or None,
             "entry_key": said["entry_key"],
+            "newest": said["newest"],
         }
 
 

@@ -43,6 +43,10 @@ class SupplyLineQuerySet(StrikeableQuerySet):
     def for_person(self, person: Person) -> SupplyLineQuerySet:
         return self.filter(order__in=SupplyOrder.objects.for_person(person))
 
+    def newest(self) -> int:
+        """The line entered last: what a page that is opened now has seen."""
+        return int(self.aggregate(newest=models.Max("pk"))["newest"] or 0)
+
     def with_received(self) -> SupplyLineQuerySet:
         """Adds what came so far (`received`) and what is still to come (`due`)."""
         from fleet.models.stock_move import StockMove

@@ -141,7 +141,8 @@ def new_supply_order(request: Any) -> HttpResponse:
     """`?line=N2:40&line=S1:10` fills lines beforehand."""
     asked = [tuple(each[:60].partition(":")[::2]) for each in request.GET.getlist("line")[:50]]
     parts = request.seen(Part).exclude(state="ended").order_by("code_order")
-    sheet = OrderSheet(parts, request.POST if request.method == "POST" else None, asked)  # type: ignore[arg-type]
+    data, newest = request.POST if request.method == "POST" else None, request.seen(SupplyLine).newest()
+    sheet = OrderSheet(parts, data, asked, newest)  # type: ignore[arg-type]
     if request.method == "POST" and sheet.is_valid():
         try:
             order = place_supply_order(by=request.user, **sheet.ordered())

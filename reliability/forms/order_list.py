@@ -12,7 +12,8 @@ from django.utils import timezone
 
 from fleet.forms.log import EntryKeyField
 from fleet.forms.record import DayInput
-from fleet.models import Book, Component, Part
+from fleet.forms.supply import NewestField
+from fleet.models import Book, Component, Part, SupplyLine
 from fleet.models.supply import MOST_PIECES
 
 SHOWS = [("", "all"), ("order", "to order"), ("out", "may run out before the next delivery"), ("old", "superseded")]
@@ -94,10 +95,12 @@ class TickedForm(forms.Form):
     """A tick and a quantity for each part on the list; the lines that are ticked become one supply order."""
 
     entry_key = EntryKeyField()
+    newest = NewestField()
 
     def __init__(self, data: Any, *, parts: Iterable[Any], quantities: dict[str, int], request: Any) -> None:
         super().__init__(data)
         self.fields["entry_key"].initial = uuid.uuid4()
+        self.fields["newest"].initial = request.seen(SupplyLine).newest()
         self.parts = {part.code: part for part in parts}
         for code in self.parts:
             wanted = quantities.get(code, 0)

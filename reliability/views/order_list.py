@@ -150,6 +150,7 @@ def placed(request: Any, ticks: TickedForm) -> Any:
         lines=[OrderedPart(part=part, quantity=count) for part, count in wanted],
         supplier=", ".join(suppliers)[:MOST_SUPPLIER],
         entry_key=ticks.cleaned_data["entry_key"],
+        newest=ticks.cleaned_data["newest"],
     )
 
 

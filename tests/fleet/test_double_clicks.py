@@ -14,7 +14,7 @@ from django.urls import reverse
 
 from fleet.actions.count_stock import count_stock
 from fleet.actions.entries import PartChange
-from fleet.actions.errors import BadValue, ChangedCount, RecordError
+from fleet.actions.errors import BadValue, ChangedCount, OrderedMeanwhile, RecordError
 from fleet.actions.place_supply_order import OrderedPart, place_supply_order
 from fleet.actions.plan_rollout import plan_rollout
 from fleet.actions.record_visit import record_visit
@@ -25,6 +25,7 @@ from fleet.models import (
     Fitting,
     KeptFile,
     LooksWrong,
+    Person,
     Redesign,
     RolloutStep,
     StockMove,
@@ -158,6 +159,27 @@ def test_one_order_number_is_placed_by_one_of_two(weir: Carriage) -> None:
     assert len(recorded(answers)) == 1
     assert "exists already" in raised(answers, BadValue)[0].message
     assert (SupplyOrder.objects.count(), SupplyLine.objects.count()) == (1, 1)
+
+
+def test_a_part_is_ordered_by_one_of_two_planners(weir: Carriage, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Both saw the same list; the second is told, and may order besides when they send it again."""
+    from fleet.actions import place_supply_order as place_supply_order_file
+
+    ines, otto = make_planner(name="Ines"), make_planner(name="Otto")
+    meeting = met_before(monkeypatch, place_supply_order_file, "add")
+
+    def ordering(person: Person, newest: int) -> Any:
+        lines = [OrderedPart(weir.n1, 20), OrderedPart(weir.n2, 5)]
+        return lambda: place_supply_order(by=person, lines=lines, entry_key=uuid.uuid4(), newest=newest)
+
+    answers = at_once(ordering(ines, 0), ordering(otto, 0))
+    [told] = raised(answers, OrderedMeanwhile)
+    assert len(recorded(answers)) == 1
+    assert not meeting.met
+    assert "since you opened this page" in told.message
+    assert SupplyLine.objects.count() == 2
+    ordering(otto, told.data["shown_now"]["newest"])()
+    assert SupplyLine.objects.count() == 4
 
 
 def test_a_module_is_planned_once_by_two(weir: Carriage) -> None:

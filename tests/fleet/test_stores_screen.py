@@ -192,6 +192,22 @@ def test_wrong_orders_are_refused_on_their_line(weir: Carriage, otto: Person) ->
     assert not SupplyOrder.objects.exists()
 
 
+def test_who_orders_what_somebody_ordered_meanwhile_is_told_once(weir: Carriage, otto: Person) -> None:
+    client = client_of(otto)
+    opened = client.get("/supply/new/").context["sheet"].order
+    hidden = {name: str(opened[name].value()) for name in ("entry_key", "newest")}
+    order = hidden | {"lines": "1", "line-0-part": weir.n1.code, "line-0-quantity": "10"}
+    place_supply_order(by=weir.manager, code="PO-1", lines=[OrderedPart(weir.n1, 20)])
+    told = client.post("/supply/new/", order)
+    assert told.status_code == 422
+    assert "20 of N1 since you opened this page (order PO-1)" in text(told).replace(weir.n1.code, "N1")
+    assert SupplyOrder.objects.count() == 1
+    newest = told.context["sheet"].order["newest"].value()
+    assert client.post("/supply/new/", order | {"newest": newest}).status_code == 302
+    assert client.post("/supply/new/", order | {"entry_key": str(uuid.uuid4()), "newest": "rubbish"}).status_code == 422
+    assert SupplyOrder.objects.count() == 2
+
+
 def test_a_line_is_changed_and_called_off(weir: Carriage, otto: Person) -> None:
     order = place_supply_order(by=otto, code="PO-8", ordered_on=on("2024-03-01"), lines=[OrderedPart(weir.n1, 10)])
     client, line = client_of(otto), order.lines.get()

@@ -124,6 +124,17 @@ def test_sent_twice_it_is_ordered_once(otto: Client) -> None:
     assert SupplyLine.objects.filter(quantity=40).count() == 1
 
 
+def test_who_orders_from_a_list_that_somebody_ordered_from_is_told(otto: Client) -> None:
+    opened = otto.get("/stores/order/").context["ticks"]["newest"].value()
+    otto.post("/stores/order/", ticks(tick_N2="on", pieces_N2="40", newest=opened))
+    late = otto.post("/stores/order/", ticks(tick_N2="on", pieces_N2="40", newest=opened))
+    assert late.status_code == 422
+    assert "since you opened this page" in late.content.decode()
+    assert SupplyLine.objects.filter(quantity=40).count() == 1
+    newest = late.context["ticks"]["newest"].value()
+    assert otto.post("/stores/order/", ticks(tick_N2="on", pieces_N2="40", newest=newest)).status_code == 302
+
+
 @pytest.mark.parametrize(
     ("sent", "words"),
     [
