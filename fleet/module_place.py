@@ -13,6 +13,9 @@ from django.db.models import Q
 from fleet.models import Book, Module, Placement, Reading, Site, Stop
 from fleet.models.zones import zone
 
+LATEST = 12
+FEWEST_DAYS = 7
+A_DAY = 24 * 3600
 Seen = Callable[[Any], Any]  # request.seen: the rows of a model that the person may see
 
 
@@ -27,6 +30,7 @@ class Standing:
     zone: ZoneInfo
     stop: Stop | None
     reading: Reading | None
+    pace: float | None = None  # strokes a day over the latest readings of the counter in use
 
     @property
     def where(self) -> str:
@@ -40,7 +44,7 @@ def standing_of(seen: Seen, module: Module) -> Standing:
     stay = seen(Placement).current().filter(module=module).select_related("site").first()
     site = stay.site if stay else None
     face = Q(strokes__isnull=False) | Q(hours__isnull=False)
-    readings = seen(Reading).standing().filter(face, module=module)
+    readings = list(seen(Reading).standing().filter(face, module=module).order_by("-read_at", "-id")[:LATEST])
     return Standing(
         module=module,
         site=site,
@@ -48,5 +52,19 @@ def standing_of(seen: Seen, module: Module) -> Standing:
         since=stay.from_on if stay else None,
         zone=zone(site.zone if site and site.zone else Book.load().zone),
         stop=seen(Stop).now().filter(module=module).select_related("reported_by").first(),
-        reading=readings.order_by("-read_at", "-id").first(),
+        reading=readings[0] if readings else None,
+        pace=pace_of(readings),
     )
+
+
+def pace_of(latest: list[Reading]) -> float | None:
+    """From the latest readings, newest first, as far back as one counter ran on; None if that is under a week."""
+    run: list[Reading] = []
+    for reading in latest:
+        if reading.strokes is None:
+            continue
+        if run and (reading.counter != run[-1].counter or run[-1].restarts or reading.strokes > run[-1].strokes):
+            break
+        run.append(reading)
+    days = (run[0].read_at - run[-1].read_at).total_seconds() / A_DAY if run else 0.0
+    return (run[0].strokes - run[-1].strokes) / days if days >= FEWEST_DAYS else None

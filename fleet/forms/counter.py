@@ -12,16 +12,18 @@ from django.core.exceptions import ValidationError
 
 from fleet.actions.entries import CounterEntry
 from fleet.actions.errors import CounterWentBack
-from fleet.formats import number
+from fleet.formats import long_day, number
 from fleet.forms.choosing import TileField
 from fleet.models import Restart
 from fleet.models.reading import MOST_STROKES
+from fleet.module_place import A_DAY, Standing
 
 GROUPING = re.compile(r"[\s\u00a0\u2009\u202f'’]")
 DIGITS = re.compile(r"[0-9]{1,20}\Z")
 DECIMAL = re.compile(r"[0-9]{1,12}(?:[.,][0-9]{1,6})?\Z")
 MOST_HOURS = 1e7
 NEW, MISTYPED = "new counter", "mistyped"
+FASTER, DAYS_MORE = 10, 30  # asked beyond ten times the usual pace, and never within a month's strokes
 ANSWERS = [
     (NEW, "Yes, a new counter"),
     (Restart.ROLLED_OVER.value, "It rolled over its last digit"),
@@ -62,13 +64,41 @@ class CounterForm(forms.Form):
     serial = forms.CharField(
         max_length=60, required=False, label="Serial number of the new counter", help_text="Empty: named after the day."
     )
+    really = forms.BooleanField(required=False, label="The counter really shows this")
     question: str = ""
+    standing: Standing | None = None  # of the module, for what is usual
 
     def clean(self) -> dict[str, Any]:
         cleaned = super().clean() or self.cleaned_data
         if self.question_due(cleaned):
             self.add_error("restart", "A counter was marked as changed, but no value was read. Enter what it shows.")
         return cleaned
+
+    asks_really = False
+
+    def check_leap(self, cleaned: dict[str, Any]) -> None:
+        """Called once the time is known."""
+        leap = "" if cleaned.get("really") or cleaned.get("restart") else self.leap(cleaned)
+        if leap:
+            self.add_error("strokes", leap)
+            self.asks_really = True
+
+    def leap(self, cleaned: dict[str, Any]) -> str:
+        """The question where a counter seems to have run far faster than it does: usually a digit too many."""
+        strokes, at = cleaned.get("strokes"), cleaned.get("instant")
+        standing = self.standing
+        if strokes is None or at is None or standing is None or not standing.pace or standing.reading is None:
+            return ""
+        last = standing.reading
+        days = (at - last.read_at).total_seconds() / A_DAY
+        if last.strokes is None or days < 0 or strokes - last.strokes <= standing.pace * max(FASTER * days, DAYS_MORE):
+            return ""
+        more, usual = strokes - last.strokes, standing.pace * days
+        return (
+            f"Counter {number(strokes)} is {number(more)} above the last reading {number(last.strokes)} of "
+            f"{long_day(last.read_at.astimezone(standing.zone))}; about {number(usual, 0)} more were to be expected. "
+            "Is a digit too many? Correct it, or tick that the counter really shows this."
+        )
 
     @staticmethod
     def question_due(cleaned: dict[str, Any]) -> bool:

@@ -81,6 +81,7 @@ class VisitForm(SiteTimeForm, CounterForm):
     def clean(self) -> dict[str, Any]:
         cleaned = super().clean()
         cleaned["stopped_at"] = self.stood_since(cleaned)
+        self.check_leap(cleaned)
         if "entry_key" in self.errors:
             self.data = self.data.copy()
             self.data["entry_key"] = str(uuid.uuid4())
@@ -111,6 +112,7 @@ class LogSheet:
         zone = choices.standing.zone
         self.no_spare = bool(data) and data.get("finish") == NO_SPARE
         self.visit = VisitForm(data, zone=zone, stores=choices.stores)
+        self.visit.standing = choices.standing
         self.positions = [
             PositionForm(each, [other for other in choices.positions if other is not each], zone, data)
             for each in choices.positions

@@ -19,6 +19,7 @@ class ReadingForm(SiteTimeForm, CounterForm):
 
     def clean(self) -> dict[str, Any]:
         cleaned = super().clean()
+        self.check_leap(cleaned)
         if not self.errors and cleaned.get("strokes") is None and cleaned.get("hours") is None:
             self.add_error("strokes", "Nothing was read. Enter what the counter or the hour meter shows.")
         return cleaned

@@ -26,6 +26,7 @@ def read_counter(request: Any, tag: str) -> HttpResponse:
     module = seen_module(request, tag)
     standing = standing_of(request.seen, module)
     form = ReadingForm(request.POST if request.method == "POST" else None, zone=standing.zone)
+    form.standing = standing
     if request.method == "POST" and form.is_valid():
         said = form.cleaned_data
         try:

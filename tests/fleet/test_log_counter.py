@@ -155,3 +155,22 @@ def test_contacts_do_not_read_counters(weir, client):
 def test_the_last_reading_stands_beside_the_field(weir, cleo):
     assert "Last reading 51 877 on 3 Mar." in plain(cleo.get(log_address(weir.module)).content.decode())
     assert opened(cleo, weir.module)["left"] == "running"
+
+
+def test_a_counter_far_ahead_of_its_pace_is_asked_about_and_stored_only_when_confirmed(weir, cleo):
+    for day, strokes in ((4, 52_500), (5, 53_100), (6, 53_700), (7, 54_300), (8, 54_900)):
+        read_at = dt.datetime(2026, 3, day, 9, 0, tzinfo=dt.UTC)
+        record_reading(by=weir.crew, module=weir.module, read_at=read_at, counter=CounterEntry(strokes=strokes))
+    weeks = dt.datetime(2026, 2, 20, 9, 0, tzinfo=dt.UTC)
+    record_reading(by=weir.crew, module=weir.module, read_at=weeks, counter=CounterEntry(strokes=45_000, counter="A-1"))
+    assert send(cleo, weir.module, all_well="on", strokes="60 000").status_code == 302  # a hard week
+    asked = send(cleo, weir.module, all_well="on", strokes="601 000")
+    assert asked.status_code == 422
+    assert "Is a digit too many?" in asked.content.decode()
+    assert "The counter really shows this" in asked.content.decode()
+    assert Reading.objects.filter(strokes=601_000).count() == 0
+    alone = cleo.get(reverse("read_counter", args=["KM-1"])).context["form"]
+    said = {field.html_name: written(field.value()) for field in alone if field.value() not in (None, "", False)}
+    assert cleo.post(reverse("read_counter", args=["KM-1"]), said | {"strokes": "601 000"}).status_code == 422
+    assert send(cleo, weir.module, all_well="on", strokes="601 000", really="on").status_code == 302
+    assert Reading.objects.filter(strokes=601_000).count() == 1
