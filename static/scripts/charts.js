@@ -16,7 +16,8 @@
     toImageButtonOptions: { format: "svg", filename: "halfnut" },
   };
   const calm = window.matchMedia("(prefers-reduced-motion: reduce)");
-  const narrow = window.matchMedia("(max-width: 640px)");
+  // Under a thumb a chart is read and scrolled past; its tools are for a mouse, and show only over the chart.
+  const narrow = window.matchMedia("(max-width: 640px), (hover: none)");
   const TOKEN = /^var\(\s*(--[\w-]+)\s*\)$/;
 
   const probe = document.createElement("span");
