@@ -73,13 +73,20 @@ class RightsMiddleware:
         return None
 
 
+def page_around(request: HttpRequest) -> str:
+    """The path of the page that asked for a part of itself."""
+    try:
+        page = urlsplit(request.headers.get("HX-Current-URL", ""))
+    except ValueError:  # no address at all
+        return request.get_full_path()
+    return page._replace(scheme="", netloc="").geturl() or request.get_full_path()
+
+
 def ask_who_it_is(request: Any) -> HttpResponse:
     """To the sign-in page; what was entered goes along, and a part of a page sends its whole page there."""
     kept = carried(request)
     if kept:
         return sign_in_first(request, kept)
     if request.headers.get("HX-Request"):
-        page = urlsplit(request.headers.get("HX-Current-URL", ""))
-        asked = page._replace(scheme="", netloc="").geturl() or request.get_full_path()
-        return HttpResponseClientRedirect(redirect_to_login(asked).url)
+        return HttpResponseClientRedirect(redirect_to_login(page_around(request)).url)
     return redirect_to_login(request.get_full_path())
