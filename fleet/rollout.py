@@ -9,6 +9,7 @@ from dataclasses import dataclass
 
 from django.db.models import Count, Min
 
+from fleet.formats import counted, number
 from fleet.models import Fitting, Position, Redesign
 
 
@@ -99,6 +100,13 @@ def by_site(rows: Iterable[tuple[str, dt.date | None, Upgraded]], today: dt.date
         SiteProgress(site, *(count[key] for key in ("modules", "done", "begun", "late")))
         for site, count in counts.items()
     ]
+
+
+def done_words(done: int, modules: int, components: int) -> str:
+    """How far the plan has come, in one sentence."""
+    what = "the new part" if components == 1 else "the new parts"
+    have = "has" if done == 1 else "have"
+    return f"{number(done)} of {counted(modules, 'planned module')} {have} {what} in every position."
 
 
 def is_late(planned_on: dt.date | None, upgraded: Upgraded, today: dt.date) -> bool:

@@ -8,7 +8,6 @@ from typing import Any
 
 from fleet.formats import counted, long_day, number, rounded
 from reliability.redesign_words import in_hundred, listed, times_of
-from reliability.wording import plural
 
 LOWER = "at the lower bound"
 
@@ -51,7 +50,7 @@ def money_sentence(told: dict[str, Any], currency: str) -> str:
     failures, money, paid = first["failures_avoided"], first["money_saved"], told["break_even"]
     start = f"In the next 13 weeks {more_or_less(failures)}, and {money_words(money, currency)}."
     if not told["rollout_cost"]:
-        return f"{start} Nothing more has to be spent on its rollout."
+        return f"{start} Nothing is left in the plan: the new part goes in as the old ones come out."
     cost = f"{number(rounded(told['rollout_cost'], 3))} {currency}"
     within = f"within {13 * paid['quarters']} weeks"
     if paid["estimate"] is None:
@@ -68,26 +67,23 @@ def money_sentence(told: dict[str, Any], currency: str) -> str:
 
 def rests_sentence(side: Any, basis: dict[str, Any]) -> str:
     """Which ratios the count takes, over which old part, and why not the comparison that comes first."""
-    new, against = f"the {side.new} {plural(side.component.title)}", listed(basis["against"])
+    over = f"{side.new} over {listed(basis['against'])}"
     why = f"{WHY_NOT[basis['why_not']]} " if basis["why_not"] else ""
     if basis["name"] == "hope":
-        times = times_of(basis["ratio"]["estimate"])
-        taken = f"{new} to last {times} times as long as {against}"
-        return f"{why}This takes {taken}: the hope, an assumption and no evidence."
+        return f"{why}Counted with the hope, {over} {times_of(side.hope)} times: an assumption, no evidence."
     low, middle, high = (times_of(basis["ratio"][end]) for end in ("lower", "estimate", "upper"))
-    ratios = f"{new} last {low} to {high} times as long as {against} in 80 of 100 cases, half of them above {middle}"
+    ratios = f"{over} {low} to {high} times in 80 of 100 cases, half of them above {middle}"
     if basis["name"] == "all history":
-        return (
-            f"{why}This counts with all ratios that the whole history allows, as the forecast does: {ratios}. Other "
-            "water, seasons and habits are in them, which the verdict leaves out."
-        )
+        rest = " Other water, seasons and habits are in them, which the verdict leaves out."
+        return f"{why}Counted with the ratios of the whole history, as the forecast does: {ratios}.{rest}"
     rest = ""
     if basis["against"] == [side.old] and len(side.replaced) > 1:
-        rest = f" {side.old} is what would go in without them."
+        rest = f" {side.old} is what would go in otherwise."
     elif len(basis["against"]) > 1:
-        rest = f" Against {side.old} alone, which would go in without them, no ratio can be told yet."
-    allowed = "This counts with all ratios that the same dates at the same sites allow, as the verdict does"
-    return f"{why}{allowed}: {ratios}.{rest}"
+        rest = f" Against {side.old} alone, which would go in otherwise, no ratio can be told yet."
+    if basis["leans"]:
+        rest += " After so few failures its wear is taken to grow with age as that of the old part."
+    return f"{why}Counted with the ratios of the same dates and sites, as the verdict: {ratios}.{rest}"
 
 
 WHY_NOT = {
@@ -110,26 +106,31 @@ def cautious_sentence(told: dict[str, Any], bases: dict[str, Any], currency: str
 def more_or_less(band: dict[str, Any]) -> str:
     """Failures avoided, or those it brings on top."""
     count = abs(round(band["mean"]))
-    verb = f"it avoids about {counted(count, 'failure')}"
     if count == 0:
-        verb = "it changes the number of failures by less than one"
-    elif band["mean"] < 0:
-        verb = f"it brings about {counted(count, 'more failure')}"
-    return f"{verb} ({in_band(band, 1)} avoided in 80 of 100 cases)"
+        return f"it changes the number of failures by less than one ({in_band(band, 1)} avoided in 80 of 100 cases)"
+    if band["mean"] < 0:
+        return f"it brings about {counted(count, 'more failure')} ({in_band(turned(band), 1)} in 80 of 100 cases)"
+    return f"it avoids about {counted(count, 'failure')} ({in_band(band, 1)} in 80 of 100 cases)"
 
 
 def money_words(band: dict[str, Any], currency: str) -> str:
     amount = number(rounded(round(abs(band["mean"])), 2))
-    verb = "saves" if band["mean"] >= 0 else "costs"
-    return f"{verb} about {amount} {currency} ({in_band(band, 2)} saved)"
+    if band["mean"] < 0:
+        return f"costs about {amount} {currency} ({in_band(turned(band), 2)})"
+    return f"saves about {amount} {currency} ({in_band(band, 2)})"
+
+
+def turned(band: dict[str, Any]) -> dict[str, Any]:
+    """What is avoided as what comes on top."""
+    return {"mean": -band["mean"], "lower": -band["upper"], "upper": -band["lower"]}
 
 
 def in_band(band: dict[str, Any], figures: int) -> str:
     """Whole failures; money to two figures."""
-    write = (
-        (lambda value: number(round(value))) if figures == 1 else (lambda value: number(rounded(round(value), figures)))
-    )
-    return f"{write(band['lower'])} to {write(band['upper'])}"
+    low, high = (round(band[end]) for end in ("lower", "upper"))
+    if figures > 1:
+        low, high = rounded(low, figures), rounded(high, figures)
+    return f"{number(low)} to {number(high)}"
 
 
 def lowered(sentence: str) -> str:
@@ -138,14 +139,16 @@ def lowered(sentence: str) -> str:
 
 def avoided(told: dict[str, Any]) -> str:
     """Crew visits and bench hours of the first quarter."""
-    kinds = (("visits_avoided", "crew visit"), ("bench_hours_avoided", "bench hour"))
-    parts = []
-    for name, noun in kinds:
+    fewer, more = [], []
+    for name, noun in (("visits_avoided", "crew visit"), ("bench_hours_avoided", "bench hour")):
         band = told[name]
-        if round(abs(band["mean"])) or round(band["lower"]) or round(band["upper"]):
-            mean = round(band["mean"])
-            parts.append(f"{number(mean)} {noun if abs(mean) == 1 else noun + 's'} ({in_band(band, 1)})")
-    return f"Avoided with them in the next 13 weeks: {' and '.join(parts)}." if parts else ""
+        if not any(round(band[end]) for end in ("mean", "lower", "upper")):
+            continue
+        side, band = (fewer, band) if round(band["mean"]) >= 0 else (more, turned(band))
+        side.append(f"{counted(round(band['mean']), noun)} ({in_band(band, 1)})")
+    said = [f"Avoided with them in the next 13 weeks: {' and '.join(fewer)}."] if fewer else []
+    said += [f"With them come {' and '.join(more)} more in the next 13 weeks."] if more else []
+    return " ".join(said)
 
 
 def quarter_table(estimated: dict[str, Any], cautious: dict[str, Any] | None, currency: str) -> dict[str, Any]:

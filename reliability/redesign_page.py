@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
-from fleet.formats import number, percent
+from fleet.formats import number, percent, rounded
 from reliability import redesign_words as words
 from reliability.charts.evidence_path import path_figure, path_table
 from reliability.charts.survival import at_risk_table, compared_at, curve_table, survival_figure
@@ -16,19 +16,20 @@ MOST_LABELS = 14
 SIDES = (("before", "old"), ("after", "new"))
 
 
-def page_of(document: Document) -> dict[str, Any]:
-    """Everything the templates show of one component's evidence."""
+def page_of(document: Document, tag: str = "") -> dict[str, Any]:
+    """Everything the templates show of one component's evidence; tag: for the charts' ids, of several on one sheet."""
     return {
         "lead": with_soft_interval(words.lead(document)),
         "strength": words.strength(document),
         "ahead": words.ahead(document),
         "meanings": words.MEANINGS,
-        "curves": curves(document, "same_dates", "curves-same-dates"),
-        "history": curves(document, "all_history", "curves-all-history"),
-        "groups": figures(document, "same_dates"),
+        # before a new part has gone in anywhere there are no dates to look at
+        "curves": curves(document, "same_dates", f"curves-same-dates{tag}") if document["starts"] else None,
+        "history": curves(document, "all_history", f"curves-all-history{tag}"),
+        "groups": figures(document, "same_dates") if document["starts"] else None,
         "groups_history": figures(document, "all_history"),
         "ratios": ratio_table(document),
-        "path": path_chart(document) if document["path"] else None,
+        "path": path_chart(document, tag) if document["verdict"]["boundary"] is not None and document["path"] else None,
         "by_mode": mode_table(document),
         "by_mode_short": short_mode_table(document),
         "mixes": mix_tables(document),
@@ -39,7 +40,7 @@ def page_of(document: Document) -> dict[str, Any]:
         "few": few_of(document),
         "candidates": candidate_table(document),
         "rigs": rig_table(document),
-        "notes": list(dict.fromkeys([*document["same_dates"]["notes"], *document["all_history"]["notes"]])),
+        "notes": words.plain_notes([*document["same_dates"]["notes"], *document["all_history"]["notes"]]),
         "starts": sorted(document["starts"].items()),
     }
 
@@ -98,9 +99,9 @@ def ratio_cell(ratio: dict[str, Any] | None) -> dict[str, Any]:
     return {"estimate": ratio, "digits": 2}
 
 
-def path_chart(document: Document) -> dict[str, Any]:
+def path_chart(document: Document, tag: str) -> dict[str, Any]:
     return {
-        "id": "path",
+        "id": f"path{tag}",
         "sentence": words.strength(document),
         "figure": path_figure(document),
         "caption": "Evidence at each look",
@@ -183,7 +184,9 @@ def mix_tables(document: Document) -> list[dict[str, Any]]:
     return tables
 
 
-def test_table(document: Document) -> dict[str, Any]:
+def test_table(document: Document) -> dict[str, Any] | None:
+    if all(test["z"] is None for which in ("same_dates", "all_history") for test in document[which]["tests"]):
+        return None
     columns = [
         {"key": "strata", "label": "Log-rank test"},
         {"key": "z", "label": "Z", "numeric": True, "digits": 2},
@@ -201,13 +204,17 @@ def test_table(document: Document) -> dict[str, Any]:
 
 def mean_sentence(document: Document) -> str:
     found = document["same_dates"]["restricted_mean"]
-    if found is None:
+    if found is None or not any(found["difference"].values()):
         return "How much longer they run on average cannot be told yet."
     gain, clock = found["difference"], document["clock"]
-    limits = f"{number(round(gain['lower']))} to {number(round(gain['upper']))}"
+    mean, *ends = (rounded(round(gain[end])) for end in ("estimate", "lower", "upper"))
+    longer = mean >= 0
+    low, high = ends if longer else (-ends[1], -ends[0])
     how = "whole sites left out in turn" if found["interval"] == "sites" else "lives taken as independent"
-    longer = f"{number(round(gain['estimate']))} {clock} longer on average ({limits}; {how})"
-    return f"Counted up to {number(round(found['horizon']))} {clock}, new parts run {longer}."
+    amount = f"{number(abs(mean))} {clock} {'longer' if longer else 'shorter'}"
+    limits = f"{words.sure(document['confidence'])} it lies between {number(low)} and {number(high)}; {how}"
+    upto = f"{number(rounded(found['horizon'], 3))} {clock}"
+    return f"Counted up to {upto}, new parts run {amount} on average ({limits})."
 
 
 def few_of(document: Document) -> dict[str, Any] | None:
@@ -240,10 +247,42 @@ def few_of(document: Document) -> dict[str, Any] | None:
         "sentence": words.few_sentence(document),
         "bounds": bounds,
         "plans": plans if found["plans"] else None,
-        "target": found["target"],
-        "shape": found["plan_shape"],
+        "test": test_sentence(document, found),
+        "test_short": short_test(document, found),
         "confidence": percent(found["confidence"]),
     }
+
+
+def test_sentence(document: Document, found: Document) -> str:
+    """What the test would show, from which life of the old parts and which shape the plan comes."""
+    if not found["plans"]:
+        return ""
+    target, clock = number(rounded(found["target"])), document["clock"]
+    groups = (document["all_history"]["curves"] or {"groups": []})["groups"]
+    old = groups[0]["b10"] if groups else None
+    of_old = ""
+    if old:
+        of_old = f", {number(document['hope'], 2)} times the {number(rounded(old['estimate']))} {clock} of the old ones"
+        if old["lower"] is not None and old["upper"] is not None:
+            of_old += f" ({number(rounded(old['lower']))} to {number(rounded(old['upper']))})"
+    shape = number(found["plan_shape"], 2)
+    return (
+        f"To show with {percent(found['confidence'])} confidence that nine in ten last {target} {clock}{of_old}, so "
+        f"many parts have to run so long, and no more may fail. The shape is taken to be {shape}. Were it higher, "
+        f"tests shorter than {target} {clock} would show too much; were it lower, longer ones. At {target} it does "
+        "not matter."
+    )
+
+
+def short_test(document: Document, found: Document) -> str:
+    """The plainest of the tests: as long as the life to be shown, without a failure."""
+    plain = next((plan for plan in found["plans"] if plan["age"] == found["target"] and not plan["allowed"]), None)
+    if plain is None:
+        return ""
+    return (
+        f"{number(plain['parts'])} parts that each run {number(rounded(found['target']))} {document['clock']} without "
+        f"a failure would show with {percent(found['confidence'])} confidence that nine in ten last so long."
+    )
 
 
 def candidate_table(document: Document) -> dict[str, Any] | None:
@@ -272,11 +311,12 @@ def rig_table(document: Document) -> dict[str, Any] | None:
         return None
     columns = [
         {"key": "part", "label": "Part"},
-        {"key": "rig", "label": "On stands: lives", "numeric": True},
+        {"key": "rig", "label": "On stands", "numeric": True},
         {"key": "rig_failures", "label": "failed", "numeric": True},
-        {"key": "field", "label": "In the field: lives", "numeric": True},
+        {"key": "field", "label": "In the field", "numeric": True},
         {"key": "field_failures", "label": "failed", "numeric": True},
-        {"key": "factor", "label": "Median on a stand over the field", "numeric": True},
+        {"key": "factor", "label": "Median, stand over field", "numeric": True},
+        {"key": "over_old", "label": "On stands, new over old", "numeric": True},
     ]
     rows = [
         [
@@ -286,6 +326,7 @@ def rig_table(document: Document) -> dict[str, Any] | None:
             row["field_lives"],
             row["field_failures"],
             ratio_cell(row["factor"]),
+            None if row["part"] in document["old"] else ratio_cell(row["over_old"]),
         ]
         for row in document["rigs"]
     ]

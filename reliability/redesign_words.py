@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime as dt
+import re
 from typing import Any
 
 from fleet.formats import counted, long_day, number, percent, rounded
@@ -14,6 +15,7 @@ Document = dict[str, Any]
 NEARLY_SURE = 0.995
 ONE_LOT = 0.8
 LEAST_TIMES, MANY_TIMES = 0.01, 100
+FOR_PROGRAMMERS = re.compile(r"\s*(?:Ask for|Use|Assume)?[^.]*\b\w+_\w+[^.]*\.|\s*\(\w+_\w+\)")
 
 VERDICTS = {
     "clear": "Clear: {new} live longer than {old}.",
@@ -48,12 +50,33 @@ def listed(names: list[str]) -> str:
     return names[0] if len(names) == 1 else f"{', '.join(names[:-1])} and {names[-1]}"
 
 
+def plain_notes(notes: list[str]) -> list[str]:
+    """What the estimators say, without the sentences that tell a programmer what to call instead; each once."""
+    plain = (FOR_PROGRAMMERS.sub("", note).strip() for note in notes)
+    return [note for note in dict.fromkeys(plain) if note]
+
+
+def verdict_words(document: Document) -> str:
+    """The verdict alone, in one of its fixed phrases."""
+    if not new_lives(document):
+        noun = plural(document["component_name"] or document["component"])
+        return f"Not yet shown: of the {listed(document['new'])} {noun} none has run in the field yet."
+    told = VERDICTS[document["verdict"]["phrase"]].format(**names_of(document))
+    return f"If only {listed(document['mode_names'])} acted. {told}" if document["modes"] else told
+
+
 def lead(document: Document) -> str:
     """Verdict, ratio and chances: the first thing that is read."""
-    told = VERDICTS[document["verdict"]["phrase"]].format(**names_of(document))
-    if document["modes"]:
-        told = f"If only {listed(document['mode_names'])} acted. {told}"
+    told = verdict_words(document)
+    if not new_lives(document):
+        return told
     return " ".join(filter(None, (told, ratio_sentence(document), chance_sentence(document))))
+
+
+def new_lives(document: Document) -> int:
+    """New parts on record in the field, whenever they ran."""
+    groups = (document["all_history"]["curves"] or {"groups": []})["groups"]
+    return int(sum(group["lives"] for group in groups if group["group"] == listed(document["new"])))
 
 
 def main_ratio(found: dict[str, Any]) -> dict[str, Any] | None:
@@ -120,7 +143,38 @@ def chance_sentence(document: Document) -> str:
     if chances is None:
         return "Before old and new parts have failed side by side no chance is told."
     hope = f"that they reach the hope of {number(document['hope'], 2)} times as long is {in_hundred(chances['hope'])}"
-    return f"The chance that they live longer is {in_hundred(chances['longer'])}, {hope}."
+    told = f"the chance that they live longer is {in_hundred(chances['longer'])}, {hope}."
+    return f"{chance_rests(document)}{told}"
+
+
+def chance_rests(document: Document) -> str:
+    """On what the chances rest: they are reckoned with the past of each position, which the ratio above is not."""
+    ratio = document["same_dates"]["ratio"] or {}
+    with_past = ratio.get("positions differ")
+    if with_past:
+        median = with_past["median"]
+        times = times_of(median["estimate"])
+        return f"Allowing for what each position did before ({times} times{short_limits(median)}), "
+    if main_ratio(document["same_dates"]):
+        return "Allowing for what each position did before, "
+    none = [name for name, failed in failed_of(document).items() if not failed]
+    if none:
+        return (
+            f"None of the {listed(none)} has failed over the same dates, so this rests on how long they have run "
+            "without it and on what is usual for such parts: "
+        )
+    return "This rests on very few failures and on what is usual for such parts: "
+
+
+def failed_of(document: Document) -> dict[str, int]:
+    groups = (document["same_dates"]["curves"] or {"groups": []})["groups"]
+    return {group["group"]: group["failures"] for group in groups}
+
+
+def short_limits(ratio: dict[str, Any]) -> str:
+    if ratio["lower"] is None or ratio["upper"] is None:
+        return ""
+    return f", {times_of(ratio['lower'])} to {times_of(ratio['upper'])}"
 
 
 def in_hundred(chance: float) -> str:
@@ -192,6 +246,11 @@ def few_sentence(document: Document) -> str:
 def warnings(document: Document) -> list[str]:
     """What stands against the comparison, in words."""
     alike, told = document["comparability"], []
+    if document.get("newer"):
+        told.append(
+            f"{listed(document['newer'])} came after {listed(document['new'])}: here an older part is held against its "
+            "successor, and “new” and “old” below are meant the other way round."
+        )
     sides = f"{listed(document['new'])} and {listed(document['old'])}"
     for mix in alike["mixes"]:
         if mix["name"] in ("site", "season") and mix["overlap"] is not None and mix["overlap"] < 0.5:

@@ -14,11 +14,12 @@ from django.utils import timezone
 
 from fleet.actions.errors import RecordError
 from fleet.actions.plan_rollout import plan_rollout
+from fleet.formats import counted
 from fleet.forms.errors import add_record_error
 from fleet.forms.redesign import DropStepForm, PlanForm, RedesignForm, StepForm
 from fleet.models import Placement, Redesign, RolloutStep
 from fleet.rights import LIFE, needs
-from fleet.rollout import Upgraded, by_site, is_late, upgraded_modules
+from fleet.rollout import Upgraded, by_site, done_words, is_late, upgraded_modules
 from fleet.views.listing import as_csv, csv_address
 from fleet.views.saving import save_form
 
@@ -57,7 +58,7 @@ def rollout(request: Any, code: str) -> HttpResponse:
         "sites": sites,
         "table": table(record, rows, today),
         "modules": len(rows),
-        "done": sum(done.done for _, done in rows),
+        "sentence": done_words(sum(done.done for _, done in rows), len(rows), record.changes.count()),
         "late": sum(is_late(step.planned_on, done, today) for step, done in rows),
         "exports": [{"name": "CSV", "url": csv_address(request)}] if rows else [],
     }
@@ -77,7 +78,7 @@ def planned(request: Any, record: Redesign, form: PlanForm) -> bool:
     except RecordError as error:
         add_record_error(form, error)
         return False
-    messages.success(request, f"{len(steps)} modules are in the plan of {record.title}.")
+    messages.success(request, f"{counted(len(steps), 'module')} put into the plan of {record.title}.")
     return True
 
 

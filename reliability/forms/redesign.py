@@ -12,10 +12,9 @@ from fleet.forms.record import DayInput
 from fleet.models import Component, FailureMode, Part
 
 RESTS_ON = [
-    ("", "the verdict, if it can be told"),
-    ("same-dates", "the same dates"),
+    ("", "the verdict"),
     ("all-history", "all history"),
-    ("hope", "the hope, as an assumption"),
+    ("hope", "the hope"),
 ]
 
 
@@ -28,7 +27,7 @@ class EvidenceForm(forms.Form):
         queryset=None, to_field_name="code", required=False, label="Beside it, other candidates"
     )
     as_of = DayInput(required=False, label="Records up to")
-    money = forms.ChoiceField(required=False, choices=RESTS_ON, label="Money rests on the ratio of")
+    money = forms.ChoiceField(required=False, choices=RESTS_ON, label="Money counted with")
 
     def __init__(self, data: Any, *, request: Any, lines: list[Any]) -> None:
         super().__init__(data)

@@ -103,6 +103,7 @@ class Basis:
     lower: float | None
     against: tuple[str, ...]
     why_not: str = ""
+    leans: bool = False  # the new part's shape leans on the old one's
 
     def told(self) -> dict[str, Any]:
         return {
@@ -111,6 +112,7 @@ class Basis:
             "lower": finite(self.lower),
             "against": list(self.against),
             "why_not": self.why_not,
+            "leans": self.leans,
         }
 
 
@@ -138,10 +140,12 @@ def of_same_dates(side: Side, taught: Learned) -> Basis | None:
         before, after = (counted_when_found(each) for each in sides)
         try:
             likely = life_ratio(before, after, probabilities=(0.5,), confidence_level=side.confidence)
-            posterior = life_ratio_posterior(before, after, log_shape_prior=shape_prior(before, after))
+            prior = shape_prior(before, after)
+            posterior = life_ratio_posterior(before, after, log_shape_prior=prior)
         except StatisticsError:
             continue
-        return Basis(SAME_DATES, Stretch.of(posterior), band_of(posterior.log_ratios()), likely.median.lower, against)
+        stretch, band, leans = Stretch.of(posterior), band_of(posterior.log_ratios()), prior != LOG_SHAPE_PRIOR
+        return Basis(SAME_DATES, stretch, band, likely.median.lower, against, leans=leans)
     return None
 
 

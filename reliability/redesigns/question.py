@@ -29,6 +29,7 @@ class RedesignQuestion:
     sites: tuple[str, ...] | None = None
     modes: tuple[str, ...] = ()
     also: tuple[str, ...] = ()  # other candidates, set beside the new one
+    newer: tuple[str, ...] = ()  # of the old ones those that superseded the new one: the question stands on its head
 
     def asked(self) -> dict[str, Any]:
         return {
@@ -42,6 +43,7 @@ class RedesignQuestion:
             "sites": list(self.sites) if self.sites is not None else None,
             "modes": list(self.modes),
             "also": list(self.also),
+            "newer": list(self.newer),
         }
 
 
@@ -60,7 +62,13 @@ def question_for(new: str, before: Sequence[str] | None = None, **choices: Any) 
     if part.code in old:
         raise QuestionRefused(f"{part.code} cannot be held against itself. Name older parts.")
     choices.setdefault("as_of", timezone.localdate())
+    choices["newer"] = successors_among([known[code] for code in old], part)
     return RedesignQuestion(part.component, (part.code,), tuple(old), **choices)
+
+
+def successors_among(parts: Sequence[Part], part: Part) -> tuple[str, ...]:
+    """Those that superseded the part, one after the other."""
+    return tuple(each.code for each in parts if part.code in superseded_by(each))
 
 
 def superseded_by(part: Part) -> list[str]:

@@ -12,7 +12,7 @@ from django.utils import timezone
 
 from fleet.models import Redesign, RedesignChange
 from fleet.rights import COSTS, LIFE, may, needs
-from fleet.rollout import by_site
+from fleet.rollout import by_site, done_words
 from fleet.views.listing import Column, Listing, as_csv
 from reliability.forms.redesign import EvidenceForm
 
@@ -78,6 +78,7 @@ def redesign_print(request: Any, code: str) -> HttpResponse:
     document = seen_document(request, record, form, line)
     context = context_of(request, record, form, line, document)
     context |= {"money": money_context(request, record, form, document), "printed_on": timezone.localdate()}
+    context["pages"] = [(line, document, context), *other_pages(request, record, form, line)]
     return render(request, "redesigns/print.html", context)
 
 
@@ -101,17 +102,20 @@ def asked_for(request: Any, code: str) -> tuple[Redesign, EvidenceForm, Redesign
 
 
 def question_of(record: Redesign, form: EvidenceForm, line: RedesignChange) -> Any:
-    from reliability.redesigns.question import RedesignQuestion
+    from reliability.redesigns.question import RedesignQuestion, successors_among
 
+    replaced = list(line.replaces.all())
+    own = line.new_part.component_id  # modes and candidates chosen are of the component that is shown
     return RedesignQuestion(
         component=line.new_part.component,
         new=(line.new_part.code,),
-        old=tuple(part.code for part in line.replaces.all()),
+        old=tuple(part.code for part in replaced),
+        newer=successors_among(replaced, line.new_part),
         as_of=form.as_of_day(),
         hope=record.hope,
         not_before=record.starts_on,
-        modes=tuple(mode.code for mode in form.cleaned_data["mode"]),
-        also=tuple(part.code for part in form.cleaned_data["also"]),
+        modes=tuple(mode.code for mode in form.cleaned_data["mode"] if mode.component_id == own),
+        also=tuple(part.code for part in form.cleaned_data["also"] if part.component_id == own),
     )
 
 
@@ -147,7 +151,7 @@ def context_of(
         "actions": [
             *actions_of(record),
             {
-                "name": "Two sheets for a meeting",
+                "name": "Two sheets for a meeting" if len(form.lines) < 2 else "Sheets for a meeting",
                 "url": sheets + query,
                 "quiet": True,
             },
@@ -156,8 +160,45 @@ def context_of(
         "back": reverse("redesign", args=[record.code]) + query,
         "exports": [{"name": "CSV", "url": f"{query}{join}as=csv"}, {"name": "JSON", "url": f"{query}{join}as=json"}],
         "rollout": progress_of(request, record),
+        "others": other_verdicts(request, record, form, line),
         **page_of(document),
     }
+
+
+def other_pages(
+    request: Any, record: Redesign, form: EvidenceForm, shown: RedesignChange
+) -> list[tuple[RedesignChange, dict[str, Any], dict[str, Any]]]:
+    """The evidence on the other components of the redesign."""
+    from reliability.redesign_page import page_of
+
+    found = []
+    for line in form.lines:
+        if line != shown:
+            document = seen_document(request, record, form, line)
+            found.append((line, document, page_of(document, f"-{line.new_part.component.code}")))
+    return found
+
+
+def other_verdicts(request: Any, record: Redesign, form: EvidenceForm, shown: RedesignChange) -> list[dict[str, str]]:
+    """What is known of the other components, in a sentence each, with the way there."""
+    from reliability.redesign_words import verdict_words
+
+    found = []
+    for line in form.lines:
+        if line != shown:
+            address = request.GET.copy()
+            address.pop("as", None)
+            for name in ("mode", "also"):
+                address.pop(name, None)
+            address["component"] = line.new_part.component.code
+            found.append(
+                {
+                    "name": line.new_part.component.title,
+                    "verdict": verdict_words(seen_document(request, record, form, line)),
+                    "url": f"?{address.urlencode()}",
+                }
+            )
+    return found
 
 
 def actions_of(record: Redesign) -> list[dict[str, Any]]:
@@ -179,7 +220,8 @@ def progress_of(request: Any, record: Redesign) -> dict[str, Any] | None:
     if not rows:
         return None
     sites = by_site(((step.now_site or "no place", step.planned_on, done) for step, done in rows), timezone.localdate())
-    return {"sites": sites, "modules": len(rows), "done": sum(done.done for _, done in rows)}
+    done = sum(done.done for _, done in rows)
+    return {"sites": sites, "sentence": done_words(done, len(rows), record.changes.count())}
 
 
 def money_context(

@@ -26,6 +26,7 @@ class RolloutFleet(SmallFleet):
         self.n2.save()
         self.position = Position.objects.create(type=self.type, code="NUT", component=self.component)
         dice = random.Random(seed)
+        self.modules: dict[str, Any] = {}
         self.places = [self.site(f"SITE-{number}") for number in range(1, sites + 1)]
         for number, site in enumerate(self.places):
             for tag in range(modules):
@@ -35,7 +36,7 @@ class RolloutFleet(SmallFleet):
 
     def history(self, tag: str, site: Any, dice: random.Random, longer: float | None) -> None:
         """One module's nuts from day 0 on; `longer` None: it never gets the new one."""
-        module = self.module(tag, site)
+        module = self.modules[tag] = self.module(tag, site)
         at = dice.randrange(30)
         while at < TODAY:
             new = longer is not None and at >= BEGAN
@@ -55,10 +56,10 @@ class RolloutFleet(SmallFleet):
 
     def put(self, module: Any, part: Any, fitted: int, removed: int | None, reason: str, **fields: Any) -> None:
         self.number += 1
+        fields.setdefault("position", self.position)
         Fitting.objects.create(
             code=f"F-{self.number}",
             module=module,
-            position=self.position,
             part=part,
             fitted_on=day(fitted),
             removed_on=None if removed is None else day(removed),

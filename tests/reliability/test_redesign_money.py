@@ -103,10 +103,9 @@ def test_the_money_rests_on_the_same_dates_and_says_so() -> None:
     assert found["lower"] == pytest.approx(document["same_dates"]["ratio"]["sites differ"]["median"]["lower"])
     assert found["ratio"]["lower"] < document["same_dates"]["ratio"]["sites differ"]["median"]["estimate"]
     said = plain(rests_sentence(side_of(fleet), found))
-    assert said.startswith(
-        "This counts with all ratios that the same dates at the same sites allow, as the verdict does: "
-    )
-    assert f"the N2 drive nuts last {found['ratio']['lower']:.2f} to" in said
+    assert said.startswith("Counted with the ratios of the same dates and sites, as the verdict: N2 over N1 ")
+    low, high = (f"{found['ratio'][end]:.2f}" for end in ("lower", "upper"))
+    assert f"N1 {low} to {high} times in 80 of 100 cases" in said
 
 
 def test_where_only_all_history_tells_a_ratio_the_money_says_so() -> None:
@@ -119,7 +118,7 @@ def test_where_only_all_history_tells_a_ratio_the_money_says_so() -> None:
     fleet.component.refresh_from_db()
     found = money(fleet, Plan(0, None), not_before=day(begun))["bases"]["NUT"]
     assert (found["name"], found["why_not"]) == ("all history", "same dates")
-    assert rests_sentence(side_of(fleet), found).startswith("Over the same dates no ratio can be told yet. This counts")
+    assert rests_sentence(side_of(fleet), found).startswith("Over the same dates no ratio can be told yet. Counted")
 
 
 def test_all_history_and_the_hope_are_named_choices() -> None:
@@ -128,7 +127,7 @@ def test_all_history_and_the_hope_are_named_choices() -> None:
     assert names == ["all history", "hope"]
     hoped = money(fleet, Plan(0, None), "hope")
     assert "at the lower bound" not in hoped["told"], "an assumption has no lower end"
-    assert "the hope, an assumption and no evidence" in rests_sentence(side_of(fleet), hoped["bases"]["NUT"])
+    assert "hope, N2 over N1 1.50 times: an assumption" in plain(rests_sentence(side_of(fleet), hoped["bases"]["NUT"]))
 
 
 def test_the_draws_of_the_new_part_carry_the_ratio_and_all_of_its_uncertainty() -> None:
