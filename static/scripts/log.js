@@ -19,6 +19,7 @@
   const another = form.querySelector("[data-another]");
   const noSpare = form.querySelector("[data-no-spare]");
   const counter = form.querySelector('[name="strokes"]');
+  const issue = form.querySelector("[data-issue]");
   const order = ["outcome", "because", "mode", "cause"];
   const outOfOrder = ["failed", "worn to limit", "planned"];
   let step = { at: "where" };
@@ -29,6 +30,7 @@
   const faulty = (scope) => Boolean(scope.querySelector(".fault"));
   const fits = (element, said) => !element.dataset.when || element.dataset.when.split("|").includes(said);
   const named = (id) => positions.find((position) => position.dataset.position === id);
+  const takesPart = (position) => part(position, "in") && fits(part(position, "in"), outcome(position));
   const words = (scope) => chosen(scope)?.closest(".tile").textContent.trim() || "";
 
   function said(position) {
@@ -63,6 +65,7 @@
     next.hidden = !inPart;
     onward.hidden = to.at !== "where" || !positions.some(outcome);
     noSpare.hidden = !positions.some((position) => outOfOrder.includes(outcome(position)));
+    if (issue) issue.hidden = !positions.some(takesPart) && !faulty(issue);
     positions.forEach((position) => showPosition(position, to));
     document.body.classList.toggle("log-in-part", inPart);
   }
@@ -187,7 +190,7 @@
   const begin = returned && (positions.some(outcome) || wellBox.checked) ? { at: "finish" } : { at: "where" };
   history.replaceState({ log: begin }, "");
   show(begin);
-  const question = form.querySelector(".log-question");
+  const question = form.querySelector(".log-question") || form.querySelector(".log-counter .fault");
   if (question) question.scrollIntoView({ block: "center" });
 
   // A second tap while the first is under way sends nothing; the entry key on the server decides the rest.

@@ -159,6 +159,9 @@ def hand_over(desk: Page, url: str, weir: Carriage) -> None:
 def send_to_the_bench(phone: Page, url: str, weir: Carriage) -> None:
     """The nut is changed on site; the screw is bowed, stays in, and the carriage goes to the bench."""
     phone.goto(f"{url}/m/KM-1/log")
+    phone.locator(".tile.well").click()
+    expect(phone.get_by_text("New parts come from")).to_be_hidden()  # nothing went in
+    phone.goto(f"{url}/m/KM-1/log")
     phone.locator(".log-position > summary", has_text="drive nut").click()
     phone.locator(".tile:visible", has_text="Failed").first.click()
     phone.locator(".tile:visible", has_text="thread worn out").first.click()
