@@ -85,7 +85,9 @@ def percent(share: Number | None, digits: int = 0) -> str:
 
 
 def interval(lower: str, upper: str, *, dash: bool = False) -> str:
-    """Two written ends as `14 to 33`, or `14–33` where a table has little room."""
+    """Two written ends: `14 to 33`, `14–33` where a table has little room, `up to 3` from what rounds to nothing."""
+    if lower.startswith("under "):
+        return upper if lower == upper else f"up to {upper}"
     return f"{lower}–{upper}" if dash else f"{lower} to {upper}"
 
 

@@ -123,7 +123,7 @@ def act_stage(by: Any, job: BenchJob, form: Any) -> str:
 
 def act_hours(by: Any, job: BenchJob, form: Any) -> str:
     row = book_hours(by=by, job=job, **form.cleaned_data)
-    return f"Booked: {row.person.name} has {number(row.hours)} hours on this job on {long_day(row.day)}."
+    return f"Booked: {row.person.name} has {row.hours:g} hours on this job on {long_day(row.day)}."
 
 
 def act_change(by: Any, job: BenchJob, form: Any) -> str:

@@ -10,7 +10,8 @@ from django.urls import reverse
 
 from fleet.forms.filters import ModuleFilter
 from fleet.forms.module import ModuleForm, PlaceForm, TakeAwayForm
-from fleet.models import Module
+from fleet.models import Module, Placement
+from fleet.record_words import record_words
 from fleet.rights import CATALOGUE, SEE, may, needs
 from fleet.views.listing import Column, Listing
 from fleet.views.saving import save_form
@@ -96,6 +97,20 @@ def place_module(request: Any) -> HttpResponse:
         crumbs=CRUMBS,
         submit="Place it",
         lead="Its stay before this one ends on the same day.",
+        told=lambda stay: f"{stay.module.code}: {record_words(stay)}{beside(request, stay)}",
+    )
+
+
+def beside(request: Any, stay: Placement) -> str:
+    """Who stands in the same bay on record: allowed, but mostly somebody forgot to take the other away."""
+    if not stay.bay:
+        return ""
+    others = request.seen(Placement).current().filter(site=stay.site, bay=stay.bay).exclude(module=stay.module)
+    tags = ", ".join(others.order_by("module__code_order").values_list("module__code", flat=True)[:3])
+    return (
+        f", bay {stay.bay}, where {tags} stands too on record (end that stay if it is gone),"
+        if tags
+        else f", bay {stay.bay},"
     )
 
 

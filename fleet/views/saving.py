@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from typing import Any
 
 from django.contrib import messages
@@ -23,6 +24,7 @@ def save_form(
     back_args: list[Any] | None = None,
     crumbs: list[dict[str, str]] | None = None,
     template: str = "list/edit.html",
+    told: Callable[[Any], str] = str,
     **context: Any,
 ) -> HttpResponse:
     """Shows the form; on POST calls `form.save_by(person)` and goes to the record's page, or tells what is wrong."""
@@ -33,7 +35,7 @@ def save_form(
         except RecordError as error:
             add_record_error(form, error)
         else:
-            messages.success(request, f"{saved} is stored.")
+            messages.success(request, f"{told(saved)} is stored.")
             return redirect(reverse(back, args=back_args if back_args is not None else [saved.code]))
     cancel = reverse(back, args=back_args if back_args is not None else [record.code]) if record else ""
     return render(

@@ -95,6 +95,8 @@ def test_ends(lower: float | None, upper: float | None, text: str) -> None:
 
 def test_ends_in_a_table() -> None:
     assert formats.ends(14, 33, dash=True) == "14–33"
+    assert formats.interval("under 1 %", "3 %", dash=True) == "up to 3 %"
+    assert formats.interval("under 1", "under 1") == "under 1"
 
 
 def test_days() -> None:

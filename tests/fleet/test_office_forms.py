@@ -159,3 +159,12 @@ def test_a_correction_and_a_strike_out_say_which_state_they_were_opened_in(
             assert "Open it again" in answer.content.decode(), (verb, answer.context["form"].errors)
     fitting.refresh_from_db()
     assert (fitting.lot, fitting.struck_out) == ("", "")
+
+
+def test_who_places_a_module_into_a_taken_bay_is_told_who_stands_there(client: Client, world: make.Carriage) -> None:
+    there = make.make_site(name="Withy Lock")
+    other = make.Carriage(code="KM-8", site=there)
+    Placement.objects.filter(module=other.module).update(bay="B-6")
+    entry = {"module": world.module.code, "site": there.code, "bay": "B-6", "from_on": "2026-01-05"}
+    told = client.post("/modules/place/", entry, follow=True).content.decode()
+    assert "the stay at Withy Lock since 5\u00a0January 2026, bay B-6, where KM-8 stands too on record" in told
