@@ -7,7 +7,8 @@ from __future__ import annotations
 
 import os
 import shutil
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
+from itertools import groupby
 from typing import Any
 from urllib.parse import urlsplit
 
@@ -42,6 +43,9 @@ def pytest_collection_modifyitems(items: list[pytest.Item]) -> None:
         reason="needs writers side by side, and SQLite lets in one at a time: `make test` runs it on PostgreSQL"
     )
     no_browser = pytest.mark.skip(reason=f"no {CHROMIUM}: apt-get install chromium")
+    # in each file those that share rows come last: the others must not see them
+    files = groupby(list(items), key=lambda item: item.path)
+    items[:] = [item for _, group in files for item in sorted(group, key=shares_rows)]
     for item in items:
         if uses_database(item):
             item.add_marker(pytest.mark.database)
@@ -49,6 +53,10 @@ def pytest_collection_modifyitems(items: list[pytest.Item]) -> None:
             item.add_marker(only_postgresql)
         if item.get_closest_marker("browser") and not os.path.exists(CHROMIUM):
             item.add_marker(no_browser)
+
+
+def shares_rows(item: pytest.Item) -> bool:
+    return "made_once" in getattr(item, "fixturenames", ())
 
 
 def uses_database(item: pytest.Item) -> bool:
@@ -77,6 +85,29 @@ def django_db_modify_db_settings(django_db_modify_db_settings_parallel_suffix: N
 def django_db_keepdb(request: pytest.FixtureRequest) -> bool:
     """On SQLite the copy is kept as it is; its folder goes with the process."""
     return not on_postgresql() or bool(request.config.getvalue("reuse_db"))
+
+
+@pytest.fixture(scope="module")
+def made_once(django_db_setup: None, django_db_blocker: Any) -> Iterator[Callable[[Callable[[], Any]], Any]]:
+    """Calls what makes a fleet, whose rows then stand for all tests of a file; each takes back what it changed.
+
+    For fleets that take a second to make, in a fixture of scope "module". Tests take a `copy.deepcopy` of its Python
+    objects. Not in a file with tests that commit.
+    """
+    from django.db import connection, transaction
+
+    def make(build: Callable[[], Any]) -> Any:
+        with django_db_blocker.unblock():
+            return build()
+
+    whole_file = transaction.atomic()
+    with pytest.MonkeyPatch.context() as patched:
+        make(whole_file.__enter__)
+        # Django closes the connection after each test, and the rows would go with it
+        patched.setattr(connection, "close", lambda: None)
+        yield make
+        make(lambda: transaction.set_rollback(True))
+        make(lambda: whole_file.__exit__(None, None, None))
 
 
 @pytest.fixture(scope="session")

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import copy
 import datetime as dt
 from itertools import pairwise
 from typing import Any
@@ -44,9 +45,14 @@ def test_the_last_quarters_that_are_over(today: str, last: str) -> None:
     )
 
 
+@pytest.fixture(scope="module")
+def made(made_once: Any) -> SmallFleet:
+    return made_once(lambda: lived_fleet(40))
+
+
 @pytest.fixture
-def fleet() -> SmallFleet:
-    return lived_fleet(40)
+def fleet(made: SmallFleet) -> SmallFleet:
+    return copy.deepcopy(made)
 
 
 def judged(fleet: SmallFleet, begin: dt.date = QUARTER) -> dict[str, Any]:

@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import copy
 import datetime as dt
 from collections.abc import Iterator
+from typing import Any
 
 import pytest
 import time_machine
@@ -29,8 +31,7 @@ def noon() -> Iterator[None]:
         yield
 
 
-@pytest.fixture
-def world() -> SupplyFleet:
+def stored() -> SupplyFleet:
     """Every other failure of the past year brought a module in; four wait, and the bench has ten hours a week."""
     found = SupplyFleet()
     for number in range(30):
@@ -41,6 +42,17 @@ def world() -> SupplyFleet:
     found.hours(10.0)
     make_book(bench_target=2)
     return found
+
+
+@pytest.fixture(scope="module")
+def made(made_once: Any) -> SupplyFleet:
+    with time_machine.travel(NOON, tick=False):
+        return made_once(stored)
+
+
+@pytest.fixture
+def world(made: SupplyFleet) -> SupplyFleet:
+    return copy.deepcopy(made)
 
 
 def test_the_reason_says_which_component_brought_it() -> None:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import copy
 import json
 import math
 from typing import Any
@@ -35,9 +36,14 @@ def ask(name: str, component: str = "NUT", **choices: Any) -> Any:
     return data
 
 
+@pytest.fixture(scope="module")
+def made(made_once: Any) -> WorkedFleet:
+    return made_once(WorkedFleet)
+
+
 @pytest.fixture
-def worked(db: None) -> WorkedFleet:
-    return WorkedFleet()
+def worked(made: WorkedFleet, db: None) -> WorkedFleet:
+    return copy.deepcopy(made)
 
 
 def test_curves_are_compared_on_the_same_lives(worked: WorkedFleet) -> None:

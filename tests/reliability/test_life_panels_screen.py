@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import copy
 import re
 from typing import Any
 
@@ -26,9 +27,14 @@ ADDRESSES = [f"/life/{panel.name}/" for panel in PANELS]
 HTMX = {"HX-Request": "true"}
 
 
+@pytest.fixture(scope="module")
+def made(made_once: Any) -> WorkedFleet:
+    return made_once(lambda: WorkedFleet(bad_lot=True))
+
+
 @pytest.fixture
-def worked(db: None) -> WorkedFleet:
-    return WorkedFleet(bad_lot=True)
+def worked(made: WorkedFleet, db: None) -> WorkedFleet:
+    return copy.deepcopy(made)
 
 
 def signed_in(person: Any) -> Client:

@@ -5,6 +5,7 @@ Cast: Otto the storekeeper, who sees all; Petra, a planner of one site; Cleo the
 
 from __future__ import annotations
 
+import copy
 import datetime as dt
 import html
 import json
@@ -36,12 +37,21 @@ def noon() -> Iterator[None]:
         yield
 
 
+@pytest.fixture(scope="module")
+def made(made_once: Any) -> SupplyFleet:
+    def make() -> SupplyFleet:
+        found = SupplyFleet(on_hand=0)
+        for ordered, received in ((150, 130), (100, 77), (60, 38)):
+            found.deliver(ordered, received, 5)
+        return found
+
+    with time_machine.travel(NOON, tick=False):
+        return made_once(make)
+
+
 @pytest.fixture
-def world() -> SupplyFleet:
-    found = SupplyFleet(on_hand=0)
-    for ordered, received in ((150, 130), (100, 77), (60, 38)):
-        found.deliver(ordered, received, 5)
-    return found
+def world(made: SupplyFleet) -> SupplyFleet:
+    return copy.deepcopy(made)
 
 
 @pytest.fixture

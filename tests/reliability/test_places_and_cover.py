@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import copy
 import datetime as dt
 from collections.abc import Iterator
+from typing import Any
 
 import pytest
 import time_machine
@@ -40,9 +42,15 @@ def noon() -> Iterator[None]:
         yield
 
 
+@pytest.fixture(scope="module")
+def made(made_once: Any) -> SupplyFleet:
+    with time_machine.travel(NOON, tick=False):
+        return made_once(lambda: SupplyFleet(on_hand=6))
+
+
 @pytest.fixture
-def world() -> SupplyFleet:
-    return SupplyFleet(on_hand=6)
+def world(made: SupplyFleet) -> SupplyFleet:
+    return copy.deepcopy(made)
 
 
 def uses() -> dict:
