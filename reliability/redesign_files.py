@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 from typing import Any
 
+ENDS = ("estimate", "lower", "upper")
 HEAD = ["figure", "which", "assumed", "estimate", "lower", "upper"]
 
 
@@ -21,6 +22,18 @@ def lines(document: dict[str, Any]) -> Iterator[list[Any]]:
         for side in ("before", "after"):
             share = row[side]
             yield [f"failed of {row['name']}", side, "", share["estimate"], share["lower"], share["upper"]]
+    for row in document["candidates"]:
+        median = row["ratio"]["median"] if row["ratio"] else {}
+        yield [f"life ratio median of {row['part']}", "candidates", "", *(median.get(end) for end in ENDS)]
+        yield [f"chance longer of {row['part']}", "candidates", "", row["longer"], None, None]
+    for row in document["rigs"]:
+        for name, ratio in (("stand over field", row["factor"]), ("on stands, new over old", row["over_old"])):
+            if ratio is not None:
+                yield [f"{name}, {row['part']}", "stands", "", *(ratio[end] for end in ENDS)]
+    if few := document["few"]:
+        yield ["part-years a failure at least", "all history", "", None, few["years_a_failure"], None]
+        for bound in few["bounds"]:
+            yield ["b10 at least", "all history", f"shape {bound['shape']:g}", None, bound["b10_lower"], None]
     for mix in document["comparability"]["mixes"]:
         for row in mix["rows"]:
             for side in ("before", "after"):

@@ -8,7 +8,7 @@ from django import forms
 from django.core.exceptions import ValidationError
 
 from fleet.forms.record import CodeInput, DayInput, RecordForm
-from fleet.models import Component, Module, ModuleType, Part, Site
+from fleet.models import Book, Component, Module, ModuleType, Part, Site
 
 
 class RedesignForm(RecordForm):
@@ -43,7 +43,13 @@ class RedesignForm(RecordForm):
         label="First day of the rollout",
         help_text="Empty: the day the first new part went in at each site.",
     )
-    cost_a_module = forms.DecimalField(required=False, min_value=0, max_digits=10, decimal_places=2)
+    cost_a_module = forms.DecimalField(
+        required=False,
+        min_value=0,
+        max_digits=10,
+        decimal_places=2,
+        help_text="Work and material beyond the parts themselves, once a module.",
+    )
     visits_a_failure = forms.FloatField(min_value=0, max_value=100, initial=1, label="Crew visits a failure")
     bench_hours_a_failure = forms.FloatField(min_value=0, max_value=1000, initial=0, label="Bench hours a failure")
     stop_days_a_failure = forms.FloatField(min_value=0, max_value=365, initial=1, label="Days of standstill a failure")
@@ -54,8 +60,7 @@ class RedesignForm(RecordForm):
         for name in ("new_parts", "replaced"):
             self.fields[name].queryset = parts
             self.fields[name].label_from_instance = lambda part: f"{part.title} ({part.component.title})"
-        if self.initial.get("cost_a_module") is None:
-            self.fields["cost_a_module"].help_text = "Work and material beyond the part itself."
+        self.fields["cost_a_module"].label = f"Cost of the rollout a module, {Book.load().currency}"
 
     def opened(self, record: Any) -> dict[str, Any]:
         lines = record.changes.prefetch_related("replaces")

@@ -14,9 +14,10 @@ from django.urls import reverse
 from fleet.actions.plan_rollout import plan_rollout
 from fleet.actions.rebuild_clocks import rebuild_clocks
 from fleet.actions.save_redesign import PartReplaced, save_redesign
-from fleet.models import Module, Part
+from fleet.models import Fitting, Module, Part
 from fleet.rollout import done_words, positions_left
 from reliability import redesign_words as words
+from reliability.redesign_files import lines
 from reliability.redesign_page import page_of
 from reliability.redesigns.document import redesign_document
 from reliability.redesigns.plan_left import plan_left
@@ -123,6 +124,9 @@ def test_three_candidates_beside_each_other_one_of_them_on_a_rig_only() -> None:
     # 40, 60, 80, 100 days against 30, 40, 50, 60 on the same stand
     assert new["over_old"]["lower"] < 70 / 45 < new["over_old"]["upper"]
     assert document["all_history"]["curves"]["groups"][0]["lives"] < 300
+    rows = {line[0]: line[3:] for line in lines(document)}
+    assert rows["chance longer of N3"][0] == second["longer"]
+    assert rows["on stands, new over old, N4"] == [new["over_old"][end] for end in ("estimate", "lower", "upper")]
     table = page_of(document)["rigs"]
     assert [column["label"] for column in table["columns"]][-1] == "On stands, new over old"
 
@@ -170,6 +174,26 @@ def test_a_chance_says_what_it_rests_on() -> None:
     assert words.chance_sentence(document).startswith(
         "None of the N2 has failed over the same dates, so this rests on how long they have run without it"
     )
+
+
+def test_parts_of_which_none_has_failed_have_a_page_a_file_and_a_print() -> None:
+    """Old and new side by side for 200 days without a failure: a bound, the hope as an assumption, no chance."""
+    fleet = RolloutFleet(2.0, sites=3, modules=6)
+    Fitting.objects.filter(reason="failed").update(reason="planned", mode=None)
+    rebuild_clocks()
+    fleet.redesign()
+    client = Client()
+    client.force_login(make_manager())
+    for name in ("redesign", "redesign_print", "redesign_money"):
+        reply = client.get(reverse(name, args=["LIP"]), {"as_of": AS_OF})
+        assert reply.status_code == 200, name
+        text = plain(reply.content.decode())
+        assert "_" not in " ".join(each.split("<")[0] for each in text.split("<p>")[1:]), "no word of a program"
+        if name != "redesign_money":
+            assert "no chance is told" in text
+            assert "No failures in" in text
+    assert "Counted with the hope, N2 over N1 1.50 times: an assumption, no evidence." in text
+    assert client.get(reverse("redesign", args=["LIP"]), {"as_of": AS_OF, "as": "csv"}).status_code == 200
 
 
 def test_a_part_that_nobody_has_fitted_is_said_so() -> None:
