@@ -11,6 +11,8 @@ from fleet.forms.record import DayInput
 from fleet.models import Component, Part
 from reliability.forecasts.what_if import MOST_DUTY, UnusableWhatIf, WhatIf
 
+LEAST_DUTY = LEAST_AGE = 0.01  # hardly used, changed at once: below, numbers only lose their meaning
+LEAST_A_WEEK = 0.001
 # What belongs to one component is not carried over to another.
 OF_ONE_COMPONENT = ("replace_at", "superseding", "superseding_from", "retrofit_a_week")
 
@@ -53,20 +55,22 @@ class WhatIfForm(forms.Form):
         duty = self.cleaned_data["duty"]
         if duty is None:
             return 1.0
-        if not 0 < duty <= MOST_DUTY:
-            raise forms.ValidationError(f"Times {duty:g} is no use. Write a factor above 0, up to {MOST_DUTY:g}.")
+        if not LEAST_DUTY <= duty <= MOST_DUTY:
+            raise forms.ValidationError(
+                f"Times {duty:g} is no use. Write a factor from {LEAST_DUTY:g} to {MOST_DUTY:g}."
+            )
         return float(duty)
 
     def clean_replace_at(self) -> float | None:
         age = self.cleaned_data["replace_at"]
-        if age is not None and not 0 < age < 1e12:
-            raise forms.ValidationError(f"{age:g} is no age. Write one above 0.")
+        if age is not None and not LEAST_AGE <= age < 1e12:
+            raise forms.ValidationError(f"{age:g} is no age. Write one from {LEAST_AGE:g} up.")
         return age
 
     def clean_retrofit_a_week(self) -> float | None:
         pace = self.cleaned_data["retrofit_a_week"]
-        if pace is not None and not 0 < pace < 1e7:
-            raise forms.ValidationError(f"{pace:g} a week are none. Write more than 0, or leave it empty.")
+        if pace is not None and not LEAST_A_WEEK <= pace < 1e7:
+            raise forms.ValidationError(f"{pace:g} a week are none. Write {LEAST_A_WEEK:g} or more, or leave it empty.")
         return pace
 
     def clean(self) -> dict[str, Any]:

@@ -71,8 +71,8 @@ class OrderWhatIfForm(forms.Form):
 
     def clean_retrofit_a_week(self) -> float | None:
         pace = self.cleaned_data["retrofit_a_week"]
-        if pace is not None and not 0 < pace < 1e6:
-            raise forms.ValidationError(f"{pace:g} a week are none. Write more than 0, or leave it empty.")
+        if pace is not None and not 0.001 <= pace < 1e6:
+            raise forms.ValidationError(f"{pace:g} a week are none. Write 0.001 or more, or leave it empty.")
         return pace
 
     def clean(self) -> dict[str, Any]:

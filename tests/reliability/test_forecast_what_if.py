@@ -131,6 +131,8 @@ def test_what_belongs_to_one_component_is_not_carried_to_another(manager: Client
         ("duty=0", "duty"),
         ("duty=-1", "duty"),
         ("duty=11", "duty"),
+        ("duty=1e-320", "duty"),
+        ("replace_at=1e-320", "replace_at"),
         ("duty=much", "duty"),
         ("replace_at=0", "replace_at"),
         ("replace_at=nan", "replace_at"),
