@@ -35,6 +35,7 @@ class PartChange:
     caused_by: Fitting | None = None
     caused_by_position: Position | None = None  # the cause among the changes of this same visit
     note: str = ""
+    holds: int | None = None  # the fitting that its reader saw in the position, 0 for none; None: not said
 
 
 @dataclass(frozen=True)

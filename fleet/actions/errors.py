@@ -55,6 +55,19 @@ class PositionTaken(RecordError):
     """A second part for a position, or a stay that overlaps another."""
 
 
+class ChangedMeanwhile(RecordError):
+    """Somebody changed the part of a position after the sheet was opened; sent again it is about the part now in it."""
+
+    def __init__(self, *, position: str, who: str, day: str, now: str, holds: int) -> None:
+        super().__init__(
+            f"{who} logged a change here on {day}, after you opened this sheet: {now}. If yours is the same "
+            "change, open the sheet again and log only what is missing. If it is another one, send this once more.",
+            field="reason",
+            position=position,
+            shown_now={"holds": holds},
+        )
+
+
 class NothingFitted(RecordError):
     """A removal from a position that holds no part on that day."""
 

@@ -13,7 +13,7 @@ from fleet.actions.entries import PartChange
 from fleet.actions.errors import NotEnough
 from fleet.actions.issue_part import issue_part
 from fleet.actions.record_visit import record_visit
-from fleet.models import Part, StockMove, Store, Visit
+from fleet.models import EntryKey, Part, Person, StockMove, Store, Visit
 from fleet.rights import LOG
 
 
@@ -22,6 +22,12 @@ class LoggedVisit:
     visit: Visit
     issued: list[StockMove] = field(default_factory=list)
     short: list[Part] = field(default_factory=list)  # fitted, though the store holds none of it on record
+
+
+def recorded_before(by: Person, key: uuid.UUID | None) -> Visit | None:
+    """The visit of a submission that was recorded; its form may be out of date by now and refuse it."""
+    entry = EntryKey.objects.filter(key=key, person=by, verb="record_visit").first() if key is not None else None
+    return Visit.objects.filter(pk=entry.answer.get("visit")).first() if entry is not None else None
 
 
 def log_visit(*, issue_from: Store | None = None, **entry: Any) -> LoggedVisit:

@@ -12,6 +12,6 @@ def add_record_error(form: forms.Form, error: RecordError) -> None:
     for name, value in error.data.get("shown_now", {}).items():
         if name in form.fields:  # what was told counts as seen when the form is sent again
             form.data = form.data.copy()
-            form.data[name] = str(value)
+            form.data[form.add_prefix(name)] = str(value)
     field = error.field if error.field in form.fields else None
     form.add_error(field, error.message)

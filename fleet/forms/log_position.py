@@ -45,6 +45,7 @@ MOST_AGE = 1e12
 class PositionForm(forms.Form):
     """Fields that do not belong to the chosen outcome are passed over, not refused: a phone may have hidden them."""
 
+    holds = forms.IntegerField(required=False, min_value=0, max_value=2**62, widget=forms.HiddenInput)
     outcome = TileField(required=False, widget=forms.RadioSelect, label="What happened?")
     because = TileField(
         choices=[(BY_AGE, "By its age"), (LOOKED_WORN, "It looked worn")],
@@ -69,6 +70,7 @@ class PositionForm(forms.Form):
         super().__init__(data, prefix=f"p{choices.position.pk}")
         self.choices, self.position, self.name = choices, choices.position, choices.name
         fields = self.fields
+        fields["holds"].initial = choices.fitting.pk if choices.fitting else 0
         fields["outcome"].choices = [*CAME_OUT, *STAYS_IN] if choices.fitting else EMPTY
         fields["outcome"].error_messages["invalid_choice"] = self.unknown_outcome()
         fields["mode"] = PickField(
@@ -190,6 +192,7 @@ class PositionForm(forms.Form):
             age_at_fit=(said["age_at_fit"] or 0) if part else 0,
             caused_by_position=said["cause"] if reason == RemovalReason.TAKEN_WITH_ANOTHER else None,
             note=said["note"],
+            holds=said["holds"],
         )
 
     def finding(self) -> FindingEntry:

@@ -14,7 +14,7 @@ from django.utils import timezone
 from django.views.decorators.cache import never_cache
 
 from fleet.actions.errors import RecordError
-from fleet.actions.log_visit import LoggedVisit
+from fleet.actions.log_visit import LoggedVisit, recorded_before
 from fleet.actions.log_visit import log_visit as log_and_issue
 from fleet.formats import moment
 from fleet.forms.log import LogSheet
@@ -93,7 +93,10 @@ def log_visit(request: Any, tag: str) -> HttpResponse:
     module = seen_module(request, tag)
     choices = log_choices(request.seen, module, request.user)
     sheet = LogSheet(choices, request.POST if request.method == "POST" else None)
-    if request.method == "POST" and sheet.is_valid():
+    sound = request.method == "POST" and sheet.is_valid()
+    if request.method == "POST" and not sound and sent_before(request, module, sheet):
+        return redirect("module", tag=module.code)
+    if sound:
         try:
             logged = log_and_issue(by=request.user, module=module, **sheet.entry(request.user))
         except RecordError as error:
@@ -108,6 +111,16 @@ def log_visit(request: Any, tag: str) -> HttpResponse:
         "module_url": reverse("module", args=[module.code]),
     }
     return render(request, "log/visit.html", context, status=422 if request.method == "POST" else 200)
+
+
+def sent_before(request: Any, module: Module, sheet: LogSheet) -> bool:
+    """A repeated submission answers the same, though its form asks about parts that came out meanwhile."""
+    visit = recorded_before(request.user, sheet.visit.cleaned_data.get("entry_key"))
+    if visit is None or visit.module_id != module.pk:
+        return False
+    entered = moment(visit.entered_at.astimezone(sheet.choices.standing.zone))
+    messages.info(request, f"This entry was recorded already, on {entered}. Nothing was added.")
+    return True
 
 
 def tell(request: Any, sheet: LogSheet, logged: LoggedVisit) -> None:

@@ -85,6 +85,37 @@ def test_the_same_entry_sent_twice_is_recorded_once_and_answered_the_same(weir, 
     assert Visit.objects.count() == 1
 
 
+@pytest.mark.parametrize("said", [{"part": ""}, {"outcome": "upgrade", "part": "N2"}])
+def test_sent_twice_it_is_answered_the_same_though_the_position_changed_by_it(weir, cleo, said):
+    """What was left empty has no part to fail any more; what was upgraded cannot be upgraded to the same design."""
+    said = {"outcome": "failed", "mode": weir.worn, **said} | ({"part": weir.n2} if said["part"] else {})
+    data = opened(cleo, weir.module) | at(weir.nut, **said) | {"finish": "done"}
+    assert [cleo.post(log_address(weir.module), data).status_code for _ in range(2)] == [302, 302]
+    assert "recorded already" in cleo.post(log_address(weir.module), data, follow=True).content.decode()
+    assert Visit.objects.count() == 1
+    other = opened(cleo, weir.module) | at(weir.nut, outcome="no such") | {"finish": "done"}
+    assert cleo.post(log_address(weir.module), other).status_code == 422
+
+
+def test_of_two_who_log_the_same_change_the_second_is_told(weir, cleo):
+    """Else the part that the first put in would have failed on the day it went in."""
+    tom = Client()
+    tom.force_login(make_crew(weir.site, name="Tom"))
+    failed = at(weir.nut, outcome="failed", mode=weir.worn, part=weir.n2) | {"finish": "done"}
+    sheets = [opened(client, weir.module) | failed for client in (tom, cleo)]
+    assert tom.post(log_address(weir.module), sheets[0]).status_code == 302
+    told = cleo.post(log_address(weir.module), sheets[1])
+    assert told.status_code == 422
+    assert "Tom logged a change here" in told.content.decode()
+    assert f"{weir.n2.code} is in now" in told.content.decode()
+    assert Fitting.objects.filter(position=weir.nut).count() == 2
+    [nut] = [form for form in told.context["sheet"].positions if form.position == weir.nut]
+    again = sheets[1] | {nut["holds"].html_name: nut["holds"].value()}
+    sent = cleo.post(log_address(weir.module), again)
+    assert sent.status_code == 302, sent.context["sheet"].faults
+    assert Fitting.objects.filter(position=weir.nut).count() == 3
+
+
 def test_another_entry_under_a_used_key_is_refused_not_swallowed(weir, cleo):
     data = opened(cleo, weir.module) | {"all_well": "on", "finish": "done"}
     cleo.post(log_address(weir.module), data)
