@@ -14,6 +14,7 @@ from reliability.stats.posterior import log_evidence, split_early
 FloatArray = NDArray[np.float64]
 
 MANY_ROWS = 2000
+_MOSTLY_EARLY = 0.2
 _CONVINCED = 4.0  # log Bayes factor: about 55 to 1
 
 
@@ -33,11 +34,14 @@ def early_window(lifetimes: Lifetimes, candidates: Sequence[float] | None = None
     middle = float(np.median(np.repeat(lifetimes.durations[failed], np.ceil(lifetimes.weights[failed]).astype(int))))
     # in a young fleet most failures may be early ones: then half the greatest age seen is the measure
     reach = 0.5 * float(lifetimes.durations.max())
-    measures = (middle, reach) if middle < 0.5 * reach else (middle,)
+    measures = (middle, reach) if middle < _MOSTLY_EARLY * reach else (middle,)
     usual = np.ceil(np.concatenate([measure * np.geomspace(0.01, 0.2, 6) for measure in measures]))
     ages = usual if candidates is None else np.asarray(candidates, dtype=float)
     plain = log_evidence(lifetimes)
-    found = [(_split_evidence(lifetimes, float(age)) - plain, float(age)) for age in np.unique(ages)]
+    found = [
+        (_split_evidence(lifetimes, float(age)) - _plain(lifetimes, float(age), plain), float(age))
+        for age in np.unique(ages)
+    ]
     best, age = max(found, default=(0.0, 0.0))
     return age if best > _CONVINCED + np.log(max(len(found), 1)) else 0.0
 
@@ -53,6 +57,22 @@ def _pooled(lifetimes: Lifetimes) -> Lifetimes:
         last_good=lifetimes.last_good,
         weights=lifetimes.weights,
     ).grouped()
+
+
+def _plain(lifetimes: Lifetimes, until: float, of_all: float) -> float:
+    """Evidence of one Weibull for what the split speaks of: it leaves out what late entries did before `until`, and
+    whoever explains less is not to gain by it.
+    """
+    late = (lifetimes.entries > 0) & (lifetimes.entries < until)
+    if not late.any():
+        return of_all
+    seen = ~late | (lifetimes.durations > until)
+    rest = lifetimes.subset(seen)
+    entries = np.where(late[seen], until, rest.entries)
+    last_good = np.where(late[seen] & (rest.last_good < until), until, rest.last_good)
+    return log_evidence(
+        Lifetimes(rest.durations, rest.observed, entries=entries, last_good=last_good, weights=rest.weights)
+    )
 
 
 def _split_evidence(lifetimes: Lifetimes, until: float) -> float:

@@ -214,7 +214,9 @@ def split_early(lifetimes: Lifetimes, until: float) -> tuple[Lifetimes, tuple[fl
     early = lifetimes.durations <= until
     from_new = lifetimes.entries == 0
     failed = float(lifetimes.weights[early & lifetimes.observed & from_new].sum())
-    survived = float(lifetimes.weights[~early & from_new].sum())
+    # one that was taken out, or still runs, within the window survived its share of it
+    share = np.minimum(lifetimes.durations / until, 1.0)
+    survived = float((lifetimes.weights * share)[from_new & ~(early & lifetimes.observed)].sum())
     if not (~early).any():
         raise InvalidArgument(f"No life reached the age {until:g} at which early failures are set apart.")
     rest = lifetimes.subset(~early)

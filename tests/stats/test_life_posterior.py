@@ -14,6 +14,8 @@ from reliability.stats.early_failures import early_window
 from reliability.stats.life_posterior import life_posterior
 from reliability.stats.lifetimes import Lifetimes
 from reliability.stats.posterior_lognormal import lognormal_grid
+from tests.benchmarks.calibration_cases import FURTHER
+from tests.benchmarks.calibration_fleets import make_fleet
 
 
 def records(life: np.ndarray, watched: np.ndarray, sites: np.ndarray | None = None) -> Lifetimes:
@@ -146,3 +148,10 @@ def test_infant_failures_read_as_one_weibull_give_too_few() -> None:
     truth = 200 * (1 - np.exp(0.5**3 - (241 / 300) ** 3))
     assert one.mean < 0.6 * truth
     assert split.interval(0.95)[0] <= truth <= split.interval(0.95)[1]
+
+
+def test_late_records_are_not_taken_for_early_failures() -> None:
+    """What a split leaves unexplained was counted in its favour: two of five such fleets got an early share."""
+    case = FURTHER["late records, removals, sites differ"]
+    windows = [early_window(make_fleet(case, np.random.default_rng([8, number])).records) for number in range(8)]
+    assert windows == [0.0] * 8

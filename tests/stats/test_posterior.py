@@ -10,7 +10,7 @@ from scipy.special import gammaln
 
 from reliability.stats.errors import InvalidArgument
 from reliability.stats.lifetimes import Lifetimes
-from reliability.stats.posterior import KnownWeibull, unrounded, weibull_posterior
+from reliability.stats.posterior import KnownWeibull, split_early, unrounded, weibull_posterior
 from reliability.stats.posterior_likelihood import _correction
 
 
@@ -252,3 +252,10 @@ def test_a_life_entered_within_its_last_day_keeps_its_age() -> None:
     assert unrounded(records, 1.0).durations.tolist() == [0.5, 5.0, 9.0]
     with pytest.raises(InvalidArgument):
         unrounded(records, -1.0)
+
+
+def test_a_life_that_left_within_the_window_survived_its_share_of_it() -> None:
+    lifetimes = Lifetimes([2.0, 5.0, 10.0, 40.0], [1, 0, 0, 1], weights=[3, 4, 1, 2])
+    late, (failed, survived) = split_early(lifetimes, 10.0)
+    assert (failed, survived) == (3.0, 4 * 0.5 + 1.0 + 2.0)
+    assert late.entries.tolist() == [10.0]
