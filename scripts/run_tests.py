@@ -28,7 +28,8 @@ TYPED = ["config", "fleet/actions", "fleet/work", "reliability/charts", "scripts
 STATISTICS = "reliability/stats"  # typed as well, but for the files whose names begin so
 NOT_YET_TYPED = ("count", "kept_draws", "posterior", "prediction")
 AT_ONCE = "2"
-WITHOUT_DATABASE = ("layout", "scripts", "stats")  # once is enough for these
+# Not even read where only tests of the database or of the browser are wanted: reading them takes seconds.
+WITHOUT_DATABASE = ("layout", "scripts", "stats")
 NOTHING_TO_RUN = 5  # pytest's status when no test was chosen
 
 
@@ -87,8 +88,12 @@ def lint_parts() -> Iterator[Outcome]:
 
 
 def test_parts(reports: Path) -> Iterator[Outcome]:
-    """SQLite first; PostgreSQL then takes what touches the database, and what only it can show; the browser last."""
+    """SQLite first; PostgreSQL then takes what touches the database, and what only it can show; the browser last.
+
+    What touches no database, all of tests/stats among it, answers the same beside either engine: once is enough.
+    """
     beside = ["-n", AT_ONCE]
+    some = ["tests", *(f"--ignore=tests/{name}" for name in WITHOUT_DATABASE)]
     yield run_pytest(
         "tests on SQLite",
         ["tests", "--ignore=tests/layout", "-m", "not browser and not postgres", *beside],
@@ -97,11 +102,11 @@ def test_parts(reports: Path) -> Iterator[Outcome]:
     with throwaway_postgresql.running() as address:
         yield run_pytest(
             "tests on PostgreSQL",
-            ["tests", *(f"--ignore=tests/{name}" for name in WITHOUT_DATABASE), "-m", "not browser", *beside],
+            [*some, "-m", "database and not browser", *beside],
             reports,
             {"HALFNUT_DATABASE_URL": address},
         )
-    yield run_pytest("browser tests in Chromium", ["tests", "-m", "browser", *beside], reports)
+    yield run_pytest("browser tests in Chromium", [*some, "-m", "browser", *beside], reports)
 
 
 def run_check(part: str, command: Sequence[str], extra: dict[str, str] | None = None) -> Outcome:
