@@ -148,14 +148,10 @@ def context_of(
         "document": document,
         "as_of": dt.date.fromisoformat(document["as_of"]),
         "crumbs": CRUMBS,
-        "actions": [
-            *actions_of(record),
-            {
-                "name": "Two sheets for a meeting" if len(form.lines) < 2 else "Sheets for a meeting",
-                "url": sheets + query,
-                "quiet": True,
-            },
-        ],
+        "actions": actions_of(record),
+        # inside what follows the choices, so that it prints what is shown
+        "sheets_name": "Two sheets for a meeting" if len(form.lines) < 2 else "Sheets for a meeting",
+        "sheets_url": sheets + query,
         "money_url": reverse("redesign_money", args=[record.code]) + query,
         "back": reverse("redesign", args=[record.code]) + query,
         "exports": [{"name": "CSV", "url": f"{query}{join}as=csv"}, {"name": "JSON", "url": f"{query}{join}as=json"}],

@@ -12,7 +12,7 @@ from django.test import Client
 from django.urls import reverse
 
 from fleet.actions.plan_rollout import plan_rollout
-from fleet.formats import number, percent
+from fleet.formats import long_day, number, percent
 from fleet.models import Module
 from reliability import redesign_words as words
 from reliability.redesign_money import money_sentence
@@ -64,6 +64,15 @@ def test_files_carry_the_same_figures() -> None:
     assert lines[0] == "figure,which,assumed,estimate,lower,upper"
     ratio = document["same_dates"]["ratio"]["sites differ"]["median"]
     assert f"life ratio median,same dates,sites differ,{ratio['estimate']},{ratio['lower']},{ratio['upper']}" in lines
+
+
+def test_what_follows_the_choices_holds_their_day_and_their_sheets() -> None:
+    """The list alone is swapped when a choice changes: what depends on it stands in there."""
+    text = Screen().text(money="hope")
+    follows = text[text.index('<div id="list">') :]
+    assert f"From the records of {long_day(day(TODAY))}" in follows
+    assert f"/print/?as_of={AS_OF}&amp;money=hope" in follows
+    assert text.count("/print/") == 1
 
 
 def test_choices_stay_in_the_address_and_bad_ones_are_told() -> None:
