@@ -17,7 +17,7 @@ from reliability.forecasts.season import edges_of, in_season, season_of
 from reliability.forecasts.what_if import NotCountedYet
 
 if TYPE_CHECKING:
-    from reliability.stats.count_results import CountForecast
+    from reliability.stats.count_results import CountForecast, Counts
     from reliability.stats.count_simulation import SimulatedCounts
 
 FEW_FAILURES = 20
@@ -26,7 +26,7 @@ COUNTED_OF_FEW, COUNTED = 200, 48
 LABELS = ("site", "type", "part", "needed")
 SIMULATED = 600_000  # draws times positions
 FEWEST_SIMULATED, MOST_SIMULATED = 200, 2000
-MOST_POSITIONS = 20_000  # in a simulation
+MOST_POSITIONS, SAMPLE_OF_MANY = 20_000, 6_000  # in a simulation; of more a sample stands for all
 
 
 def is_simulated(question: Question) -> bool:
@@ -44,7 +44,10 @@ def count(question: Question, learned: Learned, positions: Positions) -> CountFo
     if is_simulated(question):
         from reliability.forecasts.simulated import simulated_forecast
 
-        found = simulated_forecast(question, simulate(question, learned, positions), positions)
+        size = float(positions.weights.sum())
+        share = 1.0 if size <= MOST_POSITIONS else question.share_for(size, SAMPLE_OF_MANY)
+        some = singles(positions, share)
+        found = simulated_forecast(question, simulate(question.of_share(share), learned, some), some, share)
         return in_season(found, season_of(question, learned.duty)) if learned.duty.season else found
     windows, stretch = edges_of(question)
     labels = [positions.column(name) for name in LABELS]
@@ -65,6 +68,31 @@ def count(question: Question, learned: Learned, positions: Positions) -> CountFo
         **settings_of(question, learned, positions),
     )
     return in_season(found, season_of(question, learned.duty)) if learned.duty.season else found
+
+
+def totals(question: Question, learned: Learned, positions: Positions) -> Counts:
+    """The totals alone, exactly."""
+    import numpy as np
+
+    from reliability.forecasts.season import scaled_counts
+    from reliability.stats.counts import forecast_counts
+
+    gap, span = question.gap, question.span
+    found = forecast_counts(
+        designs_of(learned),
+        positions.ages,
+        positions.horizons,
+        weights=positions.weights,
+        windows=[0, gap, span] if gap else [0, span],
+        stretch=(1, 2) if gap else (0, 1),
+        parts_by_window=False,
+        taken_share=learned.taken_share,
+        draws=DRAWS,
+        counted_draws=COUNTED_OF_FEW if learned.failures < FEW_FAILURES else COUNTED,
+        rng=np.random.default_rng(question.seed("")),
+        **settings_of(question, learned, positions),
+    )
+    return scaled_counts(found, season_of(question, learned.duty).whole)
 
 
 def designs_of(learned: Learned) -> dict[str, Any]:
@@ -145,8 +173,9 @@ def simulate(
     )
 
 
-def singles(positions: Positions) -> Positions:
-    """A line a position; fractions of positions are rounded so that their running sum stays right.
+def singles(positions: Positions, share: float = 1.0) -> Positions:
+    """A line a position, or this share of them, evenly spread over their order; fractions are rounded so that their
+    running sum stays right.
 
     In the order of site, type, part and age, which hardly depends on what is assumed: luck follows the line.
     """
@@ -156,7 +185,7 @@ def singles(positions: Positions) -> Positions:
         (place.site, place.type, place.part, age) for place, age in zip(positions.places, positions.ages, strict=True)
     ]
     order = np.array(sorted(range(len(keys)), key=keys.__getitem__), dtype=int)
-    counts = np.diff(np.rint(np.cumsum(positions.weights[order])), prepend=0.0).astype(int)
+    counts = np.diff(np.rint(np.cumsum(positions.weights[order]) * share), prepend=0.0).astype(int)
     line = np.repeat(order, counts)
     places: Sequence[Any] = [positions.places[number] for number in line]
     return Positions(positions.ages[line], positions.horizons[line], np.ones(line.size), list(places))

@@ -1,7 +1,9 @@
 """What a what-if changes against the base case: same draws of the lives, same duty, same luck of every part.
 
 Both are simulated side by side, so that the band is one of the difference: of two quarters that differ only in what is
-assumed. The mean is that of the exact counts where they apply.
+assumed. The mean is that of the exact counts where they apply. Of a large fleet a sample of positions is simulated,
+evenly spread over sites, types, parts and ages, and told for the whole; what its smallness adds to the spread is taken
+out again.
 """
 
 from __future__ import annotations
@@ -9,11 +11,13 @@ from __future__ import annotations
 from collections.abc import Sequence
 from typing import TYPE_CHECKING, Any
 
-from reliability.forecasts.count import count, is_simulated, simulate
+from reliability.forecasts.count import is_simulated, simulate, singles, totals
 from reliability.forecasts.learned import learned
 from reliability.forecasts.next_quarter import checked, running_now
-from reliability.forecasts.positions import positions_of
+from reliability.forecasts.positions import Positions, positions_of
 from reliability.forecasts.question import Question
+from reliability.forecasts.season import season_of
+from reliability.forecasts.simulated import for_all
 
 if TYPE_CHECKING:
     from reliability.forecasts.learned import Learned
@@ -21,6 +25,9 @@ if TYPE_CHECKING:
 
 BANDS = (0.5, 0.8, 0.95)
 KINDS = ("failures", "parts_used", "planned")
+SIMULATED = 180_000  # draws times positions
+FEWEST_DRAWS, MOST_DRAWS = 200, 800
+SAMPLE = 1200  # positions of a fleet that is larger
 
 
 def difference_document(question: Question, *, bands: Sequence[float] = BANDS) -> dict[str, Any]:
@@ -44,15 +51,19 @@ def _differences(
 ) -> dict[str, dict[str, Any]]:
     import numpy as np
 
-    cases = [(asked, positions_of(running.rows, asked, taught)) for asked in _paired(question)]
-    simulated = [simulate(asked, taught, positions) for asked, positions in cases]
+    cases = [(asked, positions_of(running.rows, asked, taught)) for asked in (question, question.base)]
+    size = max(float(positions.weights.sum()) for _, positions in cases)
+    share = question.share_for(size, SAMPLE)
+    draws = int(np.clip(SIMULATED / max(size * share, 1.0), FEWEST_DRAWS, MOST_DRAWS))
+    assumed, base = (_played(asked, taught, positions, share, draws) for asked, positions in cases)
     exact = None
     if not any(is_simulated(asked) for asked, _ in cases):
-        exact = [count(asked, taught, positions) for asked, positions in cases]
+        exact = [totals(asked, taught, positions) for asked, positions in cases]
+    whole = season_of(question, taught.duty).whole
     found = {}
-    for kind in KINDS:
-        assumed, base = (getattr(each, kind) for each in simulated)
-        differences = assumed - base
+    for place, kind in enumerate(KINDS):
+        size = min(assumed[place].shape[1], base[place].shape[1])
+        differences = whole * for_all(assumed[place][:, :size] - base[place][:, :size], share)
         shift = 0.0
         if exact is not None:
             wanted = getattr(exact[0], kind).mean - getattr(exact[1], kind).mean
@@ -68,6 +79,6 @@ def _differences(
     return found
 
 
-def _paired(question: Question) -> tuple[Question, Question]:
-    """The what-if and its base case, on draws of the same designs."""
-    return question, question.base
+def _played(asked: Question, taught: Learned, positions: Positions, share: float, draws: int) -> Any:
+    """Failures, parts used and planned ones of every draw and position, of this share of the positions."""
+    return simulate(asked.of_share(share), taught, singles(positions, share), draws=draws).by_position

@@ -15,6 +15,7 @@ from reliability.forecasts.horizon import WEEK, WEEKS, next_quarter
 from reliability.forecasts.what_if import WhatIf
 
 NEAR_DAYS = 3
+WHOLE_WEEKS = (1, 2, 3, 4, 6, 12)
 BASE = WhatIf()
 
 
@@ -55,6 +56,23 @@ class Question:
     def base(self) -> Question:
         """The same without assumptions; the quantity to plan for stays at its level."""
         return replace(self, what_if=WhatIf(service_level=self.what_if.service_level))
+
+    def share_for(self, size: float, sample: int) -> float:
+        """About which share of so many positions a sample is, so that it is changed by whole parts in whole weeks."""
+        share = min(1.0, sample / max(size, 1.0))
+        retrofits = self.what_if.retrofit_a_week
+        if retrofits is None or share >= 1.0:
+            return share
+        pace = retrofits * share
+        even = float(round(pace)) if pace >= 1.0 else 1.0 / min(WHOLE_WEEKS, key=lambda weeks: abs(1.0 / weeks - pace))
+        return min(1.0, even / retrofits)
+
+    def of_share(self, share: float) -> Question:
+        """The same of a share of the positions: as many fewer retrofits a week."""
+        retrofits = self.what_if.retrofit_a_week
+        if retrofits is None or share == 1.0:
+            return self
+        return replace(self, what_if=replace(self.what_if, retrofit_a_week=retrofits * share))
 
     @property
     def switch_day(self) -> int:

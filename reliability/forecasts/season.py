@@ -59,23 +59,28 @@ def season_of(question: Question, duty: Duty) -> Season:
 
 
 def in_season(found: CountForecast, season: Season) -> CountForecast:
-    """The same with every week by its own use; the total is as much more or less as its weeks are together."""
-    weeks = tuple(_counts(week, share) for week, share in zip(found.by_window, season.shares, strict=True))
-    before = sum(week.failures.mean for week in found.by_window)
-    whole = sum(week.failures.mean for week in weeks) / before if before > 0 else season.whole
-    total = _counts(found, whole)
+    """The same with the total by its use, and every week by its own, so that they add up to the total."""
+    pairs = list(zip(found.by_window, season.shares, strict=True))
+    before = sum(week.failures.mean for week, _ in pairs)
+    after = sum(week.failures.mean * share for week, share in pairs)
+    whole = season.whole
+    together = whole * before / after if after > 0 else 1.0
+    weeks = tuple(scaled_counts(week, share * together) for week, share in pairs)
+    total = scaled_counts(found, whole)
     return replace(
         found,
         failures=total.failures,
         parts_used=total.parts_used,
         planned=total.planned,
-        by_group={label: _counts(each, whole) for label, each in found.by_group.items()},
-        by_also=tuple({label: _counts(each, whole) for label, each in groups.items()} for groups in found.by_also),
+        by_group={label: scaled_counts(each, whole) for label, each in found.by_group.items()},
+        by_also=tuple(
+            {label: scaled_counts(each, whole) for label, each in groups.items()} for groups in found.by_also
+        ),
         by_window=weeks,
     )
 
 
-def _counts(counts: Counts, share: float) -> Counts:
+def scaled_counts(counts: Counts, share: float) -> Counts:
     from reliability.stats.count_results import Counts
 
     return Counts(*(_scaled(each, share) for each in (counts.failures, counts.parts_used, counts.planned)))
@@ -88,7 +93,7 @@ def _scaled(counts: CountDistribution, share: float) -> CountDistribution:
     chance; the rest by chance alone.
     """
     import numpy as np
-    from scipy.stats import binom, poisson
+    from scipy.stats import poisson
 
     from reliability.stats.count_results import CountDistribution
 
@@ -96,18 +101,30 @@ def _scaled(counts: CountDistribution, share: float) -> CountDistribution:
         return counts
     if share > 2.0:
         return _scaled(_scaled(counts, 2.0), share / 2.0)
-    number = np.arange(counts.pmf.size)
     if share < 1.0:
-        return CountDistribution(_normal(counts.pmf @ binom.pmf(number[None, :], number[:, None], share)))
+        return CountDistribution(_normal(counts.pmf @ _thinned(counts.pmf.size, share)))
     variance = counts.standard_deviation**2
     unknown = max(variance - counts.mean, 0.0) / variance if variance > 0 else 0.0
-    again = binom.pmf(number[None, :], number[:, None], (share - 1.0) * unknown)
-    pmf = np.zeros(2 * counts.pmf.size)
-    for first in number:  # first counted once, others of them again
-        pmf[first : first + number.size] += counts.pmf[first] * again[first]
+    again, number = _thinned(counts.pmf.size, (share - 1.0) * unknown), np.arange(counts.pmf.size)
+    # all of them once, and some again
+    pmf = np.bincount((number[:, None] + number).ravel(), (counts.pmf[:, None] * again).ravel())
     more = (share - 1.0) * (1.0 - unknown) * counts.mean
     chance: Any = poisson.pmf(np.arange(int(more + 9.0 * more**0.5) + 9), more)
     return CountDistribution(_normal(np.convolve(pmf, chance)))
+
+
+def _thinned(size: int, chance: float) -> Any:
+    """Probabilities of 0, 1, ... (columns) of as many as the line says, each with this chance."""
+    import numpy as np
+    from scipy.special import gammaln
+
+    number = np.arange(size)
+    if chance <= 0.0:
+        return np.eye(1, size).repeat(size, axis=0)
+    logs = gammaln(number + 1.0)
+    rest = number[:, None] - number
+    chosen = logs[:, None] - logs - logs[np.abs(rest)] + number * np.log(chance) + rest * np.log1p(-chance)
+    return np.where(rest >= 0, np.exp(np.minimum(chosen, 0.0)), 0.0)
 
 
 def _normal(pmf: Any) -> Any:
