@@ -43,6 +43,19 @@ def test_little_knowledge_stays_near_a_tenth() -> None:
     assert one.own == pytest.approx(0.1)
 
 
+@pytest.mark.parametrize(("quarters", "spread"), [(5, 0.14), (8, 0.14), (8, 0.28)])
+def test_the_next_quarter_lies_in_its_band_as_often_as_it_should(quarters: int, spread: float) -> None:
+    """Six sites that stray together: how often the next quarter lies in the 80 % band of a normal so wide."""
+    rng = np.random.default_rng(quarters)
+    found = [learned_duty_spread(*quarters_of(rng, quarters, 6, spread, 0.02)).common for _ in range(2000)]
+    held = np.abs(spread * rng.standard_normal(2000)) < 1.2816 * np.array(found)
+    assert held.mean() == pytest.approx(0.78, abs=0.03)
+
+
+def test_duty_that_never_strayed_is_soon_taken_for_even() -> None:
+    assert learned_duty_spread(*quarters_of(np.random.default_rng(3), 8, 6, 0.0, 0.0)).common < 0.04
+
+
 @pytest.mark.parametrize(("actual", "expected"), [([0.0], [1.0]), ([1.0], [np.nan]), ([1.0, 2.0], [1.0])])
 def test_refuses_duty_that_is_none(actual: list[float], expected: list[float]) -> None:
     with pytest.raises(InvalidArgument):
