@@ -38,7 +38,7 @@ class CountDistribution:
         """Smallest count k with P(N <= k) >= p; the quantity that is enough in the share p of cases."""
         if not 0 <= p <= 1:
             raise InvalidArgument(f"p is {p:g}; it must lie between 0 and 1.")
-        return int(min(np.searchsorted(self._cumulative, p - 1e-12), self.pmf.size - 1))
+        return min(int(np.searchsorted(self._cumulative, p - 1e-12)), self.pmf.size - 1)
 
     def interval(self, level: float) -> tuple[int, int]:
         """Equal-tailed band holding at least `level`."""

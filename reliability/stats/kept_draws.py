@@ -50,7 +50,7 @@ class KeptDraws:
         rng = np.random.default_rng() if rng is None else rng
         place = np.floor((np.arange(count) + rng.random()) * len(self.drawn) / count).astype(np.int64)
         chosen = rng.permutation(np.minimum(place, len(self.drawn) - 1))
-        columns = {
+        columns: dict[str, Any] = {
             name: None if getattr(self.drawn, name) is None else getattr(self.drawn, name)[chosen] for name in _COLUMNS
         }
         multipliers = {label: values[chosen] for label, values in self.drawn.multipliers.items()}

@@ -88,7 +88,7 @@ def _at_risk(ages: ArrayLike, weights: ArrayLike | None, horizon: float, level: 
     if not 0.5 <= level < 1:
         raise InvalidArgument(f"level is {level:g}; it must be at least 0.5 and below 1.")
     distinct, inverse = np.unique(age, return_inverse=True)
-    return distinct, np.bincount(inverse, count, minlength=distinct.size)
+    return distinct, np.bincount(inverse, count, minlength=distinct.size).astype(np.float64, copy=False)
 
 
 def bootstrap_weibull(lifetimes: Lifetimes, resamples: int, rng: np.random.Generator) -> tuple[FloatArray, FloatArray]:
@@ -163,7 +163,7 @@ def _pmfs(chances: FloatArray, count: FloatArray, size: int | None = None) -> Fl
 
 
 def _quantile(cumulative: FloatArray, p: float) -> int:
-    return int(min(np.searchsorted(cumulative, p - 1e-12), cumulative.size - 1))
+    return min(int(np.searchsorted(cumulative, p - 1e-12)), cumulative.size - 1)
 
 
 def _calibrated_level(drawn: FloatArray, plugged: FloatArray, level: float, *, upper: bool) -> float:
