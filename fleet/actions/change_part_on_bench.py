@@ -8,7 +8,7 @@ import uuid
 from fleet.actions.base import once
 from fleet.actions.checks_parts import check_part, check_parts_fit_type, check_position
 from fleet.actions.checks_places import Place
-from fleet.actions.checks_stays import Stays, stay_words
+from fleet.actions.checks_stays import Stays, check_seen, stay_words
 from fleet.actions.checks_values import clean_day, need_day
 from fleet.actions.entries import PartChange
 from fleet.actions.errors import BadValue, PositionTaken
@@ -66,6 +66,7 @@ class BenchChange:
         if not entry.reason and entry.part is None:
             raise BadValue("Neither a reason nor a new part is given. Say what was done.", field="reason")
         stays = Stays(self.job.module, [entry.position], since=self.day)
+        check_seen(entry, stays)
         if entry.reason:
             self.take_out(entry, stays)
         else:

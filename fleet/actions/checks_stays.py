@@ -8,7 +8,16 @@ from collections.abc import Iterable
 from django.db.models import Q
 
 from fleet.actions.checks_places import first_clash
-from fleet.actions.errors import AlreadyDone, BadValue, NothingFitted, PositionTaken, RecordError, day_words
+from fleet.actions.entries import PartChange
+from fleet.actions.errors import (
+    AlreadyDone,
+    BadValue,
+    ChangedMeanwhile,
+    NothingFitted,
+    PositionTaken,
+    RecordError,
+    day_words,
+)
 from fleet.models import Fitting, Module, Position
 
 
@@ -73,6 +82,24 @@ class Stays:
 
     def add(self, fitting: Fitting) -> None:
         self.rows.append(fitting)
+
+
+def check_seen(entry: PartChange, stays: Stays) -> None:
+    """Of two who log the same change the second would take out what the first has just put in."""
+    running = stays.running(entry.position)
+    if entry.holds is None or entry.holds == (running.pk if running is not None else 0):
+        return
+    gone = Fitting.objects.filter(pk=entry.holds).first() if running is None else None
+    visit = running.fitted_visit if running is not None else gone and gone.removed_visit
+    who = visit.entered_by if visit else running and running.entered_by
+    day = running.fitted_on if running is not None else gone and gone.removed_on
+    raise ChangedMeanwhile(
+        position=entry.position.code,
+        who=who.name if who else "Somebody",
+        day=f" on {day_words(day)}" if day else "",
+        now=f"{running.part.code} is in now" if running is not None else "it is empty now",
+        holds=running.pk if running is not None else 0,
+    )
 
 
 def stay_words(stay: Fitting) -> str:

@@ -60,7 +60,7 @@ class ChangedMeanwhile(RecordError):
 
     def __init__(self, *, position: str, who: str, day: str, now: str, holds: int) -> None:
         super().__init__(
-            f"{who} logged a change here on {day}, after you opened this sheet: {now}. If yours is the same "
+            f"{who} logged a change here{day}, after you opened this sheet: {now}. If yours is the same "
             "change, open the sheet again and log only what is missing. If it is another one, send this once more.",
             field="reason",
             position=position,

@@ -6,10 +6,10 @@ from collections.abc import Sequence
 
 from fleet.actions.checks_parts import check_mode, check_part, check_parts_fit_type, check_position
 from fleet.actions.checks_places import Place
-from fleet.actions.checks_stays import Stays, stay_words
+from fleet.actions.checks_stays import Stays, check_seen, stay_words
 from fleet.actions.checks_values import choose, clean_day
 from fleet.actions.entries import FindingEntry, PartChange
-from fleet.actions.errors import BadValue, ChangedMeanwhile, PositionTaken, RecordError, day_words
+from fleet.actions.errors import BadValue, PositionTaken, RecordError
 from fleet.actions.fit_part import write_fitting
 from fleet.actions.measured import Measured
 from fleet.actions.remove_part import write_removal
@@ -49,21 +49,6 @@ class VisitParts:
         if entry.caused_by is None:
             return None
         return Fitting.objects.get(pk=entry.caused_by.pk)
-
-    def check_seen(self, entry: PartChange, position: Position) -> None:
-        """Of two who log the same change the second would take out what the first has just put in."""
-        running = self.stays.running(position)
-        if entry.holds is None or entry.holds == (running.pk if running is not None else 0):
-            return
-        last = running or Fitting.objects.filter(pk=entry.holds).first()
-        visit = last and (last.fitted_visit if running is not None else last.removed_visit)
-        raise ChangedMeanwhile(
-            position=position.code,
-            who=visit.entered_by.name if visit and visit.entered_by else "Somebody",
-            day=day_words(visit.happened_on if visit else self.visit.happened_on),
-            now=f"{running.part.code} is in now" if running is not None else "it is empty now",
-            holds=running.pk if running is not None else 0,
-        )
 
     def check_empty(self, position: Position) -> None:
         running = self.stays.running(position)
@@ -105,7 +90,7 @@ def write_changes(
     parts = VisitParts(visit, stays, place, measured, by)
     for row, entry in in_order_of_cause(changes):
         try:
-            parts.check_seen(entry, entry.position)
+            check_seen(entry, stays)
             if entry.reason:
                 parts.remove(entry, entry.position)
             else:

@@ -23,6 +23,7 @@ from fleet.models import (
     Outcome,
     Part,
     Person,
+    Position,
     RemovalReason,
     Site,
     Stage,
@@ -131,6 +132,7 @@ class ChangeForm(JobForm):
 
     name = "change"
     entry_key = EntryKeyField()
+    holds = forms.CharField(required=False, max_length=4000, widget=forms.HiddenInput)
     reason = forms.ChoiceField(choices=CAME_OUT, required=False, label="Why the old one came out")
     serial = forms.CharField(max_length=60, required=False, label="Serial number of the new part")
     lot = forms.CharField(max_length=60, required=False, label="Lot of the new part")
@@ -144,6 +146,9 @@ class ChangeForm(JobForm):
 
         choices = log_choices(self.request.seen, self.job.module)
         fields = self.fields
+        fields["holds"].initial = " ".join(
+            f"{each.position.pk}:{each.fitting.pk if each.fitting else 0}" for each in choices.positions
+        )
         self.failed_on = {each.position.pk: each.failed_on for each in choices.positions}
         fields["position"] = PickField([(each.position, position_words(each)) for each in choices.positions],
                                        label="Position")  # fmt: skip
@@ -161,6 +166,12 @@ class ChangeForm(JobForm):
         fields["day"] = DayField(zone=zone, label="Day", initial=timezone.now().astimezone(zone).date())
         self.order_fields(["position", "reason", "mode", "part", "store", "day", "serial", "lot", "condition", "note"])
 
+    def seen(self, position: Position) -> int | None:
+        """The fitting that stood in the position when the page was opened; what a refusal told is a number alone."""
+        found = dict(each.rpartition(":")[::2] for each in self.cleaned_data["holds"].split())
+        told = found.get(str(position.pk), found.get("", ""))
+        return int(told) if told.isascii() and told.isdigit() and len(told) < 19 else None
+
     def sent(self) -> dict[str, Any]:
         """The arguments of `change_part_on_bench`."""
         said = self.cleaned_data
@@ -171,6 +182,7 @@ class ChangeForm(JobForm):
             mode=said["mode"] if failure or said["reason"] == RemovalReason.TAKEN_WITH_ANOTHER else None,
             failed_on=found if found and found <= said["day"] else None,
             serial=said["serial"] if said["part"] else "", lot=said["lot"] if said["part"] else "", note=said["note"],
+            holds=self.seen(said["position"]),
         )  # fmt: skip
         return {"entry": entry, "day": said["day"], "store": said["store"] if said["part"] else None,
                 "condition": said["condition"] or Condition.NEW, "entry_key": said["entry_key"]}  # fmt: skip

@@ -135,6 +135,24 @@ def test_a_job_lives_through_its_page(job: BenchJob, weir: Carriage, greta: Pers
     assert broken_rules() == broken_stock_rules() == []
 
 
+def test_of_two_at_the_bench_who_enter_the_same_change_the_second_is_told(
+    job: BenchJob, weir: Carriage, greta: Person, otto: Person
+) -> None:
+    said = {"change-position": weir.nut.pk, "change-reason": "failed", "change-part": weir.n2.pk}
+    pages = [client_of(person).get("/bench/jobs/J-1/").context["forms"]["change"] for person in (greta, otto)]
+    sheets = [{field.html_name: field.value() or "" for field in form} | said for form in pages]
+    address = reverse("change_on_bench", args=["J-1"])
+    assert client_of(greta).post(address, sheets[0]).status_code == 302
+    told = client_of(otto).post(address, sheets[1])
+    assert told.status_code == 422
+    assert "Greta logged a change here" in text(told)
+    assert Fitting.objects.count() == 2
+    holds = told.context["forms"]["change"]["holds"].value()
+    assert client_of(otto).post(address, sheets[1] | {"change-holds": holds}).status_code == 302
+    assert Fitting.objects.count() == 3
+    assert broken_rules() == []
+
+
 def test_refusals_stand_where_the_hand_is(job: BenchJob, weir: Carriage, greta: Person, depot: Site) -> None:
     client, shelf = client_of(greta), make_store(site=depot, name="Yard shelf")
     reply = fill(client, "hours", "book_hours", hours="30")
