@@ -59,7 +59,7 @@ def _candidate(
     row["why_not"] = ""
     before, after = (counted_when_found(side) for side in sides)
     with suppress(StatisticsError):
-        row["z"] = finite(-logrank(counted_when_found(lives.lifetimes), strata=lives.lifetimes.site_codes).z)
+        row["z"] = finite(-logrank(counted_when_found(lives.pooled), strata=lives.pooled.site_codes).z)
     with suppress(StatisticsError):
         row["ratio"] = told_ratio(life_ratio(before, after, confidence_level=question.confidence))
     paired = sides_with_past(whole, lives.starts)

@@ -15,7 +15,7 @@ import numpy as np
 from django.db.models import Count
 from numpy.typing import NDArray
 
-from fleet.models import Fitting
+from fleet.models import Fitting, Part
 from reliability.histories_from_fleet import module_duties
 from reliability.life_question import asked_of
 from reliability.redesigns.compared import AFTER, BEFORE, Compared
@@ -134,10 +134,11 @@ def _seasons(lives: Compared) -> Mix:
 def _lots(lives: Compared) -> Mix:
     """Parts by lot; old and new never share one, so this names how many lots stand behind each side."""
     sides: dict[str, Counter[str]] = {BEFORE: Counter(), AFTER: Counter()}
-    fitted = Fitting.objects.standing().filter(part__component=lives.component, fitted_on__lte=lives.as_of)
-    counted = fitted.filter(part__code__in=[*lives.old, *lives.new]).values_list("part__code", "lot")
-    for part, lot, count in counted.annotate(count=Count("pk")).order_by():
-        sides[AFTER if part in lives.new else BEFORE][lot or "no lot"] += count
+    parts = dict(Part.objects.filter(component=lives.component).values_list("pk", "code"))
+    chosen = [pk for pk, code in parts.items() if code in (*lives.old, *lives.new)]
+    fitted = Fitting.objects.standing().filter(part_id__in=chosen, fitted_on__lte=lives.as_of)
+    for pk, lot, count in fitted.values_list("part_id", "lot").annotate(count=Count("pk")).order_by():
+        sides[AFTER if parts[pk] in lives.new else BEFORE][lot or "no lot"] += count
     return _shared("lot", "parts", sides, lambda label: label)
 
 

@@ -19,7 +19,7 @@ from reliability.redesigns.fitting_faults import fitting_faults
 from reliability.redesigns.lives_of_positions import position_records
 from reliability.redesigns.question import RedesignQuestion
 from reliability.redesigns.single_modes import single_modes
-from reliability.redesigns.watching import ahead_of, looks_of, verdict_of
+from reliability.redesigns.watching import ahead_of, looks_of, verdict_of, weeks_watched
 from reliability.redesigns.with_past import sides_with_past
 from reliability.stats.difference import life_ratio
 from reliability.stats.errors import StatisticsError
@@ -63,6 +63,7 @@ def redesign_document(question: RedesignQuestion) -> dict[str, Any]:
         chances = {"longer": posterior.probability(), "hope": posterior.probability(question.hope)}
     shape = _old_shape(everything)
     looks = looks_of(beside, everything)
+    now = looks[-1] if looks else None
     verdict, path = verdict_of(looks, question.hope, shape, chances["longer"] if chances else None)
     history = _curves(everything, question)
     return {
@@ -72,11 +73,10 @@ def redesign_document(question: RedesignQuestion) -> dict[str, Any]:
         "mode_names": [names.get(code, code) for code in question.modes],
         "verdict": verdict,
         "path": path,
+        "weeks_watched": weeks_watched(beside),
         "chances": chances,
         "chances_missing": reason,
-        "ahead": None
-        if posterior is None
-        else ahead_of(beside, looks[-1] if looks else None, verdict, posterior.effects(), _a_module(beside)),
+        "ahead": None if posterior is None else ahead_of(beside, now, verdict, posterior.effects(), _a_module(beside)),
         "same_dates": {
             **_with_past(
                 evidence_of(beside, question.confidence, without=["positions differ"]), paired, question.confidence
@@ -84,7 +84,10 @@ def redesign_document(question: RedesignQuestion) -> dict[str, Any]:
             "at_like_duty": _at_like_duty(beside, alike, question.confidence),
             "curves": _curves(beside, question),
         },
-        "all_history": {**evidence_of(everything, question.confidence, without=ASIDE), "curves": history},
+        "all_history": {
+            **evidence_of(everything, question.confidence, without=ASIDE, now=looks[-1] if looks else None),
+            "curves": history,
+        },
         "starts": {site: day.isoformat() for site, day in sorted(beside.starts.items())},
         "comparability": _told(alike),
         "by_mode": {"age": None, "rows": []} if question.modes else single_modes(beside, names, question.confidence),

@@ -18,10 +18,13 @@ from reliability.life_answer import finite
 from reliability.redesigns.compared import AFTER, BEFORE, Compared
 from reliability.stats.difference import counted_when_found, logrank, restricted_mean_difference
 from reliability.stats.difference_logrank import ROUNDING
+from reliability.stats.difference_sums import age_weights, risk_sets, weighted_sums
 from reliability.stats.errors import StatisticsError
 from reliability.stats.life_ratio import LifeRatio, Ratio, life_ratio
 from reliability.stats.life_regression import fit_weibull_regression
 from reliability.stats.lifetimes import Lifetimes
+from reliability.stats.ranks import first_rows
+from reliability.stats.sequential import Look
 from reliability.stats.sequential_path import path_of_looks
 
 POSITIONS = "positions differ"
@@ -36,14 +39,17 @@ TESTS = (
 )
 
 
-def evidence_of(lives: Compared, confidence: float, *, without: Collection[str] = ()) -> dict[str, Any]:
+def evidence_of(
+    lives: Compared, confidence: float, *, without: Collection[str] = (), now: Look | None = None
+) -> dict[str, Any]:
     """Tests, restricted means and life ratios of one comparison; what cannot be told is None, with its reason.
 
     without: ratios that are not asked for. The one with positions that differ is never told here: it needs their past.
+    now: the last look at these lives by position, where one was taken.
     """
     notes: list[str] = []
     return {
-        "tests": tests_of(lives, notes),
+        "tests": log_rank_tests(lives, notes, now),
         "restricted_mean": restricted_mean_of(lives, confidence, notes),
         "ratio": ratio_of(lives, confidence, notes, without),
         "notes": list(dict.fromkeys(notes)),
@@ -61,14 +67,17 @@ def strata_of(lives: Compared, strata: str) -> NDArray[Any] | None:
     return lives.lifetimes.site_codes if strata == "site" else None
 
 
-def tests_of(lives: Compared, notes: list[str]) -> list[dict[str, Any]]:
+def log_rank_tests(lives: Compared, notes: list[str], now: Look | None = None) -> list[dict[str, Any]]:
     """Log-rank tests; z above 0: the old parts fail sooner."""
     found = []
-    for strata, name, rho, gamma in TESTS:
+    both = both_sides(lives) is not None
+    scores = _by_site(lives) if both else {}
+    for test in TESTS:
+        strata, name, rho, gamma = test
         row: dict[str, Any] = {"strata": name, "rho": rho, "gamma": gamma, "z": None, "p": None, "information": None}
-        if both_sides(lives) is not None:
+        if both:
             try:
-                score, variance = by_position(lives) if strata == "position" else _score(lives, strata, rho, gamma)
+                score, variance = by_position(lives, now) if strata == "position" else _told(lives, test, scores[name])
                 z = score / math.sqrt(variance)
                 row.update(z=finite(z), p=finite(float(special.chdtrc(1, z * z))), information=finite(variance))
                 row["excess"] = finite(score)
@@ -78,25 +87,44 @@ def tests_of(lives: Compared, notes: list[str]) -> list[dict[str, Any]]:
     return found
 
 
-def _score(lives: Compared, strata: str, rho: float, gamma: float) -> tuple[float, float]:
-    """Failures of old parts beyond those expected, and the variance."""
+def _by_site(lives: Compared) -> dict[str, tuple[float, float]]:
+    """Score and variance of each test but that by position: those by site look at the same risk sets."""
     assert lives.pooled is not None
-    pooled = counted_when_found(lives.pooled)
-    test = logrank(pooled, strata=pooled.site_codes if strata else None, rho=rho, gamma=gamma)
-    # labels sort as after, before: the first group is the new one, so its score is turned round
-    return -float(test.score[0]), test.variance
+    pooled, found = counted_when_found(lives.pooled), {}
+    # labels sort as after, before: code 1 is the old side
+    for strata, codes in (("site", pooled.site_codes), ("", np.zeros(len(pooled), dtype=np.int64))):
+        sets = risk_sets(pooled, pooled.group_codes, 2, codes)
+        for _, name, rho, gamma in (test for test in TESTS if test[0] == strata):
+            weights = age_weights(sets, "fleming-harrington", rho, gamma)
+            observed, expected, covariance = weighted_sums(sets, weights)
+            found[name] = float(observed[1] - expected[1]), float(covariance[1, 1])
+    return found
 
 
-def by_position(lives: Compared) -> tuple[float, float]:
+def _told(lives: Compared, test: tuple[str, str, float, float], found: tuple[float, float]) -> tuple[float, float]:
+    """Score and variance; where there is none the test itself says in words why nothing can be compared."""
+    assert lives.pooled is not None
+    strata, _, rho, gamma = test
+    if found[1] <= ROUNDING * lives.pooled.failures:
+        pooled = counted_when_found(lives.pooled)
+        logrank(pooled, strata=pooled.site_codes if strata else None, rho=rho, gamma=gamma)
+    return found
+
+
+def by_position(lives: Compared, now: Look | None = None) -> tuple[float, float]:
     """The same within each position at a site: most positions hold one kind of part and are not looked at."""
     assert lives.lifetimes is not None
     found = counted_when_found(lives.lifetimes)
     strata = lives.positions * len(found.site_labels) + found.site_codes
-    path = path_of_looks(found, lives.is_new, strata, lives.begun, lives.ended, [np.inf])
-    score, variance = float(path.score[0]), float(path.information[0])
+    first = found.site_codes[first_rows(lives.positions, int(lives.positions.max()) + 1)]
+    if now is not None and (first[lives.positions] == found.site_codes).all():
+        # no module has moved to another site: the look within positions is the same
+        score, variance = now.position_score or 0.0, now.position_information or 0.0
+    else:
+        path = path_of_looks(found, lives.is_new, strata, lives.begun, lives.ended, [np.inf])
+        score, variance = float(path.score[0]), float(path.information[0])
     if variance <= ROUNDING * found.failures:
         logrank(found, strata=strata)  # says in words why nothing can be compared
-        return 0.0, ROUNDING
     return score, variance
 
 

@@ -23,9 +23,9 @@ if TYPE_CHECKING:
 # numbers of records fit into 31 bits; a larger one overflows in the database, which is an error and no wrong number
 HIGH = 2**32
 DAY_BITS, LAG_BITS = 22, 19
-REASONS = ("", "failed", "worn to limit", "not known", "otherwise")
+REASONS = ("failed", "", "worn to limit", "not known", "otherwise")  # the most frequent first
 REASON_BITS = 7
-HAS_END, REMOVED_LATER, ENTERED, HAS_AGE, HAS_RECORDS, HAS_GOOD = (1 << bit for bit in range(3, 9))
+REMOVED_LATER, ENTERED, HAS_AGE, HAS_RECORDS, HAS_GOOD = (1 << bit for bit in range(3, 8))
 
 
 @dataclass(frozen=True, eq=False)
@@ -73,7 +73,7 @@ def read_fittings(
         WHERE f.part_id IN ({", ".join(str(int(part)) for part in parts) or "-1"}) AND f.struck_out = ''
             AND (c.fitted_day IS NULL OR c.fitted_day <= {int(as_of)})"""
     read = _as_arrays if connection.vendor == "postgresql" else _as_rows
-    places, designs, place, days, at_fit, rest = read(wanted, where)
+    places, designs, place, days, at_fit, at_end, rest = read(wanted, where)
     flags = place % HIGH
     known = days >> LAG_BITS
     dense = {}
@@ -96,30 +96,30 @@ def read_fittings(
         removed_later=(flags & REMOVED_LATER) != 0,
         entered=(flags & ENTERED) != 0,
         at_fit=at_fit,
+        at_end=at_end,
         **dense,
     )
 
 
 class _Wanted(NamedTuple):
-    """SQL of the packed columns, of the conditions behind the flags, and of the columns that few rows fill."""
+    """SQL of packed whole numbers, of numbers as they are, of the conditions behind the flags, and of the columns that
+    few rows fill with the flag of these rows."""
 
     packed: dict[str, str]
+    floats: dict[str, str]
     conditions: dict[int, str]
     sparse: dict[str, tuple[int, str]]
 
 
 def _wanted(clock: str, as_of: int, as_of_text: str, prompt_sites: Iterable[int]) -> _Wanted:
     prompt = ", ".join(str(int(site)) for site in prompt_sites) or "-1"
-    failed = "f.reason IN ('failed', 'worn to limit')"
     conditions = {
-        HAS_END: "c.end_day IS NOT NULL",
         REMOVED_LATER: f"f.removed_on > '{as_of_text}'",
         ENTERED: "c.last_good_entered",
         HAS_AGE: "f.age_at_fit <> 0",
         HAS_RECORDS: "c.records_day IS NOT NULL",
         # at other sites the day on which it was last seen in order plays no part
-        HAS_GOOD: f"{failed} AND (c.last_good_entered OR c.end_day > {int(as_of)} "
-        f"OR COALESCE(c.site_id, -1) NOT IN ({prompt}))",
+        HAS_GOOD: f"c.last_good_entered OR c.end_day > {int(as_of)} OR COALESCE(c.site_id, -1) NOT IN ({prompt})",
     }
     numbered = " ".join(f"WHEN '{name}' THEN {number}" for number, name in enumerate(REASONS[:-1]))
     flags = " + ".join(f"CASE WHEN {text} THEN {flag} ELSE 0 END" for flag, text in conditions.items())
@@ -128,16 +128,16 @@ def _wanted(clock: str, as_of: int, as_of_text: str, prompt_sites: Iterable[int]
         "designs": f"f.part_id * {HIGH} + COALESCE(f.mode_id, 0)",
         "site": f"COALESCE(c.site_id, 0) * {HIGH} + CASE f.reason {numbered} ELSE {len(REASONS) - 1} END + {flags}",
         "days": f"COALESCE(c.fitted_day, 0) * {1 << (DAY_BITS + LAG_BITS)} "
-        f"+ CAST(COALESCE(c.end_day, 0) AS bigint) * {1 << LAG_BITS} + CASE WHEN {failed} THEN {_lag()} ELSE 0 END",
+        f"+ CAST(COALESCE(c.end_day, 0) AS bigint) * {1 << LAG_BITS} + COALESCE({_lag()}, 0)",
     }
     sparse = {
-        "at_end": (HAS_END, f"c.{clock}_at_end"),
         "age_at_fit": (HAS_AGE, "f.age_at_fit"),
         "records_day": (HAS_RECORDS, "CAST(c.records_day AS double precision)"),
         "at_records": (HAS_RECORDS, f"c.{clock}_at_records"),
         "at_good": (HAS_GOOD, f"c.{clock}_at_good"),
     }
-    return _Wanted({**packed, "at_fit": f"c.{clock}_at_fit"}, conditions, sparse)
+    floats = {"at_fit": f"c.{clock}_at_fit", "at_end": f"c.{clock}_at_end"}
+    return _Wanted(packed, floats, conditions, sparse)
 
 
 def _lag() -> str:
@@ -153,17 +153,16 @@ def _as_arrays(wanted: _Wanted, where: str) -> list[Any]:
     """Each column as the bytes of one array: neither side touches single rows."""
     from psycopg import Cursor
 
-    *packed, at_fit = wanted.packed.values()
-    chosen = [f"array_send(array_agg({text}))" for text in packed]
-    chosen.append(f"array_send(array_agg(COALESCE({at_fit}, 'NaN')))")
+    chosen = [f"array_send(array_agg({text}))" for text in wanted.packed.values()]
+    chosen += [f"array_send(array_agg(COALESCE({text}, 'NaN')))" for text in wanted.floats.values()]
     for flag, text in wanted.sparse.values():
         chosen.append(f"array_send(array_agg(COALESCE({text}, 'NaN')) FILTER (WHERE {wanted.conditions[flag]}))")
     connection.ensure_connection()
     with Cursor(connection.connection) as cursor:  # Django's own cannot ask for bytes as they are
         (found,) = cursor.execute(f"SELECT {', '.join(chosen)} {where}", binary=True).fetchall()
-    whole = [_unpacked(sent, whole=True) for sent in found[: len(packed)]]
-    floats = [_unpacked(sent, whole=False) for sent in found[len(packed) :]]
-    return [*whole, floats[0], dict(zip(wanted.sparse, floats[1:], strict=True))]
+    columns = [_unpacked(sent, whole=place < len(wanted.packed)) for place, sent in enumerate(found)]
+    dense = len(wanted.packed) + len(wanted.floats)
+    return [*columns[:dense], dict(zip(wanted.sparse, columns[dense:], strict=True))]
 
 
 def _unpacked(sent: bytes | None, *, whole: bool) -> Any:
@@ -181,10 +180,15 @@ def _as_rows(wanted: _Wanted, where: str) -> list[Any]:
 
     sparse = [f"CASE WHEN {wanted.conditions[flag]} THEN {text} END" for flag, text in wanted.sparse.values()]
     with connection.cursor() as cursor:
-        cursor.execute(f"SELECT {', '.join([*wanted.packed.values(), *sparse])} {where}")
+        cursor.execute(f"SELECT {', '.join([*wanted.packed.values(), *wanted.floats.values(), *sparse])} {where}")
         rows = cursor.fetchall()
-    columns = list(zip(*rows, strict=True)) if rows else [()] * (len(wanted.packed) + len(sparse))
-    whole = [np.array(column, dtype=np.int64) for column in columns[: len(wanted.packed) - 1]]
-    floats = [np.array(column, dtype=np.float64) for column in columns[len(wanted.packed) - 1 :]]
-    filled = [floats[place][(whole[2] & flag) != 0] for place, (flag, _) in enumerate(wanted.sparse.values(), 1)]
-    return [*whole, floats[0], dict(zip(wanted.sparse, filled, strict=True))]
+    dense = len(wanted.packed) + len(wanted.floats)
+    columns: list[Any] = [
+        np.array(column, dtype=np.int64 if place < len(wanted.packed) else np.float64)
+        for place, column in enumerate(zip(*rows, strict=True) if rows else [()] * (dense + len(sparse)))
+    ]
+    filled = [
+        column[(columns[2] & flag) != 0]
+        for column, (flag, _) in zip(columns[dense:], wanted.sparse.values(), strict=True)
+    ]
+    return [*columns[:dense], dict(zip(wanted.sparse, filled, strict=True))]

@@ -62,36 +62,57 @@ class LifeColumns:
     left_out: dict[str, int]
 
 
+@dataclass(frozen=True, eq=False)
+class Ends:
+    """Of each fitting where it was, whether its site reports at once, its state, its last day and the count then."""
+
+    site: Numbers
+    prompt: Flags
+    state: NDArray[np.int8]
+    last_day: Floats
+    at_last: Floats
+
+    def chosen(self, rows: Numbers) -> Ends:
+        return Ends(**{name: column[rows] for name, column in self.__dict__.items()})
+
+
+def ends_of(fittings: FittingColumns, choices: Choices, facts: SiteFacts, stays: Mapping[int, int]) -> Ends:
+    """stays: where each module stood on the as-of day."""
+    site = _sites(fittings, choices.as_of, stays)
+    prompt = among(site, facts.prompt)
+    ended, last_day, at_last = _ends(fittings, choices, facts, site, prompt)
+    return Ends(site, prompt, _states(fittings, ended, choices.worn_is_failure), last_day, at_last)
+
+
 def lives_of(
     fittings: FittingColumns,
+    ends: Ends,
     choices: Choices,
     facts: SiteFacts,
-    stays: Mapping[int, int],
     starts: Mapping[int, int] | None = None,
 ) -> LifeColumns:
-    """The lives under the choices. stays: where each module stood on the as-of day.
+    """The lives under the choices.
 
     starts: the day on which observation begins at a site; a part that was in already enters at its age on that day.
     """
-    site = _sites(fittings, choices.as_of, stays)
-    kept = np.flatnonzero(among(site, choices.sites)) if choices.sites is not None else np.arange(len(fittings))
-    chosen = fittings.chosen(kept) if kept.size < len(fittings) else fittings
-    site = site[kept]
-    records_day, at_records = _begun(chosen, choices.clock, site, starts or {})
-    ended, last_day, at_last, prompt = _ends(chosen, choices, facts, site)
-    state = _states(chosen, ended, choices.worn_is_failure)
-    failed = state == FAILED
+    kept = np.arange(len(fittings))
+    if choices.sites is not None:
+        there = among(ends.site, choices.sites)
+        if not there.all():
+            kept = np.flatnonzero(there)
+            fittings, ends = fittings.chosen(kept), ends.chosen(kept)
+    records_day, at_records = _begun(fittings, choices.clock, ends.site, starts or {})
+    failed = ends.state == FAILED
     with np.errstate(invalid="ignore"):
-        from_records = (records_day > 0) & ~(at_records < chosen.at_fit)
-        begun = np.where(from_records, at_records, chosen.at_fit)
-        entry = _down(chosen.age_at_fit + begun - chosen.at_fit, choices.clock)
-        age = chosen.age_at_fit + at_last - chosen.at_fit
+        from_records = (records_day > 0) & ~(at_records < fittings.at_fit)
+        begun = np.where(from_records, at_records, fittings.at_fit)
+        entry = _down(fittings.age_at_fit + begun - fittings.at_fit, choices.clock)
+        age = fittings.age_at_fit + ends.at_last - fittings.at_fit
         whole = np.where(failed, _up(age, choices.clock), _down(age, choices.clock))
-        good = _down(chosen.age_at_fit + chosen.at_good - chosen.at_fit, choices.clock)
-        good = np.where(failed & (chosen.entered | ~prompt), good, np.nan)
-        first_day = failed & (whole <= entry) if choices.clock == "days" else np.zeros(len(chosen), dtype=bool)
-        known = (records_day, at_records, at_last, last_day)
-        reasons = _reasons(chosen, choices, facts, site, known, (entry, whole, first_day))
+        good = _down(fittings.age_at_fit + fittings.at_good - fittings.at_fit, choices.clock)
+        good = np.where(failed & (fittings.entered | ~ends.prompt), good, np.nan)
+        first_day = failed & (whole <= entry) if choices.clock == "days" else np.zeros(len(fittings), dtype=bool)
+        reasons = _reasons(fittings, choices, facts, ends, (records_day, at_records), (entry, whole, first_day))
         last_good = np.where(good >= whole, np.nan, np.where(good < entry, entry, good))
     last_good = np.where(first_day, entry, last_good)
     duration = np.where(first_day, entry + 1, whole)
@@ -99,12 +120,12 @@ def lives_of(
     stands = np.flatnonzero(reasons == COUNTS)
     return LifeColumns(
         rows=kept[stands],
-        state=state[stands],
+        state=ends.state[stands],
         entry=entry[stands],
         duration=duration[stands],
         last_good=last_good[stands],
-        site=site[stands],
-        last_day=last_day[stands],
+        site=ends.site[stands],
+        last_day=ends.last_day[stands],
         left_out={reason: int(count) for reason, count in zip(REASONS_OUT, counted.tolist(), strict=True) if count},
     )
 
@@ -153,13 +174,12 @@ def _pairs(modules: Numbers, days: Numbers) -> tuple[Numbers, Floats, Numbers]:
 
 
 def _ends(
-    fittings: FittingColumns, choices: Choices, facts: SiteFacts, site: Numbers
-) -> tuple[Flags, Floats, Floats, Flags]:
-    """Whether each has ended, its last day and count, and whether its site reports at once.
+    fittings: FittingColumns, choices: Choices, facts: SiteFacts, site: Numbers, prompt: Flags
+) -> tuple[Flags, Floats, Floats]:
+    """Whether each has ended, its last day and the count then.
 
     What still runs counts up to the day on which a failure would be known, or to when its module was last seen.
     """
-    prompt = among(site, facts.prompt)
     once_day = choices.as_of - told(site, facts.lags, 0)
     has_end = fittings.end_day > 0
     still = ~has_end | (prompt & (fittings.end_day > once_day)) | (~prompt & fittings.removed_later)
@@ -172,7 +192,7 @@ def _ends(
         over = has_end & ~prompt & (fittings.end_day <= cut_day)
     ended = ~still | over
     last_day = np.where(ended, fittings.end_day, cut_day)
-    return ended, last_day, np.where(ended, fittings.at_end, at_cut), prompt
+    return ended, last_day, np.where(ended, fittings.at_end, at_cut)
 
 
 def _cuts(modules: Numbers, limits: Floats, choices: Choices) -> tuple[Floats, Floats]:
@@ -204,16 +224,17 @@ def _reasons(
     fittings: FittingColumns,
     choices: Choices,
     facts: SiteFacts,
-    site: Numbers,
-    known: tuple[Numbers, Floats, Floats, Floats],
+    ends: Ends,
+    begun: tuple[Numbers, Floats],
     ages: tuple[Floats, Floats, Flags],
 ) -> Numbers:
     """Why each is left out, as a place among `Reason`; the first that holds counts."""
-    records_day, at_records, at_last, last_day = known
+    records_day, at_records = begun
+    at_last, last_day = ends.at_last, ends.last_day
     entry, whole, first_day = ages
     no = np.zeros(len(fittings), dtype=bool)
     tests = (
-        (Reason.RIG, no if choices.with_rigs else among(site, facts.rigs)),
+        (Reason.RIG, no if choices.with_rigs else among(ends.site, facts.rigs)),
         (Reason.DAY_NOT_KNOWN, fittings.fitted_day == 0),
         (Reason.NOT_SEEN, np.isnan(last_day)),
         (Reason.TOO_LATE, fittings.fitted_day > last_day),

@@ -9,6 +9,7 @@ import datetime as dt
 from collections import Counter
 from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass, replace
+from functools import cached_property
 from typing import Any
 
 import numpy as np
@@ -17,7 +18,18 @@ from fleet.models import FAILURE_REASONS, Module, Placement, Position, Site, Sit
 from reliability.life_question import Asked, asked_of
 from reliability.lifetimes_from_fleet import reporting_lags
 from reliability.redesigns.fitting_columns import REASONS, FittingColumns, read_fittings
-from reliability.redesigns.life_columns import STATES, Choices, Floats, LifeColumns, Numbers, SiteFacts, among, lives_of
+from reliability.redesigns.life_columns import (
+    STATES,
+    Choices,
+    Ends,
+    Floats,
+    LifeColumns,
+    Numbers,
+    SiteFacts,
+    among,
+    ends_of,
+    lives_of,
+)
 
 DAY_BITS = 22  # of an ordinal day
 
@@ -62,10 +74,19 @@ class PositionRecords:
     ) -> PositionLives:
         """Those at the sites (None: all). `starts` gives each site the day on which observation begins there: a part
         that was already in enters at its age on that day, and what ended before is left out."""
-        asked = self.asked
-        choices = Choices(asked.clock, asked.clock == asked.component.clock, asked.as_of.toordinal(), sites, with_rigs)
         days = {site: day.toordinal() for site, day in (starts or {}).items()}
-        return self._told(lives_of(self.fittings, choices, self.facts, self.stays, days))
+        choices = replace(self._choices, sites=sites, with_rigs=with_rigs)
+        return self._told(lives_of(self.fittings, self._ends, choices, self.facts, days))
+
+    @property
+    def _choices(self) -> Choices:
+        asked = self.asked
+        return Choices(asked.clock, asked.clock == asked.component.clock, asked.as_of.toordinal())
+
+    @cached_property
+    def _ends(self) -> Ends:
+        """What ended each fitting is the same whatever is asked of it."""
+        return ends_of(self.fittings, self._choices, self.facts, self.stays)
 
     def of_parts(self, parts: Collection[int]) -> PositionRecords:
         """The same of some of the parts."""

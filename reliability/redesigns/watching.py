@@ -19,11 +19,14 @@ LATELY = 13  # weeks whose failures say the present pace
 AHEAD = 104  # weeks looked ahead
 CHANCE = 0.8
 MOST_LOOKS = 60
+LARGE, MOST_LOOKS_OF_LARGE = 200_000, 26  # lives: each look costs as much as they are many
 USUAL_SHAPE = 2.0  # of the old parts while hardly one has failed
 
 
 def looks_of(lives: Compared, whole: Compared) -> list[Look]:
-    """One look a week since the first site began, at most 60 (then evenly spaced), the last one now.
+    """One look a week since the first site began, at most 60 (26 in a large fleet; then evenly spaced), the last now.
+
+    The boundary holds for looks at any information however few: each look left out only takes a chance away to cross.
 
     lives are those watched over the same dates, which sites are compared by; whole all lives ever, which each position
     is compared with its own past by: over the same dates a position has hardly held an old part.
@@ -32,7 +35,8 @@ def looks_of(lives: Compared, whole: Compared) -> list[Look]:
         return []
     first, last = min(lives.starts.values()).toordinal(), lives.as_of.toordinal()
     weeks = range(first + WEEK, last, WEEK)
-    days = list(weeks) if len(weeks) <= MOST_LOOKS else np.linspace(first + WEEK, last, MOST_LOOKS)[:-1].astype(int)
+    most = MOST_LOOKS if len(whole.lifetimes) < LARGE else MOST_LOOKS_OF_LARGE
+    days = list(weeks) if len(weeks) <= most else np.linspace(first + WEEK, last, most)[:-1].astype(int)
     labels = [*(dt.date.fromordinal(int(day)) for day in days), lives.as_of]
     until = np.array([*days, np.inf])
     by_site = _path(lives, lives.lifetimes.site_codes, until)
@@ -48,6 +52,12 @@ def looks_of(lives: Compared, whole: Compared) -> list[Look]:
         for place, label in enumerate(labels)
         if by_site.seen[place] and by_position.seen[place]
     ]
+
+
+def weeks_watched(lives: Compared) -> int:
+    """Weeks since the first site began, each of which could have been a look."""
+    first = min(lives.starts.values(), default=lives.as_of)
+    return -(-(lives.as_of - first).days // WEEK)
 
 
 def _path(lives: Compared, strata: Any, days: Any) -> PathOfLooks:

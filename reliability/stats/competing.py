@@ -119,6 +119,11 @@ def cumulative_incidence(
 def _mode_codes(lifetimes: Lifetimes, modes: ArrayLike) -> tuple[tuple[Any, ...], IntArray]:
     """The labels of modes that occur, in order, and each row's place among them (0 where it did not fail)."""
     labels: Any = modes
+    if isinstance(labels, np.ndarray) and labels.dtype.kind in "US" and labels.shape == (len(lifetimes),):
+        distinct, places = np.unique(labels[lifetimes.observed], return_inverse=True)
+        found = np.zeros(len(lifetimes), dtype=np.int64)
+        found[lifetimes.observed] = places
+        return tuple(distinct.tolist()), found
     given: list[Any] = list(labels) if not isinstance(labels, np.ndarray) else labels.tolist()
     if len(given) != len(lifetimes):
         raise InvalidArgument(f"{len(given)} modes are given for {len(lifetimes)} rows; give one for each.")

@@ -55,8 +55,11 @@ def compare_modes(
         raise InvalidArgument("A comparison needs the group of each life. Give groups.")
     if not (np.isfinite(horizon) and horizon > 0.0):
         raise InvalidArgument(f"The horizon is {horizon:g}; it must be above 0.")
-    labels = np.empty(len(lifetimes), dtype=object)
-    labels[:] = list(np.asarray(modes, dtype=object))
+    if isinstance(modes, np.ndarray) and modes.dtype.kind in "US":
+        labels: NDArray[Any] = modes
+    else:
+        labels = np.empty(len(lifetimes), dtype=object)
+        labels[:] = list(np.asarray(modes, dtype=object))
     shares = [_incidence(lifetimes, labels, group, confidence_level) for group in lifetimes.group_labels.tolist()]
     failed = lifetimes.weights * lifetimes.observed
     counts: dict[Any, float] = {}
@@ -80,7 +83,7 @@ def _incidence(
 def _compared(
     lifetimes: Lifetimes, labels: NDArray[Any], mode: Any, shares: list[Any], horizon: float, strata: Any, level: float
 ) -> ModeComparison:
-    of_mode = np.array([label == mode for label in labels]) & lifetimes.observed
+    of_mode = np.asarray(labels == mode, dtype=bool) & lifetimes.observed
     test, untested = None, ""
     try:
         test = logrank(lifetimes.withdrawn_where(~of_mode), strata=strata)

@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 
 from reliability.stats.errors import InvalidArgument
 from reliability.stats.lifetimes import FloatArray, IntArray, Lifetimes
+from reliability.stats.ranks import ranked
 
 WEIGHTINGS = ("fleming-harrington", "gehan", "tarone-ware", "peto-peto", "modified peto-peto")
 
@@ -33,7 +34,7 @@ def risk_sets(lifetimes: Lifetimes, groups: IntArray, count: int, strata: IntArr
     width = distinct.size + 1
     # one number for stratum and age; searchsorted left: the first failure age at or after the duration
     at_failure = strata[failed] * width + np.searchsorted(distinct, ages[failed])
-    keys, row = np.unique(at_failure, return_inverse=True)
+    keys, row = ranked(at_failure)
     failures = _table(row, groups[failed], weights[failed], keys.size, count)
     # at risk up to the last failure age that is not beyond the duration, after the last that is not beyond the entry
     leaves = strata * width + np.searchsorted(distinct, ages, side="right")
@@ -83,7 +84,9 @@ def age_weights(sets: RiskSets, weighting: str, rho: float, gamma: float) -> Flo
 def _running_product(factors: FloatArray, stratum: IntArray) -> tuple[FloatArray, FloatArray]:
     """Product of the factors of the same stratum before each row, and with it."""
     before, upto = np.ones(factors.size), np.ones(factors.size)
-    begins = np.flatnonzero(np.append(True, np.diff(stratum) > 0)) if factors.size else np.zeros(0, dtype=int)
+    if not factors.size:  # nobody has failed
+        return before, upto
+    begins = np.flatnonzero(np.append(True, np.diff(stratum) > 0))
     for begin, end in zip(begins, np.append(begins[1:], factors.size), strict=True):
         upto[begin:end] = np.cumprod(np.maximum(factors[begin:end], 0.0))
         before[begin + 1 : end] = upto[begin : end - 1]
@@ -112,7 +115,9 @@ def label_codes(labels: NDArray[np.object_] | list[object] | None, count: int) -
     if labels is None:
         return np.zeros(count, dtype=np.int64)
     column = np.asarray(labels)
-    if column.ndim == 1 and column.dtype.kind in "iufbUS":
+    if column.ndim == 1 and column.dtype.kind == "i":
+        codes = ranked(column.astype(np.int64, copy=False))[1]
+    elif column.ndim == 1 and column.dtype.kind in "ufbUS":
         codes = np.unique(column, return_inverse=True)[1]
     else:
         known: dict[object, int] = {}

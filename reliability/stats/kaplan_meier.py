@@ -10,6 +10,7 @@ from numpy.typing import ArrayLike
 from reliability.stats.errors import InvalidArgument, UndefinedEstimate, UnsupportedRows
 from reliability.stats.lifetimes import FloatArray, Lifetimes
 from reliability.stats.profile_intervals import normal_quantile
+from reliability.stats.ranks import as_whole, ranked
 
 BANDS = ("log-log", "log", "plain")
 # a survival of 0.7 reached by products may be stored as 0.7000000000000001 and must still count as 0.7
@@ -223,10 +224,14 @@ def _weight_from(values: FloatArray, weights: FloatArray, ages: FloatArray) -> F
 
 def _tally(values: FloatArray, weights: FloatArray) -> tuple[FloatArray, FloatArray]:
     """Distinct values in rising order and the sum of the weights at each."""
+    whole = as_whole(values) if values.size else None
+    if whole is None:
+        distinct, inverse = np.unique(values, return_inverse=True)
+    else:
+        found, inverse = ranked(whole)
+        distinct = found.astype(np.float64)
     if weights.strides == (0,):
-        distinct, counts = np.unique(values, return_counts=True)
-        return distinct, counts * (float(weights[0]) if weights.size else 1.0)
-    distinct, inverse = np.unique(values, return_inverse=True)
+        return distinct, np.bincount(inverse, minlength=distinct.size) * (float(weights[0]) if weights.size else 1.0)
     return distinct, np.bincount(inverse, weights=weights, minlength=distinct.size)
 
 

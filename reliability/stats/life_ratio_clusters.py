@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from reliability.stats.difference_sums import label_codes
 from reliability.stats.errors import InvalidArgument
 from reliability.stats.lifetimes import IntArray, Lifetimes
-from reliability.stats.ranks import ranked
+from reliability.stats.ranks import first_rows, ranked
 
 
 def shared_clusters(
@@ -26,10 +26,18 @@ def shared_clusters(
         return None
     codes = columns[0]
     for column in columns[1:]:
-        codes = ranked(codes * (int(column.max()) + 1) + column)[1]
+        codes = _pairs(codes, column)
     if codes.max() < 1:
         return None
     return tuple(np.split(codes, np.cumsum([len(lives) for lives in groups])[:-1]))
+
+
+def _pairs(first: IntArray, second: IntArray) -> IntArray:
+    """Numbers of the pairs; where each of the second has one of the first only (positions stand still), its own."""
+    of_second = first[first_rows(second, int(second.max()) + 1)]
+    if (of_second[second] == first).all():
+        return second
+    return ranked(first * (int(second.max()) + 1) + second)[1]
 
 
 def _own_sites(groups: list[Lifetimes]) -> IntArray:

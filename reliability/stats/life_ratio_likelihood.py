@@ -65,7 +65,7 @@ class RatioLikelihood:
     def _terms(self, point: FloatArray) -> Evaluation:
         count, size = self.failures.size, self.size
         value, slope, bend = 0.0, np.zeros(size), np.zeros((size, size))
-        hazard, first, sums = np.zeros(count), np.zeros((count, size)), []
+        hazard, first, sums = np.zeros(count), np.zeros((size, count)), []
         for rows in self.groups:
             log_shape, level = (float(part) for part in rows.basis @ point)
             tilt = math.exp(log_shape) * rows.sum_log_exact
@@ -74,38 +74,50 @@ class RatioLikelihood:
             bend += tilt * np.outer(rows.basis[0], rows.basis[0])
             found = rows.cluster_sums(math.exp(log_shape), level, count)
             hazard += found[0]
-            first += found[[1, 0]].T @ rows.basis
+            for number in np.flatnonzero(rows.basis.any(axis=0)).tolist():
+                by_shape, by_level = rows.basis[:, number].tolist()
+                first[number] += by_shape * found[1] + by_level * found[0]
             sums.append(found)
         if self.nodes is None:
-            second = self._second(sums, np.ones((count, 1)))[0]
-            return value - float(hazard.sum()), slope - first.sum(axis=0), bend - second
-        spreads = self.nodes.spreads
-        counted = 1.0 + self.failures[:, None] * spreads
-        mean = counted / (1.0 + hazard[:, None] * spreads)
-        gain = spreads * mean * mean / counted
-        heights = self._heights(hazard)
+            second = self._second(sums, np.ones((1, count)))[0]
+            return value - float(hazard.sum()), slope - first.sum(axis=1), bend - second
+        # rows are nodes and columns clusters: there are few nodes and many clusters
+        spread_hazard = self.nodes.spreads[:, None] * hazard
+        mean = self._counted / (1.0 + spread_hazard)
+        gain = mean * mean * self._gain
+        heights = self._heights(spread_hazard)
         top = float(heights.max())
         shares = np.exp(heights - top)
         value += top + math.log(float(shares.sum()))
         shares /= shares.sum()
-        slopes = -mean.T @ first  # (V, P)
-        bends = (gain.T[:, None, :] * first.T) @ first - self._second(sums, mean)
+        slopes = -mean @ first.T  # (V, P)
+        bends = np.stack([(first * each) @ first.T for each in gain]) - self._second(sums, mean)
         middle = shares @ slopes
         spread_bend = np.tensordot(shares, bends, 1) + (slopes * shares[:, None]).T @ slopes
         return value, slope + middle, bend + spread_bend - np.outer(middle, middle)
 
-    def _heights(self, hazard: FloatArray) -> FloatArray:
-        """Log of prior mass times the clusters' terms for each node of nu, shape (V,)."""
+    @cached_property
+    def _counted(self) -> FloatArray:
+        """1 + D nu of each node and cluster, shape (V, S)."""
         assert self.nodes is not None
-        spreads = self.nodes.spreads
-        logs = np.log1p(hazard[:, None] * spreads)
-        return self._rising - self.failures @ logs - logs.sum(axis=0) / spreads + self.nodes.log_masses
+        return 1.0 + self.nodes.spreads[:, None] * self.failures
+
+    @cached_property
+    def _gain(self) -> FloatArray:
+        assert self.nodes is not None
+        return self.nodes.spreads[:, None] / self._counted
+
+    def _heights(self, spread_hazard: FloatArray) -> FloatArray:
+        """Log of prior mass times the clusters' terms for each node of nu, shape (V,); nu x hazard has shape (V, S)."""
+        assert self.nodes is not None
+        logs = np.log1p(spread_hazard)
+        return self._rising - logs @ self.failures - logs.sum(axis=1) / self.nodes.spreads + self.nodes.log_masses
 
     def _second(self, sums: list[FloatArray], factors: FloatArray) -> FloatArray:
-        """Sum over clusters of factor x second derivatives of the hazard, shape (V, P, P)."""
-        bends = np.zeros((factors.shape[1], self.size, self.size))
+        """Sum over clusters of factor (V, S) x second derivatives of the hazard, shape (V, P, P)."""
+        bends = np.zeros((len(factors), self.size, self.size))
         for rows, (hazard, by_shape, by_shape_twice) in zip(self.groups, sums, strict=True):
-            twice, both, level = (factors.T @ part for part in (by_shape_twice, by_shape, hazard))
+            twice, both, level = (factors @ part for part in (by_shape_twice, by_shape, hazard))
             inner = np.stack([np.stack([twice, both], axis=-1), np.stack([both, level], axis=-1)], axis=-1)
             bends += rows.basis.T @ inner @ rows.basis
         return bends
@@ -138,7 +150,9 @@ class RatioLikelihood:
 
     def node_heights(self, point: FloatArray) -> FloatArray:
         """Log-likelihood of each node of nu with its prior mass, up to a constant, shape (V,)."""
-        return self._heights(np.sum([rows.sums_at(point, self.failures.size)[0] for rows in self.groups], axis=0))
+        assert self.nodes is not None
+        hazard = np.sum([rows.sums_at(point, self.failures.size)[0] for rows in self.groups], axis=0)
+        return self._heights(self.nodes.spreads[:, None] * hazard)
 
     def narrowed(self, point: FloatArray, within: float) -> RatioLikelihood:
         """Only the nodes of nu whose height at the point comes within so much of the highest, and one on either side:

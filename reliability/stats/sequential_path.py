@@ -152,30 +152,30 @@ def _scores(
     first, last, dies, at_end = first[rows], last[rows], dies[rows], at_end[rows]
     begins = np.searchsorted(looks, lives.begun, side="right")
     ends = np.searchsorted(looks, lives.ended, side="left")
-    order = np.argsort(ends, kind="stable")
-    until = np.searchsorted(ends[order], np.arange(looks.size + 1), side="left")
+    order = np.argsort(begins, kind="stable")
+    until = np.searchsorted(begins[order], np.arange(looks.size + 1), side="left")
     count = keys.keys.size
     changes, died = np.zeros((2, count + 1)), np.zeros((2, count))
     reached = first.copy()
     score, information = np.zeros(looks.size), np.zeros(looks.size)
+    active = np.zeros(0, dtype=np.int64)
     for look, day in enumerate(looks.tolist()):
-        over = order[until[look] : until[look + 1]]
-        running = order[until[look + 1] :]
-        running = running[begins[running] <= look]
+        active = np.concatenate([active, order[until[look] : until[look + 1]]])
+        over = ends[active] <= look
+        to = last[active]
+        running = active[~over]
         moved = keys.upto(strata[running], lives.ages_on(day, running))
-        which = np.concatenate([over, running])
-        to = np.concatenate([last[over], np.clip(moved, first[running], last[running])])
-        gone = to != reached[which]
-        which, to = which[gone], to[gone]
-        cells = sides[which] * (count + 1)
-        flat = np.bincount(cells + reached[which], weights=weights[which], minlength=changes.size)
-        flat -= np.bincount(cells + to, weights=weights[which], minlength=changes.size)
+        to[~over] = np.clip(moved, first[running], last[running])
+        was, cells, own = reached[active], sides[active] * (count + 1), weights[active]
+        flat = np.bincount(cells + was, weights=own, minlength=changes.size)
+        flat -= np.bincount(cells + to, weights=own, minlength=changes.size)
         changes += flat.reshape(changes.shape)
-        reached[which] = to
-        fell = over[dies[over]]
+        reached[active] = to
+        fell = active[over & dies[active]]
         cells = sides[fell] * count + at_end[fell]
         died += np.bincount(cells, weights=weights[fell], minlength=died.size).reshape(died.shape)
         score[look], information[look] = _sums(died, np.cumsum(changes, axis=1)[:, :-1])
+        active = running
     return score, information
 
 
@@ -190,11 +190,13 @@ def _both_at_risk(first: IntArray, last: IntArray, sides: IntArray, weights: Flo
 
 
 def _sums(died: FloatArray, at_risk: FloatArray) -> tuple[float, float]:
-    """Failures of old parts less those expected, and the variance: row 0 old, row 1 new; hypergeometric, with ties."""
-    failures = died[0] + died[1]
-    some = np.flatnonzero(failures)
-    failures, old, every = failures[some], at_risk[0, some], at_risk[0, some] + at_risk[1, some]
+    """Failures of old parts less those expected, and the variance: row 0 old, row 1 new; with ties hypergeometric.
+
+    Where one kind of part is not at risk, all that failed was expected to.
+    """
+    some = np.flatnonzero((died[0] + died[1] > 0.0) & (at_risk[0] > 0.0) & (at_risk[1] > 0.0))
+    fell, old = died[0, some], at_risk[0, some]
+    failures, every = fell + died[1, some], old + at_risk[1, some]
     share = old / every
-    score = float(died[0, some].sum() - failures @ share)
     size = failures * np.maximum(every - failures, 0.0) / np.where(every > 1.0, every - 1.0, 1.0)
-    return score, max(float((size * share) @ (1.0 - share)), 0.0)
+    return float((fell - failures * share).sum()), max(float((size * share * (1.0 - share)).sum()), 0.0)

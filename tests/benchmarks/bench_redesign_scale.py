@@ -30,7 +30,7 @@ SECTIONS = {
         "_curves ahead_of evidence_of _with_past _at_like_duty single_modes fitting_faults few_failures_of _records "
         "_old_shape"
     ),
-    "evidence": "tests_of restricted_mean_of ratio_of",
+    "evidence": "log_rank_tests restricted_mean_of ratio_of",
 }
 
 

@@ -89,7 +89,7 @@ def test_lives_in_one_row_say_what_they_say_one_by_one() -> None:
 def test_where_nothing_can_be_compared_the_words_are_those_of_the_test() -> None:
     notes: list[str] = []
     lives, _ = sides(RolloutFleet(1.3))  # over the same dates hardly a position holds both
-    found = evidence.tests_of(lives, notes)
+    found = evidence.log_rank_tests(lives, notes)
     assert [row["z"] for row in found][1] is None
     assert any("nothing can be compared" in note for note in notes)
     assert np.isfinite([row["z"] for row in found if row["z"] is not None]).all()

@@ -9,7 +9,9 @@ import numpy as np
 import pytest
 
 from reliability.stats.difference import restricted_mean_difference
+from reliability.stats.difference_mean import means_without_sites
 from reliability.stats.errors import InvalidArgument, TooFewFailures, UndefinedEstimate, UnsupportedRows
+from reliability.stats.kaplan_meier import kaplan_meier
 from reliability.stats.lifetimes import Lifetimes
 from tests.stats import naive
 from tests.stats.cases import weibull_lives
@@ -150,3 +152,23 @@ class TestRefusals:
         short = Lifetimes([10, 20, 30, 40], [1, 1, 0, 0], sites=["a", "b", "c", "d"])
         with pytest.raises(UndefinedEstimate, match="Without the site d"):
             restricted_mean_difference(lives, short, 35.0, interval="sites")
+
+
+@pytest.mark.parametrize("seed", [1, 2, 3])
+def test_all_sites_left_out_at_once_are_those_left_out_one_by_one(seed):
+    rng = np.random.default_rng(seed)
+    entries = np.where(rng.random(200) < 0.4, rng.integers(0, 60, 200), 0)
+    lives = Lifetimes(
+        entries + rng.integers(1, 90, 200),
+        rng.random(200) < 0.7,
+        entries=entries,
+        sites=rng.choice(list("abcdef"), 200),
+        weights=rng.integers(1, 4, 200),
+    )
+    found = means_without_sites(lives, [*"abcdef", "elsewhere"], 50.0, 3.0)
+    for place, site in enumerate("abcdef"):
+        others = lives.subset(lives.sites != site)
+        slow = kaplan_meier(others, given_survival_to=3.0).restricted_mean(50.0).estimate
+        assert found[place] == pytest.approx(slow, rel=1e-12)
+    assert found[6] == pytest.approx(kaplan_meier(lives, given_survival_to=3.0).restricted_mean(50.0).estimate)
+    assert np.isnan(means_without_sites(lives.subset(lives.sites == "a"), ["a", "b"], 50.0, 3.0)[0])
