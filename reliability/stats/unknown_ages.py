@@ -58,7 +58,7 @@ def age_nodes(cumulative: Cumulative, least: FloatArray, most: FloatArray) -> tu
 def hazard_since(cumulative: Cumulative, least: FloatArray, most: FloatArray, gone: FloatArray) -> FloatArray:
     """-log of the chance to live on for `gone` (draws or 1, parts, n; 0 first) from now, averaged over the ages."""
     ages, weights = age_nodes(cumulative, least, most)
-    alive = 0.0
+    alive: FloatArray = np.zeros(1)
     for node in range(ages.shape[2]):
         age = ages[..., node : node + 1]
         with np.errstate(invalid="ignore"):
