@@ -90,5 +90,5 @@ def end(work: Work, state: str, *, message: str | None = None, result: dict[str,
 
 def put_back(work: Work) -> None:
     """For the next worker, at once."""
-    if change_state(held(work.pk, work.attempt), state=WorkState.WAITING, task_id="", message="Waits for a worker."):
+    if change_state(held(work.pk, work.attempt), state=WorkState.WAITING, task_id="", message="Waits for its turn."):
         send(work.pk)

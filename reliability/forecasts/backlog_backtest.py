@@ -18,6 +18,7 @@ import numpy as np
 from django.db.models import Min, Q
 from django.utils import timezone
 
+from fleet.formats import long_day
 from fleet.models import BenchJob, Component, DataVersion
 from reliability.forecasts.backlog import backlog
 from reliability.forecasts.backtest import DAYS, KEPT_FOR, Tell, keep
@@ -53,7 +54,7 @@ def judge_bench(
     found = []
     with shared_records():
         for place, begin in enumerate(begins):
-            tell(place, len(begins), f"the bench, quarter from {begin.isoformat()}")
+            tell(place, len(begins), f"the bench, quarter from {long_day(begin)}")
             found.append(kept_quarter(begin, version, since))
     judged = [each for each in found if "passed_over" not in each]
     document = {

@@ -13,6 +13,7 @@ from typing import Any
 
 from django.utils import timezone
 
+from fleet.formats import long_day
 from fleet.models import Component, DataVersion
 from reliability.forecasts.backtest_quarter import (
     BANDS,
@@ -53,7 +54,7 @@ def backtest(
     with shared_records():
         for place, begin in enumerate(begins):
             for number, component in enumerate(components):
-                tell(place * len(components) + number, total, f"{component.title}, quarter from {begin.isoformat()}")
+                tell(place * len(components) + number, total, f"{component.title}, quarter from {long_day(begin)}")
                 found[component.code].append(kept_quarter(Stand(component, begin), version, since))
     documents = [document_of(each, quarters, found[each.code], today) for each in components]
     for document in documents:
