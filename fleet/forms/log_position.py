@@ -101,6 +101,7 @@ class PositionForm(forms.Form):
         )
         fields["last_good_on"] = DayField(zone=zone, required=False, label="Last seen working on")
         fields["age_at_fit"].label = f"Age of a used part, {choices.component.clock}"
+        fields["age_at_fit"].help_text = "Empty counts as new."
 
     def unknown_outcome(self) -> str:
         if self.choices.fitting is None:
