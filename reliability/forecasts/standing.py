@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import datetime as dt
-from collections import defaultdict
+from collections import Counter, defaultdict
 from dataclasses import dataclass
 
 from django.db.models import Q
@@ -74,7 +74,9 @@ def _days_there(as_of: dt.date) -> dict[str, float]:
 
 
 def stop_shares(component_pk: int, as_of: dt.date, known_on: dt.date | None) -> float:
-    """Share of the past year's ended stops in which this component got a new part after a failure."""
+    """Chance of one position that its part failed where a module stood still: new parts of this component after a
+    failure over parts of it that were there, in the past year's ended stops.
+    """
     end = dt.datetime.combine(as_of, dt.time(), dt.UTC)
     stops = Stop.objects.standing().filter(running_at__lte=end, stopped_at__gt=end - STOPS_SINCE)
     if known_on is not None:
@@ -84,19 +86,31 @@ def stop_shares(component_pk: int, as_of: dt.date, known_on: dt.date | None) -> 
         :MOST_STOPS
     ]:
         spans[module].append((since.date(), until.date()))
+    known = list(spans)[:MOST_MODULES]
     removed: dict[int, list[dt.date]] = defaultdict(list)
     fittings = Fitting.objects.standing().filter(
         part__component=component_pk,
         reason__in=FAILURE_REASONS,
         removed_on__lte=as_of,
         removed_on__gt=as_of - STOPS_SINCE - dt.timedelta(days=30),
-        module__in=list(spans)[:MOST_MODULES],
+        module__in=known,
     )
     for module, day in known_ended(fittings, known_on).values_list("module_id", "removed_on"):
         removed[module].append(day)
-    known = list(spans)[:MOST_MODULES]
-    whole = sum(len(spans[module]) for module in known)
+    parts = _parts(component_pk, known, as_of)
+    whole = sum(len(spans[module]) * parts[module] for module in known)
     caused = sum(
-        any(since <= day <= until for day in removed[module]) for module in known for since, until in spans[module]
+        sum(since <= day <= until for day in removed[module]) for module in known for since, until in spans[module]
     )
-    return (caused + 0.5) / (whole + 1.0) if whole else 1.0
+    return min((caused + 0.5) / (whole + 1.0), 1.0) if whole else 1.0
+
+
+def _parts(component_pk: int, modules: list[int], as_of: dt.date) -> Counter[int]:
+    """How many parts of the component each module holds; those that hold none now had one."""
+    fitted = (
+        Fitting.objects.standing()
+        .filter(Q(removed_on=None) | Q(removed_on__gt=as_of), part__component=component_pk, module__in=modules)
+        .filter(Q(fitted_on=None) | Q(fitted_on__lte=as_of))
+    )
+    counts = Counter(fitted.values_list("module_id", flat=True))
+    return Counter({module: max(counts[module], 1) for module in modules})

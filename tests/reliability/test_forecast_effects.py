@@ -18,6 +18,7 @@ from reliability.forecasts.duty import duty
 from reliability.forecasts.learned import learned
 from reliability.forecasts.next_quarter import forecast_document, question_of
 from reliability.forecasts.positions import Positions, positions_of
+from reliability.forecasts.standing import stop_shares
 from reliability.forecasts.what_if import WhatIf
 from reliability.running_parts import running_parts
 from tests.reliability.small_fleet import DAY_0, PLACED_LONG_BEFORE, SmallFleet, day
@@ -139,6 +140,22 @@ def test_a_module_that_stands_still_gets_its_part_or_waits() -> None:
     assert down[0][0] == pytest.approx(2.0, abs=0.6)
     assert 0.2 < down[0][1] < 0.8
     assert down[0][1] + waiting[0] == pytest.approx(1.0)
+
+
+def test_of_several_parts_in_a_module_that_stands_still_one_is_expected_to_have_failed() -> None:
+    """Each stop of a module with three nuts ended with one new nut: a third for each of them."""
+    fleet = SmallFleet()
+    module = fleet.module("M-1", fleet.site())
+    for _ in range(2):
+        fleet.fit(module, 10)
+    at = 20
+    for _ in range(20):
+        fleet.fit(module, at, at + 15, "failed", mode=fleet.worn)
+        at += 15
+        fleet.stop(module, at - 3, at + 0.01)
+    fleet.fit(module, at)
+    rebuild_clocks()
+    assert stop_shares(fleet.component.pk, day(AS_OF), None) == pytest.approx(1 / 3, abs=0.02)
 
 
 def test_modules_that_leave_take_their_failures_along_and_those_that_come_bring_theirs() -> None:
