@@ -42,6 +42,8 @@ class EvidenceForm(forms.Form):
         taken = [chosen.new_part_id, *(part.pk for part in chosen.replaces.all())] if chosen else []
         self.fields["also"].queryset = request.seen(Part).filter(component=own).exclude(pk__in=taken)
         self.fields["also"].label_from_instance = lambda part: part.title
+        # another component has other modes and candidates: one goes there by its link, which loads the page anew
+        self.fields["component"].widget = forms.HiddenInput()
         if len(lines) < 2:
             del self.fields["component"]
         for name in ("mode", "also"):

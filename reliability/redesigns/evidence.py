@@ -23,7 +23,7 @@ from reliability.stats.errors import StatisticsError
 from reliability.stats.life_ratio import LifeRatio, Ratio, life_ratio
 from reliability.stats.life_regression import fit_weibull_regression
 from reliability.stats.lifetimes import Lifetimes
-from reliability.stats.ranks import first_rows
+from reliability.stats.ranks import first_rows, ranked
 from reliability.stats.sequential import Look
 from reliability.stats.sequential_path import path_of_looks
 
@@ -116,8 +116,10 @@ def by_position(lives: Compared, now: Look | None = None) -> tuple[float, float]
     assert lives.lifetimes is not None
     found = counted_when_found(lives.lifetimes)
     strata = lives.positions * len(found.site_labels) + found.site_codes
-    first = found.site_codes[first_rows(lives.positions, int(lives.positions.max()) + 1)]
-    if now is not None and (first[lives.positions] == found.site_codes).all():
+    # where lives were left out some positions have none
+    places, place = ranked(lives.positions)
+    first = found.site_codes[first_rows(place, places.size)]
+    if now is not None and (first[place] == found.site_codes).all():
         # no module has moved to another site: the look within positions is the same
         score, variance = now.position_score or 0.0, now.position_information or 0.0
     else:
