@@ -123,7 +123,9 @@ def actions_of(request: Any, page: ModulePage) -> list[dict[str, Any]]:
     tag = page.module.code
     if page.module.scrapped_on is not None:
         return []
-    stop = "It stands still" if page.standing.stop else "Report a stop"
+    stop = "Report a stop"
+    if page.standing.stop:
+        stop = "It runs again" if may(request.user, LOG) else "Its stop"
     actions = [{"name": stop, "url": reverse("report_stop", args=[tag]), "quiet": True}]
     if may(request.user, LOG):
         actions = [

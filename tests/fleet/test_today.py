@@ -24,6 +24,7 @@ def test_what_a_module_lacks_is_told_in_words_where_its_stop_is_told_and_else_by
     assert today.context["empty_positions"] == []
     assert "no drive nut" in page
     assert "Waiting for a part" not in page
+    assert "It runs again" in cleo.get("/m/KM-1").content.decode()
     send(cleo, weir.module, all_well="on", left="running", strokes="200")
     page = cleo.get("/").content.decode()
     assert "Waiting for a part" in page
