@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from typing import Any
+from urllib.parse import urlencode
 
 from django.db.models import Q
 from django.http import HttpResponse
@@ -27,13 +28,18 @@ def search(request: Any) -> HttpResponse:
     return render(request, "search/page.html", {"query": words, "found": found(request, words)})
 
 
+def all_of(name: str, **asked: str) -> str:
+    """The list with the same words as its filter, whatever signs they hold."""
+    return f"{reverse(name)}?{urlencode(asked)}"
+
+
 def found(request: Any, words: str) -> list[dict[str, Any]]:
     modules = module_words(request.seen(Module).with_state().select_related("type"), "", words)
     sites = folded(request.seen(Site), "folded", words)
     groups = [
         {
             "name": "Modules",
-            "all_url": f"{reverse('modules')}?q={words}",
+            "all_url": all_of("modules", q=words),
             "rows": [
                 {
                     "name": each.code,
@@ -45,7 +51,7 @@ def found(request: Any, words: str) -> list[dict[str, Any]]:
         },
         {
             "name": "Sites",
-            "all_url": f"{reverse('sites')}?q={words}",
+            "all_url": all_of("sites", q=words),
             "rows": [
                 {"name": each.title, "url": reverse("site", args=[each.code]), "more": each.code}
                 for each in sites.order_by("code_order")[: MOST + 1]
@@ -57,7 +63,7 @@ def found(request: Any, words: str) -> list[dict[str, Any]]:
         groups.append(
             {
                 "name": "Parts",
-                "all_url": f"{reverse('parts')}?q={words}",
+                "all_url": all_of("parts", q=words),
                 "rows": [
                     {"name": each.code, "url": reverse("edit_part", args=[each.code]), "more": each.name}
                     for each in parts.order_by("code_order")[: MOST + 1]
@@ -89,7 +95,7 @@ def stocked(request: Any, words: str) -> list[dict[str, Any]]:
         },
         {
             "name": "Supply orders",
-            "all_url": f"{reverse('supply')}?order={words}",
+            "all_url": all_of("supply", order=words),
             "rows": [
                 {"name": each.code, "url": reverse("supply_order", args=[each.code]), "more": each.supplier}
                 for each in orders.order_by("-ordered_on", "code_order")[: MOST + 1]
@@ -97,7 +103,7 @@ def stocked(request: Any, words: str) -> list[dict[str, Any]]:
         },
         {
             "name": "On the bench",
-            "all_url": f"{reverse('bench_jobs')}?module={words}",
+            "all_url": all_of("bench_jobs", module=words),
             "rows": [
                 {"name": each.module.code, "url": reverse("bench_job", args=[each.code]), "more": each.stage}
                 for each in of_module.order_by("module__code_order")[: MOST + 1]

@@ -100,3 +100,12 @@ def test_an_empty_list_says_what_to_do(manager: Client) -> None:
     assert "A planner or manager adds the first one" in manager.get("/sites/").content.decode()
     make.make_site(code="A-1")
     assert "Widen a filter" in manager.get("/sites/?q=nowhere").content.decode()
+
+
+def test_a_search_of_odd_signs_leads_to_the_same_list(manager: Client) -> None:
+    for number in range(21):
+        make.make_site(code=f"A-{number}", name=f"Alder & Sons #{number} + mill")
+    found = manager.get("/search/", {"q": "Alder & Sons #"}).context["found"]
+    [sites] = [group for group in found if group["name"] == "Sites"]
+    assert sites["more_than_shown"]
+    assert manager.get(sites["all_url"]).context["filter"].qs.count() == 21
