@@ -11,7 +11,7 @@ import numpy as np
 from reliability.stats.lifetimes import FloatArray, IntArray, Lifetimes
 from reliability.stats.weibull_likelihood import LARGEST_LOG_HAZARD
 
-MANY_ROWS = 100_000
+MANY_ROWS = 20_000
 # moments hold the sums for shapes within this share of their centre, and for so large a change of the greatest exponent
 WINDOW, REACH = 0.15, 0.7
 TERMS = 12  # of the series: REACH^12 / 12! and WINDOW^12 / sqrt(24 pi) are below 2e-11
