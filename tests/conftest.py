@@ -87,8 +87,24 @@ def django_db_keepdb(request: pytest.FixtureRequest) -> bool:
     return not on_postgresql() or bool(request.config.getvalue("reuse_db"))
 
 
+@pytest.fixture(scope="module", autouse=True)
+def swept(request: pytest.FixtureRequest) -> Iterator[None]:
+    """After the last test of a file, and after its shared rows were taken back."""
+    here = [item for item in request.session.items if item.path == request.path]
+    if not (on_postgresql() and any(map(uses_database, here))):
+        yield
+        return
+    blocker = request.getfixturevalue("django_db_blocker")
+    request.getfixturevalue("django_db_setup")
+    yield
+    with blocker.unblock():
+        emptied.sweep()
+
+
 @pytest.fixture(scope="module")
-def made_once(django_db_setup: None, django_db_blocker: Any) -> Iterator[Callable[[Callable[[], Any]], Any]]:
+def made_once(
+    swept: None, django_db_setup: None, django_db_blocker: Any
+) -> Iterator[Callable[[Callable[[], Any]], Any]]:
     """Calls what makes a fleet, whose rows then stand for all tests of a file; each takes back what it changed.
 
     For fleets that take a second to make, in a fixture of scope "module". Tests take a `copy.deepcopy` of its Python

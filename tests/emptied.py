@@ -1,4 +1,4 @@
-"""Empties a PostgreSQL test database between tests that commit: only the few tables that hold rows.
+"""Empties a PostgreSQL test database between tests that commit: only the few tables that hold rows. Sweeps after files.
 
 Django truncates all hundred and more, each with its indexes, which takes longer than most such tests.
 """
@@ -10,6 +10,7 @@ from typing import Any
 from django.db import connection
 
 MANY_ROWS = 2000  # from there on truncating is quicker
+LARGE_BYTES = 256 * 1024
 
 whole_flush: Any = None
 
@@ -38,6 +39,19 @@ def sql_flush(
     return [f"TRUNCATE {quote(table)} CASCADE" for table in full if table in guarded] + [
         f"DELETE FROM {quote(table)}" for table in full if table not in guarded
     ]
+
+
+def sweep() -> None:
+    """Gives back the space of rows that were taken back, so that tables do not grow from test to test."""
+    large = (
+        "SELECT oid::regclass::text FROM pg_class WHERE relkind = 'r' AND relnamespace = 'public'::regnamespace "
+        f"AND pg_relation_size(oid) > {LARGE_BYTES}"
+    )
+    tables = asked([large])
+    if tables:
+        with connection.cursor() as cursor:
+            cursor.execute(f"VACUUM {', '.join(tables)}")
+    connection.close()
 
 
 def asked(questions: Any) -> list[str]:
