@@ -45,6 +45,19 @@ def verdict(document: Document, counts: list[int], name: str) -> str:
     )
 
 
+def still_coming(weeks: int, late: int, days: int) -> str:
+    """That the last weeks may not be whole yet. weeks: passed; late: of them so fresh that failures may still come;
+    days: within which most failures reach the book.
+    """
+    if not weeks or not late:
+        return ""
+    said = f"Of the past year's failures 95 in 100 were in the book within {counted(days, 'day')}"
+    if late >= weeks:
+        return f"{said}: more may still come for {'this week' if weeks == 1 else 'every week so far'}."
+    which = "the last week" if late == 1 else f"the last {counted(late, 'week')}"
+    return f"{said}: more may still come for {which}."
+
+
 def total_so_far(document: Document, counts: list[int], name: str) -> str:
     """All of it beside all that happened; only the whole stretch has a band of its own."""
     if not counts:

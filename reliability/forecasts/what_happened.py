@@ -12,6 +12,7 @@ brings along when it is new is not used. Work at a depot counts at the site wher
 from __future__ import annotations
 
 import datetime as dt
+import math
 from collections import defaultdict
 from collections.abc import Collection, Iterable
 from dataclasses import dataclass
@@ -23,6 +24,8 @@ from django.db.models.functions import Coalesce
 from fleet.models import FAILURE_REASONS, Component, Fitting, Placement, SiteKind
 from reliability.forecasts.horizon import WEEK, week_starts
 from reliability.running_parts import FITTED_KNOWN, NO_PLACE, known_ended
+
+MOST_LAGS = 2000  # failures that tell how late they are reported
 
 
 class HappenedRow(NamedTuple):
@@ -98,6 +101,16 @@ def failures_between(
                 counts[(day - begin).days // WEEK, part, code][place] += count
     rows_found = tuple(HappenedRow(*key, *found) for key, found in sorted(counts.items()))
     return Happened(component.code, begin, end, known_on, rows_found)
+
+
+def days_to_the_book(component: Component, until: dt.date) -> int:
+    """Days within which 95 in 100 failures of the year before reached the book; 0 where none is on record."""
+    year = failed(component, until - dt.timedelta(days=365), until).annotate(
+        known=Coalesce("removed_known_on", "removed_visit__known_on", "removed_on")
+    )
+    latest = year.order_by("-day", "-pk").values_list("day", "known")[:MOST_LAGS]
+    lags = sorted(max((known - day).days, 0) for day, known in latest if known is not None)
+    return lags[math.ceil(0.95 * len(lags)) - 1] if lags else 0
 
 
 def failures_in_modules_that_came_later(component: Component, begin: dt.date, end: dt.date) -> int:

@@ -165,10 +165,24 @@ def context_of(kept: KeptForecast, happened: Document | None) -> Document:
         "verdict": kept_words.verdict(document, counts, name),
         "total": kept_words.total_so_far(document, counts, name),
         "waiting": not counts,
+        "still_coming": still_coming(kept, len(counts)),
         "chart": kept_chart(document, counts, name),
         "parts": parts_table(document, happened) if happened else None,
         "method_note": kept_words.METHOD,
     }
+
+
+def still_coming(kept: KeptForecast, weeks: int) -> str:
+    """Whether failures of the weeks told may still be on their way to the book."""
+    from reliability.forecasts.what_happened import days_to_the_book
+
+    if not weeks:
+        return ""
+    today = timezone.localdate()
+    days = days_to_the_book(kept.component, today)
+    ends = [min(kept.begin + dt.timedelta(days=7 * (week + 1)), end_of(kept)) for week in range(weeks)]
+    late = sum((today - end).days < days for end in ends)
+    return kept_words.still_coming(weeks, late, days)
 
 
 def kept_chart(document: Document, counts: list[int], name: str) -> Document:

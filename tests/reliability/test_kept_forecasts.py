@@ -13,7 +13,7 @@ from django.db.models.deletion import ProtectedError
 from django.test import Client
 
 from fleet.actions.errors import RecordError
-from fleet.models import Component, DataVersion
+from fleet.models import Component, DataVersion, Fitting
 from reliability import forecast_kept_words as words
 from reliability.forecasts.keep_forecast import keep_forecast
 from reliability.forecasts.next_quarter import forecast_document, question_of
@@ -213,6 +213,65 @@ def test_after_its_last_day_the_total_is_judged(client: Client) -> None:
     with time_machine.travel(dt.datetime(2024, 9, 1, 12, tzinfo=dt.UTC), tick=False):
         page = ines(client).get(f"/forecast/kept/{kept.pk}/").content.decode().replace("\u00a0", " ")
     assert "In all 33 Drive nuts failed; 16.0 were expected. That lies above the 80 in 100 band, 10 to 22." in page
+
+
+def test_a_small_book_counted_on_paper(client: Client) -> None:
+    """Four weeks from 3 June, day 154; read on 3 July, day 184.
+
+    Week 1: one failed. Week 2: one failed, one struck out, one on the test stand. Week 3: one failed that came out in
+    week 4, one worn to limit; a module was withdrawn with its part, which is no failure. Week 4: one of which the book
+    heard after twelve days, a module without a place on record, and a planned replacement. The part that failed a day
+    before the first and came out on it, and the one that failed on the day after the last, belong to other weeks.
+    """
+    from fleet.actions.rebuild_clocks import rebuild_clocks
+
+    fleet = SmallFleet()
+    site, stand = fleet.site(), fleet.site("TANK", kind="rig")
+    first = (BEGIN - day(0)).days
+    assert first == 154
+
+    def ended(tag: str, at: int, reason: str = "failed", where: Any = site, **fields: Any) -> None:
+        module = fleet.module(tag, where)
+        old = fleet.fit(module, 10, at, reason, **fields)
+        if reason != "module withdrawn":
+            following = {"code": f"{tag}-NEXT", "module": module, "position": old.position, "part": fleet.n2}
+            Fitting.objects.create(**following, fitted_on=day(at), struck_out=fields.get("struck_out", ""))
+
+    ended("W1", first)
+    ended("W2", first + 13)
+    ended("STRUCK", first + 9, struck_out="entered twice")
+    ended("STAND", first + 9, where=stand)
+    ended("W3-OUT-LATER", first + 22, failed=first + 20)
+    ended("W3-WORN", first + 15, "worn to limit")
+    ended("W3-GONE", first + 16, "module withdrawn")
+    ended("W4-LATE", first + 27, known=first + 39)
+    ended("W4-NOWHERE", first + 25, where=None)
+    ended("W4-PLANNED", first + 24, "planned")
+    ended("BEFORE", first, failed=first - 1)
+    ended("AFTER", first + 28)
+    rebuild_clocks()
+    kept = make_kept_forecast(component=fleet.component, made_by=make_manager(), begin=BEGIN)
+    with time_machine.travel(dt.datetime(2024, 7, 3, 12, tzinfo=dt.UTC), tick=False):
+        page = ines(client).get(f"/forecast/kept/{kept.pk}/").content.decode().replace("\u00a0", " ")
+        happened = client.get(f"/forecast/kept/{kept.pk}/?as=json").json()["happened"]
+    assert [week["failures"] for week in happened["weeks"]] == [1, 1, 2, 2]
+    # new parts go in when the old ones come out: BEFORE's and W1's in the first week, W3-OUT-LATER's in the fourth
+    assert [week["parts_used"] for week in happened["weeks"]] == [2, 1, 1, 4]
+    assert happened["parts"]["N1"] == {"failures": 6, "parts_used": 0}
+    assert happened["parts"]["N2"] == {"failures": 0, "parts_used": 8}
+    assert "In all 6 Drive nuts failed; 16.0 were expected. That lies below the 80 in 100 band, 10 to 22." in page
+    # of eight failures of the year one was twelve days late; the last two weeks ended two and nine days ago
+    assert "95 in 100 were in the book within 12 days: more may still come for the last 2 weeks." in page
+
+
+def test_weeks_long_past_are_told_without_a_proviso(client: Client) -> None:
+    fleet = happened_fleet([4, 7, 2, 20])
+    kept = make_kept_forecast(component=fleet.component, made_by=make_manager(), begin=BEGIN)
+    with time_machine.travel(dt.datetime(2024, 9, 1, 12, tzinfo=dt.UTC), tick=False):
+        assert "may still come" not in ines(client).get(f"/forecast/kept/{kept.pk}/").content.decode()
+    assert words.still_coming(1, 1, 9).endswith("9\u00a0days: more may still come for this week.")
+    assert words.still_coming(4, 1, 9).endswith("more may still come for the last week.")
+    assert words.still_coming(4, 4, 30).endswith("more may still come for every week so far.")
 
 
 def test_before_the_first_week_is_over_it_waits(client: Client) -> None:
