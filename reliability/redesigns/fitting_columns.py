@@ -62,12 +62,12 @@ class FittingColumns:
 
 
 def read_fittings(
-    parts: Sequence[int], clock: str, as_of: int, as_of_text: str, prompt_sites: Iterable[int]
+    parts: Sequence[int], clock: str, as_of: int, as_of_text: str, late_sites: Iterable[int]
 ) -> FittingColumns:
-    """All standing fittings of these parts up to the day. prompt_sites report every failure at once."""
+    """All standing fittings of these parts up to the day. late_sites: those that may not report a failure at once."""
     import numpy as np
 
-    wanted = _wanted(clock, as_of, as_of_text, prompt_sites)
+    wanted = _wanted(clock, as_of, as_of_text, late_sites)
     where = f"""FROM fleet_fitting f JOIN fleet_fittingclock c ON c.fitting_id = f.id
         LEFT JOIN fleet_visit v ON v.id = f.removed_visit_id
         WHERE f.part_id IN ({", ".join(str(int(part)) for part in parts) or "-1"}) AND f.struck_out = ''
@@ -111,15 +111,15 @@ class _Wanted(NamedTuple):
     sparse: dict[str, tuple[int, str]]
 
 
-def _wanted(clock: str, as_of: int, as_of_text: str, prompt_sites: Iterable[int]) -> _Wanted:
-    prompt = ", ".join(str(int(site)) for site in prompt_sites) or "-1"
+def _wanted(clock: str, as_of: int, as_of_text: str, late_sites: Iterable[int]) -> _Wanted:
+    late = ", ".join(str(int(site)) for site in late_sites) or "-1"
     conditions = {
         REMOVED_LATER: f"f.removed_on > '{as_of_text}'",
         ENTERED: "c.last_good_entered",
         HAS_AGE: "f.age_at_fit <> 0",
         HAS_RECORDS: "c.records_day IS NOT NULL",
-        # at other sites the day on which it was last seen in order plays no part
-        HAS_GOOD: f"c.last_good_entered OR c.end_day > {int(as_of)} OR COALESCE(c.site_id, -1) NOT IN ({prompt})",
+        # elsewhere the day on which it was last seen in order plays no part
+        HAS_GOOD: f"c.last_good_entered OR c.end_day > {int(as_of)} OR COALESCE(c.site_id, -1) IN (-1, {late})",
     }
     numbered = " ".join(f"WHEN '{name}' THEN {number}" for number, name in enumerate(REASONS[:-1]))
     flags = " + ".join(f"CASE WHEN {text} THEN {flag} ELSE 0 END" for flag, text in conditions.items())

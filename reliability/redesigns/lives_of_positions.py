@@ -128,7 +128,8 @@ def position_records(
     asked = asked_of(component, parts=parts, as_of=as_of, clock=clock)
     kinds = list(Site.objects.values_list("pk", "kind", "reports_at_once"))
     prompt = frozenset(pk for pk, _, at_once in kinds if at_once)
-    fittings = read_fittings(asked.parts or (), asked.clock, asked.as_of.toordinal(), asked.as_of.isoformat(), prompt)
+    late = [pk for pk, _, at_once in kinds if not at_once]
+    fittings = read_fittings(asked.parts or (), asked.clock, asked.as_of.toordinal(), asked.as_of.isoformat(), late)
     place = _places(fittings)
     order = np.argsort(place * 2**DAY_BITS + fittings.fitted_day, kind="stable")
     fittings, place = fittings.chosen(order), place[order]
