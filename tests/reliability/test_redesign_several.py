@@ -136,7 +136,7 @@ def test_lives_on_a_rig_are_in_no_figure_of_the_field() -> None:
     asked = question_for("N2", as_of=day(TODAY))
     before = redesign_document(asked)
     for module in Module.objects.filter(code__startswith="R-"):
-        fleet.put(module, fleet.n2, 350, 351, "failed")
+        fleet.put(module, fleet.n2, 250, 251, "failed")
     rebuild_clocks()
     after = redesign_document(asked)
     for name in ("verdict", "chances", "same_dates", "few"):
