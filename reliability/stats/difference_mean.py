@@ -108,8 +108,7 @@ def _refuse_no_spread(means: list[RestrictedMean], groups: tuple[Lifetimes, Life
         if mean.estimate >= mean.horizon * (1.0 - 1e-12):
             raise TooFewFailures(
                 f"No failure in the {name} group before the horizon {mean.horizon:g} ({lives.count:g} lives), so its "
-                "mean has no interval. Choose a later horizon, or ask for the bound that few failures give "
-                "(known_shape_bounds).",
+                "mean has no interval. Choose a later horizon, or take the bound that few failures give.",
                 failures=0,
                 needed=1,
             )

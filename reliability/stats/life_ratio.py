@@ -131,7 +131,7 @@ def life_ratio(
     likelihood, top = _highest(whole, start, common_shape)
     if not top.converged:
         raise NotConverged(
-            "The search for the life ratio did not settle. Use common_shape=True, or wait for more failures.",
+            "The search for the life ratio did not settle. Assume one shape for both, or wait for more failures.",
             iterations=top.iterations,
         )
     best = _free_matrix(likelihood.size, common_shape) @ top.point
@@ -161,8 +161,8 @@ def refuse_unusable(before: Lifetimes, after: Lifetimes, past: Lifetimes | None 
             )
         if not lives.observed.any():
             raise TooFewFailures(
-                f"None of {lives.count:g} {name} parts has failed, so there is no ratio of lives yet. Ask for the "
-                "bound under an assumed shape (known_shape_bounds), and for the posterior probability.",
+                f"None of {lives.count:g} {name} parts has failed, so there is no ratio of lives yet. What few "
+                "failures still say is a bound under an assumed shape, and the chance of a longer life.",
                 failures=0,
                 needed=1,
             )
@@ -329,7 +329,7 @@ class _Profile:
                 low, high = min(inside, outside), max(inside, outside)
                 guess = newton if low < newton < high else 0.5 * (inside + outside)
         raise NotConverged(
-            "The limit of the life ratio was not found in 80 steps. Use common_shape=True.", iterations=80
+            "The limit of the life ratio was not found in 80 steps. Assume one shape for both.", iterations=80
         )
 
 

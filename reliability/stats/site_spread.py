@@ -142,7 +142,7 @@ def _refuse_unsettled(top: Maximum) -> None:
     if not top.converged:
         raise UndefinedEstimate(
             "Shape and site spread cannot be told apart in these records: the failures of each site lie too close "
-            "together. Use site_spread=False, or wait for more failures."
+            "together. Take lives as independent, or wait for more failures."
         )
 
 
