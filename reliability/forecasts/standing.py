@@ -7,9 +7,10 @@ from collections import Counter, defaultdict
 from dataclasses import dataclass
 
 from django.db.models import Q
+from django.db.models.functions import Coalesce
 
 from fleet.models import FAILURE_REASONS, Fitting, Placement, SiteKind, Stop
-from reliability.running_parts import known_ended
+from reliability.running_parts import FITTED_KNOWN, REMOVED_KNOWN, known_ended
 
 STOPS_SINCE = dt.timedelta(days=365)
 MOST_STOPS, MOST_MODULES = 4000, 500
@@ -97,7 +98,7 @@ def stop_shares(component_pk: int, as_of: dt.date, known_on: dt.date | None) -> 
     )
     for module, day in known_ended(fittings, known_on).values_list("module_id", "removed_on"):
         removed[module].append(day)
-    parts = _parts(component_pk, known, as_of)
+    parts = _parts(component_pk, known, as_of, known_on)
     whole = sum(len(spans[module]) * parts[module] for module in known)
     caused = sum(
         sum(since <= day <= until for day in removed[module]) for module in known for since, until in spans[module]
@@ -105,12 +106,13 @@ def stop_shares(component_pk: int, as_of: dt.date, known_on: dt.date | None) -> 
     return min((caused + 0.5) / (whole + 1.0), 1.0) if whole else 1.0
 
 
-def _parts(component_pk: int, modules: list[int], as_of: dt.date) -> Counter[int]:
-    """How many parts of the component each module holds; those that hold none now had one."""
-    fitted = (
-        Fitting.objects.standing()
-        .filter(Q(removed_on=None) | Q(removed_on__gt=as_of), part__component=component_pk, module__in=modules)
-        .filter(Q(fitted_on=None) | Q(fitted_on__lte=as_of))
-    )
-    counts = Counter(fitted.values_list("module_id", flat=True))
+def _parts(component_pk: int, modules: list[int], as_of: dt.date, known_on: dt.date | None) -> Counter[int]:
+    """How many parts of the component each module holds, as known by then; those that hold none now had one."""
+    gone, fitted = Q(removed_on__lte=as_of), Q(fitted_on=None) | Q(fitted_on__lte=as_of)
+    parts = Fitting.objects.standing().filter(part__component=component_pk, module__in=modules)
+    if known_on is not None:
+        parts = parts.annotate(fitted_known=Coalesce(*FITTED_KNOWN), removed_known=Coalesce(*REMOVED_KNOWN))
+        gone &= Q(removed_known__lte=known_on)
+        fitted &= Q(fitted_known=None) | Q(fitted_known__lte=known_on)
+    counts = Counter(parts.filter(fitted).exclude(gone).values_list("module_id", flat=True))
     return Counter({module: max(counts[module], 1) for module in modules})
