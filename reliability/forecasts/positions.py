@@ -12,8 +12,10 @@ from typing import Any, NamedTuple
 from reliability.forecasts.learned import Learned
 from reliability.forecasts.question import Question
 from reliability.forecasts.site_rules import with_rules_of_others
+from reliability.forecasts.what_if import UnusableWhatIf
 from reliability.running_parts import RunningRow
 
+SHORTEST_DAYS = 7.0  # between two planned replacements
 AGE_CELLS = 60  # ages are told apart to this share of the typical life
 MOST_PACES = 120  # of all sites together
 PACE_STEP = 0.25  # paces are told apart to this share
@@ -91,8 +93,23 @@ def positions_of(rows: Iterable[RunningRow], question: Question, learned: Learne
             ages.append(aged_sum / weight)
             weights.append(weight)
             places.append(place)
+    _refuse_too_often(question, [place.pace for place in places])
     horizons = np.array([place.pace * question.span for place in places])
     return Positions(np.array(ages), horizons, np.array(weights), places)
+
+
+def _refuse_too_often(question: Question, paces: list[float]) -> None:
+    """Parts changed more than once a week: nobody plans it, and counting each change takes minutes."""
+    asked = question.what_if.replace_at
+    usual = sorted(paces)[len(paces) // 2] if paces else 0.0
+    if asked is None or asked >= SHORTEST_DAYS * usual:
+        return
+    least = 10.0 ** math.ceil(math.log10(SHORTEST_DAYS * usual))
+    raise UnusableWhatIf(
+        "replace_at",
+        f"{asked:g} {question.component.clock} pass in less than a week of usual use. Give an age of {least:g} or so, "
+        "or more.",
+    )
 
 
 def _shared_paces(entries: list[tuple[Place, float, float]]) -> list[float]:
