@@ -19,7 +19,7 @@ from reliability.forecasts.learned import learned
 from reliability.forecasts.next_quarter import forecast_document, question_of
 from reliability.forecasts.positions import Positions, positions_of
 from reliability.forecasts.standing import stop_shares
-from reliability.forecasts.what_if import UnusableWhatIf, WhatIf
+from reliability.forecasts.what_if import WhatIf
 from reliability.running_parts import running_parts
 from tests.reliability.small_fleet import DAY_0, PLACED_LONG_BEFORE, SmallFleet, day
 
@@ -220,15 +220,6 @@ def test_under_a_rule_an_unknown_age_lies_below_it() -> None:
     assert {oldest for _, oldest, _ in found} == {0.0}
     assert min(age for age, _, _ in found) >= 19.0
     assert max(age for age, _, _ in found) <= 60.0
-
-
-def test_parts_changed_more_than_once_a_week_are_not_counted() -> None:
-    """Each change of each part would be drawn: at an age of one stroke a page took minutes."""
-    fleet = SmallFleet()
-    live(fleet, [fleet.site("MILL")])
-    with pytest.raises(UnusableWhatIf, match="less than a week of usual use"):
-        positions(fleet, what_if=WhatIf(replace_at=6.0))
-    assert len(positions(fleet, what_if=WhatIf(replace_at=7.0)))
 
 
 def test_ages_stay_within_reason_where_no_part_has_failed_yet() -> None:

@@ -15,9 +15,12 @@ from reliability.forecasts.learned import ALL, Design, Learned
 from reliability.forecasts.positions import MOST_PACES, Place, _shared_paces, positions_of
 from reliability.forecasts.question import question_of
 from reliability.forecasts.standing import Standing
+from reliability.forecasts.what_if import UnusableWhatIf, WhatIf
 from reliability.running_parts import RunningRow
 from reliability.stats.kept_draws import KeptDraws
 from reliability.stats.posterior import KnownWeibull
+from tests.reliability.small_fleet import SmallFleet
+from tests.reliability.test_forecast_effects import live, positions
 
 
 def place(site: str, pace: float) -> Place:
@@ -88,3 +91,13 @@ def test_a_part_is_as_old_as_the_first_morning_finds_it(
     )
     found = positions_of([row], asked, learned)
     assert (found.ages + asked.gap * a_day).tolist() == pytest.approx([expected])
+
+
+@pytest.mark.django_db
+def test_parts_changed_more_than_once_a_week_are_not_counted() -> None:
+    """Each change of each part would be drawn: at an age of one stroke a page took minutes."""
+    fleet = SmallFleet()
+    live(fleet, [fleet.site("MILL")])
+    with pytest.raises(UnusableWhatIf, match="less than a week of usual use"):
+        positions(fleet, what_if=WhatIf(replace_at=6.0))
+    assert len(positions(fleet, what_if=WhatIf(replace_at=7.0)))
