@@ -55,7 +55,7 @@ def test_what_visits_log_counts_as_done(world: Rollout) -> None:
     assert upgraded_outside(world.redesign, {first.pk, second.pk}) == 1
     page = world.page().content.decode()
     assert "1 of 2 planned modules has the new part in every position." in page.replace("\u00a0", " ")
-    assert "1 are past their planned day" in page
+    assert "Past their planned day: 1." in page
 
 
 def test_a_module_is_done_when_every_position_has_had_the_new_part(world: Rollout) -> None:
