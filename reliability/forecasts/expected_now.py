@@ -2,7 +2,8 @@
 
 For each component the worker makes the two forecasts once a day, as they would have been made on the evening before
 the week and the quarter began, up to and including today, and keeps them. The page only reads them and counts what
-failed since.
+failed since. Of those failures some are not in the book yet: how many usually are, goes by how late the component's
+failures reached it before.
 """
 
 from __future__ import annotations
@@ -11,22 +12,28 @@ import datetime as dt
 import json
 from collections.abc import Iterable
 from dataclasses import dataclass
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from django.utils import timezone
 
 from fleet.models import Component
 from reliability.forecasts.backtest_quarter import kept_part, quarter_before
 from reliability.forecasts.backtest_summary import distribution_of
-from reliability.forecasts.what_happened import failures_by_component
+from reliability.forecasts.what_happened import failures_by_component, lags_to_the_book
 from reliability.kept import key_of
 from reliability.models import KeptResult
+
+if TYPE_CHECKING:
+    from reliability.stats.count_results import CountDistribution
 
 KIND = "expected now"
 BAND = 0.8
 LEVEL = 0.01  # chance that anything at all is called unusual on a day on which every forecast is right
 ODD = 0.05  # a component's own two-sided chance below which it is at least worth a word
 STRETCHES = ("week", "quarter")
+LONGEST_LAG = 60  # days; longer ones belong to books that were filled in afterwards
+FEWEST_LAGS = 10  # with fewer nobody knows how late reports come, and all are taken to be in
+LATE = 0.98  # share in the book below which a sentence says so
 
 
 @dataclass(frozen=True)
@@ -44,6 +51,7 @@ class Seen:
     chance: float
     more: bool
     unusual: bool
+    reported: float = 1.0  # share of the stretch's failures that is usually in the book by now
 
     @property
     def odd(self) -> bool:
@@ -78,15 +86,36 @@ def count_expected(component: Component, today: dt.date) -> dict[str, Any] | Non
         told = forecast_distributions(question_of(component, begin=begin, days=days, as_of=eve, known_on=eve))
         if told.found.lifetimes is None or not told.running.rows:
             return None
-        low, high = told.failures.interval(BAND)
-        expected = told.failures.mean
+        share, known = reported(lags_to_the_book(component, today - dt.timedelta(days=LONGEST_LAG)), days)
+        in_the_book = thinned(told.failures, share, known)
+        low, high = in_the_book.interval(BAND)
         found[stretch] = {
             "from": begin.isoformat(),
-            "expected": expected,
+            "expected": in_the_book.mean,
             "band": [low, high],
-            "pmf": kept_part(told.failures),
+            "pmf": kept_part(in_the_book),
+            "reported": share,
         }
     return found
+
+
+def reported(lags: list[int], days: int) -> tuple[float, int]:
+    """Share of the failures of the last `days` days, today's among them, that is in the book; and by how many lags."""
+    usual = [lag for lag in lags if lag <= LONGEST_LAG]
+    if len(usual) < FEWEST_LAGS:
+        return 1.0, 0
+    # a lag of three days keeps out today, yesterday and the day before
+    return sum(max(days - lag, 0) for lag in usual) / (days * len(usual)), len(usual)
+
+
+def thinned(count: CountDistribution, share: float, known: int) -> CountDistribution:
+    """The part of a count that is in the book, beta-binomial, for the share is learned from `known` failures."""
+    from reliability.stats.count_compound import taken_along
+    from reliability.stats.count_results import CountDistribution
+
+    if share >= 1.0:
+        return count
+    return CountDistribution(taken_along(count.pmf, share * known, (1.0 - share) * known))
 
 
 def keep_expected(component: Component, today: dt.date) -> None:
@@ -142,6 +171,7 @@ def compared(documents: dict[Component, dict[str, Any]], counts: dict[str, tuple
                 chance=out.two_sided,
                 more=out.high,
                 unusual=bool(unusual),
+                reported=told.get("reported", 1.0),
             )
         )
     return tuple(answers)

@@ -6,7 +6,7 @@ import datetime as dt
 from typing import Any
 
 from fleet.formats import counted, long_day, number
-from reliability.forecasts.expected_now import LEVEL, ODD, STRETCHES, Now, Seen
+from reliability.forecasts.expected_now import LATE, LEVEL, ODD, STRETCHES, Now, Seen
 
 SINCE = {"week": "since {day}", "quarter": "this quarter, since {day}"}
 STALE_DAYS = 1  # the worker counts at night: yesterday's figures are still the latest until then
@@ -45,10 +45,14 @@ def sentence(each: Seen) -> str:
     """What failed, beside what was expected."""
     since = SINCE[each.stretch].format(day=long_day(each.begin))
     band = number(each.low) if each.low == each.high else f"{number(each.low)} to {number(each.high)}"
-    late = "" if each.more else " Reports may still come in."
+    if each.reported < LATE:
+        late = f" Of all failures of these days about {100 * each.reported:.0f} in 100 are usually in the book by now."
+        known = "in the book by now "
+    else:
+        late, known = "" if each.more else " Reports may still come in.", ""
     return (
         f"{each.title.capitalize()}: {counted(each.count, 'failure')} {since}, where {band} were to be expected "
-        f"(80 in 100).{late}"
+        f"{known}(80 in 100).{late}"
     )
 
 
@@ -72,7 +76,7 @@ def note(now: Now, today: dt.date) -> str:
     rule = (
         f"Unusual is what would come up on fewer than {100 * LEVEL:.0f} day in 100 among all {number(len(now.seen))} "
         "figures together, if every forecast were right. Each forecast is the one of the evening before the week or "
-        "the quarter began."
+        "the quarter began, less what usually has not reached the book yet."
     )
     fresh = "" if now.until >= today else f" Counted up to {long_day(now.until)}"
     if fresh:

@@ -105,12 +105,17 @@ def failures_between(
 
 def days_to_the_book(component: Component, until: dt.date) -> int:
     """Days within which 95 in 100 failures of the year before reached the book; 0 where none is on record."""
+    lags = lags_to_the_book(component, until)
+    return lags[math.ceil(0.95 * len(lags)) - 1] if lags else 0
+
+
+def lags_to_the_book(component: Component, until: dt.date) -> list[int]:
+    """Days that the latest failures of the year before `until` took to reach the book, in order."""
     year = failed(component, until - dt.timedelta(days=365), until).annotate(
         known=Coalesce("removed_known_on", "removed_visit__known_on", "removed_on")
     )
     latest = year.order_by("-day", "-pk").values_list("day", "known")[:MOST_LAGS]
-    lags = sorted(max((known - day).days, 0) for day, known in latest if known is not None)
-    return lags[math.ceil(0.95 * len(lags)) - 1] if lags else 0
+    return sorted(max((known - day).days, 0) for day, known in latest if known is not None)
 
 
 def failures_in_modules_that_came_later(component: Component, begin: dt.date, end: dt.date) -> int:

@@ -15,7 +15,7 @@ from fleet.actions.rebuild_clocks import rebuild_clocks
 from fleet.models import Work
 from fleet.work import run_here
 from reliability.forecasts.backtest_quarter import kept_part
-from reliability.forecasts.expected_now import KIND, begins, expected_now
+from reliability.forecasts.expected_now import KIND, begins, expected_now, reported, thinned
 from reliability.forecasts.expected_words import told
 from reliability.kept import key_of
 from reliability.models import KeptResult
@@ -91,6 +91,32 @@ def test_fewer_than_expected_is_told_with_the_reports_that_may_come_yet() -> Non
     assert now is not None
     (said,) = told(now, TODAY)["unusual"]
     assert said.endswith("where 19 to 32 were to be expected (80 in 100). Reports may still come in.")
+
+
+def test_what_is_usually_not_in_the_book_yet_is_not_expected() -> None:
+    """Half of all reports come after five days: of seven days' failures 2 + 5 + ... are in, (7 + 2) / 14 of them."""
+    assert reported([0] * 10 + [5] * 10, 7) == (9 / 14, 20)
+    assert reported([0] * 10 + [90] * 10, 7) == (1.0, 10), "a book filled in afterwards says nothing of reports"
+    assert reported([30] * 9, 7) == (1.0, 0), "too few to go by"
+    few = thinned(poisson_count(30.0), 9 / 14, 20)
+    assert few.mean == pytest.approx(30.0 * (9 / 14 * 20 + 0.5) / 21.0)
+    low, high = few.interval(0.8)
+    plain = poisson_count(few.mean).interval(0.8)
+    assert high - low > plain[1] - plain[0], "the share is not known exactly"
+
+
+def test_a_late_reported_failure_is_no_seldom_one() -> None:
+    fleet = failing([470])
+    keep("NUT", 1.0, 25.0)
+    row = KeptResult.objects.get(kind=KIND)
+    document = json.loads(bytes(row.payload))
+    document["quarter"]["reported"] = 0.4
+    row.payload = json.dumps(document).encode()
+    row.save()
+    now = expected_now([fleet.component])
+    assert now is not None
+    (said,) = told(now, TODAY)["unusual"]
+    assert "were to be expected in the book by now (80 in 100). Of all failures of these days about 40 in 100" in said
 
 
 def test_among_many_one_a_little_out_is_no_alarm() -> None:
