@@ -9,7 +9,8 @@ from fleet.formats import long_day
 
 Document = dict[str, Any]
 Figure = dict[str, Any]
-HIGHEST = 6.0  # early boundaries lie far above any evidence: the drawing ends here
+HIGHEST = 6.0  # early boundaries lie far above any evidence: the drawing ends here,
+FARTHEST = 12.0  # or where today's boundary lies, so that one sees what is asked for
 
 
 def path_figure(document: Document) -> Figure:
@@ -17,12 +18,12 @@ def path_figure(document: Document) -> Figure:
     path = document["path"]
     days = [look["on"] for look in path]
     height = max([HIGHEST / 2, *(abs(look["z"] or 0.0) for look in path)])
-    top = min(max(height * 1.15, HIGHEST), 4 * HIGHEST)
+    now = next((look["boundary"] for look in reversed(path) if look["boundary"] is not None), None)
+    asked = 0.0 if now is None or abs(now) > FARTHEST else 1.1 * abs(now)
+    top = min(max(height * 1.15, asked, HIGHEST), 4 * HIGHEST)
     data = [
         boundary(days, [look["boundary"] for look in path], top, "clear above"),
-        boundary(
-            days, [None if look["boundary"] is None else -look["boundary"] for look in path], top, "shorter below"
-        ),
+        boundary(days, [mirrored(look["boundary"]) for look in path], top, "shorter below"),
         {
             "type": "scatter",
             "mode": "lines+markers",
@@ -49,7 +50,7 @@ def path_figure(document: Document) -> Figure:
         )
     layout = {
         "xaxis": {"type": "date", "tickformat": "%-d %b %Y"},
-        "yaxis": {"title": "Evidence, Z", "range": [-min(top, HIGHEST), top], "zeroline": True},
+        "yaxis": {"title": "Evidence, Z", "range": [-min(top, max(asked, HIGHEST)), top], "zeroline": True},
         "showlegend": True,
     }
     return {"data": data, "layout": layout}
