@@ -55,7 +55,9 @@ def test_a_panel_follows_the_choices(phone: Page) -> None:
     phone.get_by_label("How sure").select_option("0.8")
     expect(phone.get_by_text("we are 80 % sure", exact=False).first).to_be_visible()
     bring_panels(phone)
-    expect(phone.locator("#panel-modes")).to_contain_text(re.compile(r"80.%.sure of each range"))
+    panel = phone.locator("#panel-modes")
+    panel.scroll_into_view_if_needed()  # where it came only now, it is asked for now
+    expect(panel).to_contain_text(re.compile(r"80.%.sure of each range"), timeout=20_000)
 
 
 def test_without_scripts_each_panel_is_a_link(browser: Browser, live_server: Any, worked: WorkedFleet) -> None:
