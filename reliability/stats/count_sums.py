@@ -21,6 +21,7 @@ ComplexArray = NDArray[np.complex128]
 
 _SERIES_FROM = 5.0
 _RARE = 0.3
+_AT_ONCE = 30_000  # probabilities whose powers stay in the processor's cache
 
 
 class CountMixtures:
@@ -52,7 +53,11 @@ class CountMixtures:
         wide = low[1] > _SERIES_FROM
         some = np.flatnonzero(wide.any(axis=0))
         if some.size:
-            cumulants = _cumulants(probabilities, low[:, :, some], weights[some])
+            cumulants = np.empty((8, low.shape[1], some.size))
+            step = max(1, _AT_ONCE // probabilities[0].size)
+            for start in range(0, low.shape[1], step):
+                part = slice(start, start + step)
+                cumulants[:, part] = _cumulants(probabilities[part], low[:, part, some], weights[some])
             wide[:, some] &= _series_serves(cumulants)
             for place, number in enumerate(some.tolist()):
                 self._add_wide(number, np.flatnonzero(wide[:, number]), cumulants[:, :, place], share)
