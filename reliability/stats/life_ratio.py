@@ -279,8 +279,8 @@ class _Profile:
             second[at + 1, at] += slope[at + 1] * both
         return value, turn.T @ slope, second
 
-    def highest(self, psi: float, free: FloatArray) -> tuple[float, float, FloatArray]:
-        """Largest log-likelihood at psi, its slope in psi, and where it is."""
+    def highest(self, psi: float, free: FloatArray, thorough: bool) -> tuple[float, float, FloatArray]:
+        """Largest log-likelihood at psi, its slope in psi, and where it is. thorough: from other starts as well."""
         spreading = self.spreading(free.size)
 
         def evaluate(values: FloatArray) -> Evaluation:
@@ -289,7 +289,7 @@ class _Profile:
 
         kept = spreading.argmax(axis=0)
         starts = [free]
-        if min(rows.failures for rows in self.likelihood.groups) < FEW_FAILURES:
+        if thorough:
             # with few failures a steep and a flat shape may each be a top: the higher one counts
             for start in (free.copy(), self.best_free.copy()):
                 start[kept == 2] = ORDINARY_LOG_SHAPE
@@ -302,13 +302,28 @@ class _Profile:
     def limit(
         self, psi: float, free: FloatArray, peak: float, z: float, error: float, direction: float
     ) -> tuple[float, bool]:
-        """Where twice the fall from the peak is z squared, beyond psi; True where it never is."""
+        """Where twice the fall from the peak is z squared, beyond psi; True where it never is.
+
+        With few failures another top may lie higher: that is looked for where the first one's limit is, and all the
+        way only if there is one.
+        """
+        found, never = self._limit(psi, free, peak, z, error, direction, thorough=False)
+        if never or min(rows.failures for rows in self.likelihood.groups) >= FEW_FAILURES:
+            return found, never
+        height = self.highest(found, free, thorough=True)[0]
+        if math.sqrt(max(2.0 * (peak - height), 0.0)) > z * (1.0 - 1e-5):
+            return found, never
+        return self._limit(psi, free, peak, z, error, direction, thorough=True)
+
+    def _limit(
+        self, psi: float, free: FloatArray, peak: float, z: float, error: float, direction: float, *, thorough: bool
+    ) -> tuple[float, bool]:
         inside, outside, start = psi, math.nan, psi
         guess = psi + direction * min(z * error, 2.0)
         for _ in range(80):
             if abs(guess) > FARTHEST:
                 guess = direction * FARTHEST
-            height, slope, free_there = self.highest(guess, free)
+            height, slope, free_there = self.highest(guess, free, thorough)
             fall = math.sqrt(max(2.0 * (peak - height), 0.0)) if math.isfinite(height) else math.inf
             if abs(fall - z) < 1e-6 * z:
                 return guess, False
